@@ -1,0 +1,67 @@
+"""The ``simkit`` command: one module per subcommand, each imported when it is asked for.
+
+Exit status: 0 all is well; 1 something went wrong or a case of the run has no solution; 2 the
+command line or an input file cannot be used.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import IO, Any
+
+import click
+
+from simkit import __version__
+from simkit.errors import MeasurementError, SimkitError, StudyError
+
+COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare")
+"""Subcommands in the order in which one uses them; each is `command` in a module of its name."""
+
+
+class CommandFailure(click.ClickException):
+    """An error simkit raises on purpose, shown as its text alone."""
+
+    def __init__(self, error: SimkitError) -> None:
+        super().__init__(str(error))
+        self.exit_code = 2 if isinstance(error, StudyError | MeasurementError) else 1
+
+    def show(self, file: IO[Any] | None = None) -> None:
+        """Print the text, on standard error unless a file is given."""
+        click.echo(f"simkit: {self.message}", file=file, err=True)
+
+
+class LazyGroup(click.Group):
+    """Finds subcommands by name and turns simkit's own errors into text; others are bugs and show."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        """Names of all subcommands."""
+        return list(COMMANDS)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
+        """Import one subcommand."""
+        if cmd_name not in COMMANDS:
+            return None
+        command: click.Command = import_module(f"simkit.cli.{cmd_name}").command
+        return command
+
+    def invoke(self, ctx: click.Context) -> Any:
+        """Run the subcommand."""
+        try:
+            return super().invoke(ctx)
+        except SimkitError as error:
+            raise CommandFailure(error) from error
+
+
+@click.group(cls=LazyGroup, context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(__version__, prog_name="simkit")
+def main() -> None:
+    """Antennas made of flat metal strip: say what you want to build, see where every current mode
+    lands before you cut, and set your measured sweep beside it.
+
+    \b
+    A first session:
+      simkit new my_antenna             write a commented study file
+      simkit check my_antenna.toml      see what simkit understood
+      simkit run my_antenna.toml        solve all cases and draw the plots
+      simkit modes results/my_antenna   list the natural modes
+    """

@@ -1,0 +1,69 @@
+"""simkit: natural modes, sweeps and measured comparison for antennas made of flat metal strip.
+
+The names below are the whole public interface. Each is imported when it is first used, so that
+``import simkit`` stays quick and pulls in no plotting, cluster, storage or engine library.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING
+
+from simkit.errors import (
+    EngineError,
+    GeometryError,
+    MeasurementError,
+    SimkitError,
+    StoreError,
+    StudyError,
+)
+
+if TYPE_CHECKING:
+    from simkit import plot
+    from simkit.measured import compare, read_touchstone
+    from simkit.runner import run
+    from simkit.store import as_grid, open_results
+    from simkit.store.rows import modes
+    from simkit.study import load_study
+
+__version__ = "0.1.0"
+
+__all__ = [
+    "EngineError",
+    "GeometryError",
+    "MeasurementError",
+    "SimkitError",
+    "StoreError",
+    "StudyError",
+    "__version__",
+    "as_grid",
+    "compare",
+    "load_study",
+    "modes",
+    "open_results",
+    "plot",
+    "read_touchstone",
+    "run",
+]
+
+_HOME = {
+    "as_grid": "simkit.store",
+    "compare": "simkit.measured",
+    "load_study": "simkit.study",
+    "modes": "simkit.store.rows",
+    "open_results": "simkit.store",
+    "read_touchstone": "simkit.measured",
+    "run": "simkit.runner",
+}
+
+
+def __getattr__(name: str) -> object:
+    if name == "plot":
+        return import_module("simkit.plot")
+    if name in _HOME:
+        return getattr(import_module(_HOME[name]), name)
+    raise AttributeError(f"module 'simkit' has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)
