@@ -1,0 +1,178 @@
+"""The one module that talks to the field engine: wires in, numpy currents out.
+
+The engine reports every failure as the same unspecific exception, returns ``None`` or NaN for some
+inputs and frees its results together with its context. So each call here builds a context, solves,
+copies the numbers and drops the context; what went in is added to whatever goes wrong.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from importlib.metadata import version
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from simkit.errors import EngineError
+from simkit.geometry.wires import Wire
+
+ComplexArray = NDArray[np.complex128]
+
+Source = Sequence[tuple[int, float]]
+"""Segments (0-based, through all wires) with the voltage impressed on each, in volts."""
+
+
+@dataclass(frozen=True)
+class SeriesLoad:
+    """Distributed series impedance of every wire, per metre at the solved frequency."""
+
+    resistance_ohm_per_m: float = 0.0
+    inductance_h_per_m: float = 0.0
+
+
+@dataclass(frozen=True)
+class LumpedLoad:
+    """A series connection of R, L and C on one segment; a capacitance of 0 means none."""
+
+    segment: int
+    resistance_ohm: float = 0.0
+    inductance_h: float = 0.0
+    capacitance_f: float = 0.0
+
+
+def engine_version() -> str:
+    """Return name and version of the field engine, part of every case's identity."""
+    return f"PyNEC {version('PyNEC')}"
+
+
+def solve_wires(
+    wires: Sequence[Wire],
+    radius_m: float,
+    frequency_hz: float,
+    sources: Sequence[Source],
+    *,
+    series: SeriesLoad | None = None,
+    lumped: Sequence[LumpedLoad] = (),
+    extended_kernel: bool = True,
+) -> ComplexArray:
+    """Solve for the segment currents of several excitations at one frequency.
+
+    The matrix is filled and factorised once; further excitations cost a few per cent.
+
+    Parameters
+    ----------
+    wires : sequence of Wire
+        Checked beforehand (`simkit.geometry.checks`); the engine itself hangs or returns nonsense
+        on bad input.
+    radius_m : float
+        One radius for all wires: the engine errs badly where radii meet.
+    frequency_hz : float
+    sources : sequence of Source
+        One entry an excitation.
+    series : SeriesLoad, optional
+        Distributed load of all wires.
+    lumped : sequence of LumpedLoad, optional
+    extended_kernel : bool
+        Current on the wire surface instead of the axis; for straight runs of thick wires.
+
+    Returns
+    -------
+    (len(sources), S) complex array
+        Current at the middle of each segment, ampere, positive from the start of its wire.
+
+    Raises
+    ------
+    EngineError
+        The engine failed, or its result is missing, not finite, or takes no power.
+    """
+    what = f"{len(wires)} wires of radius {radius_m * 1e3:.4g} mm at {frequency_hz / 1e6:.6g} MHz"
+    if not (np.isfinite(frequency_hz) and frequency_hz > 0):
+        raise EngineError(f"{what}: the frequency must be positive, else the engine hangs")
+    step = "building the wires"
+    try:
+        context = _context(wires, radius_m, extended_kernel)
+        step = "setting loads and frequency"
+        _add_loads(context, wires, series, lumped)
+        context.fr_card(0, 1, frequency_hz / 1e6, 0.0)
+        step = "solving"
+        places = _places(wires)
+        rows = [
+            _execute(context, index, source, places) for index, source in enumerate(sources)
+        ]
+    except RuntimeError as error:  # the engine's only exception type
+        raise EngineError(f"{what}: the engine failed while {step} ({error})") from error
+    currents = np.array(rows, dtype=np.complex128)
+    _screen(currents, sources, len(places), what)
+    return currents
+
+
+def _context(wires: Sequence[Wire], radius_m: float, extended_kernel: bool) -> Any:
+    import PyNEC
+
+    context = PyNEC.nec_context()
+    geometry = context.get_geometry()
+    for tag, wire in enumerate(wires, start=1):
+        geometry.wire(tag, wire.segments, *wire.start_m, *wire.end_m, radius_m, 1.0, 1.0)
+    context.geometry_complete(0)
+    context.set_extended_thin_wire_kernel(extended_kernel)
+    return context
+
+
+def _add_loads(
+    context: Any,
+    wires: Sequence[Wire],
+    series: SeriesLoad | None,
+    lumped: Sequence[LumpedLoad],
+) -> None:
+    if series is not None and (series.resistance_ohm_per_m or series.inductance_h_per_m):
+        for tag, wire in enumerate(wires, start=1):
+            context.ld_card(
+                2, tag, 1, wire.segments, series.resistance_ohm_per_m, series.inductance_h_per_m, 0.0
+            )
+    places = _places(wires)
+    for load in lumped:
+        tag, segment = places[load.segment]
+        context.ld_card(
+            0, tag, segment, segment, load.resistance_ohm, load.inductance_h, load.capacitance_f
+        )
+
+
+def _places(wires: Sequence[Wire]) -> list[tuple[int, int]]:
+    """Engine's (tag, segment within the tag), both from 1, of each segment."""
+    return [
+        (tag, segment)
+        for tag, wire in enumerate(wires, start=1)
+        for segment in range(1, wire.segments + 1)
+    ]
+
+
+def _execute(
+    context: Any, index: int, source: Source, places: list[tuple[int, int]]
+) -> ComplexArray:
+    for segment, volts in source:
+        tag, within = places[segment]
+        context.ex_card(0, tag, within, 0, volts, 0.0, 0.0, 0.0, 0.0, 0.0)
+    context.xq_card(0)
+    result = context.get_structure_currents(index)
+    if result is None:
+        raise RuntimeError("it returned no currents")
+    return np.array(result.get_current(), dtype=np.complex128)
+
+
+def _screen(currents: ComplexArray, sources: Sequence[Source], segments: int, what: str) -> None:
+    if currents.shape != (len(sources), segments):
+        raise EngineError(
+            f"{what}: the engine returned currents of shape {currents.shape}, "
+            f"expected {(len(sources), segments)}"
+        )
+    if not np.all(np.isfinite(currents)):
+        raise EngineError(f"{what}: the engine returned currents that are not finite")
+    for row, source in zip(currents, sources, strict=True):
+        power_w = 0.5 * sum(volts * row[segment].real for segment, volts in source)
+        if power_w <= 0:
+            raise EngineError(
+                f"{what}: the source would take {power_w:.3g} W; a passive antenna takes more "
+                "than none, so the wires are outside the engine's validity"
+            )
