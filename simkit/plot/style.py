@@ -1,0 +1,126 @@
+"""What all pictures share: colours, line styles, display units, and axes made without pyplot."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from matplotlib.figure import Figure
+from numpy.typing import ArrayLike
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+INK = "#222222"
+"""Outlines, markers and text that belong to no mode."""
+QUIET = "#767676"
+"""Dimensions, notes and reference lines; dark enough to read on white."""
+GRID = "#dddddd"
+METAL = "#d9b77a"
+DPI = 110
+
+_COLOURS = ("#0072b2", "#009e73", "#d55e00", "#cc79a7", "#e69f00", "#56b4e9")
+_DASHES: tuple[str | tuple[int, tuple[int, ...]], ...] = (
+    "solid",
+    (0, (6, 2)),
+    (0, (8, 2, 2, 2)),
+    (0, (2, 1)),
+    (0, (4, 1, 1, 1, 1, 1)),
+    (0, (10, 3)),
+)
+_MARKERS = ("o", "s", "^", "D", "v", "P")
+
+
+@dataclass(frozen=True)
+class ModeStyle:
+    """How one mode looks in every picture.
+
+    The colours stay apart under the common kinds of colour blindness; line style and marker say
+    the same once more, for print in black and white.
+    """
+
+    colour: str
+    linestyle: str | tuple[int, tuple[int, ...]]
+    marker: str
+
+
+def mode_style(half_waves: int) -> ModeStyle:
+    """Return colour, line style and marker of the mode with so many half waves."""
+    if half_waves < 0:
+        return ModeStyle(QUIET, (0, (1, 2)), "x")
+    place = (half_waves - 1) % len(_COLOURS)
+    return ModeStyle(_COLOURS[place], _DASHES[place], _MARKERS[place])
+
+
+def new_axes(
+    ax: Axes | None, size_in: tuple[float, float] = (8.0, 5.0), *, polar: bool = False
+) -> Axes:
+    """Return `ax`, or the only axes of a new figure that no pyplot session knows of.
+
+    Raises
+    ------
+    ValueError
+        If a given `ax` does not have the projection the picture needs.
+    """
+    if ax is None:
+        figure = Figure(figsize=size_in, dpi=DPI, layout="constrained")
+        return figure.add_subplot(projection="polar" if polar else None)
+    if (ax.name == "polar") != polar:
+        wanted = "polar" if polar else "rectilinear"
+        raise ValueError(
+            f"axes have the projection '{ax.name}', this picture needs '{wanted}': "
+            f"make them with figure.add_subplot(projection='{wanted}') or leave ax out"
+        )
+    return ax
+
+
+def tidy(ax: Axes) -> None:
+    """Faint grid behind the data, no frame at the top and on the right."""
+    ax.set_axisbelow(True)
+    ax.grid(visible=True, color=GRID, linewidth=0.7)
+    for side in ("top", "right"):
+        ax.spines[side].set_visible(False)
+
+
+def say_empty(ax: Axes, text: str) -> None:
+    """Write in the middle of the axes why there is nothing to see."""
+    ax.text(0.5, 0.5, text, transform=ax.transAxes, ha="center", va="center", color=INK, wrap=True)
+
+
+@dataclass(frozen=True)
+class DisplayUnit:
+    """Multiply an SI value by `factor` to get it in the unit called `text`."""
+
+    factor: float
+    text: str
+
+    def label(self, what: str) -> str:
+        """Return an axis label such as ``length (mm)``."""
+        return f"{what} ({self.text})" if self.text else what
+
+    def value(self, number: float, digits: int = 4) -> str:
+        """Return the value in text, as in ``76 mm``."""
+        shown = f"{number * self.factor:.{digits}g}"
+        return f"{shown} {self.text}" if self.text else shown
+
+
+MILLIMETRE = DisplayUnit(1e3, "mm")
+MEGAHERTZ = DisplayUnit(1e-6, "MHz")
+GIGAHERTZ = DisplayUnit(1e-9, "GHz")
+
+
+def frequency_unit(frequency_hz: ArrayLike) -> DisplayUnit:
+    """Return megahertz for a band that ends below 10 GHz, else gigahertz."""
+    finite = np.asarray(frequency_hz, dtype=float)
+    finite = finite[np.isfinite(finite)]
+    return GIGAHERTZ if finite.size and finite.max() >= 10e9 else MEGAHERTZ
+
+
+def display_unit(units: str) -> DisplayUnit:
+    """Return the unit in which pictures show a value that the store keeps in `units`."""
+    if units == "m":
+        return MILLIMETRE
+    if units == "Hz":
+        return MEGAHERTZ
+    return DisplayUnit(1.0, "" if units == "1" else units)
