@@ -21,17 +21,19 @@ COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare")
 class CommandFailure(click.ClickException):
     """An error simkit raises on purpose, shown as its text alone."""
 
-    def __init__(self, error: SimkitError) -> None:
-        super().__init__(str(error))
-        self.exit_code = 2 if isinstance(error, StudyError | MeasurementError) else 1
-
     def show(self, file: IO[Any] | None = None) -> None:
         """Print the text, on standard error unless a file is given."""
         click.echo(f"simkit: {self.message}", file=file, err=True)
 
 
+class InputFailure(CommandFailure):
+    """The same for a file the user hands in that cannot be used."""
+
+    exit_code = 2
+
+
 class LazyGroup(click.Group):
-    """Finds subcommands by name and turns simkit's own errors into text; others are bugs and show."""
+    """Finds subcommands by name; prints simkit's own errors as text and lets bugs show."""
 
     def list_commands(self, ctx: click.Context) -> list[str]:
         """Names of all subcommands."""
@@ -48,8 +50,10 @@ class LazyGroup(click.Group):
         """Run the subcommand."""
         try:
             return super().invoke(ctx)
+        except (StudyError, MeasurementError) as error:
+            raise InputFailure(str(error)) from error
         except SimkitError as error:
-            raise CommandFailure(error) from error
+            raise CommandFailure(str(error)) from error
 
 
 @click.group(cls=LazyGroup, context_settings={"help_option_names": ["-h", "--help"]})

@@ -1,0 +1,107 @@
+"""``simkit modes``: list natural modes and what they own."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import click
+
+from simkit.cli.options import case_option, csv_option, json_option, one_format, results_argument
+from simkit.cli.output import (
+    csv_text,
+    emit,
+    frequency_text,
+    json_text,
+    number_text,
+    quantity_text,
+    table,
+)
+
+Row = dict[str, Any]
+
+_KEY = """\
+natural: frequency and Q of the mode itself, whatever the feed.
+dip: minimum of the reflection at the connector, which is what an analyser shows; it lies above.
+X = 0: series resonance at the feed with its resistance.  gain: the largest, in any direction."""
+
+
+@click.command()
+@results_argument
+@json_option
+@csv_option
+@case_option
+def command(results: str, as_json: bool, as_csv: bool, case: int | None) -> None:
+    """List the natural modes of the results in DIR, with the dips and resonances they own.
+
+    \b
+    Example:
+      simkit modes results/creek_gauge
+      simkit modes results/creek_gauge --case 2 --json
+    """
+    form = one_format(as_json, as_csv)
+    from simkit.store import open_results
+    from simkit.store.rows import modes
+
+    dataset = open_results(results)
+    units = {name: str(c.attrs.get("units", "1")) for name, c in dataset.coords.items()}
+    if case is not None:
+        if case not in dataset["case"].values:
+            last = int(dataset["case"].values.max())
+            raise click.UsageError(f"--case {case}: these results hold the cases 0 to {last}.")
+        dataset = dataset.sel(case=[case])
+    rows = modes(dataset)
+    if form == "json":
+        emit(json_text(rows))
+    elif form == "csv":
+        emit(csv_text(flat_rows(rows, units)))
+    else:
+        emit(f"{modes_table(rows, units)}\n\n{_KEY}")
+
+
+def flat_rows(rows: list[Row], units: dict[str, str]) -> list[Row]:
+    """Return one row per mode, or one for a case without modes; units stand in the names."""
+    flat = []
+    for row in rows:
+        start = {"case": row["case"], "status": row["status"]}
+        start |= {_with_unit(name, units): value for name, value in row["values"].items()}
+        flat += [start | {"solves": row["solves"]} | mode for mode in row["modes"] or [{}]]
+    return flat
+
+
+def _with_unit(name: str, units: dict[str, str]) -> str:
+    unit = units.get(name, "1")
+    return name if unit in {"", "1"} else f"{name}_{unit.lower()}"
+
+
+def modes_table(rows: list[Row], units: dict[str, str]) -> str:
+    """Return the table for people: one line per mode, one for a case without any."""
+    names = list(rows[0]["values"]) if rows else []
+    head = ["case", *names, "status", "mode", "natural", "+/-", "Q", "dip", "return loss"]
+    head += ["X = 0", "R", "gain"]
+    lines = []
+    for row in rows:
+        swept = [quantity_text(row["values"][name], units.get(name, "1")) for name in names]
+        start = [str(row["case"]), *swept, row["status"]]
+        if row["modes"]:
+            lines += [start + _mode_cells(mode) for mode in row["modes"]]
+        else:
+            lines.append([*start, row.get("reason", ""), *[""] * 8])
+    return table(head, lines)
+
+
+def _mode_cells(mode: Row) -> list[str]:
+    from simkit.response.labels import half_wave_label
+
+    number = mode["half_waves"]
+    error = mode.get("frequency_error")
+    return [
+        half_wave_label(-1 if number is None else number),
+        frequency_text(mode["frequency_hz"]),
+        number_text(error * 100, 2, "%") if error is not None else "-",
+        number_text(mode.get("q"), 2),
+        frequency_text(mode.get("dip_frequency_hz")),
+        number_text(mode.get("dip_return_loss_db"), 1, "dB"),
+        frequency_text(mode.get("series_resonance_frequency_hz")),
+        number_text(mode.get("series_resonance_resistance_ohm"), 1, "ohm"),
+        number_text(mode.get("peak_gain_dbi"), 1, "dBi"),
+    ]

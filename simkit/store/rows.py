@@ -1,0 +1,207 @@
+"""Results as plain rows: one dictionary per case, for tables, JSON and scripts."""
+
+from __future__ import annotations
+
+import math
+from os import PathLike
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from simkit.errors import StoreError
+from simkit.store.schema import Status
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+Row = dict[str, Any]
+
+_OF_MODE = {
+    "frequency_hz": "mode_frequency",
+    "q": "mode_q",
+    "frequency_error": "mode_frequency_error",
+    "conductance_peak_frequency_hz": "conductance_peak_frequency",
+    "conductance_peak_resistance_ohm": "conductance_peak_resistance",
+    "series_resonance_frequency_hz": "series_resonance_frequency",
+    "series_resonance_resistance_ohm": "series_resonance_resistance",
+    "parallel_resonance_frequency_hz": "parallel_resonance_frequency",
+    "parallel_resonance_resistance_ohm": "parallel_resonance_resistance",
+    "dip_frequency_hz": "dip_frequency",
+    "dip_return_loss_db": "dip_return_loss",
+    "dip_bandwidth_hz": "dip_bandwidth",
+    "impedance_q": "impedance_q",
+    "pattern_frequency_hz": "pattern_frequency",
+    "peak_gain_dbi": "peak_gain",
+    "peak_theta_deg": "peak_theta",
+    "peak_phi_deg": "peak_phi",
+    "directivity_dbi": "directivity",
+    "efficiency": "efficiency",
+    "power_balance": "power_balance",
+}
+"""Keys of a mode's row and the variables of the store behind them."""
+
+
+def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
+    """Return one row per case: how it went, natural modes, resonances and dips.
+
+    Parameters
+    ----------
+    results : xarray.Dataset or path
+        What `simkit.open_results` returns, some cases of it, or the results folder.
+
+    Returns
+    -------
+    list of dict
+        In order of cases. Keys: ``case``, ``status``, ``reason`` (only if there is one),
+        ``values`` (swept values, SI), ``solves``, and three lists from the lowest frequency up:
+
+        - ``modes``: ``half_waves`` (None if the mode has no number), ``frequency_hz`` and ``q`` of
+          the natural mode, then what the mode owns; what does not exist is left out;
+        - ``resonances``: every zero of the reactance at the feed: ``frequency_hz``, ``kind``
+          ("series" or "parallel"), ``resistance_ohm``;
+        - ``dips``: every minimum of the reflection at the connector: ``frequency_hz``,
+          ``return_loss_db``.
+
+        A resonance or dip that a mode owns also names the mode's ``half_waves``.
+
+    Raises
+    ------
+    StoreError
+        If the folder cannot be read, or the dataset has no dimension `case`.
+
+    Examples
+    --------
+    >>> for row in simkit.modes("results/creek_gauge"):  # doctest: +SKIP
+    ...     print(row["values"], [mode["frequency_hz"] for mode in row["modes"]])
+    """
+    dataset = _opened(results)
+    if "case" not in dataset.coords:
+        raise StoreError(
+            "the dataset has no coordinate 'case': give it as simkit.open_results returns it, "
+            "or cases chosen with dataset.sel(case=...)"
+        )
+    if "case" not in dataset.dims:
+        dataset = dataset.expand_dims("case")
+    names = swept_names(dataset)
+    wanted = ["status", "reason", "solves", "impedance", "mode_half_waves", "driven"]
+    kept = [name for name in (*wanted, *_OF_MODE.values()) if name in dataset]
+    table = dataset[kept].load()
+    return [_row(table.isel(case=place), names) for place in range(table.sizes["case"])]
+
+
+def swept_names(dataset: xr.Dataset) -> tuple[str, ...]:
+    """Return the names of the swept values: the coordinates along `case` but `case` itself."""
+    return tuple(
+        str(name)
+        for name, coordinate in dataset.coords.items()
+        if coordinate.dims == ("case",) and name != "case"
+    )
+
+
+def _opened(results: xr.Dataset | str | PathLike[str]) -> xr.Dataset:
+    if isinstance(results, str | PathLike):
+        from simkit.store import open_results
+
+        return open_results(results)
+    return results
+
+
+def _row(case: xr.Dataset, names: tuple[str, ...]) -> Row:
+    status = Status(int(case["status"]))
+    row: Row = {"case": int(case["case"]), "status": status.label}
+    if reason := str(case["reason"].values):
+        row["reason"] = reason
+    row["values"] = {name: float(case[name]) for name in names}
+    row["solves"] = int(case["solves"])
+    row["modes"] = _modes(case)
+    row["resonances"] = _resonances(case, row["modes"])
+    row["dips"] = _dips(case, row["modes"])
+    return row
+
+
+def _modes(case: xr.Dataset) -> list[Row]:
+    columns = {key: np.asarray(case[name].values) for key, name in _OF_MODE.items() if name in case}
+    found = []
+    for slot in np.flatnonzero(np.isfinite(columns["frequency_hz"])):
+        number = int(case["mode_half_waves"].values[slot])
+        mode: Row = {"half_waves": number if number >= 0 else None}
+        mode |= {
+            key: float(column[slot])
+            for key, column in columns.items()
+            if math.isfinite(column[slot])
+        }
+        if "driven" in case and int(case["driven"].values[slot]) >= 0:
+            mode["driven"] = bool(case["driven"].values[slot])
+        found.append(mode)
+    return sorted(found, key=lambda mode: float(mode["frequency_hz"]))
+
+
+def _curve(case: xr.Dataset) -> tuple[np.ndarray[Any, Any], np.ndarray[Any, Any]] | None:
+    if "impedance" not in case:
+        return None
+    impedance = np.asarray(case["impedance"].values)
+    return (case["frequency"].values, impedance) if np.isfinite(impedance).all() else None
+
+
+def _resonances(case: xr.Dataset, owners: list[Row]) -> list[Row]:
+    from simkit.response.features import find_resonances
+
+    owned = [
+        {
+            "frequency_hz": mode[f"{kind}_resonance_frequency_hz"],
+            "kind": kind,
+            "resistance_ohm": mode[f"{kind}_resonance_resistance_ohm"],
+            "half_waves": mode["half_waves"],
+        }
+        for mode in owners
+        for kind in ("series", "parallel")
+        if f"{kind}_resonance_frequency_hz" in mode
+    ]
+    curve = _curve(case)
+    seen = [] if curve is None else [vars(found) for found in find_resonances(*curve)]
+    return _united(owned, seen, _step_hz(case), same=("kind",))
+
+
+def _dips(case: xr.Dataset, owners: list[Row]) -> list[Row]:
+    from simkit.response.features import find_dips, reflection
+
+    owned = [
+        {
+            "frequency_hz": mode["dip_frequency_hz"],
+            "return_loss_db": mode["dip_return_loss_db"],
+            "half_waves": mode["half_waves"],
+        }
+        for mode in owners
+        if "dip_frequency_hz" in mode
+    ]
+    curve = _curve(case)
+    if curve is None:
+        return _united(owned, [], 0.0)
+    frequency, impedance = curve
+    gamma = reflection(impedance, float(case.attrs.get("reference_ohm", 50.0)))
+    seen = [
+        {"frequency_hz": dip.frequency_hz, "return_loss_db": dip.return_loss_db}
+        for dip in find_dips(frequency, gamma)
+    ]
+    return _united(owned, seen, _step_hz(case))
+
+
+def _step_hz(case: xr.Dataset) -> float:
+    frequency = case["frequency"].values
+    return float(frequency[1] - frequency[0]) if len(frequency) > 1 else 0.0
+
+
+def _united(
+    owned: list[Row], seen: list[Row], step_hz: float, same: tuple[str, ...] = ()
+) -> list[Row]:
+    """Owned features and those seen on the curve more than a step away from every owned one."""
+    fresh = [
+        feature
+        for feature in seen
+        if not any(
+            abs(feature["frequency_hz"] - other["frequency_hz"]) <= step_hz
+            and all(feature[key] == other[key] for key in same)
+            for other in owned
+        )
+    ]
+    return sorted(owned + fresh, key=lambda feature: float(feature["frequency_hz"]))
