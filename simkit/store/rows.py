@@ -80,9 +80,9 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
             "the dataset has no coordinate 'case': give it as simkit.open_results returns it, "
             "or cases chosen with dataset.sel(case=...)"
         )
+    names = swept_names(dataset)
     if "case" not in dataset.dims:
         dataset = dataset.expand_dims("case")
-    names = swept_names(dataset)
     wanted = ["status", "reason", "solves", "impedance", "mode_half_waves", "driven"]
     kept = [name for name in (*wanted, *_OF_MODE.values()) if name in dataset]
     table = dataset[kept].load()
@@ -90,11 +90,12 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
 
 
 def swept_names(dataset: xr.Dataset) -> tuple[str, ...]:
-    """Return the names of the swept values: the coordinates along `case` but `case` itself."""
+    """Return the names of the swept values: the coordinates that go with `case`, but itself."""
+    along = dataset["case"].dims  # none in a single case
     return tuple(
         str(name)
         for name, coordinate in dataset.coords.items()
-        if coordinate.dims == ("case",) and name != "case"
+        if coordinate.dims == along and name != "case"
     )
 
 
