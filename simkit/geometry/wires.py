@@ -31,51 +31,80 @@ class Wire:
 
 
 @dataclass(frozen=True)
+class StripSpan:
+    """Where one strip lies on a chain: `start_m` and `end_m` are the arc lengths of the strip's
+    own start and end along the chain, so `start_m` > `end_m` for a strip run backwards."""
+
+    strip: int
+    start_m: float
+    end_m: float
+
+
+@dataclass(frozen=True)
+class Chain:
+    """Segments in a row from tip to tip (or once round a loop).
+
+    Attributes
+    ----------
+    segments : (C,) int array
+        In order along the chain.
+    signs : (C,) int array
+        +1 where the segment's positive current flows along the chain.
+    arc_m : (C,) float array
+        Segment middles as arc length along the centre line from the first tip, metres.
+    length_m : float
+        Arc length from tip to tip, feed gap included.
+    closed : bool
+    spans : tuple of StripSpan
+    """
+
+    segments: IntArray
+    signs: IntArray
+    arc_m: FloatArray
+    length_m: float
+    closed: bool
+    spans: tuple[StripSpan, ...]
+
+
+@dataclass(frozen=True)
 class WireGrid:
-    """Wires of one radius with the places of the two sources and the way back to the strips.
+    """Wires of one radius, with the sources and the way back to the strips.
 
     Attributes
     ----------
     wires : tuple of Wire
         In engine order; segments are numbered through all wires from 0.
     radius_m : float
+        One radius for all wires: where wires of different radius meet the engine errs by per cents.
+    chains : tuple of Chain
+        Current paths; the first one runs through the feed.
     strip_index : (S,) int array
-        Strip of each segment, -1 for the wire that bridges the feed.
+        Strip of each segment, -1 for a segment in the feed gap.
     strip_position : (S,) float array
-        Middle of each segment along the centre line of its strip, 0..1; NaN for corner figures'
-        outward pieces.
-    strip_sign : (S,) int array
-        +1 where the segment runs along its strip's path, -1 against it, 0 where `strip_index` < 0.
-    chain : (C,) int array
-        Segments of the tip-to-tip path through the feed, in order.
-    chain_sign : (C,) int array
-        +1 where the segment runs along that path.
-    chain_closed : bool
-        The path returns to its beginning.
-    source, probe : int
-        Segments of the feed and of the second, off-centre source.
+        Middle of each segment along the centre line of its strip, 0..1; NaN for the outward pieces
+        of corner figures and for the feed gap.
+    source, probe : tuple of (int, float)
+        Segments and volts of the feed and of the second, off-centre source; the volts of each add
+        up to 1, so the terminal current is their weighted mean of the segment currents.
     model_gap_m, study_gap_m, feed_width_m : float
         Gap the engine's source acts like, gap of the study, strip width there.
-    error : float
-        Relative standard error of mode frequencies expected of the rules used.
+    relative_error : float
+        Standard error of mode frequencies expected of the rules used.
     doubts : tuple of str
         Limits of the rules that this grid exceeds, one sentence each.
     """
 
     wires: tuple[Wire, ...]
     radius_m: float
+    chains: tuple[Chain, ...]
     strip_index: IntArray
     strip_position: FloatArray
-    strip_sign: IntArray
-    chain: IntArray
-    chain_sign: IntArray
-    chain_closed: bool
-    source: int
-    probe: int
+    source: tuple[tuple[int, float], ...]
+    probe: tuple[tuple[int, float], ...]
     model_gap_m: float
     study_gap_m: float
     feed_width_m: float
-    error: float
+    relative_error: float
     doubts: tuple[str, ...] = ()
 
     @property

@@ -1,0 +1,241 @@
+"""One mesh topology for a whole study, so that swept quantities see lengths stretch, not jump."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from dataclasses import asdict, dataclass
+from typing import Any, Literal
+
+import numpy as np
+from scipy.constants import c as light_speed
+
+from simkit.errors import GeometryError
+from simkit.geometry.paths import leg_lengths, turns
+from simkit.geometry.skeleton import FeedKind, Skeleton, skeletons
+from simkit.geometry.strips import OPEN_END_WIDTHS, equivalent_radius_m
+from simkit.study.model import Antenna
+
+VertexKind = Literal["smooth", "node", "figure"]
+
+FIGURE_FROM_RAD = np.deg2rad(50.0)
+"""Corners from here up are modelled by a chamfer and a whisker, gentler ones by nothing."""
+
+FIGURE_UP_TO_RAD = np.deg2rad(120.0)
+"""Fold-backs beyond this are outside the rules."""
+
+NODE_FROM_RAD = np.deg2rad(5.0)
+"""A bend from here up, between legs of some segments, gets a node of its own."""
+
+SHORTEST_RADII = 2.06
+"""The engine refuses wires of one segment, and meeting wires, of segments under two radii."""
+
+TARGET_WIDTHS = 0.4
+TARGET_WAVELENGTHS = 1 / 40
+LONGEST_WAVELENGTHS = 1 / 20
+
+
+@dataclass(frozen=True)
+class ChainPlan:
+    """How one current path is cut: a kind for each inner vertex, a count for each run."""
+
+    vertices: tuple[VertexKind, ...]
+    counts: tuple[int, ...]
+
+
+@dataclass(frozen=True)
+class MeshPlan:
+    """Mesh topology of a study.
+
+    Attributes
+    ----------
+    feed_kind : {"straight", "apex"}
+    centred : bool
+        The feed sits in the middle of its run in every case: one wire, source on its middle segment.
+    chains : tuple of ChainPlan
+        The fed one first.
+    """
+
+    feed_kind: FeedKind
+    centred: bool
+    chains: tuple[ChainPlan, ...]
+
+    def as_dict(self) -> dict[str, Any]:
+        """Plain lists and text, fit for JSON."""
+        return asdict(self)
+
+
+@dataclass(frozen=True)
+class Run:
+    """A stretch of a chain, between arc lengths, that is cut into equal pieces."""
+
+    start_m: float
+    stop_m: float
+    fed: bool = False
+
+
+def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
+    """Choose corners and segment counts that serve every case of a study.
+
+    Parameters
+    ----------
+    antennas : iterable of Antenna
+        At least one. Cases that cannot be laid out, or whose paths have another number of points,
+        are passed over here and refused when they are built.
+
+    Raises
+    ------
+    GeometryError
+        No case can be laid out; the text is that of the first one.
+    """
+    several = list(antennas)
+    feed_kind = _common_feed_kind(several)
+    laid_out = _laid_out(several, feed_kind)
+    vertices = [
+        _vertex_kinds([case[1][chain] for case in laid_out])
+        for chain in range(len(laid_out[0][1]))
+    ]
+    centred = all(_is_centred(lines[0], vertices[0]) for _, lines in laid_out)
+    chains = []
+    for chain, kinds in enumerate(vertices):
+        cases = [(antenna, lines[chain]) for antenna, lines in laid_out]
+        chains.append(ChainPlan(kinds, _counts(cases, kinds, centred and chain == 0)))
+    return MeshPlan(feed_kind, centred, tuple(chains))
+
+
+def _common_feed_kind(antennas: Sequence[Antenna]) -> FeedKind:
+    kinds, first_error = set(), None
+    for antenna in antennas:
+        try:
+            feed = skeletons(antenna)[0].feed
+        except GeometryError as error:
+            first_error = first_error or error
+            continue
+        kinds.add(feed.kind if feed else "straight")
+    if not kinds:
+        raise first_error or GeometryError("the study has no case that can be laid out")
+    return "apex" if "apex" in kinds else "straight"
+
+
+def _laid_out(
+    antennas: Sequence[Antenna], feed_kind: FeedKind
+) -> list[tuple[Antenna, tuple[Skeleton, ...]]]:
+    """Cases with their skeletons, those of the commonest shape of path only."""
+    found: dict[tuple[int, ...], list[tuple[Antenna, tuple[Skeleton, ...]]]] = {}
+    error: GeometryError | None = None
+    for antenna in antennas:
+        try:
+            lines = skeletons(antenna, feed_kind)
+        except GeometryError as problem:
+            error = error or problem
+            continue
+        if all(line.width_m > 0 for line in lines):
+            found.setdefault(signature(lines), []).append((antenna, lines))
+    if not found:
+        raise error or GeometryError("the study has no case with strips of positive width")
+    return max(found.values(), key=len)
+
+
+def signature(lines: Sequence[Skeleton]) -> tuple[int, ...]:
+    """What must agree for two antennas to share a mesh: points of each path."""
+    return tuple(len(line.points) * (-1 if line.closed else 1) for line in lines)
+
+
+def _vertex_kinds(lines: Sequence[Skeleton]) -> tuple[VertexKind, ...]:
+    sharpest = np.max([turns(line.points) for line in lines], axis=0, initial=0.0)
+    shortest = np.min([leg_lengths(line.points) / line.width_m for line in lines], axis=0)
+    kinds: list[VertexKind] = []
+    for vertex, turn in enumerate(sharpest):
+        roomy = min(shortest[vertex], shortest[vertex + 1]) > 1.5
+        apex = lines[0].feed is not None and lines[0].feed.vertex == vertex + 1
+        if apex:
+            kinds.append("node")
+        elif turn >= FIGURE_FROM_RAD:
+            kinds.append("figure")
+        else:
+            kinds.append("node" if roomy and turn >= NODE_FROM_RAD else "smooth")
+    return tuple(kinds)
+
+
+def corner_offset_m(turn_rad: float, width_m: float) -> float:
+    """Half diagonal h of a mitred corner: from the vertex to the outer tip, metres."""
+    return float(width_m / (2 * np.cos(turn_rad / 2)))
+
+
+def chamfer_m(turn_rad: float, width_m: float) -> float:
+    """How much of each leg the chamfer of a corner figure takes, metres."""
+    return 1.12 * corner_offset_m(turn_rad, width_m)
+
+
+def whisker_m(turn_rad: float, width_m: float) -> float:
+    """Length of the whisker of a corner figure, metres."""
+    return max(2.6 * corner_offset_m(turn_rad, width_m) - 0.89 * width_m, 0.52 * width_m)
+
+
+def runs(line: Skeleton, kinds: Sequence[VertexKind], *, centred: bool) -> tuple[Run, ...]:
+    """Cut a skeleton at its corners (and at an off-centre feed) into runs.
+
+    An off-centre feed inside a straight leg splits its run in two that meet at the feed point; the
+    source segment is taken out of both when the wires are built.
+    """
+    arcs = np.concatenate([[0.0], np.cumsum(leg_lengths(line.points))])
+    bends = turns(line.points)
+    end = 0.0 if line.closed else OPEN_END_WIDTHS * line.width_m
+    edges = [(end, end)]
+    for vertex, kind in enumerate(kinds, start=1):
+        at = float(arcs[vertex])
+        if kind == "node":
+            edges.append((at, at))
+        elif kind == "figure":
+            cut = chamfer_m(min(bends[vertex - 1], FIGURE_UP_TO_RAD), line.width_m)
+            edges.append((at - cut, at + cut))
+    edges.append((arcs[-1] - end, arcs[-1] - end))
+    found = []
+    for (_, start), (stop, _) in zip(edges[:-1], edges[1:], strict=True):
+        feed = line.feed
+        inside = feed is not None and feed.kind == "straight" and start < feed.arc_m < stop
+        if inside and not centred:
+            assert feed is not None
+            found += [Run(start, feed.arc_m, fed=True), Run(feed.arc_m, stop, fed=True)]
+        else:
+            found.append(Run(start, stop, fed=inside))
+    return tuple(found)
+
+
+def _is_centred(line: Skeleton, kinds: Sequence[VertexKind]) -> bool:
+    if line.feed is None or line.feed.kind != "straight":
+        return False
+    fed = [run for run in runs(line, kinds, centred=True) if run.fed]
+    if len(fed) != 1:
+        return False
+    middle = (fed[0].start_m + fed[0].stop_m) / 2
+    return abs(middle - line.feed.arc_m) < 1e-9 + 1e-7 * line.length_m
+
+
+def _counts(
+    cases: Sequence[tuple[Antenna, Skeleton]], kinds: Sequence[VertexKind], centred: bool
+) -> tuple[int, ...]:
+    """Segments of each run: the finest wish of any case, as far as the fattest case allows."""
+    wishes, limits = [], []
+    for antenna, line in cases:
+        stretches = runs(line, kinds, centred=centred)
+        lengths = np.array([run.stop_m - run.start_m for run in stretches])
+        radius = equivalent_radius_m(line.width_m, antenna.metal.thickness_m)
+        single = len(stretches) == 1 and not line.closed
+        shortest = TARGET_WIDTHS * line.width_m
+        if not single:
+            shortest = max(shortest, SHORTEST_RADII * radius)
+        wavelength = light_speed / antenna.frequency.stop_hz
+        target = max(shortest, TARGET_WAVELENGTHS * wavelength)
+        # An off-centre source segment takes about half a segment from the run on either side.
+        spare = np.array([0.5 if run.fed and not centred else 0.0 for run in stretches])
+        wishes.append(lengths / target - spare)
+        limits.append(lengths / shortest - spare)
+    # The small allowance keeps a count that is exact on paper from falling to the next lower one.
+    wanted = np.minimum(np.max(wishes, axis=0), np.min(limits, axis=0)) + 1e-6
+    counts = np.maximum(np.floor(wanted).astype(int), 1)
+    if centred:
+        fed = [run.fed for run in runs(cases[0][1], kinds, centred=True)]
+        counts = np.array(
+            [max(n - (n % 2 == 0), 3) if f else n for n, f in zip(counts, fed, strict=True)]
+        )
+    return tuple(int(n) for n in counts)
