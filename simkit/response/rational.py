@@ -1,0 +1,306 @@
+"""The frequency sweep: one vector-valued rational function fitted to a few solved frequencies.
+
+References
+----------
+Nakatsukasa, Sete, Trefethen, "The AAA algorithm for rational approximation", SIAM J. Sci. Comput.
+40(3), 2018, doi:10.1137/16M1106122. All components share one set of weights, hence one set of poles.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+import scipy.linalg
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+ComplexArray = NDArray[np.complex128]
+
+FIRST_SAMPLES = 7
+SKETCH = 6
+"""Random combinations of all currents that the fit looks at."""
+
+CANDIDATES = 300
+TOLERANCE_FLOOR = 3e-4
+FIT_TOLERANCE_FLOOR = 3e-5
+"""The engine's currents carry about 1e-5 of noise; a tighter fit would find poles in it."""
+
+
+@dataclass(frozen=True)
+class RationalModel:
+    """Barycentric rational function through solved samples.
+
+    Attributes
+    ----------
+    frequency_hz : (M,) float array
+        Samples in ascending order.
+    weight : (M,) complex array
+        Barycentric weights; 0 for samples that only verified the fit.
+    values : (M, K) complex array
+        Solved vectors.
+    """
+
+    frequency_hz: FloatArray
+    weight: ComplexArray
+    values: ComplexArray
+
+    def __call__(self, frequency_hz: FloatArray) -> ComplexArray:
+        """Evaluate at (F,) frequencies in Hz; returns (F, K)."""
+        return self.matrix(frequency_hz) @ self.values
+
+    def matrix(self, frequency_hz: FloatArray) -> ComplexArray:
+        """(F, M) matrix that maps sample values to values at the given frequencies."""
+        return barycentric_matrix(np.atleast_1d(frequency_hz), self.frequency_hz, self.weight)
+
+    def poles_hz(self) -> ComplexArray:
+        """Poles in the complex frequency plane, Hz; a decaying mode has a positive imaginary part."""
+        used = self.weight != 0
+        scale = float(self.frequency_hz[-1])
+        return _poles(self.frequency_hz[used] / scale, self.weight[used]) * scale
+
+    def residues(self, poles_hz: ComplexArray) -> ComplexArray:
+        """Residues at simple poles, (P, K), in units of the values times Hz."""
+        used = self.weight != 0
+        cauchy = 1.0 / (poles_hz[:, None] - self.frequency_hz[used][None])
+        numerator = (cauchy * self.weight[used]) @ self.values[used]
+        slope = -(cauchy**2) @ self.weight[used]
+        return np.asarray(numerator / slope[:, None], dtype=np.complex128)
+
+
+@dataclass(frozen=True)
+class Sweep:
+    """Outcome of an adaptive sweep.
+
+    Attributes
+    ----------
+    model : RationalModel
+    converged : bool
+    error : float
+        Last difference between prediction and model, relative to the median norm of the values.
+    spare_models : tuple of RationalModel
+        Fits with one sample left out, for judging which poles are real.
+    """
+
+    model: RationalModel
+    converged: bool
+    error: float
+    spare_models: tuple[RationalModel, ...]
+
+
+def barycentric_matrix(
+    frequency_hz: FloatArray, samples_hz: FloatArray, weight: ComplexArray
+) -> ComplexArray:
+    """(F, M) interpolation matrix of a barycentric rational function."""
+    difference = frequency_hz[:, None] - samples_hz[None]
+    hit = (difference == 0) & (weight != 0)[None]
+    with np.errstate(divide="ignore", invalid="ignore"):  # exact hits are overwritten below
+        cauchy = weight[None] / difference
+        matrix = cauchy / cauchy.sum(axis=1, keepdims=True)
+    # A sample of weight 0 that is asked for gives 0/0 in its own column: it takes no part.
+    matrix[:, weight == 0] = 0
+    lost = (difference == 0) & (weight == 0)[None]
+    for row in np.flatnonzero(lost.any(axis=1)):
+        terms = np.where(weight != 0, weight / np.where(lost[row], 1.0, difference[row]), 0)
+        matrix[row] = terms / terms.sum()
+    rows = np.flatnonzero(hit.any(axis=1))
+    matrix[rows] = hit[rows]
+    return np.asarray(matrix, dtype=np.complex128)
+
+
+def fit_weights(
+    frequency: FloatArray, sketch: ComplexArray, tolerance: float
+) -> tuple[ComplexArray, float]:
+    """Set-valued AAA: barycentric weights for few vector-valued samples.
+
+    Parameters
+    ----------
+    frequency : (M,) float array
+        Scaled to order one.
+    sketch : (M, K) complex array
+    tolerance : float
+        Largest misfit at the samples that are not interpolated, relative to the largest norm.
+
+    Returns
+    -------
+    weights : (M,) complex array
+        0 for samples not used as support points.
+    misfit : float
+    """
+    count, width = sketch.shape
+    scale = float(np.max(np.linalg.norm(sketch, axis=1)))
+    support: list[int] = []
+    rest = list(range(count))
+    fitted = np.broadcast_to(sketch.mean(axis=0), sketch.shape)
+    best: tuple[list[int], ComplexArray] | None = None
+    misfit = np.inf
+    while len(rest) > 1 and (len(rest) - 1) * width >= len(support) + 1:
+        worst = int(np.argmax(np.linalg.norm(sketch[rest] - fitted[rest], axis=1)))
+        support.append(rest.pop(worst))
+        cauchy = 1.0 / (frequency[rest][:, None] - frequency[support][None])
+        gaps = sketch[rest][:, :, None] - sketch[support].T[None]
+        loewner = (gaps * cauchy[:, None, :]).reshape(-1, len(support))
+        weights = np.linalg.svd(loewner, full_matrices=False)[2][-1].conj()
+        fitted = sketch.copy()
+        fitted[rest] = (cauchy * weights) @ sketch[support] / (cauchy @ weights)[:, None]
+        misfit = float(np.max(np.linalg.norm(sketch[rest] - fitted[rest], axis=1))) / scale
+        best = (list(support), weights)
+        if misfit < tolerance:
+            break
+    if best is None:
+        raise ValueError(f"a rational fit needs at least 3 samples, got {count}")
+    result = np.zeros(count, dtype=np.complex128)
+    result[best[0]] = best[1]
+    return result, misfit
+
+
+def _poles(frequency: FloatArray, weight: ComplexArray) -> ComplexArray:
+    """Zeros of the barycentric denominator by its arrowhead pencil."""
+    count = len(frequency)
+    right = np.eye(count + 1, dtype=np.complex128)
+    right[0, 0] = 0
+    left = np.zeros((count + 1, count + 1), dtype=np.complex128)
+    left[0, 1:] = weight
+    left[1:, 0] = 1
+    left[1:, 1:] = np.diag(frequency)
+    poles = scipy.linalg.eigvals(left, right)
+    return np.asarray(poles[np.isfinite(poles)], dtype=np.complex128)
+
+
+def adaptive_sweep(
+    solve: Callable[[float], ComplexArray],
+    start_hz: float,
+    stop_hz: float,
+    *,
+    tolerance: float = 1e-3,
+    most_samples: int = 40,
+    seed: int = 20,
+) -> Sweep:
+    """Sample a vector response until a rational function describes it over a whole band.
+
+    Parameters
+    ----------
+    solve : callable
+        Frequency in Hz to a (K,) complex vector.
+    start_hz, stop_hz : float
+    tolerance : float
+        Largest difference between successive models relative to the median norm of the response;
+        at least 3e-4, to stay clear of the engine's noise.
+    most_samples : int
+        Cap on solved frequencies; a sweep that reaches it says it did not converge.
+    seed : int
+        Of the random projection that compresses the vectors for the fit.
+
+    Returns
+    -------
+    Sweep
+    """
+    search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed)
+    while True:
+        frequency, difference = search.where_models_differ()
+        if difference < search.tolerance:
+            frequency = search.emptiest()
+            difference = search.error_at(frequency)
+            if difference < search.tolerance:
+                return search.result(converged=True, error=difference)
+        elif len(search.frequencies) < most_samples:
+            search.add(frequency)
+        if len(search.frequencies) >= most_samples:
+            return search.result(converged=False, error=difference)
+
+
+class _Search:
+    """Samples taken so far, the present fit and the one before it."""
+
+    def __init__(
+        self,
+        solve: Callable[[float], ComplexArray],
+        start_hz: float,
+        stop_hz: float,
+        tolerance: float,
+        seed: int,
+    ) -> None:
+        self.solve = solve
+        self.start_hz, self.stop_hz = start_hz, stop_hz
+        self.tolerance = tolerance
+        angles = np.arange(FIRST_SAMPLES) * np.pi / (FIRST_SAMPLES - 1)
+        first = (start_hz + stop_hz) / 2 - (stop_hz - start_hz) / 2 * np.cos(angles)
+        first[0], first[-1] = start_hz, stop_hz
+        self.frequencies: list[float] = [float(f) for f in first]
+        self.values = [solve(f) for f in self.frequencies]
+        size = len(self.values[0])
+        rng = np.random.default_rng(seed)
+        self.projection = rng.standard_normal((size, min(SKETCH, size))) / np.sqrt(size)
+        self.sketch = [value @ self.projection for value in self.values]
+        self.candidates = np.linspace(start_hz, stop_hz, CANDIDATES)
+        # The first comparison is with the fit that lacks the sample in the middle of the band.
+        middle = FIRST_SAMPLES // 2
+        self.before = self._on_candidates([k for k in range(FIRST_SAMPLES) if k != middle])
+        self.now = self._on_candidates(range(FIRST_SAMPLES))
+
+    def _weights(self, chosen: list[int] | range) -> ComplexArray:
+        frequency = np.array([self.frequencies[k] for k in chosen]) / self.stop_hz
+        sketch = np.array([self.sketch[k] for k in chosen])
+        fit_tolerance = max(self.tolerance / 10, FIT_TOLERANCE_FLOOR)
+        return fit_weights(frequency, sketch, fit_tolerance)[0]
+
+    def _on_candidates(self, chosen: list[int] | range) -> ComplexArray:
+        samples = np.array([self.frequencies[k] for k in chosen])
+        sketch = np.array([self.sketch[k] for k in chosen])
+        matrix = barycentric_matrix(self.candidates, samples, self._weights(chosen))
+        return np.asarray(matrix @ sketch)
+
+    def scale(self) -> float:
+        return float(np.median(np.linalg.norm(self.now, axis=1)))
+
+    def where_models_differ(self) -> tuple[float, float]:
+        difference = np.linalg.norm(self.now - self.before, axis=1) / self.scale()
+        worst = float(difference.max())
+        taken = np.array(self.frequencies)
+        near = np.min(abs(self.candidates[:, None] - taken[None]), axis=1)
+        difference[near < 1e-3 * (self.stop_hz - self.start_hz)] = -1.0
+        return float(self.candidates[int(np.argmax(difference))]), worst
+
+    def add(self, frequency_hz: float) -> None:
+        self.frequencies.append(frequency_hz)
+        self.values.append(self.solve(frequency_hz))
+        self.sketch.append(self.values[-1] @ self.projection)
+        self.before, self.now = self.now, self._on_candidates(range(len(self.frequencies)))
+
+    def emptiest(self) -> float:
+        """Middle of the widest interval without a sample, judged as Chebyshev nodes lie."""
+        middle, half = (self.start_hz + self.stop_hz) / 2, (self.stop_hz - self.start_hz) / 2
+        angles = np.sort(np.arccos(np.clip((middle - np.array(self.frequencies)) / half, -1, 1)))
+        widest = int(np.argmax(np.diff(angles)))
+        return float(middle - half * np.cos((angles[widest] + angles[widest + 1]) / 2))
+
+    def error_at(self, frequency_hz: float) -> float:
+        """Solve one more frequency and return how far the model was off there."""
+        count = len(self.frequencies)
+        samples = np.array(self.frequencies)
+        matrix = barycentric_matrix(
+            np.array([frequency_hz]), samples, self._weights(range(count))
+        )
+        predicted = (matrix @ np.array(self.sketch))[0]
+        self.add(frequency_hz)
+        return float(np.linalg.norm(self.sketch[-1] - predicted)) / self.scale()
+
+    def result(self, *, converged: bool, error: float) -> Sweep:
+        order = np.argsort(self.frequencies)
+        spare = []
+        for drop in _left_out(len(order)):
+            spare.append(self._model([int(k) for k in np.delete(order, drop)]))
+        return Sweep(self._model([int(k) for k in order]), converged, error, tuple(spare))
+
+    def _model(self, chosen: list[int]) -> RationalModel:
+        return RationalModel(
+            np.array([self.frequencies[k] for k in chosen]),
+            self._weights(chosen),
+            np.array([self.values[k] for k in chosen]),
+        )
+
+
+def _left_out(count: int) -> tuple[int, ...]:
+    """Inner samples to leave out in turn: one in each third of the band."""
+    return tuple(sorted({max(1, min(count - 2, round(count * t))) for t in (0.25, 0.5, 0.75)}))
