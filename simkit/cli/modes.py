@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -16,6 +16,9 @@ from simkit.cli.output import (
     quantity_text,
     table,
 )
+
+if TYPE_CHECKING:
+    import xarray as xr
 
 Row = dict[str, Any]
 
@@ -43,7 +46,6 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None) -> None
     from simkit.store.rows import modes
 
     dataset = open_results(results)
-    units = {name: str(c.attrs.get("units", "1")) for name, c in dataset.coords.items()}
     if case is not None:
         if case not in dataset["case"].values:
             last = int(dataset["case"].values.max())
@@ -53,9 +55,19 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None) -> None
     if form == "json":
         emit(json_text(rows))
     elif form == "csv":
-        emit(csv_text(flat_rows(rows, units)))
+        emit(csv_text(flat_rows(rows, _attribute(dataset, "units"))))
     else:
-        emit(f"{modes_table(rows, units)}\n\n{_KEY}")
+        emit(f"{modes_table(rows, _attribute(dataset, 'display_unit'))}\n\n{_KEY}")
+
+
+def _attribute(dataset: xr.Dataset, attribute: str) -> dict[str, str]:
+    """One attribute of every swept value, under its name in the study."""
+    from simkit.store import swept_names
+
+    return {
+        name: str(dataset[stored].attrs.get(attribute, "1"))
+        for name, stored in swept_names(dataset).items()
+    }
 
 
 def flat_rows(rows: list[Row], units: dict[str, str]) -> list[Row]:

@@ -35,13 +35,18 @@ def number_text(value: float | None, digits: int = 1, unit: str = "") -> str:
     return f"{value:.{digits}f} {unit}".rstrip()
 
 
-def quantity_text(value: float, units: str) -> str:
-    """Return an SI value the way the workshop says it: metres in mm, hertz with a prefix."""
-    if units == "m":
-        return f"{value * 1e3:.6g} mm"
-    if units == "Hz":
-        return frequency_text(value)
-    return f"{value:.6g}" if units in {"", "1"} else f"{value:.6g} {units}"
+def quantity_text(value: float, unit: str) -> str:
+    """Return an SI value in the unit given, one a study file may use.
+
+    Examples
+    --------
+    >>> quantity_text(0.0765, "mm")
+    '76.5 mm'
+    """
+    from simkit.study.units import find_unit
+
+    shown = f"{value / float(find_unit(unit).factor):.6g}"
+    return shown if unit in {"", "1"} else f"{shown} {unit}"
 
 
 def length_text(value_m: float) -> str:

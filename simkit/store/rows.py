@@ -80,7 +80,7 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
             "the dataset has no coordinate 'case': give it as simkit.open_results returns it, "
             "or cases chosen with dataset.sel(case=...)"
         )
-    names = swept_names(dataset)
+    names = _stored_names(dataset)
     if "case" not in dataset.dims:
         dataset = dataset.expand_dims("case")
     wanted = ["status", "reason", "solves", "impedance", "mode_half_waves", "driven"]
@@ -89,30 +89,32 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
     return [_row(table.isel(case=place), names) for place in range(table.sizes["case"])]
 
 
-def swept_names(dataset: xr.Dataset) -> tuple[str, ...]:
-    """Return the names of the swept values: the coordinates that go with `case`, but itself."""
+def _stored_names(dataset: xr.Dataset) -> dict[str, str]:
+    """Names of the swept values in the study, each with the name of its coordinate."""
+    if "swept" in dataset.attrs:
+        return dict(dataset.attrs["swept"])
     along = dataset["case"].dims  # none in a single case
-    return tuple(
-        str(name)
+    return {
+        str(name): str(name)
         for name, coordinate in dataset.coords.items()
         if coordinate.dims == along and name != "case"
-    )
+    }
 
 
 def _opened(results: xr.Dataset | str | PathLike[str]) -> xr.Dataset:
     if isinstance(results, str | PathLike):
         from simkit.store import open_results
 
-        return open_results(results)
+        results = open_results(results)
     return results
 
 
-def _row(case: xr.Dataset, names: tuple[str, ...]) -> Row:
+def _row(case: xr.Dataset, names: dict[str, str]) -> Row:
     status = Status(int(case["status"]))
     row: Row = {"case": int(case["case"]), "status": status.label}
     if reason := str(case["reason"].values):
         row["reason"] = reason
-    row["values"] = {name: float(case[name]) for name in names}
+    row["values"] = {name: float(case[stored]) for name, stored in names.items()}
     row["solves"] = int(case["solves"])
     row["modes"] = _modes(case)
     row["resonances"] = _resonances(case, row["modes"])

@@ -24,11 +24,11 @@ def test_frequency_text(frequency_hz: float | None, text: str) -> None:
 
 
 @pytest.mark.parametrize(
-    ("value", "units", "text"),
-    [(0.0765, "m", "76.5 mm"), (2.7, "1", "2.7"), (1.5e7, "S/m", "1.5e+07 S/m")],
+    ("value", "unit", "text"),
+    [(0.0765, "mm", "76.5 mm"), (2.7, "1", "2.7"), (0.0254, "in", "1 in"), (9e8, "MHz", "900 MHz")],
 )
-def test_quantity_text(value: float, units: str, text: str) -> None:
-    assert output.quantity_text(value, units) == text
+def test_quantity_text(value: float, unit: str, text: str) -> None:
+    assert output.quantity_text(value, unit) == text
 
 
 @pytest.mark.parametrize(

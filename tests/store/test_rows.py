@@ -114,3 +114,8 @@ def test_a_single_case_gives_one_row(dataset: xr.Dataset) -> None:
 def test_a_dataset_without_cases_is_refused(dataset: xr.Dataset) -> None:
     with pytest.raises(StoreError, match="no coordinate 'case'"):
         modes(dataset.drop_vars("case"))
+
+
+def test_a_value_stored_under_another_name_keeps_its_own(dataset: xr.Dataset) -> None:
+    renamed = dataset.rename(arm="swept_length").assign_attrs(swept={"length": "swept_length"})
+    assert modes(renamed)[1]["values"] == {"length": 0.075}

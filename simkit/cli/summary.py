@@ -1,0 +1,247 @@
+"""What `simkit check` says of a study: strips, feed, sweep, wires, cost."""
+
+from __future__ import annotations
+
+import math
+import os
+from collections.abc import Sequence
+from itertools import pairwise
+from typing import TYPE_CHECKING
+
+from simkit.cli.output import (
+    duration_text,
+    frequency_text,
+    length_text,
+    quantity_text,
+    size_text,
+    table,
+)
+from simkit.errors import GeometryError, SimkitError
+from simkit.study.model import Antenna, CutFeed, Strip
+
+if TYPE_CHECKING:
+    from simkit.geometry import MeshPlan, WireGrid
+    from simkit.runner.result import CaseResult
+    from simkit.study import Study
+
+_NAME_WIDTH = 14
+_SHOWN_POINTS = 6
+_SHOWN_PROBLEMS = 10
+_TIMED_SOLVE_LIMIT_S = 600.0
+
+
+def labelled(name: str, text: str) -> str:
+    """Return a name in the left column with text beside it; further lines stay in their column."""
+    return name.ljust(_NAME_WIDTH) + text.replace("\n", "\n" + " " * _NAME_WIDTH)
+
+
+def study_text(study: Study) -> str:
+    """Return title, values, strips, feed, metal, band and sweep as simkit understood them."""
+    nominal = study.nominal()
+    band = nominal.frequency
+    values = [f"{name} {_value(study, name, value)}" for name, value in study.values.items()]
+    parts = [
+        f"{study.title} ({study.path})",
+        labelled("Values", ", ".join(values) or "none"),
+        labelled("Strips", strips_table(nominal.strips)),
+        labelled("Feed", feed_text(nominal)),
+        labelled("Metal", metal_text(nominal)),
+        labelled(
+            "Band",
+            f"{frequency_text(band.start_hz)} to {frequency_text(band.stop_hz)}, "
+            f"{band.points} points",
+        ),
+        labelled("Sweep", sweep_text(study)),
+    ]
+    if study.measured:
+        files = [f"{m.path}{_build(study, m.build)}" for m in study.measured]
+        parts.append(labelled("Measured", "\n".join(files)))
+    return "\n".join(parts)
+
+
+def strips_table(strips: Sequence[Strip]) -> str:
+    """Return one line per strip: name, width, developed length, path."""
+    rows = [
+        [strip.name, length_text(strip.width_m), length_text(developed_m(strip)), _path(strip)]
+        for strip in strips
+    ]
+    return table(["name", "width", "developed", "centre line, mm"], rows)
+
+
+def developed_m(strip: Strip) -> float:
+    """Return the length of a strip's centre line, metres: what to cut before bending."""
+    points = strip.path_m
+    return sum(math.dist(a, b) for a, b in pairwise(points))
+
+
+def _path(strip: Strip) -> str:
+    points = [f"({x * 1e3:.4g}, {y * 1e3:.4g})" for x, y in strip.path_m]
+    if len(points) > _SHOWN_POINTS:
+        left_out = len(points) - 4
+        points = [*points[:3], f"... {left_out} more ...", points[-1]]
+    return " ".join(points)
+
+
+def feed_text(antenna: Antenna) -> str:
+    """Return where the source sits and what reflections refer to."""
+    feed = antenna.feed
+    if isinstance(feed, CutFeed):
+        place = (
+            f"a cut {length_text(feed.gap_m)} wide across {feed.strip}, "
+            f"{length_text(feed.at_m)} along its centre line"
+        )
+    else:
+        place = (
+            f"between {feed.from_strip}.{feed.from_end} and {feed.to_strip}.{feed.to_end}, "
+            f"{length_text(_end_gap_m(antenna))} apart"
+        )
+    return f"{place}; reflections refer to {antenna.reference_ohm:.6g} ohm"
+
+
+def _end_gap_m(antenna: Antenna) -> float:
+    feed = antenna.feed
+    if isinstance(feed, CutFeed):
+        return feed.gap_m
+    paths = {strip.name: strip.path_m for strip in antenna.strips}
+    first = paths[feed.from_strip][0 if feed.from_end == "start" else -1]
+    second = paths[feed.to_strip][0 if feed.to_end == "start" else -1]
+    return math.dist(first, second)
+
+
+def metal_text(antenna: Antenna) -> str:
+    """Return material, thickness and conductivity."""
+    metal = antenna.metal
+    if metal.conductivity_s_per_m is None:
+        return "perfect conductor" + (
+            f", {length_text(metal.thickness_m)}" if metal.thickness_m else ""
+        )
+    return (
+        f"{metal.material}, {length_text(metal.thickness_m)}, {metal.conductivity_s_per_m:.3g} S/m"
+    )
+
+
+def sweep_text(study: Study) -> str:
+    """Return each swept name with its values, and the number of cases."""
+    if not study.swept:
+        return "none, 1 case"
+    lines = []
+    for swept in study.swept:
+        shown = [_value(study, swept.name, value) for value in swept.values]
+        if len(shown) > 8:
+            shown = [*shown[:3], "...", shown[-1]]
+        lines.append(f"{swept.name}: {', '.join(shown)} ({len(swept.values)} values)")
+    how = "every value with every other" if study.method == "grid" else "values in step"
+    return "\n".join([*lines, f"{study.case_count} cases, {how}"])
+
+
+def _value(study: Study, name: str, value: float) -> str:
+    return quantity_text(value, study.display_unit(name))
+
+
+def _build(study: Study, build: dict[str, float]) -> str:
+    values = [f"{name} {_value(study, name, value)}" for name, value in build.items()]
+    return f" (as built: {', '.join(values)})" if values else ""
+
+
+def mesh_of(study: Study) -> MeshPlan:
+    """Return the mesh all cases of a study share."""
+    from simkit.geometry import plan_mesh
+
+    return plan_mesh(case.antenna for case in study.cases() if case.antenna is not None)
+
+
+def case_problems(study: Study, plan: MeshPlan) -> list[str]:
+    """Return one sentence for each case that will be refused."""
+    from simkit.geometry import build_wires
+
+    found = []
+    for case in study.cases():
+        reason = case.refused
+        if case.antenna is not None:
+            try:
+                build_wires(case.antenna, plan)
+            except GeometryError as error:
+                reason = str(error)
+        if reason:
+            found.append(f"case {case.index}{_build(study, case.values)}: {reason}")
+    return found
+
+
+def wires_text(wires: WireGrid, antenna: Antenna) -> str:
+    """Return the model, its wires, the error to expect and the limits it exceeds."""
+    lengths_mm = [wire.segment_m * 1e3 for wire in wires.wires]
+    kind = "line: one wire on the centre line of each strip"
+    if antenna.model == "auto":
+        kind += " (chosen by auto: every strip has constant width)"
+    lines = [
+        labelled("Model", kind),
+        labelled(
+            "Wires",
+            f"{len(wires.wires)}, radius {wires.radius_m * 1e3:.3g} mm, {wires.segments} segments "
+            f"(unknowns) of {min(lengths_mm):.3g} to {max(lengths_mm):.3g} mm",
+        ),
+        labelled(
+            "Expected error", f"{wires.relative_error * 100:.2g} % of mode frequencies (1 sigma)"
+        ),
+    ]
+    lines += [labelled("Doubtful", doubt) for doubt in wires.doubts]
+    return "\n".join(lines)
+
+
+def problems_text(problems: Sequence[str], cases: int) -> str:
+    """Return how many cases cannot be built, and why."""
+    if not problems:
+        return labelled("Cases", f"{cases}, all can be built")
+    shown = list(problems[:_SHOWN_PROBLEMS])
+    if len(problems) > len(shown):
+        shown.append(f"... and {len(problems) - len(shown)} more")
+    head = f"{len(problems)} of {cases} cannot be built and will be refused:"
+    return labelled("Cases", "\n".join([head, *shown]))
+
+
+def timed_solve(antenna: Antenna, plan: MeshPlan) -> CaseResult:
+    """Solve one antenna in a process that can be killed.
+
+    Raises
+    ------
+    SimkitError
+        If it has no solution.
+    """
+    from simkit.engine.child import Child, Kind
+
+    with Child("simkit.runner.solve:solve_case") as child:
+        outcome = child.call(antenna, plan, limit_s=_TIMED_SOLVE_LIMIT_S)
+    if outcome.kind is Kind.BUG:
+        raise RuntimeError(outcome.trace)
+    if outcome.kind is not Kind.VALUE:
+        raise SimkitError(f"the nominal antenna has no solution: {outcome.reason}")
+    result: CaseResult = outcome.value
+    return result
+
+
+def cost_text(study: Study, wires: WireGrid, result: CaseResult) -> str:
+    """Return the estimates of time and disk from one timed solution."""
+    from simkit.store import estimate_bytes
+
+    workers = os.cpu_count() or 1
+    antenna = study.nominal()
+    size = estimate_bytes(
+        cases=study.case_count,
+        frequencies=antenna.frequency.points,
+        strips=len(antenna.strips),
+        segments=wires.segments,
+    )
+    total_s = result.seconds * math.ceil(study.case_count / workers)
+    one = f"{duration_text(result.seconds)}, {result.solves} engine solves: {result.status.label}"
+    if result.reason:
+        one += f", {result.reason}"
+    return "\n".join(
+        [
+            labelled("One case", one),
+            labelled(
+                "The run",
+                f"about {duration_text(total_s)} with {workers} workers, "
+                f"about {size_text(size)} of disk",
+            ),
+        ]
+    )

@@ -1,0 +1,96 @@
+"""What `simkit check` says, from antennas made here: bent strips of unequal length."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from simkit.cli import summary
+from simkit.geometry import build_wires, plan_mesh
+from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
+
+EAST = Strip("east", ((0.001, 0.0), (0.061, 0.0), (0.061, 0.04)), 0.003)
+WEST = Strip("west", ((-0.001, 0.0), (-0.071, 0.0)), 0.003)
+ANTENNA = Antenna(
+    strips=(EAST, WEST),
+    metal=Metal("brass", 1.5e7, 0.00015),
+    feed=EndFeed("west", "start", "east", "start"),
+    reference_ohm=50.0,
+    frequency=FrequencyBand(3e8, 3e9, 271),
+)
+
+
+def test_developed_length_follows_the_bend() -> None:
+    assert summary.developed_m(EAST) == pytest.approx(0.1, abs=1e-12)
+
+
+def test_strips_table_gives_width_developed_length_and_path() -> None:
+    line = summary.strips_table(ANTENNA.strips).splitlines()[2]
+    assert line.split() == [
+        "east",
+        "3",
+        "mm",
+        "100",
+        "mm",
+        "(1,",
+        "0)",
+        "(61,",
+        "0)",
+        "(61,",
+        "40)",
+    ]
+
+
+def test_long_paths_are_shortened_in_the_middle() -> None:
+    curve = Strip("bow", tuple((x, x**2) for x in np.linspace(0, 0.05, 41)), 0.003)
+    text = summary.strips_table([curve])
+    assert "... 37 more ... (50, 2.5)" in text
+
+
+def test_end_feed_names_both_ends_and_their_distance() -> None:
+    text = summary.feed_text(ANTENNA)
+    assert text == "between west.start and east.start, 2 mm apart; reflections refer to 50 ohm"
+
+
+def test_cut_feed_names_place_and_gap() -> None:
+    text = summary.feed_text(replace(ANTENNA, feed=CutFeed("west", 0.012, 0.0005)))
+    assert text.startswith("a cut 0.5 mm wide across west, 12 mm along its centre line")
+
+
+@pytest.mark.parametrize(
+    ("metal", "text"),
+    [
+        (Metal("brass", 1.5e7, 0.00015), "brass, 0.15 mm, 1.5e+07 S/m"),
+        (Metal("perfect conductor", None, 0.0), "perfect conductor"),
+        (Metal("perfect conductor", None, 0.0002), "perfect conductor, 0.2 mm"),
+    ],
+    ids=["brass", "foil", "sheet"],
+)
+def test_metal(metal: Metal, text: str) -> None:
+    assert summary.metal_text(replace(ANTENNA, metal=metal)) == text
+
+
+def test_wires_are_counted_with_radius_unknowns_and_expected_error() -> None:
+    wires = build_wires(ANTENNA, plan_mesh([ANTENNA]))
+    text = summary.wires_text(wires, ANTENNA)
+    assert f"{wires.segments} segments (unknowns)" in text
+    assert f"radius {wires.radius_m * 1e3:.3g} mm" in text
+    assert "chosen by auto" in text
+    assert f"{wires.relative_error * 100:.2g} % of mode frequencies" in text
+    assert "chosen by auto" not in summary.wires_text(wires, replace(ANTENNA, model="line"))
+
+
+def test_doubts_are_shown() -> None:
+    wires = replace(build_wires(ANTENNA, plan_mesh([ANTENNA])), doubts=("legs of 2 widths",))
+    assert summary.wires_text(wires, ANTENNA).splitlines()[-1] == "Doubtful      legs of 2 widths"
+
+
+def test_problems_are_counted_and_cut_short() -> None:
+    text = summary.problems_text([f"case {n}: crosses itself" for n in range(13)], 20)
+    assert text.startswith("Cases         13 of 20 cannot be built")
+    assert "case 9:" in text
+    assert "case 10:" not in text
+    assert text.endswith("... and 3 more")
+    assert summary.problems_text([], 7) == "Cases         7, all can be built"
