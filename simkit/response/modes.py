@@ -1,0 +1,190 @@
+"""Natural modes: the poles of the current response, with their current shapes."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from simkit.geometry.wires import Chain, FloatArray, WireGrid
+from simkit.response.rational import ComplexArray, Sweep
+
+LEAST_RESIDUE = 1e-3
+"""Poles whose residue is smaller than this part of the largest are noise of the fit."""
+
+SURVIVAL = 0.05
+"""A real pole moves by less than this part of its half width when a sample is left out.
+
+Real ones move by under 0.5 %, the poles with which a fit paints its background by 5 % and more.
+"""
+
+LEAST_Q = 0.5
+"""Below this a pole is overdamped: no resonance and no half waves to count."""
+
+QUIET = 0.05
+"""Currents under this part of the largest do not count when phase reversals are counted."""
+
+
+@dataclass(frozen=True)
+class NaturalMode:
+    """One pole of the antenna.
+
+    Attributes
+    ----------
+    pole_hz : complex
+        Complex natural frequency; its imaginary part, positive, is the decay rate over 2 pi.
+    half_waves : int
+        Half waves of current along the tip-to-tip path (whole periods times two on a loop).
+    current : (S,) complex array
+        Segment currents, the largest being 1 and real.
+    feed_residue_hz : complex
+        Residue of the feed admittance, siemens times Hz: how strongly the feed excites the mode.
+    """
+
+    pole_hz: complex
+    half_waves: int
+    current: ComplexArray
+    feed_residue_hz: complex
+
+    @property
+    def frequency_hz(self) -> float:
+        """Natural frequency, real part of the pole."""
+        return self.pole_hz.real
+
+    @property
+    def q(self) -> float:
+        """Quality factor Re/(2 Im) of the pole."""
+        return self.pole_hz.real / (2 * self.pole_hz.imag)
+
+    def feed_admittance(self, frequency_hz: FloatArray) -> ComplexArray:
+        """The mode's own part of the feed admittance, siemens."""
+        return np.asarray(self.feed_residue_hz / (frequency_hz - self.pole_hz))
+
+
+def find_modes(
+    sweep: Sweep, grid: WireGrid, start_hz: float, stop_hz: float
+) -> tuple[NaturalMode, ...]:
+    """Natural modes of a band from a sweep with two sources.
+
+    Parameters
+    ----------
+    sweep : Sweep
+        Its values are the segment currents for the feed followed by those for the second source.
+    grid : WireGrid
+    start_hz, stop_hz : float
+        Band of the sweep. A pole somewhat below it is kept if the band holds its upper half width,
+        because the dip it owns lies above it.
+
+    Returns
+    -------
+    tuple of NaturalMode
+        In ascending order of frequency.
+
+    Notes
+    -----
+    The response is the current for an impressed voltage, so the poles depend neither on the place
+    nor on the gap of the feed. A mode's residues for both sources are one shape times two coupling
+    factors; the shape is taken from both by singular values, so that a mode at whose node one of
+    the sources sits is found from the other.
+    """
+    poles = sweep.model.poles_hz()
+    keep = (poles.imag > 0) & (poles.real <= stop_hz) & (poles.real + poles.imag >= start_hz)
+    keep &= poles.real > 2 * LEAST_Q * poles.imag
+    poles = poles[keep]
+    for spare in sweep.spare_models:
+        poles = _surviving(poles, spare.poles_hz())
+    if not poles.size:
+        return ()
+    residues = sweep.model.residues(poles)
+    size = np.linalg.norm(residues, axis=1)
+    strong = size > LEAST_RESIDUE * size.max()
+    poles, residues = poles[strong], residues[strong]
+    return tuple(
+        _mode(complex(poles[k]), residues[k], grid) for k in np.argsort(poles.real)
+    )
+
+
+def _surviving(poles: ComplexArray, others: ComplexArray) -> ComplexArray:
+    if not poles.size or not others.size:
+        return poles[:0]
+    moved = np.min(abs(poles[:, None] - others[None]), axis=1)
+    return poles[moved < SURVIVAL * poles.imag]
+
+
+def _mode(pole_hz: complex, residue: ComplexArray, grid: WireGrid) -> NaturalMode:
+    by_source = residue.reshape(2, -1)
+    shape = np.linalg.svd(by_source, full_matrices=False)[2][0]
+    shape = shape / shape[int(np.argmax(abs(shape)))]
+    feed = sum((volts * by_source[0, segment] for segment, volts in grid.source), 0j)
+    return NaturalMode(pole_hz, half_waves(shape, grid.chains[0]), shape, complex(feed))
+
+
+def half_waves(current: ComplexArray, chain: Chain) -> int:
+    """Count the half waves of a mode current along a chain.
+
+    Parameters
+    ----------
+    current : (S,) complex array
+        Segment currents.
+    chain : Chain
+
+    Returns
+    -------
+    int
+        Phase reversals plus one from tip to tip; phase reversals once round a loop.
+    """
+    along = turned_to_real(current[chain.segments] * chain.signs).real
+    loud = along[abs(along) > QUIET * abs(along).max()]
+    signs = np.sign(loud)
+    if chain.closed:
+        return int(np.sum(signs != np.roll(signs, 1)))
+    return int(np.sum(signs[1:] != signs[:-1])) + 1
+
+
+def turned_to_real(current: ComplexArray) -> ComplexArray:
+    """Rotate the common phase so that the sum of squared real parts is largest."""
+    turned = current * np.exp(-0.5j * np.angle(np.sum(current**2)))
+    return np.asarray(turned, dtype=np.complex128)
+
+
+def current_along_strips(
+    current: ComplexArray, chains: Sequence[Chain], strips: int, positions: FloatArray
+) -> ComplexArray:
+    """Currents at places along each strip, positive from its start to its end.
+
+    Parameters
+    ----------
+    current : (S,) complex array
+    chains : sequence of Chain
+    strips : int
+    positions : (P,) float array
+        0..1 along each strip.
+
+    Returns
+    -------
+    (strips, P) complex array
+        NaN for a strip on no chain. Zero at open ends.
+    """
+    result = np.full((strips, len(positions)), complex(np.nan, np.nan))
+    for chain in chains:
+        arc, value = _knots(current, chain)
+        for span in chain.spans:
+            at = span.start_m + positions * (span.end_m - span.start_m)
+            if chain.closed:
+                at = at % chain.length_m
+            forward = 1 if span.end_m > span.start_m else -1
+            result[span.strip] = forward * np.interp(at, arc, value)
+    return result
+
+
+def _knots(current: ComplexArray, chain: Chain) -> tuple[FloatArray, ComplexArray]:
+    arc, value = chain.arc_m, current[chain.segments] * chain.signs
+    if chain.closed:
+        arc = np.concatenate([[arc[-1] - chain.length_m], arc, [arc[0] + chain.length_m]])
+        return arc, np.concatenate([value[-1:], value, value[:1]])
+    zero = np.zeros(1, dtype=np.complex128)
+    return (
+        np.concatenate([[0.0], arc, [chain.length_m]]),
+        np.concatenate([zero, value, zero]),
+    )

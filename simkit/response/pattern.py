@@ -1,0 +1,164 @@
+"""Far field, directivity and gain from segment currents (angles from +z and from +x; IEEE Std 145)."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cache
+
+import numpy as np
+from scipy.constants import c as light_speed
+from scipy.constants import epsilon_0, mu_0
+
+from simkit.geometry.wires import FloatArray, WireGrid
+from simkit.response.rational import ComplexArray
+
+WAVE_IMPEDANCE_OHM = float(np.sqrt(mu_0 / epsilon_0))
+
+
+@dataclass(frozen=True)
+class Radiators:
+    """Segments as short straight currents.
+
+    Attributes
+    ----------
+    middle_m : (S, 3) float array
+    direction : (S, 3) float array
+        Unit vectors along positive current.
+    length_m : (S,) float array
+    """
+
+    middle_m: FloatArray
+    direction: FloatArray
+    length_m: FloatArray
+
+    @classmethod
+    def of(cls, grid: WireGrid) -> Radiators:
+        """Segments of a wire grid."""
+        starts, ends = grid.ends_m()
+        along = ends - starts
+        length = np.linalg.norm(along, axis=1)
+        return cls((starts + ends) / 2, along / length[:, None], length)
+
+
+def far_field(
+    radiators: Radiators,
+    current: ComplexArray,
+    frequency_hz: float,
+    theta_rad: FloatArray,
+    phi_rad: FloatArray,
+) -> tuple[ComplexArray, ComplexArray]:
+    """E_theta and E_phi times distance, the factor exp(-jkr) left out.
+
+    Parameters
+    ----------
+    radiators : Radiators
+    current : (S,) complex array
+        Peak values at the segment middles, ampere.
+    frequency_hz : float
+    theta_rad, phi_rad : (D,) float arrays
+        Directions.
+
+    Returns
+    -------
+    e_theta, e_phi : (D,) complex arrays
+        Volts.
+    """
+    k = 2 * np.pi * frequency_hz / light_speed
+    sin_t, cos_t = np.sin(theta_rad), np.cos(theta_rad)
+    sin_p, cos_p = np.sin(phi_rad), np.cos(phi_rad)
+    outwards = np.stack([sin_t * cos_p, sin_t * sin_p, cos_t], axis=1)
+    phase = np.exp(1j * k * (outwards @ radiators.middle_m.T))
+    # Current k-harmonic and phase across a segment, to second order in its electrical length.
+    slant = outwards @ radiators.direction.T
+    fall = 1 - (k * radiators.length_m) ** 2 / 24 * (1 + slant**2)
+    moment = (phase * fall) @ (
+        (current * radiators.length_m)[:, None] * radiators.direction
+    )
+    factor = -1j * k * WAVE_IMPEDANCE_OHM / (4 * np.pi)
+    along_theta = np.stack([cos_t * cos_p, cos_t * sin_p, -sin_t], axis=1)
+    along_phi = np.stack([-sin_p, cos_p, np.zeros_like(sin_p)], axis=1)
+    return (
+        np.asarray(factor * np.sum(moment * along_theta, axis=1)),
+        np.asarray(factor * np.sum(moment * along_phi, axis=1)),
+    )
+
+
+def intensity_w_per_sr(e_theta: ComplexArray, e_phi: ComplexArray) -> FloatArray:
+    """Radiation intensity from far-field amplitudes (volts, peak), watt per steradian."""
+    return np.asarray((abs(e_theta) ** 2 + abs(e_phi) ** 2) / (2 * WAVE_IMPEDANCE_OHM))
+
+
+@cache
+def _sphere(size: int) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Gauss-Legendre in cos(theta), equal steps in phi: directions and weights of the sphere."""
+    nodes, weights = np.polynomial.legendre.leggauss(size)
+    phi = np.arange(2 * size) * np.pi / size
+    theta, azimuth = np.meshgrid(np.arccos(nodes), phi, indexing="ij")
+    weight = np.repeat(weights[:, None] * np.pi / size, 2 * size, axis=1)
+    return theta.ravel(), azimuth.ravel(), weight.ravel()
+
+
+def radiated_power_w(radiators: Radiators, current: ComplexArray, frequency_hz: float) -> float:
+    """Power through the sphere at infinity, watt (currents are peak values).
+
+    The number of directions follows the electrical size: a radiation intensity of a source of
+    radius a has angular orders up to about 2ka, which the Gauss grid integrates exactly.
+    """
+    centre = (radiators.middle_m.min(axis=0) + radiators.middle_m.max(axis=0)) / 2
+    reach = float(np.linalg.norm(radiators.middle_m - centre, axis=1).max())
+    size = int(np.ceil(2 * np.pi * frequency_hz / light_speed * reach)) + 6
+    theta, phi, weight = _sphere(size)
+    field = far_field(radiators, current, frequency_hz, theta, phi)
+    return float(weight @ intensity_w_per_sr(*field))
+
+
+def gain_grid_dbi(
+    radiators: Radiators,
+    current: ComplexArray,
+    frequency_hz: float,
+    power_w: float,
+    theta_deg: FloatArray,
+    phi_deg: FloatArray,
+) -> FloatArray:
+    """Gain over a power on a grid of directions, (theta, phi), dBi; nulls are cut at -100 dBi."""
+    theta, phi = np.meshgrid(np.deg2rad(theta_deg), np.deg2rad(phi_deg), indexing="ij")
+    field = far_field(radiators, current, frequency_hz, theta.ravel(), phi.ravel())
+    gain = 4 * np.pi * intensity_w_per_sr(*field).reshape(theta.shape) / power_w
+    return np.asarray(10 * np.log10(np.maximum(gain, 1e-10)))
+
+
+def peak_direction(
+    radiators: Radiators,
+    current: ComplexArray,
+    frequency_hz: float,
+    first: tuple[float, float],
+    step_deg: float,
+) -> tuple[float, float, float]:
+    """Refine the direction of the largest intensity from a grid point.
+
+    Parameters
+    ----------
+    radiators, current, frequency_hz
+    first : (float, float)
+        theta and phi in degrees of the largest value on a coarse grid.
+    step_deg : float
+        Spacing of that grid; the search is repeated on ever finer 5 x 5 grids.
+
+    Returns
+    -------
+    theta_deg, phi_deg, intensity_w_per_sr : float
+    """
+    theta0, phi0 = first
+    best = 0.0
+    while step_deg > 0.05:
+        offsets = np.linspace(-step_deg, step_deg, 5)
+        theta, phi = (a.ravel() for a in np.meshgrid(theta0 + offsets, phi0 + offsets))
+        inside = (theta >= 0) & (theta <= 180)
+        theta, phi = theta[inside], phi[inside]
+        field = far_field(radiators, current, frequency_hz, np.deg2rad(theta), np.deg2rad(phi))
+        power = intensity_w_per_sr(*field)
+        # Equal values (a ring of maxima) are settled for the first, so that runs agree.
+        top = int(np.argmax(power > power.max() * (1 - 1e-9)))
+        theta0, phi0, best = float(theta[top]), float(phi[top]), float(power[top])
+        step_deg /= 2
+    return theta0, phi0 % 360.0, best

@@ -1,0 +1,293 @@
+"""Solve one case: antenna in, everything the store keeps about it out."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+
+from simkit.engine.pynec import SeriesLoad, engine_version, solve_wires
+from simkit.errors import EngineError, GeometryError
+from simkit.geometry import MeshPlan, WireGrid, build_wires
+from simkit.geometry.conductor import strip_resistance_ohm_per_m
+from simkit.geometry.wires import FloatArray
+from simkit.response.modes import NaturalMode, current_along_strips, find_modes
+from simkit.response.ownership import OwnedFeatures, gap_susceptance_s, owned_features
+from simkit.response.pattern import (
+    Radiators,
+    gain_grid_dbi,
+    peak_direction,
+    radiated_power_w,
+)
+from simkit.response.rational import ComplexArray, Sweep, adaptive_sweep
+from simkit.runner.result import CaseResult
+from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
+from simkit.study.model import Antenna
+
+MODEL_VERSION = "line-1"
+"""Raised whenever a change of the model changes its numbers; part of every case's identity."""
+
+BALANCE_TOLERANCE = 0.03
+"""Radiated plus lost power may differ from the input power by this part before a case is doubtful.
+
+The currents come from the same moment solution as the input power, so a gap between the two is an
+inconsistency of the solution itself; sound grids stay within 1 %.
+"""
+
+
+def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
+    """Solve one case from strips to stored features.
+
+    Parameters
+    ----------
+    antenna : Antenna
+    plan : MeshPlan
+        Mesh topology of the study.
+
+    Returns
+    -------
+    CaseResult
+        `REFUSED` with the reason if the geometry cannot be modelled, `FAILED` if the engine fails.
+        Anything else that goes wrong is a bug and raises.
+    """
+    begin = time.perf_counter()
+    solves = 0
+    try:
+        grid = build_wires(antenna, plan)
+        sweep = sweep_currents(antenna, grid)
+        solves = len(sweep.model.frequency_hz)
+        arrays, doubts = _evaluate(antenna, grid, sweep)
+    except GeometryError as error:
+        return CaseResult(Status.REFUSED, str(error), time.perf_counter() - begin, solves)
+    except EngineError as error:
+        return CaseResult(Status.FAILED, str(error), time.perf_counter() - begin, solves)
+    status = Status.DOUBTFUL if doubts else Status.SOLVED
+    return CaseResult(status, "; ".join(doubts), time.perf_counter() - begin, solves, arrays)
+
+
+def case_identity() -> dict[str, str]:
+    """Versions that decide, with the resolved inputs, whether a stored case is still valid."""
+    return {"model": MODEL_VERSION, "engine": engine_version()}
+
+
+def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3) -> Sweep:
+    """Adaptive sweep of the segment currents for the feed and for the second source.
+
+    Raises
+    ------
+    EngineError
+    """
+
+    def solve(frequency_hz: float) -> ComplexArray:
+        series = SeriesLoad(_resistance_ohm_per_m(antenna, grid, frequency_hz))
+        currents = solve_wires(
+            grid.wires, grid.radius_m, frequency_hz, [grid.source, grid.probe], series=series
+        )
+        return np.asarray(currents.ravel(), dtype=np.complex128)
+
+    band = antenna.frequency
+    return adaptive_sweep(
+        solve, band.start_hz, band.stop_hz, tolerance=tolerance, most_samples=SAMPLES
+    )
+
+
+def _resistance_ohm_per_m(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> float:
+    return strip_resistance_ohm_per_m(grid.feed_width_m, antenna.metal, frequency_hz)
+
+
+def feed_impedance(grid: WireGrid, currents: ComplexArray, frequency_hz: FloatArray) -> ComplexArray:
+    """Impedance at the study's feed gap from (F, S) currents for 1 V at the feed, ohm."""
+    admittance = sum((volts * currents[:, k] for k, volts in grid.source), np.zeros(1))
+    susceptance = gap_susceptance_s(
+        frequency_hz, grid.feed_width_m, grid.model_gap_m, grid.study_gap_m
+    )
+    return np.asarray(1 / (admittance + 1j * susceptance), dtype=np.complex128)
+
+
+def _evaluate(
+    antenna: Antenna, grid: WireGrid, sweep: Sweep
+) -> tuple[dict[str, Any], list[str]]:
+    band = antenna.frequency
+    frequency_hz = np.linspace(band.start_hz, band.stop_hz, band.points)
+    currents = sweep.model.matrix(frequency_hz) @ sweep.model.values[:, : grid.segments]
+    impedance = feed_impedance(grid, currents, frequency_hz)
+    modes = find_modes(sweep, grid, band.start_hz, band.stop_hz)[:MODES]
+    features = owned_features(modes, frequency_hz, impedance, antenna.reference_ohm)
+    arrays: dict[str, Any] = {"impedance": impedance}
+    arrays |= _grid_arrays(grid) | _sample_arrays(grid, sweep)
+    arrays |= _mode_arrays(antenna, grid, modes) | _feature_arrays(features)
+    radiation = [
+        _radiation(antenna, grid, sweep, mode, owned)
+        for mode, owned in zip(modes, features, strict=True)
+    ]
+    arrays |= _stacked(radiation)
+    return arrays, _doubts(grid, sweep, modes, radiation)
+
+
+def _doubts(
+    grid: WireGrid, sweep: Sweep, modes: Sequence[NaturalMode], radiation: list[dict[str, Any]]
+) -> list[str]:
+    found = list(grid.doubts)
+    if not sweep.converged:
+        found.append(
+            f"the frequency sweep did not settle within {len(sweep.model.frequency_hz)} samples "
+            f"(last difference {sweep.error:.1e}): narrow the band"
+        )
+    for mode, row in zip(modes, radiation, strict=True):
+        if abs(row["power_balance"] - 1) > BALANCE_TOLERANCE:
+            found.append(
+                f"at {row['pattern_frequency'] / 1e6:.1f} MHz (mode of {mode.half_waves} half waves) "
+                f"radiated and lost power are {row['power_balance']:.3f} of the input power; "
+                f"1 within {BALANCE_TOLERANCE} is expected"
+            )
+    return found
+
+
+def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
+    radiators = Radiators.of(grid)
+    arrays: dict[str, Any] = {
+        "length": radiators.length_m,
+        "strip_index": grid.strip_index,
+        "strip_position": grid.strip_position,
+        "model_gap": grid.model_gap_m,
+        "study_gap": grid.study_gap_m,
+        "feed_width": grid.feed_width_m,
+        "wire_radius": grid.radius_m,
+        "source_segment": grid.source[0][0],
+    }
+    for axis, name in enumerate("xyz"):
+        arrays[name] = radiators.middle_m[:, axis]
+        arrays[f"direction_{name}"] = radiators.direction[:, axis]
+    return arrays
+
+
+def _sample_arrays(grid: WireGrid, sweep: Sweep) -> dict[str, Any]:
+    count = len(sweep.model.frequency_hz)
+    frequency = np.full(SAMPLES, np.nan)
+    frequency[:count] = sweep.model.frequency_hz
+    weight = np.full(SAMPLES, complex(np.nan, np.nan))
+    weight[:count] = sweep.model.weight
+    currents = np.full((2, SAMPLES, grid.segments), complex(np.nan, np.nan))
+    currents[:, :count] = np.moveaxis(
+        sweep.model.values.reshape(count, 2, grid.segments), 1, 0
+    )
+    return {
+        "sample_frequency": frequency,
+        "weight": weight,
+        "current": currents[0],
+        "probe_current": currents[1],
+    }
+
+
+def _mode_arrays(
+    antenna: Antenna, grid: WireGrid, modes: Sequence[NaturalMode]
+) -> dict[str, Any]:
+    positions = np.linspace(0, 1, POSITIONS)
+    strips = len(antenna.strips)
+    shapes = np.full((MODES, strips, POSITIONS), complex(np.nan, np.nan))
+    half_waves = np.full(MODES, -1)
+    for index, mode in enumerate(modes):
+        along = current_along_strips(mode.current, grid.chains, strips, positions)
+        shapes[index] = along / along.flat[int(np.nanargmax(abs(along)))]
+        half_waves[index] = mode.half_waves
+    return {
+        "mode_frequency": _padded([mode.frequency_hz for mode in modes]),
+        "mode_q": _padded([mode.q for mode in modes]),
+        "mode_half_waves": half_waves,
+        "mode_frequency_error": _padded([grid.relative_error for _ in modes]),
+        "mode_current": shapes,
+    }
+
+
+def _padded(values: Sequence[float]) -> FloatArray:
+    row = np.full(MODES, np.nan)
+    row[: len(values)] = values
+    return row
+
+
+def _feature_arrays(features: Sequence[OwnedFeatures]) -> dict[str, Any]:
+    nan = float("nan")
+    return {
+        "conductance_peak_frequency": _padded(
+            [f.peak.frequency_hz if f.peak else nan for f in features]
+        ),
+        "conductance_peak_resistance": _padded(
+            [f.peak.resistance_ohm if f.peak else nan for f in features]
+        ),
+        "series_resonance_frequency": _padded(
+            [f.series.frequency_hz if f.series else nan for f in features]
+        ),
+        "series_resonance_resistance": _padded(
+            [f.series.resistance_ohm if f.series else nan for f in features]
+        ),
+        "parallel_resonance_frequency": _padded(
+            [f.parallel.frequency_hz if f.parallel else nan for f in features]
+        ),
+        "parallel_resonance_resistance": _padded(
+            [f.parallel.resistance_ohm if f.parallel else nan for f in features]
+        ),
+        "dip_frequency": _padded([f.dip.frequency_hz if f.dip else nan for f in features]),
+        "dip_return_loss": _padded([f.dip.return_loss_db if f.dip else nan for f in features]),
+        "dip_bandwidth": _padded([f.dip.bandwidth_hz if f.dip else nan for f in features]),
+        "impedance_q": _padded([f.q for f in features]),
+    }
+
+
+def _radiation(
+    antenna: Antenna, grid: WireGrid, sweep: Sweep, mode: NaturalMode, owned: OwnedFeatures
+) -> dict[str, Any]:
+    """Pattern, gain, efficiency and power balance of one mode.
+
+    A mode the feed excites is shown as it is driven, at its conductance peak; the others by their
+    own current at the natural frequency, with the balance taken for the second source.
+    """
+    driven = owned.peak is not None
+    frequency_hz = owned.peak.frequency_hz if owned.peak else mode.frequency_hz
+    both = sweep.model(np.array([frequency_hz]))[0].reshape(2, -1)
+    fed, source = (both[0], grid.source) if driven else (both[1], grid.probe)
+    shown = fed if driven else mode.current
+    radiators = Radiators.of(grid)
+    resistance = _resistance_ohm_per_m(antenna, grid, frequency_hz)
+
+    def lost_w(current: ComplexArray) -> float:
+        return float(0.5 * resistance * np.sum(abs(current) ** 2 * radiators.length_m))
+
+    input_w = 0.5 * sum(volts * fed[segment].real for segment, volts in source)
+    radiated_w = radiated_power_w(radiators, fed, frequency_hz)
+    balance = (radiated_w + lost_w(fed)) / input_w
+    if not driven:
+        radiated_w = radiated_power_w(radiators, shown, frequency_hz)
+    efficiency = radiated_w / (radiated_w + lost_w(shown))
+    gain = gain_grid_dbi(
+        radiators, shown, frequency_hz, radiated_w / efficiency, THETA_DEG, PHI_DEG
+    )
+    top = np.unravel_index(int(np.argmax(gain)), gain.shape)
+    theta, phi, intensity = peak_direction(
+        radiators, shown, frequency_hz, (float(THETA_DEG[top[0]]), float(PHI_DEG[top[1]])), 10.0
+    )
+    directivity = 10 * np.log10(4 * np.pi * intensity / radiated_w)
+    return {
+        "pattern_frequency": frequency_hz,
+        "driven": int(driven),
+        "gain": gain,
+        "peak_gain": directivity + 10 * np.log10(efficiency),
+        "peak_theta": theta,
+        "peak_phi": phi,
+        "directivity": directivity,
+        "efficiency": efficiency,
+        "power_balance": balance,
+    }
+
+
+def _stacked(rows: list[dict[str, Any]]) -> dict[str, Any]:
+    """One array a name from one dict a mode, padded to the slots of the store."""
+    gain = np.full((MODES, len(THETA_DEG), len(PHI_DEG)), np.nan)
+    driven = np.full(MODES, -1)
+    for index, row in enumerate(rows):
+        gain[index], driven[index] = row["gain"], row["driven"]
+    names = ("pattern_frequency", "peak_gain", "peak_theta", "peak_phi", "directivity")
+    names += ("efficiency", "power_balance")
+    stacked: dict[str, Any] = {name: _padded([row[name] for row in rows]) for name in names}
+    return stacked | {"gain": gain, "driven": driven}
