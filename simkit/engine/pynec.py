@@ -98,9 +98,7 @@ def solve_wires(
         context.fr_card(0, 1, frequency_hz / 1e6, 0.0)
         step = "solving"
         places = _places(wires)
-        rows = [
-            _execute(context, index, source, places) for index, source in enumerate(sources)
-        ]
+        rows = [_execute(context, index, source, places) for index, source in enumerate(sources)]
     except RuntimeError as error:  # the engine's only exception type
         raise EngineError(f"{what}: the engine failed while {step} ({error})") from error
     currents = np.array(rows, dtype=np.complex128)
@@ -129,7 +127,13 @@ def _add_loads(
     if series is not None and (series.resistance_ohm_per_m or series.inductance_h_per_m):
         for tag, wire in enumerate(wires, start=1):
             context.ld_card(
-                2, tag, 1, wire.segments, series.resistance_ohm_per_m, series.inductance_h_per_m, 0.0
+                2,
+                tag,
+                1,
+                wire.segments,
+                series.resistance_ohm_per_m,
+                series.inductance_h_per_m,
+                0.0,
             )
     places = _places(wires)
     for load in lumped:

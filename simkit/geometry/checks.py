@@ -59,9 +59,9 @@ def _check_wire(wire: Wire, radius_m: float, wavelength_m: float) -> None:
         )
     if wire.segment_m > wavelength_m / 10:
         raise GeometryError(
-            f"{where} has segments of {wire.segment_m * 1e3:.4g} mm, over a tenth of the wavelength "
-            f"({wavelength_m * 1e2:.4g} mm) at the top of the band: lower frequency.stop, or narrow "
-            "the strip so that segments can be shorter"
+            f"{where} has segments of {wire.segment_m * 1e3:.4g} mm, over a tenth of the "
+            f"wavelength ({wavelength_m * 1e2:.4g} mm) at the top of the band: lower frequency.stop, or "
+            "narrow the strip so that segments can be shorter"
         )
 
 
@@ -136,7 +136,7 @@ def _raise_near(
         return
     at = points[np.unravel_index(int(np.argmin(distance)), distance.shape)[0]]
     raise GeometryError(
-        f"wires {verb} {distance.min() * 1e3:.3g} mm of each other at {_place(at)}; with a radius of "
-        f"{radius_m * 1e3:.4g} mm at least {limit_m * 1e3:.4g} mm is needed: move the strips apart "
-        "or open the bend"
+        f"wires {verb} {distance.min() * 1e3:.3g} mm of each other at {_place(at)}; with a radius "
+        f"of {radius_m * 1e3:.4g} mm at least {limit_m * 1e3:.4g} mm is needed: move the strips "
+        "apart or open the bend"
     )

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 from scipy.constants import c as light_speed
@@ -99,7 +100,9 @@ class _Maker:
 
     def add(self, start: FloatArray, end: FloatArray, count: int) -> list[int]:
         self.wires.append(
-            Wire((float(start[0]), float(start[1]), 0.0), (float(end[0]), float(end[1]), 0.0), count)
+            Wire(
+                (float(start[0]), float(start[1]), 0.0), (float(end[0]), float(end[1]), 0.0), count
+            )
         )
         first = self.segments
         self.segments += count
@@ -116,7 +119,7 @@ class _Maker:
             return self.add(part[0], part[-1], count), middles
         places = point_at(points, nodes)
         made: list[int] = []
-        for a, b in zip(places[:-1], places[1:], strict=True):
+        for a, b in pairwise(places):
             made += self.add(a, b, 1)
         return made, middles
 
@@ -163,19 +166,16 @@ class _Maker:
         self.add(middle, middle + corner.outwards * corner.whisker_m, 1)
         return made, [corner.arc_m - corner.cut_m / 2, corner.arc_m + corner.cut_m / 2]
 
-    def source(
-        self, line: Skeleton, chain: Chain
-    ) -> tuple[tuple[tuple[int, float], ...], float]:
+    def source(self, line: Skeleton, chain: Chain) -> tuple[tuple[tuple[int, float], ...], float]:
         """Source segments with their volts, and the segment length that sets the model's gap.
 
-        At an apex the source sits half and half on the two segments beside the node, so that it
-        neither crosses the corner nor breaks the symmetry of the two arms.
+        At an apex the source sits half and half on the two segments beside the node (those of the
+        chamfer, if the corner has a figure), so that it neither crosses a corner nor breaks the
+        symmetry of the two arms.
         """
         feed = line.feed
         assert feed is not None
-        lengths = [
-            wire.segment_m for wire in self.wires for _ in range(wire.segments)
-        ]
+        lengths = [wire.segment_m for wire in self.wires for _ in range(wire.segments)]
         if feed.kind == "straight":
             segment = int(chain.segments[np.argmin(abs(chain.arc_m - feed.arc_m))])
             return ((segment, 1.0),), lengths[segment]
@@ -250,9 +250,7 @@ def _without_source(
     return bounds
 
 
-def _probe(
-    chain: Chain, source: tuple[tuple[int, float], ...]
-) -> tuple[tuple[int, float], ...]:
+def _probe(chain: Chain, source: tuple[tuple[int, float], ...]) -> tuple[tuple[int, float], ...]:
     places = abs(chain.arc_m - PROBE_PLACE * chain.length_m)
     taken = {segment for segment, _ in source}
     order = [int(chain.segments[k]) for k in np.argsort(places, kind="stable")]
@@ -288,7 +286,8 @@ def _corner_doubts(line: Skeleton, kinds: Sequence[VertexKind]) -> list[str]:
                 f"than 2.5 widths ({2.5 * line.width_m * 1e3:.4g} mm): mode frequencies may be off "
                 "by 1.3 % and Q by 12 %"
             )
-        if kind == "figure" and turn < FIGURE_FROM_RAD - 1e-9 and turn > 0:
+        apex = line.feed is not None and line.feed.vertex == vertex
+        if kind == "figure" and not apex and turn < FIGURE_FROM_RAD - 1e-9:
             found.append(
                 f"the corner at ({x:.4g}, {y:.4g}) mm turns by {np.rad2deg(turn):.0f} degrees here "
                 "and by 50 or more in other cases, so it keeps the figure of a sharp corner: mode "
@@ -297,9 +296,7 @@ def _corner_doubts(line: Skeleton, kinds: Sequence[VertexKind]) -> list[str]:
     return found
 
 
-def _length_doubts(
-    antenna: Antenna, lines: Sequence[Skeleton], wires: Sequence[Wire]
-) -> list[str]:
+def _length_doubts(antenna: Antenna, lines: Sequence[Skeleton], wires: Sequence[Wire]) -> list[str]:
     found = []
     wavelength = light_speed / antenna.frequency.stop_hz
     longest = max(wire.segment_m for wire in wires)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from dataclasses import asdict, dataclass
+from itertools import pairwise
 from typing import Any, Literal
 
 import numpy as np
@@ -19,6 +20,12 @@ VertexKind = Literal["smooth", "node", "figure"]
 
 FIGURE_FROM_RAD = np.deg2rad(50.0)
 """Corners from here up are modelled by a chamfer and a whisker, gentler ones by nothing."""
+
+APEX_FIGURE_FROM_RAD = np.deg2rad(20.0)
+"""A fed corner gets its figure earlier: the source then sits on the chamfer, half on each of its
+two segments. On the legs beside a plain bend the power balance is off by 1 % at 30 degrees, 3 % at 60,
+7 % at 90; on the chamfer it stays within 2 %. The figure agrees with the plain bend to 0.02 % in
+frequency at 20 degrees, so nothing jumps where one takes over from the other."""
 
 FIGURE_UP_TO_RAD = np.deg2rad(120.0)
 """Fold-backs beyond this are outside the rules."""
@@ -50,7 +57,7 @@ class MeshPlan:
     ----------
     feed_kind : {"straight", "apex"}
     centred : bool
-        The feed sits in the middle of its run in every case: one wire, source on its middle segment.
+        The feed sits in the middle of its run in every case: one wire, fed on its middle segment.
     chains : tuple of ChainPlan
         The fed one first.
     """
@@ -91,8 +98,7 @@ def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
     feed_kind = _common_feed_kind(several)
     laid_out = _laid_out(several, feed_kind)
     vertices = [
-        _vertex_kinds([case[1][chain] for case in laid_out])
-        for chain in range(len(laid_out[0][1]))
+        _vertex_kinds([case[1][chain] for case in laid_out]) for chain in range(len(laid_out[0][1]))
     ]
     centred = all(_is_centred(lines[0], vertices[0]) for _, lines in laid_out)
     chains = []
@@ -147,10 +153,10 @@ def _vertex_kinds(lines: Sequence[Skeleton]) -> tuple[VertexKind, ...]:
     for vertex, turn in enumerate(sharpest):
         roomy = min(shortest[vertex], shortest[vertex + 1]) > 1.5
         apex = lines[0].feed is not None and lines[0].feed.vertex == vertex + 1
-        if apex:
-            kinds.append("node")
-        elif turn >= FIGURE_FROM_RAD:
+        if turn >= (APEX_FIGURE_FROM_RAD if apex else FIGURE_FROM_RAD):
             kinds.append("figure")
+        elif apex:
+            kinds.append("node")
         else:
             kinds.append("node" if roomy and turn >= NODE_FROM_RAD else "smooth")
     return tuple(kinds)
@@ -190,7 +196,7 @@ def runs(line: Skeleton, kinds: Sequence[VertexKind], *, centred: bool) -> tuple
             edges.append((at - cut, at + cut))
     edges.append((arcs[-1] - end, arcs[-1] - end))
     found = []
-    for (_, start), (stop, _) in zip(edges[:-1], edges[1:], strict=True):
+    for (_, start), (stop, _) in pairwise(edges):
         feed = line.feed
         inside = feed is not None and feed.kind == "straight" and start < feed.arc_m < stop
         if inside and not centred:

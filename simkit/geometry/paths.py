@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import cast
 
 import numpy as np
@@ -28,9 +29,7 @@ def turn_angle(before: FloatArray, after: FloatArray) -> float:
 def turns(points: FloatArray) -> FloatArray:
     """Turn angles in radians at the (V - 2) inner vertices."""
     steps = np.diff(points, axis=0)
-    return np.array(
-        [turn_angle(a, b) for a, b in zip(steps[:-1], steps[1:], strict=True)], dtype=float
-    )
+    return np.array([turn_angle(a, b) for a, b in pairwise(steps)], dtype=float)
 
 
 def point_at(points: FloatArray, arc_m: float | FloatArray) -> FloatArray:

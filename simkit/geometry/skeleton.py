@@ -159,9 +159,7 @@ def _apex(left: FloatArray, right: FloatArray, gap: float) -> FloatArray:
     return apex
 
 
-def _cut_by_feed(
-    strip: Strip, index: int, feed: CutFeed, feed_kind: FeedKind | None
-) -> Skeleton:
+def _cut_by_feed(strip: Strip, index: int, feed: CutFeed, feed_kind: FeedKind | None) -> Skeleton:
     points = _points(strip)
     length = float(leg_lengths(points).sum())
     closed = _is_loop(points)
@@ -210,9 +208,7 @@ def _unfed(strip: Strip, index: int) -> Skeleton:
         return Skeleton(points, False, strip.width_m, (StripSpan(index, 0.0, length),), None)
     start = float(leg_lengths(points)[0]) / 2
     turned = np.vstack([sub_path(points, start, length), sub_path(points, 0.0, start)[1:]])
-    return Skeleton(
-        turned, True, strip.width_m, (StripSpan(index, -start, length - start),), None
-    )
+    return Skeleton(turned, True, strip.width_m, (StripSpan(index, -start, length - start),), None)
 
 
 def feed_point(antenna: Antenna) -> FloatArray:

@@ -100,16 +100,14 @@ def find_modes(
     size = np.linalg.norm(residues, axis=1)
     strong = size > LEAST_RESIDUE * size.max()
     poles, residues = poles[strong], residues[strong]
-    return tuple(
-        _mode(complex(poles[k]), residues[k], grid) for k in np.argsort(poles.real)
-    )
+    return tuple(_mode(complex(poles[k]), residues[k], grid) for k in np.argsort(poles.real))
 
 
 def _surviving(poles: ComplexArray, others: ComplexArray) -> ComplexArray:
     if not poles.size or not others.size:
         return poles[:0]
     moved = np.min(abs(poles[:, None] - others[None]), axis=1)
-    return poles[moved < SURVIVAL * poles.imag]
+    return np.asarray(poles[moved < SURVIVAL * poles.imag], dtype=np.complex128)
 
 
 def _mode(pole_hz: complex, residue: ComplexArray, grid: WireGrid) -> NaturalMode:

@@ -95,10 +95,14 @@ def owned_features(
     admittance = 1 / impedance_ohm
     share = _Shares(modes, frequency_hz, admittance.real)
     gamma = reflection(impedance_ohm, reference_ohm)
-    peaks = share.owners(conductance_peaks(frequency_hz, impedance_ohm), lambda p: -p.resistance_ohm)
+    peaks = share.owners(
+        conductance_peaks(frequency_hz, impedance_ohm), lambda p: -p.resistance_ohm
+    )
     dips = share.owners(find_dips(frequency_hz, gamma), lambda d: d.return_loss_db)
     resonances = find_resonances(frequency_hz, impedance_ohm)
-    series = share.owners([r for r in resonances if r.kind == "series"], lambda r: -r.resistance_ohm)
+    series = share.owners(
+        [r for r in resonances if r.kind == "series"], lambda r: -r.resistance_ohm
+    )
     parallel = share.owners(
         [r for r in resonances if r.kind == "parallel"], lambda r: r.resistance_ohm
     )
@@ -108,9 +112,7 @@ def owned_features(
         dip = dips.get(index)
         q_dip = float(np.interp(dip.frequency_hz, frequency_hz, q)) if dip else float("nan")
         found.append(
-            OwnedFeatures(
-                peaks.get(index), dip, series.get(index), parallel.get(index), q_dip
-            )
+            OwnedFeatures(peaks.get(index), dip, series.get(index), parallel.get(index), q_dip)
         )
     return tuple(found)
 

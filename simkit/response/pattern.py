@@ -1,4 +1,7 @@
-"""Far field, directivity and gain from segment currents (angles from +z and from +x; IEEE Std 145)."""
+"""Far field, directivity and gain from segment currents, in the terms of IEEE Std 145.
+
+Theta is measured from +z, phi from +x.
+"""
 
 from __future__ import annotations
 
@@ -71,9 +74,7 @@ def far_field(
     # Current k-harmonic and phase across a segment, to second order in its electrical length.
     slant = outwards @ radiators.direction.T
     fall = 1 - (k * radiators.length_m) ** 2 / 24 * (1 + slant**2)
-    moment = (phase * fall) @ (
-        (current * radiators.length_m)[:, None] * radiators.direction
-    )
+    moment = (phase * fall) @ ((current * radiators.length_m)[:, None] * radiators.direction)
     factor = -1j * k * WAVE_IMPEDANCE_OHM / (4 * np.pi)
     along_theta = np.stack([cos_t * cos_p, cos_t * sin_p, -sin_t], axis=1)
     along_phi = np.stack([-sin_p, cos_p, np.zeros_like(sin_p)], axis=1)

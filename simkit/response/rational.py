@@ -3,7 +3,7 @@
 References
 ----------
 Nakatsukasa, Sete, Trefethen, "The AAA algorithm for rational approximation", SIAM J. Sci. Comput.
-40(3), 2018, doi:10.1137/16M1106122. All components share one set of weights, hence one set of poles.
+40(3), 2018, doi:10.1137/16M1106122. All components share one set of weights, hence of poles.
 """
 
 from __future__ import annotations
@@ -55,7 +55,7 @@ class RationalModel:
         return barycentric_matrix(np.atleast_1d(frequency_hz), self.frequency_hz, self.weight)
 
     def poles_hz(self) -> ComplexArray:
-        """Poles in the complex frequency plane, Hz; a decaying mode has a positive imaginary part."""
+        """Poles in the complex frequency plane, Hz; that of a decaying mode has Im > 0."""
         used = self.weight != 0
         scale = float(self.frequency_hz[-1])
         return _poles(self.frequency_hz[used] / scale, self.weight[used]) * scale
@@ -279,18 +279,16 @@ class _Search:
         """Solve one more frequency and return how far the model was off there."""
         count = len(self.frequencies)
         samples = np.array(self.frequencies)
-        matrix = barycentric_matrix(
-            np.array([frequency_hz]), samples, self._weights(range(count))
-        )
+        matrix = barycentric_matrix(np.array([frequency_hz]), samples, self._weights(range(count)))
         predicted = (matrix @ np.array(self.sketch))[0]
         self.add(frequency_hz)
         return float(np.linalg.norm(self.sketch[-1] - predicted)) / self.scale()
 
     def result(self, *, converged: bool, error: float) -> Sweep:
         order = np.argsort(self.frequencies)
-        spare = []
-        for drop in _left_out(len(order)):
-            spare.append(self._model([int(k) for k in np.delete(order, drop)]))
+        spare = [
+            self._model([int(k) for k in np.delete(order, drop)]) for drop in _left_out(len(order))
+        ]
         return Sweep(self._model([int(k) for k in order]), converged, error, tuple(spare))
 
     def _model(self, chosen: list[int]) -> RationalModel:

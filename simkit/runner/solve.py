@@ -97,7 +97,9 @@ def _resistance_ohm_per_m(antenna: Antenna, grid: WireGrid, frequency_hz: float)
     return strip_resistance_ohm_per_m(grid.feed_width_m, antenna.metal, frequency_hz)
 
 
-def feed_impedance(grid: WireGrid, currents: ComplexArray, frequency_hz: FloatArray) -> ComplexArray:
+def feed_impedance(
+    grid: WireGrid, currents: ComplexArray, frequency_hz: FloatArray
+) -> ComplexArray:
     """Impedance at the study's feed gap from (F, S) currents for 1 V at the feed, ohm."""
     admittance = sum((volts * currents[:, k] for k, volts in grid.source), np.zeros(1))
     susceptance = gap_susceptance_s(
@@ -106,9 +108,7 @@ def feed_impedance(grid: WireGrid, currents: ComplexArray, frequency_hz: FloatAr
     return np.asarray(1 / (admittance + 1j * susceptance), dtype=np.complex128)
 
 
-def _evaluate(
-    antenna: Antenna, grid: WireGrid, sweep: Sweep
-) -> tuple[dict[str, Any], list[str]]:
+def _evaluate(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> tuple[dict[str, Any], list[str]]:
     band = antenna.frequency
     frequency_hz = np.linspace(band.start_hz, band.stop_hz, band.points)
     currents = sweep.model.matrix(frequency_hz) @ sweep.model.values[:, : grid.segments]
@@ -138,9 +138,9 @@ def _doubts(
     for mode, row in zip(modes, radiation, strict=True):
         if abs(row["power_balance"] - 1) > BALANCE_TOLERANCE:
             found.append(
-                f"at {row['pattern_frequency'] / 1e6:.1f} MHz (mode of {mode.half_waves} half waves) "
-                f"radiated and lost power are {row['power_balance']:.3f} of the input power; "
-                f"1 within {BALANCE_TOLERANCE} is expected"
+                f"at {row['pattern_frequency'] / 1e6:.1f} MHz (mode of {mode.half_waves} half "
+                f"waves) radiated and lost power are {row['power_balance']:.3f} of the input "
+                f"power; 1 within {BALANCE_TOLERANCE} is expected"
             )
     return found
 
@@ -170,9 +170,7 @@ def _sample_arrays(grid: WireGrid, sweep: Sweep) -> dict[str, Any]:
     weight = np.full(SAMPLES, complex(np.nan, np.nan))
     weight[:count] = sweep.model.weight
     currents = np.full((2, SAMPLES, grid.segments), complex(np.nan, np.nan))
-    currents[:, :count] = np.moveaxis(
-        sweep.model.values.reshape(count, 2, grid.segments), 1, 0
-    )
+    currents[:, :count] = np.moveaxis(sweep.model.values.reshape(count, 2, grid.segments), 1, 0)
     return {
         "sample_frequency": frequency,
         "weight": weight,
@@ -181,9 +179,7 @@ def _sample_arrays(grid: WireGrid, sweep: Sweep) -> dict[str, Any]:
     }
 
 
-def _mode_arrays(
-    antenna: Antenna, grid: WireGrid, modes: Sequence[NaturalMode]
-) -> dict[str, Any]:
+def _mode_arrays(antenna: Antenna, grid: WireGrid, modes: Sequence[NaturalMode]) -> dict[str, Any]:
     positions = np.linspace(0, 1, POSITIONS)
     strips = len(antenna.strips)
     shapes = np.full((MODES, strips, POSITIONS), complex(np.nan, np.nan))
@@ -287,7 +283,6 @@ def _stacked(rows: list[dict[str, Any]]) -> dict[str, Any]:
     driven = np.full(MODES, -1)
     for index, row in enumerate(rows):
         gain[index], driven[index] = row["gain"], row["driven"]
-    names = ("pattern_frequency", "peak_gain", "peak_theta", "peak_phi", "directivity")
-    names += ("efficiency", "power_balance")
+    names = [name for name in rows[0] if name not in ("gain", "driven")] if rows else []
     stacked: dict[str, Any] = {name: _padded([row[name] for row in rows]) for name in names}
     return stacked | {"gain": gain, "driven": driven}
