@@ -1,0 +1,61 @@
+"""Pictures of antennas and results: each function takes and returns a matplotlib Axes.
+
+No function touches pyplot or any global setting; without `ax` it makes a figure of its own, which
+is reached as ``ax.figure`` and written by ``ax.figure.savefig(path)``.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from simkit.plot.current import plot_current
+    from simkit.plot.geometry import plot_geometry
+    from simkit.plot.impedance import plot_impedance
+    from simkit.plot.kinds import KINDS
+    from simkit.plot.pattern import plot_pattern, plot_pattern_cuts
+    from simkit.plot.reflection import plot_reflection
+    from simkit.plot.save import save_all, save_plot
+    from simkit.plot.smith import plot_smith
+    from simkit.plot.tracks import MeasuredBuild, plot_tracks
+
+__all__ = [
+    "KINDS",
+    "MeasuredBuild",
+    "plot_current",
+    "plot_geometry",
+    "plot_impedance",
+    "plot_pattern",
+    "plot_pattern_cuts",
+    "plot_reflection",
+    "plot_smith",
+    "plot_tracks",
+    "save_all",
+    "save_plot",
+]
+
+_HOME = {
+    "KINDS": "kinds",
+    "MeasuredBuild": "tracks",
+    "plot_current": "current",
+    "plot_geometry": "geometry",
+    "plot_impedance": "impedance",
+    "plot_pattern": "pattern",
+    "plot_pattern_cuts": "pattern",
+    "plot_reflection": "reflection",
+    "plot_smith": "smith",
+    "plot_tracks": "tracks",
+    "save_all": "save",
+    "save_plot": "save",
+}
+
+
+def __getattr__(name: str) -> object:
+    if name in _HOME:
+        return getattr(import_module(f"simkit.plot.{_HOME[name]}"), name)
+    raise AttributeError(f"module 'simkit.plot' has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

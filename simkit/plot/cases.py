@@ -9,8 +9,9 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from simkit.errors import StoreError
-from simkit.plot.style import DisplayUnit, display_unit
+from simkit.plot.style import DisplayUnit, written_unit
 from simkit.response.labels import half_wave_label
+from simkit.store.read import swept_names
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
@@ -32,15 +33,6 @@ class Mode:
     def label(self) -> str:
         """The mode's length, as in ``3/2 wave``."""
         return half_wave_label(self.half_waves)
-
-
-def swept_names(dataset: xr.Dataset) -> tuple[str, ...]:
-    """Return the swept values: every coordinate along `case` but `case` itself."""
-    return tuple(
-        str(name)
-        for name, coordinate in dataset.coords.items()
-        if coordinate.dims == ("case",) and name != "case"
-    )
 
 
 def has_data(dataset: xr.Dataset) -> np.ndarray[tuple[int, ...], np.dtype[np.bool_]]:
@@ -65,8 +57,8 @@ def nearest_case(dataset: xr.Dataset, nominal: Mapping[str, float] | None = None
         cases the first is taken, and unsolved ones only if there is no other.
     """
     distance = np.zeros(dataset.sizes["case"])
-    for name in swept_names(dataset):
-        values = np.asarray(dataset[name].values, dtype=float)
+    for name, stored in swept_names(dataset).items():
+        values = np.asarray(dataset[stored].values, dtype=float)
         span = float(np.ptp(values))
         if span > 0.0:
             middle = float(values.min() + span / 2)
@@ -123,23 +115,21 @@ def why_empty(case: xr.Dataset) -> str:
     return f"{status}: {reason}" if reason else status
 
 
-def swept_unit(dataset: xr.Dataset, name: str) -> DisplayUnit:
-    """Return the display unit of a swept value from its units attribute."""
-    return display_unit(str(dataset[name].attrs.get("units", "1")))
+def swept_unit(dataset: xr.Dataset, stored: str) -> DisplayUnit:
+    """Return the unit in which to show a swept value, from its attributes."""
+    attrs = dataset[stored].attrs
+    return written_unit(str(attrs.get("units", "1")), str(attrs.get("display_unit", "")))
 
 
 def describe_case(case: xr.Dataset) -> str:
     """Return number and swept values of one case: ``case 7: arm 76 mm, width 8 mm``."""
     if "case" not in case.coords:
         return ""
-    number = int(case["case"])
-    scalars = [str(name) for name, value in case.coords.items() if value.dims == ()]
     values = [
-        f"{name} {swept_unit(case, name).value(float(case[name]))}"
-        for name in scalars
-        if name != "case"
+        f"{name} {swept_unit(case, stored).value(float(case[stored]))}"
+        for name, stored in swept_names(case).items()
     ]
-    text = f"case {number}" + (": " + ", ".join(values) if values else "")
+    text = f"case {int(case['case'])}" + (": " + ", ".join(values) if values else "")
     if int(case["status"]) == Status.DOUBTFUL:
         text += " (doubtful)"
     return text

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -10,6 +11,7 @@ from matplotlib.figure import Figure
 from numpy.typing import ArrayLike
 
 if TYPE_CHECKING:
+    from matplotlib.artist import Artist
     from matplotlib.axes import Axes
 
 INK = "#222222"
@@ -19,6 +21,8 @@ QUIET = "#767676"
 GRID = "#dddddd"
 METAL = "#d9b77a"
 DPI = 110
+DASH_ROOM = 3.2
+"""Length of a line in a legend, in font sizes, so that its dashes can be told apart."""
 
 _COLOURS = ("#0072b2", "#009e73", "#d55e00", "#cc79a7", "#e69f00", "#56b4e9")
 _DASHES: tuple[str | tuple[int, tuple[int, ...]], ...] = (
@@ -64,7 +68,8 @@ def new_axes(
         If a given `ax` does not have the projection the picture needs.
     """
     if ax is None:
-        figure = Figure(figsize=size_in, dpi=DPI, layout="constrained")
+        # "compressed" also leaves the right room around axes of fixed aspect.
+        figure = Figure(figsize=size_in, dpi=DPI, layout="compressed")
         return figure.add_subplot(projection="polar" if polar else None)
     if (ax.name == "polar") != polar:
         wanted = "polar" if polar else "rectilinear"
@@ -81,6 +86,28 @@ def tidy(ax: Axes) -> None:
     ax.grid(visible=True, color=GRID, linewidth=0.7)
     for side in ("top", "right"):
         ax.spines[side].set_visible(False)
+
+
+def legend_beside(
+    ax: Axes, title: str = "", away: float = 1.01, handles: Sequence[Artist] | None = None
+) -> None:
+    """Put the legend to the right of the axes, where it hides no data.
+
+    `handles` are the lines to explain, all labelled ones if left out; `away` is in axes widths.
+    """
+    shown = ax.get_legend_handles_labels()[0] if handles is None else list(handles)
+    if not shown:
+        return
+    ax.legend(
+        handles=shown,
+        title=title,
+        alignment="left",
+        fontsize="small",
+        loc="upper left",
+        bbox_to_anchor=(away, 1.0),
+        frameon=False,
+        handlelength=DASH_ROOM,
+    )
 
 
 def say_empty(ax: Axes, text: str) -> None:
@@ -105,6 +132,11 @@ class DisplayUnit:
         return f"{shown} {self.text}" if self.text else shown
 
 
+def frequency_text(frequency_hz: float, unit: DisplayUnit) -> str:
+    """Return a frequency to 0.1 MHz: ``868.3 MHz`` or ``12.4052 GHz``."""
+    return f"{frequency_hz * unit.factor:.{1 if unit == MEGAHERTZ else 4}f} {unit.text}"
+
+
 MILLIMETRE = DisplayUnit(1e3, "mm")
 MEGAHERTZ = DisplayUnit(1e-6, "MHz")
 GIGAHERTZ = DisplayUnit(1e-9, "GHz")
@@ -124,3 +156,20 @@ def display_unit(units: str) -> DisplayUnit:
     if units == "Hz":
         return MEGAHERTZ
     return DisplayUnit(1.0, "" if units == "1" else units)
+
+
+_LENGTHS_PER_METRE = {
+    "um": 1e6,
+    "mm": 1e3,
+    "cm": 1e2,
+    "m": 1.0,
+    "in": 1 / 25.4e-3,
+    "mil": 1e3 / 25.4e-3,
+}
+
+
+def written_unit(units: str, written: str) -> DisplayUnit:
+    """Return the unit the user wrote for a length kept in metres; others as `display_unit`."""
+    if units == "m" and written in _LENGTHS_PER_METRE:
+        return DisplayUnit(_LENGTHS_PER_METRE[written], written)
+    return display_unit(units)

@@ -1,0 +1,54 @@
+"""The pictures there are, by name. Nothing is drawn or imported before one is asked for."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True)
+class Kind:
+    """One kind of picture.
+
+    Attributes
+    ----------
+    name : str
+        As in ``simkit plot DIR NAME`` and in the file name.
+    about : str
+        What it shows, one line.
+    function : str
+        Name of the function in `simkit.plot` that draws it.
+    of_one_case : bool
+        False for pictures over the whole sweep.
+    """
+
+    name: str
+    about: str
+    function: str
+    of_one_case: bool = True
+
+
+KINDS: dict[str, Kind] = {
+    kind.name: kind
+    for kind in (
+        Kind(
+            "geometry",
+            "strips to scale with feed, sizes and the wires of the model",
+            "plot_geometry",
+        ),
+        Kind(
+            "impedance",
+            "resistance and reactance at the feed, modes and resonances",
+            "plot_impedance",
+        ),
+        Kind(
+            "reflection",
+            "reflection in dB with the dips and the modes they belong to",
+            "plot_reflection",
+        ),
+        Kind("smith", "reflection in a Smith chart with the dips marked", "plot_smith"),
+        Kind("current", "current of each natural mode along the strip", "plot_current"),
+        Kind("pattern", "gain of each mode in the three principal planes", "plot_pattern_cuts"),
+        Kind("tracks", "modes and dips against a swept value", "plot_tracks", of_one_case=False),
+    )
+}
+"""Kind of each picture by its name, in the order in which `save_all` draws them."""

@@ -1,0 +1,226 @@
+"""Write pictures to files: one of a kind, or all of a run."""
+
+from __future__ import annotations
+
+import os
+import re
+from collections.abc import Iterator
+from contextlib import suppress
+from pathlib import Path
+from typing import TYPE_CHECKING, cast
+
+import numpy as np
+from matplotlib.figure import Figure
+
+from simkit.errors import MeasurementError, StoreError
+from simkit.plot.cases import describe_case, is_solved, nearest_case, one_case, title_of
+from simkit.plot.current import plot_current
+from simkit.plot.geometry import plot_geometry
+from simkit.plot.impedance import plot_impedance
+from simkit.plot.kinds import KINDS
+from simkit.plot.pattern import plot_pattern_cuts
+from simkit.plot.reflection import plot_reflection
+from simkit.plot.smith import plot_smith
+from simkit.plot.tracks import MeasuredBuild, plot_tracks
+from simkit.store.read import swept_names
+
+if TYPE_CHECKING:
+    import xarray as xr
+    from matplotlib.axes import Axes
+
+    from simkit.study import Study
+
+FORMATS = ("png", "svg", "pdf")
+
+_OF_RESULTS = {
+    "impedance": plot_impedance,
+    "reflection": plot_reflection,
+    "smith": plot_smith,
+    "current": plot_current,
+}
+
+
+def draw(
+    dataset: xr.Dataset,
+    kind: str,
+    *,
+    case: int | None = None,
+    study: Study | None = None,
+    by: str | None = None,
+) -> Figure:
+    """Draw one kind of picture.
+
+    Parameters
+    ----------
+    dataset : xarray.Dataset
+        Results with the dimension `case`.
+    kind : str
+        A key of `KINDS`.
+    case : int, optional
+        Label of the case; the solved one nearest to the study's nominal values if left out.
+    study : Study, optional
+        Needed for the geometry; gives nominal values and measured builds to the others.
+    by : str, optional
+        Swept value along the axis of `tracks`.
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+        Not known to pyplot.
+
+    Raises
+    ------
+    StoreError
+        If there is no such kind, case or swept value, or the geometry is wanted without a study.
+    """
+    if kind not in KINDS:
+        raise StoreError(f"there is no picture '{kind}'; choose from {', '.join(KINDS)}")
+    nominal = study.values if study is not None else None
+    if kind == "tracks":
+        builds = measured_builds(study, by or next(iter(swept_names(dataset)), ""))
+        return _figure(plot_tracks(dataset, by, nominal=nominal, measured=builds))
+    number = nearest_case(dataset, nominal) if case is None else case
+    if kind == "geometry":
+        return _figure(_draw_geometry(dataset, number, study))
+    if kind == "pattern":
+        return plot_pattern_cuts(dataset, number)
+    return _figure(_OF_RESULTS[kind](dataset, number))
+
+
+def save_plot(
+    dataset: xr.Dataset,
+    kind: str,
+    path: str | os.PathLike[str],
+    *,
+    case: int | None = None,
+    study: Study | None = None,
+    by: str | None = None,
+) -> Path:
+    """Draw one kind of picture into a file; its ending says the format (png, svg, pdf).
+
+    Parameters are those of `draw`, and the file.
+
+    Raises
+    ------
+    StoreError
+        As `draw`, or if the file cannot be written.
+    """
+    return write(draw(dataset, kind, case=case, study=study, by=by), path)
+
+
+def save_all(
+    dataset: xr.Dataset,
+    folder: str | os.PathLike[str],
+    *,
+    study: Study | None = None,
+    case: int | None = None,
+) -> list[tuple[Path, str]]:
+    """Write all pictures of a run as PNG files with stable names.
+
+    Parameters
+    ----------
+    dataset : xarray.Dataset
+        Results with the dimension `case`.
+    folder : path
+        Made if it is missing.
+    study : Study, optional
+        Without it there is no picture of the geometry.
+    case : int, optional
+        Label of the case; the solved one nearest to the study's nominal values if left out.
+
+    Returns
+    -------
+    list of (Path, str)
+        Each file and what it shows. Nothing but the geometry is drawn for a case without a
+        solution, and no tracks without a sweep.
+
+    Raises
+    ------
+    StoreError
+        If a file cannot be written.
+    """
+    target = Path(folder)
+    nominal = study.values if study is not None else None
+    number = nearest_case(dataset, nominal) if case is None else case
+    chosen = one_case(dataset, number)
+    written = []
+    for kind in KINDS.values():
+        if (kind.name == "geometry" and study is None) or not kind.of_one_case:
+            continue
+        if kind.name == "geometry" or is_solved(chosen):
+            path = save_plot(
+                dataset, kind.name, target / f"{kind.name}.png", case=number, study=study
+            )
+            written.append((path, f"{kind.about} ({describe_case(chosen)})"))
+    for by, name in _tracks_files(dataset):
+        path = save_plot(dataset, "tracks", target / name, study=study, by=by)
+        written.append((path, f"natural modes and dips against {by}"))
+    return written
+
+
+def _tracks_files(dataset: xr.Dataset) -> Iterator[tuple[str, str]]:
+    """Every value with at least two settings: the first in ``tracks.png``, more by their names."""
+    varied = [
+        name
+        for name, stored in swept_names(dataset).items()
+        if np.unique(dataset[stored].values).size > 1
+    ]
+    for number, by in enumerate(varied):
+        yield by, "tracks.png" if number == 0 else f"tracks_{re.sub(r'[^A-Za-z0-9]+', '_', by)}.png"
+
+
+def measured_builds(study: Study | None, by: str) -> list[MeasuredBuild]:
+    """Read the dips of the study's measured builds that say what they have for a swept value.
+
+    A file that cannot be used is left out: `simkit compare` is the place that complains.
+    """
+    from simkit.measured import read_touchstone
+    from simkit.measured.dips import measured_dips
+
+    builds = []
+    for measured in study.measured if study is not None else ():
+        if by in measured.build:
+            with suppress(MeasurementError):
+                dips, _ = measured_dips(read_touchstone(measured.path))
+                places = tuple(dip.frequency_hz for dip in dips)
+                builds.append(MeasuredBuild(measured.path.stem, measured.build[by], places))
+    return builds
+
+
+def _draw_geometry(dataset: xr.Dataset, number: int, study: Study | None) -> Axes:
+    chosen = one_case(dataset, number)
+    if study is None:
+        raise StoreError("the geometry is drawn from the study file: name the study as well")
+    antenna = study.case(number).antenna
+    if antenna is None:
+        raise StoreError(f"case {number} has no geometry to draw: {study.case(number).refused}")
+    wires = chosen if is_solved(chosen) else None
+    return plot_geometry(antenna, wires, title=title_of(chosen, "geometry"))
+
+
+def _figure(ax: Axes) -> Figure:
+    return cast("Figure", ax.figure)
+
+
+def write(figure: Figure, path: str | os.PathLike[str]) -> Path:
+    """Write a figure so that the file is either the whole picture or what was there before.
+
+    Raises
+    ------
+    StoreError
+        If the folder cannot be written or the ending names no format.
+    """
+    target = Path(path)
+    ending = target.suffix.lstrip(".").lower()
+    if ending not in FORMATS:
+        raise StoreError(f"{target}: a picture's file name ends in .{', .'.join(FORMATS)}")
+    aside = target.with_name(f".{target.name}.{os.getpid()}.part")
+    try:
+        target.parent.mkdir(parents=True, exist_ok=True)
+        figure.savefig(aside, format=ending)
+        os.replace(aside, target)
+    except OSError as error:
+        raise StoreError(f"{target}: the picture cannot be written: {error.strerror}") from error
+    finally:
+        aside.unlink(missing_ok=True)
+    return target
