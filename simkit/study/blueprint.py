@@ -90,3 +90,14 @@ class Blueprint:
         found = [] if band is None else [band.start, band.stop, band.points]
         found.append(self.reference)
         return tuple(quantity for quantity in found if quantity is not None)
+
+    def names(self) -> set[str]:
+        """Return the names of [values] the antenna depends on directly."""
+        quantities: list[Quantity | None] = [*self.shared()]
+        for strip in self.strips:
+            if isinstance(strip, PathPlan):
+                quantities += [strip.width, *(place for point in strip.path for place in point)]
+        quantities += [self.metal.conductivity, self.metal.thickness]
+        if isinstance(self.feed, CutFeedPlan):
+            quantities += [self.feed.at, self.feed.gap]
+        return {name for q in quantities if q is not None for name in q.expression.names}

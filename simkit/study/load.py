@@ -252,8 +252,10 @@ class _Builder:
         blueprint = read_blueprint(root)
         sweep = read_sweep(root.table("sweep"), root.table("sampling"), notes, numbers)
         measured = read_measured(root.tables("measured"), notes, sweep, numbers, self.path.parent)
-        self.check_shared(blueprint, values, sweep)
         root.close()
+        self.check_shared(blueprint, values, sweep)
+        if not notes.problems:
+            self.check_effect(blueprint, values, sweep)
         problems = [*notes.problems, *resolve(blueprint, numbers)[1]]
         if problems or title is None:
             raise StudyError(str(self.path), sorted(problems, key=lambda p: p.line or 0))
@@ -281,6 +283,17 @@ class _Builder:
                 what = f"depends on `{used[0]}`, which the sweep varies; all cases must share it"
                 problem = Problem(what, quantity.key, quantity.written, quantity.line)
                 self.notes.problems.append(problem)
+
+    def check_effect(self, blueprint: Blueprint, values: Values, sweep: Sweep) -> None:
+        """Report swept values that change nothing."""
+        used = blueprint.names()
+        for name in (value.name for value in sweep.swept if value.name in values.names()):
+            moving = {name} | {value_name(quantity) for quantity in values.affected_by([name])}
+            if not moving & used:
+                what = (
+                    "nothing in the antenna depends on this value; use it there or do not sweep it"
+                )
+                self.notes.report(("sweep", name), f"sweep.{name}", what)
 
     def display_units(self, sweep: Sweep) -> dict[str, str]:
         """Return for every quantity of the file the unit its user would read it in."""

@@ -14,8 +14,9 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from simkit.errors import Problem
-from simkit.study.expression import Expression, ExpressionError, constant, parse
+from simkit.study.expression import Expression, ExpressionError, constant
 from simkit.study.locate import KeyPath
+from simkit.study.parser import parse
 from simkit.study.units import LENGTH, PURE, Dimension, describe, find_unit, nearest, usual_unit
 
 NAME = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,59}")

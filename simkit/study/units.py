@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import difflib
 import math
+import re
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -66,7 +67,10 @@ _KNOWN: dict[Dimension, _Known] = {
     INDUCTANCE: _Known("an inductance", "H", "nH"),
 }
 
-_PREFIXES = {"": 0, "p": -12, "n": -9, "u": -6, "µ": -6, "μ": -6, "m": -3, "c": -2}
+_BASE_PART = re.compile(r"(m|kg|s|A)(-?\d+|\^\(-?\d+/\d+\)|)(?: |$)")
+_BASE = re.compile(f"(?:{_BASE_PART.pattern})+")
+
+_PREFIXES = {"p": -12, "n": -9, "u": -6, "µ": -6, "μ": -6, "m": -3, "c": -2}
 _PREFIXES |= {"k": 3, "M": 6, "G": 9, "T": 12}
 
 
@@ -104,12 +108,13 @@ UNITS: dict[str, Unit] = {
 
 
 def find_unit(text: str) -> Unit:
-    """Return the unit written as `text`, one symbol or a chain such as ``S/m``.
+    """Return the unit written as `text`.
 
     Parameters
     ----------
     text : str
-        Symbols of `UNITS` joined by ``/`` and ``*``; ``1`` for a pure number.
+        Symbols of `UNITS` joined by ``/`` and ``*``, as ``S/m``; ``1`` for a pure number; or what
+        `si_unit` returns for a dimension without a name, as ``m2 s-1``.
 
     Raises
     ------
@@ -118,6 +123,8 @@ def find_unit(text: str) -> Unit:
     """
     if text == "1":
         return Unit(Fraction(1), PURE)
+    if _BASE.fullmatch(text) and text not in UNITS:
+        return Unit(Fraction(1), _base_dimension(text))
     factor, dimension, divide = Fraction(1), PURE, False
     for part in text.replace("*", " * ").replace("/", " / ").split():
         if part in "*/":
@@ -127,6 +134,13 @@ def find_unit(text: str) -> Unit:
         factor = factor / unit.factor if divide else factor * unit.factor
         dimension = combine(dimension, unit.dimension, -1 if divide else 1)
     return Unit(factor, dimension)
+
+
+def _base_dimension(text: str) -> Dimension:
+    powers = dict.fromkeys(("m", "kg", "s", "A"), Fraction(0))
+    for symbol, power in _BASE_PART.findall(text):
+        powers[symbol] = Fraction(power.strip("^()") or 1)
+    return (powers["m"], powers["kg"], powers["s"], powers["A"])
 
 
 def combine(first: Dimension, second: Dimension, sign: int = 1) -> Dimension:

@@ -6,7 +6,8 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from graphlib import CycleError, TopologicalSorter
 
-from simkit.study.expression import FUNCTIONS, ExpressionError, parse
+from simkit.study.expression import FUNCTIONS, ExpressionError
+from simkit.study.parser import parse
 from simkit.study.tables import NAME, Notes, Quantity, Table, toml_kind
 from simkit.study.units import UNITS, as_text, describe
 
@@ -23,9 +24,9 @@ class Values:
 
     quantities: tuple[Quantity, ...] = ()
 
-    def get(self, name: str) -> Quantity | None:
-        """Return the quantity called `name`."""
-        return next((q for q in self.quantities if value_name(q) == name), None)
+    def names(self) -> set[str]:
+        """Return the names of all."""
+        return {value_name(quantity) for quantity in self.quantities}
 
     def affected_by(self, names: Iterable[str]) -> tuple[Quantity, ...]:
         """Return those that change with any of `names`, without these themselves."""
