@@ -1,0 +1,169 @@
+"""The results folder: which store a run continues, which it starts, and the swap at the end."""
+
+from __future__ import annotations
+
+import os
+import shutil
+from dataclasses import dataclass
+from pathlib import Path
+
+from simkit.errors import StoreError
+from simkit.runner.prepare import Prepared
+from simkit.store.files import flush, replace_text
+from simkit.store.read import STORE_NAME, UNFINISHED_NAME
+from simkit.store.write import read_attrs
+
+OLD_NAME = "store.old.zarr"
+LEFT_PATTERN = "store.left-*.zarr"
+STUDY_NAME = "study.toml"
+
+
+@dataclass(frozen=True)
+class Target:
+    """Where a run writes.
+
+    Attributes
+    ----------
+    path : Path
+    exists : bool
+        A store of the same study is continued.
+    sources : tuple of Path
+        Older stores whose unchanged cases are taken over.
+    takeover : bool
+        Whether they may be.
+    """
+
+    path: Path
+    exists: bool
+    sources: tuple[Path, ...]
+    takeover: bool
+
+
+class ResultsFolder:
+    """One folder of results.
+
+    Parameters
+    ----------
+    path : Path
+        ``results/<stem of the study file>``.
+    """
+
+    def __init__(self, path: Path) -> None:
+        self.path = path
+        self.store = path / STORE_NAME
+        self.unfinished = path / UNFINISHED_NAME
+        self.old = path / OLD_NAME
+        self.study_copy = path / STUDY_NAME
+        self.log = path / "log.txt"
+
+    def create(self) -> None:
+        """Make the folder.
+
+        Raises
+        ------
+        StoreError
+            It cannot be made.
+        """
+        try:
+            self.path.mkdir(parents=True, exist_ok=True)
+        except OSError as error:
+            raise StoreError(
+                f"{self.path}: the results folder cannot be made: {error.strerror}; "
+                "choose another with --results"
+            ) from error
+
+    def check_title(self, title: str, *, fresh: bool) -> None:
+        """Refuse a folder that holds another study; nothing is written before this.
+
+        Raises
+        ------
+        StoreError
+            The folder holds a study with another title, or one that cannot be read.
+        """
+        for store in (self.store, self.unfinished, self.old):
+            if not store.exists():
+                continue
+            try:
+                found = read_attrs(store).get("title")
+            except StoreError:
+                if not (fresh and self._copy_has_title(title)):
+                    raise
+                continue
+            if found != title:
+                raise StoreError(
+                    f"{self.path}: holds the results of another study, {found!r}; this one is "
+                    f"{title!r}. Nothing was changed. Choose another folder with --results, "
+                    "or rename the study file"
+                )
+
+    def _copy_has_title(self, title: str) -> bool:
+        """A store beyond reading still belongs to this study if the copy of the file says so."""
+        import tomllib
+
+        try:
+            content = tomllib.loads(self.study_copy.read_text(encoding="utf-8"))
+        except (OSError, ValueError):
+            return False
+        return content.get("title") == title
+
+    def recover(self) -> None:
+        """Finish what a killed run left half done: a swap, a layout."""
+        for part in self.path.glob("*.part"):
+            _remove(part)
+        if self.old.exists() and not self.store.exists():
+            os.rename(self.unfinished if self.unfinished.exists() else self.old, self.store)
+        _remove(self.old)
+
+    def choose(self, prepared: Prepared, *, fresh: bool) -> Target:
+        """Decide which store is written, moving nothing but stores that are in the way."""
+        if fresh:
+            _remove(self.unfinished)
+            self._drop_left()
+        else:
+            for path in (self.unfinished, self.store):
+                if path.exists() and self._identity(path) == prepared.identity:
+                    takeover = path == self.unfinished and bool(read_attrs(path).get("takeover"))
+                    return Target(path, True, self._sources() if takeover else (), takeover)
+        if not self.store.exists():
+            return Target(self.store, False, (), takeover=False)
+        if self.unfinished.exists():
+            os.rename(self.unfinished, self._free_left_name())
+        return Target(self.unfinished, False, () if fresh else self._sources(), takeover=not fresh)
+
+    def finish(self, target: Target, text: str) -> None:
+        """Put a complete store in its place and keep the study's text beside it."""
+        if target.path != self.store:
+            os.rename(self.store, self.old)
+            os.rename(target.path, self.store)
+            flush([self.path])
+            _remove(self.old)
+            self._drop_left()
+        self.keep_text(text)
+
+    def keep_text(self, text: str) -> None:
+        """Copy the study file into the folder."""
+        replace_text(self.study_copy, text)
+
+    @staticmethod
+    def _identity(path: Path) -> str:
+        return str(read_attrs(path).get("identity"))
+
+    def _sources(self) -> tuple[Path, ...]:
+        return (self.store, *sorted(self.path.glob(LEFT_PATTERN)))
+
+    def _free_left_name(self) -> Path:
+        number = 1
+        while (path := self.path / LEFT_PATTERN.replace("*", str(number))).exists():
+            number += 1
+        return path
+
+    def _drop_left(self) -> None:
+        for path in self.path.glob(LEFT_PATTERN):
+            _remove(path)
+
+
+def _remove(path: Path) -> None:
+    if path.is_dir():
+        shutil.rmtree(path)
+    else:
+        path.unlink(missing_ok=True)

@@ -1,0 +1,61 @@
+"""What makes two cases the same: a hash of everything their numbers depend on."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Sequence
+from dataclasses import asdict
+from importlib.metadata import PackageNotFoundError, version
+from typing import Any
+
+from simkit.store.layout import SweptColumn, layout_hash
+from simkit.study.model import Case
+
+MODEL_VERSION = "1"
+"""Raise it with every change that alters numbers: rules, engine settings, sweep, modes, patterns.
+
+Cases solved under another model version are never mixed with new ones; they are solved anew.
+"""
+
+
+def engine_version() -> str:
+    """Version of the installed field engine, "none" without one."""
+    try:
+        return version("PyNEC")
+    except PackageNotFoundError:
+        return "none"
+
+
+def canonical_json(value: Any) -> str:
+    """JSON with sorted keys; floats as their shortest exact text, so equal text is equal value."""
+    return json.dumps(value, sort_keys=True, separators=(",", ":"))
+
+
+def sha256(text: str) -> str:
+    """Hexadecimal hash of a text."""
+    return hashlib.sha256(text.encode()).hexdigest()
+
+
+def case_key(case: Case, study_part: str) -> str:
+    """Hash of one case.
+
+    Parameters
+    ----------
+    case : Case
+    study_part : str
+        What all cases of the study share: mesh plan, model and engine version.
+
+    Returns
+    -------
+    str
+        64 hexadecimal digits; swept values count through the antenna they resolve to.
+    """
+    inputs = case.refused if case.antenna is None else canonical_json(asdict(case.antenna))
+    return sha256(f"{inputs}\n{study_part}")
+
+
+def study_identity(keys: Sequence[str], swept: Sequence[SweptColumn], shape: Sequence[int]) -> str:
+    """Hash of a whole run: equal if the store of one run can be continued by another."""
+    columns = [[c.name, c.units, c.values.tolist()] for c in swept]
+    return sha256(canonical_json([list(keys), columns, list(shape), layout_hash()]))

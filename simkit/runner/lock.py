@@ -1,0 +1,157 @@
+"""One run at a time in a results folder, and no write by a worker of a run that is over."""
+
+from __future__ import annotations
+
+import errno
+import fcntl
+import json
+import os
+import secrets
+import socket
+import time
+from collections.abc import Iterator
+from contextlib import contextmanager
+from datetime import datetime
+from pathlib import Path
+
+from simkit.errors import StoreError
+
+LOCK_NAME = ".lock"
+WRITERS_NAME = ".writers"
+
+_STRAGGLERS_S = 60.0
+"""Longest wait for workers of a killed run to finish the block they are writing."""
+
+
+class RunLock:
+    """Exclusive hold of a results folder; the system frees it when this process ends in any way.
+
+    Parameters
+    ----------
+    folder : Path
+        Existing results folder.
+
+    Raises
+    ------
+    StoreError
+        Another run holds it, or the folder cannot be written.
+    """
+
+    def __init__(self, folder: Path) -> None:
+        self.path = folder / LOCK_NAME
+        self.token = secrets.token_hex(8)
+        self._stopping = False
+        self._handle = _open(self.path)
+        try:
+            fcntl.flock(self._handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        except OSError as error:
+            holder = _read(self.path)
+            os.close(self._handle)
+            if error.errno not in (errno.EAGAIN, errno.EACCES):
+                raise StoreError(f"{folder}: cannot be locked: {error.strerror}") from error
+            raise StoreError(
+                f"{folder}: another run is writing here: process {holder.get('pid', '?')} on "
+                f"{holder.get('host', '?')}, since {holder.get('since', '?')}. "
+                "Wait for it or end it; `simkit status` shows how far it is"
+            ) from error
+        self._shut_out_stragglers()
+
+    def stop_starting(self) -> None:
+        """Tell the workers to begin no further block; those begun are still written."""
+        self._stopping = True
+        self._write()
+
+    def release(self) -> None:
+        """Give the folder free."""
+        os.ftruncate(self._handle, 0)
+        os.close(self._handle)
+
+    def _shut_out_stragglers(self) -> None:
+        """Take over as the only run whose workers may write, after those now writing are done."""
+        writers = _open(self.path.with_name(WRITERS_NAME))
+        try:
+            _wait_for_lock(writers, self.path.parent)
+            self._write()
+        finally:
+            os.close(writers)
+
+    def _write(self) -> None:
+        text = json.dumps(
+            {
+                "pid": os.getpid(),
+                "host": socket.gethostname(),
+                "since": datetime.now().astimezone().isoformat(" ", "seconds"),
+                "token": self.token,
+                "stopping": self._stopping,
+            }
+        )
+        # One write of fixed length: a reader sees the old or the new text.
+        try:
+            os.pwrite(self._handle, text.ljust(512).encode(), 0)
+        except OSError as error:
+            raise StoreError(f"{self.path.parent}: cannot be written: {error.strerror}") from error
+
+
+def may_start(lock: Path, token: str) -> bool:
+    """Whether the run with this token is alive and still starts blocks."""
+    holder = _read(lock)
+    return holder.get("token") == token and not holder.get("stopping")
+
+
+@contextmanager
+def writing(lock: Path, token: str) -> Iterator[bool]:
+    """Hold the right to write while inside; yields False if another run has taken over."""
+    handle = _open(lock.with_name(WRITERS_NAME))
+    try:
+        fcntl.flock(handle, fcntl.LOCK_SH)
+        yield _read(lock).get("token") == token
+    finally:
+        os.close(handle)
+
+
+def holder_of(folder: Path) -> dict[str, object] | None:
+    """Who runs in this folder now (pid, host, since), None if nobody does."""
+    try:
+        handle = os.open(folder / LOCK_NAME, os.O_RDONLY | os.O_CLOEXEC)
+    except OSError:
+        return None
+    try:
+        fcntl.flock(handle, fcntl.LOCK_SH | fcntl.LOCK_NB)
+    except OSError:
+        return _read(folder / LOCK_NAME)
+    finally:
+        os.close(handle)
+    return None
+
+
+def _open(path: Path) -> int:
+    try:
+        return os.open(path, os.O_RDWR | os.O_CREAT | os.O_CLOEXEC, 0o666)
+    except OSError as error:
+        raise StoreError(
+            f"{path.parent}: the results folder cannot be written: {error.strerror}; "
+            "choose another with --results"
+        ) from error
+
+
+def _read(path: Path) -> dict[str, object]:
+    try:
+        content = json.loads(path.read_text(encoding="utf-8"))
+    except (OSError, ValueError):
+        return {}
+    return content if isinstance(content, dict) else {}
+
+
+def _wait_for_lock(handle: int, folder: Path) -> None:
+    patience = time.monotonic() + _STRAGGLERS_S
+    while True:
+        try:
+            fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        except OSError as error:
+            if time.monotonic() > patience:
+                raise StoreError(
+                    f"{folder}: a worker of an earlier run is still writing here; end it first"
+                ) from error
+            time.sleep(0.05)
+        else:
+            return

@@ -1,0 +1,134 @@
+"""Where blocks are worked on: in this process, or by dask workers on this machine."""
+
+from __future__ import annotations
+
+import logging
+import os
+import shutil
+import tempfile
+from concurrent.futures import ThreadPoolExecutor
+from typing import Any, Protocol
+
+from simkit.engine.child import interrupts_held
+from simkit.runner.work import BlockJob, Receipt, Worker
+
+PER_WORKER = 2
+"""Blocks in flight for each worker: one in hand, one waiting, so that none is ever idle."""
+
+
+class Pool(Protocol):
+    """Takes blocks, hands back futures with `add_done_callback` and `result`."""
+
+    size: int
+
+    def submit(self, job: BlockJob) -> Any:
+        """Start a block some time soon."""
+
+    def close(self) -> None:
+        """End all workers; blocks in hand are dropped before they are written."""
+
+
+class InlinePool:
+    """One block at a time, in a thread of this process; the engine still runs in a child.
+
+    Parameters
+    ----------
+    worker : Worker
+        Closed together with the pool.
+    """
+
+    size = 1
+
+    def __init__(self, worker: Worker) -> None:
+        self._worker = worker
+        self._threads = ThreadPoolExecutor(1, thread_name_prefix="simkit-block")
+
+    def submit(self, job: BlockJob) -> Any:
+        """Start a block some time soon."""
+        return self._threads.submit(self._worker.do, job)
+
+    def close(self) -> None:
+        """End the child, and with it a case in hand."""
+        self._worker.close()
+        self._threads.shutdown(cancel_futures=True)
+
+
+class DaskPool:
+    """One dask worker process a core on this machine, each with a child for the engine.
+
+    Parameters
+    ----------
+    workers : int
+    function : str
+        Solver, as `Child` takes it.
+    """
+
+    def __init__(self, workers: int, function: str) -> None:
+        self.size = workers
+        self._function = function
+        self._scratch = tempfile.mkdtemp(prefix="simkit-")
+        self._cluster, self._client = self._start(workers)
+
+    def _start(self, workers: int) -> tuple[Any, Any]:
+        import dask
+        from distributed import Client, LocalCluster
+
+        settings = {
+            # A worker that is a daemon may have no child process.
+            "distributed.worker.daemon": False,
+            "distributed.logging.distributed": "critical",
+            "distributed.logging.tornado": "critical",
+            "distributed.admin.large-graph-warning-threshold": "1 GB",
+            "distributed.comm.timeouts.connect": "60s",
+            "temporary-directory": self._scratch,
+        }
+        with dask.config.set(settings), interrupts_held():
+            cluster = LocalCluster(  # type: ignore[no-untyped-call]
+                n_workers=workers,
+                threads_per_worker=1,
+                processes=True,
+                host="127.0.0.1",
+                dashboard_address=None,
+                # Without a dashboard the scheduler still listens, on a port that may be taken.
+                scheduler_kwargs={"dashboard": False, "dashboard_address": "127.0.0.1:0"},
+                memory_limit=0,
+                silence_logs=logging.CRITICAL,
+                local_directory=self._scratch,
+            )
+            return cluster, Client(cluster)  # type: ignore[no-untyped-call]
+
+    def submit(self, job: BlockJob) -> Any:
+        """Start a block some time soon."""
+        return self._client.submit(do_block, self._function, job, pure=False, retries=2)
+
+    def close(self) -> None:
+        """End all workers."""
+        from distributed import TimeoutError as DaskTimeoutError
+
+        try:
+            self._client.close(timeout=5)
+            self._cluster.close(timeout=10)
+        except (TimeoutError, DaskTimeoutError):
+            logging.getLogger(__name__).debug("dask workers were slow to end", exc_info=True)
+        finally:
+            shutil.rmtree(self._scratch, ignore_errors=True)
+
+
+def do_block(function: str, job: BlockJob) -> Receipt:
+    """Task of a dask worker: one block, with the `Worker` this process keeps."""
+    from distributed import get_worker
+
+    dask_worker: Any = get_worker()
+    worker = getattr(dask_worker, "simkit_worker", None)
+    if worker is None:
+        worker = dask_worker.simkit_worker = Worker(function)
+    receipt: Receipt = worker.do(job)
+    return receipt
+
+
+def core_count() -> int:
+    """Physical cores this process may use, at least 1."""
+    import psutil
+
+    allowed = len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count()
+    return max(1, min(allowed or 1, psutil.cpu_count(logical=False) or 1))

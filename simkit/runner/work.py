@@ -1,0 +1,234 @@
+"""Solve one block of cases and write it: what a worker does."""
+
+from __future__ import annotations
+
+import os
+import time
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from simkit.engine.child import Child, Kind
+from simkit.runner.lock import may_start, writing
+from simkit.runner.result import CaseResult
+from simkit.store.schema import Status
+from simkit.store.write import TORN, Block, StoreFile
+from simkit.study.model import Antenna
+
+
+@dataclass(frozen=True)
+class CaseJob:
+    """One case to be settled.
+
+    Attributes
+    ----------
+    index : int
+    key : str
+    antenna : Antenna or None
+        None: `ready` or `source` settles the case.
+    ready : CaseResult or None
+        Known already, as for a case that is refused without being tried.
+    source : tuple of (Path, int) or None
+        Store and case there from which the unchanged case is taken over.
+    """
+
+    index: int
+    key: str
+    antenna: Antenna | None = None
+    ready: CaseResult | None = None
+    source: tuple[Path, int] | None = None
+
+
+@dataclass(frozen=True)
+class BlockJob:
+    """One block of a store with the cases that are still waiting in it."""
+
+    store: Path
+    block: int
+    cases: tuple[CaseJob, ...]
+    plan: Any
+    limit_s: float
+    lock: Path
+    token: str
+
+
+@dataclass(frozen=True)
+class Receipt:
+    """What became of a block; small, so that nothing piles up where the run is led.
+
+    Attributes
+    ----------
+    block : int
+    statuses : tuple of (int, Status, str)
+        Case, status and reason for each case settled by this block.
+    solved, reused, solves : int
+        Cases computed here, cases taken over, frequencies solved by the engine.
+    seconds : float
+    dropped : bool
+        The run is stopping; nothing was done.
+    bug : str
+        Traceback of an error in simkit itself; nothing was written.
+    trouble : str
+        Why the block could not be written.
+    """
+
+    block: int
+    statuses: tuple[tuple[int, Status, str], ...] = ()
+    solved: int = 0
+    reused: int = 0
+    solves: int = 0
+    seconds: float = 0.0
+    dropped: bool = False
+    bug: str = ""
+    trouble: str = ""
+    pid: int = 0
+
+
+class ForeignError(Exception):
+    """An error of simkit's own met in a case; its text is a traceback."""
+
+
+def solve_guarded(child: Child, job: CaseJob, plan: Any, limit_s: float) -> CaseResult:
+    """Solve one case in the child; crash, hang and engine errors become its status.
+
+    Raises
+    ------
+    ForeignError
+        The solver raised something that is none of simkit's errors.
+    """
+    start = time.monotonic()
+    outcome = child.call(job.antenna, plan, limit_s=limit_s)
+    if outcome.kind is Kind.VALUE:
+        if not isinstance(outcome.value, CaseResult):
+            raise ForeignError(
+                f"case {job.index}: the solver returned {type(outcome.value).__name__}"
+            )
+        return outcome.value
+    if outcome.kind is Kind.BUG:
+        raise ForeignError(f"case {job.index}: {outcome.reason}\n{outcome.trace}")
+    status = Status.TIMED_OUT if outcome.kind is Kind.TIMED_OUT else Status.FAILED
+    return CaseResult(status, outcome.reason, seconds=time.monotonic() - start)
+
+
+class Worker:
+    """Does blocks one after another with one child and one open store.
+
+    Parameters
+    ----------
+    function : str
+        Solver, as `Child` takes it.
+    """
+
+    def __init__(self, function: str) -> None:
+        self.child = Child(function)
+        self._stores: dict[Path, StoreFile] = {}
+
+    def close(self) -> None:
+        """End the child."""
+        self.child.close()
+
+    def do(self, job: BlockJob) -> Receipt:
+        """Settle the waiting cases of one block and write it."""
+        start = time.monotonic()
+        if not may_start(job.lock, job.token):
+            return Receipt(job.block, dropped=True)
+        try:
+            receipt = self._do(job, start)
+        except ForeignError as error:
+            receipt = Receipt(job.block, bug=str(error))
+        except OSError as error:
+            text = error.strerror or str(error)
+            receipt = Receipt(job.block, trouble=f"block {job.block} cannot be written: {text}")
+        return receipt
+
+    def _do(self, job: BlockJob, start: float) -> Receipt:
+        store = self._store(job.store)
+        content, waiting = self._begin(store, job)
+        solves = solved = reused = 0
+        for case in waiting:
+            if case.source is not None and self._take(content, case):
+                reused += 1
+                continue
+            result = case.ready or solve_guarded(self.child, case, job.plan, job.limit_s)
+            self._put(content, case, result)
+            solved += 1
+            solves += result.solves
+        with writing(job.lock, job.token) as allowed:
+            if not allowed:
+                return Receipt(job.block, dropped=True)
+            store.write_block(job.block, content)
+        return Receipt(
+            job.block,
+            tuple(_settled(content, case.index) for case in waiting),
+            solved=solved,
+            reused=reused,
+            solves=solves,
+            seconds=time.monotonic() - start,
+            pid=os.getpid(),
+        )
+
+    def _store(self, path: Path) -> StoreFile:
+        if path not in self._stores:
+            self._stores[path] = StoreFile(path)
+        return self._stores[path]
+
+    @staticmethod
+    def _begin(store: StoreFile, job: BlockJob) -> tuple[Block, list[CaseJob]]:
+        """The block as stored, and those of the job's cases that are not settled in it.
+
+        A block may be given out again after its worker died just behind the last write.
+        """
+        content = store.new_block(job.block)
+        try:
+            stored = store.read_arrays(job.block)
+        except TORN:
+            return content, list(job.cases)
+        for row in range(content.count):
+            if stored["status"][row] != Status.WAITING:
+                content.take(content.first + row, stored, row)
+        statuses = content.statuses()
+        waiting = [c for c in job.cases if statuses[c.index - content.first] is Status.WAITING]
+        return content, waiting
+
+    def _take(self, content: Block, case: CaseJob) -> bool:
+        """Copy an unchanged case from an older store; False if it cannot be read there."""
+        assert case.source is not None
+        path, row = case.source
+        store = self._store(path)
+        block, place = divmod(row, store.block_size)
+        try:
+            content.take(case.index, self._old_block(store, block), place)
+        except TORN:
+            return False
+        return True
+
+    def _old_block(self, store: StoreFile, block: int) -> dict[str, Any]:
+        """The arrays of one block of an older store; neighbours are usually asked for next."""
+        key = (store.path, block)
+        if getattr(self, "_old_key", None) != key:
+            self._old_arrays = store.read_arrays(block)
+            self._old_key = key
+        return self._old_arrays
+
+    @staticmethod
+    def _put(content: Block, case: CaseJob, result: CaseResult) -> None:
+        try:
+            content.put(case.index, result.arrays)
+            content.put(
+                case.index,
+                {
+                    "status": int(result.status),
+                    "reason": result.reason,
+                    "case_key": case.key,
+                    "seconds": float(result.seconds),
+                    "solves": int(result.solves),
+                },
+            )
+        except ValueError as error:
+            raise ForeignError(f"the solver's arrays do not fit the store: {error}") from error
+
+
+def _settled(content: Block, index: int) -> tuple[int, Status, str]:
+    row = index - content.first
+    status = Status(int(content.arrays["status"][row]))
+    return index, status, str(content.arrays["reason"][row])

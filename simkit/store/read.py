@@ -1,0 +1,182 @@
+"""Open results for reading."""
+
+from __future__ import annotations
+
+from os import PathLike
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from simkit.errors import StoreError
+from simkit.store.schema import Status
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+STORE_NAME = "store.zarr"
+UNFINISHED_NAME = "store.new.zarr"
+
+
+def store_path(path: str | PathLike[str]) -> Path:
+    """The store inside a results folder; a path to the store itself is taken as it is.
+
+    Raises
+    ------
+    StoreError
+        There is no such folder, or nothing was run into it.
+    """
+    folder = Path(path)
+    if folder.suffix == ".zarr":
+        return folder
+    if not folder.exists():
+        raise StoreError(f"{folder}: no such results folder; `simkit run STUDY` makes one")
+    if not folder.is_dir():
+        raise StoreError(f"{folder}: this is a file; give the results folder that a run made")
+    if not (folder / STORE_NAME).exists():
+        raise StoreError(
+            f"{folder}: there is no {STORE_NAME} in this folder; `simkit run STUDY` writes one "
+            "to results/NAME, NAME being that of the study file"
+        )
+    return folder / STORE_NAME
+
+
+def open_results(path: str | PathLike[str]) -> xr.Dataset:
+    """Open the results of a run.
+
+    Parameters
+    ----------
+    path : path
+        Results folder, as `simkit run` prints it at the end.
+
+    Returns
+    -------
+    xarray.Dataset
+        Variables and units as in `simkit.store.schema.VARIABLES`, read from the disk when they are
+        used. Cases that are not solved read NaN; `status_labels` gives the words for `status`. A
+        run still going may be opened; open it again to see what was added.
+
+    Raises
+    ------
+    StoreError
+        The folder is missing, empty, damaged or written by another version.
+    """
+    import xarray as xr
+
+    from simkit.store.write import TORN, read_attrs
+
+    store = store_path(path)
+    attrs = read_attrs(store)
+    try:
+        dataset = xr.open_zarr(store, consolidated=False, chunks=None)
+        # Small, and wanted as plain text for selecting strips by name.
+        strips = dataset["strip"]
+        words = np.array([str(name) for name in strips.values])
+        dataset = dataset.assign_coords(strip=("strip", words, strips.attrs))
+    except (*TORN, KeyError) as error:
+        raise StoreError(f"{store}: damaged, cannot be read: {error}") from error
+    missing = [name for name in attrs["variables"] if name not in dataset]
+    if missing:
+        raise StoreError(
+            f"{store}: damaged, the arrays {', '.join(missing)} are missing; "
+            "start anew with --fresh"
+        )
+    try:
+        dataset["status"].load()
+    except TORN as error:
+        raise StoreError(
+            f"{store}: the status of a block is damaged ({error}); "
+            "run the study again, it solves that block anew"
+        ) from error
+    return _in_order(dataset, attrs)
+
+
+def _in_order(dataset: xr.Dataset, attrs: dict[str, Any]) -> xr.Dataset:
+    """Coordinates and variables in the order of study and schema, not of the disk."""
+    import xarray as xr
+
+    swept, variables = list(attrs["swept"]), list(attrs["variables"])
+    others = [str(name) for name in dataset.variables if name not in {*swept, *variables, "case"}]
+    coords = {name: dataset[name].variable for name in ("case", *swept, *sorted(others))}
+    data = {name: dataset[name].variable for name in variables}
+    return xr.Dataset(data, coords, dataset.attrs)
+
+
+def status_labels(dataset: xr.Dataset) -> xr.DataArray:
+    """The status of every case as a word: ``solved``, ``timed-out`` ...
+
+    Returns
+    -------
+    xarray.DataArray
+        Text, with the dimensions of ``status``.
+    """
+    status = dataset["status"]
+    words = np.array([code.label for code in Status])
+    return status.copy(data=words[status.values.astype(int)]).drop_attrs()
+
+
+def swept_names(dataset: xr.Dataset) -> tuple[str, ...]:
+    """Names of the swept values, in the order of the study; each is a coordinate along `case`."""
+    return tuple(dataset.attrs["swept"])
+
+
+def swept_values(dataset: xr.Dataset, case: int) -> dict[str, float]:
+    """Swept values of one case, SI."""
+    return {name: float(dataset[name].values[case]) for name in swept_names(dataset)}
+
+
+def as_grid(dataset: xr.Dataset) -> xr.Dataset:
+    """Unstack a grid sweep: one dimension per swept value in place of ``case``.
+
+    Parameters
+    ----------
+    dataset : xarray.Dataset
+        From `open_results`.
+
+    Returns
+    -------
+    xarray.Dataset
+        Loaded into memory; without a sweep the ``case`` dimension is simply dropped. `case` becomes
+        a coordinate over the grid.
+
+    Raises
+    ------
+    StoreError
+        The study takes its swept values in step (``method = "list"``), so that they span no grid.
+    """
+    import xarray as xr
+
+    method = dataset.attrs.get("sweep_method")
+    if method != "grid":
+        raise StoreError(
+            f"the cases of {dataset.attrs.get('title', 'this study')!r} were made by the sweep "
+            f"method {method!r} and span no grid; select them along `case` instead, as in "
+            'dataset.isel(case=0), or use `method = "grid"`'
+        )
+    stored = list(swept_names(dataset))
+    shape = [int(count) for count in dataset.attrs["sweep_shape"]]
+    if not stored:
+        return dataset.isel(case=0)
+    sizes = dict(zip(stored, shape, strict=True))
+    if dataset.sizes["case"] != int(np.prod(shape)):
+        raise StoreError(
+            f"a part of the cases ({dataset.sizes['case']} of {int(np.prod(shape))}) spans no "
+            "grid; unstack the whole dataset first, then select"
+        )
+    variables: dict[Any, Any] = {}
+    for name, variable in dataset.variables.items():
+        if name in sizes:
+            axis = stored.index(str(name))
+            grid = variable.values.reshape(shape)
+            line = np.moveaxis(grid, axis, 0).reshape(shape[axis], -1)[:, 0]
+            variables[name] = xr.Variable((name,), line, variable.attrs)
+        elif name == "case":
+            variables[name] = xr.Variable(stored, variable.values.reshape(shape), variable.attrs)
+        elif "case" in variable.dims:
+            variables[name] = variable.unstack(case=sizes)
+        else:
+            variables[name] = variable
+    coords = {name: variables.pop(name) for name in dataset.coords}
+    grid_set = xr.Dataset(variables, coords, dataset.attrs)
+    order = (*stored, ...)
+    return grid_set.transpose(*order)
