@@ -60,8 +60,8 @@ def _check_wire(wire: Wire, radius_m: float, wavelength_m: float) -> None:
     if wire.segment_m > wavelength_m / 10:
         raise GeometryError(
             f"{where} has segments of {wire.segment_m * 1e3:.4g} mm, over a tenth of the "
-            f"wavelength ({wavelength_m * 1e2:.4g} mm) at the top of the band: lower frequency.stop, or "
-            "narrow the strip so that segments can be shorter"
+            f"wavelength ({wavelength_m * 1e2:.4g} mm) at the band's top: lower frequency.stop, "
+            "or narrow the strip so that segments can be shorter"
         )
 
 

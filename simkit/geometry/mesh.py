@@ -23,9 +23,9 @@ FIGURE_FROM_RAD = np.deg2rad(50.0)
 
 APEX_FIGURE_FROM_RAD = np.deg2rad(20.0)
 """A fed corner gets its figure earlier: the source then sits on the chamfer, half on each of its
-two segments. On the legs beside a plain bend the power balance is off by 1 % at 30 degrees, 3 % at 60,
-7 % at 90; on the chamfer it stays within 2 %. The figure agrees with the plain bend to 0.02 % in
-frequency at 20 degrees, so nothing jumps where one takes over from the other."""
+two segments. On the legs beside a plain bend the power balance is off by 1 % at 30 degrees, 3 % at
+60, 7 % at 90; on the chamfer it stays within 2 %. The figure agrees with the plain bend to 0.02 %
+in frequency at 20 degrees, so nothing jumps where one takes over from the other."""
 
 FIGURE_UP_TO_RAD = np.deg2rad(120.0)
 """Fold-backs beyond this are outside the rules."""
