@@ -145,7 +145,7 @@ def _group_attrs(layout: Layout) -> dict[str, Any]:
         "layout_hash": layout_hash(),
         "variables": list(VARIABLES),
         "block_size": layout.block_size,
-        "swept": [column.name for column in layout.swept],
+        "swept": {column.name: column.name for column in layout.swept},
         # What xarray itself needs to see the swept values as coordinates.
         "coordinates": " ".join(column.name for column in layout.swept),
     }

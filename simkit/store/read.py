@@ -115,9 +115,12 @@ def status_labels(dataset: xr.Dataset) -> xr.DataArray:
     return status.copy(data=words[status.values.astype(int)]).drop_attrs()
 
 
-def swept_names(dataset: xr.Dataset) -> tuple[str, ...]:
-    """Names of the swept values, in the order of the study; each is a coordinate along `case`."""
-    return tuple(dataset.attrs["swept"])
+def swept_names(dataset: xr.Dataset) -> dict[str, str]:
+    """Name in the study -> name of the coordinate along `case`, in the order of the study.
+
+    The two are the same: a study that sweeps a name the store needs itself is refused.
+    """
+    return dict(dataset.attrs["swept"])
 
 
 def swept_values(dataset: xr.Dataset, case: int) -> dict[str, float]:
