@@ -57,8 +57,8 @@ def nearest_case(dataset: xr.Dataset, nominal: Mapping[str, float] | None = None
         cases the first is taken, and unsolved ones only if there is no other.
     """
     distance = np.zeros(dataset.sizes["case"])
-    for name, stored in swept_names(dataset).items():
-        values = np.asarray(dataset[stored].values, dtype=float)
+    for name in swept_names(dataset):
+        values = np.asarray(dataset[name].values, dtype=float)
         span = float(np.ptp(values))
         if span > 0.0:
             middle = float(values.min() + span / 2)
@@ -115,9 +115,9 @@ def why_empty(case: xr.Dataset) -> str:
     return f"{status}: {reason}" if reason else status
 
 
-def swept_unit(dataset: xr.Dataset, stored: str) -> DisplayUnit:
+def swept_unit(dataset: xr.Dataset, name: str) -> DisplayUnit:
     """Return the unit in which to show a swept value, from its attributes."""
-    attrs = dataset[stored].attrs
+    attrs = dataset[name].attrs
     return written_unit(str(attrs.get("units", "1")), str(attrs.get("display_unit", "")))
 
 
@@ -126,8 +126,7 @@ def describe_case(case: xr.Dataset) -> str:
     if "case" not in case.coords:
         return ""
     values = [
-        f"{name} {swept_unit(case, stored).value(float(case[stored]))}"
-        for name, stored in swept_names(case).items()
+        f"{name} {swept_unit(case, name).value(float(case[name]))}" for name in swept_names(case)
     ]
     text = f"case {int(case['case'])}" + (": " + ", ".join(values) if values else "")
     if int(case["status"]) == Status.DOUBTFUL:
@@ -138,7 +137,7 @@ def describe_case(case: xr.Dataset) -> str:
 def title_of(case: xr.Dataset, what: str) -> str:
     """Return two lines: the study with what the picture shows, and which case it is."""
     study = str(case.attrs.get("title", ""))
-    first = f"{study} - {what}" if study else what
+    first = f"{study}: {what}" if study else what
     second = describe_case(case)
     return f"{first}\n{second}" if second else first
 

@@ -20,6 +20,7 @@ from simkit.plot.style import (
     say_empty,
     tidy,
 )
+from simkit.response.features import find_resonances
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -27,8 +28,6 @@ if TYPE_CHECKING:
 
 RESISTANCE_COLOUR = "#000000"
 REACTANCE_COLOUR = "#8c5a9e"
-
-_RESONANCES = (("series", "full"), ("parallel", "none"))
 
 
 def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | None = None) -> Axes:
@@ -67,7 +66,8 @@ def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | N
     if not is_solved(chosen):
         say_empty(ax, why_empty(chosen))
         return ax
-    frequency = np.asarray(chosen["frequency"].values, dtype=float) * unit.factor
+    frequency_hz = np.asarray(chosen["frequency"].values, dtype=float)
+    frequency = frequency_hz * unit.factor
     impedance = chosen["impedance"].values
     ax.axhline(0.0, color=QUIET, linewidth=0.8)
     ax.plot(frequency, impedance.real, color=RESISTANCE_COLOUR, label="resistance R")
@@ -81,7 +81,7 @@ def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | N
     ax.set_xlim(float(frequency[0]), float(frequency[-1]))
     ax.set_ylim(*_limits_ohm(impedance))
     _mark_modes(ax, chosen, unit)
-    _mark_resonances(ax, chosen, unit)
+    _mark_resonances(ax, frequency_hz, impedance, unit)
     legend_beside(ax)
     return ax
 
@@ -123,28 +123,32 @@ def _mark_modes(ax: Axes, case: xr.Dataset, unit: DisplayUnit) -> None:
             )
 
 
-def _mark_resonances(ax: Axes, case: xr.Dataset, unit: DisplayUnit) -> None:
+def _mark_resonances(
+    ax: Axes,
+    frequency_hz: NDArray[np.float64],
+    impedance: NDArray[np.complex128],
+    unit: DisplayUnit,
+) -> None:
     """Full circles at series and open ones at parallel resonances, where they lie: on X = 0."""
-    for kind, fill in _RESONANCES:
-        frequency = np.asarray(case[f"{kind}_resonance_frequency"].values, dtype=float)
-        resistance = np.asarray(case[f"{kind}_resonance_resistance"].values, dtype=float)
-        known = np.flatnonzero(np.isfinite(frequency))
-        known = known[np.argsort(frequency[known])]
-        if not known.size:
+    known = np.isfinite(impedance)
+    resonances = find_resonances(frequency_hz[known], impedance[known])
+    for kind in ("series", "parallel"):
+        found = [resonance for resonance in resonances if resonance.kind == kind]
+        if not found:
             continue
-        places = frequency[known] * unit.factor
         listed = "\n".join(
-            f"{frequency_text(hz, unit)}, {ohm:.1f} ohm"
-            for hz, ohm in zip(frequency[known], resistance[known], strict=True)
+            f"{frequency_text(each.frequency_hz, unit)}, {each.resistance_ohm:.1f} ohm"
+            for each in found
         )
         ax.plot(
-            places,
-            np.zeros(known.size),
+            [each.frequency_hz * unit.factor for each in found],
+            [0.0] * len(found),
             linestyle="none",
             marker="o",
             markersize=7,
-            fillstyle="full" if fill == "full" else "none",
+            fillstyle="full" if kind == "series" else "none",
             color=INK,
             zorder=4,
+            clip_on=False,
             label=f"{kind} resonance:\n{listed}",
         )

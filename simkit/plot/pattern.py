@@ -264,11 +264,10 @@ def _draw_mode(ax: PolarAxes, case: xr.Dataset, mode: Mode, plane: Plane) -> Non
 
 
 def _legend_text(case: xr.Dataset, mode: Mode) -> str:
-    """Three lines: the mode, where its pattern was taken, its peak gain and direction."""
+    """Three lines: the mode, how its pattern was excited, its largest gain in any direction."""
     unit = frequency_unit(case["frequency"])
     at = case.isel(mode=mode.slot)
     frequency = frequency_text(float(at["pattern_frequency"]), unit)
     how = "mode current alone" if int(at["driven"]) == 0 else "driven at the feed"
     peak = f"peak {float(at['peak_gain']):.1f} dBi"
-    towards = f"theta {float(at['peak_theta']):.0f}°, phi {float(at['peak_phi']):.0f}°"
-    return f"{mode.label} at {frequency}\n{how}\n{peak} at {towards}"
+    return f"{mode.label} at {frequency}\n{how}\n{peak}"

@@ -160,11 +160,7 @@ def save_all(
 
 def _tracks_files(dataset: xr.Dataset) -> Iterator[tuple[str, str]]:
     """Every value with at least two settings: the first in ``tracks.png``, more by their names."""
-    varied = [
-        name
-        for name, stored in swept_names(dataset).items()
-        if np.unique(dataset[stored].values).size > 1
-    ]
+    varied = [name for name in swept_names(dataset) if np.unique(dataset[name].values).size > 1]
     for number, by in enumerate(varied):
         yield by, "tracks.png" if number == 0 else f"tracks_{re.sub(r'[^A-Za-z0-9]+', '_', by)}.png"
 

@@ -14,6 +14,7 @@ from simkit.errors import StoreError
 from simkit.plot.cases import has_data, nearest_case, swept_unit
 from simkit.plot.style import (
     INK,
+    QUIET,
     DisplayUnit,
     frequency_unit,
     legend_beside,
@@ -24,6 +25,7 @@ from simkit.plot.style import (
 )
 from simkit.response.labels import half_wave_label
 from simkit.store.read import swept_names
+from simkit.store.schema import Status
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -97,25 +99,25 @@ def plot_tracks(
     ax = new_axes(ax, (9.0, 5.5))
     title = str(dataset.attrs.get("title", ""))
     what = f"modes and dips against {by}"
-    ax.set_title(f"{title} - {what}" if title else what, fontsize="medium", loc="left")
+    ax.set_title(f"{title}: {what}" if title else what, fontsize="medium", loc="left")
     tidy(ax)
-    stored = swept_names(dataset)[by]
-    across, up = swept_unit(dataset, stored), frequency_unit(dataset["frequency"])
+    across, up = swept_unit(dataset, by), frequency_unit(dataset["frequency"])
     ax.set_xlabel(across.label(by))
     ax.set_ylabel(up.label("frequency"))
-    groups = _groups(dataset, stored, nearest_case(dataset, nominal))
+    groups = _groups(dataset, by, nearest_case(dataset, nominal))
     numbers = _mode_numbers(dataset)
     if not numbers:
         say_empty(ax, "no case has a natural mode yet")
         return ax
     for half_waves in numbers:
         for group in groups:
-            _draw_group(ax, dataset, stored, half_waves, group, (across, up))
+            _draw_group(ax, dataset, by, half_waves, group, (across, up))
+    _name_outer_lines(ax, dataset, by, numbers[-1], groups, (across, up))
     for build in measured:
         places = np.asarray(build.dip_frequency_hz, dtype=float) * up.factor
         across_at = np.full(places.size, build.value * across.factor)
         ax.plot(across_at, places, linestyle="none", marker="x", markersize=8, color=INK, zorder=5)
-    _explain(ax, numbers, groups, bool(measured))
+    _explain(ax, numbers, groups, bool(measured), _blemishes(dataset))
     return ax
 
 
@@ -139,12 +141,12 @@ def _mode_numbers(dataset: xr.Dataset) -> list[int]:
 
 def _groups(dataset: xr.Dataset, by: str, strong_case: int) -> list[_Group]:
     """Split the cases by their other swept values; the group of `strong_case` is drawn strongly."""
-    others = {name: stored for name, stored in swept_names(dataset).items() if stored != by}
-    columns = [np.asarray(dataset[stored].values, dtype=float) for stored in others.values()]
+    others = [name for name in swept_names(dataset) if name != by]
+    columns = [np.asarray(dataset[name].values, dtype=float) for name in others]
     keys = [tuple(float(column[i]) for column in columns) for i in range(dataset.sizes["case"])]
     joined = True
     if len(keys) > 1 and len(set(keys)) == len(keys):
-        joined = _in_step(dataset, by, list(others.values()))
+        joined = _in_step(dataset, by, others)
         keys = [()] * len(keys)
     x = np.asarray(dataset[by].values, dtype=float)
     strong_key = keys[int(np.flatnonzero(dataset["case"].values == strong_case)[0])]
@@ -153,8 +155,8 @@ def _groups(dataset: xr.Dataset, by: str, strong_case: int) -> list[_Group]:
         members = np.array([i for i, k in enumerate(keys) if k == key], dtype=np.int64)
         members = members[np.argsort(x[members], kind="stable")]
         text = ", ".join(
-            f"{name} {swept_unit(dataset, stored).value(value)}"
-            for (name, stored), value in zip(others.items(), key, strict=False)
+            f"{name} {swept_unit(dataset, name).value(value)}"
+            for name, value in zip(others, key, strict=False)
         )
         groups.append(_Group(members, text, key == strong_key, joined))
     return groups
@@ -212,7 +214,50 @@ def _draw_group(
         )
 
 
-def _explain(ax: Axes, numbers: list[int], groups: list[_Group], measured: bool) -> None:
+def _name_outer_lines(
+    ax: Axes,
+    dataset: xr.Dataset,
+    by: str,
+    half_waves: int,
+    groups: list[_Group],
+    units: tuple[DisplayUnit, DisplayUnit],
+) -> None:
+    """Name the lowest and the highest line of the top mode; those between lie in order."""
+    ends = []
+    for group in groups:
+        frequency = _frequencies(dataset, "mode_frequency", half_waves, group.cases)
+        last = np.flatnonzero(np.isfinite(frequency))
+        if group.values and last.size:
+            x = float(dataset[by].values[group.cases[last[-1]]])
+            ends.append((float(frequency[last[-1]]), x, group.values))
+    if len(ends) < 2:
+        return
+    for (frequency_hz, x, text), lift in ((min(ends), -4), (max(ends), 4)):
+        ax.annotate(
+            text,
+            (x * units[0].factor, frequency_hz * units[1].factor),
+            xytext=(0, lift),
+            textcoords="offset points",
+            ha="right",
+            va="bottom" if lift > 0 else "top",
+            fontsize=8,
+            color=QUIET,
+        )
+
+
+def _blemishes(dataset: xr.Dataset) -> str:
+    """Say how many of the cases are doubtful or missing, empty if none is."""
+    status = dataset["status"].values
+    doubtful = int(np.count_nonzero(status == Status.DOUBTFUL))
+    missing = int(np.count_nonzero(~has_data(dataset)))
+    parts = [f"{doubtful} doubtful"] if doubtful else []
+    parts += [f"{missing} without a solution"] if missing else []
+    return f"of {status.size} cases: " + ",\n".join(parts) if parts else ""
+
+
+def _explain(
+    ax: Axes, numbers: list[int], groups: list[_Group], measured: bool, blemishes: str
+) -> None:
     """Legend beside the picture: modes, kinds of line, values of the strong and faint lines."""
     handles = []
     for half_waves in reversed(numbers):
@@ -244,4 +289,6 @@ def _explain(ax: Axes, numbers: list[int], groups: list[_Group], measured: bool)
         handles.append(
             Line2D([], [], color=INK, linestyle="none", marker="x", label="measured dip")
         )
+    if blemishes:
+        handles.append(Line2D([], [], linestyle="none", label=blemishes))
     legend_beside(ax, handles=handles)
