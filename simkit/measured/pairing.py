@@ -37,8 +37,9 @@ MISSED_DEPTH_COST = 8.0
 """Cost added for a perfect match; a shallow dip may well be missed, a deep one hardly. Together: a
 10 dB dip is given up rather than taken 4.6 spreads from where the others say it is."""
 
-UNEXCITED_COST = 3.0
-"""Cost of giving a measured dip to a mode for which the model, with its ideal feed, shows none."""
+UNEXCITED_COST = 0.5
+"""Cost of giving a measured dip to a mode for which the model, with its ideal feed, shows none: as
+such dips are shallow, they are taken within 1.4 spreads of where that mode would show."""
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,301 @@
+"""A measured sweep beside a simulated case, mode by mode."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from simkit.errors import MeasurementError, StoreError
+from simkit.measured.dips import measured_dips
+from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
+from simkit.measured.pairing import ModelledDip, Pairing
+from simkit.measured.selection import (
+    CaseModes,
+    as_cases,
+    is_solved,
+    modes_of_cases,
+    row_of_build,
+    row_of_case,
+    simulated_reflection,
+)
+from simkit.measured.wording import comparison_text
+from simkit.response.features import Dip
+from simkit.response.labels import half_wave_label
+from simkit.store.read import swept_names
+from simkit.store.schema import Status
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+NAN = float("nan")
+
+
+@dataclass(frozen=True)
+class ModeLine:
+    """One mode, simulated and measured; NaN for what does not exist.
+
+    Attributes
+    ----------
+    half_waves : int
+    natural_hz, q : float
+        Of the simulated natural mode.
+    simulated_hz, simulated_return_loss_db, simulated_bandwidth_hz : float
+        The dip the mode owns in the simulation; the band has at least 10 dB return loss.
+    measured_hz, measured_return_loss_db, measured_bandwidth_hz : float
+        The measured dip paired with it.
+    simulated_ratio, measured_ratio : float
+        Dip over that of the lowest mode which has both.
+    """
+
+    half_waves: int
+    natural_hz: float
+    q: float
+    simulated_hz: float = NAN
+    simulated_return_loss_db: float = NAN
+    simulated_bandwidth_hz: float = NAN
+    measured_hz: float = NAN
+    measured_return_loss_db: float = NAN
+    measured_bandwidth_hz: float = NAN
+    simulated_ratio: float = NAN
+    measured_ratio: float = NAN
+
+    @property
+    def label(self) -> str:
+        """The mode's length: ``1/2 wave``, ``1 wave``, ``3/2 wave``."""
+        return half_wave_label(self.half_waves)
+
+    @property
+    def ratio(self) -> float:
+        """Measured over simulated dip frequency."""
+        return self.measured_hz / self.simulated_hz
+
+    @property
+    def is_paired(self) -> bool:
+        """Both dips exist."""
+        return bool(np.isfinite(self.ratio))
+
+
+@dataclass(frozen=True, eq=False)
+class Comparison:
+    """A measured sweep beside one simulated case.
+
+    Attributes
+    ----------
+    measurement : Measurement
+        Referred to the reference resistance of the study.
+    title : str
+        Of the study.
+    case : int
+    values : dict of str to float
+        Swept values of the case, SI.
+    units : dict of str to str
+        Their SI units.
+    status : str
+        ``solved`` or ``doubtful``.
+    frequency_hz : (F,) float array
+    simulated_reflection : (F,) complex array
+    lines : tuple of ModeLine
+        One per natural mode of the case, lowest first.
+    unpaired : tuple of Dip
+        Measured dips that belong to no mode.
+    notes : tuple of str
+    """
+
+    measurement: Measurement
+    title: str
+    case: int
+    values: dict[str, float]
+    units: dict[str, str]
+    status: str
+    frequency_hz: FloatArray
+    simulated_reflection: ComplexArray
+    lines: tuple[ModeLine, ...]
+    unpaired: tuple[Dip, ...]
+    notes: tuple[str, ...]
+
+    def as_rows(self) -> list[dict[str, Any]]:
+        """One dictionary per mode, then one per unpaired dip, SI; None for what does not exist."""
+        head = {"file": str(self.measurement.path), "case": self.case}
+        rows = [head | _row(line) for line in self.lines]
+        lost = [
+            ModeLine(-1, NAN, NAN, NAN, NAN, NAN, dip.frequency_hz, dip.return_loss_db,
+                     dip.bandwidth_hz)
+            for dip in self.unpaired
+        ]  # fmt: skip
+        return rows + [head | _row(line) | {"mode": "unpaired"} for line in lost]
+
+    def as_text(self) -> str:
+        """The comparison as a table with what to conclude from it."""
+        return comparison_text(self)
+
+
+def compare(
+    dataset: xr.Dataset,
+    measurement: Measurement,
+    case: int | None = None,
+    *,
+    build: Mapping[str, float] | None = None,
+) -> Comparison:
+    """Set a measured sweep beside one case of the results.
+
+    Parameters
+    ----------
+    dataset : xarray.Dataset
+        As `simkit.open_results` returns it.
+    measurement : Measurement
+        As `simkit.read_touchstone` returns it; renormalised to the study's reference if needed.
+    case : int, optional
+        Label of the case. If left out, the case of the `build` or else the one whose dips fit the
+        measured ones best as they stand.
+    build : mapping of str to float, optional
+        Swept values as cut, SI; the nearest solved case is taken, with a note unless it is exact.
+
+    Returns
+    -------
+    Comparison
+
+    Raises
+    ------
+    StoreError
+        If the case does not exist or was not solved, or none was.
+    MeasurementError
+        If sweep and simulation have no frequency in common.
+    """
+    dataset = as_cases(dataset)
+    if not is_solved(dataset).any():
+        raise StoreError(
+            "no case of these results is solved, so there is nothing to compare with; "
+            "run the study, or see simkit status for the reasons"
+        )
+    reference = float(dataset.attrs.get("reference_ohm", 50.0))
+    measurement = measurement.renormalised(reference)
+    bands = _bands(dataset, measurement)
+    dips, dip_notes = measured_dips(measurement)
+    heard = [ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20)) for dip in dips]
+    every = modes_of_cases(dataset)
+    notes = [*measurement.notes, *dip_notes]
+    if case is not None:
+        row = row_of_case(dataset, case)
+    elif build:
+        row, build_notes = row_of_build(dataset, build)
+        notes += build_notes
+    else:
+        row, fit_notes = _best_row(dataset, every, heard, bands)
+        notes += fit_notes
+    pairing = every[row].pair(heard, *bands)
+    notes += _unexcited_notes(every[row], pairing)
+    return _comparison(dataset, row, measurement, every[row], dips, pairing, notes)
+
+
+def _bands(
+    dataset: xr.Dataset, measurement: Measurement
+) -> tuple[tuple[float, float], tuple[float, float]]:
+    simulated = dataset["frequency"].values
+    band = (float(simulated[0]), float(simulated[-1]))
+    swept = (float(measurement.frequency_hz[0]), float(measurement.frequency_hz[-1]))
+    if band[0] > swept[1] or swept[0] > band[1]:
+        raise MeasurementError(
+            f"{measurement.path}: measured from {swept[0] / 1e6:g} to {swept[1] / 1e6:g} MHz, "
+            f"simulated from {band[0] / 1e6:g} to {band[1] / 1e6:g} MHz: no frequency in common; "
+            "change [frequency] of the study or measure that band"
+        )
+    return band, swept
+
+
+def _best_row(
+    dataset: xr.Dataset,
+    every: list[CaseModes],
+    heard: list[ModelledDip],
+    bands: tuple[tuple[float, float], tuple[float, float]],
+) -> tuple[int, list[str]]:
+    solved = np.flatnonzero(is_solved(dataset))
+    if len(solved) == 1:
+        return int(solved[0]), []
+    misfit = [every[row].pair(heard, *bands).misfit for row in solved]
+    row = int(solved[int(np.argmin(misfit))])
+    return row, [f"of {len(solved)} solved cases this one's dips fit the measured ones best"]
+
+
+def _unexcited_notes(modes: CaseModes, pairing: Pairing) -> list[str]:
+    return [
+        f"the {half_wave_label(modes.half_waves[i])} mode is measured but not excited by the "
+        "modelled feed: the build is not symmetric there, or its cable radiates"
+        for i, _ in pairing.pairs
+        if not np.isfinite(modes.dip_hz[i])
+    ]
+
+
+def _comparison(
+    dataset: xr.Dataset,
+    row: int,
+    measurement: Measurement,
+    modes: CaseModes,
+    dips: list[Dip],
+    pairing: Pairing,
+    notes: list[str],
+) -> Comparison:
+    case = dataset.isel(case=row)
+    frequency, gamma = simulated_reflection(case, measurement.reference_ohm)
+    swept = swept_names(dataset)
+    taken = {j for _, j in pairing.pairs}
+    return Comparison(
+        measurement=measurement,
+        title=str(dataset.attrs.get("title", "")),
+        case=int(case["case"]),
+        values={name: float(case[name]) for name in swept},
+        units={name: str(dataset[name].attrs.get("units", "1")) for name in swept},
+        status=Status(int(case["status"])).label,
+        frequency_hz=frequency,
+        simulated_reflection=gamma,
+        lines=_lines(modes, dips, pairing),
+        unpaired=tuple(dip for j, dip in enumerate(dips) if j not in taken),
+        notes=tuple(notes),
+    )
+
+
+def _lines(modes: CaseModes, dips: list[Dip], pairing: Pairing) -> tuple[ModeLine, ...]:
+    owner = {i: dips[j] for i, j in pairing.pairs}
+    both = [i for i in sorted(owner) if np.isfinite(modes.dip_hz[i])]
+    base = both[0] if both else None
+    lines = []
+    for i, half_waves in enumerate(modes.half_waves):
+        dip = owner.get(i, Dip(NAN, NAN, NAN, NAN))
+        simulated = float(modes.dip_hz[i])
+        lines.append(
+            ModeLine(
+                half_waves=half_waves,
+                natural_hz=float(modes.natural_hz[i]),
+                q=float(modes.q[i]),
+                simulated_hz=simulated,
+                simulated_return_loss_db=float(modes.return_loss_db[i]),
+                simulated_bandwidth_hz=float(modes.bandwidth_hz[i]),
+                measured_hz=dip.frequency_hz,
+                measured_return_loss_db=dip.return_loss_db,
+                measured_bandwidth_hz=dip.bandwidth_hz,
+                simulated_ratio=NAN if base is None else simulated / float(modes.dip_hz[base]),
+                measured_ratio=NAN if base is None else dip.frequency_hz / owner[base].frequency_hz,
+            )
+        )
+    return tuple(lines)
+
+
+def _row(line: ModeLine) -> dict[str, Any]:
+    numbers = {
+        "natural_frequency_hz": line.natural_hz,
+        "q": line.q,
+        "simulated_dip_hz": line.simulated_hz,
+        "measured_dip_hz": line.measured_hz,
+        "measured_over_simulated": line.ratio,
+        "simulated_return_loss_db": line.simulated_return_loss_db,
+        "measured_return_loss_db": line.measured_return_loss_db,
+        "simulated_bandwidth_hz": line.simulated_bandwidth_hz,
+        "measured_bandwidth_hz": line.measured_bandwidth_hz,
+        "simulated_ratio": line.simulated_ratio,
+        "measured_ratio": line.measured_ratio,
+    }
+    known = {key: value if np.isfinite(value) else None for key, value in numbers.items()}
+    number = line.half_waves if line.half_waves >= 0 else None
+    return {"mode": line.label, "half_waves": number} | known

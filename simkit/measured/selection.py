@@ -1,0 +1,189 @@
+"""Which case of the results a measured sweep is set beside, and what that case says."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from simkit.errors import StoreError
+from simkit.measured.measurement import ComplexArray, FloatArray
+from simkit.measured.pairing import ModelledDip, Pairing, pair
+from simkit.response.features import reflection
+from simkit.store.read import swept_names
+from simkit.store.schema import Status
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+USUAL_DIP_OVER_POLE = 1.02
+"""Where to expect the dip of a mode when no mode of the case shows one: between 1 and 7 % above
+the natural frequency for straight strips; only used to place what the model does not excite."""
+
+SAME_BUILD = 1e-6
+"""Relative difference up to which a swept value is the one of the build."""
+
+
+@dataclass(frozen=True)
+class CaseModes:
+    """Natural modes of one case with the dips they own, lowest frequency first.
+
+    All arrays have the shape (M,); NaN where a mode owns no dip.
+    """
+
+    half_waves: tuple[int, ...]
+    natural_hz: FloatArray
+    q: FloatArray
+    dip_hz: FloatArray
+    return_loss_db: FloatArray
+    bandwidth_hz: FloatArray
+
+    def expected_dips(self) -> list[ModelledDip]:
+        """One entry per mode; those without a dip stand where one would be expected."""
+        owns = np.isfinite(self.dip_hz)
+        lift = np.full(len(self.natural_hz), USUAL_DIP_OVER_POLE)
+        if owns.any():
+            lift = np.interp(
+                np.log(self.natural_hz),
+                np.log(self.natural_hz[owns]),
+                self.dip_hz[owns] / self.natural_hz[owns],
+            )
+        place = np.where(owns, self.dip_hz, self.natural_hz * lift)
+        depth = 10 ** (-self.return_loss_db / 20)
+        return [ModelledDip(float(f), float(d)) for f, d in zip(place, depth, strict=True)]
+
+    def pair(
+        self,
+        measured: list[ModelledDip],
+        band_hz: tuple[float, float],
+        measured_band_hz: tuple[float, float],
+    ) -> Pairing:
+        """Pair measured dips with the modes; indices refer to the order of the modes."""
+        modelled = self.expected_dips()
+        # Two modes may own dips in the other order, when one of them is hardly excited.
+        order = sorted(range(len(modelled)), key=lambda i: modelled[i].frequency_hz)
+        found = pair([modelled[i] for i in order], measured, band_hz, measured_band_hz)
+        pairs = tuple(sorted((order[i], j) for i, j in found.pairs))
+        return Pairing(pairs, found.scale, found.cost, found.misfit)
+
+
+def as_cases(dataset: xr.Dataset) -> xr.Dataset:
+    """Return the dataset with a dimension `case`, also if it holds one case only."""
+    return dataset if "case" in dataset.dims else dataset.expand_dims("case")
+
+
+def modes_of_cases(dataset: xr.Dataset) -> list[CaseModes]:
+    """Read the modes of every case at once; unsolved cases have none."""
+    columns = {
+        name: np.asarray(dataset[name].values, dtype=float)
+        for name in (
+            "mode_frequency",
+            "mode_half_waves",
+            "mode_q",
+            "dip_frequency",
+            "dip_return_loss",
+            "dip_bandwidth",
+        )
+    }
+    return [
+        _modes({name: table[row] for name, table in columns.items()})
+        for row in range(dataset.sizes["case"])
+    ]
+
+
+def _modes(columns: dict[str, FloatArray]) -> CaseModes:
+    natural = columns["mode_frequency"]
+    order = np.argsort(natural)
+    order = order[np.isfinite(natural[order])]
+    kept = {name: column[order] for name, column in columns.items()}
+    return CaseModes(
+        half_waves=tuple(int(n) for n in kept["mode_half_waves"]),
+        natural_hz=kept["mode_frequency"],
+        q=kept["mode_q"],
+        dip_hz=kept["dip_frequency"],
+        return_loss_db=kept["dip_return_loss"],
+        bandwidth_hz=kept["dip_bandwidth"],
+    )
+
+
+def simulated_reflection(case: xr.Dataset, reference_ohm: float) -> tuple[FloatArray, ComplexArray]:
+    """Frequencies and reflection at the connector of one case."""
+    name = "impedance_at_connector" if "impedance_at_connector" in case else "impedance"
+    frequency = np.asarray(case["frequency"].values, dtype=np.float64)
+    return frequency, reflection(case[name].values, reference_ohm)
+
+
+def is_solved(dataset: xr.Dataset) -> np.ndarray[tuple[int, ...], np.dtype[np.bool_]]:
+    """Which cases hold a solution, doubtful ones included."""
+    return np.isin(dataset["status"].values, (int(Status.SOLVED), int(Status.DOUBTFUL)))
+
+
+def row_of_case(dataset: xr.Dataset, case: int) -> int:
+    """Place of a case along its dimension.
+
+    Raises
+    ------
+    StoreError
+        If there is no such case, or it was not solved.
+    """
+    labels = np.asarray(dataset["case"].values)
+    rows = np.flatnonzero(labels == case)
+    if not len(rows):
+        raise StoreError(
+            f"case {case} is not in these results: they hold the cases {int(labels.min())} to "
+            f"{int(labels.max())}"
+        )
+    row = int(rows[0])
+    if not is_solved(dataset)[row]:
+        status = Status(int(dataset["status"].values[row])).label
+        reason = str(dataset["reason"].values[row]) if "reason" in dataset else ""
+        raise StoreError(
+            f"case {case} has no solution to compare with: {status}"
+            + (f", {reason}" if reason else "")
+            + "; choose another case or run the study again"
+        )
+    return row
+
+
+def row_of_build(dataset: xr.Dataset, build: Mapping[str, float]) -> tuple[int, list[str]]:
+    """Place of the solved case that is the build, or comes nearest to it, and what to note.
+
+    Raises
+    ------
+    StoreError
+        If the case of just this build was not solved.
+    """
+    swept = swept_names(dataset)
+    notes = [
+        f"the build's {name} is not swept in this study and does not choose the case"
+        for name in build
+        if name not in swept
+    ]
+    wanted = {name: value for name, value in build.items() if name in swept}
+    off = np.zeros((dataset.sizes["case"], len(wanted)))
+    span = np.ones(len(wanted))
+    for place, (name, value) in enumerate(wanted.items()):
+        values = np.asarray(dataset[name].values, dtype=float)
+        off[:, place] = values - value
+        span[place] = float(np.ptp(values)) or max(abs(value), 1e-300)
+    limit = SAME_BUILD * np.abs(np.array(list(wanted.values())))
+    same = np.all(np.abs(off) <= limit, axis=1)
+    if same.any() and not (same & is_solved(dataset)).any():
+        row_of_case(dataset, int(dataset["case"].values[int(np.argmax(same))]))
+    distance = np.where(is_solved(dataset), ((off / span) ** 2).sum(axis=1), np.inf)
+    row = int(np.argmin(distance))
+    if not same[row]:
+        notes.append(
+            f"no case has the build's values; the nearest differs by {_gap(wanted, off[row])}"
+        )
+    return row, notes
+
+
+def _gap(wanted: Mapping[str, float], off: FloatArray) -> str:
+    return ", ".join(
+        f"{difference / value:+.2%} in {name}" if value else f"{difference:+.4g} in {name}"
+        for (name, value), difference in zip(wanted.items(), off, strict=True)
+        if abs(difference) > SAME_BUILD * abs(value)
+    )
