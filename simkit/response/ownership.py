@@ -12,7 +12,6 @@ from dataclasses import dataclass, field
 from typing import TypeVar
 
 import numpy as np
-from scipy.constants import epsilon_0
 
 from simkit.geometry.wires import FloatArray
 from simkit.response.features import (
@@ -49,26 +48,6 @@ class OwnedFeatures:
     series: Resonance | None = None
     parallel: Resonance | None = None
     q: float = field(default=np.nan)
-
-
-def gap_susceptance_s(
-    frequency_hz: FloatArray, width_m: float, model_gap_m: float, study_gap_m: float
-) -> FloatArray:
-    """Susceptance to add at the feed to go from one gap in a strip to another, siemens.
-
-    Parameters
-    ----------
-    frequency_hz : (F,) float array
-    width_m, model_gap_m, study_gap_m : float
-
-    Returns
-    -------
-    (F,) float array
-        ``omega eps0 (2 w/pi) ln(g_model/g_study)``: the charge on the two edges of a gap between
-        coplanar plates grows with the logarithm of its inverse width.
-    """
-    capacitance = epsilon_0 * 2 * width_m / np.pi * np.log(model_gap_m / study_gap_m)
-    return np.asarray(2 * np.pi * frequency_hz * capacitance)
 
 
 def owned_features(

@@ -14,7 +14,7 @@ from simkit.geometry import MeshPlan, WireGrid, build_wires
 from simkit.geometry.conductor import strip_resistance_ohm_per_m
 from simkit.geometry.wires import FloatArray
 from simkit.response.modes import NaturalMode, current_along_strips, find_modes
-from simkit.response.ownership import OwnedFeatures, gap_susceptance_s, owned_features
+from simkit.response.ownership import OwnedFeatures, owned_features
 from simkit.response.pattern import (
     Radiators,
     gain_grid_dbi,
@@ -22,6 +22,7 @@ from simkit.response.pattern import (
     radiated_power_w,
 )
 from simkit.response.rational import ComplexArray, Sweep, adaptive_sweep
+from simkit.response.terminals import feed_impedance_ohm
 from simkit.runner.result import CaseResult
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
 from simkit.study.model import Antenna
@@ -101,11 +102,21 @@ def feed_impedance(
     grid: WireGrid, currents: ComplexArray, frequency_hz: FloatArray
 ) -> ComplexArray:
     """Impedance at the study's feed gap from (F, S) currents for 1 V at the feed, ohm."""
-    admittance = sum((volts * currents[:, k] for k, volts in grid.source), np.zeros(1))
-    susceptance = gap_susceptance_s(
-        frequency_hz, grid.feed_width_m, grid.model_gap_m, grid.study_gap_m
+    return feed_impedance_ohm(
+        currents @ source_weight(grid),
+        frequency_hz,
+        grid.feed_width_m,
+        grid.model_gap_m,
+        grid.study_gap_m,
     )
-    return np.asarray(1 / (admittance + 1j * susceptance), dtype=np.complex128)
+
+
+def source_weight(grid: WireGrid) -> FloatArray:
+    """(S,) part of the feed voltage across each segment; its mean of the currents is the feed's."""
+    weight = np.zeros(grid.segments)
+    for segment, volts in grid.source:
+        weight[segment] += volts
+    return weight
 
 
 def _evaluate(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> tuple[dict[str, Any], list[str]]:
@@ -116,7 +127,7 @@ def _evaluate(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> tuple[dict[str,
     modes = find_modes(sweep, grid, band.start_hz, band.stop_hz)[:MODES]
     features = owned_features(modes, frequency_hz, impedance, antenna.reference_ohm)
     arrays: dict[str, Any] = {"impedance": impedance}
-    arrays |= _grid_arrays(grid) | _sample_arrays(grid, sweep)
+    arrays |= _grid_arrays(grid) | _sample_arrays(antenna, grid, sweep)
     arrays |= _mode_arrays(antenna, grid, modes) | _feature_arrays(features)
     radiation = [
         _radiation(antenna, grid, sweep, mode, owned)
@@ -156,6 +167,7 @@ def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
         "feed_width": grid.feed_width_m,
         "wire_radius": grid.radius_m,
         "source_segment": grid.source[0][0],
+        "source_weight": source_weight(grid),
     }
     for axis, name in enumerate("xyz"):
         arrays[name] = radiators.middle_m[:, axis]
@@ -163,17 +175,22 @@ def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
     return arrays
 
 
-def _sample_arrays(grid: WireGrid, sweep: Sweep) -> dict[str, Any]:
+def _sample_arrays(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> dict[str, Any]:
     count = len(sweep.model.frequency_hz)
     frequency = np.full(SAMPLES, np.nan)
     frequency[:count] = sweep.model.frequency_hz
     weight = np.full(SAMPLES, complex(np.nan, np.nan))
     weight[:count] = sweep.model.weight
+    resistance = np.full(SAMPLES, np.nan)
+    resistance[:count] = [
+        _resistance_ohm_per_m(antenna, grid, float(f)) for f in sweep.model.frequency_hz
+    ]
     currents = np.full((2, SAMPLES, grid.segments), complex(np.nan, np.nan))
     currents[:, :count] = np.moveaxis(sweep.model.values.reshape(count, 2, grid.segments), 1, 0)
     return {
         "sample_frequency": frequency,
         "weight": weight,
+        "series_resistance": resistance,
         "current": currents[0],
         "probe_current": currents[1],
     }

@@ -87,7 +87,7 @@ VARIABLES: dict[str, Variable] = {
         ("case", "mode", "strip", "position"),
         "c16",
         "1",
-        "mode current along each strip, positive from its start to its end, largest value 1 and real",
+        "mode current along each strip, positive from start to end, largest value 1 and real",
     ),
     # Features a measurement shows, owned by the mode that causes them; NaN where there is none.
     "conductance_peak_frequency": _per_mode("Hz", "maximum of the feed conductance"),
@@ -120,6 +120,9 @@ VARIABLES: dict[str, Variable] = {
     "weight": Variable(
         ("case", "sample"), "c16", "1", "barycentric weight, 0 for a sample that only verified"
     ),
+    "series_resistance": Variable(
+        ("case", "sample"), "f8", "ohm/m", "resistance of the strip per metre of its length"
+    ),
     "current": Variable(
         ("case", "sample", "segment"), "c16", "A", "segment currents for 1 V at the feed"
     ),
@@ -135,12 +138,17 @@ VARIABLES: dict[str, Variable] = {
     "direction_z": _per_segment("f8", "1", "unit vector along positive current"),
     "length": _per_segment("f8", "m", "segment length"),
     "strip_index": _per_segment("i2", "", "strip the segment belongs to, -1 for the feed gap"),
-    "strip_position": _per_segment("f8", "1", "place along the strip, 0..1; NaN off the centre line"),
+    "strip_position": _per_segment(
+        "f8", "1", "place along the strip, 0..1; NaN off the centre line"
+    ),
     "model_gap": Variable(("case",), "f8", "m", "gap the engine's source acts like"),
     "study_gap": Variable(("case",), "f8", "m", "feed gap of the study, to which impedance refers"),
     "feed_width": Variable(("case",), "f8", "m", "strip width at the feed"),
     "wire_radius": Variable(("case",), "f8", "m", "radius of every wire of the model"),
-    "source_segment": Variable(("case",), "i4", "1", "segment with the feed, 0-based"),
+    "source_segment": Variable(("case",), "i4", "1", "first segment with the feed, 0-based"),
+    "source_weight": _per_segment(
+        "f8", "1", "part of the feed voltage across the segment, 0 off the feed"
+    ),
 }
 """Every variable except one coordinate per swept value, which takes the value's own name.
 

@@ -1,0 +1,240 @@
+"""Anything at any frequency of the band, from what the store keeps of one case.
+
+A case is one entry of an opened store, ``dataset.isel(case=k)``. Nothing is solved here: currents
+come from the case's rational model, the rest from the currents.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from simkit.errors import StoreError
+from simkit.geometry.wires import FloatArray
+from simkit.response.pattern import Radiators, far_field, intensity_w_per_sr, radiated_power_w
+from simkit.response.rational import ComplexArray, RationalModel
+from simkit.response.terminals import feed_impedance_ohm
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+BAND_SLACK = 1e-9
+"""A frequency may leave the band by this part of it, for the rounding of unit conversions."""
+
+
+def model_of(case: xr.Dataset) -> RationalModel:
+    """The rational model of the segment currents for 1 V at the feed.
+
+    Parameters
+    ----------
+    case : xarray.Dataset
+        One case of an opened store.
+
+    Returns
+    -------
+    RationalModel
+        Its values are (M, S) currents in ampere.
+
+    Raises
+    ------
+    StoreError
+        The case has no solution.
+    ValueError
+        The dataset holds more than one case.
+    """
+    samples = np.asarray(_values(case, "sample_frequency"), dtype=float)
+    taken = np.isfinite(samples)
+    if not taken.any():
+        reason = str(case["reason"].values) or "it is not solved"
+        raise StoreError(f"{_name(case)} holds no currents: {reason}")
+    used = _segments(case)
+    current = np.asarray(_values(case, "current"), dtype=np.complex128)[taken][:, used]
+    weight = np.asarray(_values(case, "weight"), dtype=np.complex128)[taken]
+    return RationalModel(samples[taken], weight, current)
+
+
+def radiators_of(case: xr.Dataset) -> Radiators:
+    """Segments of a case as short straight currents."""
+    used = _segments(case)
+    middle = np.stack([_values(case, axis)[used] for axis in "xyz"], axis=1)
+    along = np.stack([_values(case, f"direction_{axis}")[used] for axis in "xyz"], axis=1)
+    return Radiators(middle, along, _values(case, "length")[used])
+
+
+def current_at(case: xr.Dataset, frequency_hz: ArrayLike) -> ComplexArray:
+    """Segment currents for 1 V at the feed.
+
+    Parameters
+    ----------
+    case : xarray.Dataset
+        One case of an opened store.
+    frequency_hz : (F,) array_like
+        Within the band of the study.
+
+    Returns
+    -------
+    (F, S) complex array
+        Ampere, positive along ``direction_x``, ``_y``, ``_z``; segments in the store's order.
+
+    Raises
+    ------
+    StoreError
+        The case has no solution.
+    ValueError
+        A frequency lies outside the band.
+    """
+    model = model_of(case)
+    return model(_in_band(model, frequency_hz))
+
+
+def impedance_at(case: xr.Dataset, frequency_hz: ArrayLike) -> ComplexArray:
+    """Impedance at the feed gap of the study.
+
+    Parameters
+    ----------
+    case : xarray.Dataset
+    frequency_hz : (F,) array_like
+
+    Returns
+    -------
+    (F,) complex array
+        Ohm.
+
+    Raises
+    ------
+    StoreError, ValueError
+        As `current_at`.
+    """
+    frequency = np.atleast_1d(np.asarray(frequency_hz, dtype=float))
+    weight = _values(case, "source_weight")[_segments(case)]
+    return feed_impedance_ohm(
+        current_at(case, frequency) @ weight,
+        frequency,
+        float(case["feed_width"]),
+        float(case["model_gap"]),
+        float(case["study_gap"]),
+    )
+
+
+def far_field_at(
+    case: xr.Dataset, frequency_hz: float, theta_deg: ArrayLike, phi_deg: ArrayLike
+) -> tuple[ComplexArray, ComplexArray]:
+    """E_theta and E_phi times distance for 1 V (peak) at the feed.
+
+    Parameters
+    ----------
+    case : xarray.Dataset
+    frequency_hz : float
+    theta_deg, phi_deg : array_like
+        Directions, theta from +z and phi from +x; broadcast against each other.
+
+    Returns
+    -------
+    e_theta, e_phi : complex arrays
+        Volts (peak), the factor exp(-jkr) left out, in the shape of the directions.
+
+    Raises
+    ------
+    StoreError, ValueError
+        As `current_at`.
+    """
+    return _field(radiators_of(case), _drive(case, frequency_hz), frequency_hz, theta_deg, phi_deg)
+
+
+def gain_at(
+    case: xr.Dataset, frequency_hz: float, theta_deg: ArrayLike, phi_deg: ArrayLike
+) -> FloatArray:
+    """Gain of the antenna driven at its feed, IEEE Std 145: losses of the metal counted.
+
+    Parameters
+    ----------
+    case : xarray.Dataset
+    frequency_hz : float
+    theta_deg, phi_deg : array_like
+        As in `far_field_at`.
+
+    Returns
+    -------
+    float array
+        dBi, in the shape of the directions; nulls are cut at -100 dBi.
+
+    Raises
+    ------
+    StoreError, ValueError
+        As `current_at`.
+
+    Notes
+    -----
+    The power it refers to is that radiated and lost by the currents, as for the stored `gain`;
+    `power_balance` says how far that is from the power at the feed.
+    """
+    current, radiators = _drive(case, frequency_hz), radiators_of(case)
+    field = _field(radiators, current, frequency_hz, theta_deg, phi_deg)
+    lost_w = (
+        0.5
+        * _resistance_ohm_per_m(case, frequency_hz)
+        * np.sum(abs(current) ** 2 * radiators.length_m)
+    )
+    power_w = radiated_power_w(radiators, current, frequency_hz) + lost_w
+    gain = 4 * np.pi * intensity_w_per_sr(*field) / power_w
+    return np.asarray(10 * np.log10(np.maximum(gain, 1e-10)))
+
+
+def _values(case: xr.Dataset, name: str) -> NDArray[Any]:
+    if "case" in case.dims:
+        raise ValueError(
+            f"one case is wanted, got {case.sizes['case']}: select one, as in dataset.isel(case=0)"
+        )
+    return np.asarray(case[name].values)
+
+
+def _name(case: xr.Dataset) -> str:
+    return f"case {int(case['case'])}" if "case" in case.coords else "this case"
+
+
+def _segments(case: xr.Dataset) -> NDArray[np.bool_]:
+    """Mask of the segments this case has; the rest is padding."""
+    return np.asarray(np.isfinite(_values(case, "length")))
+
+
+def _in_band(model: RationalModel, frequency_hz: ArrayLike) -> FloatArray:
+    frequency = np.atleast_1d(np.asarray(frequency_hz, dtype=float))
+    low, high = float(model.frequency_hz[0]), float(model.frequency_hz[-1])
+    slack = BAND_SLACK * high
+    # Written so that NaN is refused too.
+    inside = (frequency >= low - slack) & (frequency <= high + slack)
+    if not inside.all():
+        raise ValueError(
+            f"{frequency[~inside][0] / 1e6:.6g} MHz is outside the solved band, {low / 1e6:.6g} "
+            f"to {high / 1e6:.6g} MHz: widen [frequency] in the study and run it again"
+        )
+    return frequency
+
+
+def _drive(case: xr.Dataset, frequency_hz: float) -> ComplexArray:
+    current: ComplexArray = current_at(case, frequency_hz)[0]
+    return current
+
+
+def _field(
+    radiators: Radiators,
+    current: ComplexArray,
+    frequency_hz: float,
+    theta_deg: ArrayLike,
+    phi_deg: ArrayLike,
+) -> tuple[ComplexArray, ComplexArray]:
+    theta, phi = np.broadcast_arrays(np.deg2rad(theta_deg), np.deg2rad(phi_deg))
+    e_theta, e_phi = far_field(radiators, current, frequency_hz, theta.ravel(), phi.ravel())
+    return e_theta.reshape(theta.shape), e_phi.reshape(theta.shape)
+
+
+def _resistance_ohm_per_m(case: xr.Dataset, frequency_hz: float) -> float:
+    """Interpolated on logarithmic axes, where the skin effect is all but straight."""
+    samples, stored = _values(case, "sample_frequency"), _values(case, "series_resistance")
+    taken = np.isfinite(samples)
+    if not np.any(stored[taken]):
+        return 0.0
+    known = np.log(stored[taken])
+    return float(np.exp(np.interp(np.log(frequency_hz), np.log(samples[taken]), known)))
