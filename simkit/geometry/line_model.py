@@ -141,9 +141,10 @@ class _Maker:
             segments, at = self.stretch(line.points, start, stop, count)
             made += segments
             middles += at
-            following = bounds[index + 1][0] if index + 1 < len(bounds) else stop
-            if stretches[index].fed and not centred and following > stop + 1e-12:
-                segments, at = self.stretch(line.points, stop, following, 1)
+            # Only between the two fed runs: behind the second one a corner figure may follow.
+            pair = stretches[index : index + 2]
+            if not centred and len(pair) == 2 and pair[0].fed and pair[1].fed:
+                segments, at = self.stretch(line.points, stop, bounds[index + 1][0], 1)
                 made += segments
                 middles += at
             for vertex in figures:
