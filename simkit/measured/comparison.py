@@ -14,11 +14,12 @@ from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.pairing import ModelledDip, Pairing
 from simkit.measured.selection import (
     CaseModes,
+    IntArray,
     as_cases,
     is_solved,
     modes_of_cases,
-    row_of_build,
     row_of_case,
+    rows_of_build,
     simulated_reflection,
 )
 from simkit.measured.wording import comparison_text
@@ -177,14 +178,9 @@ def compare(
     heard = [ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20)) for dip in dips]
     every = modes_of_cases(dataset)
     notes = [*measurement.notes, *dip_notes]
-    if case is not None:
-        row = row_of_case(dataset, case)
-    elif build:
-        row, build_notes = row_of_build(dataset, build)
-        notes += build_notes
-    else:
-        row, fit_notes = _best_row(dataset, every, heard, bands)
-        notes += fit_notes
+    rows, build_notes = _candidates(dataset, case, build)
+    row, fit_notes = _best_row(rows, every, heard, bands)
+    notes += [*build_notes, *fit_notes]
     pairing = every[row].pair(heard, *bands)
     notes += _unexcited_notes(every[row], pairing)
     return _comparison(dataset, row, measurement, every[row], dips, pairing, notes)
@@ -205,18 +201,29 @@ def _bands(
     return band, swept
 
 
+def _candidates(
+    dataset: xr.Dataset, case: int | None, build: Mapping[str, float] | None
+) -> tuple[IntArray, list[str]]:
+    """Places of the cases that may be meant."""
+    if case is not None:
+        return np.array([row_of_case(dataset, case)]), []
+    if build:
+        return rows_of_build(dataset, build)
+    return np.flatnonzero(is_solved(dataset)), []
+
+
 def _best_row(
-    dataset: xr.Dataset,
+    rows: IntArray,
     every: list[CaseModes],
     heard: list[ModelledDip],
     bands: tuple[tuple[float, float], tuple[float, float]],
 ) -> tuple[int, list[str]]:
-    solved = np.flatnonzero(is_solved(dataset))
-    if len(solved) == 1:
-        return int(solved[0]), []
-    misfit = [every[row].pair(heard, *bands).misfit for row in solved]
-    row = int(solved[int(np.argmin(misfit))])
-    return row, [f"of {len(solved)} solved cases this one's dips fit the measured ones best"]
+    """Place of the case whose dips fit as they stand, and how it was chosen."""
+    if len(rows) == 1:
+        return int(rows[0]), []
+    misfit = [every[row].pair(heard, *bands).misfit for row in rows]
+    row = int(rows[int(np.argmin(misfit))])
+    return row, [f"of {len(rows)} cases in question this one's dips fit the measured ones best"]
 
 
 def _unexcited_notes(modes: CaseModes, pairing: Pairing) -> list[str]:

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from simkit.errors import StoreError
 from simkit.measured.measurement import ComplexArray, FloatArray
@@ -21,6 +22,8 @@ if TYPE_CHECKING:
 USUAL_DIP_OVER_POLE = 1.02
 """Where to expect the dip of a mode when no mode of the case shows one: between 1 and 7 % above
 the natural frequency for straight strips; only used to place what the model does not excite."""
+
+IntArray = NDArray[np.intp]
 
 SAME_BUILD = 1e-6
 """Relative difference up to which a swept value is the one of the build."""
@@ -147,8 +150,10 @@ def row_of_case(dataset: xr.Dataset, case: int) -> int:
     return row
 
 
-def row_of_build(dataset: xr.Dataset, build: Mapping[str, float]) -> tuple[int, list[str]]:
-    """Place of the solved case that is the build, or comes nearest to it, and what to note.
+def rows_of_build(dataset: xr.Dataset, build: Mapping[str, float]) -> tuple[IntArray, list[str]]:
+    """Places of the solved cases that are the build, or come nearest to it, and what to note.
+
+    There are several where the build does not name every swept value.
 
     Raises
     ------
@@ -173,12 +178,12 @@ def row_of_build(dataset: xr.Dataset, build: Mapping[str, float]) -> tuple[int, 
     if same.any() and not (same & is_solved(dataset)).any():
         row_of_case(dataset, int(dataset["case"].values[int(np.argmax(same))]))
     distance = np.where(is_solved(dataset), ((off / span) ** 2).sum(axis=1), np.inf)
-    row = int(np.argmin(distance))
-    if not same[row]:
-        notes.append(
-            f"no case has the build's values; the nearest differs by {_gap(wanted, off[row])}"
-        )
-    return row, notes
+    rows = np.flatnonzero(distance <= distance.min() * (1 + SAME_BUILD) + SAME_BUILD**2)
+    first = int(rows[0])
+    if not same[first]:
+        gap = _gap(wanted, off[first])
+        notes.append(f"no case has the build's values; the nearest differs by {gap}")
+    return rows, notes
 
 
 def _gap(wanted: Mapping[str, float], off: FloatArray) -> str:
