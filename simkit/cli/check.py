@@ -3,22 +3,31 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import TYPE_CHECKING, cast
 
 import click
 
-from simkit.cli.options import study_argument
+from simkit.cli.options import results_option, study_argument
+from simkit.cli.output import labelled
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
+    from simkit.geometry import WireGrid
+    from simkit.study import Study
 
 
 @click.command()
 @study_argument
+@results_option
 @click.option(
     "-o",
     "--output",
     type=click.Path(dir_okay=False),
     metavar="FILE",
-    help="Where to draw the geometry; NAME_geometry.png in this folder if left out.",
+    help="Where to draw the geometry; geometry.png in results/NAME/plots if left out.",
 )
-def command(study: str, output: str | None) -> None:
+def command(study: str, results: str | None, output: str | None) -> None:
     """Check STUDY, say what was understood, estimate time and disk, draw the geometry.
 
     Nothing is solved but one frequency sweep of the nominal antenna, to time it. The exit status
@@ -30,7 +39,6 @@ def command(study: str, output: str | None) -> None:
     """
     from simkit.cli import summary
     from simkit.geometry import build_wires
-    from simkit.plot import plot_geometry
     from simkit.study import load_study
 
     loaded = load_study(study)
@@ -41,10 +49,27 @@ def command(study: str, output: str | None) -> None:
     nominal = loaded.nominal()
     wires = build_wires(nominal, plan)
     click.echo(summary.wires_text(wires, nominal))
-    target = output or f"{Path(study).stem}_geometry.png"
-    plot_geometry(nominal, wires, title=loaded.title).figure.savefig(target)
-    click.echo(summary.labelled("Drawing", target))
+    click.echo(labelled("Drawing", str(draw(loaded, wires, results, output))))
     click.echo(summary.cost_text(loaded, wires, summary.timed_solve(nominal, plan)))
     if problems:
         raise click.exceptions.Exit(1)
     click.echo(f"\nNext: simkit run {study}")
+
+
+def draw(study: Study, wires: WireGrid, results: str | None, output: str | None) -> Path:
+    """Draw the nominal antenna where the run will put its plots, or into a file of its own.
+
+    Raises
+    ------
+    StoreError
+        If the results folder belongs to another study.
+    """
+    from simkit.plot import plot_geometry
+    from simkit.plot.save import write
+    from simkit.runner.folder import ResultsFolder
+
+    folder = Path(results or "results") / study.path.stem
+    if output is None:
+        ResultsFolder(folder).check_title(study.title, fresh=False)
+    axes = plot_geometry(study.nominal(), wires, title=study.title)
+    return write(cast("Figure", axes.figure), output or folder / "plots" / "geometry.png")

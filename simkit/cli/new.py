@@ -2,27 +2,16 @@
 
 from __future__ import annotations
 
-import json
-import re
-from importlib import resources
-from pathlib import Path
-
 import click
 
 CAUTIONS = """\
 Before you build and measure:
-- Transmitting needs a licence or a licence-free band, and field-strength limits apply:
-  ask the authority of your country.
+- Transmitting needs a licence or a licence-free band, and limits on field strength apply: local
+  rules and qualified people decide. As an estimate, the ICNIRP 2020 reference level for the public
+  is reached 0.14 m from 1 W EIRP at 868 MHz, in the far field.
 - Never transmit into a network analyser.
 - Keep test antennas well clear of power lines.
-- Sheet edges cut and solder fumes harm; solder before you glue the strip to plastic."""
-
-
-def starter_text(name: str) -> str:
-    """Return the starter study for a file called `name`.toml."""
-    title = re.sub(r"[_\s]+", " ", name).strip()
-    template = resources.files("simkit.cli").joinpath("starter.toml").read_text("utf-8")
-    return template.format(title=json.dumps(title), file=f"{name}.toml")
+- Edges of sheet metal cut and solder fumes harm; solder before gluing to plastic."""
 
 
 @click.command()
@@ -36,14 +25,8 @@ def command(name: str) -> None:
     Example:
       simkit new creek_gauge
     """
-    path = Path(name if name.endswith(".toml") else f"{name}.toml")
-    if not path.parent.is_dir():
-        raise click.UsageError(f"the folder {path.parent} does not exist: create it first.")
-    try:
-        with path.open("x", encoding="utf-8") as file:
-            file.write(starter_text(path.stem))
-    except FileExistsError as error:
-        raise click.UsageError(f"{path} exists and is left alone: choose another name.") from error
-    click.echo(f"Written: {path}")
-    click.echo(f"Next: edit it, then  simkit check {path}  and  simkit run {path}\n")
-    click.echo(CAUTIONS)
+    from simkit.study.starter import write_starter
+
+    path = write_starter(name)
+    click.echo(f"Written: {path}\n\n{CAUTIONS}\n")
+    click.echo(f"Next: edit {path}, then  simkit check {path}  and  simkit run {path}")

@@ -9,6 +9,12 @@ RESULTS = click.Path(exists=True, file_okay=False)
 
 study_argument = click.argument("study", type=STUDY, metavar="STUDY")
 results_argument = click.argument("results", type=RESULTS, metavar="DIR")
+results_option = click.option(
+    "--results",
+    type=click.Path(file_okay=False),
+    metavar="DIR",
+    help="Folder that holds the results folders; results/ if left out.",
+)
 json_option = click.option("--json", "as_json", is_flag=True, help="Print JSON, SI units.")
 csv_option = click.option("--csv", "as_csv", is_flag=True, help="Print CSV, SI units.")
 case_option = click.option(

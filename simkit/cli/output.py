@@ -10,6 +10,7 @@ from collections.abc import Iterable, Mapping, Sequence
 
 import click
 
+_NAME_WIDTH = 14
 _PREFIXES = ((1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""))
 
 
@@ -71,6 +72,11 @@ def size_text(size_bytes: float) -> str:
         if size_bytes >= scale:
             return f"{size_bytes / scale:.3g} {unit}"
     return f"{size_bytes:.0f} B"
+
+
+def labelled(name: str, text: str) -> str:
+    """Return a name in the left column with text beside it; further lines stay in their column."""
+    return name.ljust(_NAME_WIDTH) + text.replace("\n", "\n" + " " * _NAME_WIDTH)
 
 
 def table(head: Sequence[str], rows: Iterable[Sequence[str]]) -> str:

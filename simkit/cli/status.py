@@ -1,26 +1,26 @@
-"""``simkit status``: how far a run has come."""
+"""``simkit status``: how far a run has come, and why some cases have no solution."""
 
 from __future__ import annotations
 
-from collections import Counter
 from typing import TYPE_CHECKING, Any
 
 import click
 
-from simkit.cli.options import json_option, results_argument
-from simkit.cli.output import duration_text, emit, json_text, table
+from simkit.cli.options import csv_option, json_option, one_format, results_argument
+from simkit.cli.output import csv_text, emit, json_text, table
 
 if TYPE_CHECKING:
     import xarray as xr
 
-_SHOWN_REASONS = 20
+_SHOWN = 20
 
 
 @click.command()
 @results_argument
 @json_option
-def command(results: str, as_json: bool) -> None:
-    """Count the cases in DIR by how they stand and say why some have no solution.
+@csv_option
+def command(results: str, as_json: bool, as_csv: bool) -> None:
+    """Count the cases in DIR by how they stand, and say why some have no solution.
 
     Works while a run is going on.
 
@@ -28,58 +28,51 @@ def command(results: str, as_json: bool) -> None:
     Example:
       simkit status results/creek_gauge
     """
+    form = one_format(as_json, as_csv)
+    from simkit.runner import status
+    from simkit.runner.overview import status_lines
     from simkit.store import open_results
 
+    state = status(results)
     dataset = open_results(results)
-    if as_json:
-        emit(json_text(status_data(dataset)))
+    remarks = remarked_cases(dataset)
+    if form == "csv":
+        emit(csv_text(remarks))
+    elif form == "json":
+        current = state.current
+        emit(
+            json_text(
+                {
+                    "title": current.title,
+                    "cases": current.cases,
+                    "counts": {code.label: count for code, count in current.counts.items()},
+                    "running": bool(state.running),
+                    "remarks": remarks,
+                }
+            )
+        )
     else:
-        emit(status_text(dataset, results))
+        emit("\n".join([*status_lines(state), *remarks_lines(remarks)]))
 
 
-def count_text(counts: dict[str, int]) -> str:
-    """Return counts per status in one line, as in "9 solved, 1 refused"."""
-    return ", ".join(f"{count} {label}" for label, count in counts.items() if count) or "no cases"
-
-
-def status_data(dataset: xr.Dataset) -> dict[str, Any]:
-    """Return title, counts per status, solves and time spent as plain data."""
+def remarked_cases(dataset: xr.Dataset) -> list[dict[str, Any]]:
+    """Return case, status and reason of every settled case that is not simply solved."""
     from simkit.store.schema import Status
 
-    codes = [Status(int(code)) for code in dataset["status"].values]
-    counts = Counter(codes)
-    done = dataset["status"].values != int(Status.WAITING)
-    return {
-        "title": str(dataset.attrs.get("title", "")),
-        "cases": len(codes),
-        "counts": {status.label: counts[status] for status in Status},
-        "solves": int(dataset["solves"].values[done].sum()),
-        "seconds": float(dataset["seconds"].values[done].sum()),
-        "unsolved": [
-            {"case": int(case), "status": code.label, "reason": str(reason)}
-            for case, code, reason in zip(
-                dataset["case"].values, codes, dataset["reason"].values, strict=True
-            )
-            if code not in (Status.WAITING, Status.SOLVED)
-        ],
-    }
-
-
-def status_text(dataset: xr.Dataset, results: str) -> str:
-    """Return the same for people."""
-    data = status_data(dataset)
-    counts, unsolved = data["counts"], data["unsolved"]
-    lines = [
-        f"{data['title']}: {data['cases']} cases: {count_text(counts)}",
-        f"{data['solves']} engine solves, {duration_text(data['seconds'])} of computing",
+    columns = (dataset["case"].values, dataset["status"].values, dataset["reason"].values)
+    return [
+        {"case": int(case), "status": Status(int(code)).label, "reason": str(reason)}
+        for case, code, reason in zip(*columns, strict=True)
+        if code not in (Status.WAITING, Status.SOLVED)
     ]
-    if unsolved:
-        shown = [[str(u["case"]), u["status"], u["reason"]] for u in unsolved[:_SHOWN_REASONS]]
-        lines += ["", table(["case", "status", "reason"], shown)]
-        if len(unsolved) > _SHOWN_REASONS:
-            lines.append(f"... and {len(unsolved) - _SHOWN_REASONS} more: --json lists all")
-    if counts.get("waiting"):
-        lines += ["", "Waiting cases: give the same  simkit run  command again to continue."]
-    else:
-        lines += ["", f"Next: simkit modes {results}"]
-    return "\n".join(lines)
+
+
+def remarks_lines(remarks: list[dict[str, Any]]) -> list[str]:
+    """Return the same as a table, the first twenty of them."""
+    if not remarks:
+        return []
+    rows = [[str(r["case"]), r["status"], r["reason"]] for r in remarks[:_SHOWN]]
+    lines = ["", table(["case", "status", "reason"], rows)]
+    if len(remarks) > _SHOWN:
+        lines.append(f"... and {len(remarks) - _SHOWN} more: simkit status DIR --csv lists all")
+    return lines

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 from simkit.cli.output import (
     duration_text,
     frequency_text,
+    labelled,
     length_text,
     quantity_text,
     size_text,
@@ -24,15 +25,11 @@ if TYPE_CHECKING:
     from simkit.runner.result import CaseResult
     from simkit.study import Study
 
-_NAME_WIDTH = 14
 _SHOWN_POINTS = 6
 _SHOWN_PROBLEMS = 10
 _TIMED_SOLVE_LIMIT_S = 600.0
-
-
-def labelled(name: str, text: str) -> str:
-    """Return a name in the left column with text beside it; further lines stay in their column."""
-    return name.ljust(_NAME_WIDTH) + text.replace("\n", "\n" + " " * _NAME_WIDTH)
+_START_S = 4.0
+"""Time the worker processes take to start, on two slow cores."""
 
 
 def study_text(study: Study) -> str:
@@ -181,7 +178,7 @@ def wires_text(wires: WireGrid, antenna: Antenna) -> str:
             f"(unknowns) of {min(lengths_mm):.3g} to {max(lengths_mm):.3g} mm",
         ),
         labelled(
-            "Expected error", f"{wires.relative_error * 100:.2g} % of mode frequencies (1 sigma)"
+            "Model error", f"{wires.relative_error * 100:.2g} % of mode frequencies (1 sigma)"
         ),
     ]
     lines += [labelled("Doubtful", doubt) for doubt in wires.doubts]
@@ -231,7 +228,7 @@ def cost_text(study: Study, wires: WireGrid, result: CaseResult) -> str:
         strips=len(antenna.strips),
         segments=wires.segments,
     )
-    total_s = result.seconds * math.ceil(study.case_count / workers)
+    total_s = _START_S + result.seconds * math.ceil(study.case_count / workers)
     one = f"{duration_text(result.seconds)}, {result.solves} engine solves: {result.status.label}"
     if result.reason:
         one += f", {result.reason}"

@@ -1,0 +1,110 @@
+"""``simkit run``: solve a study, draw it, compare it with what was measured."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import click
+
+from simkit.cli.options import results_option, study_argument
+from simkit.cli.output import labelled
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from simkit.runner import RunSummary
+    from simkit.study import Study
+
+
+@click.command()
+@study_argument
+@results_option
+@click.option(
+    "--workers", type=click.IntRange(min=1), metavar="N", help="Processes; one a core if left out."
+)
+@click.option("--fresh", is_flag=True, help="Solve every case again.")
+def command(study: str, results: str | None, workers: int | None, fresh: bool) -> None:
+    """Solve every case of STUDY, draw the plots, compare with the measured files it names.
+
+    What is solved already is not solved again: after any interruption give the same command. The
+    results are in results/NAME, NAME being that of the study file. The exit status is 1 if a case
+    has no solution or the run was stopped.
+
+    \b
+    Example:
+      simkit run studies/creek_gauge.toml
+    """
+    from simkit.runner import run
+    from simkit.store import open_results
+    from simkit.study import load_study
+
+    loaded = load_study(study)
+    summary = run(loaded, results=results, workers=workers, fresh=fresh)
+    dataset = open_results(summary.results_dir)
+    show_remarks(dataset)
+    trouble = False
+    if summary.complete:
+        draw(dataset, loaded, summary.results_dir)
+        trouble = show_comparisons(dataset, loaded, summary.results_dir)
+    click.echo(end_text(summary, study))
+    if trouble or not summary.ok:
+        raise click.exceptions.Exit(1)
+
+
+def show_remarks(dataset: xr.Dataset) -> None:
+    """Print why some cases have no solution, or one to be doubted."""
+    from simkit.cli.status import remarked_cases, remarks_lines
+
+    for line in remarks_lines(remarked_cases(dataset)):
+        click.echo(line)
+
+
+def draw(dataset: xr.Dataset, study: Study, results: Path) -> None:
+    """Write all pictures and say what each shows."""
+    from simkit.plot import save_all
+
+    click.echo("\nPlots")
+    for path, about in save_all(dataset, results / "plots", study=study):
+        click.echo(f"  {path}: {about}")
+
+
+def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
+    """Compare with every measured file the study names; return whether one could not be used."""
+    from simkit.cli.compare import overlay_path, save_overlay
+    from simkit.cli.folder import nominal_of
+    from simkit.errors import SimkitError
+    from simkit.measured import compare, read_touchstone
+
+    trouble = False
+    for file in study.measured:
+        if not file.path.exists():
+            click.echo(f"\n{file.path} is not there yet and is left out.", err=True)
+            continue
+        try:
+            build = nominal_of(study) | file.build
+            comparison = compare(dataset, read_touchstone(file.path), build=build)
+        except SimkitError as error:
+            click.echo(f"\nsimkit: {error}", err=True)
+            trouble = True
+            continue
+        click.echo(f"\n{comparison.as_text()}")
+        click.echo(f"  {save_overlay(comparison, overlay_path(results, comparison))}: both curves")
+    return trouble
+
+
+def end_text(summary: RunSummary, study: str) -> str:
+    """Return counts per status, where everything is, and what to do next."""
+    counts = ", ".join(f"{n} {status.label}" for status, n in summary.counts.items() if n)
+    results = summary.results_dir
+    lines = ["", labelled("Cases", f"{counts} ({summary.reused} reused)")]
+    if not summary.complete:
+        return "\n".join([*lines, labelled("Next", f"simkit run {study} (continues)")])
+    return "\n".join(
+        [
+            *lines,
+            labelled("Results", str(results)),
+            labelled("Plots", str(results / "plots")),
+            labelled("Next", f"simkit modes {results}"),
+        ]
+    )
