@@ -218,5 +218,6 @@ def write(figure: Figure, path: str | os.PathLike[str]) -> Path:
     except OSError as error:
         raise StoreError(f"{target}: the picture cannot be written: {error.strerror}") from error
     finally:
-        aside.unlink(missing_ok=True)
+        with suppress(OSError):
+            aside.unlink(missing_ok=True)
     return target

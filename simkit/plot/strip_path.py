@@ -72,7 +72,8 @@ class StripPath:
         -------
         distance_m : (K,) array of float
         current : (K,) array of complex
-            NaN stands between the path and each strip apart. The largest value is made positive.
+            NaN stands between the path and each strip apart. The sign is chosen so that the first
+            half wave is positive, which holds still from case to case.
         """
         distances, currents = [], []
         for piece in self.pieces:
@@ -83,8 +84,10 @@ class StripPath:
             distances.append(piece.place_m(position)[order])
             currents.append(current[piece.strip][order] * (1.0 if piece.forward else -1.0))
         joined = np.concatenate(currents)
-        if np.isfinite(joined).any():
-            joined = joined * np.where(joined[np.nanargmax(np.abs(joined))].real < 0, -1.0, 1.0)
+        size = np.abs(joined)
+        clear = np.flatnonzero(size >= 0.5 * np.nanmax(size)) if np.isfinite(size).any() else []
+        if len(clear) and joined[clear[0]].real < 0:
+            joined = -joined
         return np.concatenate(distances), joined
 
 

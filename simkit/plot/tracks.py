@@ -34,6 +34,8 @@ if TYPE_CHECKING:
 FloatArray = NDArray[np.float64]
 
 DIP_DASHES = (0, (4, 2))
+LABEL_ROOM = 0.08
+"""Free width to the right of the lines for their names, over the width of the picture."""
 MOST_LISTED = 6
 """Values of faint lines named in the legend; a large sweep has too many."""
 
@@ -232,14 +234,16 @@ def _name_outer_lines(
             ends.append((float(frequency[last[-1]]), x, group.values))
     if len(ends) < 2:
         return
-    for (frequency_hz, x, text), lift in ((min(ends), -4), (max(ends), 4)):
+    left, right = ax.get_xlim()
+    ax.set_xlim(left, right + LABEL_ROOM * (right - left))
+    for (frequency_hz, x, text), align in ((min(ends), "top"), (max(ends), "bottom")):
         ax.annotate(
             text,
             (x * units[0].factor, frequency_hz * units[1].factor),
-            xytext=(0, lift),
+            xytext=(6, 0),
             textcoords="offset points",
-            ha="right",
-            va="bottom" if lift > 0 else "top",
+            ha="left",
+            va=align,
             fontsize=8,
             color=QUIET,
         )
