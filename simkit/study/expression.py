@@ -137,7 +137,7 @@ class _Typed(NamedTuple):
 def _look_up(name: str, names: Mapping[str, Dimension]) -> Dimension:
     if name in names:
         return names[name]
-    hint = nearest(name, [*names, *FUNCTIONS, "pi"])
+    hint = nearest(name, list(names)) or nearest(name, [*FUNCTIONS, "pi"])
     advice = f"do you mean `{hint}`?" if hint else "define it in [values]"
     raise ExpressionError(f"`{name}` is not a name of [values]; {advice}")
 

@@ -23,7 +23,7 @@ from simkit.study.blueprint import (
 from simkit.study.expression import ExpressionError
 from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 from simkit.study.tables import Quantity
-from simkit.study.units import FREQUENCY, as_text, usual_unit
+from simkit.study.units import FREQUENCY, PURE, as_text, usual_unit
 
 SAME_PLACE_M = 1e-9
 """Points nearer to each other than this are the same point."""
@@ -90,10 +90,9 @@ class _Resolver:
 
     def report(self, quantity: Quantity, what: str, number: float | None = None) -> None:
         written = quantity.written
-        if number is not None:
-            here = _shown(number, quantity)
-            if here != written.strip('"'):
-                written += f" (here {here})"
+        literal = len(quantity.expression.steps) == 1 and not quantity.expression.names
+        if number is not None and (quantity.key in self.values or not literal):
+            written += f" (here {_shown(number, quantity)})"
         self.problems.append(Problem(what, quantity.key, written, quantity.line))
 
     def number(
@@ -115,9 +114,10 @@ class _Resolver:
         if above is not None and not number > above:
             limit = f"above {_shown(above, quantity)}; a positive number is needed"
         elif number < lowest:
-            limit = f"at least {_shown(lowest, quantity)}"
+            limit = f"at least {_shown(lowest, quantity)}; raise it"
         elif number > highest:
-            limit = f"at most {_shown(highest, quantity)}; check its unit"
+            remedy = "lower it" if quantity.dimension == PURE else "check its unit"
+            limit = f"at most {_shown(highest, quantity)}; {remedy}"
         else:
             return number
         self.report(quantity, f"must be {limit}", number)

@@ -104,8 +104,8 @@ def starter_text(title: str = DEFAULT_TITLE, file: str = "STUDY.toml") -> str:
         title = DEFAULT_TITLE
     if not file.isprintable():
         file = "STUDY.toml"
-    titled = _TEXT.replace("@file@", file, 2)
-    return titled.replace("@title@", json.dumps(title.strip(), ensure_ascii=False), 1)
+    quoted = json.dumps(title.strip(), ensure_ascii=False)
+    return _TEXT.replace("@title@", quoted, 1).replace("@file@", file, 2)
 
 
 def write_starter(path: str | PathLike[str], title: str | None = None) -> Path:

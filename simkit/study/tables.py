@@ -136,13 +136,22 @@ class Notes:
 
 
 def _misfit(wanted: Dimension, found: Dimension, parsed: Expression) -> str:
-    message = f"{describe(wanted)} is needed, but this is {describe(found)}"
-    if found == PURE and not parsed.units:
-        example = parsed.text if len(parsed.steps) == 1 else "8"
-        return f'{message}; write the unit too, as in "{_plain(example)} {usual_unit(wanted)}"'
+    single = len(parsed.steps) == 1
+    subject = f"`{parsed.text.strip()}`" if single and parsed.names else "this"
+    message = f"{describe(wanted)} is needed, but {subject} is {describe(found)}"
+    unit = usual_unit(wanted)
+    if parsed.names:
+        return f"{message}; check the units of {_listed(sorted(parsed.names))} in [values]"
     if wanted == PURE:
         return f"{message}; write it without a unit"
-    return f'{message}; write it as in "8 {usual_unit(wanted)}"'
+    if found == PURE and not parsed.units:
+        example = _plain(parsed.text.strip()) if single else "8"
+        return f'{message}; write the unit too, as in "{example} {unit}"'
+    return f'{message}; write it as in "8 {unit}"'
+
+
+def _listed(names: list[str]) -> str:
+    return ", ".join(f"`{name}`" for name in names)
 
 
 def _plain(number: str) -> str:
@@ -160,7 +169,7 @@ def as_written(value: Any) -> str:
         text += ", ...]" if len(value) > 4 else "]"
     elif isinstance(value, dict):
         pairs = [f"{key} = {as_written(item)}" for key, item in list(value.items())[:4]]
-        text = "{ " + ", ".join(pairs) + " }"
+        text = "{ " + ", ".join(pairs) + " }" if pairs else "{ }"
     elif isinstance(value, int) and not isinstance(value, bool) and abs(value) > 10**30:
         text = "an integer of very many digits"
     else:
