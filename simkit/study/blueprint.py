@@ -48,7 +48,8 @@ class EndFeedPlan:
     from_end: StripEnd
     to_strip: str
     to_end: StripEnd
-    line: int | None
+    from_line: int | None
+    to_line: int | None
 
 
 @dataclass(frozen=True)

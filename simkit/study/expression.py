@@ -142,19 +142,26 @@ def _look_up(name: str, names: Mapping[str, Dimension]) -> Dimension:
     raise ExpressionError(f"`{name}` is not a name of [values]; {advice}")
 
 
+_REMEDY = "change it or what it depends on"
+
+
+def _too_large(action: str) -> str:
+    return f"the result of `{action}` is too large for a number; {_REMEDY}"
+
+
 def _apply(action: str, arguments: list[float]) -> float:
     function = _OPERATORS.get(action) or FUNCTIONS[action]
     try:
         result = function(*arguments)
     except ZeroDivisionError:
-        raise ExpressionError("this divides by zero") from None
+        raise ExpressionError(f"this divides by zero; {_REMEDY}") from None
     except OverflowError:
-        raise ExpressionError(f"the result of `{action}` is too large for a number") from None
+        raise ExpressionError(_too_large(action)) from None
     except ValueError:
         shown = ", ".join(f"{argument:.6g}" for argument in arguments)
-        raise ExpressionError(f"`{action}` has no real result for {shown}") from None
+        raise ExpressionError(f"`{action}` has no real result for {shown}; {_REMEDY}") from None
     if not math.isfinite(result):
-        raise ExpressionError(f"the result of `{action}` is too large for a number")
+        raise ExpressionError(_too_large(action))
     return result
 
 

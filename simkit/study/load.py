@@ -145,8 +145,7 @@ class Study:
             try:
                 numbers[value_name(quantity)] = quantity.expression.evaluate(numbers)
             except ExpressionError as error:
-                what = f"{error}; change it or what it depends on"
-                return None, (Problem(what, quantity.key, quantity.written, quantity.line),)
+                return None, (Problem(str(error), quantity.key, quantity.written, quantity.line),)
         return resolve(self.blueprint, numbers)
 
 

@@ -58,5 +58,5 @@ def _read_one(
         try:
             build[key] = quantity.expression.evaluate(numbers)
         except ExpressionError as error:
-            notes.report(path, full, f"{error}; change it or what it depends on", raw)
+            notes.report(path, full, str(error), raw)
     return MeasuredFile(folder / name, build) if name is not None else None

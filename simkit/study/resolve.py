@@ -109,7 +109,7 @@ class _Resolver:
         try:
             number = quantity.evaluate(self.values)
         except ExpressionError as error:
-            self.report(quantity, f"{error}; change it or what it depends on")
+            self.report(quantity, str(error))
             return None
         if above is not None and not number > above:
             limit = f"above {_shown(above, quantity)}; a positive number is needed"
@@ -216,21 +216,24 @@ class _Resolver:
             return None
         if isinstance(plan, CutFeedPlan):
             return self.cut(plan, strips.get(plan.strip))
-        ends = (plan.from_strip, plan.from_end), (plan.to_strip, plan.to_end)
+        ends = (
+            ("from", plan.from_strip, plan.from_end, plan.from_line),
+            ("to", plan.to_strip, plan.to_end, plan.to_line),
+        )
         points = []
-        for key, (name, end) in zip(("from", "to"), ends, strict=True):
+        for key, name, end, line in ends:
             strip = strips.get(name)
             if strip is None:
                 return None
             if strip.path_m[0] == strip.path_m[-1]:
                 what = f"`{name}` is a closed loop and has no ends; feed it by strip and at"
-                self.problems.append(Problem(what, f"feed.{key}", f'"{name}.{end}"', plan.line))
+                self.problems.append(Problem(what, f"feed.{key}", f'"{name}.{end}"', line))
                 return None
             points.append(strip.path_m[0 if end == "start" else -1])
         if math.dist(*points) < SAME_PLACE_M:
             what = "the two ends touch, so there is no gap to feed; move them apart"
             value = f'"{plan.to_strip}.{plan.to_end}"'
-            self.problems.append(Problem(what, "feed.to", value, plan.line))
+            self.problems.append(Problem(what, "feed.to", value, plan.to_line))
             return None
         return EndFeed(plan.from_strip, plan.from_end, plan.to_strip, plan.to_end)
 

@@ -201,7 +201,7 @@ def _read_metal(table: Table | None) -> MetalPlan:
     if not real:
         table.notes.fixed["metal.conductivity"] = "this metal is a perfect conductor"
     if material is None:
-        name = "conductivity given" if conductivity else "perfect conductor"
+        name = "given conductivity" if conductivity else "perfect conductor"
         return MetalPlan(name, None, conductivity, thickness)
     table.notes.fixed["metal.conductivity"] = (
         "`material` fixes it; give metal.conductivity instead of the material"
@@ -241,8 +241,8 @@ def _read_feed(table: Table | None, strips: set[str]) -> EndFeedPlan | CutFeedPl
     if start == stop:
         table.report("to", "a feed needs two different ends")
         return None
-    line = table.notes.line((*table.path, "from"))
-    return EndFeedPlan(*start, *stop, line)
+    lines = [table.notes.line((*table.path, key)) for key in ("from", "to")]
+    return EndFeedPlan(*start, *stop, *lines)
 
 
 def _read_cut(table: Table, strips: set[str]) -> CutFeedPlan | None:

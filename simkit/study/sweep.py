@@ -281,7 +281,7 @@ class _SweepReader:
         try:
             return quantity.expression.evaluate(self.numbers)
         except ExpressionError as error:
-            self.notes.report(path, key, f"{error}; change it or what it depends on", raw)
+            self.notes.report(path, key, str(error), raw)
             return None
 
 

@@ -72,12 +72,12 @@ def read_values(table: Table | None, notes: Notes) -> tuple[Values, dict[str, fl
     quantities: list[Quantity] = []
     numbers: dict[str, float] = {}
     for name in _ordered(table, uses):
+        if name in notes.broken:
+            continue
         quantity = notes.expression(raw[name], None, (*table.path, name), table.key(name))
         number = None if quantity is None else _number(table, name, quantity, numbers)
         if quantity is None or number is None:
             notes.broken.add(name)
-            continue
-        if name in notes.broken:
             continue
         notes.names[name] = quantity.dimension
         numbers[name] = number
@@ -130,7 +130,7 @@ def _number(
     try:
         number = quantity.expression.evaluate(numbers)
     except ExpressionError as error:
-        table.report(name, f"{error}; change it or what it depends on")
+        table.report(name, str(error))
         return None
     if abs(number) > WIDEST:
         table.report(
