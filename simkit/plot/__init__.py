@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from simkit.plot.geometry import plot_geometry
     from simkit.plot.impedance import plot_impedance
     from simkit.plot.kinds import KINDS
+    from simkit.plot.overlay import plot_overlay
     from simkit.plot.pattern import plot_pattern, plot_pattern_cuts
     from simkit.plot.reflection import plot_reflection
     from simkit.plot.save import save_all, save_plot
@@ -26,6 +27,7 @@ __all__ = [
     "plot_current",
     "plot_geometry",
     "plot_impedance",
+    "plot_overlay",
     "plot_pattern",
     "plot_pattern_cuts",
     "plot_reflection",
@@ -41,6 +43,7 @@ _HOME = {
     "plot_current": "current",
     "plot_geometry": "geometry",
     "plot_impedance": "impedance",
+    "plot_overlay": "overlay",
     "plot_pattern": "pattern",
     "plot_pattern_cuts": "pattern",
     "plot_reflection": "reflection",

@@ -18,6 +18,8 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    plain,
+    put_title,
     say_empty,
     tidy,
 )
@@ -67,7 +69,7 @@ def plot_current(
     """
     chosen = one_case(dataset, case)
     ax = new_axes(ax, (9.0, 5.0))
-    ax.set_title(title_of(chosen, "mode currents"), fontsize="medium", loc="left")
+    put_title(ax, title_of(chosen, "mode currents"))
     tidy(ax)
     ax.set_ylabel("mode current, real part (largest = 1)")
     ax.set_xlabel(MILLIMETRE.label("distance along the strip"))
@@ -117,9 +119,13 @@ def _name_strips(ax: Axes, case: xr.Dataset, path: StripPath) -> None:
     names = case["strip"].values
     for piece in path.pieces:
         middle = (piece.begin_m + piece.length_m / 2) * MILLIMETRE.factor
-        name = str(names[piece.strip]) if piece.on_path else f"{names[piece.strip]} (apart)"
+        name = (
+            plain(str(names[piece.strip]))
+            if piece.on_path
+            else f"{plain(str(names[piece.strip]))} (apart)"
+        )
         ax.text(middle, 1.15, name, ha="center", va="center", fontsize="small", color=QUIET)
-    first = str(names[path.pieces[0].strip])
+    first = plain(str(names[path.pieces[0].strip]))
     ax.set_xlabel(MILLIMETRE.label(f"distance along the strip from the tip of '{first}'"))
     if np.isfinite(path.feed_m):
         place = path.feed_m * MILLIMETRE.factor

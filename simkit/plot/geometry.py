@@ -14,7 +14,16 @@ from shapely.geometry.base import BaseGeometry
 
 from simkit.geometry.wires import WireGrid
 from simkit.plot.outline import feed_place, metal_of, open_ends
-from simkit.plot.style import INK, METAL, MILLIMETRE, QUIET, legend_beside, new_axes
+from simkit.plot.style import (
+    INK,
+    METAL,
+    MILLIMETRE,
+    QUIET,
+    legend_beside,
+    new_axes,
+    plain,
+    put_title,
+)
 from simkit.study.model import Antenna, Strip
 
 if TYPE_CHECKING:
@@ -74,7 +83,7 @@ def plot_geometry(
     ax.set_aspect("equal")
     ax.set_xlabel(MILLIMETRE.label("x"))
     ax.set_ylabel(MILLIMETRE.label("y"))
-    ax.set_title(title or "antenna to scale", fontsize="medium", loc="left")
+    put_title(ax, title or "antenna to scale")
     legend_beside(ax)
     return ax
 
@@ -216,7 +225,7 @@ def _name_strip(ax: Axes, strip: Strip) -> None:
     angle -= np.pi * np.ceil((angle - np.pi / 2) / np.pi - 1e-9)
     x, y = (points[longest] + points[longest + 1]) / 2
     ax.annotate(
-        f"{strip.name}, {strip.width_m * _MM:.3g} mm wide",
+        f"{plain(strip.name)}, {strip.width_m * _MM:.3g} mm wide",
         (
             (x - strip.width_m / 2 * np.sin(angle)) * _MM,
             (y + strip.width_m / 2 * np.cos(angle)) * _MM,

@@ -17,6 +17,7 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    put_title,
     say_empty,
     tidy,
 )
@@ -58,7 +59,7 @@ def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | N
     """
     chosen = one_case(dataset, case)
     ax = new_axes(ax)
-    ax.set_title(title_of(chosen, "impedance at the feed"), fontsize="medium", loc="left")
+    put_title(ax, title_of(chosen, "impedance at the feed"))
     tidy(ax)
     unit = frequency_unit(chosen["frequency"])
     ax.set_xlabel(unit.label("frequency"))

@@ -20,6 +20,7 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    plain,
     say_empty,
 )
 
@@ -151,7 +152,7 @@ def plot_pattern(
         raise ValueError(f"plane must be one of {', '.join(PLANES)}, not '{plane}'")
     chosen = one_case(dataset, case)
     polar = cast("PolarAxes", new_axes(ax, (9.4, 6.2), polar=True))
-    polar.set_title(title_of(chosen, f"gain in dBi, {_ANGLES[plane]}"), fontsize="medium")
+    polar.set_title(plain(title_of(chosen, f"gain in dBi, {_ANGLES[plane]}")), fontsize="medium")
     _name_angles(polar, plane)
     modes = _wanted(chosen, half_waves)
     if not modes:
@@ -190,7 +191,7 @@ def plot_pattern_cuts(
         ax = figure.add_subplot(1, 3, column, projection="polar")
         plot_pattern(chosen, plane=plane, half_waves=half_waves, legend=False, ax=ax)
         ax.set_title(_ANGLES[plane], fontsize="medium")
-    figure.suptitle(title_of(chosen, "gain in dBi"), fontsize="medium")
+    figure.suptitle(plain(title_of(chosen, "gain in dBi")), fontsize="medium")
     handles, labels = figure.axes[0].get_legend_handles_labels()
     if handles:
         figure.legend(

@@ -25,6 +25,7 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    put_title,
     say_empty,
     tidy,
 )
@@ -91,7 +92,7 @@ def plot_reflection(
     chosen = one_case(dataset, case)
     ax = new_axes(ax)
     reference = reference_ohm(chosen)
-    ax.set_title(title_of(chosen, "reflection at the connector"), fontsize="medium", loc="left")
+    put_title(ax, title_of(chosen, "reflection at the connector"))
     tidy(ax)
     unit = frequency_unit(chosen["frequency"])
     ax.set_xlabel(unit.label("frequency"))

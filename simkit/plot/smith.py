@@ -17,6 +17,7 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    put_title,
     say_empty,
 )
 from simkit.response.features import reflection
@@ -63,7 +64,7 @@ def plot_smith(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | None 
     chosen = one_case(dataset, case)
     ax = new_axes(ax, (8.4, 7.2))
     reference = reference_ohm(chosen)
-    ax.set_title(title_of(chosen, "reflection at the connector"), fontsize="medium", loc="left")
+    put_title(ax, title_of(chosen, "reflection at the connector"))
     draw_chart(ax, reference)
     if not is_solved(chosen):
         say_empty(ax, why_empty(chosen))

@@ -85,8 +85,9 @@ class StripPath:
             currents.append(current[piece.strip][order] * (1.0 if piece.forward else -1.0))
         joined = np.concatenate(currents)
         size = np.abs(joined)
-        clear = np.flatnonzero(size >= 0.5 * np.nanmax(size)) if np.isfinite(size).any() else []
-        if len(clear) and joined[clear[0]].real < 0:
+        known = np.isfinite(size)
+        clear = np.flatnonzero(known & (size >= 0.5 * np.max(size, where=known, initial=0.0)))
+        if clear.size and joined[clear[0]].real < 0:
             joined = -joined
         return np.concatenate(distances), joined
 

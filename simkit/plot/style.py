@@ -80,6 +80,16 @@ def new_axes(
     return ax
 
 
+def plain(text: str) -> str:
+    """Return text of a study so that a dollar sign in it starts no formula."""
+    return text.replace("$", r"\$")
+
+
+def put_title(ax: Axes, text: str) -> None:
+    """Write the title flush left over the axes."""
+    ax.set_title(plain(text), fontsize="medium", loc="left")
+
+
 def tidy(ax: Axes) -> None:
     """Faint grid behind the data, no frame at the top and on the right."""
     ax.set_axisbelow(True)
@@ -112,7 +122,16 @@ def legend_beside(
 
 def say_empty(ax: Axes, text: str) -> None:
     """Write in the middle of the axes why there is nothing to see."""
-    ax.text(0.5, 0.5, text, transform=ax.transAxes, ha="center", va="center", color=INK, wrap=True)
+    ax.text(
+        0.5,
+        0.5,
+        plain(text),
+        transform=ax.transAxes,
+        ha="center",
+        va="center",
+        color=INK,
+        wrap=True,
+    )
 
 
 @dataclass(frozen=True)

@@ -20,6 +20,7 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    put_title,
     say_empty,
     tidy,
 )
@@ -101,7 +102,7 @@ def plot_tracks(
     ax = new_axes(ax, (9.0, 5.5))
     title = str(dataset.attrs.get("title", ""))
     what = f"modes and dips against {by}"
-    ax.set_title(f"{title}: {what}" if title else what, fontsize="medium", loc="left")
+    put_title(ax, f"{title}: {what}" if title else what)
     tidy(ax)
     across, up = swept_unit(dataset, by), frequency_unit(dataset["frequency"])
     ax.set_xlabel(across.label(by))

@@ -146,6 +146,14 @@ def test_every_kind_names_a_function_of_the_package() -> None:
         assert callable(getattr(simkit.plot, kind.function))
 
 
+def test_dollar_signs_in_a_title_are_no_formula(dataset: xr.Dataset, tmp_path: Path) -> None:
+    priced = dataset.assign_attrs(title="Gauge $2_{a}^ and $")
+    for kind in ("impedance", "pattern", "tracks"):
+        save_plot(priced, kind, tmp_path / f"{kind}.png")
+    title = draw(priced, "smith").axes[0].get_title(loc="left")
+    assert title.startswith(r"Gauge \$2_{a}^ and \$: reflection")
+
+
 def test_drawing_leaves_pyplot_alone_and_listing_needs_no_matplotlib(tmp_path: Path) -> None:
     code = (
         "import sys\n"
