@@ -78,6 +78,7 @@ class Child:
 
     def __init__(self, function: str) -> None:
         self.function = function
+        self.abandoned = False
         self._pool: Any = None
 
     def __enter__(self) -> Child:
@@ -105,6 +106,8 @@ class Child:
         -------
         Outcome
         """
+        if self.abandoned:
+            return Outcome(Kind.CRASHED, reason="the engine's process was ended on request")
         if self._pool is None:
             started = self._start()
             if started.kind is not Kind.VALUE:
@@ -119,6 +122,11 @@ class Child:
                 pool.stop()
                 pool.join()
 
+    def abandon(self) -> None:
+        """End the child for good, from any thread; calls in hand and later ones read as crashed."""
+        self.abandoned = True
+        self.close()
+
     def _start(self) -> Outcome:
         import multiprocessing
 
@@ -127,7 +135,7 @@ class Child:
         self._pool = ProcessPool(max_workers=1, context=multiprocessing.get_context("spawn"))
         with interrupts_held():
             started = self._ask(_prepare, (self.function,), START_LIMIT_S)
-        if started.kind is Kind.VALUE:
+        if started.kind is Kind.VALUE and not self.abandoned:
             return started
         self.close()
         reason = f"the engine's process cannot be started: {started.reason}"

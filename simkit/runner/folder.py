@@ -66,6 +66,7 @@ class ResultsFolder:
         """
         try:
             self.path.mkdir(parents=True, exist_ok=True)
+            flush([self.path.parent])
         except OSError as error:
             raise StoreError(
                 f"{self.path}: the results folder cannot be made: {error.strerror}; "
@@ -108,8 +109,9 @@ class ResultsFolder:
 
     def recover(self) -> None:
         """Finish what a killed run left half done: a swap, a layout."""
-        for part in self.path.glob("*.part"):
-            _remove(part)
+        for pattern in ("store*.zarr.part", f"{STUDY_NAME}.part"):
+            for part in self.path.glob(pattern):
+                _remove(part)
         if self.old.exists() and not self.store.exists():
             os.rename(self.unfinished if self.unfinished.exists() else self.old, self.store)
         _remove(self.old)

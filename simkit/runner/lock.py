@@ -19,6 +19,7 @@ from simkit.errors import StoreError
 LOCK_NAME = ".lock"
 WRITERS_NAME = ".writers"
 
+_LOOKERS_S = 0.5
 _STRAGGLERS_S = 60.0
 """Longest wait for workers of a killed run to finish the block they are writing."""
 
@@ -43,7 +44,8 @@ class RunLock:
         self._stopping = False
         self._handle = _open(self.path)
         try:
-            fcntl.flock(self._handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+            # Long enough to outlast somebody who merely looks whether the folder is in use.
+            _wait_for_lock(self._handle, _LOOKERS_S)
         except OSError as error:
             holder = _read(self.path)
             os.close(self._handle)
@@ -61,6 +63,11 @@ class RunLock:
         self._stopping = True
         self._write()
 
+    def revoke(self) -> None:
+        """Take from the workers the right to write; what they still do is dropped."""
+        self.token = ""
+        self._write()
+
     def release(self) -> None:
         """Give the folder free."""
         os.ftruncate(self._handle, 0)
@@ -70,8 +77,12 @@ class RunLock:
         """Take over as the only run whose workers may write, after those now writing are done."""
         writers = _open(self.path.with_name(WRITERS_NAME))
         try:
-            _wait_for_lock(writers, self.path.parent)
+            _wait_for_lock(writers, _STRAGGLERS_S)
             self._write()
+        except BlockingIOError as error:
+            raise StoreError(
+                f"{self.path.parent}: an earlier run still has a worker writing here; end it"
+            ) from error
         finally:
             os.close(writers)
 
@@ -95,7 +106,7 @@ class RunLock:
 def may_start(lock: Path, token: str) -> bool:
     """Whether the run with this token is alive and still starts blocks."""
     holder = _read(lock)
-    return holder.get("token") == token and not holder.get("stopping")
+    return _holds(holder, token) and not holder.get("stopping")
 
 
 @contextmanager
@@ -104,7 +115,7 @@ def writing(lock: Path, token: str) -> Iterator[bool]:
     handle = _open(lock.with_name(WRITERS_NAME))
     try:
         fcntl.flock(handle, fcntl.LOCK_SH)
-        yield _read(lock).get("token") == token
+        yield _holds(_read(lock), token)
     finally:
         os.close(handle)
 
@@ -122,6 +133,10 @@ def holder_of(folder: Path) -> dict[str, object] | None:
     finally:
         os.close(handle)
     return None
+
+
+def _holds(holder: dict[str, object], token: str) -> bool:
+    return token != "" and holder.get("token") == token
 
 
 def _open(path: Path) -> int:
@@ -142,16 +157,15 @@ def _read(path: Path) -> dict[str, object]:
     return content if isinstance(content, dict) else {}
 
 
-def _wait_for_lock(handle: int, folder: Path) -> None:
-    patience = time.monotonic() + _STRAGGLERS_S
+def _wait_for_lock(handle: int, patience_s: float) -> None:
+    """Raises BlockingIOError after `patience_s`."""
+    end = time.monotonic() + patience_s
     while True:
         try:
             fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError as error:
-            if time.monotonic() > patience:
-                raise StoreError(
-                    f"{folder}: a worker of an earlier run is still writing here; end it first"
-                ) from error
+        except BlockingIOError:
+            if time.monotonic() > end:
+                raise
             time.sleep(0.05)
         else:
             return

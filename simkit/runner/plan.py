@@ -40,13 +40,13 @@ def limit_for(segments: int) -> float:
     return 60.0 + 10.0 * SAMPLES * matrix_s
 
 
-def first_solvable(prepared: Prepared) -> Iterator[CaseJob]:
-    """The first few cases that the engine would be asked for."""
+def first_to_solve(prepared: Prepared, index: Index) -> Iterator[CaseJob]:
+    """The first few cases that the engine will be asked for."""
     if prepared.plan is None:
         return
     found = 0
     for case, key in zip(prepared.cases, prepared.keys, strict=True):
-        if case.antenna is not None and found < _TRIES:
+        if case.antenna is not None and key not in index and found < _TRIES:
             found += 1
             yield CaseJob(case.index, key, case.antenna)
 

@@ -49,7 +49,7 @@ class InlinePool:
 
     def close(self) -> None:
         """End the child, and with it a case in hand."""
-        self._worker.close()
+        self._worker.abandon()
         self._threads.shutdown(cancel_futures=True)
 
 
@@ -99,7 +99,7 @@ class DaskPool:
 
     def submit(self, job: BlockJob) -> Any:
         """Start a block some time soon."""
-        return self._client.submit(do_block, self._function, job, pure=False, retries=2)
+        return self._client.submit(do_block, self._function, job, pure=False)
 
     def close(self) -> None:
         """End all workers."""

@@ -5,10 +5,12 @@ from __future__ import annotations
 import multiprocessing
 import shutil
 import time
-from collections.abc import Iterator
+import traceback
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
 from os import PathLike
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -18,8 +20,9 @@ from simkit.runner.lock import RunLock
 from simkit.runner.log import EventLog
 from simkit.runner.loop import Loop
 from simkit.runner.plan import (
+    Index,
     block_size_for,
-    first_solvable,
+    first_to_solve,
     jobs_for,
     key_index,
     limit_for,
@@ -29,17 +32,20 @@ from simkit.runner.prepare import Prepared, Solver, prepare
 from simkit.runner.progress import Progress, choose_progress, duration_text
 from simkit.runner.result import CaseResult, InternalError, RunSummary
 from simkit.runner.stop import StopRequest
-from simkit.runner.work import ForeignError, Worker, solve_guarded
+from simkit.runner.work import BlockJob, ForeignError, Worker, solve_guarded
 from simkit.store.layout import create_store
 from simkit.store.schema import Status
 from simkit.store.size import estimate_bytes
-from simkit.store.write import StoreFile
+from simkit.store.write import StoreFile, read_attrs
 
 if TYPE_CHECKING:
     from simkit.study import Study
 
 RESERVE_BYTES = 200_000_000
 """Disk that a run leaves free."""
+
+_PASSES = 3
+"""A block found damaged while it is completed is done anew in the next pass."""
 
 
 def run(
@@ -101,19 +107,11 @@ def run(
     folder = ResultsFolder(Path(results or "results") / study.path.stem)
     folder.check_title(study.title, fresh=fresh)
     folder.create()
+    choices = _Choices(solver or Solver(), workers or core_count(), block_size, time_limit_s)
     lock = RunLock(folder.path)
     try:
-        return _Run(
-            study,
-            folder,
-            lock,
-            progress or choose_progress(),
-            solver or Solver(),
-            begin,
-            workers=workers,
-            block_size=block_size,
-            time_limit_s=time_limit_s,
-        ).go(fresh=fresh)
+        session = _Session(folder, lock, progress or choose_progress(), choices)
+        return session.guarded(study, fresh=fresh, begin=begin)
     finally:
         lock.release()
 
@@ -127,38 +125,34 @@ def _refuse_in_a_worker() -> None:
         )
 
 
-class _Run:
+@dataclass(frozen=True)
+class _Choices:
+    solver: Solver
+    workers: int
+    block_size: int | None
+    time_limit_s: float | None
+
+    def limit_s(self, prepared: Prepared) -> float:
+        """Time limit of one case."""
+        return self.time_limit_s or limit_for(prepared.segments)
+
+
+class _Session:
     """The steps of one run, in the order in which they happen."""
 
     def __init__(
-        self,
-        study: Study,
-        folder: ResultsFolder,
-        lock: RunLock,
-        progress: Progress,
-        solver: Solver,
-        begin: float,
-        *,
-        workers: int | None,
-        block_size: int | None,
-        time_limit_s: float | None,
+        self, folder: ResultsFolder, lock: RunLock, progress: Progress, choices: _Choices
     ) -> None:
-        self.study = study
         self.folder = folder
         self.lock = lock
         self.progress = progress
-        self.solver = solver
-        self.begin = begin
-        self.workers = workers or core_count()
-        self.block_size = block_size
-        self.time_limit_s = time_limit_s
+        self.choices = choices
         self.log = EventLog(folder.log)
-        self.ready: dict[int, CaseResult] = {}
 
-    def go(self, *, fresh: bool) -> RunSummary:
-        """Run to the end, or to the request to stop."""
+    def guarded(self, study: Study, *, fresh: bool, begin: float) -> RunSummary:
+        """Run to the end or to the request to stop; every other end is logged with its cause."""
         try:
-            return self._go(fresh=fresh)
+            return self._go(study, fresh=fresh, begin=begin)
         except ForeignError as error:
             self.log.write(f"stopped by an error in simkit\n{error}")
             first = str(error).splitlines()[0]
@@ -166,48 +160,126 @@ class _Run:
                 f"{first}. This is an error in simkit, not in your study; everything stored is "
                 f"kept and the traceback is in {self.folder.log}"
             ) from error
-        except (SimkitError, OSError) as error:
+        except KeyboardInterrupt:
+            self.log.write("stopped at once, on request")
+            raise
+        except SimkitError as error:
             self.log.write(f"stopped: {error}")
-            if isinstance(error, SimkitError):
-                raise
-            raise StoreError(f"{self.folder.path}: {error}") from error
+            raise
+        except OSError as error:
+            self.log.write(f"stopped: {error}")
+            raise StoreError(
+                f"{self.folder.path}: cannot be written: {error}; what is stored is kept"
+            ) from error
+        except Exception:
+            self.log.write(f"stopped by an error in simkit\n{traceback.format_exc()}")
+            raise
         finally:
             self.progress.close()
 
-    def _go(self, *, fresh: bool) -> RunSummary:
+    def _go(self, study: Study, *, fresh: bool, begin: float) -> RunSummary:
         self.folder.recover()
-        prepared = prepare(self.study, self.solver)
+        prepared = prepare(study, self.choices.solver)
         self.log.write(
             f"run of {prepared.title!r}: {len(prepared.cases)} cases, {prepared.segments} segments,"
-            f" model {self.solver.version}, engine {prepared.attrs['engine_version']}"
+            f" {_versions(prepared.attrs)}"
         )
         target = self.folder.choose(prepared, fresh=fresh)
-        worker = Worker(self.solver.function)
+        self._say_versions(target, prepared)
+        worker = Worker(self.choices.solver.function)
         try:
             with StopRequest(self._on_stop) as stop:
-                store = self._open(target, prepared, worker)
-                summary = self._solve(prepared, target, store, worker, stop)
+                loop = Loop(self.progress, self.log, stop, self.folder.path)
+                store, done = self._settle(prepared, target, worker, loop)
         finally:
             worker.close()
+        codes = store.read_statuses()
+        summary = RunSummary(
+            counts={status: int(np.count_nonzero(codes == status)) for status in Status},
+            reused=done + loop.reused,
+            solved=loop.solved,
+            results_dir=self.folder.path,
+            seconds=time.monotonic() - begin,
+            stopped=loop.stopped,
+        )
         if summary.complete:
             self.folder.finish(target, prepared.text)
-        self._say_end(summary)
+        for line in summary_lines(summary):
+            self._say(line)
         return summary
 
-    def _on_stop(self) -> None:
-        self.lock.stop_starting()
-        self.progress.say("stopping: the blocks in hand are finished; Ctrl-C again stops at once")
-
-    # -- the store -----------------------------------------------------------------------------
-
-    def _open(self, target: Target, prepared: Prepared, worker: Worker) -> StoreFile:
+    def _settle(
+        self, prepared: Prepared, target: Target, worker: Worker, loop: Loop
+    ) -> tuple[StoreFile, int]:
+        """Settle all waiting cases; return the store and how many cases were settled before."""
+        index = key_index(target.sources)
+        ready: dict[int, CaseResult] = {}
         if not target.exists:
-            self._check_disk(prepared)
-            size = self.block_size or self._timed_block_size(prepared, worker)
+            size, ready = self._before_layout(prepared, target, index, worker)
             create_store(target.path, prepared.layout(size, takeover=target.takeover))
             if target.path == self.folder.store:
                 self.folder.keep_text(prepared.text)
-        return StoreFile(target.path)
+        store = StoreFile(target.path)
+        done = int(np.count_nonzero(store.read_statuses()))
+        for turn in range(_PASSES):
+            jobs = jobs_for(
+                prepared,
+                store,
+                index,
+                ready,
+                limit_s=self.choices.limit_s(prepared),
+                lock=self.lock.path,
+                token=self.lock.token,
+            )
+            if turn == 0:
+                self._say_begin(store, jobs, done)
+                self.progress.start(store.cases, done)
+            if not jobs or loop.stopped:
+                break
+            self._work(jobs, worker, loop, store)
+        return store, done
+
+    def _work(self, jobs: list[BlockJob], worker: Worker, loop: Loop, store: StoreFile) -> None:
+        pool = self._pool(len(jobs), worker)
+        over = False
+        try:
+            loop.run(pool, jobs, int(np.count_nonzero(store.read_statuses())))
+            over = not loop.stopped
+        finally:
+            if not over:
+                # A case cut short by the end of its process must not be stored as failed.
+                self.lock.revoke()
+            pool.close()
+            self.progress.close()
+
+    def _pool(self, blocks: int, worker: Worker) -> Pool:
+        count = min(self.choices.workers, blocks)
+        if count == 1:
+            return InlinePool(worker)
+        worker.close()
+        return DaskPool(count, self.choices.solver.function)
+
+    # -- before a new store --------------------------------------------------------------------
+
+    def _before_layout(
+        self, prepared: Prepared, target: Target, index: Index, worker: Worker
+    ) -> tuple[int, dict[int, CaseResult]]:
+        """Block size of a new store, and the results of the cases solved to find it."""
+        self._check_disk(prepared)
+        if self.choices.block_size:
+            return self.choices.block_size, {}
+        ready: dict[int, CaseResult] = {}
+        seconds = 0.0
+        for case in first_to_solve(prepared, index):
+            limit_s = self.choices.limit_s(prepared)
+            result = solve_guarded(worker.child, case, prepared.plan, limit_s)
+            ready[case.index] = result
+            seconds = result.seconds
+            if result.status in (Status.SOLVED, Status.DOUBTFUL):
+                break
+        if not ready and target.sources and index:
+            return int(read_attrs(target.sources[0])["block_size"]), {}
+        return block_size_for(seconds, len(prepared.cases), self.choices.workers), ready
 
     def _check_disk(self, prepared: Prepared) -> None:
         need = estimate_bytes(
@@ -217,6 +289,7 @@ class _Run:
             segments=prepared.segments,
         )
         free = shutil.disk_usage(self.folder.path).free
+        # The estimate may be twice too high, and a study is not refused for that.
         if free < need // 2 + RESERVE_BYTES:
             raise StoreError(
                 f"{self.folder.path}: the study needs about {need / 1e6:.0f} MB of disk and "
@@ -224,88 +297,37 @@ class _Run:
                 "left; make room or choose another disk with --results"
             )
 
-    def _timed_block_size(self, prepared: Prepared, worker: Worker) -> int:
-        """Solve one case with the clock running; its result is kept for its block."""
-        seconds = 0.0
-        for case in first_solvable(prepared):
-            result = solve_guarded(worker.child, case, prepared.plan, self._limit_s(prepared))
-            self.ready[case.index] = result
-            seconds = result.seconds
-            if result.status in (Status.SOLVED, Status.DOUBTFUL):
-                break
-        return block_size_for(seconds, len(prepared.cases), self.workers)
-
-    def _limit_s(self, prepared: Prepared) -> float:
-        return self.time_limit_s or limit_for(prepared.segments)
-
-    # -- the cases -----------------------------------------------------------------------------
-
-    def _solve(
-        self,
-        prepared: Prepared,
-        target: Target,
-        store: StoreFile,
-        worker: Worker,
-        stop: StopRequest,
-    ) -> RunSummary:
-        index = key_index(target.sources)
-        done = int(np.count_nonzero(store.read_statuses()))
-        jobs = jobs_for(
-            prepared,
-            store,
-            index,
-            self.ready,
-            limit_s=self._limit_s(prepared),
-            lock=self.lock.path,
-            token=self.lock.token,
-        )
-        taken = sum(case.source is not None for job in jobs for case in job.cases)
-        self._say_begin(prepared, store, done, taken)
-        loop = Loop(self.progress, self.log, stop, self.folder.path)
-        if jobs:
-            self.progress.start(len(prepared.cases), done)
-            pool = self._pool(jobs, worker)
-            try:
-                loop.run(pool, jobs, done)
-            finally:
-                pool.close()
-                self.progress.close()
-        codes = store.read_statuses()
-        return RunSummary(
-            counts={status: int(np.count_nonzero(codes == status)) for status in Status},
-            reused=done + loop.reused,
-            solved=loop.solved,
-            results_dir=self.folder.path,
-            seconds=time.monotonic() - self.begin,
-            stopped=loop.stopped,
-        )
-
-    def _pool(self, jobs: list[Any], worker: Worker) -> Pool:
-        count = min(self.workers, len(jobs))
-        if count == 1:
-            return InlinePool(worker)
-        worker.close()
-        return DaskPool(count, self.solver.function)
-
     # -- what is said --------------------------------------------------------------------------
 
-    def _say_begin(self, prepared: Prepared, store: StoreFile, done: int, taken: int) -> None:
-        total = len(prepared.cases)
-        parts = [f"{total} cases in {store.blocks} blocks"]
+    def _on_stop(self) -> None:
+        self.lock.stop_starting()
+        self._say("stopping: the blocks in hand are finished; Ctrl-C again stops at once")
+
+    def _say_versions(self, target: Target, prepared: Prepared) -> None:
+        """Other versions never mix with these: say so where it makes cases be solved anew."""
+        if target.exists or not target.sources:
+            return
+        before, now = _versions(read_attrs(target.sources[0])), _versions(prepared.attrs)
+        if before != now:
+            self._say(f"earlier results are of {before}; this is {now}: all is solved anew")
+
+    def _say_begin(self, store: StoreFile, jobs: list[BlockJob], done: int) -> None:
+        taken = sum(case.source is not None for job in jobs for case in job.cases)
+        parts = [f"{store.cases} cases in {store.blocks} blocks"]
         if done:
             parts.append(f"{done} reused from the earlier run")
         if taken:
             parts.append(f"{taken} taken over unchanged from the earlier study")
-        parts.append(f"{total - done - taken} to solve")
+        parts.append(f"{store.cases - done - taken} to solve")
         self._say(", ".join(parts))
-
-    def _say_end(self, summary: RunSummary) -> None:
-        for line in summary_lines(summary):
-            self._say(line)
 
     def _say(self, text: str) -> None:
         self.log.write(text)
         self.progress.say(text)
+
+
+def _versions(attrs: Mapping[str, object]) -> str:
+    return f"model {attrs.get('model_version')}, engine {attrs.get('engine_version')}"
 
 
 def summary_lines(summary: RunSummary) -> Iterator[str]:
@@ -317,4 +339,4 @@ def summary_lines(summary: RunSummary) -> Iterator[str]:
     )
     yield f"results: {summary.results_dir}"
     if summary.stopped:
-        yield f"stopped: {summary.stopped}. Give the same command again to continue"
+        yield f"stopped {summary.stopped}; give the same command again to continue"

@@ -91,6 +91,8 @@ class ForeignError(Exception):
 def solve_guarded(child: Child, job: CaseJob, plan: Any, limit_s: float) -> CaseResult:
     """Solve one case in the child; crash, hang and engine errors become its status.
 
+    A crash is tried once more: the process may have been ended for reasons that are not the case's.
+
     Raises
     ------
     ForeignError
@@ -98,12 +100,13 @@ def solve_guarded(child: Child, job: CaseJob, plan: Any, limit_s: float) -> Case
     """
     start = time.monotonic()
     outcome = child.call(job.antenna, plan, limit_s=limit_s)
+    if outcome.kind is Kind.CRASHED:
+        outcome = child.call(job.antenna, plan, limit_s=limit_s)
     if outcome.kind is Kind.VALUE:
-        if not isinstance(outcome.value, CaseResult):
-            raise ForeignError(
-                f"case {job.index}: the solver returned {type(outcome.value).__name__}"
-            )
-        return outcome.value
+        result = outcome.value
+        if not isinstance(result, CaseResult) or result.status is Status.WAITING:
+            raise ForeignError(f"case {job.index}: the solver returned no result: {result!r:.80}")
+        return result
     if outcome.kind is Kind.BUG:
         raise ForeignError(f"case {job.index}: {outcome.reason}\n{outcome.trace}")
     status = Status.TIMED_OUT if outcome.kind is Kind.TIMED_OUT else Status.FAILED
@@ -124,8 +127,12 @@ class Worker:
         self._stores: dict[Path, StoreFile] = {}
 
     def close(self) -> None:
-        """End the child."""
+        """End the child; a later block starts another."""
         self.child.close()
+
+    def abandon(self) -> None:
+        """From another thread: drop the block in hand, if there is one, and end the child."""
+        self.child.abandon()
 
     def do(self, job: BlockJob) -> Receipt:
         """Settle the waiting cases of one block and write it."""
@@ -150,6 +157,8 @@ class Worker:
                 reused += 1
                 continue
             result = case.ready or solve_guarded(self.child, case, job.plan, job.limit_s)
+            if self.child.abandoned:
+                return Receipt(job.block, dropped=True)
             self._put(content, case, result)
             solved += 1
             solves += result.solves

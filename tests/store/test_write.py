@@ -1,0 +1,173 @@
+from __future__ import annotations
+
+import json
+import os
+import shutil
+
+import numpy as np
+import pytest
+import zarr
+
+from simkit.errors import StoreError
+from simkit.store import files
+from simkit.store.layout import create_store, fill_value, numpy_dtype
+from simkit.store.schema import VARIABLES, Status
+from simkit.store.write import StoreFile
+
+from .conftest import FREQUENCIES, SEGMENTS, case_values, layout
+
+
+def test_nothing_written_reads_as_fill_of_the_declared_type(make_results):
+    store = StoreFile(make_results() / "store.zarr")
+    arrays = store.read_arrays(0)
+    assert set(arrays) == set(VARIABLES)
+    for name, array in arrays.items():
+        assert array.dtype == numpy_dtype(name), name
+        expected = np.full(array.shape, fill_value(name), array.dtype)
+        assert np.array_equal(array, expected, equal_nan=array.dtype.kind in "fc"), name
+    assert np.isnan(arrays["impedance"].imag).all()
+    assert (arrays["mode_half_waves"] == -1).all()
+    assert (arrays["status"] == Status.WAITING).all()
+
+
+def test_chunks_are_blocks_of_cases_with_a_checksum(make_results):
+    group = zarr.open_group(make_results() / "store.zarr")
+    for name in VARIABLES:
+        array = group[name]
+        assert array.metadata.zarr_format == 3
+        assert array.chunks == (4, *array.shape[1:]), name
+        assert any(type(codec).__name__ == "Crc32cCodec" for codec in array.metadata.codecs), name
+
+
+def test_units_meanings_and_flags_are_kept(make_results):
+    group = zarr.open_group(make_results() / "store.zarr")
+    for name, variable in VARIABLES.items():
+        attrs = dict(group[name].attrs)
+        assert attrs["long_name"] == variable.meaning
+        assert attrs.get("units", "") == variable.units
+    status = dict(group["status"].attrs)
+    assert status["flag_values"] == [0, 1, 2, 3, 4, 5]
+    assert status["flag_meanings"] == "waiting solved doubtful refused failed timed-out"
+    assert dict(group["driven"].attrs)["flag_values"] == [-1, 0, 1]
+
+
+def test_a_block_comes_back_bit_for_bit(results):
+    arrays = StoreFile(results / "store.zarr").read_arrays(0)
+    for case in range(4):
+        for name, value in case_values(case).items():
+            assert np.array_equal(arrays[name][case], np.asarray(value, arrays[name].dtype)), name
+    assert arrays["reason"].tolist() == [f"because of {case}" for case in range(4)]
+
+
+def test_a_short_last_block_leaves_the_others_alone(results):
+    store = StoreFile(results / "store.zarr")
+    before = store.read_arrays(0)
+    block = store.new_block(1)
+    assert block.count == 2
+    for case in (4, 5):
+        block.put(case, case_values(case) | {"status": int(Status.SOLVED)})
+    store.write_block(1, block)
+    after = StoreFile(results / "store.zarr").read_arrays(0)
+    assert all(
+        np.array_equal(before[n], after[n], equal_nan=before[n].dtype.kind in "fc") for n in after
+    )
+    assert store.read_statuses().tolist() == [1, 3, 5, 2, 1, 1]
+    assert store.read_keys() == [f"key {case}" for case in range(6)]
+
+
+def test_the_status_is_written_after_everything_else_is_on_the_disk(results, monkeypatch):
+    store = StoreFile(results / "store.zarr")
+    flushed: list[str] = []
+
+    def note(paths):
+        paths = list(paths)
+        flushed.extend(path.relative_to(store.path).as_posix() for path in paths)
+        if "status" not in flushed:
+            assert store.read_statuses()[4] == Status.WAITING or "status/c.1" in flushed
+        assert (store.path / "wire_radius" / "c.1").exists()
+
+    monkeypatch.setattr("simkit.store.write.flush", note)
+    block = store.new_block(1)
+    block.put(4, case_values(4) | {"status": int(Status.SOLVED)})
+    store.write_block(1, block)
+    assert flushed[-2:] == ["status/c.1", "status"]
+    assert {"impedance/c.1.0", "impedance", "gain/c.1.0.0.0", "reason/c.1"} <= set(flushed[:-2])
+
+
+@pytest.mark.parametrize(
+    ("values", "message"),
+    [
+        ({"no_such": 1.0}, "no variable 'no_such'"),
+        ({"x": np.zeros(SEGMENTS + 1)}, r"x has shape \(6,\) .* keeps \(5,\)"),
+        ({"mode_q": np.zeros(10, complex)}, "mode_q has .* type complex128"),
+        ({"mode_half_waves": np.zeros(10)}, "mode_half_waves has .* type float64"),
+    ],
+)
+def test_arrays_that_do_not_fit_are_refused(make_results, values, message):
+    block = StoreFile(make_results() / "store.zarr").new_block(0)
+    with pytest.raises(ValueError, match=message):
+        block.put(2, values)
+
+
+def test_a_torn_status_or_key_counts_as_waiting(results):
+    for name in ("status", "case_key"):
+        chunk = results / "store.zarr" / name / "c.0"
+        chunk.write_bytes(chunk.read_bytes()[:-1])
+    store = StoreFile(results / "store.zarr")
+    assert store.read_statuses().tolist() == [0] * 6
+    assert store.read_keys() == [""] * 6
+
+
+def test_a_store_appears_whole_or_not_at_all(tmp_path, monkeypatch):
+    def no_space(*args, **kwargs):
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr("simkit.store.layout.flush_tree", no_space)
+    with pytest.raises(OSError, match="No space left"):
+        create_store(tmp_path / "store.zarr", layout())
+    assert not (tmp_path / "store.zarr").exists()
+    monkeypatch.undo()
+    create_store(tmp_path / "store.zarr", layout())
+    assert StoreFile(tmp_path / "store.zarr").cases == 6
+
+
+@pytest.mark.parametrize(
+    ("change", "message"),
+    [
+        (lambda store: shutil.rmtree(store / "gain"), "the array 'gain' is missing"),
+        (lambda store: (store / "zarr.json").write_text("{"), "zarr.json is damaged"),
+        (lambda store: (store / "zarr.json").write_text("[]"), "damaged; the store cannot be read"),
+        (lambda store: (store / "zarr.json").write_text("{}"), "was not written by simkit"),
+        (lambda store: _set_version(store, 99), "store version 99, this simkit reads version 1"),
+        (lambda store: shutil.rmtree(store), "no results store here"),
+    ],
+)
+def test_a_store_that_cannot_be_used_is_refused_in_words(results, change, message):
+    change(results / "store.zarr")
+    with pytest.raises(StoreError, match=message):
+        StoreFile(results / "store.zarr")
+
+
+def _set_version(store, version):
+    path = store / "zarr.json"
+    content = json.loads(path.read_text())
+    content["attributes"]["store_version"] = version
+    path.write_text(json.dumps(content))
+
+
+def test_replacing_a_text_leaves_the_old_one_if_it_fails(tmp_path, monkeypatch):
+    path = tmp_path / "study.toml"
+    files.replace_text(path, "old")
+
+    def no_space(handle):
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(os, "fsync", no_space)
+    with pytest.raises(OSError, match="No space left"):
+        files.replace_text(path, "new")
+    assert path.read_text() == "old"
+
+
+def test_frequencies_are_as_given(results):
+    group = zarr.open_group(results / "store.zarr")
+    assert np.array_equal(group["frequency"][:], FREQUENCIES)
