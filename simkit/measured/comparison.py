@@ -117,6 +117,11 @@ class Comparison:
     unpaired: tuple[Dip, ...]
     notes: tuple[str, ...]
 
+    @property
+    def file_comment(self) -> str:
+        """The first line in which the measured file says what it is, empty if it does not."""
+        return next((text for text in self.measurement.comments if text), "")
+
     def as_rows(self) -> list[dict[str, Any]]:
         """One dictionary per mode, then one per unpaired dip, SI; None for what does not exist."""
         head = {"file": str(self.measurement.path), "case": self.case}
@@ -182,6 +187,7 @@ def compare(
     row, fit_notes = _best_row(rows, every, heard, bands)
     notes += [*build_notes, *fit_notes]
     pairing = every[row].pair(heard, *bands)
+    notes += _doubt_notes(dataset, row)
     notes += _unexcited_notes(every[row], pairing)
     return _comparison(dataset, row, measurement, every[row], dips, pairing, notes)
 
@@ -224,6 +230,13 @@ def _best_row(
     misfit = [every[row].pair(heard, *bands).misfit for row in rows]
     row = int(rows[int(np.argmin(misfit))])
     return row, [f"of {len(rows)} cases in question this one's dips fit the measured ones best"]
+
+
+def _doubt_notes(dataset: xr.Dataset, row: int) -> list[str]:
+    if int(dataset["status"].values[row]) != Status.DOUBTFUL:
+        return []
+    reason = str(dataset["reason"].values[row]) if "reason" in dataset else ""
+    return [f"the simulated case is doubtful: {reason or 'no reason is stored'}"]
 
 
 def _unexcited_notes(modes: CaseModes, pairing: Pairing) -> list[str]:

@@ -28,6 +28,7 @@ def comparison_text(comparison: Comparison) -> str:
     rows = [_cells(line) for line in comparison.lines]
     parts = [
         f"{comparison.measurement.path} beside {case_text(comparison)}",
+        *([f"the file says: {comparison.file_comment}"] if comparison.file_comment else []),
         "",
         *_table(rows),
         "",

@@ -27,8 +27,9 @@ if TYPE_CHECKING:
     from simkit.measured.measurement import ComplexArray, FloatArray
 
 MEASURED_COLOUR = "#8c5a9e"
-"""Violet is darker than any mode's marker is; the simulated curve is dashed besides."""
+"""A violet that no mode has; the simulated curve is dashed besides."""
 SIMULATED_DASHES = (0, (5, 1.6))
+WIDEST_COMMENT = 80
 FLOOR_DB = -20.0
 """The picture reaches down to here at least, so that shallow dips are not blown up."""
 
@@ -85,7 +86,12 @@ def _title(comparison: Comparison) -> str:
     from simkit.measured.wording import case_text
 
     study = f"{comparison.title} - " if comparison.title else ""
-    return f"{study}{comparison.measurement.path.name}\nbeside {case_text(comparison)}"
+    text = f"{study}{comparison.measurement.path.name}\nbeside {case_text(comparison)}"
+    said = comparison.file_comment
+    if said:
+        text += f"\nthe measured file says: {said[:WIDEST_COMMENT]}"
+    # A dollar sign would start a formula.
+    return text.replace("$", r"\$")
 
 
 def _draw_curve(
