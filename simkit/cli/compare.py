@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, cast
 
 import click
 
@@ -12,6 +12,8 @@ from simkit.cli.options import case_option, csv_option, json_option, one_format,
 from simkit.cli.output import csv_text, emit, json_text
 
 if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
     from simkit.measured import Comparison
 
 
@@ -80,7 +82,7 @@ def overlay_path(results: str | Path, comparison: Comparison) -> Path:
 
 def save_overlay(comparison: Comparison, path: str | Path) -> Path:
     """Draw the measured and the simulated curve into a file."""
-    from simkit.plot import plot_comparison
+    from simkit.plot.overlay import plot_overlay
     from simkit.plot.save import write
 
-    return write(plot_comparison(comparison).figure, path)
+    return write(cast("Figure", plot_overlay(comparison).figure), path)

@@ -51,7 +51,7 @@ def study_text(study: Study) -> str:
         labelled("Sweep", sweep_text(study)),
     ]
     if study.measured:
-        files = [f"{m.path}{_build(study, m.build)}" for m in study.measured]
+        files = [f"{m.path}{_in_brackets(study, m.build, 'as built: ')}" for m in study.measured]
         parts.append(labelled("Measured", "\n".join(files)))
     return "\n".join(parts)
 
@@ -135,9 +135,9 @@ def _value(study: Study, name: str, value: float) -> str:
     return quantity_text(value, study.display_unit(name))
 
 
-def _build(study: Study, build: dict[str, float]) -> str:
-    values = [f"{name} {_value(study, name, value)}" for name, value in build.items()]
-    return f" (as built: {', '.join(values)})" if values else ""
+def _in_brackets(study: Study, values: dict[str, float], before: str = "") -> str:
+    shown = [f"{name} {_value(study, name, value)}" for name, value in values.items()]
+    return f" ({before}{', '.join(shown)})" if shown else ""
 
 
 def mesh_of(study: Study) -> MeshPlan:
@@ -160,7 +160,7 @@ def case_problems(study: Study, plan: MeshPlan) -> list[str]:
             except GeometryError as error:
                 reason = str(error)
         if reason:
-            found.append(f"case {case.index}{_build(study, case.values)}: {reason}")
+            found.append(f"case {case.index}{_in_brackets(study, case.values)}: {reason}")
     return found
 
 

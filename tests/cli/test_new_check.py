@@ -1,0 +1,57 @@
+"""`simkit new`, then `simkit check`: what a newcomer does first."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from click.testing import CliRunner, Result
+
+from simkit.cli import main
+
+from .hook import STUDY
+
+
+def simkit(*words: str | Path) -> Result:
+    return CliRunner().invoke(main, [str(word) for word in words])
+
+
+def test_what_new_writes_passes_check(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(tmp_path)
+    made = simkit("new", "creek_gauge")
+    assert made.exit_code == 0, made.output
+    assert "Never transmit into a network analyser" in made.stdout
+    checked = simkit("check", "creek_gauge.toml")
+    assert checked.exit_code == 0, checked.output
+    for word in ("creek gauge", "east", "west", "west.start", "unknowns", "Model error", "The run"):
+        assert word in checked.stdout
+    picture = tmp_path / "results" / "creek_gauge" / "plots" / "geometry.png"
+    assert str(picture.relative_to(tmp_path)) in checked.stdout
+    assert picture.read_bytes().startswith(b"\x89PNG")
+
+
+def test_new_overwrites_nothing(tmp_path: Path) -> None:
+    path = tmp_path / "mine.toml"
+    path.write_text("precious", "utf-8")
+    result = simkit("new", path)
+    assert result.exit_code == 2
+    assert "exists" in result.stderr
+    assert path.read_text("utf-8") == "precious"
+
+
+def test_new_needs_its_folder(tmp_path: Path) -> None:
+    result = simkit("new", tmp_path / "nowhere" / "mine")
+    assert result.exit_code == 2
+    assert "folder" in result.stderr
+
+
+def test_check_names_the_case_that_cannot_be_built(tmp_path: Path) -> None:
+    study = tmp_path / "hook.toml"
+    study.write_text(STUDY, "utf-8")
+    picture = tmp_path / "hook.png"
+    result = simkit("check", study, "-o", picture)
+    assert result.exit_code == 1
+    assert "1 of 3 cannot be built" in result.stdout
+    assert "case 2 (as built: lift -12 mm)" not in result.stdout
+    assert "case 2 (lift -12 mm): " in result.stdout
+    assert picture.is_file()
