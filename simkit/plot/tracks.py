@@ -20,6 +20,7 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    plain,
     put_title,
     say_empty,
     tidy,
@@ -35,7 +36,7 @@ if TYPE_CHECKING:
 FloatArray = NDArray[np.float64]
 
 DIP_DASHES = (0, (4, 2))
-LABEL_ROOM = 0.08
+LABEL_ROOM = 0.12
 """Free width to the right of the lines for their names, over the width of the picture."""
 MOST_LISTED = 6
 """Values of faint lines named in the legend; a large sweep has too many."""
@@ -120,7 +121,7 @@ def plot_tracks(
         places = np.asarray(build.dip_frequency_hz, dtype=float) * up.factor
         across_at = np.full(places.size, build.value * across.factor)
         ax.plot(across_at, places, linestyle="none", marker="x", markersize=8, color=INK, zorder=5)
-    _explain(ax, numbers, groups, bool(measured), _blemishes(dataset))
+    _explain(ax, numbers, groups, measured, _blemishes(dataset))
     return ax
 
 
@@ -261,7 +262,11 @@ def _blemishes(dataset: xr.Dataset) -> str:
 
 
 def _explain(
-    ax: Axes, numbers: list[int], groups: list[_Group], measured: bool, blemishes: str
+    ax: Axes,
+    numbers: list[int],
+    groups: list[_Group],
+    measured: Sequence[MeasuredBuild],
+    blemishes: str,
 ) -> None:
     """Legend beside the picture: modes, kinds of line, values of the strong and faint lines."""
     handles = []
@@ -291,9 +296,9 @@ def _explain(
             Line2D([], [], color=INK, alpha=0.35, linewidth=1.0, label=f"faint:\n{listed}")
         )
     if measured:
-        handles.append(
-            Line2D([], [], color=INK, linestyle="none", marker="x", label="measured dip")
-        )
+        names = "\n".join(plain(build.name) for build in measured[:MOST_LISTED])
+        label = f"measured dips:\n{names}"
+        handles.append(Line2D([], [], color=INK, linestyle="none", marker="x", label=label))
     if blemishes:
         handles.append(Line2D([], [], linestyle="none", label=blemishes))
     legend_beside(ax, handles=handles)

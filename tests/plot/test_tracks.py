@@ -10,6 +10,7 @@ from matplotlib.axes import Axes
 from simkit.errors import StoreError
 from simkit.plot import MeasuredBuild, plot_tracks
 from simkit.plot.style import mode_style
+from simkit.store.schema import Status
 
 
 def drawn(ax: Axes, half_waves: int, *, dip: bool, strong: bool) -> list[np.ndarray]:
@@ -43,6 +44,13 @@ def test_dips_are_dashed_and_gaps_stay_gaps(dataset: xr.Dataset) -> None:
     np.testing.assert_array_equal(np.isnan(line[:, 1]), [False, False, True, False, False])
     (even,) = drawn(ax, 2, dip=True, strong=True)
     assert np.isnan(even[:, 1]).all()
+
+
+def test_numbers_of_a_failed_case_are_not_drawn(dataset: xr.Dataset) -> None:
+    status = dataset["status"].copy()
+    status[4] = Status.FAILED
+    (line,) = drawn(plot_tracks(dataset.assign(status=status), "arm"), 1, dip=False, strong=True)
+    np.testing.assert_array_equal(np.isnan(line[:, 1]), [False, True, False, True, False])
 
 
 def test_the_other_swept_value_can_be_the_axis(dataset: xr.Dataset) -> None:
@@ -84,7 +92,7 @@ def test_measured_builds_are_crosses(dataset: xr.Dataset) -> None:
     ax = plot_tracks(dataset, "arm", measured=[MeasuredBuild("build_1", 0.0765, (9e8, 2.8e9))])
     (cross,) = [one for one in ax.get_lines() if one.get_marker() == "x"]
     np.testing.assert_allclose(cross.get_xydata(), [[76.5, 900], [76.5, 2800]])
-    assert "measured dip" in [text.get_text() for text in ax.get_legend().get_texts()]
+    assert "measured dips:\nbuild_1" in [text.get_text() for text in ax.get_legend().get_texts()]
 
 
 def test_legend_names_modes_lines_widths_and_blemishes(dataset: xr.Dataset) -> None:
