@@ -194,6 +194,8 @@ def test_unsolved_cases_are_refused_or_passed_over():
     ):
         compare(dataset, measurement, case=17)
     assert compare(dataset, measurement).case != 3
+    near = compare(dataset, measurement, build={"arm": 0.0761, "width": 0.008})
+    assert near.case == 5
     assert ", doubtful" in compare(dataset, measurement, case=1).as_text()
     dataset["status"][:] = int(Status.TIMED_OUT)
     with pytest.raises(StoreError, match="no case of these results is solved"):

@@ -65,6 +65,13 @@ def test_depth_decides_between_two_equally_near_dips():
     assert pair(modelled, measured).pairs == ((0, 1), (1, 2))
 
 
+def test_another_depth_costs_without_parting_a_pair():
+    like, unlike = (pair(dips(900.0, depth=0.2), dips(900.0, depth=d)) for d in (0.2, 0.5))
+    assert like.pairs == unlike.pairs == ((0, 0),)
+    # Two spreads of |reflection|: half their square.
+    assert unlike.cost - like.cost == pytest.approx(2.0)
+
+
 def test_a_mode_without_modelled_dip_takes_a_left_over_one_only():
     modelled = [
         ModelledDip(900e6, 0.2),
