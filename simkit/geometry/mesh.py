@@ -36,6 +36,10 @@ NODE_FROM_RAD = np.deg2rad(5.0)
 SHORTEST_RADII = 2.06
 """The engine refuses wires of one segment, and meeting wires, of segments under two radii."""
 
+SHORTEST_STRAIGHT_RADII = 1.31
+"""Inside one straight wire shorter segments pass; a narrow case of a sweep may then ask for more
+segments than a wide one would choose. Mode frequencies move by 0.06 % over 1.31 to 1.8 radii."""
+
 TARGET_WIDTHS = 0.4
 TARGET_WAVELENGTHS = 1 / 40
 LONGEST_WAVELENGTHS = 1 / 20
@@ -227,11 +231,9 @@ def _counts(
         lengths = np.array([run.stop_m - run.start_m for run in stretches])
         radius = equivalent_radius_m(line.width_m, antenna.metal.thickness_m)
         single = len(stretches) == 1 and not line.closed
-        shortest = TARGET_WIDTHS * line.width_m
-        if not single:
-            shortest = max(shortest, SHORTEST_RADII * radius)
+        shortest = (SHORTEST_STRAIGHT_RADII if single else SHORTEST_RADII) * radius
         wavelength = light_speed / antenna.frequency.stop_hz
-        target = max(shortest, TARGET_WAVELENGTHS * wavelength)
+        target = max(shortest, TARGET_WIDTHS * line.width_m, TARGET_WAVELENGTHS * wavelength)
         # An off-centre source segment takes about half a segment from the run on either side.
         spare = np.array([0.5 if run.fed and not centred else 0.0 for run in stretches])
         wishes.append(lengths / target - spare)
