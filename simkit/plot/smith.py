@@ -74,7 +74,7 @@ def plot_smith(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | None 
     _show_direction(ax, gamma)
     _mark_ends(ax, np.asarray(chosen["frequency"].values, dtype=float), gamma)
     _mark_dips(ax, chosen, gamma)
-    legend_beside(ax, "dips")
+    legend_beside(ax, "sweep and its dips")
     return ax
 
 
@@ -149,28 +149,19 @@ def _show_direction(ax: Axes, gamma: NDArray[np.complex128]) -> None:
 
 
 def _mark_ends(ax: Axes, frequency_hz: NDArray[np.float64], gamma: NDArray[np.complex128]) -> None:
-    """Open squares at the first and the last frequency, with the frequency beside them."""
+    """Open square at the first frequency, full one at the last."""
     unit = frequency_unit(frequency_hz)
-    for place, hz in ((gamma[0], frequency_hz[0]), (gamma[-1], frequency_hz[-1])):
+    for index, word in ((0, "start"), (-1, "end")):
         ax.plot(
-            place.real,
-            place.imag,
+            gamma[index].real,
+            gamma[index].imag,
             marker="s",
-            fillstyle="none",
+            fillstyle="none" if index == 0 else "full",
             markersize=6,
             color=INK,
             linestyle="none",
             zorder=4,
-        )
-        ax.annotate(
-            f"{hz * unit.factor:g} {unit.text}",
-            (place.real, place.imag),
-            xytext=(7, 7),
-            textcoords="offset points",
-            fontsize=9,
-            color=INK,
-            zorder=5,
-            bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.75, "pad": 1},
+            label=f"{word}: {frequency_hz[index] * unit.factor:g} {unit.text}",
         )
 
 

@@ -130,3 +130,12 @@ def test_smith_arrows_point_to_higher_frequency(dataset: xr.Dataset) -> None:
     for arrow in arrows:
         tail, head = complex(*arrow.get_position()), complex(*arrow.xy)  # type: ignore[attr-defined]
         assert np.argmin(abs(gamma - head)) == np.argmin(abs(gamma - tail)) + 1
+
+
+def test_smith_names_both_ends_of_the_sweep(dataset: xr.Dataset) -> None:
+    ax = plot_smith(dataset, 5)
+    gamma = gamma_of(dataset, 5)
+    for index, label in ((0, "start: 300 MHz"), (-1, "end: 3000 MHz")):
+        np.testing.assert_allclose(
+            line(ax, label).get_xydata(), [[gamma[index].real, gamma[index].imag]], atol=1e-12
+        )
