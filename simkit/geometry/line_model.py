@@ -19,6 +19,7 @@ from simkit.geometry.checks import check_wires
 from simkit.geometry.mesh import (
     FIGURE_FROM_RAD,
     FIGURE_UP_TO_RAD,
+    FINE_WAVELENGTHS,
     LONGEST_WAVELENGTHS,
     MeshPlan,
     Run,
@@ -88,7 +89,12 @@ def build_wires(antenna: Antenna, plan: MeshPlan) -> WireGrid:
         model_gap_m=model_gap_m(source_length, lines[0].width_m),
         study_gap_m=feed.gap_m,
         feed_width_m=lines[0].width_m,
-        relative_error=_relative_error(lines, plan),
+        relative_error=_relative_error(
+            lines,
+            plan,
+            max(wire.segment_m for wire in maker.wires),
+            light_speed / antenna.frequency.stop_hz,
+        ),
         doubts=tuple(doubts),
     )
 
@@ -307,11 +313,11 @@ def _length_doubts(antenna: Antenna, lines: Sequence[Skeleton], wires: Sequence[
     longest = max(wire.segment_m for wire in wires)
     # A wide strip's segments may not be shorter than its width allows; the error is then the
     # width's own, which the next rule covers.
-    if longest > LONGEST_WAVELENGTHS * wavelength * 1.001 and longest > 0.8 * lines[0].width_m:
+    if longest > LONGEST_WAVELENGTHS * wavelength and longest > 0.8 * lines[0].width_m:
         found.append(
-            f"segments of {longest * 1e3:.3g} mm are longer than a twentieth of the wavelength "
-            f"({wavelength * LONGEST_WAVELENGTHS * 1e3:.3g} mm) at the top of the band: lower "
-            "frequency.stop or split the sweep"
+            f"segments of {longest * 1e3:.3g} mm are longer than 1/18 of the wavelength "
+            f"({wavelength * LONGEST_WAVELENGTHS * 1e3:.3g} mm) at the top of the band: mode "
+            "frequencies may be off by more than 0.13 %; lower frequency.stop or split the sweep"
         )
     ratio = max(line.width_m / line.length_m for line in lines)
     if ratio > STRAIGHT_LIMIT:
@@ -322,10 +328,14 @@ def _length_doubts(antenna: Antenna, lines: Sequence[Skeleton], wires: Sequence[
     return found
 
 
-def _relative_error(lines: Sequence[Skeleton], plan: MeshPlan) -> float:
+def _relative_error(
+    lines: Sequence[Skeleton], plan: MeshPlan, longest_m: float, wavelength_m: float
+) -> float:
     """Standard error of mode frequencies, from the evidence behind the rules."""
     ratio = max(line.width_m / line.length_m for line in lines)
     error = 0.0005 if ratio <= 0.08 else 0.001 if ratio <= 0.13 else 0.002
+    if longest_m > FINE_WAVELENGTHS * wavelength_m:
+        error = max(error, 0.0012)
     kinds = {kind for chain in plan.chains for kind in chain.vertices}
     bent = any(np.any(turns(line.points) > 1e-3) for line in lines)
     if "figure" in kinds or any(line.closed for line in lines):

@@ -5,6 +5,7 @@ Theta is measured from +z, phi from +x.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cache
 
@@ -135,31 +136,73 @@ def peak_direction(
     first: tuple[float, float],
     step_deg: float,
 ) -> tuple[float, float, float]:
-    """Refine the direction of the largest intensity from a grid point.
+    """Direction of the largest intensity.
 
     Parameters
     ----------
     radiators, current, frequency_hz
     first : (float, float)
-        theta and phi in degrees of the largest value on a coarse grid.
+        theta and phi in degrees of the largest value on a coarse grid of all directions.
     step_deg : float
-        Spacing of that grid; the search is repeated on ever finer 5 x 5 grids.
+        Spacing of that grid.
 
     Returns
     -------
     theta_deg, phi_deg, intensity_w_per_sr : float
+
+    Notes
+    -----
+    Many patterns have a ring of equal maxima. A maximum in a principal plane (xy, then xz, then yz)
+    that is within 0.01 dB of the largest one is preferred, so that like cases give like directions.
     """
-    theta0, phi0 = first
+
+    def intensity(theta_deg: FloatArray, phi_deg: FloatArray) -> FloatArray:
+        angles = np.deg2rad(theta_deg), np.deg2rad(phi_deg)
+        return intensity_w_per_sr(*far_field(radiators, current, frequency_hz, *angles))
+
+    found = [_principal_peak(intensity, plane) for plane in range(3)]
+    found.append(_refined(intensity, *first, step_deg, (1.0, 1.0)))
+    largest = max(power for _, _, power in found)
+    return next(peak for peak in found if peak[2] >= largest * 10**-0.001)
+
+
+Intensity = Callable[[FloatArray, FloatArray], FloatArray]
+
+
+def _principal_peak(intensity: Intensity, plane: int) -> tuple[float, float, float]:
+    """Largest intensity in the xy (0), xz (1) or yz (2) plane."""
+    step = 3.0
+    if plane == 0:
+        phi = np.arange(0.0, 360.0, step)
+        theta, free = np.full_like(phi, 90.0), (0.0, 1.0)
+    else:
+        half = np.arange(0.0, 180.0 + step, step)
+        theta = np.concatenate([half, half])
+        phi = np.repeat([0.0, 180.0], len(half)) + (90.0 if plane == 2 else 0.0)
+        free = (1.0, 0.0)
+    power = intensity(theta, phi)
+    top = int(np.argmax(power > power.max() * (1 - 1e-6)))
+    return _refined(intensity, float(theta[top]), float(phi[top]), step, free)
+
+
+def _refined(
+    intensity: Intensity,
+    theta_deg: float,
+    phi_deg: float,
+    step_deg: float,
+    free: tuple[float, float],
+) -> tuple[float, float, float]:
+    """Climb on ever finer 5 x 5 grids; `free` says which of the two angles may move."""
     best = 0.0
     while step_deg > 0.05:
         offsets = np.linspace(-step_deg, step_deg, 5)
-        theta, phi = (a.ravel() for a in np.meshgrid(theta0 + offsets, phi0 + offsets))
+        theta, phi = np.meshgrid(theta_deg + free[0] * offsets, phi_deg + free[1] * offsets)
         inside = (theta >= 0) & (theta <= 180)
         theta, phi = theta[inside], phi[inside]
-        field = far_field(radiators, current, frequency_hz, np.deg2rad(theta), np.deg2rad(phi))
-        power = intensity_w_per_sr(*field)
-        # Equal values (a ring of maxima) are settled for the first, so that runs agree.
-        top = int(np.argmax(power > power.max() * (1 - 1e-9)))
-        theta0, phi0, best = float(theta[top]), float(phi[top]), float(power[top])
+        power = intensity(theta, phi)
+        # Equal values are settled for the one that moves least.
+        away = abs(theta - theta_deg) + abs(phi - phi_deg)
+        top = int(np.argmin(np.where(power >= power.max() * (1 - 1e-9), away, np.inf)))
+        theta_deg, phi_deg, best = float(theta[top]), float(phi[top]), float(power[top])
         step_deg /= 2
-    return theta0, phi0 % 360.0, best
+    return theta_deg, phi_deg % 360.0, best
