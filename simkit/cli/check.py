@@ -15,6 +15,7 @@ if TYPE_CHECKING:
 
     from simkit.geometry import WireGrid
     from simkit.study import Study
+    from simkit.study.model import Antenna
 
 
 @click.command()
@@ -46,18 +47,27 @@ def command(study: str, results: str | None, output: str | None) -> None:
     plan = summary.mesh_of(loaded)
     problems = summary.case_problems(loaded, plan)
     click.echo(summary.problems_text(problems, loaded.case_count))
-    nominal = loaded.nominal()
-    wires = build_wires(nominal, plan)
-    click.echo(summary.wires_text(wires, nominal))
-    click.echo(labelled("Drawing", str(draw(loaded, wires, results, output))))
-    click.echo(summary.cost_text(loaded, wires, summary.timed_solve(nominal, plan)))
+    shown, which = summary.shown_antenna(loaded, plan)
+    wires = build_wires(shown, plan)
+    click.echo(labelled("Shown below", which))
+    click.echo(summary.wires_text(wires, shown))
+    title = f"{loaded.title}: {which}"
+    click.echo(labelled("Drawing", str(draw(loaded, shown, wires, title, results, output))))
+    click.echo(summary.cost_text(loaded, wires, summary.timed_solve(shown, plan)))
     if problems:
         raise click.exceptions.Exit(1)
     click.echo(f"\nNext: simkit run {study}")
 
 
-def draw(study: Study, wires: WireGrid, results: str | None, output: str | None) -> Path:
-    """Draw the nominal antenna where the run will put its plots, or into a file of its own.
+def draw(
+    study: Study,
+    antenna: Antenna,
+    wires: WireGrid,
+    title: str,
+    results: str | None,
+    output: str | None,
+) -> Path:
+    """Draw an antenna where the run will put its plots, or into a file of its own.
 
     Raises
     ------
@@ -71,5 +81,5 @@ def draw(study: Study, wires: WireGrid, results: str | None, output: str | None)
     folder = Path(results or "results") / study.path.stem
     if output is None:
         ResultsFolder(folder).check_title(study.title, fresh=False)
-    axes = plot_geometry(study.nominal(), wires, title=study.title)
+    axes = plot_geometry(antenna, wires, title=title)
     return write(cast("Figure", axes.figure), output or folder / "plots" / "geometry.png")

@@ -164,6 +164,33 @@ def case_problems(study: Study, plan: MeshPlan) -> list[str]:
     return found
 
 
+def shown_antenna(study: Study, plan: MeshPlan) -> tuple[Antenna, str]:
+    """Return the nominal antenna, or the first case that can be built if it cannot, and which.
+
+    Raises
+    ------
+    GeometryError
+        If neither the nominal antenna nor any case can be built.
+    """
+    from simkit.geometry import build_wires
+
+    first: GeometryError | None = None
+    candidates = [(study.nominal(), "the nominal antenna")]
+    candidates += [
+        (case.antenna, f"case {case.index}{_in_brackets(study, case.values)}")
+        for case in study.cases()
+        if case.antenna is not None
+    ]
+    for antenna, which in candidates:
+        try:
+            build_wires(antenna, plan)
+        except GeometryError as error:
+            first = first or error
+        else:
+            return antenna, which
+    raise first or GeometryError("the study has no case that can be built")
+
+
 def wires_text(wires: WireGrid, antenna: Antenna) -> str:
     """Return the model, its wires, the error to expect and the limits it exceeds."""
     lengths_mm = [wire.segment_m * 1e3 for wire in wires.wires]
@@ -211,7 +238,7 @@ def timed_solve(antenna: Antenna, plan: MeshPlan) -> CaseResult:
     if outcome.kind is Kind.BUG:
         raise RuntimeError(outcome.trace)
     if outcome.kind is not Kind.VALUE:
-        raise SimkitError(f"the nominal antenna has no solution: {outcome.reason}")
+        raise SimkitError(f"the antenna to be timed has no solution: {outcome.reason}")
     result: CaseResult = outcome.value
     return result
 

@@ -55,3 +55,11 @@ def test_check_names_the_case_that_cannot_be_built(tmp_path: Path) -> None:
     assert "case 2 (as built: lift -12 mm)" not in result.stdout
     assert "case 2 (lift -12 mm): " in result.stdout
     assert picture.is_file()
+
+
+def test_check_shows_a_case_where_the_nominal_antenna_cannot_be_built(tmp_path: Path) -> None:
+    study = tmp_path / "hook.toml"
+    study.write_text(STUDY.replace('lift = "10 mm"', 'lift = "-12 mm"'), "utf-8")
+    result = simkit("check", study, "-o", tmp_path / "hook.png")
+    assert result.exit_code == 1
+    assert "Shown below   case 0 (lift 10 mm)" in result.stdout
