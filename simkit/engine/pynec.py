@@ -26,7 +26,7 @@ Source = Sequence[tuple[int, float]]
 
 @dataclass(frozen=True)
 class SeriesLoad:
-    """Distributed series impedance of every wire, per metre at the solved frequency."""
+    """Distributed series impedance of one wire, per metre at the solved frequency."""
 
     resistance_ohm_per_m: float = 0.0
     inductance_h_per_m: float = 0.0
@@ -53,7 +53,7 @@ def solve_wires(
     frequency_hz: float,
     sources: Sequence[Source],
     *,
-    series: SeriesLoad | None = None,
+    series: Sequence[SeriesLoad] = (),
     lumped: Sequence[LumpedLoad] = (),
     extended_kernel: bool = True,
 ) -> ComplexArray:
@@ -71,8 +71,8 @@ def solve_wires(
     frequency_hz : float
     sources : sequence of Source
         One entry an excitation.
-    series : SeriesLoad, optional
-        Distributed load of all wires.
+    series : sequence of SeriesLoad, optional
+        Distributed load of each wire; empty for none.
     lumped : sequence of LumpedLoad, optional
     extended_kernel : bool
         Current on the wire surface instead of the axis; for straight runs of thick wires.
@@ -121,25 +121,19 @@ def _context(wires: Sequence[Wire], radius_m: float, extended_kernel: bool) -> A
 def _add_loads(
     context: Any,
     wires: Sequence[Wire],
-    series: SeriesLoad | None,
+    series: Sequence[SeriesLoad],
     lumped: Sequence[LumpedLoad],
 ) -> None:
-    if series is not None and (series.resistance_ohm_per_m or series.inductance_h_per_m):
-        for tag, wire in enumerate(wires, start=1):
+    for tag, (wire, load) in enumerate(zip(wires, series, strict=False), start=1):
+        if load.resistance_ohm_per_m or load.inductance_h_per_m:
             context.ld_card(
-                2,
-                tag,
-                1,
-                wire.segments,
-                series.resistance_ohm_per_m,
-                series.inductance_h_per_m,
-                0.0,
+                2, tag, 1, wire.segments, load.resistance_ohm_per_m, load.inductance_h_per_m, 0.0
             )
     places = _places(wires)
-    for load in lumped:
-        tag, segment = places[load.segment]
+    for part in lumped:
+        tag, segment = places[part.segment]
         context.ld_card(
-            0, tag, segment, segment, load.resistance_ohm, load.inductance_h, load.capacitance_f
+            0, tag, segment, segment, part.resistance_ohm, part.inductance_h, part.capacitance_f
         )
 
 

@@ -1,78 +1,77 @@
-"""One mesh topology for a whole study, so that swept quantities see lengths stretch, not jump."""
+"""One model kind and one mesh topology for a whole study.
+
+Swept quantities then see lengths stretch; nothing jumps because a corner gained a figure or a run
+gained a segment.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from dataclasses import asdict, dataclass
-from itertools import pairwise
 from typing import Any, Literal
 
 import numpy as np
 from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
+from simkit.geometry import line_rules
+from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.dressing import dressing_of
+from simkit.geometry.grid_layout import CORNER_FROM_RAD, Cut, Interval, Widen, layout
+from simkit.geometry.grid_model import outer_detour_m
+from simkit.geometry.line_rules import VertexKind, runs
+from simkit.geometry.network import chains_of
 from simkit.geometry.paths import leg_lengths, turns
-from simkit.geometry.skeleton import FeedKind, Skeleton, skeletons
-from simkit.geometry.strips import OPEN_END_WIDTHS, equivalent_radius_m
+from simkit.geometry.rails import RailRule, rail_rule
 from simkit.study.model import Antenna
 
-VertexKind = Literal["smooth", "node", "figure"]
+Kind = Literal["line", "grid"]
+Case = tuple[Antenna, tuple[ChainLine, ...]]
 
-FIGURE_FROM_RAD = np.deg2rad(50.0)
-"""Corners from here up are modelled by a chamfer and a whisker, gentler ones by nothing."""
+GRID_TARGET_WAVELENGTHS = 1 / 28
+GRID_TARGET_MANY_RAILS = 1 / 24
+"""Nine rails leave room for fewer segments along them."""
 
-APEX_FIGURE_FROM_RAD = np.deg2rad(20.0)
-"""A fed corner gets its figure earlier: the source then sits on the chamfer, half on each of its
-two segments. On the legs beside a plain bend the power balance is off by 1 % at 30 degrees, 3 % at
-60, 7 % at 90; on the chamfer it stays within 2 %. The figure agrees with the plain bend to 0.02 %
-in frequency at 20 degrees, so nothing jumps where one takes over from the other."""
+GRID_SINGLE_WAVELENGTHS = 1 / 15
+"""Pieces inside corners and junctions are divided only from here up."""
 
-FIGURE_UP_TO_RAD = np.deg2rad(120.0)
-"""Fold-backs beyond this are outside the rules."""
+GRID_SHORTEST_RADII = 2.1
+GRID_SOURCE_WAVELENGTHS = 1 / 30
 
-NODE_FROM_RAD = np.deg2rad(5.0)
-"""A bend from here up, between legs of some segments, gets a node of its own."""
-
-SHORTEST_RADII = 2.06
-"""The engine refuses wires of one segment, and meeting wires, of segments under two radii."""
-
-SHORTEST_STRAIGHT_RADII = 1.31
-"""Inside one straight wire shorter segments pass; a narrow case of a sweep may then ask for more
-segments than a wide one would choose. Mode frequencies move by 0.06 % over 1.31 to 1.8 radii."""
-
-TARGET_WIDTHS = 0.4
-TARGET_WAVELENGTHS = 1 / 40
-LONGEST_WAVELENGTHS = 1 / 18
-"""Longer segments make a case doubtful. Against flat metal, mode frequencies of a strip of 1/100 of
-its length are off by 0.07 % with segments of 1/23 wavelength, 0.10 % at 1/20, 0.13 % at 1/17; wider
-strips err less."""
-
-FINE_WAVELENGTHS = 1 / 21
-"""Up to here the length of the segments adds nothing to the stated error."""
+TIE_WAVELENGTHS = 0.4
+"""Rails of a strip of changing width are tied at least this often, at the top of the band, so that
+they cannot resonate against each other in the band."""
 
 
 @dataclass(frozen=True)
 class ChainPlan:
-    """How one current path is cut: a kind for each inner vertex, a count for each run."""
+    """How one chain is cut: a kind for each inner vertex; segments and ties of each run."""
 
     vertices: tuple[VertexKind, ...]
     counts: tuple[int, ...]
+    ties: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
 class MeshPlan:
-    """Mesh topology of a study.
+    """Model kind and mesh topology of a study.
 
     Attributes
     ----------
-    feed_kind : {"straight", "apex"}
+    kind : {"line", "grid"}
+    why : str
+        Why this kind, one sentence for the user.
+    rails : int
+        Wires side by side along each strip; 1 in the line model.
     centred : bool
-        The feed sits in the middle of its run in every case: one wire, fed on its middle segment.
+        Line model: the feed sits in the middle of its run in every case, on the middle segment.
     chains : tuple of ChainPlan
         The fed one first.
     """
 
-    feed_kind: FeedKind
+    kind: Kind
+    why: str
+    rails: int
     centred: bool
     chains: tuple[ChainPlan, ...]
 
@@ -81,22 +80,13 @@ class MeshPlan:
         return asdict(self)
 
 
-@dataclass(frozen=True)
-class Run:
-    """A stretch of a chain, between arc lengths, that is cut into equal pieces."""
-
-    start_m: float
-    stop_m: float
-    fed: bool = False
-
-
 def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
-    """Choose corners and segment counts that serve every case of a study.
+    """Choose model kind, corners and segment counts that serve every case of a study.
 
     Parameters
     ----------
     antennas : iterable of Antenna
-        At least one. Cases that cannot be laid out, or whose paths have another number of points,
+        At least one. Cases that cannot be laid out, or whose strips meet otherwise than in most,
         are passed over here and refused when they are built.
 
     Raises
@@ -104,152 +94,234 @@ def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
     GeometryError
         No case can be laid out; the text is that of the first one.
     """
-    several = list(antennas)
-    feed_kind = _common_feed_kind(several)
-    laid_out = _laid_out(several, feed_kind)
-    vertices = [
-        _vertex_kinds([case[1][chain] for case in laid_out]) for chain in range(len(laid_out[0][1]))
-    ]
-    centred = all(_is_centred(lines[0], vertices[0]) for _, lines in laid_out)
-    chains = []
-    for chain, kinds in enumerate(vertices):
-        cases = [(antenna, lines[chain]) for antenna, lines in laid_out]
-        chains.append(ChainPlan(kinds, _counts(cases, kinds, centred and chain == 0)))
-    return MeshPlan(feed_kind, centred, tuple(chains))
+    cases = _laid_out(list(antennas))
+    kind, why = _kind(cases)
+    if kind == "line":
+        return _line_plan(cases, why)
+    return _grid_plan(cases, why)
 
 
-def _common_feed_kind(antennas: Sequence[Antenna]) -> FeedKind:
-    kinds, first_error = set(), None
-    for antenna in antennas:
-        try:
-            feed = skeletons(antenna)[0].feed
-        except GeometryError as error:
-            first_error = first_error or error
-            continue
-        kinds.add(feed.kind if feed else "straight")
-    if not kinds:
-        raise first_error or GeometryError("the study has no case that can be laid out")
-    return "apex" if "apex" in kinds else "straight"
-
-
-def _laid_out(
-    antennas: Sequence[Antenna], feed_kind: FeedKind
-) -> list[tuple[Antenna, tuple[Skeleton, ...]]]:
-    """Cases with their skeletons, those of the commonest shape of path only."""
-    found: dict[tuple[int, ...], list[tuple[Antenna, tuple[Skeleton, ...]]]] = {}
+def _laid_out(antennas: Sequence[Antenna]) -> list[Case]:
+    """Cases with their chains, those of the commonest way of meeting only."""
+    found: dict[tuple[Any, ...], list[Case]] = {}
     error: GeometryError | None = None
     for antenna in antennas:
+        if any(strip.width_m <= 0 for strip in antenna.strips):
+            continue
         try:
-            lines = skeletons(antenna, feed_kind)
+            lines = chains_of(antenna)
         except GeometryError as problem:
             error = error or problem
             continue
-        if all(line.width_m > 0 for line in lines):
-            found.setdefault(signature(lines), []).append((antenna, lines))
+        found.setdefault(signature(lines), []).append((antenna, lines))
     if not found:
         raise error or GeometryError("the study has no case with strips of positive width")
     return max(found.values(), key=len)
 
 
-def signature(lines: Sequence[Skeleton]) -> tuple[int, ...]:
-    """What must agree for two antennas to share a mesh: points of each path."""
-    return tuple(len(line.points) * (-1 if line.closed else 1) for line in lines)
+def signature(lines: Sequence[ChainLine]) -> tuple[Any, ...]:
+    """What must agree for two antennas to share a mesh: vertices, loops, feed and junctions."""
+    return tuple(
+        (
+            len(line.points),
+            line.closed,
+            line.feed.vertex if line.feed else None,
+            line.start,
+            line.end,
+            line.tees,
+        )
+        for line in lines
+    )
 
 
-def _vertex_kinds(lines: Sequence[Skeleton]) -> tuple[VertexKind, ...]:
+def _kind(cases: Sequence[Case]) -> tuple[Kind, str]:
+    wanted = {antenna.model for antenna, _ in cases}
+    reasons = [line_rules.excuse(antenna, lines) for antenna, lines in cases]
+    against = next((reason for reason in reasons if reason), "")
+    if "grid" in wanted:
+        return "grid", "the study asks for the grid model"
+    if "line" in wanted:
+        return "line", "the study asks for the line model"
+    if against:
+        return "grid", f"grid model, since {against}"
+    return "line", "line model: every strip, corner and junction is within its limits"
+
+
+# -- line model ------------------------------------------------------------------------------------
+
+
+def _line_plan(cases: Sequence[Case], why: str) -> MeshPlan:
+    kinds = [
+        _line_vertices([lines[chain] for _, lines in cases]) for chain in range(len(cases[0][1]))
+    ]
+    cases = _with_room_for_the_feed(cases, kinds[0])
+    centred = all(_is_centred(lines[0], kinds[0]) for _, lines in cases)
+    chains = []
+    for chain, vertices in enumerate(kinds):
+        of_chain = [(antenna, lines, lines[chain]) for antenna, lines in cases]
+        chains.append(ChainPlan(vertices, _line_counts(of_chain, vertices, centred and chain == 0)))
+    return MeshPlan("line", why, 1, centred, tuple(chains))
+
+
+def _with_room_for_the_feed(cases: Sequence[Case], kinds: Sequence[VertexKind]) -> list[Case]:
+    """Cases whose feed lies inside a run; the others are refused when they are built."""
+    found = []
+    error: GeometryError | None = None
+    for case in cases:
+        try:
+            runs(case[1][0], kinds, centred=True)
+        except GeometryError as problem:
+            error = error or problem
+            continue
+        found.append(case)
+    if error and not found:
+        raise error
+    return found
+
+
+def _line_vertices(lines: Sequence[ChainLine]) -> tuple[VertexKind, ...]:
     sharpest = np.max([turns(line.points) for line in lines], axis=0, initial=0.0)
-    shortest = np.min([leg_lengths(line.points) / line.width_m for line in lines], axis=0)
+    shortest = np.min([leg_lengths(line.points) / line.widest_m for line in lines], axis=0)
+    branches = {vertex for vertex, _ in lines[0].tees}
     kinds: list[VertexKind] = []
-    for vertex, turn in enumerate(sharpest):
-        roomy = min(shortest[vertex], shortest[vertex + 1]) > 1.5
-        apex = lines[0].feed is not None and lines[0].feed.vertex == vertex + 1
-        if turn >= (APEX_FIGURE_FROM_RAD if apex else FIGURE_FROM_RAD):
-            kinds.append("figure")
-        elif apex:
-            kinds.append("node")
-        else:
-            kinds.append("node" if roomy and turn >= NODE_FROM_RAD else "smooth")
+    for vertex, turn in enumerate(sharpest, start=1):
+        fed = lines[0].feed is not None and lines[0].feed.vertex == vertex
+        roomy = min(shortest[vertex - 1], shortest[vertex]) > 1.5
+        kinds.append(line_rules.vertex_kind(float(turn), fed=fed, roomy=roomy))
+        if vertex in branches:
+            kinds[-1] = "tee"
     return tuple(kinds)
 
 
-def corner_offset_m(turn_rad: float, width_m: float) -> float:
-    """Half diagonal h of a mitred corner: from the vertex to the outer tip, metres."""
-    return float(width_m / (2 * np.cos(turn_rad / 2)))
-
-
-def chamfer_m(turn_rad: float, width_m: float) -> float:
-    """How much of each leg the chamfer of a corner figure takes, metres."""
-    return 1.12 * corner_offset_m(turn_rad, width_m)
-
-
-def whisker_m(turn_rad: float, width_m: float) -> float:
-    """Length of the whisker of a corner figure, metres."""
-    return max(2.6 * corner_offset_m(turn_rad, width_m) - 0.89 * width_m, 0.52 * width_m)
-
-
-def runs(line: Skeleton, kinds: Sequence[VertexKind], *, centred: bool) -> tuple[Run, ...]:
-    """Cut a skeleton at its corners (and at an off-centre feed) into runs.
-
-    An off-centre feed inside a straight leg splits its run in two that meet at the feed point; the
-    source segment is taken out of both when the wires are built.
-    """
-    arcs = np.concatenate([[0.0], np.cumsum(leg_lengths(line.points))])
-    bends = turns(line.points)
-    end = 0.0 if line.closed else OPEN_END_WIDTHS * line.width_m
-    edges = [(end, end)]
-    for vertex, kind in enumerate(kinds, start=1):
-        at = float(arcs[vertex])
-        if kind == "node":
-            edges.append((at, at))
-        elif kind == "figure":
-            cut = chamfer_m(min(bends[vertex - 1], FIGURE_UP_TO_RAD), line.width_m)
-            edges.append((at - cut, at + cut))
-    edges.append((arcs[-1] - end, arcs[-1] - end))
-    found = []
-    for (_, start), (stop, _) in pairwise(edges):
-        feed = line.feed
-        inside = feed is not None and feed.kind == "straight" and start < feed.arc_m < stop
-        if inside and not centred:
-            assert feed is not None
-            found += [Run(start, feed.arc_m, fed=True), Run(feed.arc_m, stop, fed=True)]
-        else:
-            found.append(Run(start, stop, fed=inside))
-    return tuple(found)
-
-
-def _is_centred(line: Skeleton, kinds: Sequence[VertexKind]) -> bool:
-    if line.feed is None or line.feed.kind != "straight":
+def _is_centred(line: ChainLine, kinds: Sequence[VertexKind]) -> bool:
+    if line.feed is None or kinds[line.feed.vertex - 1] != "feed":
         return False
     fed = [run for run in runs(line, kinds, centred=True) if run.fed]
     if len(fed) != 1:
         return False
     middle = (fed[0].start_m + fed[0].stop_m) / 2
-    return abs(middle - line.feed.arc_m) < 1e-9 + 1e-7 * line.length_m
+    return bool(abs(middle - line.arcs_m[line.feed.vertex]) < 1e-9 + 1e-7 * line.length_m)
 
 
-def _counts(
-    cases: Sequence[tuple[Antenna, Skeleton]], kinds: Sequence[VertexKind], centred: bool
+def _line_counts(
+    cases: Sequence[tuple[Antenna, Sequence[ChainLine], ChainLine]],
+    kinds: Sequence[VertexKind],
+    centred: bool,
 ) -> tuple[int, ...]:
     """Segments of each run: the finest wish of any case, as far as the fattest case allows."""
     wishes, limits = [], []
-    for antenna, line in cases:
+    for antenna, lines, line in cases:
         stretches = runs(line, kinds, centred=centred)
+        shortest, target = line_rules.segment_limits_m(antenna, lines, stretches)
         lengths = np.array([run.stop_m - run.start_m for run in stretches])
-        radius = equivalent_radius_m(line.width_m, antenna.metal.thickness_m)
-        single = len(stretches) == 1 and not line.closed
-        shortest = (SHORTEST_STRAIGHT_RADII if single else SHORTEST_RADII) * radius
-        wavelength = light_speed / antenna.frequency.stop_hz
-        target = max(shortest, TARGET_WIDTHS * line.width_m, TARGET_WAVELENGTHS * wavelength)
         # An off-centre source segment takes about half a segment from the run on either side.
         spare = np.array([0.5 if run.fed and not centred else 0.0 for run in stretches])
         wishes.append(lengths / target - spare)
         limits.append(lengths / shortest - spare)
-    # The small allowance keeps a count that is exact on paper from falling to the next lower one.
-    wanted = np.minimum(np.max(wishes, axis=0), np.min(limits, axis=0)) + 1e-6
-    counts = np.maximum(np.floor(wanted).astype(int), 1)
+    counts = _settled(wishes, limits)
     if centred:
-        fed = [run.fed for run in runs(cases[0][1], kinds, centred=True)]
+        fed = [run.fed for run in runs(cases[0][2], kinds, centred=True)]
         counts = np.array(
             [max(n - (n % 2 == 0), 3) if f else n for n, f in zip(counts, fed, strict=True)]
         )
     return tuple(int(n) for n in counts)
+
+
+def _settled(wishes: Sequence[Any], limits: Sequence[Any]) -> Any:
+    # The small allowance keeps a count that is exact on paper from falling to the next lower one.
+    wanted = np.minimum(np.max(wishes, axis=0), np.min(limits, axis=0)) + 1e-6
+    return np.maximum(np.floor(wanted).astype(int), 1)
+
+
+# -- grid model ------------------------------------------------------------------------------------
+
+
+def _grid_plan(cases: Sequence[Case], why: str) -> MeshPlan:
+    rules = [
+        grid_rule(lines, None, dressing_of(antenna).effective_width_m) for antenna, lines in cases
+    ]
+    rails = max(rule.count for rule in rules)
+    corners = [
+        _grid_corners([lines[chain] for _, lines in cases]) for chain in range(len(cases[0][1]))
+    ]
+    laid: list[list[tuple[Antenna, ChainLine, RailRule, list[Interval]]]] = [[] for _ in corners]
+    error: GeometryError | None = None
+    for antenna, lines in cases:
+        widen = dressing_of(antenna).effective_width_m
+        rule = grid_rule(lines, rails, widen)
+        try:
+            rows = [
+                layout(lines, chain, rule, widen, source_m(antenna, rule), corners[chain])
+                for chain in range(len(lines))
+            ]
+        except GeometryError as problem:
+            error = error or problem
+            continue
+        for chain, row in enumerate(rows):
+            laid[chain].append((antenna, lines[chain], rule, row))
+    if not laid[0]:
+        raise error or GeometryError("the study has no case that can be laid out as a grid")
+    chains = []
+    for chain, several in enumerate(laid):
+        kinds: tuple[VertexKind, ...] = tuple(
+            "figure" if corner else "smooth" for corner in corners[chain]
+        )
+        cuts = _grid_cuts(several)
+        chains.append(
+            ChainPlan(kinds, tuple(c.segments for c in cuts), tuple(c.ties for c in cuts))
+        )
+    return MeshPlan("grid", why, rails, False, tuple(chains))
+
+
+def grid_rule(lines: Sequence[ChainLine], rails: int | None, widen: Widen) -> RailRule:
+    """Rails for the widths of one case, with the number the study has settled on."""
+    narrowest = widen(min(line.narrowest_m for line in lines))
+    widest = widen(max(line.widest_m for line in lines))
+    return rail_rule(narrowest, widest, rails)
+
+
+def source_m(antenna: Antenna, rule: RailRule) -> float:
+    """Length of the source segments of a straight feed in the grid model, metres."""
+    wavelength = light_speed / antenna.frequency.stop_hz
+    return float(max(2.2 * rule.radius_m, GRID_SOURCE_WAVELENGTHS * wavelength))
+
+
+def _grid_corners(lines: Sequence[ChainLine]) -> tuple[bool, ...]:
+    sharpest = np.max([turns(line.points) for line in lines], axis=0, initial=0.0)
+    return tuple(bool(turn >= CORNER_FROM_RAD) for turn in sharpest)
+
+
+def _grid_cuts(
+    cases: Sequence[tuple[Antenna, ChainLine, RailRule, list[Interval]]],
+) -> list[Cut]:
+    plain = cases[0][2].constant and not any(
+        interval.single for _, _, _, intervals in cases for interval in intervals
+    )
+    return [
+        _grid_cut([(a, line, rule, rows[number]) for a, line, rule, rows in cases], plain=plain)
+        for number in range(len(cases[0][3]))
+    ]
+
+
+def _grid_cut(
+    cases: Sequence[tuple[Antenna, ChainLine, RailRule, Interval]], *, plain: bool
+) -> Cut:
+    """Segments and ties of one interval; a plain strip (straight, one width) needs no ties."""
+    first = cases[0][3]
+    if first.fed:
+        return Cut(1)
+    wishes, limits, ties = [], [], [0]
+    for antenna, line, rule, interval in cases:
+        wavelength = light_speed / antenna.frequency.stop_hz
+        share = GRID_TARGET_MANY_RAILS if rule.count > 7 else GRID_TARGET_WAVELENGTHS
+        shortest = GRID_SHORTEST_RADII * rule.radius_m
+        length = interval.length_m
+        if interval.single:
+            share = GRID_SINGLE_WAVELENGTHS
+            length += outer_detour_m(line, interval, rule)
+        wishes.append([length / max(share * wavelength, shortest)])
+        limits.append([interval.length_m / shortest])
+        ties.append(int(interval.length_m / (TIE_WAVELENGTHS * wavelength)))
+    segments = int(_settled(wishes, limits)[0])
+    most = 0 if plain or first.single else max(ties)
+    return Cut(max(segments, most + 1), most)

@@ -172,10 +172,8 @@ def gain_at(
     """
     current, radiators = _drive(case, frequency_hz), radiators_of(case)
     field = _field(radiators, current, frequency_hz, theta_deg, phi_deg)
-    lost_w = (
-        0.5
-        * _resistance_ohm_per_m(case, frequency_hz)
-        * np.sum(abs(current) ** 2 * radiators.length_m)
+    lost_w = 0.5 * np.sum(
+        _resistance_ohm_per_m(case, frequency_hz) * abs(current) ** 2 * radiators.length_m
     )
     power_w = radiated_power_w(radiators, current, frequency_hz) + lost_w
     gain = 4 * np.pi * intensity_w_per_sr(*field) / power_w
@@ -230,11 +228,16 @@ def _field(
     return e_theta.reshape(theta.shape), e_phi.reshape(theta.shape)
 
 
-def _resistance_ohm_per_m(case: xr.Dataset, frequency_hz: float) -> float:
-    """Interpolated on logarithmic axes, where the skin effect is all but straight."""
-    samples, stored = _values(case, "sample_frequency"), _values(case, "series_resistance")
+def _resistance_ohm_per_m(case: xr.Dataset, frequency_hz: float) -> FloatArray:
+    """Series resistance of each segment; the metal's part by its skin effect."""
+    samples, stored = _values(case, "sample_frequency"), _values(case, "surface_resistance")
     taken = np.isfinite(samples)
-    if not np.any(stored[taken]):
-        return 0.0
-    known = np.log(stored[taken])
-    return float(np.exp(np.interp(np.log(frequency_hz), np.log(samples[taken]), known)))
+    face = 0.0
+    if np.any(stored[taken]):
+        # On logarithmic axes the skin effect is all but straight.
+        known = np.log(stored[taken])
+        face = float(np.exp(np.interp(np.log(frequency_hz), np.log(samples[taken]), known)))
+    here = _segments(case)
+    conductor = _values(case, "conductor_factor")[here]
+    plastic = _values(case, "loss_inductance")[here]
+    return np.asarray(face * conductor + 2 * np.pi * frequency_hz * plastic)

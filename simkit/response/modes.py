@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from simkit.geometry.wires import Chain, FloatArray, WireGrid
+from simkit.geometry.wires import FloatArray, WireGrid
 from simkit.response.rational import ComplexArray, Sweep
+from simkit.response.strip_current import coherence, current_along_path
 
 LEAST_RESIDUE = 1e-3
 """Poles whose residue is smaller than this part of the largest are noise of the fit."""
@@ -21,6 +21,10 @@ Real ones move by under 0.5 %, the poles with which a fit paints its background 
 
 LEAST_Q = 0.5
 """Below this a pole is overdamped: no resonance and no half waves to count."""
+
+LEAST_COHERENCE = 0.5
+"""Below this a pole's current flows between the rails of a bundle, not along the strip: an artefact
+of the model. Modes of strips have 0.9 and more, those between rails under 0.2."""
 
 QUIET = 0.05
 """Currents under this part of the largest do not count when phase reversals are counted."""
@@ -100,7 +104,8 @@ def find_modes(
     size = np.linalg.norm(residues, axis=1)
     strong = size > LEAST_RESIDUE * size.max()
     poles, residues = poles[strong], residues[strong]
-    return tuple(_mode(complex(poles[k]), residues[k], grid) for k in np.argsort(poles.real))
+    modes = (_mode(complex(poles[k]), residues[k], grid) for k in np.argsort(poles.real))
+    return tuple(mode for mode in modes if coherence(mode.current, grid) > LEAST_COHERENCE)
 
 
 def _surviving(poles: ComplexArray, others: ComplexArray) -> ComplexArray:
@@ -115,27 +120,27 @@ def _mode(pole_hz: complex, residue: ComplexArray, grid: WireGrid) -> NaturalMod
     shape = np.linalg.svd(by_source, full_matrices=False)[2][0]
     shape = shape / shape[int(np.argmax(abs(shape)))]
     feed = sum((volts * by_source[0, segment] for segment, volts in grid.source), 0j)
-    return NaturalMode(pole_hz, half_waves(shape, grid.chains[0]), shape, complex(feed))
+    return NaturalMode(pole_hz, half_waves(shape, grid), shape, complex(feed))
 
 
-def half_waves(current: ComplexArray, chain: Chain) -> int:
-    """Count the half waves of a mode current along a chain.
+def half_waves(current: ComplexArray, grid: WireGrid) -> int:
+    """Count the half waves of a mode current along the tip-to-tip path.
 
     Parameters
     ----------
     current : (S,) complex array
         Segment currents.
-    chain : Chain
+    grid : WireGrid
 
     Returns
     -------
     int
         Phase reversals plus one from tip to tip; phase reversals once round a loop.
     """
-    along = turned_to_real(current[chain.segments] * chain.signs).real
+    along = turned_to_real(current_along_path(current, grid)[1]).real
     loud = along[abs(along) > QUIET * abs(along).max()]
     signs = np.sign(loud)
-    if chain.closed:
+    if grid.path_closed:
         return int(np.sum(signs != np.roll(signs, 1)))
     return int(np.sum(signs[1:] != signs[:-1])) + 1
 
@@ -144,45 +149,3 @@ def turned_to_real(current: ComplexArray) -> ComplexArray:
     """Rotate the common phase so that the sum of squared real parts is largest."""
     turned = current * np.exp(-0.5j * np.angle(np.sum(current**2)))
     return np.asarray(turned, dtype=np.complex128)
-
-
-def current_along_strips(
-    current: ComplexArray, chains: Sequence[Chain], strips: int, positions: FloatArray
-) -> ComplexArray:
-    """Currents at places along each strip, positive from its start to its end.
-
-    Parameters
-    ----------
-    current : (S,) complex array
-    chains : sequence of Chain
-    strips : int
-    positions : (P,) float array
-        0..1 along each strip.
-
-    Returns
-    -------
-    (strips, P) complex array
-        NaN for a strip on no chain. Zero at open ends.
-    """
-    result = np.full((strips, len(positions)), complex(np.nan, np.nan))
-    for chain in chains:
-        arc, value = _knots(current, chain)
-        for span in chain.spans:
-            at = span.start_m + positions * (span.end_m - span.start_m)
-            if chain.closed:
-                at = at % chain.length_m
-            forward = 1 if span.end_m > span.start_m else -1
-            result[span.strip] = forward * np.interp(at, arc, value)
-    return result
-
-
-def _knots(current: ComplexArray, chain: Chain) -> tuple[FloatArray, ComplexArray]:
-    arc, value = chain.arc_m, current[chain.segments] * chain.signs
-    if chain.closed:
-        arc = np.concatenate([[arc[-1] - chain.length_m], arc, [arc[0] + chain.length_m]])
-        return arc, np.concatenate([value[-1:], value, value[:1]])
-    zero = np.zeros(1, dtype=np.complex128)
-    return (
-        np.concatenate([[0.0], arc, [chain.length_m]]),
-        np.concatenate([zero, value, zero]),
-    )

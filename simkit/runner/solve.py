@@ -11,9 +11,9 @@ import numpy as np
 from simkit.engine.pynec import SeriesLoad, engine_version, solve_wires
 from simkit.errors import EngineError, GeometryError
 from simkit.geometry import MeshPlan, WireGrid, build_wires
-from simkit.geometry.conductor import strip_resistance_ohm_per_m
+from simkit.geometry.conductor import face_resistance_ohm
 from simkit.geometry.wires import FloatArray
-from simkit.response.modes import NaturalMode, current_along_strips, find_modes
+from simkit.response.modes import NaturalMode, find_modes
 from simkit.response.ownership import OwnedFeatures, owned_features
 from simkit.response.pattern import (
     Radiators,
@@ -22,12 +22,13 @@ from simkit.response.pattern import (
     radiated_power_w,
 )
 from simkit.response.rational import ComplexArray, Sweep, adaptive_sweep
+from simkit.response.strip_current import current_along_strips, totals_matrix
 from simkit.response.terminals import feed_impedance_ohm
 from simkit.runner.result import CaseResult
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
 from simkit.study.model import Antenna
 
-MODEL_VERSION = "line-1"
+MODEL_VERSION = "strips-2"
 """Raised whenever a change of the model changes its numbers; part of every case's identity."""
 
 BALANCE_TOLERANCE = 0.03
@@ -82,20 +83,41 @@ def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3)
     """
 
     def solve(frequency_hz: float) -> ComplexArray:
-        series = SeriesLoad(_resistance_ohm_per_m(antenna, grid, frequency_hz))
         currents = solve_wires(
-            grid.wires, grid.radius_m, frequency_hz, [grid.source, grid.probe], series=series
+            grid.wires,
+            grid.radius_m,
+            frequency_hz,
+            [grid.source, grid.probe],
+            series=_series_loads(antenna, grid, frequency_hz),
         )
         return np.asarray(currents.ravel(), dtype=np.complex128)
 
     band = antenna.frequency
+    totals = totals_matrix(grid)
+    none = np.zeros_like(totals)
     return adaptive_sweep(
-        solve, band.start_hz, band.stop_hz, tolerance=tolerance, most_samples=SAMPLES
+        solve,
+        band.start_hz,
+        band.stop_hz,
+        tolerance=tolerance,
+        most_samples=SAMPLES,
+        observe=np.block([[totals, none], [none, totals]]),
     )
 
 
-def _resistance_ohm_per_m(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> float:
-    return strip_resistance_ohm_per_m(grid.feed_width_m, antenna.metal, frequency_hz)
+def _series_loads(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> list[SeriesLoad]:
+    resistance = resistance_ohm_per_m(antenna, grid, frequency_hz)
+    return [
+        SeriesLoad(float(ohm), float(henry))
+        for ohm, henry in zip(resistance, grid.series_inductance_h_per_m, strict=True)
+    ]
+
+
+def resistance_ohm_per_m(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> FloatArray:
+    """Series resistance of each wire, conductor and plastic, (W,) ohm per metre."""
+    face = face_resistance_ohm(antenna.metal, frequency_hz)
+    omega = 2 * np.pi * frequency_hz
+    return np.asarray(face * grid.conductor_factor_per_m + omega * grid.loss_inductance_h_per_m)
 
 
 def feed_impedance(
@@ -160,6 +182,9 @@ def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
     radiators = Radiators.of(grid)
     arrays: dict[str, Any] = {
         "length": radiators.length_m,
+        "conductor_factor": grid.per_segment(grid.conductor_factor_per_m),
+        "series_inductance": grid.per_segment(grid.series_inductance_h_per_m),
+        "loss_inductance": grid.per_segment(grid.loss_inductance_h_per_m),
         "strip_index": grid.strip_index,
         "strip_position": grid.strip_position,
         "model_gap": grid.model_gap_m,
@@ -181,16 +206,14 @@ def _sample_arrays(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> dict[str, 
     frequency[:count] = sweep.model.frequency_hz
     weight = np.full(SAMPLES, complex(np.nan, np.nan))
     weight[:count] = sweep.model.weight
-    resistance = np.full(SAMPLES, np.nan)
-    resistance[:count] = [
-        _resistance_ohm_per_m(antenna, grid, float(f)) for f in sweep.model.frequency_hz
-    ]
+    face = np.full(SAMPLES, np.nan)
+    face[:count] = [face_resistance_ohm(antenna.metal, float(f)) for f in sweep.model.frequency_hz]
     currents = np.full((2, SAMPLES, grid.segments), complex(np.nan, np.nan))
     currents[:, :count] = np.moveaxis(sweep.model.values.reshape(count, 2, grid.segments), 1, 0)
     return {
         "sample_frequency": frequency,
         "weight": weight,
-        "series_resistance": resistance,
+        "surface_resistance": face,
         "current": currents[0],
         "probe_current": currents[1],
     }
@@ -262,10 +285,10 @@ def _radiation(
     fed, source = (both[0], grid.source) if driven else (both[1], grid.probe)
     shown = fed if driven else mode.current
     radiators = Radiators.of(grid)
-    resistance = _resistance_ohm_per_m(antenna, grid, frequency_hz)
+    resistance = grid.per_segment(resistance_ohm_per_m(antenna, grid, frequency_hz))
 
     def lost_w(current: ComplexArray) -> float:
-        return float(0.5 * resistance * np.sum(abs(current) ** 2 * radiators.length_m))
+        return float(0.5 * np.sum(resistance * abs(current) ** 2 * radiators.length_m))
 
     input_w = 0.5 * sum(volts * fed[segment].real for segment, volts in source)
     radiated_w = radiated_power_w(radiators, fed, frequency_hz)

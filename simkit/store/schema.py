@@ -120,8 +120,8 @@ VARIABLES: dict[str, Variable] = {
     "weight": Variable(
         ("case", "sample"), "c16", "1", "barycentric weight, 0 for a sample that only verified"
     ),
-    "series_resistance": Variable(
-        ("case", "sample"), "f8", "ohm/m", "resistance of the strip per metre of its length"
+    "surface_resistance": Variable(
+        ("case", "sample"), "f8", "ohm", "resistance per square of one face of the metal"
     ),
     "current": Variable(
         ("case", "sample", "segment"), "c16", "A", "segment currents for 1 V at the feed"
@@ -137,6 +137,9 @@ VARIABLES: dict[str, Variable] = {
     "direction_y": _per_segment("f8", "1", "unit vector along positive current"),
     "direction_z": _per_segment("f8", "1", "unit vector along positive current"),
     "length": _per_segment("f8", "m", "segment length"),
+    "conductor_factor": _per_segment("f8", "1/m", "resistance per metre over surface resistance"),
+    "series_inductance": _per_segment("f8", "H/m", "series inductance due to the carrier"),
+    "loss_inductance": _per_segment("f8", "H/m", "its loss: resistance per metre over omega"),
     "strip_index": _per_segment("i2", "", "strip the segment belongs to, -1 for the feed gap"),
     "strip_position": _per_segment(
         "f8", "1", "place along the strip, 0..1; NaN off the centre line"

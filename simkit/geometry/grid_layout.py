@@ -1,0 +1,337 @@
+"""Where the rows of a grid lie along a chain: ends, corners, feed, steps and junctions."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from itertools import pairwise
+
+import numpy as np
+
+from simkit.errors import GeometryError
+from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.paths import point_at, turns, unit
+from simkit.geometry.rails import RailRule
+from simkit.geometry.wires import FloatArray
+
+CORNER_FROM_RAD = np.deg2rad(25.0)
+"""Corners from here up get rungs on and beside the mitre line."""
+
+CORNER_RUNGS_WIDTHS = (0.2, 0.8)
+JUNCTION_RUNGS_WIDTHS = (0.6, 1.2)
+
+Widen = Callable[[float], float]
+"""Effective width of a drawn width, metres: the carrier's doing; the identity without one."""
+
+
+@dataclass(frozen=True)
+class Station:
+    """A place along a chain where the rails have nodes.
+
+    Attributes
+    ----------
+    arc_m : float
+    width_m : float
+        Drawn width of the strip here.
+    tied : bool
+        The rails are joined across the strip.
+    vertex : int
+        Vertex of the chain whose mitre line the row follows, -1 for a row across one leg.
+    slant : float
+        Tangent of the angle between the row and the normal of the strip, for slanted junctions.
+    """
+
+    arc_m: float
+    width_m: float
+    tied: bool
+    vertex: int = -1
+    slant: float = 0.0
+
+
+@dataclass(frozen=True)
+class Interval:
+    """Between two stations.
+
+    Attributes
+    ----------
+    start, stop : Station
+    fed : float
+        Volts of the source on every rail; a fed interval has one segment.
+    single : bool
+        As few segments as its length allows: inside corners, steps and junctions.
+    """
+
+    start: Station
+    stop: Station
+    fed: float = 0.0
+    single: bool = False
+
+    @property
+    def length_m(self) -> float:
+        """Along the centre line."""
+        return self.stop.arc_m - self.start.arc_m
+
+
+@dataclass(frozen=True)
+class Cut:
+    """How an interval is divided: `segments` in all, `ties` rows of metal across on the way."""
+
+    segments: int
+    ties: int = 0
+
+
+@dataclass(frozen=True)
+class Block:
+    """The rows of a host chain at one junction: where the rails of a branch begin."""
+
+    vertex: int
+    stations: tuple[Station, ...]
+    side: int
+    sine: float
+
+
+def layout(
+    lines: Sequence[ChainLine],
+    index: int,
+    rule: RailRule,
+    widen: Widen,
+    source_m: float,
+    corners: Sequence[bool],
+) -> list[Interval]:
+    """Stations of one chain in order, as the intervals between them.
+
+    Parameters
+    ----------
+    lines : sequence of ChainLine
+    index : int
+        The chain.
+    rule : RailRule
+    widen : callable
+    source_m : float
+        Length of the source segment of a straight feed.
+    corners : sequence of bool
+        For each inner vertex, whether it is a corner with rungs (the same in all cases of a study).
+
+    Raises
+    ------
+    GeometryError
+        A leg is too short for the rows its corners and junctions need.
+    """
+    return _Walk(lines, index, rule, widen, source_m, corners).intervals()
+
+
+class _Walk:
+    """One pass along a chain."""
+
+    def __init__(
+        self,
+        lines: Sequence[ChainLine],
+        index: int,
+        rule: RailRule,
+        widen: Widen,
+        source_m: float,
+        corners: Sequence[bool],
+    ) -> None:
+        self.lines, self.index = lines, index
+        self.line = lines[index]
+        self.rule, self.widen = rule, widen
+        self.source_m = source_m
+        self.corners = corners
+        self.bends = turns(self.line.points)
+        self.found: list[tuple[Station, float, bool]] = []  # station, volts to it, single to it
+
+    def edge_m(self, width_m: float) -> float:
+        return float(self.rule.offsets_m(self.widen(width_m))[-1])
+
+    def width(self, arc_m: float) -> float:
+        return float(self.line.width_at(np.array([arc_m]))[0])
+
+    def put(
+        self,
+        arc_m: float,
+        tied: bool,
+        *,
+        vertex: int = -1,
+        slant: float = 0.0,
+        volts: float = 0.0,
+        single: bool = False,
+        width_m: float | None = None,
+    ) -> None:
+        width = self.width(arc_m) if width_m is None else width_m
+        self.found.append((Station(arc_m, width, tied, vertex, slant), volts, single))
+
+    def intervals(self) -> list[Interval]:
+        self._begin()
+        for vertex in range(1, len(self.line.points) - 1):
+            self._vertex(vertex)
+        self._finish()
+        made = []
+        for (start, _, _), (stop, volts, single) in pairwise(self.found):
+            if stop.arc_m - start.arc_m < 2.05 * self.rule.radius_m:
+                x, y = point_at(self.line.points, stop.arc_m) * 1e3
+                raise GeometryError(
+                    f"near ({x:.4g}, {y:.4g}) mm a leg is too short for its width of "
+                    f"{stop.width_m * 1e3:.4g} mm between corners, junctions, feed or ends: "
+                    "lengthen it, or narrow the strip"
+                )
+            made.append(Interval(start, stop, volts, single))
+        return made
+
+    def _begin(self) -> None:
+        line = self.line
+        if line.closed:
+            self.put(0.0, tied=False, width_m=float(line.width_after_m[0]))
+        elif line.start is None:
+            width = float(line.width_after_m[0])
+            self.put(self.rule.tip_m(width), tied=True)
+        else:
+            away = host_reach_m(self.lines, self.index, "start", self.rule, self.widen)
+            width = float(line.width_after_m[0])
+            self.put(away, tied=True)
+            for rung in JUNCTION_RUNGS_WIDTHS:
+                self.put(away + rung * width, tied=True)
+
+    def _finish(self) -> None:
+        line, length = self.line, self.line.length_m
+        width = float(line.width_before_m[-1])
+        if line.closed:
+            self.put(length, tied=False)
+        elif line.end is None:
+            self.put(length - self.rule.tip_m(width), tied=True)
+        else:
+            away = host_reach_m(self.lines, self.index, "end", self.rule, self.widen)
+            for rung in reversed(JUNCTION_RUNGS_WIDTHS):
+                self.put(length - away - rung * width, tied=True)
+            self.put(length - away, tied=True)
+
+    def _vertex(self, vertex: int) -> None:
+        line = self.line
+        branches = [branch for at, branch in line.tees if at == vertex]
+        fed = line.feed is not None and line.feed.vertex == vertex
+        corner = self.corners[vertex - 1]
+        if branches:
+            if fed or corner or len(branches) > 1:
+                x, y = line.points[vertex] * 1e3
+                raise GeometryError(
+                    f"at ({x:.4g}, {y:.4g}) mm a strip ends on another at its feed, at a corner or "
+                    "together with a third one; move it at least a width away"
+                )
+            self._junction(vertex, branches[0])
+        elif corner:
+            self._corner(vertex, fed=fed)
+        elif fed:
+            self._straight_feed(vertex)
+        elif abs(line.width_before_m[vertex] - line.width_after_m[vertex]) > 1e-9:
+            self._step(vertex)
+        elif self._slope_changes(vertex):
+            self.put(float(line.arcs_m[vertex]), tied=False, vertex=vertex)
+
+    def _slope_changes(self, vertex: int) -> bool:
+        line, arcs = self.line, self.line.arcs_m
+        before = (line.width_before_m[vertex] - line.width_after_m[vertex - 1]) / (
+            arcs[vertex] - arcs[vertex - 1]
+        )
+        after = (line.width_before_m[vertex + 1] - line.width_after_m[vertex]) / (
+            arcs[vertex + 1] - arcs[vertex]
+        )
+        return bool(abs(before - after) > 1e-9)
+
+    def _straight_feed(self, vertex: int) -> None:
+        arc = float(self.line.arcs_m[vertex])
+        self.put(arc - self.source_m / 2, tied=True)
+        self.put(arc + self.source_m / 2, tied=True, volts=1.0)
+
+    def _corner(self, vertex: int, *, fed: bool) -> None:
+        line = self.line
+        arc, turn = float(line.arcs_m[vertex]), float(self.bends[vertex - 1])
+        width = float(line.width_before_m[vertex])
+        reach = self.edge_m(width) * np.tan(turn / 2)
+        near, far = (reach + rung * width for rung in CORNER_RUNGS_WIDTHS)
+        volts = 0.5 if fed else 0.0
+        self.put(arc - far, tied=True)
+        self.put(arc - near, tied=True, single=True)
+        self.put(arc, tied=True, vertex=vertex, volts=volts, single=True, width_m=width)
+        self.put(arc + near, tied=True, volts=volts, single=True)
+        self.put(arc + far, tied=True, single=True)
+
+    def _step(self, vertex: int) -> None:
+        line = self.line
+        arc = float(line.arcs_m[vertex])
+        before, after = float(line.width_before_m[vertex]), float(line.width_after_m[vertex])
+        half = max(1.1 * self.rule.radius_m, 0.05 * min(before, after))
+        self.put(arc - half, tied=before > after, width_m=before)
+        self.put(arc + half, tied=after > before, single=True, width_m=after)
+
+    def _junction(self, vertex: int, branch: int) -> None:
+        line = self.line
+        block = junction_block(self.lines, self.index, vertex, branch, self.rule, self.widen)
+        arc = float(line.arcs_m[vertex])
+        width = self.width(arc)
+        spread = abs(block.stations[0].slant) * self.edge_m(width)
+        first, last = block.stations[0].arc_m, block.stations[-1].arc_m
+        for rung in reversed(JUNCTION_RUNGS_WIDTHS):
+            self.put(first - spread - rung * width, tied=True)
+        self.found += [(station, 0.0, number > 0) for number, station in enumerate(block.stations)]
+        for rung in JUNCTION_RUNGS_WIDTHS:
+            self.put(last + spread + rung * width, tied=True, single=True)
+
+
+def branch_direction(line: ChainLine, end: str) -> FloatArray:
+    """Unit vector from the junction into a branch."""
+    if end == "start":
+        return unit(line.points[1] - line.points[0])
+    return unit(line.points[-2] - line.points[-1])
+
+
+def _joint_end(line: ChainLine, chain: int, vertex: int) -> str:
+    if line.start is not None and (line.start.chain, line.start.vertex) == (chain, vertex):
+        return "start"
+    return "end"
+
+
+def _across(lines: Sequence[ChainLine], host: int, vertex: int, branch: int) -> tuple[float, float]:
+    """Cosine and signed sine of the angle from the host's direction to the branch's."""
+    line, other = lines[host], lines[branch]
+    along = unit(line.points[vertex + 1] - line.points[vertex])
+    outwards = branch_direction(other, _joint_end(other, host, vertex))
+    return float(along @ outwards), float(along[0] * outwards[1] - along[1] * outwards[0])
+
+
+def junction_block(
+    lines: Sequence[ChainLine],
+    host: int,
+    vertex: int,
+    branch: int,
+    rule: RailRule,
+    widen: Widen,
+) -> Block:
+    """Rows of the host at a junction: the branch's rails carried on across it."""
+    cosine, sine = _across(lines, host, vertex, branch)
+    if abs(sine) < np.sin(np.deg2rad(40.0)):
+        x, y = lines[host].points[vertex] * 1e3
+        raise GeometryError(
+            f"at ({x:.4g}, {y:.4g}) mm a strip leaves another at less than 40 degrees; junctions "
+            "are covered from 40 to 90 degrees"
+        )
+    other = lines[branch]
+    at_start = _joint_end(other, host, vertex) == "start"
+    width = float(other.width_after_m[0] if at_start else other.width_before_m[-1])
+    offsets = rule.offsets_m(widen(width))
+    arc = float(lines[host].arcs_m[vertex])
+    host_width = float(lines[host].width_at(np.array([arc]))[0])
+    rows = tuple(
+        Station(arc + float(y) / abs(sine), host_width, True, -1, cosine / sine) for y in offsets
+    )
+    return Block(vertex, rows, int(np.sign(sine)), abs(sine))
+
+
+def host_reach_m(
+    lines: Sequence[ChainLine], branch: int, end: str, rule: RailRule, widen: Widen
+) -> float:
+    """Distance along a branch from the host's centre line to its outer rail."""
+    joint = lines[branch].start if end == "start" else lines[branch].end
+    assert joint is not None  # only called for joined ends
+    host = lines[joint.chain]
+    _, sine = _across(lines, joint.chain, joint.vertex, branch)
+    width = float(host.width_at(np.array([host.arcs_m[joint.vertex]]))[0])
+    return float(rule.offsets_m(widen(width))[-1] / abs(sine))

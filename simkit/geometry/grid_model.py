@@ -1,0 +1,213 @@
+"""The grid model: each strip becomes a bundle of rails, tied where the metal bends, joins or ends.
+
+Rails run all along without rungs, because every rung adds capacitance without lowering inductance;
+metal across the strip is drawn only at ends, corners, junctions and beside the feed, and often
+enough in strips of changing width that the rails cannot resonate against each other in the band.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from itertools import pairwise
+
+import numpy as np
+
+from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.grid_layout import Cut, Interval, Station, Widen, junction_block
+from simkit.geometry.paths import point_at, turn_angle, turns, unit
+from simkit.geometry.rails import RailRule
+from simkit.geometry.wires import Chain, FloatArray, Wire
+
+
+@dataclass
+class Rails:
+    """Collects the wires of a grid with their bookkeeping while chains are drawn."""
+
+    rule: RailRule
+    widen: Widen
+    wires: list[Wire] = field(default_factory=list)
+    wire_width_m: list[float] = field(default_factory=list)
+    wire_share: list[float] = field(default_factory=list)
+    source: list[tuple[int, float]] = field(default_factory=list)
+    segments: int = 0
+    blocks: dict[tuple[int, int], list[FloatArray]] = field(default_factory=dict)
+
+    def add(self, start: FloatArray, end: FloatArray, count: int, width_m: float) -> list[int]:
+        """A wire of `count` segments; `width_m` is the strip's, 0 for metal across the strip."""
+        self.wires.append(
+            Wire(
+                (float(start[0]), float(start[1]), 0.0), (float(end[0]), float(end[1]), 0.0), count
+            )
+        )
+        self.wire_width_m.append(width_m)
+        self.wire_share.append(float(self.rule.count) if width_m else 0.0)
+        first = self.segments
+        self.segments += count
+        return list(range(first, self.segments))
+
+    def draw(
+        self,
+        lines: Sequence[ChainLine],
+        index: int,
+        intervals: Sequence[Interval],
+        cuts: Sequence[Cut],
+    ) -> Chain:
+        """Draw one chain; hosts must be drawn before their branches."""
+        line = lines[index]
+        stations, pieces = _divided(line, intervals, cuts)
+        rows = [
+            self._row(line, station, before, after)
+            for station, before, after in _neighbours(line, stations)
+        ]
+        self._take_over_joints(lines, index, rows)
+        if line.closed:
+            rows[-1] = rows[0]
+        self._remember_blocks(lines, index, stations, rows)
+        made: list[tuple[float, int]] = []
+        for k, (count, volts) in enumerate(pieces):
+            arcs = np.linspace(stations[k].arc_m, stations[k + 1].arc_m, count + 1)
+            middles = (arcs[:-1] + arcs[1:]) / 2
+            width = (stations[k].width_m + stations[k + 1].width_m) / 2
+            for rail in range(self.rule.count):
+                segments = self.add(rows[k][rail], rows[k + 1][rail], count, width)
+                if volts:
+                    self.source.append((segments[0], volts))
+                made += [(float(a), s) for s, a in zip(segments, middles, strict=True)]
+        joined = [line.start is not None, line.end is not None]
+        for k, station in enumerate(stations):
+            last = k == len(stations) - 1
+            shared = (k == 0 and joined[0]) or (last and (joined[1] or line.closed))
+            if station.tied and not shared:
+                for a, b in pairwise(rows[k]):
+                    self.add(a, b, 1, 0.0)
+        made.sort()
+        return Chain(
+            segments=np.array([segment for _, segment in made]),
+            signs=np.ones(len(made), dtype=int),
+            arc_m=np.array([arc for arc, _ in made]),
+            length_m=line.length_m,
+            closed=line.closed,
+            spans=line.spans,
+            open_start=line.start is None,
+            open_end=line.end is None,
+        )
+
+    def _row(
+        self, line: ChainLine, station: Station, before: FloatArray, after: FloatArray
+    ) -> FloatArray:
+        centre = point_at(line.points, station.arc_m)
+        normal_a = np.array([-before[1], before[0]])
+        normal_b = np.array([-after[1], after[0]])
+        across = (normal_a + normal_b) / (1 + normal_a @ normal_b)
+        across = across + station.slant * after
+        offsets = self.rule.offsets_m(self.widen(station.width_m))
+        return np.asarray(centre + offsets[:, None] * across[None])
+
+    def _take_over_joints(
+        self, lines: Sequence[ChainLine], index: int, rows: list[FloatArray]
+    ) -> None:
+        """The first (last) row of a branch is the host's row of nodes on its outer rail."""
+        line = lines[index]
+        for joint, place in ((line.start, 0), (line.end, -1)):
+            if joint is None:
+                continue
+            nodes = self.blocks[joint.chain, joint.vertex]
+            row = np.array(nodes)
+            near = np.linalg.norm(row - rows[place], axis=1).sum()
+            far = np.linalg.norm(row[::-1] - rows[place], axis=1).sum()
+            rows[place] = row if near < far else row[::-1]
+
+    def _remember_blocks(
+        self,
+        lines: Sequence[ChainLine],
+        index: int,
+        stations: Sequence[Station],
+        rows: Sequence[FloatArray],
+    ) -> None:
+        for vertex, branch in lines[index].tees:
+            block = junction_block(lines, index, vertex, branch, self.rule, self.widen)
+            arcs = {round(station.arc_m, 12) for station in block.stations}
+            outer = -1 if block.side > 0 else 0
+            self.blocks[index, vertex] = [
+                row[outer]
+                for station, row in zip(stations, rows, strict=True)
+                if round(station.arc_m, 12) in arcs and station.slant == block.stations[0].slant
+            ]
+
+
+def is_even(line: ChainLine, interval: Interval) -> bool:
+    """True if the interval is straight and of constant width."""
+    arcs = line.arcs_m
+    inside = (arcs > interval.start.arc_m + 1e-12) & (arcs < interval.stop.arc_m - 1e-12)
+    bends = turns(line.points)
+    bent = bool(np.any(bends[inside[1:-1]] > 1e-6)) if len(bends) else False
+    return not bent and abs(interval.start.width_m - interval.stop.width_m) < 1e-9
+
+
+def outer_detour_m(line: ChainLine, interval: Interval, rule: RailRule) -> float:
+    """How much longer than the centre line the outer rail of a corner piece is, metres."""
+    vertex = max(interval.start.vertex, interval.stop.vertex)
+    if vertex < 1:
+        return 0.0
+    turn = float(turns(line.points)[vertex - 1])
+    edge = float(rule.offsets_m(interval.start.width_m)[-1])
+    return float(edge * np.tan(turn / 2))
+
+
+def _divided(
+    line: ChainLine, intervals: Sequence[Interval], cuts: Sequence[Cut]
+) -> tuple[list[Station], list[tuple[int, float]]]:
+    """All stations of a chain and, between them, segments and volts."""
+    stations, pieces = [intervals[0].start], []
+    for interval, cut in zip(intervals, cuts, strict=True):
+        even = is_even(line, interval)
+        parts = cut.ties + 1 if even else cut.segments
+        edges = np.linspace(interval.start.arc_m, interval.stop.arc_m, parts + 1)
+        tied = {round((k + 1) * parts / (cut.ties + 1)) for k in range(cut.ties)}
+        for part in range(1, parts):
+            arc = float(edges[part])
+            width = float(line.width_at(np.array([arc]))[0])
+            stations.append(Station(arc, width, part in tied))
+        stations.append(interval.stop)
+        share = _shares(cut.segments, parts)
+        pieces += [(count, interval.fed) for count in share]
+    return stations, pieces
+
+
+def _shares(total: int, parts: int) -> list[int]:
+    edges = [round(k * total / parts) for k in range(parts + 1)]
+    return [max(b - a, 1) for a, b in pairwise(edges)]
+
+
+def _neighbours(
+    line: ChainLine, stations: Sequence[Station]
+) -> list[tuple[Station, FloatArray, FloatArray]]:
+    """Each station with the unit directions of the path just before and after it.
+
+    On a leg both are the leg's; on a vertex those of its two legs; on a curve of many short legs
+    the chords to the neighbouring stations.
+    """
+    arcs = line.arcs_m
+    found = []
+    for k, station in enumerate(stations):
+        if 0 < station.vertex < len(line.points) - 1:
+            before = unit(line.points[station.vertex] - line.points[station.vertex - 1])
+            after = unit(line.points[station.vertex + 1] - line.points[station.vertex])
+            found.append((station, before, after))
+            continue
+        leg = min(
+            max(int(np.searchsorted(arcs, station.arc_m, side="right")) - 1, 0), len(arcs) - 2
+        )
+        along = unit(line.points[leg + 1] - line.points[leg])
+        before = after = along
+        inner = 0 < k < len(stations) - 1
+        if inner:
+            here = point_at(line.points, station.arc_m)
+            left = unit(here - point_at(line.points, stations[k - 1].arc_m))
+            right = unit(point_at(line.points, stations[k + 1].arc_m) - here)
+            # A chord that runs round a corner says nothing of the leg the station lies on.
+            if max(turn_angle(left, along), turn_angle(right, along)) < np.deg2rad(20.0):
+                before, after = left, right
+        found.append((station, before, after))
+    return found
