@@ -15,7 +15,11 @@ from simkit.geometry.rails import RailRule
 from simkit.geometry.wires import FloatArray
 
 CORNER_FROM_RAD = np.deg2rad(25.0)
-"""Corners from here up get rungs on and beside the mitre line."""
+"""Corners from here up get metal across; gentler bends are followed by the rails alone."""
+
+BLOCK_FROM_RAD = np.deg2rad(40.0)
+"""From here up the rails of both legs run on through the corner and cross in a block of nodes;
+below they turn on the mitre line."""
 
 CORNER_RUNGS_WIDTHS = (0.2, 0.8)
 JUNCTION_RUNGS_WIDTHS = (0.6, 1.2)
@@ -59,12 +63,16 @@ class Interval:
         Volts of the source on every rail; a fed interval has one segment.
     single : bool
         As few segments as its length allows: inside corners, steps and junctions.
+    block : int
+        Vertex of the corner whose block of crossing rails lies in this interval, -1 for none; the
+        source of a fed corner sits half on the pieces before and half on those after the block.
     """
 
     start: Station
     stop: Station
     fed: float = 0.0
     single: bool = False
+    block: int = -1
 
     @property
     def length_m(self) -> float:
@@ -139,6 +147,7 @@ class _Walk:
         self.corners = corners
         self.bends = turns(self.line.points)
         self.found: list[tuple[Station, float, bool]] = []  # station, volts to it, single to it
+        self.blocks: dict[float, int] = {}
 
     def edge_m(self, width_m: float) -> float:
         return float(self.rule.offsets_m(self.widen(width_m))[-1])
@@ -167,6 +176,7 @@ class _Walk:
         self._finish()
         made = []
         for (start, _, _), (stop, volts, single) in pairwise(self.found):
+            block = self.blocks.get(stop.arc_m, -1)
             if stop.arc_m - start.arc_m < 2.05 * self.rule.radius_m:
                 x, y = point_at(self.line.points, stop.arc_m) * 1e3
                 raise GeometryError(
@@ -174,7 +184,7 @@ class _Walk:
                     f"{stop.width_m * 1e3:.4g} mm between corners, junctions, feed or ends: "
                     "lengthen it, or narrow the strip"
                 )
-            made.append(Interval(start, stop, volts, single))
+            made.append(Interval(start, stop, volts, single, block))
         return made
 
     def _begin(self) -> None:
@@ -245,14 +255,31 @@ class _Walk:
         line = self.line
         arc, turn = float(line.arcs_m[vertex]), float(self.bends[vertex - 1])
         width = float(line.width_before_m[vertex])
+        if turn >= BLOCK_FROM_RAD:
+            self._corner_block(vertex, fed=fed)
+            return
         reach = self.edge_m(width) * np.tan(turn / 2)
         near, far = (reach + rung * width for rung in CORNER_RUNGS_WIDTHS)
         volts = 0.5 if fed else 0.0
         self.put(arc - far, tied=True)
-        self.put(arc - near, tied=True, single=True)
+        self.put(arc - near, tied=True)
         self.put(arc, tied=True, vertex=vertex, volts=volts, single=True, width_m=width)
         self.put(arc + near, tied=True, volts=volts, single=True)
-        self.put(arc + far, tied=True, single=True)
+        self.put(arc + far, tied=True)
+
+    def _corner_block(self, vertex: int, *, fed: bool) -> None:
+        line = self.line
+        arc = float(line.arcs_m[vertex])
+        _, before, after = corner_block(line, vertex, self.rule, self.widen)
+        volts = 0.5 if fed else 0.0
+        near, far = CORNER_RUNGS_WIDTHS
+        widths = float(line.width_before_m[vertex]), float(line.width_after_m[vertex])
+        first, last = arc + float(before.min()), arc + float(after.max())
+        self.put(first - far * widths[0], tied=True)
+        self.put(first - near * widths[0], tied=True)
+        self.blocks[last + near * widths[1]] = vertex
+        self.put(last + near * widths[1], tied=True, volts=volts, single=True)
+        self.put(last + far * widths[1], tied=True)
 
     def _step(self, vertex: int) -> None:
         line = self.line
@@ -273,7 +300,32 @@ class _Walk:
             self.put(first - spread - rung * width, tied=True)
         self.found += [(station, 0.0, number > 0) for number, station in enumerate(block.stations)]
         for rung in JUNCTION_RUNGS_WIDTHS:
-            self.put(last + spread + rung * width, tied=True, single=True)
+            self.put(last + spread + rung * width, tied=True)
+
+
+def corner_block(
+    line: ChainLine, vertex: int, rule: RailRule, widen: Widen
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Crossings of the rails of the two legs at a corner.
+
+    Returns
+    -------
+    nodes : (N, N, 2) float array
+        Crossing of rail j of the leg before with rail k of the leg after, metres.
+    before, after : (N, N) float arrays
+        Place of each crossing along either leg from the vertex, metres.
+    """
+    at = line.points[vertex]
+    along_a = unit(at - line.points[vertex - 1])
+    along_b = unit(line.points[vertex + 1] - at)
+    normal_a = np.array([-along_a[1], along_a[0]])
+    normal_b = np.array([-along_b[1], along_b[0]])
+    offset_a = rule.offsets_m(widen(float(line.width_before_m[vertex])))
+    offset_b = rule.offsets_m(widen(float(line.width_after_m[vertex])))
+    apart = offset_b[None, :, None] * normal_b - offset_a[:, None, None] * normal_a
+    places = np.linalg.solve(np.column_stack([along_a, -along_b]), apart[..., None])[..., 0]
+    nodes = at + offset_a[:, None, None] * normal_a + places[..., :1] * along_a
+    return nodes, places[..., 0], places[..., 1]
 
 
 def branch_direction(line: ChainLine, end: str) -> FloatArray:

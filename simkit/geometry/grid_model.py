@@ -14,7 +14,14 @@ from itertools import pairwise
 import numpy as np
 
 from simkit.geometry.chain_line import ChainLine
-from simkit.geometry.grid_layout import Cut, Interval, Station, Widen, junction_block
+from simkit.geometry.grid_layout import (
+    Cut,
+    Interval,
+    Station,
+    Widen,
+    corner_block,
+    junction_block,
+)
 from simkit.geometry.paths import point_at, turn_angle, turns, unit
 from simkit.geometry.rails import RailRule
 from simkit.geometry.wires import Chain, FloatArray, Wire
@@ -65,15 +72,12 @@ class Rails:
             rows[-1] = rows[0]
         self._remember_blocks(lines, index, stations, rows)
         made: list[tuple[float, int]] = []
-        for k, (count, volts) in enumerate(pieces):
-            arcs = np.linspace(stations[k].arc_m, stations[k + 1].arc_m, count + 1)
-            middles = (arcs[:-1] + arcs[1:]) / 2
-            width = (stations[k].width_m + stations[k + 1].width_m) / 2
-            for rail in range(self.rule.count):
-                segments = self.add(rows[k][rail], rows[k + 1][rail], count, width)
-                if volts:
-                    self.source.append((segments[0], volts))
-                made += [(float(a), s) for s, a in zip(segments, middles, strict=True)]
+        for k, piece in enumerate(pieces):
+            pair = stations[k], stations[k + 1]
+            if piece.block >= 0:
+                made += self._block(line, piece, pair, rows[k], rows[k + 1])
+            else:
+                made += self._straight(piece, pair, rows[k], rows[k + 1])
         joined = [line.start is not None, line.end is not None]
         for k, station in enumerate(stations):
             last = k == len(stations) - 1
@@ -92,6 +96,54 @@ class Rails:
             open_start=line.start is None,
             open_end=line.end is None,
         )
+
+    def _straight(
+        self,
+        piece: Piece,
+        ends: tuple[Station, Station],
+        first: FloatArray,
+        last: FloatArray,
+    ) -> list[tuple[float, int]]:
+        """Rails from row to row; returns arc lengths and segments."""
+        arcs = np.linspace(ends[0].arc_m, ends[1].arc_m, piece.segments + 1)
+        middles = (arcs[:-1] + arcs[1:]) / 2
+        width = (ends[0].width_m + ends[1].width_m) / 2
+        made = []
+        for a, b in zip(first, last, strict=True):
+            segments = self.add(a, b, piece.segments, width)
+            if piece.volts:
+                self.source.append((segments[0], piece.volts))
+            made += [(float(arc), s) for arc, s in zip(middles, segments, strict=True)]
+        return made
+
+    def _block(
+        self,
+        line: ChainLine,
+        piece: Piece,
+        ends: tuple[Station, Station],
+        first: FloatArray,
+        last: FloatArray,
+    ) -> list[tuple[float, int]]:
+        """A corner whose rails cross; the pieces that lead into it and out of it are returned."""
+        nodes, before, after = corner_block(line, piece.block, self.rule, self.widen)
+        corner = float(line.arcs_m[piece.block])
+        widths = float(line.width_before_m[piece.block]), float(line.width_after_m[piece.block])
+        made = []
+        for j in range(self.rule.count):
+            order = np.argsort(before[j])
+            segment = self.add(first[j], nodes[j, order[0]], 1, widths[0])[0]
+            made.append((float(ends[0].arc_m + corner + before.min()) / 2, segment))
+            for k, following in pairwise(order):
+                self.add(nodes[j, k], nodes[j, following], 1, widths[0])
+        for k in range(self.rule.count):
+            order = np.argsort(after[:, k])
+            for j, following in pairwise(order):
+                self.add(nodes[j, k], nodes[following, k], 1, widths[1])
+            segment = self.add(nodes[order[-1], k], last[k], 1, widths[1])[0]
+            made.append((float(ends[1].arc_m + corner + after.max()) / 2, segment))
+        if piece.volts:
+            self.source += [(segment, piece.volts) for _, segment in made]
+        return made
 
     def _row(
         self, line: ChainLine, station: Station, before: FloatArray, after: FloatArray
@@ -155,12 +207,26 @@ def outer_detour_m(line: ChainLine, interval: Interval, rule: RailRule) -> float
     return float(edge * np.tan(turn / 2))
 
 
+@dataclass(frozen=True)
+class Piece:
+    """Between two neighbouring rows: segments of each rail, volts of the source, corner block."""
+
+    segments: int
+    volts: float = 0.0
+    block: int = -1
+
+
 def _divided(
     line: ChainLine, intervals: Sequence[Interval], cuts: Sequence[Cut]
-) -> tuple[list[Station], list[tuple[int, float]]]:
-    """All stations of a chain and, between them, segments and volts."""
-    stations, pieces = [intervals[0].start], []
+) -> tuple[list[Station], list[Piece]]:
+    """All stations of a chain and what lies between them."""
+    stations: list[Station] = [intervals[0].start]
+    pieces: list[Piece] = []
     for interval, cut in zip(intervals, cuts, strict=True):
+        if interval.block >= 0:
+            stations.append(interval.stop)
+            pieces.append(Piece(1, interval.fed, interval.block))
+            continue
         even = is_even(line, interval)
         parts = cut.ties + 1 if even else cut.segments
         edges = np.linspace(interval.start.arc_m, interval.stop.arc_m, parts + 1)
@@ -170,8 +236,7 @@ def _divided(
             width = float(line.width_at(np.array([arc]))[0])
             stations.append(Station(arc, width, part in tied))
         stations.append(interval.stop)
-        share = _shares(cut.segments, parts)
-        pieces += [(count, interval.fed) for count in share]
+        pieces += [Piece(count, interval.fed) for count in _shares(cut.segments, parts)]
     return stations, pieces
 
 

@@ -35,8 +35,9 @@ FIGURE_UP_TO_RAD = np.deg2rad(120.0)
 NODE_FROM_RAD = np.deg2rad(5.0)
 """A bend from here up, between legs of some segments, gets a node of its own."""
 
-SHORTEST_RADII = 2.06
-"""The engine refuses wires of one segment, and meeting wires, of segments under two radii."""
+SHORTEST_RADII = 2.12
+"""The engine refuses wires of one segment, and meeting wires, of segments under two radii; the rest
+is room for runs that give part of their length to the source segment."""
 
 SHORTEST_STRAIGHT_RADII = 1.31
 """Inside one straight wire shorter segments pass; a narrow case of a sweep may then ask for more

@@ -32,7 +32,7 @@ GRID_TARGET_WAVELENGTHS = 1 / 28
 GRID_TARGET_MANY_RAILS = 1 / 24
 """Nine rails leave room for fewer segments along them."""
 
-GRID_SINGLE_WAVELENGTHS = 1 / 15
+GRID_SINGLE_WAVELENGTHS = 1 / 6.5
 """Pieces inside corners and junctions are divided only from here up."""
 
 GRID_SHORTEST_RADII = 2.1
@@ -308,7 +308,7 @@ def _grid_cut(
 ) -> Cut:
     """Segments and ties of one interval; a plain strip (straight, one width) needs no ties."""
     first = cases[0][3]
-    if first.fed:
+    if first.fed or first.block >= 0:
         return Cut(1)
     wishes, limits, ties = [], [], [0]
     for antenna, line, rule, interval in cases:
@@ -319,9 +319,9 @@ def _grid_cut(
         if interval.single:
             share = GRID_SINGLE_WAVELENGTHS
             length += outer_detour_m(line, interval, rule)
-        wishes.append([length / max(share * wavelength, shortest)])
-        limits.append([interval.length_m / shortest])
+        wishes.append(length / max(share * wavelength, shortest))
+        limits.append(interval.length_m / shortest)
         ties.append(int(interval.length_m / (TIE_WAVELENGTHS * wavelength)))
-    segments = int(_settled(wishes, limits)[0])
+    segments = max(min(round(max(wishes)), int(min(limits) + 1e-6)), 1)
     most = 0 if plain or first.single else max(ties)
     return Cut(max(segments, most + 1), most)
