@@ -265,7 +265,14 @@ def _probe(chain: Chain, source: tuple[tuple[int, float], ...]) -> tuple[tuple[i
     places = abs(chain.arc_m - PROBE_PLACE * chain.length_m)
     taken = {segment for segment, _ in source}
     order = [int(chain.segments[k]) for k in np.argsort(places, kind="stable")]
-    return ((next(segment for segment in order if segment not in taken), 1.0),)
+    free = [segment for segment in order if segment not in taken]
+    if not free:
+        raise GeometryError(
+            f"a fed path of {chain.length_m * 1e3:.4g} mm has {len(order)} segments, all taken by "
+            "the source: it is too short for its width and band; lengthen or narrow the strip, or "
+            "raise frequency.stop"
+        )
+    return ((free[0], 1.0),)
 
 
 def _strip_places(chains: Sequence[Chain], segments: int) -> tuple[np.ndarray, FloatArray]:

@@ -11,7 +11,7 @@ import numpy as np
 from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
-from simkit.geometry.paths import leg_lengths, turns
+from simkit.geometry.paths import leg_lengths, point_at, turns
 from simkit.geometry.skeleton import FeedKind, Skeleton, skeletons
 from simkit.geometry.strips import OPEN_END_WIDTHS, equivalent_radius_m
 from simkit.study.model import Antenna
@@ -110,6 +110,7 @@ def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
     vertices = [
         _vertex_kinds([case[1][chain] for case in laid_out]) for chain in range(len(laid_out[0][1]))
     ]
+    laid_out = _with_room_for_the_feed(laid_out, vertices[0])
     centred = all(_is_centred(lines[0], vertices[0]) for _, lines in laid_out)
     chains = []
     for chain, kinds in enumerate(vertices):
@@ -149,6 +150,24 @@ def _laid_out(
     if not found:
         raise error or GeometryError("the study has no case with strips of positive width")
     return max(found.values(), key=len)
+
+
+def _with_room_for_the_feed(
+    laid_out: list[tuple[Antenna, tuple[Skeleton, ...]]], kinds: Sequence[VertexKind]
+) -> list[tuple[Antenna, tuple[Skeleton, ...]]]:
+    """Cases whose feed lies inside a run; the others are refused when they are built."""
+    found = []
+    error: GeometryError | None = None
+    for case in laid_out:
+        try:
+            runs(case[1][0], kinds, centred=True)
+        except GeometryError as problem:
+            error = error or problem
+            continue
+        found.append(case)
+    if error and not found:
+        raise error
+    return found
 
 
 def signature(lines: Sequence[Skeleton]) -> tuple[int, ...]:
@@ -192,6 +211,11 @@ def runs(line: Skeleton, kinds: Sequence[VertexKind], *, centred: bool) -> tuple
 
     An off-centre feed inside a straight leg splits its run in two that meet at the feed point; the
     source segment is taken out of both when the wires are built.
+
+    Raises
+    ------
+    GeometryError
+        A feed inside a leg lies in no run, but within a corner or beyond the wire's end.
     """
     arcs = np.concatenate([[0.0], np.cumsum(leg_lengths(line.points))])
     bends = turns(line.points)
@@ -214,6 +238,13 @@ def runs(line: Skeleton, kinds: Sequence[VertexKind], *, centred: bool) -> tuple
             found += [Run(start, feed.arc_m, fed=True), Run(feed.arc_m, stop, fed=True)]
         else:
             found.append(Run(start, stop, fed=inside))
+    if line.feed is not None and line.feed.kind == "straight" and not any(r.fed for r in found):
+        x, y = point_at(line.points, line.feed.arc_m) * 1e3
+        raise GeometryError(
+            f"feed: the source at ({x:.4g}, {y:.4g}) mm sits in a corner or at the very end of a "
+            f"strip {line.width_m * 1e3:.4g} mm wide, where it cannot be modelled; move it about a "
+            "width away, or put it exactly on the corner of an open path"
+        )
     return tuple(found)
 
 

@@ -165,6 +165,21 @@ def test_no_room_between_feed_and_corner(make):
     refused(make.ell(60, 6, 90, 54), r"near .* the straight part of a leg is .*move the feed")
 
 
+@pytest.mark.parametrize("at", [57.0, 62.0])
+def test_a_feed_within_a_corner(make, at):
+    refused(make.ell(60, 6, 90, at), r"the source at \(.*\) mm sits in a corner .* move it about")
+
+
+@pytest.mark.parametrize("at", [0.2, 149.8])
+def test_a_feed_at_the_very_end(make, at):
+    refused(make.straight(150, 6, at), r"at the very end of a strip 6 mm wide")
+
+
+def test_a_path_all_of_whose_segments_the_source_takes(make):
+    antenna = make.vee(9, 4, 10, band=make.band(0.1e9, 0.4e9, 11))
+    refused(antenna, r"a fed path of 18 mm has 2 segments, all taken by the source")
+
+
 def test_short_legs_are_doubted(make):
     grid = grid_of(make.strip([(0, 0), (60, 0), (60, 14)], 6, 20))
     assert any("a leg of 14 mm at the corner (60, 0) mm is shorter" in d for d in grid.doubts)
@@ -278,21 +293,21 @@ def test_mirrored_antenna_is_the_mirrored_grid(make):
 
 @st.composite
 def polylines(draw):
-    """Any path of two to six points in a sheet of 120 mm, with a cut somewhere or on a point."""
-    place = st.floats(0.0, 0.12, allow_nan=False)
-    points = draw(st.lists(st.tuples(place, place), min_size=2, max_size=6))
-    width = draw(st.floats(0.3e-3, 20e-3))
-    legs = np.linalg.norm(np.diff(np.array(points), axis=0), axis=1)
-    at = draw(st.floats(0.0, 1.0)) * float(legs.sum())
-    if len(points) > 2 and draw(st.booleans()):
-        at = float(legs[0])
-    stop = draw(st.floats(0.4e9, 4e9))
+    """Two to six legs of any length and turn, with a cut somewhere or on the first corner."""
+    legs = np.array(draw(st.lists(st.floats(0.002, 0.08), min_size=1, max_size=6)))
+    turns = draw(st.lists(st.floats(-2.2, 2.2), min_size=len(legs), max_size=len(legs)))
+    heading = np.cumsum(turns)
+    steps = legs[:, None] * np.stack([np.cos(heading), np.sin(heading)], axis=1)
+    points = np.vstack([np.zeros(2), np.cumsum(steps, axis=0)])
+    width = draw(st.floats(0.3e-3, 15e-3))
+    on_corner = len(legs) > 1 and draw(st.booleans())
+    at = float(legs[0]) if on_corner else draw(st.floats(0.02, 0.98)) * float(legs.sum())
     return Antenna(
-        strips=(Strip("any", tuple(points), width),),
+        strips=(Strip("any", tuple((float(x), float(y)) for x, y in points), width),),
         metal=Metal("perfect", None, 0.0),
         feed=CutFeed("any", at, width / 10),
         reference_ohm=50.0,
-        frequency=FrequencyBand(0.3e9, stop, 11),
+        frequency=FrequencyBand(0.3e9, draw(st.floats(0.4e9, 4e9)), 11),
     )
 
 
