@@ -17,6 +17,7 @@ from concurrent.futures import CancelledError
 from concurrent.futures import TimeoutError as FutureTimeoutError
 from dataclasses import dataclass
 from enum import Enum
+from multiprocessing import resource_tracker
 from types import TracebackType
 from typing import Any
 
@@ -80,6 +81,7 @@ class Child:
         self.function = function
         self.abandoned = False
         self._pool: Any = None
+        self._future: Any = None
 
     def __enter__(self) -> Child:
         return self
@@ -117,6 +119,9 @@ class Child:
     def close(self) -> None:
         """End the child; the next call starts another."""
         pool, self._pool = self._pool, None
+        future, self._future = self._future, None
+        if future is not None:
+            future.cancel()  # stopping the pool alone leaves whoever waits for it waiting
         if pool is not None:
             with contextlib.suppress(RuntimeError):  # a broken pool has nothing left to stop
                 pool.stop()
@@ -150,8 +155,9 @@ class Child:
 
         # The pool's own time limits follow the wall clock, which can be set; waiting is monotonic.
         try:
-            future = self._pool.schedule(task, args=args)
+            future = self._future = self._pool.schedule(task, args=args)
             outcome: Outcome = future.result(timeout=limit_s)
+            self._future = None
         except FutureTimeoutError:
             self.close()
             return Outcome(Kind.TIMED_OUT, reason=f"stopped at the time limit of {limit_s:.3g} s")
@@ -173,6 +179,8 @@ def interrupts_held() -> Iterator[None]:
 
     The terminal sends it to every process of the run, but only the leading one may act on it.
     """
+    # Starting it later would let interrupts through again in the thread that does so.
+    resource_tracker.ensure_running()
     before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
     try:
         yield
