@@ -25,6 +25,9 @@ from sheet_moments import Sheet
 from simkit.response.rational import adaptive_sweep
 
 FILE = Path(__file__).parent / "shapes.toml"
+LEAST_Q = 2.0
+"""Below this a mode is a broad background, mostly of currents across wide strips: not numbered."""
+
 HEAD = """\
 # Natural modes of zero-thickness, perfectly conducting flat strips in free space, by the surface
 # method of moments of sheet_moments.py (see make_shapes.py for how this file is made).
@@ -35,7 +38,8 @@ HEAD = """\
 # another strip's centre line is a branch; its length counts from that centre line. Arcs are true
 # arcs; path then holds points on them. Frequencies in GHz (real part of the pole), Q = Re/(2 Im).
 # half_waves: of current along the first strip, tip to tip (round a loop: sign changes), -1 if not
-# told. by_level: mesh level, unknowns, frequency, Q before extrapolation.
+# told (Q below 2: no resonance of a strip's length). by_level: mesh level, unknowns, frequency, Q
+# before extrapolation.
 """
 
 
@@ -215,6 +219,8 @@ def _guess(track: list[list[float]], level: int) -> complex:
 def _row(track: list[list[float]], half_wave_count: int) -> dict[str, Any]:
     fine = [(int(r[0]), _pole(r)) for r in track if r[0] > 1]
     best, error, q_error = extrapolate(fine)
+    if best.real < 2 * LEAST_Q * best.imag:
+        half_wave_count = -1
     return {
         "half_waves": half_wave_count,
         "frequency_ghz": round(best.real / 1e9, 5),
@@ -237,19 +243,29 @@ def read() -> dict[str, dict[str, Any]]:
 
 def write(entries: dict[str, dict[str, Any]]) -> None:
     """Write all entries in the order of WANTED."""
-    lines = [HEAD]
-    for name in [s["name"] for s in WANTED if s["name"] in entries]:
-        entry = entries[name]
-        lines.append("[[shape]]")
-        lines += [f"{k} = {_text(v)}" for k, v in entry.items() if k not in ("strip", "mode")]
-        for part in ("strip", "mode"):
-            for row in entry[part]:
-                lines.append(f"[[shape.{part}]]")
+    ordered = [entries[s["name"]] for s in WANTED if s["name"] in entries]
+    write_table(FILE, HEAD, "shape", ordered)
+
+
+def write_table(file: Path, head: str, name: str, entries: list[dict[str, Any]]) -> None:
+    """Write an array of tables; values that are lists of tables become arrays of sub-tables."""
+    lines = [head]
+    for entry in entries:
+        parts = {k: v for k, v in entry.items() if isinstance(v, list) and _are_tables(v)}
+        lines.append(f"[[{name}]]")
+        lines += [f"{k} = {_text(v)}" for k, v in entry.items() if k not in parts]
+        for part, rows in parts.items():
+            for row in rows:
+                lines.append(f"[[{name}.{part}]]")
                 lines += [f"{k} = {_text(v)}" for k, v in row.items()]
         lines.append("")
-    part = FILE.with_suffix(".part")
-    part.write_text("\n".join(lines))
-    part.replace(FILE)
+    part_file = file.with_suffix(".part")
+    part_file.write_text("\n".join(lines))
+    part_file.replace(file)
+
+
+def _are_tables(rows: list[Any]) -> bool:
+    return bool(rows) and all(isinstance(row, dict) for row in rows)
 
 
 def _text(value: object) -> str:
