@@ -19,12 +19,14 @@ from typing import Any
 
 import numpy as np
 from shapes_wanted import WANTED
-from sheet_meshes import Mesh, arc, path, profile, rectangles
+from sheet_meshes import Mesh, arc, path, profile, rectangles, slanted_tee
 from sheet_moments import Sheet
 
 from simkit.response.rational import adaptive_sweep
 
 FILE = Path(__file__).parent / "shapes.toml"
+Box = tuple[float, float, float, float]
+
 LEAST_Q = 2.0
 """Below this a mode is a broad background, mostly of currents across wide strips: not numbered."""
 
@@ -61,13 +63,22 @@ def mesh_of(shape: dict[str, Any], level: int) -> Mesh:
     if "radius" in first:
         return arc(first["radius"] * 1e-3, first["length"] * 1e-3, widths[0], level)
     if shape["mesh"] == "boxes":
-        return rectangles([box for strip in strips for box in boxes_of(strip)], level)
+        boxes = boxes_of(first)
+        for strip in strips[1:]:
+            boxes += _through(boxes_of(strip), np.array(strip["path"][0]) * 1e-3, boxes)
+        return rectangles(boxes, level)
     if shape["mesh"] == "profile":
         return profile(list(line[:, 0]), widths, level)
+    if shape["mesh"] == "slant":
+        branch = np.array(strips[1]["path"]) * 1e-3
+        leg = branch[1] - branch[0]
+        angle = float(np.arctan2(leg[1], leg[0]))
+        away = (branch[0, 0], float(np.hypot(*leg)), strips[1]["width"] * 1e-3, angle)
+        return slanted_tee((line[0, 0], line[-1, 0], widths[0]), away, level)
     return path([tuple(p) for p in line], widths, level)
 
 
-def boxes_of(strip: dict[str, Any]) -> list[tuple[float, float, float, float]]:
+def boxes_of(strip: dict[str, Any]) -> list[Box]:
     """Upright rectangles of a strip whose legs run along the axes; full squares at its corners."""
     line = np.array(strip["path"]) * 1e-3
     closed = bool(np.allclose(line[0], line[-1]))
@@ -87,6 +98,19 @@ def boxes_of(strip: dict[str, Any]) -> list[tuple[float, float, float, float]]:
         side = half * np.array([abs(along[1]), abs(along[0])])
         low, high = np.minimum(a, b) - side, np.maximum(a, b) + side
         result.append((low[0], low[1], high[0], high[1]))
+    return result
+
+
+def _through(boxes: list[Box], start: np.ndarray, others: list[Box]) -> list[Box]:
+    """Let a branch that starts inside another box run to its far side: no mesh line within."""
+    result = list(boxes)
+    for x0, y0, x1, y1 in others:
+        if x0 < start[0] < x1 and y0 < start[1] < y1:
+            a, b, c, d = result[0]
+            if min(abs(b - start[1]), abs(d - start[1])) < 1e-9:
+                result[0] = (a, min(b, y0), c, d) if abs(b - start[1]) < 1e-9 else (a, b, c, y1)
+            else:
+                result[0] = (min(a, x0), b, c, d) if abs(a - start[0]) < 1e-9 else (a, b, x1, d)
     return result
 
 

@@ -140,7 +140,21 @@ JUNCTIONS = [
     _boxes("cross-off-w6", (BAR, 6), ([(20, -25), (20, 35)], 6)),
 ]
 
-# The bend as a mitred path, against the same bend in boxes: a check of the meshers.
-CHECKS = [_path("check-bend-90-75-75-w8", [75, 75], [90], 8)]
 
-WANTED: list[dict[str, Any]] = [*TABLE, *BENDS, *TAPERS, *STRAIGHT, *LOOPS, *JUNCTIONS]
+def _slant(angle: float, meets: float, width: float, branch_width: float) -> dict[str, Any]:
+    end = [meets + round(40 * cos(radians(angle)), 6), round(40 * sin(radians(angle)), 6)]
+    bar = {"path": [[-60.0, 0.0], [60.0, 0.0]], "width": width}
+    branch = {"path": [[meets, 0.0], end], "width": branch_width}
+    more = "" if branch_width == width else f"-branch-{branch_width:g}"
+    return _shape(f"slant-{angle:g}-w{width:g}{more}", "slant", [bar, branch])
+
+
+OPEN = [
+    _slant(60, 15.0, 6, 6),
+    _slant(45, 10.0, 6, 6),
+    _slant(60, 15.0, 6, 3),
+    _shape("vee-120-taper-4-12", "path", [{"path": _turned([75, 75], [60]), "width": [12, 4, 12]}]),
+    _shape("vee-90-taper-10-4", "path", [{"path": _turned([75, 75], [90]), "width": [4, 10, 4]}]),
+]
+
+WANTED: list[dict[str, Any]] = [*TABLE, *BENDS, *TAPERS, *STRAIGHT, *LOOPS, *JUNCTIONS, *OPEN]

@@ -120,6 +120,70 @@ def _between(length: float, width: float, level: int) -> np.ndarray:
 # Paths ------------------------------------------------------------------------------------------
 
 
+def _sheared(
+    t: np.ndarray, widths: tuple[float, float], offset: np.ndarray, slopes: tuple[float, float]
+) -> tuple[np.ndarray, np.ndarray]:
+    """Places along (I, J) and across a leg whose end cuts are slanted.
+
+    Parameters
+    ----------
+    t : (I,) float array
+        Ascending places on the centre line, from 0.
+    widths : two floats
+        At both ends; the edges stay straight.
+    offset : (J,) float array
+        Rows from -1/2 to 1/2 of the width.
+    slopes : two floats
+        How far each end lies before a cut across, per distance to the left of the centre line.
+    """
+    length = t[-1]
+    shear = np.zeros(len(t))
+    for slope, distance in zip(slopes, (t, length - t), strict=True):
+        reach = min(max(1.5 * max(widths) * abs(slope), 1e-12), length)
+        shear -= slope * np.clip(1 - distance / reach, 0, None)
+    place = np.broadcast_to(t[:, None], (len(t), len(offset)))
+    for _ in range(20 if widths[0] != widths[1] else 2):  # the width where the node ends up
+        y = offset * (widths[0] + (widths[1] - widths[0]) * place / length)
+        place = t[:, None] + y * shear[:, None]
+    return place, y
+
+
+def slanted_tee(
+    bar: tuple[float, float, float],
+    branch: tuple[float, float, float, float],
+    level: int,
+    *,
+    rows: int = 2,
+) -> Mesh:
+    """Bar along x with a branch that leaves it at an angle.
+
+    Parameters
+    ----------
+    bar : x0, x1, width
+    branch : x where its centre line meets that of the bar, length from there, width, angle
+        Angle to the x axis in radians, between 0 and pi.
+    """
+    start, stop, width = bar
+    meets, length, branch_width, angle = branch
+    offset = across(level, rows) / 2
+    middle = meets + width / 2 / np.tan(angle)
+    root = middle - branch_width / np.sin(angle) * offset[::-1]
+    root = root if root[0] < root[-1] else root[::-1]
+    left = start + graded(root[0] - start, width, level, start=True, stop=True)
+    right = root[-1] + graded(stop - root[-1], width, level, start=True, stop=True)
+    x = np.concatenate([left[:-1], root, right[1:]])
+    y = width * offset
+    cells = [_quads(np.stack(np.meshgrid(x, y, indexing="ij"), axis=2))]
+    away = length - width / 2 / np.sin(angle)
+    t = graded(away, branch_width, level, start=True, stop=True)
+    place, side = _sheared(t, (branch_width, branch_width), offset, (1 / np.tan(angle), 0.0))
+    along = np.array([np.cos(angle), np.sin(angle)])
+    normal = np.array([-along[1], along[0]])
+    origin = np.array([middle, width / 2])
+    cells.append(_quads(origin + place[..., None] * along + side[..., None] * normal))
+    return triangulate(np.concatenate(cells))
+
+
 def path(
     corners: Sequence[tuple[float, float]],
     widths: Sequence[float],
@@ -152,7 +216,6 @@ def path(
     turn = np.arctan2(cross, np.sum(along * after, axis=1))
     if not closed:
         turn[-1] = 0.0
-    offset = across(level, rows) / 2
     cells = []
     for k, length in enumerate(lengths):
         before = turn[k - 1] if (k > 0 or closed) else 0.0
@@ -163,16 +226,11 @@ def path(
         }
         middle_width = (widths[k] + widths[k + 1]) / 2
         t = graded(length, middle_width, level, coarsest=coarsest, **marks)
-        width = np.interp(t, [0, length], [widths[k], widths[k + 1]])
-        y = width[:, None] * offset
-        shear = np.zeros((2, len(t)))
-        for row, angle, distance in ((0, before, t), (1, turn[k], length - t)):
-            reach = min(max(1.5 * middle_width * np.tan(abs(angle) / 2), 1e-12), length)
-            shear[row] = np.tan(angle / 2) * np.clip(1 - distance / reach, 0, None)
-        place = t[:, None] + y * (shear[0] - shear[1])[:, None]
+        turned = (-np.tan(before / 2), np.tan(turn[k] / 2))
+        ends = (widths[k], widths[k + 1])
+        place, y = _sheared(t, ends, across(level, rows) / 2, turned)
         normal = np.array([-along[k, 1], along[k, 0]])
-        grid = line[k] + place[..., None] * along[k] + y[..., None] * normal
-        cells.append(_quads(grid))
+        cells.append(_quads(line[k] + place[..., None] * along[k] + y[..., None] * normal))
     return triangulate(np.concatenate(cells))
 
 
