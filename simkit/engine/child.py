@@ -21,6 +21,8 @@ from multiprocessing import resource_tracker
 from types import TracebackType
 from typing import Any
 
+from simkit.errors import SimkitError
+
 START_LIMIT_S = 120.0
 """Longest time a child may take to start and import what it is to run."""
 
@@ -107,6 +109,11 @@ class Child:
         Returns
         -------
         Outcome
+
+        Raises
+        ------
+        SimkitError
+            The process cannot be started at all.
         """
         if self.abandoned:
             return Outcome(Kind.CRASHED, reason="the engine's process was ended on request")
@@ -143,8 +150,13 @@ class Child:
         if started.kind is Kind.VALUE and not self.abandoned:
             return started
         self.close()
-        reason = f"the engine's process cannot be started: {started.reason}"
-        return Outcome(Kind.BUG, reason=reason, trace=started.trace)
+        if started.kind is Kind.BUG or self.abandoned:
+            return started
+        raise SimkitError(
+            f"the engine's process cannot be started: {started.reason}. A script that calls "
+            'simkit, it must do so under  if __name__ == "__main__":  because that process imports '
+            "the script too; if not, is there memory left?"
+        )
 
     def _ask(
         self, task: Callable[..., Outcome], args: tuple[object, ...], limit_s: float
@@ -164,9 +176,9 @@ class Child:
         except ProcessExpired as error:
             self.close()
             return Outcome(Kind.CRASHED, reason=_crash_text(error.exitcode))
-        except (BrokenProcessPool, CancelledError) as error:
+        except (BrokenProcessPool, CancelledError):
             self.close()
-            return Outcome(Kind.CRASHED, reason=f"the engine's process ended ({error})")
+            return Outcome(Kind.CRASHED, reason="the engine's process ended")
         except BaseException:
             self.close()
             raise
@@ -231,8 +243,6 @@ def _call_guarded(function: str, args: tuple[object, ...], limit_s: float) -> Ou
 
 def _guarded(action: Callable[[], object]) -> Outcome:
     """Turn exceptions into text here: their classes need not survive pickling."""
-    from simkit.errors import SimkitError
-
     try:
         return Outcome(Kind.VALUE, value=action())
     except SimkitError as error:
