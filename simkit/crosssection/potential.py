@@ -8,8 +8,8 @@ panels than a thick one. Because the fluxes are exact, the bound charge of every
 body sums to zero without a further condition, whatever the panels; the free charge on the
 conductors is then all the charge there is.
 
-The potential of a line charge in the plane has no zero at infinity. Potentials here refer to a
-distance of 1 m; use differences between arrangements of equal conductors, where that drops out.
+The potential of a line charge in the plane has no zero at infinity; -ln(r / r0) needs a distance r0
+to refer to. Use differences between arrangements of equal conductors, where that drops out.
 """
 
 from __future__ import annotations
@@ -42,11 +42,15 @@ class Solution:
         on one of the K conductors.
     capacitance : (K, K) complex
         Free charge per metre of length on conductor l for 1 V on conductor k, over 2 pi eps0.
+    reference_m : float
+        Distance at which a line charge has the potential 0 in the two above: twice the extent, so
+        that every capacitance is positive.
     """
 
     panels: Panels
     charge: ComplexArray
     capacitance: ComplexArray
+    reference_m: float
 
     @property
     def coefficients(self) -> ComplexArray:
@@ -54,12 +58,15 @@ class Solution:
 
         Refers to a distance of 1 m: an isolated round wire of radius a in air has -ln(a / 1 m).
         """
-        return np.asarray(np.linalg.inv(self.capacitance))
+        return np.asarray(np.linalg.inv(self.capacitance) - np.log(self.reference_m))
 
     @property
     def common(self) -> complex:
-        """Potential per unit line charge, times 2 pi eps0, with all conductors at one potential."""
-        return complex(1 / self.capacitance.sum())
+        """Potential per unit line charge, times 2 pi eps0, with all conductors at one potential.
+
+        Refers to a distance of 1 m, as `coefficients`.
+        """
+        return complex(1 / self.capacitance.sum() - np.log(self.reference_m))
 
     def potential(self, points_m: ArrayLike, voltages: ArrayLike) -> ComplexArray:
         """Return the potential at `points_m` with the conductors at `voltages`.
@@ -69,7 +76,7 @@ class Solution:
         points_m : array_like of complex, any shape
             x + j z, metres.
         voltages : array_like of complex, (K,)
-            Volt.
+            Volt, against the zero of `reference_m`.
 
         Returns
         -------
@@ -78,7 +85,8 @@ class Solution:
         """
         points = np.asarray(points_m, dtype=np.complex128)
         charge = np.asarray(voltages) @ self.charge
-        values = -mean_log(points.ravel(), self.panels) @ charge
+        distances = mean_log(points.ravel(), self.panels) - np.log(self.reference_m)
+        values = -distances @ charge
         return np.asarray(values.reshape(points.shape), dtype=np.complex128)
 
 
@@ -102,11 +110,10 @@ def solve(panels: Panels) -> Solution:
     count = panels.conductors
     if count == 0:
         raise ValueError("a cross-section needs a conductor: none of the panels lies on one")
-    # In units of twice the extent every conductor has a capacity below 1, and the potential of
-    # a line charge cannot vanish: at capacity 1 the equations would be singular.
-    unit_m = 2 * panels.extent_m
-    logs, fluxes = pair_integrals(panels.start_m / unit_m, panels.end_m / unit_m)
-    logs = logs + np.log(unit_m)
+    # With twice the extent as unit, every conductor has a potential of its own charge above 0. With
+    # 1 m it would be 0 for a conductor of just that capacity, and the equations singular.
+    reference_m = 2 * panels.extent_m
+    logs, fluxes = pair_integrals(panels.start_m / reference_m, panels.end_m / reference_m)
     metal = panels.conductor != INTERFACE
     mean = (panels.left + panels.right) / 2
     contrast = (panels.left - panels.right) / mean
@@ -116,7 +123,8 @@ def solve(panels: Panels) -> Solution:
     held = panels.conductor[:, np.newaxis] == np.arange(count)
     charge = _charges(np.where(metal[:, np.newaxis], -logs, jump), held)
     free = mean * (charge @ jump.T)
-    return Solution(panels, charge.astype(np.complex128), np.asarray(free @ held, np.complex128))
+    capacitance = np.asarray(free @ held, np.complex128)
+    return Solution(panels, charge.astype(np.complex128), capacitance, reference_m)
 
 
 def _charges(matrix: NDArray[np.inexact], held: NDArray[np.bool_]) -> NDArray[np.inexact]:
