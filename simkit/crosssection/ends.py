@@ -15,13 +15,13 @@ The sum is the correction:
     taken off each open end, on top of 0.075 w = table + 0.026 w (exp(kappa) - 1)
 
 Evidence. Strip 150 x 6 mm, carrier 3 mm thick, permittivity 2.7, ends flush, against a time-domain
-solution of the fields good to 0.2 %. Errors of the first and the third mode without correction, with
-the table alone, and with the sum: sides flush -0.24, -0.18; -0.21, -0.15; -0.15, -0.09 %. With an
-overhang of 3 mm only the error of the uncorrected model is known, -0.45 %; it becomes -0.07 with
-the table alone and +0.03 % with the sum, on average of the two modes. That is one strip and two
-carriers: ends with plastic beyond them have not been held against a field solution, and the share
-with exp(kappa) rests on dimensions (the engine's end knows no other length than its radius and its
-segments), which the two cases favour but cannot settle.
+solution of the fields good to 0.2 %. Errors of the first and the third mode without correction,
+with the table alone, and with the sum: sides flush -0.24, -0.18; -0.21, -0.15; -0.15, -0.09 %. With
+an overhang of 3 mm only the error of the uncorrected model is known, -0.45 %; it becomes -0.07 with
+the table alone and +0.06 % with the sum. That is one strip and two carriers: ends with plastic
+beyond them have not been held against a field solution, and the share with exp(kappa) rests on
+dimensions (the engine's end knows no other length than its radius and its segments), which the two
+cases allow but do not prove.
 """
 
 from __future__ import annotations
