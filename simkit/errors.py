@@ -51,7 +51,7 @@ class GeometryError(SimkitError, ValueError):
 
 
 class EngineError(SimkitError, RuntimeError):
-    """The field engine failed or returned something that is not a solution; the case is `failed`."""
+    """The field engine failed or returned what is no solution; the case is `failed`."""
 
 
 class StoreError(SimkitError, OSError):

@@ -46,7 +46,7 @@ def command(study: str, results: str | None, output: str | None) -> None:
     click.echo(summary.study_text(loaded))
     plan = summary.mesh_of(loaded)
     problems = summary.case_problems(loaded, plan)
-    click.echo(summary.problems_text(problems, loaded.case_count))
+    click.echo(summary.problems_text(problems, len(summary.looked_at(loaded)), loaded.case_count))
     shown, which = summary.shown_antenna(loaded, plan)
     wires = build_wires(shown, plan)
     click.echo(labelled("Shown below", which))

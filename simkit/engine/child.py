@@ -17,8 +17,11 @@ from concurrent.futures import CancelledError
 from concurrent.futures import TimeoutError as FutureTimeoutError
 from dataclasses import dataclass
 from enum import Enum
+from multiprocessing import resource_tracker
 from types import TracebackType
 from typing import Any
+
+from simkit.errors import SimkitError
 
 START_LIMIT_S = 120.0
 """Longest time a child may take to start and import what it is to run."""
@@ -80,6 +83,7 @@ class Child:
         self.function = function
         self.abandoned = False
         self._pool: Any = None
+        self._future: Any = None
 
     def __enter__(self) -> Child:
         return self
@@ -105,6 +109,11 @@ class Child:
         Returns
         -------
         Outcome
+
+        Raises
+        ------
+        SimkitError
+            The process cannot be started at all.
         """
         if self.abandoned:
             return Outcome(Kind.CRASHED, reason="the engine's process was ended on request")
@@ -117,6 +126,9 @@ class Child:
     def close(self) -> None:
         """End the child; the next call starts another."""
         pool, self._pool = self._pool, None
+        future, self._future = self._future, None
+        if future is not None:
+            future.cancel()  # stopping the pool alone leaves whoever waits for it waiting
         if pool is not None:
             with contextlib.suppress(RuntimeError):  # a broken pool has nothing left to stop
                 pool.stop()
@@ -138,8 +150,13 @@ class Child:
         if started.kind is Kind.VALUE and not self.abandoned:
             return started
         self.close()
-        reason = f"the engine's process cannot be started: {started.reason}"
-        return Outcome(Kind.BUG, reason=reason, trace=started.trace)
+        if started.kind is Kind.BUG or self.abandoned:
+            return started
+        raise SimkitError(
+            f"the engine's process cannot be started: {started.reason}. A script that calls "
+            'simkit, it must do so under  if __name__ == "__main__":  because that process imports '
+            "the script too; if not, is there memory left?"
+        )
 
     def _ask(
         self, task: Callable[..., Outcome], args: tuple[object, ...], limit_s: float
@@ -150,17 +167,18 @@ class Child:
 
         # The pool's own time limits follow the wall clock, which can be set; waiting is monotonic.
         try:
-            future = self._pool.schedule(task, args=args)
+            future = self._future = self._pool.schedule(task, args=args)
             outcome: Outcome = future.result(timeout=limit_s)
+            self._future = None
         except FutureTimeoutError:
             self.close()
             return Outcome(Kind.TIMED_OUT, reason=f"stopped at the time limit of {limit_s:.3g} s")
         except ProcessExpired as error:
             self.close()
             return Outcome(Kind.CRASHED, reason=_crash_text(error.exitcode))
-        except (BrokenProcessPool, CancelledError) as error:
+        except (BrokenProcessPool, CancelledError):
             self.close()
-            return Outcome(Kind.CRASHED, reason=f"the engine's process ended ({error})")
+            return Outcome(Kind.CRASHED, reason="the engine's process ended")
         except BaseException:
             self.close()
             raise
@@ -173,6 +191,8 @@ def interrupts_held() -> Iterator[None]:
 
     The terminal sends it to every process of the run, but only the leading one may act on it.
     """
+    # Starting it later would let interrupts through again in the thread that does so.
+    resource_tracker.ensure_running()
     before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
     try:
         yield
@@ -223,8 +243,6 @@ def _call_guarded(function: str, args: tuple[object, ...], limit_s: float) -> Ou
 
 def _guarded(action: Callable[[], object]) -> Outcome:
     """Turn exceptions into text here: their classes need not survive pickling."""
-    from simkit.errors import SimkitError
-
     try:
         return Outcome(Kind.VALUE, value=action())
     except SimkitError as error:

@@ -39,7 +39,8 @@ def check_wires(wires: Sequence[Wire], radius_m: float, top_frequency_hz: float)
 
 
 def _place(point: Sequence[float] | FloatArray) -> str:
-    return "(" + ", ".join(f"{value * 1e3:.4g}" for value in point) + ") mm"
+    # To a nanometre, so that rounding does not show as 3.5e-15.
+    return "(" + ", ".join(f"{round(value * 1e3, 6) + 0.0:.4g}" for value in point) + ") mm"
 
 
 def _check_wire(wire: Wire, radius_m: float, wavelength_m: float) -> None:
@@ -137,8 +138,9 @@ def _raise_near(
     if not distance.size or distance.min() > limit_m:
         return
     at = points[np.unravel_index(int(np.argmin(distance)), distance.shape)[0]]
+    nearest_mm = round(float(distance.min()) * 1e3, 6)
     raise GeometryError(
-        f"wires {verb} {distance.min() * 1e3:.3g} mm of each other at {_place(at)}; with a radius "
+        f"wires {verb} {nearest_mm:.3g} mm of each other at {_place(at)}; with a radius "
         f"of {radius_m * 1e3:.4g} mm at least {limit_m * 1e3:.4g} mm is needed: move the strips "
         "apart or open the bend"
     )

@@ -241,12 +241,20 @@ class _Search:
             self.projection = observe.T @ self.projection
         self.sketch = [value @ self.projection for value in self.values]
         self.candidates = np.linspace(start_hz, stop_hz, CANDIDATES)
+        self.fits: dict[tuple[int, ...], ComplexArray] = {}
         # The first comparison is with the fit that lacks the sample in the middle of the band.
         middle = FIRST_SAMPLES // 2
         self.before = self._on_candidates([k for k in range(FIRST_SAMPLES) if k != middle])
         self.now = self._on_candidates(range(FIRST_SAMPLES))
 
     def _weights(self, chosen: list[int] | range) -> ComplexArray:
+        """Weights of the fit through some samples, each set fitted once, in the order asked for."""
+        key = tuple(sorted(chosen))
+        if key not in self.fits:
+            self.fits[key] = self._fitted(key)
+        return self.fits[key][np.searchsorted(key, chosen)]
+
+    def _fitted(self, chosen: tuple[int, ...]) -> ComplexArray:
         frequency = np.array([self.frequencies[k] for k in chosen]) / self.stop_hz
         sketch = np.array([self.sketch[k] for k in chosen])
         fit_tolerance = max(self.tolerance / 10, FIT_TOLERANCE_FLOOR)

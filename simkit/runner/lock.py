@@ -56,7 +56,11 @@ class RunLock:
                 f"{holder.get('host', '?')}, since {holder.get('since', '?')}. "
                 "Wait for it or end it; `simkit status` shows how far it is"
             ) from error
-        self._shut_out_stragglers()
+        try:
+            self._shut_out_stragglers()
+        except BaseException:
+            os.close(self._handle)
+            raise
 
     def stop_starting(self) -> None:
         """Tell the workers to begin no further block; those begun are still written."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import queue
 import shutil
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -24,6 +25,17 @@ _WITHOUT_SOLUTION = (Status.REFUSED, Status.FAILED, Status.TIMED_OUT)
 class Loop:
     """Hands blocks to a pool, a bounded number at a time, and follows their receipts.
 
+    Parameters
+    ----------
+    progress : Progress
+    log : EventLog
+    stop : StopRequest
+        Looked at several times a second.
+    on_stop : callable
+        Called once when a stop is asked for.
+    folder : Path
+        Results folder, whose disk must not run full.
+
     Attributes
     ----------
     solved, reused : int
@@ -32,10 +44,18 @@ class Loop:
         Why not all blocks were done.
     """
 
-    def __init__(self, progress: Progress, log: EventLog, stop: StopRequest, folder: Path) -> None:
+    def __init__(
+        self,
+        progress: Progress,
+        log: EventLog,
+        stop: StopRequest,
+        on_stop: Callable[[], None],
+        folder: Path,
+    ) -> None:
         self._progress = progress
         self._log = log
         self._stop = stop
+        self._on_stop = on_stop
         self._folder = folder
         self._done = 0
         self._failed = 0
@@ -43,6 +63,7 @@ class Loop:
         self.solved = 0
         self.reused = 0
         self.stopped = ""
+        self._disk_low = False
 
     def run(self, pool: Pool, jobs: list[BlockJob], done: int) -> None:
         """Do all blocks, or those in hand when the run is asked to stop.
@@ -65,9 +86,12 @@ class Loop:
                 self._collect(flying)
         except KeyboardInterrupt:
             self.stopped = "at once, on request"
+            return
+        if self._disk_low:
+            raise self._full(f"less than {LEAST_FREE_BYTES / 1e6:.0f} MB of disk are free")
 
-    def _launch(self, pool: Pool, pending: Any, flying: set[Any]) -> None:
-        while len(flying) < PER_WORKER * pool.size and self._may_go_on():
+    def _launch(self, pool: Pool, pending: Iterator[BlockJob], flying: set[Any]) -> None:
+        while self._may_go_on() and len(flying) < PER_WORKER * pool.size:
             job = next(pending, None)
             if job is None:
                 return
@@ -76,11 +100,12 @@ class Loop:
             future.add_done_callback(self._ended.put)
 
     def _may_go_on(self) -> bool:
-        if self._stop.asked:
+        if self._stop.asked and not self.stopped:
             self.stopped = "on request"
+            self._on_stop()
         elif shutil.disk_usage(self._folder).free < LEAST_FREE_BYTES:
-            raise self._full("less than 50 MB of disk are free")
-        return not self.stopped
+            self._disk_low = True
+        return not (self.stopped or self._disk_low)
 
     def _collect(self, flying: set[Any]) -> None:
         try:

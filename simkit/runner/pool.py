@@ -6,7 +6,7 @@ import logging
 import os
 import shutil
 import tempfile
-from concurrent.futures import ThreadPoolExecutor
+from concurrent.futures import Future, ThreadPoolExecutor
 from typing import Any, Protocol
 
 from simkit.engine.child import interrupts_held
@@ -34,7 +34,7 @@ class InlinePool:
     Parameters
     ----------
     worker : Worker
-        Closed together with the pool.
+        Left as it is when the pool is closed, unless it has a block in hand.
     """
 
     size = 1
@@ -42,14 +42,17 @@ class InlinePool:
     def __init__(self, worker: Worker) -> None:
         self._worker = worker
         self._threads = ThreadPoolExecutor(1, thread_name_prefix="simkit-block")
+        self._last: Future[Receipt] | None = None
 
     def submit(self, job: BlockJob) -> Any:
         """Start a block some time soon."""
-        return self._threads.submit(self._worker.do, job)
+        self._last = self._threads.submit(self._worker.do, job)
+        return self._last
 
     def close(self) -> None:
-        """End the child, and with it a case in hand."""
-        self._worker.abandon()
+        """End the thread, and the child if there is a case in hand."""
+        if self._last is not None and not self._last.done():
+            self._worker.abandon()
         self._threads.shutdown(cancel_futures=True)
 
 
@@ -67,11 +70,13 @@ class DaskPool:
         self.size = workers
         self._function = function
         self._scratch = tempfile.mkdtemp(prefix="simkit-")
+        self._settings = self._set_up_dask()
         self._cluster, self._client = self._start(workers)
 
-    def _start(self, workers: int) -> tuple[Any, Any]:
+    def _set_up_dask(self) -> Any:
+        """Settings that hold as long as the pool: workers that die are started anew under them."""
         import dask
-        from distributed import Client, LocalCluster
+        import distributed  # noqa: F401  its own defaults must be there before, to be there after
 
         settings = {
             # A worker that is a daemon may have no child process.
@@ -82,7 +87,12 @@ class DaskPool:
             "distributed.comm.timeouts.connect": "60s",
             "temporary-directory": self._scratch,
         }
-        with dask.config.set(settings), interrupts_held():
+        return dask.config.set(settings)
+
+    def _start(self, workers: int) -> tuple[Any, Any]:
+        from distributed import Client, LocalCluster
+
+        with interrupts_held():
             cluster = LocalCluster(  # type: ignore[no-untyped-call]
                 n_workers=workers,
                 threads_per_worker=1,
@@ -111,6 +121,7 @@ class DaskPool:
         except (TimeoutError, DaskTimeoutError):
             logging.getLogger(__name__).debug("dask workers were slow to end", exc_info=True)
         finally:
+            self._settings.__exit__(None, None, None)
             shutil.rmtree(self._scratch, ignore_errors=True)
 
 

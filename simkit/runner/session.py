@@ -188,24 +188,24 @@ class _Session:
         self._say_versions(target, prepared)
         worker = Worker(self.choices.solver.function)
         try:
-            with StopRequest(self._on_stop) as stop:
-                loop = Loop(self.progress, self.log, stop, self.folder.path)
+            with StopRequest() as stop:
+                loop = Loop(self.progress, self.log, stop, self._on_stop, self.folder.path)
                 store, done = self._settle(prepared, target, worker, loop)
         finally:
             worker.close()
         codes = store.read_statuses()
+        counts = {status: int(np.count_nonzero(codes == status)) for status in Status}
         summary = RunSummary(
-            counts={status: int(np.count_nonzero(codes == status)) for status in Status},
+            counts=counts,
             reused=done + loop.reused,
             solved=loop.solved,
             results_dir=self.folder.path,
             seconds=time.monotonic() - begin,
-            stopped=loop.stopped,
+            stopped=loop.stopped if counts[Status.WAITING] else "",
         )
         if summary.complete:
             self.folder.finish(target, prepared.text)
-        for line in summary_lines(summary):
-            self._say(line)
+        self._say_end(summary)
         return summary
 
     def _settle(
@@ -320,6 +320,13 @@ class _Session:
             parts.append(f"{taken} taken over unchanged from the earlier study")
         parts.append(f"{store.cases - done - taken} to solve")
         self._say(", ".join(parts))
+
+    def _say_end(self, summary: RunSummary) -> None:
+        """All into the log; the caller shows the summary, so only a stop is said at once."""
+        for line in summary_lines(summary):
+            self.log.write(line)
+            if summary.stopped:
+                self.progress.say(line)
 
     def _say(self, text: str) -> None:
         self.log.write(text)

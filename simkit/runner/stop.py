@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import signal
 import threading
-from collections.abc import Callable
 from types import FrameType, TracebackType
 from typing import Any
 
@@ -14,19 +13,19 @@ _SIGNALS = (signal.SIGINT, signal.SIGTERM)
 class StopRequest:
     """Listen for Ctrl-C and for the polite signal to end, inside a ``with`` block.
 
-    Parameters
+    Attributes
     ----------
-    on_first : callable
-        Called once, at the first signal. The second one raises `KeyboardInterrupt`.
+    asked : bool
+        A first signal came. It does no more than set this, since it may come in the middle of
+        anything; the second one raises `KeyboardInterrupt`.
 
     Notes
     -----
     Outside the main thread signals cannot be heard and nothing is changed.
     """
 
-    def __init__(self, on_first: Callable[[], None]) -> None:
+    def __init__(self) -> None:
         self.asked = False
-        self._on_first = on_first
         self._before: dict[signal.Signals, Any] = {}
 
     def __enter__(self) -> StopRequest:
@@ -48,4 +47,3 @@ class StopRequest:
         if self.asked:
             raise KeyboardInterrupt
         self.asked = True
-        self._on_first()

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from simkit.engine.child import Child, Kind
+from simkit.errors import SimkitError
 from simkit.runner.lock import may_start, writing
 from simkit.runner.result import CaseResult
 from simkit.store.schema import Status
@@ -146,6 +147,8 @@ class Worker:
         except OSError as error:
             text = error.strerror or str(error)
             receipt = Receipt(job.block, trouble=f"block {job.block} cannot be written: {text}")
+        except SimkitError as error:
+            receipt = Receipt(job.block, trouble=f"block {job.block} cannot be done: {error}")
         return receipt
 
     def _do(self, job: BlockJob, start: float) -> Receipt:

@@ -49,11 +49,11 @@ class Study:
 
     title: str
     path: Path
-    text: str
+    text: str = field(repr=False)
     values: dict[str, float]
     sweep: Sweep
     measured: tuple[MeasuredFile, ...]
-    blueprint: Blueprint
+    blueprint: Blueprint = field(repr=False)
     moving: tuple[Quantity, ...] = field(repr=False)
     """Values to evaluate anew for every case because they depend on swept ones."""
     units: dict[str, str] = field(repr=False)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -88,9 +89,19 @@ def test_doubts_are_shown() -> None:
 
 
 def test_problems_are_counted_and_cut_short() -> None:
-    text = summary.problems_text([f"case {n}: crosses itself" for n in range(13)], 20)
+    text = summary.problems_text([f"case {n}: crosses itself" for n in range(13)], 20, 20)
     assert text.startswith("Cases         13 of 20 cannot be built")
     assert "case 9:" in text
     assert "case 10:" not in text
     assert text.endswith("... and 3 more")
-    assert summary.problems_text([], 7) == "Cases         7, all can be built"
+    assert summary.problems_text([], 7, 7) == "Cases         7: all can be built"
+    some = summary.problems_text([], 1500, 3000)
+    assert some == "Cases         1500 looked at, out of 3000: all can be built"
+
+
+@pytest.mark.parametrize(("cases", "looked_at"), [(1, 1), (2000, 2000), (2001, 1001), (9000, 1800)])
+def test_a_large_sweep_is_looked_at_in_steps(cases: int, looked_at: int) -> None:
+    study = SimpleNamespace(case_count=cases)
+    places = summary.looked_at(study)  # type: ignore[arg-type]
+    assert len(places) == looked_at
+    assert places[0] == 0

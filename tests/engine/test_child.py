@@ -58,8 +58,25 @@ def test_a_function_that_cannot_be_imported_is_a_bug_not_a_crash(child, function
     child.function = function
     outcome = child.call("pid", limit_s=AMPLE_S)
     assert outcome.kind is Kind.BUG
-    assert "cannot be started" in outcome.reason
-    assert "no_such" in outcome.trace
+    assert "no_such" in outcome.reason
+    assert "Traceback" in outcome.trace
+
+
+def test_a_script_without_a_guard_is_told_what_to_do(tmp_path):
+    script = tmp_path / "unguarded.py"
+    script.write_text(
+        "from simkit.engine.child import Child\n"
+        "Child('child_functions:act').call('pid', limit_s=60)\n"
+    )
+    ended = subprocess.run(
+        [sys.executable, script],
+        env=os.environ | {"PYTHONPATH": str(HERE)},
+        capture_output=True,
+        text=True,
+        timeout=100,
+    )
+    assert ended.returncode == 1
+    assert 'must do so under  if __name__ == "__main__":' in ended.stderr
 
 
 def test_a_text_without_a_function_is_refused():

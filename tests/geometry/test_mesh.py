@@ -114,6 +114,19 @@ def test_paths_of_another_number_of_points_are_refused_when_built(make):
         build_wires(make.ell(70, 6, 90, 20), plan)
 
 
+def test_a_feed_swept_past_a_corner_is_refused_only_there(make):
+    antennas = [make.ell(60, 4, 90, at) for at in (44, 46, 58, 60.5, 75, 77)]
+    plan = plan_mesh(antennas)
+    built = []
+    for antenna in antennas:
+        try:
+            built.append(build_wires(antenna, plan).segments)
+        except GeometryError:
+            built.append(None)
+    assert built[2:4] == [None, None]
+    assert len({*built[:2], *built[4:]}) == 1
+
+
 def test_cases_that_cannot_be_laid_out_do_not_spoil_the_plan(make):
     good, bad = make.straight(150, 6, 40), make.straight(150, 6, 400)
     assert plan_mesh([bad, good, bad]) == plan_mesh([good])

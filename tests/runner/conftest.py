@@ -8,6 +8,7 @@ from pathlib import Path
 
 import pytest
 
+from simkit.engine.child import Kind, Outcome, load_function
 from simkit.runner.prepare import Solver
 from simkit.study import Study, load_study
 
@@ -74,6 +75,29 @@ def fake(monkeypatch: pytest.MonkeyPatch) -> Solver:
     import fake_solver
 
     return Solver(function="fake_solver:solve", mesh=fake_solver.mesh, version="test")
+
+
+class DirectChild:
+    """Calls the solver in this process: for tests that are not about crashes."""
+
+    def __init__(self, function: str) -> None:
+        self._function = load_function(function)
+        self.abandoned = False
+
+    def call(self, *args: object, limit_s: float) -> Outcome:
+        return Outcome(Kind.VALUE, self._function(*args))
+
+    def close(self) -> None:
+        pass
+
+    def abandon(self) -> None:
+        self.abandoned = True
+
+
+@pytest.fixture
+def direct(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Start no child processes."""
+    monkeypatch.setattr("simkit.runner.work.Child", DirectChild)
 
 
 @pytest.fixture

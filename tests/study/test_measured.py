@@ -36,6 +36,7 @@ def test_files_count_from_the_study_and_need_not_exist(load: Loader) -> None:
         ('file = "a.s1p"\narn = "70 mm"', "measured[1].arn"),
         ('file = "a.s1p"\narn = "70 mm"', "nor a swept key; do you mean `arm`?"),
         ('file = "a.s1p"\nfeed.at = "70 mm"', "nor a swept key"),
+        ('file = "a.s1p"\nstrip.upper.width = "4 mm"', "nor a swept key"),
         ('file = "a.s1p"\narm = "70"', "a length is needed, but this is a pure number"),
         ('file = "a.s1p"\narm = "arm*arm/(gap - gap)"', "divides by zero"),
     ],

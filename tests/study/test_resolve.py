@@ -99,3 +99,11 @@ def test_a_strip_on_its_mirror_axis_lies_on_its_own_image(complaints: Complaints
     )
     assert line.endswith("strip.image: lies exactly on strip `post`; move it or leave it out")
     assert line.startswith("weir.toml:25: ")
+
+
+def test_a_strip_drawn_backwards_on_another_is_found(complaints: Complaints) -> None:
+    (line,) = complaints(
+        added='[[strip]]\nname = "again"\nwidth = "2 mm"\n'
+        'path = [["gap/2 + arm", "11 mm"], ["gap/2 + arm", "0 mm"], ["gap/2", "0 mm"]]\n',
+    )
+    assert line.endswith("strip.again: lies exactly on strip `upper`; move it or leave it out")

@@ -167,3 +167,10 @@ def test_a_swept_value_may_not_take_a_name_of_the_results(complaints: Complaints
 def test_the_names_of_the_results_are_complete() -> None:
     dimensions = {name for variable in VARIABLES.values() for name in variable.dims}
     assert dimensions | set(VARIABLES) <= RESULT_NAMES
+
+
+def test_a_perfect_conductor_has_no_conductivity_to_sweep(complaints: Complaints) -> None:
+    (line,) = complaints(
+        ('material  = "copper"\n', ""), added='\n[sweep]\nmetal.conductivity = ["1e7 S/m"]\n'
+    )
+    assert "cannot be swept: this metal is a perfect conductor" in line

@@ -93,3 +93,12 @@ def test_there_may_not_be_too_many(complaints: Complaints) -> None:
     entries = "\n".join(f"a{i} = {i}" for i in range(500))
     (line,) = complaints((GAP, f"{GAP}\n{entries}"))
     assert "values: has 503 names; at most 500 are allowed" in line
+
+
+def test_a_swept_value_keeps_its_number_though_it_uses_another_swept_one(load: Loader) -> None:
+    study = load(
+        (GAP, 'gap = "arm/10"'),
+        added='\n[sweep]\narm = ["50 mm", "60 mm"]\ngap = ["1 mm", "4 mm"]\n',
+    )
+    starts = [case.antenna.strips[0].path_m[0][0] for case in study.cases() if case.antenna]
+    assert starts == [0.0005, 0.002, 0.0005, 0.002]

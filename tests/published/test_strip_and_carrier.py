@@ -1,0 +1,86 @@
+"""Strips, bars, coated wires, carriers and mixtures against strip_and_carrier.toml."""
+
+from __future__ import annotations
+
+import tomllib
+from math import gamma, log, pi
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+
+from simkit.crosssection import (
+    PLASTICS,
+    Layer,
+    kappa,
+    mixed_permittivity,
+    single_strip,
+    strip_radius_m,
+)
+from simkit.crosssection.carrier_kappa import series_inductance_h_per_m, wire_radius_m
+from simkit.crosssection.panels import chain, circle, join
+from simkit.crosssection.potential import solve
+
+DATA = tomllib.loads((Path(__file__).parent / "strip_and_carrier.toml").read_text("utf-8"))
+RULES = ("series", "air-host", "bruggeman", "plastic-host", "parallel")
+
+Row = dict[str, Any]
+
+
+def test_the_table_agrees_with_its_own_formulas() -> None:
+    assert DATA["strip_radius"][-1]["radius"] == round(gamma(0.25) ** 2 / (4 * pi**1.5), 5)
+    (coated,) = DATA["coated_wire"]
+    exact = (1 - 1 / coated["permittivity"]) * log(coated["ratio"])
+    assert coated["radius"] == round(np.exp(exact), 4)
+    assert coated["inductance_nh_per_m"] == round(200 * exact, 2)
+    for row in DATA["mixture"]:
+        air = 1 - row["fraction"]
+        assert row["parallel"] == round(row["fraction"] * row["solid"] + air, 4)
+        assert row["series"] == round(1 / (row["fraction"] / row["solid"] + air), 4)
+
+
+@pytest.mark.parametrize("row", DATA["strip_radius"], ids=lambda row: f"t/w={row['ratio']}")
+def test_strip_radius(row: Row) -> None:
+    # Half of the last digit given.
+    assert strip_radius_m(1.0, row["ratio"]) == pytest.approx(row["radius"], abs=0.6e-5)
+
+
+@pytest.mark.parametrize("row", DATA["kappa"], ids=lambda row: f"kappa={row['kappa']}")
+def test_kappa(row: Row) -> None:
+    layer = Layer(row["thickness_mm"] * 1e-3, row["permittivity"])
+    section = single_strip(row["width_mm"] * 1e-3, [layer], row["overhang_mm"] * 1e-3)
+    assert kappa(section).real == pytest.approx(row["kappa"], rel=row["relative_tolerance"])
+
+
+@pytest.mark.parametrize("row", DATA["coated_wire"], ids=lambda row: row["source"].split(",")[0])
+def test_coated_wire(row: Row) -> None:
+    eps = row["permittivity"]
+    wire = chain(circle(0.0, 1.0, 48), conductor=0, left=eps, right=eps)
+    body = join([wire, chain(circle(0.0, row["ratio"], 48), left=eps)])
+    found = solve(body.in_air()).common - solve(body).common
+    # Rounded to the digits given; polygons of 48 sides are good to 2e-5.
+    assert wire_radius_m(1.0, found) == pytest.approx(row["radius"], rel=6e-5)
+    inductance = series_inductance_h_per_m(found) * 1e9
+    assert inductance == pytest.approx(row["inductance_nh_per_m"], rel=1e-4)
+
+
+@pytest.mark.parametrize("rule", RULES)
+@pytest.mark.parametrize("row", DATA["mixture"], ids=lambda row: f"fill={row['fraction']}")
+def test_mixture(row: Row, rule: str) -> None:
+    mixed = mixed_permittivity(row["solid"], row["fraction"], rule)  # type: ignore[arg-type]
+    # Half of the last digit given.
+    assert mixed.real == pytest.approx(row[rule], abs=0.6e-4)
+    assert mixed.imag == 0
+
+
+@pytest.mark.parametrize("row", DATA["solid_plastics"], ids=lambda row: row["source"][:11])
+def test_table_of_plastics_allows_for_what_was_measured(row: Row) -> None:
+    """Where the frequencies overlap the value itself is inside, else below: eps' falls with f."""
+    low, high = row["permittivity"]
+    for name in row["names"]:
+        entry = PLASTICS[name]
+        if entry.from_hz < row["to_mhz"] * 1e6:
+            assert low <= entry.permittivity <= high, name
+        else:
+            assert entry.permittivity <= high, name

@@ -1,0 +1,216 @@
+"""Natural modes: which poles are kept, how their half waves are counted, their currents."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from simkit.geometry import build_wires, plan_mesh
+from simkit.geometry.wires import Chain, StripSpan
+from simkit.response.modes import (
+    NaturalMode,
+    current_along_strips,
+    find_modes,
+    half_waves,
+    turned_to_real,
+)
+from simkit.response.rational import RationalModel, Sweep, fit_weights
+from simkit.runner.solve import sweep_currents
+
+SEGMENTS = 47
+
+
+WHOLE = (StripSpan(0, 0.0, 1.0),)
+
+
+def chain(closed=False, spans=WHOLE):
+    order = np.arange(SEGMENTS)
+    ones = np.ones(SEGMENTS, dtype=int)
+    return Chain(order, ones, (order + 0.5) / SEGMENTS, 1.0, closed, spans)
+
+
+def wave(half_wave_count, closed=False):
+    place = chain().arc_m
+    shape = np.cos if closed else np.sin
+    return shape(half_wave_count * np.pi * place) * np.exp(0.7j)
+
+
+@pytest.mark.parametrize("number", [1, 2, 3, 4, 7])
+def test_half_waves_from_tip_to_tip(number):
+    assert half_waves(wave(number), chain()) == number
+
+
+@pytest.mark.parametrize("number", [0, 2, 4, 6])
+def test_half_waves_round_a_loop(number):
+    assert half_waves(wave(number, closed=True), chain(closed=True)) == number
+
+
+def test_half_waves_do_not_depend_on_how_wires_are_drawn():
+    """Every third segment drawn backwards, and all of them numbered otherwise."""
+    rng = np.random.default_rng(11)
+    order = rng.permutation(SEGMENTS)
+    signs = np.where(np.arange(SEGMENTS) % 3 == 0, -1, 1)
+    current = np.zeros(SEGMENTS, dtype=complex)
+    current[order] = wave(3) * signs
+    turned = replace(chain(), segments=order, signs=signs)
+    assert half_waves(current, turned) == 3
+
+
+def test_quiet_ripple_is_not_counted():
+    """Points below 5 % of the largest do not count, those above do."""
+    ripple = np.where(np.arange(SEGMENTS) < 6, np.where(np.arange(SEGMENTS) % 2, 1, -1), 0)
+    body = np.where(ripple == 0, wave(1), 0)
+    assert half_waves(body + 0.04 * ripple * np.exp(0.7j), chain()) == 1
+    assert half_waves(body + 0.10 * ripple * np.exp(0.7j), chain()) > 3
+
+
+def test_phase_that_slides_along_the_antenna_is_turned_out():
+    """Radiating modes are not quite in one phase."""
+    slide = np.exp(0.5j * chain().arc_m)
+    assert half_waves(wave(3) * slide, chain()) == 3
+
+
+def test_turned_to_real_takes_all_it_can():
+    rng = np.random.default_rng(4)
+    current = rng.standard_normal(23) * np.exp(1.1j) + 0.1j * rng.standard_normal(23)
+    best = np.sum(turned_to_real(current).real ** 2)
+    for angle in np.linspace(0, np.pi, 37):
+        assert np.sum((current * np.exp(1j * angle)).real ** 2) <= best * (1 + 1e-12)
+
+
+def test_currents_along_strips_run_from_start_to_end_of_each():
+    """West is strip 1, drawn from the feed to its tip, so against the chain; the gap is 0.02."""
+    spans = (StripSpan(1, 0.40, 0.0), StripSpan(0, 0.42, 1.0))
+    along = current_along_strips(wave(2), [chain(spans=spans)], 2, np.array([0.0, 0.5, 1.0]))
+    expected = np.sin(2 * np.pi * np.array([[0.42, 0.71, 1.0], [0.4, 0.2, 0.0]]))
+    expected[1] *= -1
+    # Straight lines between 47 points on a sine leave 0.3 %.
+    assert along * np.exp(-0.7j) == pytest.approx(expected, abs=4e-3)
+
+
+def test_current_vanishes_at_open_ends_and_closes_on_loops():
+    ends = np.array([0.0, 1.0])
+    assert current_along_strips(wave(3), [chain()], 1, ends) == pytest.approx(np.zeros((1, 2)))
+    closed = chain(closed=True, spans=(StripSpan(0, -0.3, 0.7),))
+    both = current_along_strips(wave(2, closed=True), [closed], 1, ends)
+    assert both[0, 0] == pytest.approx(both[0, 1], rel=1e-12)
+    assert both[0, 0] == pytest.approx(np.cos(2 * np.pi * 0.7) * np.exp(0.7j), abs=5e-3)
+
+
+def test_a_strip_on_no_chain_has_no_current():
+    along = current_along_strips(wave(1), [chain()], 2, np.array([0.5]))
+    assert np.isfinite(along[0]).all()
+    assert np.isnan(along[1]).all()
+
+
+def test_mode_numbers_and_admittance():
+    mode = NaturalMode(0.9e9 + 0.1e9j, 1, np.ones(3, dtype=complex), 2e6j)
+    assert mode.frequency_hz == 0.9e9
+    assert mode.q == pytest.approx(4.5)
+    at = mode.feed_admittance(np.array([0.9e9, 1.0e9]))
+    assert at == pytest.approx([2e6j / -0.1e9j, 2e6j / (0.1e9 - 0.1e9j)])
+
+
+def made_sweep(poles, residues, spare_shift=0.0):
+    """Sweep of 15 samples of given poles (GHz), with spare models whose first pole is elsewhere."""
+    frequency = np.linspace(0.3e9, 3e9, 15)
+
+    def model(at):
+        terms = 0.1e9 / (frequency[:, None] - np.array(at)[None] * 1e9)
+        values = terms @ residues
+        return RationalModel(frequency, fit_weights(frequency / 3e9, values, 1e-12)[0], values)
+
+    moved = [poles[0] + spare_shift, *poles[1:]]
+    return Sweep(model(poles), True, 1e-4, (model(poles), model(moved)))
+
+
+@pytest.fixture(scope="module")
+def grid(make):
+    antenna = make.straight(150, 6, 75)
+    return build_wires(antenna, plan_mesh([antenna]))
+
+
+def residues_on(grid, sizes):
+    place = (np.arange(grid.segments) + 0.5) / grid.segments
+    shapes = [np.sin((k + 1) * np.pi * place) for k in range(len(sizes))]
+    return np.array([np.tile(s, 2) * size for s, size in zip(shapes, sizes, strict=True)]) + 0j
+
+
+POLES = [0.9 + 0.1j, 1.8 + 0.14j, 2.7 + 0.17j]
+
+
+def numbers(modes):
+    return [mode.half_waves for mode in modes]
+
+
+def test_poles_become_modes_in_order(grid):
+    modes = find_modes(made_sweep(POLES[::-1], residues_on(grid, [1, 1, 1])[::-1]), grid, 3e8, 3e9)
+    assert numbers(modes) == [1, 2, 3]
+    assert [mode.pole_hz for mode in modes] == pytest.approx([p * 1e9 for p in POLES], rel=1e-6)
+    for mode in modes:
+        assert abs(mode.current).max() == pytest.approx(1)
+        assert mode.current[np.argmax(abs(mode.current))] == pytest.approx(1)
+
+
+def test_feed_residue_is_that_of_the_feed_current(grid):
+    sizes = [1.0, 0.5, 0.25]
+    modes = find_modes(made_sweep(POLES, residues_on(grid, sizes)), grid, 3e8, 3e9)
+    ((feed, _),) = grid.source
+    expected = 0.1e9 * residues_on(grid, sizes)[:, feed]
+    assert [mode.feed_residue_hz for mode in modes] == pytest.approx(expected, rel=1e-4, abs=1e3)
+
+
+def test_weak_poles_are_dropped(grid):
+    modes = find_modes(made_sweep(POLES, residues_on(grid, [1, 1e-4, 1])), grid, 3e8, 3e9)
+    assert numbers(modes) == [1, 3]
+
+
+def test_poles_that_move_when_a_sample_is_left_out_are_dropped(grid):
+    residues = residues_on(grid, [1, 1, 1])
+    assert numbers(find_modes(made_sweep(POLES, residues, 0.004), grid, 3e8, 3e9)) == [1, 2, 3]
+    assert numbers(find_modes(made_sweep(POLES, residues, 0.006), grid, 3e8, 3e9)) == [2, 3]
+
+
+@pytest.mark.parametrize(
+    ("pole", "kept"),
+    [
+        (0.25 + 0.08j, True),  # below the band, its upper half width in it
+        (0.25 + 0.03j, False),  # narrower: nothing of it is in the band
+        (3.01 + 0.1j, False),
+        (0.9 - 0.1j, False),  # would grow with time
+        (0.9 + 1.0j, False),  # overdamped, Q under a half
+    ],
+)
+def test_poles_outside_the_band_or_without_ringing(grid, pole, kept):
+    modes = find_modes(made_sweep([pole, *POLES[1:]], residues_on(grid, [1, 1, 1])), grid, 3e8, 3e9)
+    assert len(modes) == 2 + kept
+
+
+def test_a_response_without_modes_in_band(make):
+    antenna = make.straight(150, 6, 75, band=make.band(0.1e9, 0.4e9, 31))
+    grid = build_wires(antenna, plan_mesh([antenna]))
+    assert find_modes(sweep_currents(antenna, grid), grid, 0.1e9, 0.4e9) == ()
+
+
+@pytest.mark.parametrize("at", [75.0, 40.0])
+def test_solved_modes_have_their_shapes(make, at):
+    """Close to sines, whichever source excites them; 7 % is what radiation bends them by."""
+    antenna = make.straight(150, 6, at)
+    grid = build_wires(antenna, plan_mesh([antenna]))
+    modes = find_modes(sweep_currents(antenna, grid), grid, 0.3e9, 3e9)
+    assert numbers(modes) == [1, 2, 3]
+    (path,) = grid.chains
+    for mode in modes:
+        sine = np.sin(mode.half_waves * np.pi * path.arc_m / path.length_m)
+        along = turned_to_real(mode.current[path.segments])
+        fit = along @ sine / (sine @ sine)
+        assert np.linalg.norm(along - fit * sine) < 0.15 * np.linalg.norm(along)
+
+
+def test_solved_loop_counts_its_periods(make):
+    antenna = make.loop(90, 60, 3, 20)
+    grid = build_wires(antenna, plan_mesh([antenna]))
+    modes = find_modes(sweep_currents(antenna, grid), grid, 0.3e9, 3e9)
+    assert numbers(modes)[:2] == [2, 2]
+    # One wavelength round 300 mm.
+    assert modes[0].frequency_hz == pytest.approx(1e9, rel=0.15)
