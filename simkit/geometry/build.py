@@ -21,7 +21,6 @@ from simkit.geometry.paths import turns
 from simkit.geometry.route import longest_path
 from simkit.geometry.strips import (
     check_strips,
-    equivalent_radius_m,
     model_gap_m,
     rail_model_gap_m,
 )
@@ -55,7 +54,12 @@ def build_wires(antenna: Antenna, plan: MeshPlan) -> WireGrid:
         )
     grid = _line_grid(antenna, lines, plan) if plan.kind == "line" else _grid(antenna, lines, plan)
     check_wires(grid.wires, grid.radius_m, antenna.frequency.stop_hz)
-    return replace(grid, doubts=(*doubts, *grid.doubts))
+    error, carrier_doubts = dressing_of(antenna).error_and_doubts(lines)
+    return replace(
+        grid,
+        relative_error=float(np.hypot(grid.relative_error, error)),
+        doubts=(*doubts, *grid.doubts, *carrier_doubts),
+    )
 
 
 def _host_order(lines: Sequence[ChainLine]) -> list[int]:
@@ -99,10 +103,9 @@ def _line_grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> 
     dressing = dressing_of(antenna)
     count = len(drawing.wires)
     factor, inductance, loss = dressing.wire_loads(np.full(count, width), np.ones(count))
-    radius = equivalent_radius_m(width, antenna.metal.thickness_m)
     return WireGrid(
         wires=tuple(drawing.wires),
-        radius_m=float(radius * np.exp(dressing.kappa(width).real)),
+        radius_m=dressing.radius_m(width),
         conductor_factor_per_m=factor,
         series_inductance_h_per_m=inductance,
         loss_inductance_h_per_m=loss,

@@ -49,6 +49,8 @@ class ChainLine:
     feed : FeedPlace or None
     start, end : Joint or None
         None for an open end.
+    start_tip_m, end_tip_m : float
+        Length the carrier takes off an open end beyond a bare strip's share, metres.
     tees : tuple of (int, int)
         Vertex and branch chain for every branch that ends on this chain.
     """
@@ -62,6 +64,8 @@ class ChainLine:
     start: Joint | None = None
     end: Joint | None = None
     tees: tuple[tuple[int, int], ...] = field(default=())
+    start_tip_m: float = 0.0
+    end_tip_m: float = 0.0
 
     @property
     def length_m(self) -> float:

@@ -193,7 +193,7 @@ class _Walk:
             self.put(0.0, tied=False, width_m=float(line.width_after_m[0]))
         elif line.start is None:
             width = float(line.width_after_m[0])
-            self.put(self.rule.tip_m(width), tied=True)
+            self.put(self.rule.tip_m(width, self.widen(width)) + line.start_tip_m, tied=True)
         else:
             away = host_reach_m(self.lines, self.index, "start", self.rule, self.widen)
             width = float(line.width_after_m[0])
@@ -207,7 +207,7 @@ class _Walk:
         if line.closed:
             self.put(length, tied=False)
         elif line.end is None:
-            self.put(length - self.rule.tip_m(width), tied=True)
+            self.put(length - self.rule.tip_m(width, self.widen(width)) - line.end_tip_m, tied=True)
         else:
             away = host_reach_m(self.lines, self.index, "end", self.rule, self.widen)
             for rung in reversed(JUNCTION_RUNGS_WIDTHS):

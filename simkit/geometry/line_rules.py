@@ -12,9 +12,10 @@ from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
 from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.dressing import dressing_of
 from simkit.geometry.network import STRAIGHT_FEED_RAD
 from simkit.geometry.paths import leg_lengths, point_at, turn_angle, turns, unit
-from simkit.geometry.strips import OPEN_END_WIDTHS, equivalent_radius_m
+from simkit.geometry.strips import OPEN_END_WIDTHS
 from simkit.geometry.wires import FloatArray
 from simkit.study.model import Antenna
 
@@ -185,7 +186,7 @@ def segment_limits_m(
 ) -> tuple[float, float]:
     """Shortest segment allowed and segment aimed at, metres."""
     width = lines[0].widest_m
-    radius = equivalent_radius_m(width, antenna.metal.thickness_m)
+    radius = dressing_of(antenna).radius_m(width)
     alone = len(stretches) == 1 and not any(line.closed or line.start or line.end for line in lines)
     shortest = (SHORTEST_STRAIGHT_RADII if alone else SHORTEST_RADII) * radius
     wavelength = light_speed / antenna.frequency.stop_hz
@@ -204,7 +205,8 @@ def runs(line: ChainLine, kinds: Sequence[VertexKind], *, centred: bool) -> tupl
         A feed inside a leg lies in no run, but within a corner or beyond the wire's end.
     """
     arcs, bends, width = line.arcs_m, turns(line.points), line.widest_m
-    first, last = _end_edge(line, line.start is not None), _end_edge(line, line.end is not None)
+    first = _end_edge(line, line.start is not None, line.start_tip_m)
+    last = _end_edge(line, line.end is not None, line.end_tip_m)
     edges: list[tuple[float, float]] = [(first, first)]
     feed_arc = None
     for vertex, kind in enumerate(kinds, start=1):
@@ -237,11 +239,13 @@ def runs(line: ChainLine, kinds: Sequence[VertexKind], *, centred: bool) -> tupl
     return tuple(found)
 
 
-def _end_edge(line: ChainLine, joined: bool) -> float:
+def _end_edge(line: ChainLine, joined: bool, tip_m: float) -> float:
     """How far from the end of a chain its first run begins."""
     if line.closed:
         return 0.0
-    return (TEE_BRANCH_WIDTHS if joined else OPEN_END_WIDTHS) * line.widest_m
+    if joined:
+        return TEE_BRANCH_WIDTHS * line.widest_m
+    return OPEN_END_WIDTHS * line.widest_m + tip_m
 
 
 def doubts(

@@ -39,8 +39,10 @@ GRID_SHORTEST_RADII = 2.1
 GRID_SOURCE_WAVELENGTHS = 1 / 30
 
 TIE_WAVELENGTHS = 0.4
-"""Rails of a strip of changing width are tied at least this often, at the top of the band, so that
-they cannot resonate against each other in the band."""
+TIE_WAVELENGTHS_ON_CARRIER = 0.28
+"""Rails are tied at least this often, at the top of the band, so that they cannot resonate against
+each other in the band; a bare straight strip of one width does not excite that and goes without.
+On a carrier the rails carry series inductance, which slows such waves."""
 
 
 @dataclass(frozen=True)
@@ -295,7 +297,8 @@ def _grid_cuts(
     cases: Sequence[tuple[Antenna, ChainLine, RailRule, list[Interval]]],
 ) -> list[Cut]:
     plain = cases[0][2].constant and not any(
-        interval.single for _, _, _, intervals in cases for interval in intervals
+        antenna.carrier is not None or any(interval.single for interval in intervals)
+        for antenna, _, _, intervals in cases
     )
     return [
         _grid_cut([(a, line, rule, rows[number]) for a, line, rule, rows in cases], plain=plain)
@@ -321,7 +324,8 @@ def _grid_cut(
             length += outer_detour_m(line, interval, rule)
         wishes.append(length / max(share * wavelength, shortest))
         limits.append(interval.length_m / shortest)
-        ties.append(int(interval.length_m / (TIE_WAVELENGTHS * wavelength)))
+        apart = TIE_WAVELENGTHS if antenna.carrier is None else TIE_WAVELENGTHS_ON_CARRIER
+        ties.append(int(interval.length_m / (apart * wavelength)))
     segments = max(min(round(max(wishes)), int(min(limits) + 1e-6)), 1)
     most = 0 if plain or first.single else max(ties)
     return Cut(max(segments, most + 1), most)

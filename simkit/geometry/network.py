@@ -27,6 +27,7 @@ from simkit.geometry.chain_line import (
     shifted,
     with_vertex,
 )
+from simkit.geometry.dressing import dressing_of
 from simkit.geometry.paths import (
     leg_lengths,
     same_point,
@@ -59,7 +60,8 @@ def chains_of(antenna: Antenna) -> tuple[ChainLine, ...]:
         builder.feed_cut(antenna.feed, names[antenna.feed.strip])
     builder.order_fed_first()
     builder.attach_branches()
-    return tuple(builder.lines)
+    dressing = dressing_of(antenna)
+    return tuple(dressing.with_tips(line) for line in builder.lines)
 
 
 def _piece(strip: Strip, index: int) -> ChainLine:

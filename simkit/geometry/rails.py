@@ -61,11 +61,19 @@ class RailRule:
             return np.linspace(-reach, reach, self.count)
         return np.array(_spread(self.count, round(width_m / self.radius_m, 9))) * self.radius_m
 
-    def tip_m(self, width_m: float) -> float:
-        """How far inside an open end of a strip of this width the end bar lies, metres."""
+    def tip_m(self, width_m: float, effective_m: float) -> float:
+        """How far inside an open end the end bar lies, metres.
+
+        Parameters
+        ----------
+        width_m : float
+            Drawn width at the end.
+        effective_m : float
+            The same, widened by the carrier: it sets how far the rails are spread.
+        """
         if self.constant:
             return CONSTANT_TIP_WIDTHS * width_m
-        ratio = closest_radius_widths(self.count) * width_m / self.radius_m
+        ratio = closest_radius_widths(self.count) * effective_m / self.radius_m
         value = np.interp(np.log(max(ratio, 1.0)), np.log(_TIP_RATIOS), _TIP_WIDTHS[self.count])
         return float(value * width_m)
 
