@@ -8,7 +8,7 @@ from typing import Literal
 
 ModelKind = Literal["auto", "line", "grid"]
 StripEnd = Literal["start", "end"]
-MixingName = Literal["plastic-host", "air-host", "bruggeman", "series", "parallel"]
+MixingName = Literal["plastic-host", "bruggeman", "series", "parallel"]
 CarrierSide = Literal["below", "both", "embedded"]
 GroundKind = Literal["plane", "earth"]
 Vector = tuple[float, float, float]
@@ -81,8 +81,8 @@ class Carrier:
     infill : float
         Solid part of the volume, skins included, 0 to 1.
     mixing : str
-        Rule for plastic mixed with air: Maxwell Garnett with plastic or with air as host,
-        Bruggeman, or layers across ("series") or along ("parallel") the field.
+        Rule for plastic mixed with air: Maxwell Garnett with plastic as host, Bruggeman, or layers
+        across ("series") or along ("parallel") the field.
     skin_m : float
         Solid skin at the bottom and at the top of the carrier, metres each.
     overhang_m : float
