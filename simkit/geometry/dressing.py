@@ -7,11 +7,10 @@ carrier.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from functools import cached_property, lru_cache
+from functools import lru_cache
 
 import numpy as np
 from scipy.constants import mu_0
-from scipy.interpolate import PchipInterpolator
 
 from simkit.crosssection.carrier_kappa import kappa
 from simkit.crosssection.dielectrics import printed_layers
@@ -23,8 +22,9 @@ from simkit.geometry.strips import equivalent_radius_m
 from simkit.geometry.wires import FloatArray
 from simkit.study.model import Antenna, Carrier, Metal
 
-KAPPA_NODES = 9
-"""Widths at which kappa of a strip of changing width is solved; in between it is interpolated."""
+NODES_PER_OCTAVE = 2
+"""For strips of changing width kappa is solved at fixed widths, so many an octave, and interpolated
+by a cubic through four of them; the same widths serve all cases of a sweep. Within 0.1 % of kappa."""
 
 CARRIER_ERROR = 0.0015
 """Standard error of mode frequencies that the carrier adds: the model of radius and inductance was
@@ -49,17 +49,7 @@ class Dressing:
             return 0j
         if self.widest_m < self.narrowest_m * (1 + 1e-6):
             return _kappa(self.metal, self.carrier, width_m)
-        real, imaginary = self._table
-        at = np.log(np.clip(width_m, self.narrowest_m, self.widest_m))
-        return complex(real(at), imaginary(at))
-
-    @cached_property
-    def _table(self) -> tuple[PchipInterpolator, PchipInterpolator]:
-        assert self.carrier is not None  # only asked for with a carrier
-        widths = np.geomspace(self.narrowest_m, self.widest_m, KAPPA_NODES)
-        values = np.array([_kappa(self.metal, self.carrier, float(w)) for w in widths])
-        at = np.log(widths)
-        return PchipInterpolator(at, values.real), PchipInterpolator(at, values.imag)
+        return _kappa_between(self.metal, self.carrier, width_m)
 
     def effective_width_m(self, width_m: float) -> float:
         """Width of the bare foil in air with the static radius of this strip on its carrier."""
@@ -148,6 +138,19 @@ def _section(metal: Metal, carrier: Carrier, width_m: float) -> CrossSection:
 @lru_cache(maxsize=4096)
 def _kappa(metal: Metal, carrier: Carrier, width_m: float) -> complex:
     return complex(kappa(_section(metal, carrier, width_m)))
+
+
+def _kappa_between(metal: Metal, carrier: Carrier, width_m: float) -> complex:
+    """Kappa at any width from the fixed widths around it (cubic Lagrange in the logarithm)."""
+    at = NODES_PER_OCTAVE * np.log2(width_m * 1e3)
+    nodes = int(np.floor(at)) + np.arange(-1, 3)
+    widths = 1e-3 * 2.0 ** (nodes / NODES_PER_OCTAVE)
+    values = np.array([_kappa(metal, carrier, float(width)) for width in widths])
+    apart = nodes[:, None] - nodes[None]
+    np.fill_diagonal(apart, 1)
+    away = at - nodes
+    weights = [np.prod(np.delete(away, k)) / np.prod(apart[k]) for k in range(len(nodes))]
+    return complex(np.asarray(weights) @ values)
 
 
 @lru_cache(maxsize=4096)

@@ -7,7 +7,7 @@ gained a segment.
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 from typing import Any, Literal
 
 import numpy as np
@@ -23,7 +23,7 @@ from simkit.geometry.line_rules import VertexKind, runs
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import leg_lengths, turns
 from simkit.geometry.rails import RailRule, rail_rule
-from simkit.study.model import Antenna
+from simkit.study.model import Antenna, Carrier
 
 Kind = Literal["line", "grid"]
 Case = tuple[Antenna, tuple[ChainLine, ...]]
@@ -37,6 +37,9 @@ GRID_SINGLE_WAVELENGTHS = 1 / 6.5
 
 GRID_SHORTEST_RADII = 2.1
 GRID_SOURCE_WAVELENGTHS = 1 / 30
+
+MOST_CARRIERS = 12
+"""Different carriers a mesh is planned for."""
 
 TIE_WAVELENGTHS = 0.4
 TIE_WAVELENGTHS_ON_CARRIER = 0.28
@@ -96,11 +99,34 @@ def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
     GeometryError
         No case can be laid out; the text is that of the first one.
     """
-    cases = _laid_out(list(antennas))
+    cases = _laid_out(_with_few_carriers(list(antennas)))
     kind, why = _kind(cases)
     if kind == "line":
         return _line_plan(cases, why)
     return _grid_plan(cases, why)
+
+
+def _with_few_carriers(antennas: Sequence[Antenna]) -> list[Antenna]:
+    """The antennas with at most a handful of different carriers, for planning only.
+
+    Each new cross-section costs as much as a whole case. Where a sweep has many, a carrier is
+    replaced by the next heavier one (thickness times excess permittivity) of an even choice, which
+    widens the wires at least as much.
+    """
+    carriers = {a.carrier for a in antennas if a.carrier is not None}
+    if len(carriers) <= MOST_CARRIERS:
+        return list(antennas)
+
+    def weight(carrier: Carrier) -> float:
+        return carrier.thickness_m * (carrier.relative_permittivity - 1) * carrier.infill
+
+    ordered = sorted(carriers, key=weight)
+    step = -(-len(ordered) // MOST_CARRIERS)
+    stand_in = {
+        carrier: ordered[min((k // step + 1) * step, len(ordered)) - 1]
+        for k, carrier in enumerate(ordered)
+    }
+    return [a if a.carrier is None else replace(a, carrier=stand_in[a.carrier]) for a in antennas]
 
 
 def _laid_out(antennas: Sequence[Antenna]) -> list[Case]:
@@ -111,7 +137,7 @@ def _laid_out(antennas: Sequence[Antenna]) -> list[Case]:
         if any(strip.width_m <= 0 for strip in antenna.strips):
             continue
         try:
-            lines = chains_of(antenna)
+            lines = chains_of(antenna, tips=False)
         except GeometryError as problem:
             error = error or problem
             continue

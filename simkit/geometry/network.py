@@ -41,8 +41,14 @@ STRAIGHT_FEED_RAD = np.deg2rad(2.0)
 """A feed whose strips turn by less than this counts as lying inside a straight leg."""
 
 
-def chains_of(antenna: Antenna) -> tuple[ChainLine, ...]:
+def chains_of(antenna: Antenna, *, tips: bool = True) -> tuple[ChainLine, ...]:
     """Chains of an antenna, the fed one first.
+
+    Parameters
+    ----------
+    antenna : Antenna
+    tips : bool
+        Work out what the carrier takes off open ends; planning a mesh does without.
 
     Raises
     ------
@@ -60,6 +66,8 @@ def chains_of(antenna: Antenna) -> tuple[ChainLine, ...]:
         builder.feed_cut(antenna.feed, names[antenna.feed.strip])
     builder.order_fed_first()
     builder.attach_branches()
+    if not tips:
+        return tuple(builder.lines)
     dressing = dressing_of(antenna)
     return tuple(dressing.with_tips(line) for line in builder.lines)
 

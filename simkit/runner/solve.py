@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from simkit.engine.pynec import SeriesLoad, engine_version, solve_wires
+from simkit.engine.pynec import SeriesLoad, solve_wires
 from simkit.errors import EngineError, GeometryError
 from simkit.geometry import MeshPlan, WireGrid, build_wires
 from simkit.geometry.conductor import face_resistance_ohm
@@ -27,9 +27,6 @@ from simkit.response.terminals import feed_impedance_ohm
 from simkit.runner.result import CaseResult
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
 from simkit.study.model import Antenna
-
-MODEL_VERSION = "strips-2"
-"""Raised whenever a change of the model changes its numbers; part of every case's identity."""
 
 BALANCE_TOLERANCE = 0.03
 """Radiated plus lost power may differ from the input power by this part before a case is doubtful.
@@ -67,11 +64,6 @@ def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
         return CaseResult(Status.FAILED, str(error), time.perf_counter() - begin, solves)
     status = Status.DOUBTFUL if doubts else Status.SOLVED
     return CaseResult(status, "; ".join(doubts), time.perf_counter() - begin, solves, arrays)
-
-
-def case_identity() -> dict[str, str]:
-    """Versions that decide, with the resolved inputs, whether a stored case is still valid."""
-    return {"model": MODEL_VERSION, "engine": engine_version()}
 
 
 def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3) -> Sweep:
