@@ -23,8 +23,8 @@ from simkit.geometry.wires import FloatArray
 from simkit.study.model import Antenna, Carrier, Metal
 
 NODES_PER_OCTAVE = 2
-"""For strips of changing width kappa is solved at fixed widths, so many an octave, and interpolated
-by a cubic through four of them; the same widths serve all cases of a sweep. Within 0.1 % of kappa."""
+"""For strips of changing width kappa is solved at fixed widths, so many an octave, and found in
+between by a cubic through four of them; the same widths serve all cases of a sweep."""
 
 CARRIER_ERROR = 0.0015
 """Standard error of mode frequencies that the carrier adds: the model of radius and inductance was
