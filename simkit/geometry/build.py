@@ -15,14 +15,21 @@ from simkit.geometry.dressing import dressing_of
 from simkit.geometry.grid_layout import CORNER_FROM_RAD, Cut, layout
 from simkit.geometry.grid_model import Rails
 from simkit.geometry.line_model import LineDrawing
-from simkit.geometry.mesh import MeshPlan, grid_rule, source_m
+from simkit.geometry.mesh import (
+    MeshPlan,
+    fed_pair,
+    gap_pair,
+    grid_rule,
+    left_share,
+    source_m,
+    split_counts,
+)
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import turns
 from simkit.geometry.route import longest_path
 from simkit.geometry.strips import (
     check_strips,
     model_gap_m,
-    rail_model_gap_m,
 )
 from simkit.geometry.wires import Chain, FloatArray, IntArray, WireGrid
 from simkit.study.model import Antenna
@@ -91,7 +98,13 @@ def _line_grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> 
     for index in _host_order(lines):
         chain = plan.chains[index]
         centred = plan.centred and index == 0
-        drawn[index] = drawing.draw(lines, index, chain.vertices, chain.counts, centred=centred)
+        counts = chain.counts
+        if plan.moving and index == 0:
+            stretches = line_rules.runs(lines[0], chain.vertices, centred=False)
+            pair = fed_pair(stretches)
+            if pair is not None:
+                counts = split_counts(counts, pair, left_share(stretches, pair))
+        drawn[index] = drawing.draw(lines, index, chain.vertices, counts, centred=centred)
     chains = tuple(drawn[index] for index in range(len(lines)))
     feed = lines[0].feed
     assert feed is not None  # the first chain is the fed one by construction
@@ -133,7 +146,11 @@ def _grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> WireG
         chain = plan.chains[index]
         corners = [kind == "figure" for kind in chain.vertices]
         intervals = layout(lines, index, rule, widen, source_m(antenna, rule), corners)
-        cuts = [Cut(n, t) for n, t in zip(chain.counts, chain.ties, strict=True)]
+        counts = chain.counts
+        pair = gap_pair(intervals) if plan.moving and index == 0 else None
+        if pair is not None:
+            counts = split_counts(counts, pair, left_share(intervals, pair))
+        cuts = [Cut(max(n, t + 1), t) for n, t in zip(counts, chain.ties, strict=True)]
         drawn[index] = rails.draw(lines, index, intervals, cuts)
     chains = tuple(drawn[index] for index in range(len(lines)))
     feed = lines[0].feed
@@ -158,7 +175,7 @@ def _grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> WireG
         strip_position=position,
         source=source,
         probe=_probe(chains[0], source),
-        model_gap_m=rail_model_gap_m(length, width, rule.count),
+        model_gap_m=model_gap_m(length, width),
         study_gap_m=feed.gap_m,
         feed_width_m=width,
         relative_error=grid_error(lines),

