@@ -26,7 +26,8 @@ from simkit.geometry.mesh import (
 )
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import turns
-from simkit.geometry.route import longest_path
+from simkit.geometry.placement import placed
+from simkit.geometry.route import ends_on_plane, longest_path
 from simkit.geometry.strips import (
     check_strips,
     model_gap_m,
@@ -62,10 +63,27 @@ def build_wires(antenna: Antenna, plan: MeshPlan) -> WireGrid:
     grid = _line_grid(antenna, lines, plan) if plan.kind == "line" else _grid(antenna, lines, plan)
     check_wires(grid.wires, grid.radius_m, antenna.frequency.stop_hz)
     error, carrier_doubts = dressing_of(antenna).error_and_doubts(lines)
-    return replace(
-        grid,
+    grid = replace(
+        _fed_at_foot(grid) if lines[0].fed_foot else grid,
         relative_error=float(np.hypot(grid.relative_error, error)),
         doubts=(*doubts, *grid.doubts, *carrier_doubts),
+        path_on_plane=ends_on_plane(lines, grid.path),
+    )
+    return placed(grid, antenna)
+
+
+def _fed_at_foot(grid: WireGrid) -> WireGrid:
+    """The gap of a source between a strip and the plane, from that between strip and image.
+
+    Source and image make one source of two segments in a strip twice as long; half that strip's gap
+    lies above the plane, and a gap of half the width in length holds twice the charge per volt.
+    """
+    lengths = grid.per_segment(np.array([wire.segment_m for wire in grid.wires]))
+    both = 2 * float(np.mean([lengths[segment] for segment, _ in grid.source]))
+    return replace(
+        grid,
+        model_gap_m=model_gap_m(both, grid.feed_width_m) / 2,
+        feed_width_m=2 * grid.feed_width_m,
     )
 
 

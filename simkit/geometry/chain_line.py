@@ -51,6 +51,8 @@ class ChainLine:
         None for an open end.
     start_tip_m, end_tip_m : float
         Length the carrier takes off an open end beyond a bare strip's share, metres.
+    start_on_plane, end_on_plane : bool
+        The end stands on a perfect ground plane, so that the metal goes on into its image.
     tees : tuple of (int, int)
         Vertex and branch chain for every branch that ends on this chain.
     """
@@ -66,6 +68,8 @@ class ChainLine:
     tees: tuple[tuple[int, int], ...] = field(default=())
     start_tip_m: float = 0.0
     end_tip_m: float = 0.0
+    start_on_plane: bool = False
+    end_on_plane: bool = False
 
     @property
     def length_m(self) -> float:
@@ -86,6 +90,16 @@ class ChainLine:
     def narrowest_m(self) -> float:
         """Smallest width."""
         return float(min(self.width_before_m.min(), self.width_after_m.min()))
+
+    @property
+    def fed_foot(self) -> End | None:
+        """The end on a ground plane whose own gap to the plane holds the feed."""
+        if self.feed is None:
+            return None
+        at, reach = float(self.arcs_m[self.feed.vertex]), self.feed.gap_m / 2 + TOUCH_M
+        if self.start_on_plane and at <= reach:
+            return "start"
+        return "end" if self.end_on_plane and at >= self.length_m - reach else None
 
     def width_at(self, arc_m: FloatArray) -> FloatArray:
         """Width at arc lengths; on a step the width of the leg before it."""

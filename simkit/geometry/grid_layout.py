@@ -191,6 +191,11 @@ class _Walk:
         line = self.line
         if line.closed:
             self.put(0.0, tied=False, width_m=float(line.width_after_m[0]))
+        elif line.start_on_plane:
+            # Metal across would lie in the plane.
+            self.put(0.0, tied=False, width_m=float(line.width_after_m[0]))
+            if line.fed_foot == "start":
+                self.put(self._foot_m(), tied=True, volts=1.0)
         elif line.start is None:
             width = float(line.width_after_m[0])
             self.put(self.rule.tip_m(width, self.widen(width)) + line.start_tip_m, tied=True)
@@ -206,6 +211,11 @@ class _Walk:
         width = float(line.width_before_m[-1])
         if line.closed:
             self.put(length, tied=False)
+        elif line.end_on_plane:
+            fed = line.fed_foot == "end"
+            if fed:
+                self.put(length - self._foot_m(), tied=True)
+            self.put(length, tied=False, width_m=width, volts=1.0 if fed else 0.0)
         elif line.end is None:
             self.put(length - self.rule.tip_m(width, self.widen(width)) - line.end_tip_m, tied=True)
         else:
@@ -230,7 +240,8 @@ class _Walk:
         elif corner:
             self._corner(vertex, fed=fed)
         elif fed:
-            self._straight_feed(vertex)
+            if line.fed_foot is None:
+                self._straight_feed(vertex)
         elif abs(line.width_before_m[vertex] - line.width_after_m[vertex]) > 1e-9:
             self._step(vertex)
         elif self._slope_changes(vertex):
@@ -250,6 +261,10 @@ class _Walk:
         arc = float(self.line.arcs_m[vertex])
         self.put(arc - self.source_m / 2, tied=True)
         self.put(arc + self.source_m / 2, tied=True, volts=1.0)
+
+    def _foot_m(self) -> float:
+        """Source at the foot of a strip on the plane; with its image it is twice as long."""
+        return max(2.2 * self.rule.radius_m, self.source_m / 2)
 
     def _corner(self, vertex: int, *, fed: bool) -> None:
         line = self.line

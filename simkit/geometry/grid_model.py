@@ -13,6 +13,7 @@ from itertools import pairwise
 
 import numpy as np
 
+from simkit.errors import GeometryError
 from simkit.geometry.chain_line import ChainLine
 from simkit.geometry.grid_layout import (
     Cut,
@@ -22,6 +23,7 @@ from simkit.geometry.grid_layout import (
     corner_block,
     junction_block,
 )
+from simkit.geometry.line_model import FED_OTHERWISE
 from simkit.geometry.paths import point_at, turn_angle, turns, unit
 from simkit.geometry.rails import RailRule
 from simkit.geometry.wires import Chain, FloatArray, Wire
@@ -62,6 +64,8 @@ class Rails:
     ) -> Chain:
         """Draw one chain; hosts must be drawn before their branches."""
         line = lines[index]
+        if len(intervals) != len(cuts):
+            raise GeometryError(FED_OTHERWISE)
         stations, pieces = _divided(line, intervals, cuts)
         rows = [
             self._row(line, station, before, after)
@@ -93,8 +97,8 @@ class Rails:
             length_m=line.length_m,
             closed=line.closed,
             spans=line.spans,
-            open_start=line.start is None,
-            open_end=line.end is None,
+            open_start=line.start is None and not line.start_on_plane,
+            open_end=line.end is None and not line.end_on_plane,
         )
 
     def _straight(

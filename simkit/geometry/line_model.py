@@ -32,6 +32,11 @@ from simkit.geometry.wires import Chain, FloatArray, Wire
 
 Source = tuple[tuple[int, float], ...]
 
+FED_OTHERWISE = (
+    "its feed sits at the foot of a strip on the plane and that of other cases of the study does "
+    "not, or the other way round, so they cannot share one mesh; split the study"
+)
+
 
 @dataclass
 class LineDrawing:
@@ -65,6 +70,8 @@ class LineDrawing:
         """Draw one chain; hosts must be drawn before their branches."""
         line = lines[index]
         stretches = runs(line, kinds, centred=centred)
+        if len(stretches) != len(counts):
+            raise GeometryError(FED_OTHERWISE)
         _check_room(line, stretches)
         walk = _Walk(self, line)
         bounds = _without_source(stretches, counts, centred=centred)
@@ -155,8 +162,8 @@ class _Walk:
             length_m=self.line.length_m,
             closed=self.line.closed,
             spans=self.line.spans,
-            open_start=self.line.start is None,
-            open_end=self.line.end is None,
+            open_start=self.line.start is None and not self.line.start_on_plane,
+            open_end=self.line.end is None and not self.line.end_on_plane,
         )
 
 

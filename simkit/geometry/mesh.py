@@ -165,6 +165,9 @@ def signature(lines: Sequence[ChainLine]) -> tuple[Any, ...]:
             line.start,
             line.end,
             line.tees,
+            line.start_on_plane,
+            line.end_on_plane,
+            line.fed_foot,
         )
         for line in lines
     )
@@ -379,6 +382,8 @@ def gap_pair(intervals: Sequence[Interval]) -> tuple[int, int] | None:
     for index, interval in enumerate(intervals):
         if interval.fed == 1.0:
             sides = (index - 1, index + 1)
+            if sides[0] < 0 or sides[1] == len(intervals):
+                return None  # at the foot of a strip on a plane
             return None if any(intervals[side].single for side in sides) else sides
     return None
 

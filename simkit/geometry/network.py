@@ -34,6 +34,7 @@ from simkit.geometry.paths import (
     turn_angle,
     unit,
 )
+from simkit.geometry.placement import stands_on_plane
 from simkit.geometry.wires import FloatArray, StripSpan
 from simkit.study.model import Antenna, CutFeed, EndFeed, Strip
 
@@ -66,10 +67,21 @@ def chains_of(antenna: Antenna, *, tips: bool = True) -> tuple[ChainLine, ...]:
         builder.feed_cut(antenna.feed, names[antenna.feed.strip])
     builder.order_fed_first()
     builder.attach_branches()
+    lines = [_standing(line, antenna) for line in builder.lines]
     if not tips:
-        return tuple(builder.lines)
+        return tuple(lines)
     dressing = dressing_of(antenna)
-    return tuple(dressing.with_tips(line) for line in builder.lines)
+    return tuple(dressing.with_tips(line) for line in lines)
+
+
+def _standing(line: ChainLine, antenna: Antenna) -> ChainLine:
+    """The chain with those of its open ends marked that stand on a ground plane."""
+    free = not line.closed
+    return replace(
+        line,
+        start_on_plane=free and line.start is None and stands_on_plane(line.points[0], antenna),
+        end_on_plane=free and line.end is None and stands_on_plane(line.points[-1], antenna),
+    )
 
 
 def _piece(strip: Strip, index: int) -> ChainLine:
@@ -205,7 +217,7 @@ class _Builder:
         arc = span.start_m + feed.at_m * (1 if span.end_m > span.start_m else -1)
         if line.closed:
             arc = arc % line.length_m
-        line, vertex = with_vertex(line, arc)
+        line, vertex = with_vertex(line, self._above_plane(line, arc, feed.gap_m))
         if not line.closed and vertex in (0, len(line.points) - 1):
             raise GeometryError(
                 f"feed: at = {feed.at_m * 1e3:.4g} mm is an end of the metal; a cut needs strip on "
@@ -213,6 +225,15 @@ class _Builder:
             )
         line = replace(line, feed=FeedPlace(vertex, feed.gap_m))
         return reopened(line) if line.closed else line
+
+    def _above_plane(self, line: ChainLine, arc_m: float, gap_m: float) -> float:
+        """A cut at the very foot of a strip on the plane begins at the plane: half a gap up."""
+        if line.closed:
+            return arc_m
+        if arc_m < gap_m / 2 and stands_on_plane(line.points[0], self.antenna):
+            return gap_m / 2
+        top = line.length_m - gap_m / 2
+        return top if arc_m > top and stands_on_plane(line.points[-1], self.antenna) else arc_m
 
     # -- order and branches --------------------------------------------------------------------
 

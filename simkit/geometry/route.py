@@ -34,6 +34,18 @@ def longest_path(lines: Sequence[ChainLine]) -> tuple[PathPiece, ...]:
     return (*first[:-1], whole, *ahead[1:])
 
 
+def ends_on_plane(lines: Sequence[ChainLine], path: Sequence[PathPiece]) -> tuple[bool, bool]:
+    """Whether the start and the end of a path stand on a ground plane."""
+
+    def stands(chain: int, arc_m: float) -> bool:
+        line = lines[chain]
+        return line.start_on_plane if arc_m < line.length_m / 2 else line.end_on_plane
+
+    if lines[0].closed:
+        return False, False
+    return stands(path[0].chain, path[0].start_m), stands(path[-1].chain, path[-1].end_m)
+
+
 def _length(pieces: Sequence[PathPiece]) -> float:
     return sum(abs(piece.end_m - piece.start_m) for piece in pieces)
 

@@ -112,11 +112,15 @@ class WireGrid:
         Segments and volts of the feed and of the second, off-centre source; the volts of each add
         up to 1, so the terminal current is their weighted mean of the segment currents.
     model_gap_m, study_gap_m, feed_width_m : float
-        Gap the engine's source acts like, gap of the study, strip width there.
+        Gap the engine's source acts like, gap of the study, strip width there. A feed between a
+        strip's foot and a ground plane counts twice the width: that gap has the charge of two, of
+        the strip to its image and back.
     relative_error : float
         Standard error of mode frequencies expected of the rules used.
     doubts : tuple of str
         Limits of the rules that this grid exceeds, one sentence each.
+    path_on_plane : (bool, bool)
+        The path's start and end stand on a ground plane, where it goes on into its image.
     """
 
     wires: tuple[Wire, ...]
@@ -135,6 +139,7 @@ class WireGrid:
     feed_width_m: float
     relative_error: float
     doubts: tuple[str, ...] = ()
+    path_on_plane: tuple[bool, bool] = (False, False)
 
     @property
     def segments(self) -> int:
