@@ -107,7 +107,7 @@ def _mode_cells(mode: Row) -> list[str]:
     number = mode["half_waves"]
     error = mode.get("frequency_error")
     return [
-        half_wave_label(-1 if number is None else number),
+        half_wave_label(-1 if number is None else number, mode.get("on_plane", False)),
         frequency_text(mode["frequency_hz"]),
         number_text(error * 100, 2, "%") if error is not None else "-",
         number_text(mode.get("q"), 2),

@@ -39,7 +39,9 @@ class NaturalMode:
     pole_hz : complex
         Complex natural frequency; its imaginary part, positive, is the decay rate over 2 pi.
     half_waves : int
-        Half waves of current along the tip-to-tip path (whole periods times two on a loop).
+        Half waves of current along the tip-to-tip path (whole periods times two on a loop); for a
+        path that stands on a ground plane, along it and its image, so that quarter waves of the
+        path itself.
     current : (S,) complex array
         Segment currents, the largest being 1 and real.
     feed_residue_hz : complex
@@ -135,14 +137,19 @@ def half_waves(current: ComplexArray, grid: WireGrid) -> int:
     Returns
     -------
     int
-        Phase reversals plus one from tip to tip; phase reversals once round a loop.
+        Phase reversals plus one from tip to tip; phase reversals once round a loop. A path that
+        stands on a ground plane goes on into its image, from tip to tip or once round: the number
+        then counts quarter waves of the path itself.
     """
     along = turned_to_real(current_along_path(current, grid)[1]).real
     loud = along[abs(along) > QUIET * abs(along).max()]
     signs = np.sign(loud)
     if grid.path_closed:
         return int(np.sum(signs != np.roll(signs, 1)))
-    return int(np.sum(signs[1:] != signs[:-1])) + 1
+    reversals = int(np.sum(signs[1:] != signs[:-1]))
+    feet = sum(grid.path_on_plane)
+    # The image carries the current on through the foot without a reversal there.
+    return reversals + 1 if not feet else 2 * reversals + (feet == 1)
 
 
 def turned_to_real(current: ComplexArray) -> ComplexArray:

@@ -8,11 +8,12 @@ from typing import Any
 
 import numpy as np
 
-from simkit.engine.pynec import SeriesLoad, solve_wires
+from simkit.engine.pynec import EarthMethod, SeriesLoad, solve_wires
 from simkit.errors import EngineError, GeometryError
 from simkit.geometry import MeshPlan, WireGrid, build_wires
 from simkit.geometry.conductor import face_resistance_ohm
-from simkit.geometry.wires import FloatArray
+from simkit.geometry.placement import far_from_earth
+from simkit.geometry.wires import FloatArray, IntArray
 from simkit.response.modes import NaturalMode, find_modes
 from simkit.response.ownership import OwnedFeatures, owned_features
 from simkit.response.pattern import (
@@ -24,6 +25,7 @@ from simkit.response.pattern import (
 from simkit.response.rational import ComplexArray, Sweep, adaptive_sweep
 from simkit.response.strip_current import current_along_strips, totals_matrix
 from simkit.response.terminals import feed_impedance_ohm
+from simkit.runner.convergence import Convergence, converge
 from simkit.runner.result import CaseResult
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
 from simkit.study.model import Antenna
@@ -58,12 +60,42 @@ def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
         sweep = sweep_currents(antenna, grid)
         solves = len(sweep.model.frequency_hz)
         arrays, doubts = _evaluate(antenna, grid, sweep)
+        if antenna.converge:
+            errors = _convergence(antenna, plan, grid, sweep).relative_error
+            arrays["mode_frequency_error"] = _padded(errors)
     except GeometryError as error:
         return CaseResult(Status.REFUSED, str(error), time.perf_counter() - begin, solves)
     except EngineError as error:
         return CaseResult(Status.FAILED, str(error), time.perf_counter() - begin, solves)
     status = Status.DOUBTFUL if doubts else Status.SOLVED
-    return CaseResult(status, "; ".join(doubts), time.perf_counter() - begin, solves, arrays)
+    words = "; ".join([*doubts, *_notes(antenna, arrays["mode_half_waves"])])
+    return CaseResult(status, words, time.perf_counter() - begin, solves, arrays)
+
+
+def solve_convergence(antenna: Antenna, plan: MeshPlan) -> Convergence:
+    """Mode frequencies of one case on its planned mesh, on coarser and on finer ones.
+
+    Raises
+    ------
+    GeometryError, EngineError
+        The case has no solution on its planned mesh.
+    """
+    grid = build_wires(antenna, plan)
+    return _convergence(antenna, plan, grid, sweep_currents(antenna, grid))
+
+
+def _convergence(antenna: Antenna, plan: MeshPlan, grid: WireGrid, sweep: Sweep) -> Convergence:
+    band = antenna.frequency
+
+    def modes(grid: WireGrid, sweep: Sweep) -> Sequence[NaturalMode]:
+        return find_modes(sweep, grid, band.start_hz, band.stop_hz)[:MODES]
+
+    return converge(
+        antenna,
+        plan,
+        modes(grid, sweep),
+        lambda antenna, grid: modes(grid, sweep_currents(antenna, grid)),
+    )
 
 
 def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3) -> Sweep:
@@ -81,9 +113,13 @@ def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3)
             frequency_hz,
             [grid.source, grid.probe],
             series=_series_loads(antenna, grid, frequency_hz),
+            ground=antenna.ground,
+            earth=earth,
         )
         return np.asarray(currents.ravel(), dtype=np.complex128)
 
+    # One way for the whole band: a change from one to the other would be a step.
+    earth: EarthMethod = "integrals" if far_from_earth(grid, antenna) else "reflection"
     band = antenna.frequency
     totals = totals_matrix(grid)
     none = np.zeros_like(totals)
@@ -141,24 +177,29 @@ def _evaluate(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> tuple[dict[str,
     modes = find_modes(sweep, grid, band.start_hz, band.stop_hz)[:MODES]
     features = owned_features(modes, frequency_hz, impedance, antenna.reference_ohm)
     arrays: dict[str, Any] = {"impedance": impedance}
-    arrays |= _grid_arrays(grid) | _sample_arrays(antenna, grid, sweep)
+    arrays |= _grid_arrays(grid) | _ground_arrays(antenna) | _sample_arrays(antenna, grid, sweep)
     arrays |= _mode_arrays(antenna, grid, modes) | _feature_arrays(features)
     radiation = [
         _radiation(antenna, grid, sweep, mode, owned)
         for mode, owned in zip(modes, features, strict=True)
     ]
     arrays |= _stacked(radiation)
-    return arrays, _doubts(grid, sweep, modes, radiation)
+    return arrays, _doubts(antenna, grid, sweep, modes, radiation)
 
 
 def _doubts(
-    grid: WireGrid, sweep: Sweep, modes: Sequence[NaturalMode], radiation: list[dict[str, Any]]
+    antenna: Antenna,
+    grid: WireGrid,
+    sweep: Sweep,
+    modes: Sequence[NaturalMode],
+    radiation: list[dict[str, Any]],
 ) -> list[str]:
     found = list(grid.doubts)
     if not sweep.converged:
         found.append(
             f"the frequency sweep did not settle within {len(sweep.model.frequency_hz)} samples "
             f"(last difference {sweep.error:.1e}): narrow the band"
+            + (", or leave [ground] out if it is far below" if antenna.ground else "")
         )
     for mode, row in zip(modes, radiation, strict=True):
         if abs(row["power_balance"] - 1) > BALANCE_TOLERANCE:
@@ -167,6 +208,23 @@ def _doubts(
                 f"waves) radiated and lost power are {row['power_balance']:.3f} of the input "
                 f"power; 1 within {BALANCE_TOLERANCE} is expected"
             )
+    return found
+
+
+def _notes(antenna: Antenna, half_waves: IntArray) -> list[str]:
+    """What to know of a case over a ground, without being doubtful for it."""
+    if antenna.ground is None:
+        return []
+    found = []
+    if antenna.ground.kind == "earth":
+        found.append("over real earth the power balance is not checked: the earth's part is unseen")
+    numbered = half_waves[half_waves >= 0]
+    if len(set(numbered)) < len(numbered):
+        found.append(
+            "several natural modes have the same number: the ground's echo comes back after a mode "
+            "has mostly died away, and antenna and ground resonate together; without [ground] the "
+            "modes are those of the antenna alone"
+        )
     return found
 
 
@@ -185,11 +243,24 @@ def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
         "wire_radius": grid.radius_m,
         "source_segment": grid.source[0][0],
         "source_weight": source_weight(grid),
+        "path_on_plane": int(any(grid.path_on_plane)),
     }
     for axis, name in enumerate("xyz"):
         arrays[name] = radiators.middle_m[:, axis]
         arrays[f"direction_{name}"] = radiators.direction[:, axis]
     return arrays
+
+
+def _ground_arrays(antenna: Antenna) -> dict[str, Any]:
+    ground = antenna.ground
+    if ground is None:
+        return {"ground_permittivity": np.nan, "ground_conductivity": np.nan}
+    if ground.kind == "plane":
+        return {"ground_permittivity": 1.0, "ground_conductivity": np.inf}
+    return {
+        "ground_permittivity": ground.relative_permittivity,
+        "ground_conductivity": ground.conductivity_s_per_m,
+    }
 
 
 def _sample_arrays(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> dict[str, Any]:
@@ -270,13 +341,17 @@ def _radiation(
 
     A mode the feed excites is shown as it is driven, at its conductance peak; the others by their
     own current at the natural frequency, with the balance taken for the second source.
+
+    Over real earth there is no balance. What the earth takes is the rest of the input power and
+    counts as lost; a mode that the feed does not excite has none, so it is taken to lose the same
+    part as the currents of the second source.
     """
     driven = owned.peak is not None
     frequency_hz = owned.peak.frequency_hz if owned.peak else mode.frequency_hz
     both = sweep.model(np.array([frequency_hz]))[0].reshape(2, -1)
     fed, source = (both[0], grid.source) if driven else (both[1], grid.probe)
     shown = fed if driven else mode.current
-    radiators = Radiators.of(grid)
+    radiators = Radiators.of(grid, antenna.ground)
     resistance = grid.per_segment(resistance_ohm_per_m(antenna, grid, frequency_hz))
 
     def lost_w(current: ComplexArray) -> float:
@@ -285,9 +360,12 @@ def _radiation(
     input_w = 0.5 * sum(volts * fed[segment].real for segment, volts in source)
     radiated_w = radiated_power_w(radiators, fed, frequency_hz)
     balance = (radiated_w + lost_w(fed)) / input_w
+    radiated_share = radiated_w / input_w
     if not driven:
         radiated_w = radiated_power_w(radiators, shown, frequency_hz)
     efficiency = radiated_w / (radiated_w + lost_w(shown))
+    if antenna.ground is not None and antenna.ground.kind == "earth":
+        efficiency, balance = radiated_share, float("nan")
     gain = gain_grid_dbi(
         radiators, shown, frequency_hz, radiated_w / efficiency, THETA_DEG, PHI_DEG
     )
