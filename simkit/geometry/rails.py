@@ -123,7 +123,9 @@ def bundle_radius(offsets: NDArray[np.floating[Any]], radius: float) -> float:
     np.fill_diagonal(distance, radius)
     size = float(distance.max())
     charge = np.linalg.solve(-np.log(distance / (2 * size)), np.ones(len(offsets)))
-    return float(2 * size * np.exp(-1.0 / charge.sum()))
+    total = float(charge.sum())
+    # Wires so close that thin-wire potentials mean nothing: as if they filled everything.
+    return float(2 * size * np.exp(-1.0 / total)) if total > 0 else float("inf")
 
 
 @lru_cache(maxsize=4096)
