@@ -10,12 +10,11 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 from scipy.optimize import brentq
 
+from simkit.crosssection.radius import static_radius_m
 from simkit.errors import GeometryError
 from simkit.geometry.wires import FloatArray
 
@@ -106,26 +105,7 @@ def rail_rule(narrowest_m: float, widest_m: float, count: int | None = None) -> 
 def closest_radius_widths(count: int) -> float:
     """Wire radius over width at which rails as close as they may be act like the strip."""
     closest = (np.arange(count) - (count - 1) / 2) * CLOSEST_RADII
-    return 1.0 / (4.0 * bundle_radius(closest, 1.0))
-
-
-def bundle_radius(offsets: NDArray[np.floating[Any]], radius: float) -> float:
-    """Static radius of thin parallel wires at one potential, in the unit of the arguments.
-
-    Parameters
-    ----------
-    offsets : (N,) float array
-        Places along a line.
-    radius : float
-        Of each wire. The charge of each is taken on its axis, as the engine does.
-    """
-    distance = abs(offsets[:, None] - offsets[None])
-    np.fill_diagonal(distance, radius)
-    size = float(distance.max())
-    charge = np.linalg.solve(-np.log(distance / (2 * size)), np.ones(len(offsets)))
-    total = float(charge.sum())
-    # Wires so close that thin-wire potentials mean nothing: as if they filled everything.
-    return float(2 * size * np.exp(-1.0 / total)) if total > 0 else float("inf")
+    return 1.0 / (4.0 * static_radius_m(closest, 1.0))
 
 
 @lru_cache(maxsize=4096)
@@ -143,10 +123,10 @@ def _spread(count: int, width_radii: float) -> tuple[float, ...]:
         shape = (1 - blend) * equal + blend * charge
 
         def excess(scale: float) -> float:
-            return bundle_radius(scale * shape, 1.0) - width_radii / 4
+            return static_radius_m(scale * shape, 1.0) - width_radii / 4
 
-        # Rails much closer than two radii are no bundle; such a shape only says "too close".
-        low, high = 1.5 / float(np.diff(shape).min()), 4 * width_radii
+        # Rails closer than two radii overlap; such a shape only says "too close".
+        low, high = 2.0 / float(np.diff(shape).min()), 4 * width_radii
         if excess(low) >= 0:
             return np.asarray(low * shape)
         return np.asarray(brentq(excess, low, high, xtol=1e-12) * shape)
