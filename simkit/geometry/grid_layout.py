@@ -24,6 +24,11 @@ below they turn on the mitre line."""
 CORNER_RUNGS_WIDTHS = (0.2, 0.8)
 JUNCTION_RUNGS_WIDTHS = (0.6, 1.2)
 
+STEP_JUMPS = 1.7
+"""Half the length of a step in width over the farthest that a rail is moved: rails 2.1 radii apart
+then keep two radii on the slant. Against flat metal steps of 1.5 and 2 are good to 0.33 and 0.38 %
+in mode frequency."""
+
 Widen = Callable[[float], float]
 """Effective width of a drawn width, metres: the carrier's doing; the identity without one."""
 
@@ -298,7 +303,9 @@ class _Walk:
         line = self.line
         arc = float(line.arcs_m[vertex])
         before, after = float(line.width_before_m[vertex]), float(line.width_after_m[vertex])
-        half = max(1.1 * self.rule.radius_m, 0.05 * min(before, after))
+        sides = [self.rule.offsets_m(self.widen(width)) for width in (before, after)]
+        jump = float(np.max(abs(sides[0] - sides[1])))
+        half = max(1.1 * self.rule.radius_m, 0.05 * min(before, after), STEP_JUMPS * jump)
         self.put(arc - half, tied=before > after, width_m=before)
         self.put(arc + half, tied=after > before, single=True, width_m=after)
 
