@@ -213,7 +213,7 @@ def _corners(line: ChainLine, kinds: Sequence[VertexKind]) -> list[_Corner]:
         if kind != "figure":
             continue
         at = line.points[vertex]
-        if turn > FIGURE_UP_TO_RAD + 1e-9:
+        if turn > FIGURE_UP_TO_RAD:
             raise GeometryError(
                 f"the corner at ({at[0] * 1e3:.4g}, {at[1] * 1e3:.4g}) mm turns by "
                 f"{np.rad2deg(turn):.0f} degrees; the line model holds up to 120: open the corner "

@@ -30,8 +30,8 @@ two segments. On the legs beside a plain bend the power balance is off by 1 % at
 60, 7 % at 90; on the chamfer it stays within 2 %. The figure agrees with the plain bend to 0.02 %
 in frequency at 20 degrees, so nothing jumps where one takes over from the other."""
 
-FIGURE_UP_TO_RAD = np.deg2rad(120.0)
-"""Fold-backs beyond this are outside the rules."""
+FIGURE_UP_TO_RAD = np.deg2rad(120.01)
+"""Fold-backs beyond 120 degrees are outside the rules; the rest is for rounded path points."""
 
 NODE_FROM_RAD = np.deg2rad(5.0)
 """A bend from here up, between legs of some segments, gets a node of its own."""
@@ -39,6 +39,9 @@ NODE_FROM_RAD = np.deg2rad(5.0)
 SHORTEST_RADII = 2.12
 """The engine refuses wires of one segment, and meeting wires, of segments under two radii; the rest
 is room for runs that give part of their length to the source segment."""
+
+UNEVEN_RUNS = 1.4
+"""Segments of a short run may come out longer than the shortest by this, for they must be equal."""
 
 SHORTEST_STRAIGHT_RADII = 1.31
 """Inside one straight wire shorter segments pass; a narrow case of a sweep may then ask for more
@@ -102,7 +105,25 @@ def excuse(antenna: Antenna, lines: Sequence[ChainLine]) -> str:
         for problem in (_corner_excuse(line), _tee_excuse(lines, line)):
             if problem:
                 return problem
-    return ""
+    return _segment_excuse(antenna, lines)
+
+
+def _segment_excuse(antenna: Antenna, lines: Sequence[ChainLine]) -> str:
+    """Wide strips at high frequencies: segments that must be long for the width are too long."""
+    line = lines[0]
+    straight = len(lines) == 1 and not line.closed and not np.any(turns(line.points) > 1e-6)
+    feed = line.feed
+    if straight and feed and abs(line.arcs_m[feed.vertex] - line.length_m / 2) < 1e-6:
+        return ""  # one wire, whose segments may be shorter
+    needed = UNEVEN_RUNS * SHORTEST_RADII * dressing_of(antenna).radius_m(line.widest_m)
+    wavelength = light_speed / antenna.frequency.stop_hz
+    if needed < wavelength / 10:
+        return ""
+    return (
+        f"a width of {line.widest_m * 1e3:.4g} mm asks for segments of up to {needed * 1e3:.3g} mm "
+        "beside corners and an off-centre feed and the line model needs a tenth of the wavelength "
+        f"({wavelength * 1e2:.3g} mm)"
+    )
 
 
 def _place(point: FloatArray) -> str:
@@ -120,7 +141,7 @@ def _corner_excuse(line: ChainLine) -> str:
                 f"{where} has a leg of {shortest / line.widest_m:.2g} widths and the line model "
                 f"needs {SHORTEST_LEG_WIDTHS}"
             )
-        if turn > FIGURE_UP_TO_RAD + 1e-9:
+        if turn > FIGURE_UP_TO_RAD:
             return (
                 f"{where} turns by {np.rad2deg(turn):.0f} degrees and the line model holds to 120"
             )
@@ -128,13 +149,15 @@ def _corner_excuse(line: ChainLine) -> str:
 
 
 def _straight_run(line: ChainLine, vertex: int, way: int) -> float:
-    """Length from a vertex to the next bend, feed aside, in one direction."""
+    """Length from a vertex to the next bend, feed and seam aside, in one direction."""
     legs, bends = leg_lengths(line.points), turns(line.points)
-    total, at = 0.0, vertex
-    while at + min(way, 0) >= 0 and at + max(way, 0) < len(line.points):
+    total, at, last = 0.0, vertex, len(line.points) - 1
+    while total < line.length_m:
         total += float(legs[at - 1] if way < 0 else legs[at])
         at += way
-        if at in (0, len(line.points) - 1) or bends[at - 1] > NODE_FROM_RAD:
+        if line.closed and at in (0, last):
+            at = last - at  # a loop begins within a leg
+        elif at in (0, last) or bends[at - 1] > NODE_FROM_RAD:
             break
     return total
 
