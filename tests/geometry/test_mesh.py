@@ -1,14 +1,16 @@
 """One mesh topology for a whole study."""
 
 import json
+from dataclasses import replace
 
 import numpy as np
 import pytest
 from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
-from simkit.geometry import build_wires, plan_mesh
-from simkit.geometry.line_rules import chamfer_m, corner_offset_m, whisker_m
+from simkit.geometry import build_wires, chains_of, plan_mesh
+from simkit.geometry.line_rules import chamfer_m, corner_offset_m, excuse, whisker_m
+from simkit.study.model import Strip
 
 
 def counts(antennas):
@@ -164,3 +166,79 @@ def test_plan_goes_to_json_and_back(make):
     assert kept["why"] == "line model: every strip, corner and junction is within its limits"
     assert kept["chains"][0]["vertices"] == ["feed", "figure"]
     assert kept["chains"][0]["counts"] == list(plan.chains[0].counts)
+
+
+# -- the choice of the model -----------------------------------------------------------------------
+
+
+def kind_and_why(antenna):
+    plan = plan_mesh([antenna])
+    return plan.kind, plan.why
+
+
+@pytest.mark.parametrize("wanted", ["line", "grid"])
+def test_the_study_may_ask_for_a_model(make, wanted):
+    antenna = replace(make.straight(150, 6, 75), model=wanted)
+    assert kind_and_why(antenna) == (wanted, f"the study asks for the {wanted} model")
+
+
+def test_one_case_outside_the_limits_of_the_line_model_makes_all_a_grid(make):
+    """Also one that comes last, so that nothing in a sweep jumps from one model to the other."""
+    narrow, wide = make.straight(80, 6, 40), make.straight(80, 18, 40)
+    assert plan_mesh([narrow]).kind == "line"
+    plan = plan_mesh([narrow, narrow, wide])
+    assert plan.kind == "grid"
+    assert "0.23 of its length wide" in plan.why
+
+
+@pytest.mark.parametrize(
+    ("leg", "turn", "kind"), [(60, 90, "line"), (14, 90, "grid"), (60, 120, "line"), (60, 125, "grid")]
+)
+def test_corners_within_the_limits_of_the_line_model(make, leg, turn, kind):
+    end = (60 + leg * np.cos(np.deg2rad(turn)), leg * np.sin(np.deg2rad(turn)))
+    # Rounded as path points written by hand are.
+    path = [(0, 0), (60, 0), tuple(round(v, 3) for v in end)]
+    assert plan_mesh([make.strip(path, 6, 20)]).kind == kind
+
+
+def test_legs_of_a_loop_count_across_its_seam(make):
+    """The loop begins in the middle of a leg of 30 mm: 5 widths, not 2.5 or less."""
+    for at in (15, 45, 75, 105):
+        assert plan_mesh([make.loop(30, 30, 6, at)]).kind == "line", at
+    short = make.loop(60, 12, 6, 30)
+    why = excuse(short, chains_of(short))
+    assert "has a leg of 2 widths and the line model needs 2.5" in why
+
+
+@pytest.mark.parametrize(
+    ("width", "at", "stop", "kind"),
+    [(20, 75, 3e9, "line"), (20, 37.5, 3e9, "grid"), (20, 37.5, 1.9e9, "line"), (6, 40, 3e9, "line")],
+)
+def test_a_wide_strip_fed_off_its_centre_may_need_segments_too_long_for_the_band(
+    make, width, at, stop, kind
+):
+    """Three wires need segments over two radii; one wire, fed in the middle, does not."""
+    antenna = make.straight(150, width, at, band=make.band(0.3e9, stop, 11))
+    assert plan_mesh([antenna]).kind == kind
+    build_wires(antenna, plan_mesh([antenna]))
+
+
+@pytest.mark.parametrize(
+    ("angle", "kind"), [(90, "line"), (88, "line"), (86, "grid"), (60, "grid")]
+)
+def test_branches_square_to_their_host(make, angle, kind):
+    antenna = make.straight(120, 6, 25)
+    end = (0.075 + 0.04 * np.cos(np.deg2rad(angle)), 0.04 * np.sin(np.deg2rad(angle)))
+    branch = Strip("branch", ((0.075, 0.0), end), 0.006)
+    plan = plan_mesh([replace(antenna, strips=(*antenna.strips, branch))])
+    assert plan.kind == kind
+    if kind == "grid":
+        assert f"meet at {angle} degrees and the line model holds for a right angle" in plan.why
+
+
+def test_strips_of_different_widths_are_a_grid(make):
+    antenna = make.dipole([(1, 0), (60, 0)], [(-1, 0), (-60, 0)], 4)
+    east, west = antenna.strips
+    kind, why = kind_and_why(replace(antenna, strips=(east, replace(west, width_m=0.005))))
+    assert kind == "grid"
+    assert "widths run from 4 to 5 mm and the line model holds for one width" in why

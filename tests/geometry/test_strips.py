@@ -12,7 +12,6 @@ from simkit.geometry.strips import (
     check_strips,
     equivalent_radius_m,
     model_gap_m,
-    rail_model_gap_m,
 )
 
 from simkit.study.model import EndFeed, Strip
@@ -42,14 +41,6 @@ def test_model_gap_rises_smoothly_on_and_beyond_its_table():
     slope = np.diff(np.log(gaps)) / np.diff(np.log(segments))
     assert np.all(slope > 0.8)
     assert np.all(slope < 3.0)
-
-
-@pytest.mark.parametrize("scale", [0.5, 3.0])
-@pytest.mark.parametrize("rails", [3, 7])
-def test_gap_of_rails_scales_with_the_strip(scale, rails):
-    assert rail_model_gap_m(0.003 * scale, 0.005 * scale, rails) == pytest.approx(
-        scale * rail_model_gap_m(0.003, 0.005, rails), rel=1e-12
-    )
 
 
 @pytest.mark.parametrize("scale", [0.5, 3.0])
