@@ -15,7 +15,7 @@ import numpy as np
 from scipy.optimize import brentq
 
 from simkit.errors import EngineError, GeometryError
-from simkit.geometry import MeshPlan, WireGrid, build_wires
+from simkit.geometry import MeshPlan, WireGrid, build_wires, chains_of
 from simkit.geometry.refine import cut_count, refined
 from simkit.response.modes import NaturalMode
 from simkit.study.model import Antenna
@@ -72,12 +72,14 @@ class Convergence:
     ----------
     half_waves : tuple of int
         Of the modes on the planned mesh, from the lowest up.
+    on_plane : bool
+        They are those of the path and its image in a ground plane.
     levels : tuple of Level
         From the coarsest mesh to the finest, the planned one among them.
     planned : int
         Its place among the levels.
     other_rails : Level or None
-        Grid model: the planned lengths with another number of rails.
+        Grid model: the planned lengths with another number of rails, where no strips join in a T.
     mesh_error : tuple of float
         Relative error of each mode frequency that the meshes speak for.
     how : tuple of str
@@ -91,6 +93,7 @@ class Convergence:
     """
 
     half_waves: tuple[int, ...]
+    on_plane: bool
     levels: tuple[Level, ...]
     planned: int
     other_rails: Level | None
@@ -155,12 +158,13 @@ def converge(
             levels.append(made)
         last = other if factor > 1 else plan
     levels.sort(key=lambda level: -level.size)
-    rails = _other_rails(plan)
+    rails = _other_rails(antenna, plan)
     beside = level(f"{rails} rails", replace(plan, rails=rails)) if rails else None
     planned = next(k for k, level in enumerate(levels) if level.size == 1.0)
     errors, words = _errors(levels, planned, beside)
     return Convergence(
         half_waves=tuple(mode.half_waves for mode in modes),
+        on_plane=any(grid.path_on_plane),
         levels=tuple(levels),
         planned=planned,
         other_rails=beside,
@@ -172,9 +176,12 @@ def converge(
     )
 
 
-def _other_rails(plan: MeshPlan) -> int:
-    """Another number of rails for which there are rules, 0 in the line model."""
-    if plan.kind == "line":
+def _other_rails(antenna: Antenna, plan: MeshPlan) -> int:
+    """Another number of rails for which there are rules; 0 in the line model and for T junctions.
+
+    The rails of a branch cut the strip it ends on, so with another number the mesh is another.
+    """
+    if plan.kind == "line" or any(line.tees for line in chains_of(antenna, tips=False)):
         return 0
     return plan.rails + 2 if plan.rails < 9 else plan.rails - 2
 
