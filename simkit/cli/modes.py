@@ -33,13 +33,20 @@ X = 0: series resonance at the feed with its resistance.  gain: the largest, in 
 @json_option
 @csv_option
 @case_option
-def command(results: str, as_json: bool, as_csv: bool, case: int | None) -> None:
+@click.option(
+    "--places", is_flag=True, help="List where each mode's current is largest and where it is zero."
+)
+def command(results: str, as_json: bool, as_csv: bool, case: int | None, places: bool) -> None:
     """List the natural modes of the results in DIR, with the dips and resonances they own.
+
+    With --places: the places of their current maxima and nodes, which is where feeds and supports
+    go; JSON has them under the key "places" of each mode.
 
     \b
     Example:
       simkit modes results/creek_gauge
       simkit modes results/creek_gauge --case 2 --json
+      simkit modes results/creek_gauge --case 2 --places
     """
     form = one_format(as_json, as_csv)
     from simkit.store import open_results
@@ -52,12 +59,29 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None) -> None
             raise click.UsageError(f"--case {case}: these results hold the cases 0 to {last}.")
         dataset = dataset.sel(case=[case])
     rows = modes(dataset)
+    if places:
+        show_places(dataset, rows, results, form)
+        return
     if form == "json":
         emit(json_text(rows))
     elif form == "csv":
         emit(csv_text(flat_rows(rows, _attribute(dataset, "units"))))
     else:
         emit(f"{modes_table(rows, _attribute(dataset, 'display_unit'))}\n\n{_KEY}")
+
+
+def show_places(dataset: xr.Dataset, rows: list[Row], results: str, form: str) -> None:
+    """Print maxima and nodes instead of what the modes own; in JSON besides."""
+    from simkit.cli.folder import study_of
+    from simkit.cli.places import PLACES_KEY, add_places, flat_places, places_table
+
+    add_places(rows, dataset, study_of(results), results)
+    if form == "json":
+        emit(json_text(rows))
+    elif form == "csv":
+        emit(csv_text(flat_places(rows)))
+    else:
+        emit(f"{places_table(rows)}\n\n{PLACES_KEY}")
 
 
 def _attribute(dataset: xr.Dataset, attribute: str) -> dict[str, str]:
