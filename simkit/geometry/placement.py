@@ -151,7 +151,6 @@ def _trimmed_at_its_foot(strip: Strip, point: FloatArray, antenna: Antenna) -> b
 
 def _check_wires(grid: WireGrid, antenna: Antenna) -> None:
     ground = "plane" if antenna.ground is not None and antenna.ground.kind == "plane" else "earth"
-    feet: set[Vector] = set()
     for wire in grid.wires:
         heights = wire.start_m[2], wire.end_m[2]
         low = wire.start_m if heights[0] <= heights[1] else wire.end_m
@@ -181,12 +180,6 @@ def _check_wires(grid: WireGrid, antenna: Antenna) -> None:
                     else ", or let the strip's end stand on the plane"
                 )
             )
-        if stands and low in feet:
-            raise GeometryError(
-                f"a strip touches the plane at {_mm(low)} on its way, not with an end of it: lift "
-                "the antenna in [placement], or end the strip there"
-            )
-        feet |= {low} if stands else set()
         if stands and _slope_rad(wire) < FLATTEST_RAD:
             raise GeometryError(
                 f"the strip at {_mm(low)} leans to {np.rad2deg(_slope_rad(wire)):.0f} degrees from "

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -26,6 +27,12 @@ LEAST_COHERENCE = 0.5
 """Below this a pole's current flows between the rails of a bundle, not along the strip: an artefact
 of the model. Modes of strips have 0.9 and more, those between rails under 0.2."""
 
+ECHO_LIKENESS = 0.6
+ECHO_STRENGTH = 0.15
+"""Two modes of one number are one mode and a ground's echo of it if their currents overlap so much,
+or if one is so much weaker. A dipole's echoes near its mode have 0.9 and more; those between two
+modes have 0.3 to 0.7 and a tenth of the strength."""
+
 QUIET = 0.05
 """Currents under this part of the largest do not count when phase reversals are counted."""
 
@@ -46,12 +53,15 @@ class NaturalMode:
         Segment currents, the largest being 1 and real.
     feed_residue_hz : complex
         Residue of the feed admittance, siemens times Hz: how strongly the feed excites the mode.
+    strength_s : float
+        Size of the currents at the mode's resonance for 1 V at either source, siemens.
     """
 
     pole_hz: complex
     half_waves: int
     current: ComplexArray
     feed_residue_hz: complex
+    strength_s: float = 0.0
 
     @property
     def frequency_hz(self) -> float:
@@ -122,7 +132,36 @@ def _mode(pole_hz: complex, residue: ComplexArray, grid: WireGrid) -> NaturalMod
     shape = np.linalg.svd(by_source, full_matrices=False)[2][0]
     shape = shape / shape[int(np.argmax(abs(shape)))]
     feed = sum((volts * by_source[0, segment] for segment, volts in grid.source), 0j)
-    return NaturalMode(pole_hz, half_waves(shape, grid), shape, complex(feed))
+    strength = float(np.linalg.norm(residue)) / pole_hz.imag
+    return NaturalMode(pole_hz, half_waves(shape, grid), shape, complex(feed), strength)
+
+
+def without_echoes(modes: Sequence[NaturalMode]) -> tuple[NaturalMode, ...]:
+    """Of modes of one number, those alike the strongest or much weaker than it are left out.
+
+    Notes
+    -----
+    From half a wavelength above a ground up, waves run to the ground and back while a mode dies
+    away. Antenna and ground then resonate together, as two or more poles where the antenna alone
+    has one.
+    """
+    kept: list[NaturalMode] = []
+    for mode in sorted(modes, key=lambda mode: -mode.strength_s):
+        if not any(
+            mode.half_waves == other.half_waves
+            and (
+                alike(mode.current, other.current) > ECHO_LIKENESS
+                or mode.strength_s < ECHO_STRENGTH * other.strength_s
+            )
+            for other in kept
+        ):
+            kept.append(mode)
+    return tuple(sorted(kept, key=lambda mode: mode.frequency_hz))
+
+
+def alike(first: ComplexArray, other: ComplexArray) -> float:
+    """Overlap of two current shapes, 0 to 1."""
+    return float(abs(np.vdot(first, other)) / (np.linalg.norm(first) * np.linalg.norm(other)))
 
 
 def half_waves(current: ComplexArray, grid: WireGrid) -> int:

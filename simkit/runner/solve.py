@@ -13,8 +13,8 @@ from simkit.errors import EngineError, GeometryError
 from simkit.geometry import MeshPlan, WireGrid, build_wires
 from simkit.geometry.conductor import face_resistance_ohm
 from simkit.geometry.placement import far_from_earth
-from simkit.geometry.wires import FloatArray, IntArray
-from simkit.response.modes import NaturalMode, find_modes
+from simkit.geometry.wires import FloatArray
+from simkit.response.modes import NaturalMode, find_modes, without_echoes
 from simkit.response.ownership import OwnedFeatures, owned_features
 from simkit.response.pattern import (
     Radiators,
@@ -59,7 +59,7 @@ def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
         grid = build_wires(antenna, plan)
         sweep = sweep_currents(antenna, grid)
         solves = len(sweep.model.frequency_hz)
-        arrays, doubts = _evaluate(antenna, grid, sweep)
+        arrays, doubts, notes = _evaluate(antenna, grid, sweep)
         if antenna.converge:
             errors = _convergence(antenna, plan, grid, sweep).relative_error
             arrays["mode_frequency_error"] = _padded(errors)
@@ -68,7 +68,7 @@ def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
     except EngineError as error:
         return CaseResult(Status.FAILED, str(error), time.perf_counter() - begin, solves)
     status = Status.DOUBTFUL if doubts else Status.SOLVED
-    words = "; ".join([*doubts, *_notes(antenna, arrays["mode_half_waves"])])
+    words = "; ".join([*doubts, *notes])
     return CaseResult(status, words, time.perf_counter() - begin, solves, arrays)
 
 
@@ -85,17 +85,32 @@ def solve_convergence(antenna: Antenna, plan: MeshPlan) -> Convergence:
 
 
 def _convergence(antenna: Antenna, plan: MeshPlan, grid: WireGrid, sweep: Sweep) -> Convergence:
-    band = antenna.frequency
-
-    def modes(grid: WireGrid, sweep: Sweep) -> Sequence[NaturalMode]:
-        return find_modes(sweep, grid, band.start_hz, band.stop_hz)[:MODES]
-
     return converge(
         antenna,
         plan,
-        modes(grid, sweep),
-        lambda antenna, grid: modes(grid, sweep_currents(antenna, grid)),
+        _modes(antenna, grid, sweep)[0],
+        lambda antenna, grid: _modes(antenna, grid, sweep_currents(antenna, grid))[0],
     )
+
+
+def _modes(
+    antenna: Antenna, grid: WireGrid, sweep: Sweep
+) -> tuple[tuple[NaturalMode, ...], list[str]]:
+    """Natural modes to keep, and what to say of others."""
+    band = antenna.frequency
+    found = find_modes(sweep, grid, band.start_hz, band.stop_hz)
+    if antenna.ground is None:
+        return found[:MODES], []
+    kept = without_echoes(found)
+    stay = {mode.pole_hz for mode in kept}
+    gone = [f"{m.frequency_hz / 1e6:.1f}" for m in found if m.pole_hz not in stay]
+    if not gone:
+        return kept[:MODES], []
+    return kept[:MODES], [
+        "the ground's echo comes back when a mode has largely died away, so antenna and ground "
+        f"resonate together; left out are weaker natural modes at {', '.join(gone)} MHz with the "
+        "same current as one that is kept; without [ground] the modes are those of the antenna"
+    ]
 
 
 def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3) -> Sweep:
@@ -169,12 +184,15 @@ def source_weight(grid: WireGrid) -> FloatArray:
     return weight
 
 
-def _evaluate(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> tuple[dict[str, Any], list[str]]:
+def _evaluate(
+    antenna: Antenna, grid: WireGrid, sweep: Sweep
+) -> tuple[dict[str, Any], list[str], list[str]]:
+    """Arrays of the store, doubts, and notes: what to know without being doubtful for it."""
     band = antenna.frequency
     frequency_hz = np.linspace(band.start_hz, band.stop_hz, band.points)
     currents = sweep.model.matrix(frequency_hz) @ sweep.model.values[:, : grid.segments]
     impedance = feed_impedance(grid, currents, frequency_hz)
-    modes = find_modes(sweep, grid, band.start_hz, band.stop_hz)[:MODES]
+    modes, notes = _modes(antenna, grid, sweep)
     features = owned_features(modes, frequency_hz, impedance, antenna.reference_ohm)
     arrays: dict[str, Any] = {"impedance": impedance}
     arrays |= _grid_arrays(grid) | _ground_arrays(antenna) | _sample_arrays(antenna, grid, sweep)
@@ -184,7 +202,9 @@ def _evaluate(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> tuple[dict[str,
         for mode, owned in zip(modes, features, strict=True)
     ]
     arrays |= _stacked(radiation)
-    return arrays, _doubts(antenna, grid, sweep, modes, radiation)
+    if antenna.ground is not None and antenna.ground.kind == "earth":
+        notes.append("over real earth the power balance is not checked: the earth's part is unseen")
+    return arrays, _doubts(antenna, grid, sweep, modes, radiation), notes
 
 
 def _doubts(
@@ -208,23 +228,6 @@ def _doubts(
                 f"waves) radiated and lost power are {row['power_balance']:.3f} of the input "
                 f"power; 1 within {BALANCE_TOLERANCE} is expected"
             )
-    return found
-
-
-def _notes(antenna: Antenna, half_waves: IntArray) -> list[str]:
-    """What to know of a case over a ground, without being doubtful for it."""
-    if antenna.ground is None:
-        return []
-    found = []
-    if antenna.ground.kind == "earth":
-        found.append("over real earth the power balance is not checked: the earth's part is unseen")
-    numbered = half_waves[half_waves >= 0]
-    if len(set(numbered)) < len(numbered):
-        found.append(
-            "several natural modes have the same number: the ground's echo comes back after a mode "
-            "has mostly died away, and antenna and ground resonate together; without [ground] the "
-            "modes are those of the antenna alone"
-        )
     return found
 
 

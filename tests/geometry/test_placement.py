@@ -145,7 +145,7 @@ def test_feeds_at_the_foot_and_above_it_share_no_study(make):
     above = replace(foot, feed=CutFeed("strip", 30e-3, 0.6e-3))
     plan = plan_mesh([foot, foot, above])
     build_wires(foot, plan)
-    with pytest.raises(GeometryError, match="at the foot of a strip on the plane .* split the"):
+    with pytest.raises(GeometryError, match=r"at the foot of a strip on the plane .* split"):
         build_wires(above, plan)
 
 
