@@ -208,6 +208,7 @@ def _mark_ends_and_feed(ax: Axes, antenna: Antenna) -> None:
         ("D", 9, 1.8, FEED_COLOUR, f"feed, gap {feed.gap_m * _MM:.3g} mm", [feed.middle_m]),
         ("o", 7, 1.4, INK, "open end", ends.open_m),
         ("s", 6, 1.4, INK, "strips joined", ends.joined_m),
+        ("v", 9, 1.4, INK, "on the ground plane", ends.grounded_m),
     )
     for marker, size, edge, colour, label, places in marks:
         shown = np.asarray(places, dtype=float).reshape(-1, 2) * _MM

@@ -13,6 +13,7 @@ from shapely.geometry.base import BaseGeometry
 from shapely.ops import substring
 
 from simkit.geometry.outlines import outline
+from simkit.geometry.placement import stands_on_plane
 from simkit.study.model import Antenna, CutFeed, EndFeed, Placement, Strip
 
 TOUCH_M = 1e-6
@@ -43,10 +44,11 @@ class FeedPlace:
 
 @dataclass(frozen=True)
 class StripEnds:
-    """Places of strip ends: open ones, and those that lie on another strip."""
+    """Places of strip ends: open ones, those on another strip, those on the ground plane."""
 
     open_m: tuple[Place, ...]
     joined_m: tuple[Place, ...]
+    grounded_m: tuple[Place, ...] = ()
 
 
 def is_closed(strip: Strip) -> bool:
@@ -98,6 +100,7 @@ def strip_ends(antenna: Antenna) -> StripEnds:
     shapes = {strip.name: outline(strip) for strip in antenna.strips}
     open_ends: list[Place] = []
     joined: list[Place] = []
+    grounded: list[Place] = []
     for strip in antenna.strips:
         for end in ("start", "end"):
             if (strip.name, end) in fed or is_closed(strip):
@@ -105,11 +108,13 @@ def strip_ends(antenna: Antenna) -> StripEnds:
             place = _end(strip, end)
             others = [shape for name, shape in shapes.items() if name != strip.name]
             face = _end_face(strip, end)
-            if all(face.distance(shape) > TOUCH_M for shape in others):
+            if stands_on_plane(place, antenna):
+                grounded.append(place)
+            elif all(face.distance(shape) > TOUCH_M for shape in others):
                 open_ends.append(place)
             elif all(Point(place).distance(Point(known)) > TOUCH_M for known in joined):
                 joined.append(place)
-    return StripEnds(tuple(open_ends), tuple(joined))
+    return StripEnds(tuple(open_ends), tuple(joined), tuple(grounded))
 
 
 def _strip(antenna: Antenna, name: str) -> Strip:

@@ -20,6 +20,10 @@ from simkit.geometry.wires import FloatArray, IntArray, PathPiece, StripSpan
 from simkit.response.rational import ComplexArray
 from simkit.study.model import Antenna, Strip
 
+REACH_WIDTHS = 0.625
+"""How far around a joint, in widths of the wider strip, the current is that of neither side: half a
+width of metal, and what a segment of the model more takes."""
+
 SHORTEST_M = 1e-6
 """A micrometre of metal is an overlap of rounding, not a part of a strip."""
 
@@ -69,7 +73,7 @@ class Leg:
 
 @dataclass(frozen=True)
 class Joining:
-    """Where another strip ends on the route: current enters or leaves within `reach_m` of it."""
+    """Where strips are joined: current enters or leaves the route within `reach_m` of it."""
 
     distance_m: float
     reach_m: float
@@ -118,17 +122,24 @@ class Route:
         Returns
         -------
         distance_m : (K,) float array
-            Not falling; two values at a place where the route turns into another strip.
+            Not falling.
         current : (K,) complex array
+            It jumps at a joint, where two values stand at one distance: within the reach of a
+            joint, where current passes from strip to strip, the values from its two sides are
+            carried on.
         """
-        distances, currents = [], []
+        distances: list[FloatArray] = []
+        currents: list[ComplexArray] = []
         for leg in self.legs:
             along = leg.clipped(position * leg.strip_length_m)
             along = np.concatenate([[leg.start_m], along, [leg.end_m]])
             row = np.interp(along / leg.strip_length_m, position, current[leg.strip])
             distances.append(leg.distance_m(along))
-            currents.append(leg.sign * row)
-        return np.concatenate(distances), np.concatenate(currents).astype(np.complex128)
+            currents.append(np.asarray(leg.sign * row, dtype=np.complex128))
+        at, flow = np.concatenate(distances), np.concatenate(currents)
+        for joining in self.joinings:
+            at, flow = _settled(at, flow, joining)
+        return at, flow
 
     def knots_m(self, strip_index: IntArray, strip_position: FloatArray) -> FloatArray:
         """Distances of the model's segments, and of open ends: where the current is really known.
@@ -167,6 +178,21 @@ class Route:
         columns = np.array(places)
         x, y = (float(np.interp(distance_m, ends, columns[:, axis])) for axis in (0, 1))
         return x, y
+
+
+def _settled(
+    distance_m: FloatArray, current: ComplexArray, joining: Joining
+) -> tuple[FloatArray, ComplexArray]:
+    before = distance_m < joining.distance_m - joining.reach_m
+    after = distance_m > joining.distance_m + joining.reach_m
+    carried = np.array([*current[before][-1:], *current[after][:1]], dtype=np.complex128)
+    if not carried.size:
+        return distance_m, current
+    place = np.full(carried.size, joining.distance_m)
+    return (
+        np.concatenate([distance_m[before], place, distance_m[after]]),
+        np.concatenate([current[before], carried, current[after]]),
+    )
 
 
 def _point(strip: Strip, along_m: float) -> tuple[float, float]:
@@ -237,14 +263,9 @@ def _route(lines: Sequence[ChainLine], pieces: Sequence[PathPiece], start: str =
         for vertex, branch in line.tees:
             arc = float(line.arcs_m[vertex])
             if low - SHORTEST_M <= arc <= high + SHORTEST_M:
-                reach = (
-                    max(
-                        _width_at_joint(lines[branch], piece.chain),
-                        line.width_at(np.array([arc]))[0],
-                    )
-                    / 2
-                )
-                joinings.append(Joining(begin + abs(arc - piece.start_m), float(reach)))
+                host = float(line.width_at(np.array([arc]))[0])
+                reach = REACH_WIDTHS * max(_width_at_joint(lines[branch], piece.chain), host)
+                joinings.append(Joining(begin + abs(arc - piece.start_m), reach))
         if line.feed is not None:
             arc = float(line.arcs_m[line.feed.vertex])
             feed = begin + abs(arc - piece.start_m) if low <= arc <= high else feed
@@ -258,14 +279,14 @@ def _route(lines: Sequence[ChainLine], pieces: Sequence[PathPiece], start: str =
 
 
 def _own_joint(lines: Sequence[ChainLine], piece: PathPiece) -> Joining:
-    """Where a branch leaves its host: the current settles within half a width of the wider one."""
+    """Where a branch leaves its host."""
     line = lines[piece.chain]
     joint = line.start if piece.end_m >= piece.start_m else line.end
     width = line.width_at(np.array([piece.start_m]))[0]
     if joint is not None:
         host = lines[joint.chain]
         width = max(width, host.width_before_m[joint.vertex], host.width_after_m[joint.vertex])
-    return Joining(0.0, float(width) / 2)
+    return Joining(0.0, REACH_WIDTHS * float(width))
 
 
 def _width_at_joint(branch: ChainLine, host: int) -> float:

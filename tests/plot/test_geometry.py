@@ -17,6 +17,7 @@ from simkit.study.model import (
     CutFeed,
     EndFeed,
     FrequencyBand,
+    Ground,
     Metal,
     Placement,
     Strip,
@@ -95,6 +96,16 @@ def test_a_strip_ending_on_another_is_joined(root_y: float) -> None:
         marker(plot_geometry(antenna), "strips joined"), [[30, root_y * 1e3]]
     )
     assert len(strip_ends(antenna).open_m) == 3
+
+
+def test_an_end_on_the_ground_plane_is_not_open() -> None:
+    upright = Placement(((0.0, 0.0, -1.0), (0.0, 1.0, 0.0), (1.0, 0.0, 0.0)))
+    rod = Strip("rod", ((0.0, 0.0), (0.08, 0.0)), 0.006)
+    feed = CutFeed("rod", 0.02, 0.001)
+    antenna = Antenna((rod,), BRASS, feed, 50.0, BAND, placement=upright, ground=Ground("plane"))
+    ax = plot_geometry(antenna)
+    np.testing.assert_allclose(marker(ax, "on the ground plane"), [[0, 0]])
+    np.testing.assert_allclose(marker(ax, "open end"), [[80, 0]])
 
 
 def test_tapers_are_named_by_both_widths() -> None:

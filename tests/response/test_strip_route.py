@@ -46,7 +46,8 @@ def test_path_takes_the_longer_way_at_a_joint_and_leaves_the_rest_as_a_branch() 
     assert (rest.start, rest.open_end) == ("joint", True)
     assert [joint.distance_m for joint in path.joinings] == pytest.approx([0.07])
     assert rest.joinings[0].distance_m == 0.0
-    assert rest.joinings[0].reach_m == pytest.approx(0.0025)
+    # Half a width of the wider strip, and a quarter more for the model to settle.
+    assert rest.joinings[0].reach_m == pytest.approx(1.25 * 0.0025)
 
 
 def test_short_branch_runs_away_from_its_joint() -> None:
@@ -75,6 +76,21 @@ def test_loop_is_run_once_round_from_opposite_the_feed() -> None:
     assert path.locate(path.feed_m) == (0, pytest.approx(0.025))
     assert path.point_m(path.feed_m, (strip,)) == pytest.approx((0.025, 0.0))
     assert turns_m(path) == []
+
+
+def test_current_jumps_at_a_joint_and_is_carried_on_to_it() -> None:
+    """What the model has inside the joint belongs to neither side."""
+    path, rest = routes_of(antenna_of(BEAM, STUB, at_m=0.09))
+    beam = np.where(POSITION < 1 / 3, 0.2, 0.9).astype(complex)
+    beam[abs(POSITION - 1 / 3) < 0.0025 / 0.12] = -7.0
+    stub = np.where(POSITION < 0.068 / 0.07, 0.7, 7.0).astype(complex)
+    distance, current = path.current(np.array([beam, stub]), POSITION)
+    assert set(np.round(current.real, 12)) == {0.7, 0.9}
+    np.testing.assert_allclose(distance[np.flatnonzero(np.diff(current))], 0.07)
+    assert np.count_nonzero(abs(distance - 0.07) < 1e-12) == 2
+    distance, current = rest.current(np.array([beam, stub]), POSITION)
+    assert distance[0] == 0.0
+    np.testing.assert_allclose(current, -0.2)
 
 
 @pytest.mark.parametrize(
