@@ -5,6 +5,7 @@ Every shape is drawn for a band to 3 GHz; lengths are in millimetres.
 
 from collections import Counter
 from dataclasses import replace
+from functools import cache
 from itertools import combinations
 
 import numpy as np
@@ -47,9 +48,7 @@ def slanted(angle_deg, width=6.0, branch=6.0, start=0.0, side=1):
     """A bar and a branch that leaves it at an angle; `start` along the branch from the axis."""
     along = np.array([np.cos(np.deg2rad(angle_deg)), side * np.sin(np.deg2rad(angle_deg))])
     path = [tuple(np.array([15, 0]) + s * along) for s in (start, 40)]
-    return of(
-        strip("bar", [(-60, 0), (60, 0)], width), strip("branch", path, branch), at=25
-    )
+    return of(strip("bar", [(-60, 0), (60, 0)], width), strip("branch", path, branch), at=25)
 
 
 SHAPES = {
@@ -87,6 +86,7 @@ SHAPES = {
 named = pytest.mark.parametrize("name", SHAPES)
 
 
+@cache
 def grid_of(antenna):
     return build_wires(antenna, plan_mesh([antenna]))
 
@@ -189,9 +189,7 @@ def test_chain_has_the_strips_rails_at_each_place(name):
 def test_mirrored_antenna_is_the_mirrored_grid(name):
     """Rails are numbered from the other edge: the same wires, in another order."""
     antenna = SHAPES[name]
-    flipped = tuple(
-        replace(s, path_m=tuple((x, -y) for x, y in s.path_m)) for s in antenna.strips
-    )
+    flipped = tuple(replace(s, path_m=tuple((x, -y) for x, y in s.path_m)) for s in antenna.strips)
     one, other = grid_of(antenna), grid_of(replace(antenna, strips=flipped))
     assert other.radius_m == one.radius_m
     wires = [sorted_wires(ends_of(one) * [1, -1, 1]), sorted_wires(ends_of(other))]
@@ -414,9 +412,12 @@ def test_an_even_interval_is_straight_and_of_one_width():
     assert not is_even(line, found[0])
 
 
-STEPS = {ratio: of(
-    strip("west", [(-75, 0), (0, 0)], 6), strip("east", [(0, 0), (75, 0)], 6 * ratio), at=35
-) for ratio in (1.5, 2.0)}
+STEPS = {
+    ratio: of(
+        strip("west", [(-75, 0), (0, 0)], 6), strip("east", [(0, 0), (75, 0)], 6 * ratio), at=35
+    )
+    for ratio in (1.5, 2.0)
+}
 
 
 @pytest.mark.parametrize("ratio", STEPS)

@@ -314,9 +314,7 @@ def test_junction_is_a_rhombus_with_nothing_at_its_centre(make, side, start):
     grid = grid_of(tee(make, side=side, start=start))
     a, b = (72, 0), (78, 0)
     k, m = (75, -1.5 * side), (75, 5.4 * side)
-    pieces = {
-        tuple(sorted([mm(w.start_m), mm(w.end_m)])) for w in grid.wires if w.segments == 1
-    }
+    pieces = {tuple(sorted([mm(w.start_m), mm(w.end_m)])) for w in grid.wires if w.segments == 1}
     assert {tuple(sorted(pair)) for pair in ((a, k), (k, b), (a, m), (m, b))} <= pieces
     points = np.vstack(segment_ends_mm(grid))
     assert np.min(np.linalg.norm(points - [75, 0], axis=1)) > 1.4

@@ -192,7 +192,8 @@ def test_one_case_outside_the_limits_of_the_line_model_makes_all_a_grid(make):
 
 
 @pytest.mark.parametrize(
-    ("leg", "turn", "kind"), [(60, 90, "line"), (14, 90, "grid"), (60, 120, "line"), (60, 125, "grid")]
+    ("leg", "turn", "kind"),
+    [(60, 90, "line"), (14, 90, "grid"), (60, 120, "line"), (60, 125, "grid")],
 )
 def test_corners_within_the_limits_of_the_line_model(make, leg, turn, kind):
     end = (60 + leg * np.cos(np.deg2rad(turn)), leg * np.sin(np.deg2rad(turn)))
@@ -212,7 +213,12 @@ def test_legs_of_a_loop_count_across_its_seam(make):
 
 @pytest.mark.parametrize(
     ("width", "at", "stop", "kind"),
-    [(20, 75, 3e9, "line"), (20, 37.5, 3e9, "grid"), (20, 37.5, 1.9e9, "line"), (6, 40, 3e9, "line")],
+    [
+        (20, 75, 3e9, "line"),
+        (20, 37.5, 3e9, "grid"),
+        (20, 37.5, 1.9e9, "line"),
+        (6, 40, 3e9, "line"),
+    ],
 )
 def test_a_wide_strip_fed_off_its_centre_may_need_segments_too_long_for_the_band(
     make, width, at, stop, kind

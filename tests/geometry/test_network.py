@@ -4,6 +4,7 @@ Lengths are in millimetres; chains are compared by the polyline they follow, eit
 """
 
 from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -22,9 +23,7 @@ def strip(name, path_mm, width_mm=4.0):
 
 
 def antenna(*strips, feed):
-    return Antenna(
-        strips, Metal("perfect", None, 0.0), feed, 50.0, FrequencyBand(0.3e9, 3e9, 11)
-    )
+    return Antenna(strips, Metal("perfect", None, 0.0), feed, 50.0, FrequencyBand(0.3e9, 3e9, 11))
 
 
 def cut(name, at_mm, gap_mm=0.4):
@@ -249,7 +248,7 @@ class TestLoops:
         bounds = np.linspace(0, 4, parts + 1).round().astype(int)
         strips = [
             strip(f"part {k}", corners[a : b + 1] if k % 2 else corners[a : b + 1][::-1])
-            for k, (a, b) in enumerate(zip(bounds[:-1], bounds[1:], strict=True))
+            for k, (a, b) in enumerate(pairwise(bounds))
         ]
         (line,) = chains_of(antenna(*strips, feed=cut("part 0", 15)))
         assert line.closed

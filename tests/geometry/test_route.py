@@ -1,5 +1,7 @@
 """The longest way from tip to tip through the feed. Millimetres."""
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 
@@ -35,7 +37,7 @@ def ends_mm(lines, path):
 
 def joints_meet(lines, path):
     """Each piece begins where the one before it ends, in space."""
-    for one, other in zip(path[:-1], path[1:], strict=True):
+    for one, other in pairwise(path):
         a, b = lines[one.chain], lines[other.chain]
         end = [np.interp(one.end_m, a.arcs_m, a.points[:, k]) for k in range(2)]
         start = [np.interp(other.start_m, b.arcs_m, b.points[:, k]) for k in range(2)]

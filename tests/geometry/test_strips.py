@@ -13,7 +13,6 @@ from simkit.geometry.strips import (
     equivalent_radius_m,
     model_gap_m,
 )
-
 from simkit.study.model import EndFeed, Strip
 
 
@@ -132,8 +131,8 @@ def test_an_end_that_stops_just_short_of_another_strip(make, start_y, short):
     antenna = with_third(make, "stub", [(40, start_y), (40, 30)])
     refused(
         antenna,
-        rf"the start of strip 'stub' at \(40, {start_y}\) mm stops {short} mm short of strip 'east', "
-        "less than its own width of 4 mm: let it touch, or leave more room",
+        rf"the start of strip 'stub' at \(40, {start_y}\) mm stops {short} mm short of strip "
+        "'east', less than its own width of 4 mm: let it touch, or leave more room",
     )
 
 

@@ -10,7 +10,7 @@ from __future__ import annotations
 import sys
 import tomllib
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cache
 from pathlib import Path
 from typing import Any
 
@@ -139,7 +139,7 @@ class Checked:
     errors: tuple[Error, ...]
 
 
-@lru_cache(maxsize=None)
+@cache
 def check(name: str, kind: str = "auto") -> Checked:
     """Plan, solve and compare one shape."""
     shape = SHAPES[name]
@@ -148,13 +148,14 @@ def check(name: str, kind: str = "auto") -> Checked:
     result = solve_case(antenna, plan)
     if not result.arrays:
         return Checked(plan.kind, 0, result, ())
-    found = result.arrays["mode_frequency"] * 1e-9
-    q = result.arrays["mode_q"]
+    count = int(np.isfinite(result.arrays["mode_frequency"]).sum())
+    found = result.arrays["mode_frequency"][:count] * 1e-9
+    q = result.arrays["mode_q"][:count]
     errors = []
     for mode in checked_modes(shape):
         # By the complex frequency: two modes of different damping may lie side by side.
         wanted = mode["frequency_ghz"] * (1 + 0.5j / mode["q"])
-        slot = int(np.nanargmin(abs(found * (1 + 0.5j / q) - wanted)))
+        slot = int(np.argmin(abs(found * (1 + 0.5j / q) - wanted)))
         errors.append(
             Error(
                 mode["half_waves"],

@@ -199,7 +199,9 @@ def shapes_on_rails(grid, number, shares):
     arcs, place = path.places()
     order = np.argsort(place, kind="stable")
     share = np.tile(shares, len(arcs))
-    current[path.segments[order]] = share * np.sin(number * np.pi * arcs / path.length_m)[place[order]]
+    current[path.segments[order]] = (
+        share * np.sin(number * np.pi * arcs / path.length_m)[place[order]]
+    )
     return np.tile(current, 2)
 
 
