@@ -9,7 +9,7 @@ import numpy as np
 
 from simkit.geometry.wires import FloatArray, WireGrid
 from simkit.response.rational import ComplexArray, Sweep
-from simkit.response.strip_current import coherence, current_along_path
+from simkit.response.strip_current import coherence, current_along_path, path_turns_m
 
 LEAST_RESIDUE = 1e-3
 """Poles whose residue is smaller than this part of the largest are noise of the fit."""
@@ -32,6 +32,9 @@ ECHO_STRENGTH = 0.15
 """Two modes of one number are one mode and a ground's echo of it if their currents overlap so much,
 or if one is so much weaker. A dipole's echoes near its mode have 0.9 and more; those between two
 modes have 0.3 to 0.7 and a tenth of the strength."""
+
+TURN_WIDTHS = 1.2
+"""Reach of a junction figure along the strips, in widths."""
 
 QUIET = 0.05
 """Currents under this part of the largest do not count when phase reversals are counted."""
@@ -180,8 +183,12 @@ def half_waves(current: ComplexArray, grid: WireGrid) -> int:
         stands on a ground plane goes on into its image, from tip to tip or once round: the number
         then counts quarter waves of the path itself.
     """
-    along = turned_to_real(current_along_path(current, grid)[1]).real
-    loud = along[abs(along) > QUIET * abs(along).max()]
+    distance, along_path = current_along_path(current, grid)
+    along = turned_to_real(along_path).real
+    # Where the path turns from one chain into another the current belongs to neither.
+    turning = np.min(abs(distance[:, None] - path_turns_m(grid)[None]), axis=1, initial=np.inf)
+    counts = turning > TURN_WIDTHS * grid.feed_width_m
+    loud = along[counts & (abs(along) > QUIET * abs(along).max())]
     signs = np.sign(loud)
     if grid.path_closed:
         return int(np.sum(signs != np.roll(signs, 1)))

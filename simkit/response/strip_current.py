@@ -122,6 +122,12 @@ def current_along_path(
     return distance, value
 
 
+def path_turns_m(grid: WireGrid) -> FloatArray:
+    """Distances along the path at which it turns from one chain into another."""
+    lengths = [abs(piece.end_m - piece.start_m) for piece in grid.path]
+    return np.cumsum(lengths)[:-1]
+
+
 def _along(
     current: ComplexArray, grid: WireGrid, piece: PathPiece, distance_m: FloatArray
 ) -> ComplexArray:
