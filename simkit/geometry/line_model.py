@@ -27,6 +27,7 @@ from simkit.geometry.mesh import (
     chamfer_m,
     runs,
     signature,
+    split_counts,
     whisker_m,
 )
 from simkit.geometry.paths import leg_lengths, point_at, sub_path, turns, unit
@@ -69,7 +70,10 @@ def build_wires(antenna: Antenna, plan: MeshPlan) -> WireGrid:
     for index, (line, chain_plan) in enumerate(zip(lines, plan.chains, strict=True)):
         centred = plan.centred and index == 0
         doubts += _corner_doubts(line, chain_plan.vertices)
-        chains.append(maker.chain(line, chain_plan.vertices, chain_plan.counts, centred=centred))
+        counts = chain_plan.counts
+        if plan.moving and index == 0:
+            counts = split_counts(runs(line, chain_plan.vertices, centred=False), counts)
+        chains.append(maker.chain(line, chain_plan.vertices, counts, centred=centred))
     source, source_length = maker.source(lines[0], chains[0])
     # Corner figures were found with these very wires, up to 12 mm wide and 3.6 GHz: not a doubt.
     plain = [wire for k, wire in enumerate(maker.wires) if k not in maker.figure_wires]

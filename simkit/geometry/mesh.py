@@ -42,6 +42,10 @@ segments than a wide one would choose. Mode frequencies move by 0.06 % over 1.31
 
 TARGET_WIDTHS = 0.4
 TARGET_WAVELENGTHS = 1 / 40
+MOVING_SHARE = 0.1
+"""A feed that divides its leg less unevenly than this over a study keeps its counts on both sides:
+lengths then stretch, and nothing jumps."""
+
 LONGEST_WAVELENGTHS = 1 / 18
 """Longer segments make a case doubtful. Against flat metal, mode frequencies of a strip of 1/100 of
 its length are off by 0.07 % with segments of 1/23 wavelength, 0.10 % at 1/20, 0.13 % at 1/17; wider
@@ -70,11 +74,15 @@ class MeshPlan:
         The feed sits in the middle of its run in every case: one wire, fed on its middle segment.
     chains : tuple of ChainPlan
         The fed one first.
+    moving : bool
+        The feed moves along its leg from case to case: the leg keeps its number of segments, which
+        each case shares out to both sides of the feed (`split_counts`).
     """
 
     feed_kind: FeedKind
     centred: bool
     chains: tuple[ChainPlan, ...]
+    moving: bool = False
 
     def as_dict(self) -> dict[str, Any]:
         """Plain lists and text, fit for JSON."""
@@ -112,11 +120,13 @@ def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
     ]
     laid_out = _with_room_for_the_feed(laid_out, vertices[0])
     centred = all(_is_centred(lines[0], vertices[0]) for _, lines in laid_out)
+    moving = not centred and _feed_moves([lines[0] for _, lines in laid_out], vertices[0])
     chains = []
     for chain, kinds in enumerate(vertices):
         cases = [(antenna, lines[chain]) for antenna, lines in laid_out]
-        chains.append(ChainPlan(kinds, _counts(cases, kinds, centred and chain == 0)))
-    return MeshPlan(feed_kind, centred, tuple(chains))
+        fed = chain == 0
+        chains.append(ChainPlan(kinds, _counts(cases, kinds, centred and fed, moving and fed)))
+    return MeshPlan(feed_kind, centred, tuple(chains), moving)
 
 
 def _common_feed_kind(antennas: Sequence[Antenna]) -> FeedKind:
@@ -258,8 +268,53 @@ def _is_centred(line: Skeleton, kinds: Sequence[VertexKind]) -> bool:
     return abs(middle - line.feed.arc_m) < 1e-9 + 1e-7 * line.length_m
 
 
+def _fed_pair(stretches: Sequence[Run]) -> tuple[int, int] | None:
+    """The two runs on either side of an off-centre feed inside a leg."""
+    fed = [index for index, run in enumerate(stretches) if run.fed]
+    return (fed[0], fed[1]) if len(fed) == 2 else None
+
+
+def _left_share(stretches: Sequence[Run], pair: tuple[int, int]) -> float:
+    left, right = (stretches[index] for index in pair)
+    return (left.stop_m - left.start_m) / (right.stop_m - left.start_m)
+
+
+def _feed_moves(lines: Sequence[Skeleton], kinds: Sequence[VertexKind]) -> bool:
+    """True if the feed takes places on one leg that no fixed counts on both sides would serve."""
+    several = [runs(line, kinds, centred=False) for line in lines]
+    pairs = {_fed_pair(stretches) for stretches in several}
+    pair = pairs.pop()
+    if pair is None or pairs:
+        return False
+    shares = [_left_share(stretches, pair) for stretches in several]
+    return max(shares) - min(shares) > MOVING_SHARE
+
+
+def split_counts(stretches: Sequence[Run], counts: Sequence[int]) -> tuple[int, ...]:
+    """Share the segments of the fed leg out to both sides of a moving feed, by length.
+
+    The source takes one segment more. The shorter side is rounded down rather than up, because the
+    engine refuses segments that are too short and bears those that are a little long.
+    """
+    pair = _fed_pair(stretches)
+    if pair is None:
+        return tuple(counts)
+    total = counts[pair[0]] + counts[pair[1]]
+    share = _left_share(stretches, pair)
+    short = int(np.floor(min(share, 1 - share) * (total + 1) - 0.5 + 0.35))
+    short = min(max(short, 1), total - 1)
+    found = list(counts)
+    found[pair[0]], found[pair[1]] = (
+        (short, total - short) if share <= 0.5 else (total - short, short)
+    )
+    return tuple(found)
+
+
 def _counts(
-    cases: Sequence[tuple[Antenna, Skeleton]], kinds: Sequence[VertexKind], centred: bool
+    cases: Sequence[tuple[Antenna, Skeleton]],
+    kinds: Sequence[VertexKind],
+    centred: bool,
+    moving: bool = False,
 ) -> tuple[int, ...]:
     """Segments of each run: the finest wish of any case, as far as the fattest case allows."""
     wishes, limits = [], []
@@ -273,6 +328,11 @@ def _counts(
         target = max(shortest, TARGET_WIDTHS * line.width_m, TARGET_WAVELENGTHS * wavelength)
         # An off-centre source segment takes about half a segment from the run on either side.
         spare = np.array([0.5 if run.fed and not centred else 0.0 for run in stretches])
+        pair = _fed_pair(stretches) if moving else None
+        if pair is not None:
+            # Both sides alike: their sum is what counts. The allowance is for uneven sharing.
+            lengths[list(pair)] = lengths[list(pair)].mean()
+            shortest, target = 1.15 * shortest, max(target, 1.15 * shortest)
         wishes.append(lengths / target - spare)
         limits.append(lengths / shortest - spare)
     # The small allowance keeps a count that is exact on paper from falling to the next lower one.
