@@ -145,7 +145,7 @@ JUNCTIONS = [
 
 
 def _slant(angle: float, meets: float, width: float, branch_width: float) -> dict[str, Any]:
-    end = [meets + round(40 * cos(radians(angle)), 6), round(40 * sin(radians(angle)), 6)]
+    end = [round(meets + 40 * cos(radians(angle)), 6), round(40 * sin(radians(angle)), 6)]
     bar = {"path": [[-60.0, 0.0], [60.0, 0.0]], "width": width}
     branch = {"path": [[meets, 0.0], end], "width": branch_width}
     more = "" if branch_width == width else f"-branch-{branch_width:g}"
