@@ -1,0 +1,1 @@
+"""Lines, stubs and networks between the antenna's terminals and the connector, and their design."""
