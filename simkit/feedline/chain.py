@@ -75,7 +75,7 @@ class ChainResult:
     @property
     def mismatch_factor(self) -> FloatArray:
         """Power into the connector over the available power, (F,): 1 - |reflection|^2."""
-        return self.passed[-1]
+        return np.asarray(self.passed[-1])
 
     @property
     def realised_factor(self) -> FloatArray:
@@ -84,7 +84,7 @@ class ChainResult:
         Times the antenna's gain (IEEE Std 145: without mismatch) it is the realised gain at the
         connector.
         """
-        return self.passed[0]
+        return np.asarray(self.passed[0])
 
     def as_rows(self, frequency_hz: float) -> list[dict[str, float | str]]:
         """Return one row a plane at the sample nearest to a frequency."""

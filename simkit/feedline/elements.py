@@ -280,9 +280,10 @@ class Lumped(Element):
     def reflection(self, frequency_hz: ArrayLike, reference_ohm: float) -> ComplexArray:
         """Return what the part alone reflects, (F,) complex."""
         omega = 2 * np.pi * frequencies(frequency_hz)
-        above, below = self.value * np.ones(len(omega), dtype=np.complex128), np.ones(len(omega))
+        above: ComplexArray = np.full(len(omega), complex(self.value))
+        below = np.ones(len(omega))
         if self.kind == "L":
-            above = omega * self.value * complex(1 / self.q, 1)
+            above = np.asarray(omega * self.value * complex(1 / self.q, 1))
         if self.kind == "C":
             above, below = np.full(len(omega), complex(1 / self.q, -1)), omega * self.value
         return np.asarray((above - reference_ohm * below) / (above + reference_ohm * below))

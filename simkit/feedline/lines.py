@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from functools import cached_property
-from typing import TypeVar
+from typing import Any, TypeVar
 
 import numpy as np
 from scipy.optimize import brentq
@@ -314,7 +314,7 @@ class CoplanarStrips(StripLine):
         )
 
 
-AnyStrips = TypeVar("AnyStrips", TwoStrips, StripOverPlate, CoplanarStrips)
+AnyStrips = TypeVar("AnyStrips", bound=TwoStrips | StripOverPlate | CoplanarStrips)
 
 NARROWEST, WIDEST = 0.02, 50.0
 
@@ -339,9 +339,10 @@ def width_for(line: AnyStrips, impedance_ohm: float) -> AnyStrips:
 
     def of_width(log_m: float) -> AnyStrips:
         width_m = float(np.exp(log_m))
-        if isinstance(line, StripOverPlate):
-            return replace(line, width_m=width_m)
-        return replace(line, width_m=width_m, other_width_m=None)
+        changes: dict[str, Any] = {"width_m": width_m}
+        if not isinstance(line, StripOverPlate):
+            changes["other_width_m"] = None
+        return replace(line, **changes)
 
     def miss(log_m: float) -> float:
         return of_width(log_m).impedance_ohm / impedance_ohm - 1
