@@ -140,14 +140,15 @@ def _fitted(
     apart = [(z - resistance) / (z + resistance) for z in (curve, model)]
     misfit = float(np.abs(apart[0] - apart[1]).max())
     low, high = 2 * np.pi * start_hz, 2 * np.pi * stop_hz
-    tiny = np.finfo(float).tiny
-    neper = min(
-        np.pi * resistance / max(rises * (high - low), tiny),
-        np.pi * resistance / max(falls * (1 / low - 1 / high), tiny),
-        LARGEST_DB,
-    )
+    area = math.pi * resistance
+    neper = min(_share(area, rises * (high - low)), _share(area, falls * (1 / low - 1 / high)))
     best = min(20 / math.log(10) * neper, LARGEST_DB)
     inverse = 1 / falls if falls > 0 else math.inf
     if kind == "series":
         return MatchBound("series", resistance, float(rises), inverse, best, misfit)
     return MatchBound("parallel", 1 / resistance, inverse, float(rises), best, misfit)
+
+
+def _share(area: float, cost: float) -> float:
+    """Area over cost, cut off where it does not matter any more: a cost may be 0."""
+    return area / cost if area < LARGEST_DB * cost else LARGEST_DB

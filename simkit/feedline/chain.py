@@ -10,12 +10,17 @@ from numpy.typing import ArrayLike
 
 from simkit.feedline.checks import ComplexArray, FloatArray, frequencies, positive
 from simkit.feedline.checks import quantity as q
-from simkit.feedline.elements import Element, terminated
+from simkit.feedline.elements import Element
 from simkit.feedline.oneport import OnePort, impedance_of
+from simkit.feedline.waves import terminated
 from simkit.response.features import return_loss_db
 
 if TYPE_CHECKING:
     import skrf
+
+
+NOTHING = 1e-12
+"""Part of the available power that is rounding error."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -70,7 +75,8 @@ class ChainResult:
         0 where the antenna takes nothing, as a purely reactive one does.
         """
         into = self.passed[-1]
-        return np.asarray(np.where(into > 0, self.passed[0] / np.where(into > 0, into, 1), 0.0))
+        some = into > NOTHING
+        return np.asarray(np.where(some, self.passed[0] / np.where(some, into, 1), 0.0))
 
     @property
     def mismatch_factor(self) -> FloatArray:
@@ -227,4 +233,4 @@ class Chain:
             skrf.Network(frequency=band, s=matrix, z0=self.reference_ohm, s_def="power")
             for matrix in (matrices or [through])
         ]
-        return skrf.cascade_list(networks)
+        return skrf.network.cascade_list(networks)

@@ -27,6 +27,7 @@ from simkit.feedline.checks import (
 )
 from simkit.feedline.checks import quantity as q
 from simkit.feedline.line import Line
+from simkit.feedline.waves import cascade, series, shunt, two_port
 
 End = Literal["short", "open"]
 Connection = Literal["shunt", "series"]
@@ -68,30 +69,6 @@ class Element(ABC):
         return ()
 
 
-def _two_port(
-    s11: ComplexArray, s21: ComplexArray, s22: ComplexArray | None = None
-) -> ComplexArray:
-    """Reciprocal two-port; symmetric if `s22` is left out."""
-    last = s11 if s22 is None else s22
-    return np.stack([np.stack([s11, s21], -1), np.stack([s21, last], -1)], -2)
-
-
-def shunt(reflection: ComplexArray, part: float = 1.0) -> ComplexArray:
-    """Two-port of a one-port across the line; `part` of its admittance."""
-    through, across = 1 + reflection, part * (1 - reflection)
-    total = 2 * through + across
-    # An open one-port has total 4, a short one 2 part: 0 only for no part of a short circuit.
-    gone = total == 0
-    total = np.where(gone, 1, total)
-    return _two_port(np.where(gone, 0, -across / total), np.where(gone, 1, 2 * through / total))
-
-
-def series(reflection: ComplexArray, part: float = 1.0) -> ComplexArray:
-    """Two-port of a one-port in the line; `part` of its impedance."""
-    dual = shunt(-reflection, part)
-    return _two_port(-dual[:, 0, 0], dual[:, 1, 0])
-
-
 def _line_two_port(
     line: Line, length_m: float, frequency_hz: FloatArray, reference_ohm: float
 ) -> ComplexArray:
@@ -100,7 +77,7 @@ def _line_two_port(
     rho = (impedance - reference_ohm) / (impedance + reference_ohm)
     once = np.exp(-values.propagation_per_m * length_m)
     below = 1 - rho**2 * once**2
-    return _two_port(rho * (1 - once**2) / below, once * (1 - rho**2) / below)
+    return two_port(rho * (1 - once**2) / below, once * (1 - rho**2) / below)
 
 
 @dataclass(frozen=True)
@@ -332,11 +309,11 @@ class Transformer(Element):
         ones = np.ones(len(frequencies(frequency_hz)), dtype=np.complex128)
         ratio = self.impedance_ratio**part
         first, through = (1 - ratio) / (1 + ratio), 2 * math.sqrt(ratio) / (1 + ratio)
-        ideal = _two_port(first * ones, through * ones, -first * ones)
+        ideal = two_port(first * ones, through * ones, -first * ones)
         rho = (self.nominal_ohm - reference_ohm) / (self.nominal_ohm + reference_ohm)
         once = 10 ** (-part * self.loss_db / 20)
         below = 1 - rho**2 * once**2
-        pad = _two_port(rho * (1 - once**2) / below * ones, once * (1 - rho**2) / below * ones)
+        pad = two_port(rho * (1 - once**2) / below * ones, once * (1 - rho**2) / below * ones)
         return cascade(pad, ideal)
 
 
@@ -374,36 +351,7 @@ class PortExtension(Element):
     ) -> ComplexArray:
         """Return the scattering matrix (see `Element`)."""
         through = np.exp(-2j * np.pi * frequencies(frequency_hz) * self.delay_s * part)
-        return _two_port(np.zeros_like(through), through)
-
-
-def terminated(matrix: ComplexArray, reflection: ComplexArray) -> tuple[ComplexArray, ComplexArray]:
-    """Return the reflection at port 1, and the wave that goes to the load for 1 into port 1.
-
-    Parameters
-    ----------
-    matrix : (F, 2, 2) complex
-    reflection : (F,) complex
-        At port 2.
-
-    Notes
-    -----
-    1 - S22 reflection is 0 only where a passive port 2 reflects everything, that is, where nothing
-    passes: the load is then out of sight.
-    """
-    below = 1 - matrix[:, 1, 1] * reflection
-    blind = below == 0
-    inward = matrix[:, 1, 0] / np.where(blind, 1, below)
-    inward = np.where(blind, 0, inward)
-    return matrix[:, 0, 0] + matrix[:, 0, 1] * reflection * inward, inward
-
-
-def cascade(first: ComplexArray, second: ComplexArray) -> ComplexArray:
-    """Return two reciprocal two-ports in a row, port 2 of the first on port 1 of the second."""
-    s11, onward = terminated(first, second[:, 0, 0])
-    turned = second[:, ::-1, ::-1]
-    s22, _ = terminated(turned, first[:, 1, 1])
-    return _two_port(s11, onward * second[:, 1, 0], s22)
+        return two_port(np.zeros_like(through), through)
 
 
 def _one_of(name: str, value: str, allowed: tuple[str, ...]) -> None:

@@ -336,16 +336,17 @@ def width_for(line: AnyStrips, impedance_ohm: float) -> AnyStrips:
     """
     positive("wanted impedance", impedance_ohm, "ohm")
     distance_m = line.distance_m
+    lossless: dict[str, Any] = {"loss_tangent": 0.0, "conductivity_s_per_m": None}
 
-    def of_width(log_m: float) -> AnyStrips:
+    def of_width(log_m: float, **losses: Any) -> AnyStrips:
         width_m = float(np.exp(log_m))
-        changes: dict[str, Any] = {"width_m": width_m}
+        changes: dict[str, Any] = {"width_m": width_m, **losses}
         if not isinstance(line, StripOverPlate):
             changes["other_width_m"] = None
         return replace(line, **changes)
 
     def miss(log_m: float) -> float:
-        return of_width(log_m).impedance_ohm / impedance_ohm - 1
+        return of_width(log_m, **lossless).impedance_ohm / impedance_ohm - 1
 
     low = high = np.log(np.clip(line.width_m / distance_m, NARROWEST, WIDEST) * distance_m)
     while miss(low) < 0:

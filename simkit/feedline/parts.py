@@ -81,7 +81,7 @@ class PartSupply:
             "C": (self.smallest_f, self.largest_f),
             "R": (1.0, 1e6),
         }[kind]
-        decades = range(math.floor(math.log10(low)) - 1, math.ceil(math.log10(high)))
+        decades = range(math.floor(math.log10(low)) - 1, math.ceil(math.log10(high)) + 1)
         every = (float(f"{digits}e{decade - 1}") for decade in decades for digits in E24)
         slack = 1e-9
         return [v for v in every if low * (1 - slack) <= v <= high * (1 + slack)]

@@ -184,8 +184,11 @@ class StripLine(Line):
     def _sheet_words(self) -> str:
         if self.permittivity == 1:
             return " in air"
-        beyond = "" if self.overhang_m is None else f", {quantity(self.overhang_m, 'm')} beyond"
-        return f" on a sheet of permittivity {self.permittivity:g}{beyond}"
+        wide = ""
+        if self.overhang_m is not None:
+            more = f"{quantity(self.overhang_m, 'm')} wider on each side"
+            wide = f", {more if self.overhang_m else 'no wider than the strips'}"
+        return f" on a sheet of permittivity {self.permittivity:g}{wide}"
 
 
 def scaled(pair: Pair, unit_m: float) -> tuple[Crowding, Crowding]:

@@ -115,7 +115,7 @@ def _line_dimensions(chain: Chain) -> Iterator[Dimension]:
     distinct = list(dict.fromkeys(line for line in lines if line is not None))
     for number, line in enumerate(distinct, start=1):
         which = f"line {number} " if len(distinct) > 1 else "line "
-        names = [f.name for f in fields(line)] if is_dataclass(line) else []
+        names: list[str] = [f.name for f in fields(line)] if is_dataclass(line) else []
         for field in _OF_LINES:
             value = getattr(line, field, None) if field in names else None
             if value:
