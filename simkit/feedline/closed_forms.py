@@ -7,8 +7,6 @@ thickness and of narrow sheets; each function here says how far it is from that.
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 import numpy as np
 from numpy.typing import ArrayLike
 from scipy.constants import c, mu_0
@@ -125,13 +123,3 @@ def coplanar_strips_air_ohm(ratio: ArrayLike) -> FloatArray:
     g = np.asarray(ratio, dtype=np.float64)
     k2 = (g / (g + 2)) ** 2
     return np.asarray(FREE_SPACE_OHM * ellipk(k2) / ellipkm1(k2), dtype=np.float64)
-
-
-def invert(impedance_ohm: Callable[[float], float], wanted_ohm: float) -> float:
-    """Return the ratio, 1e-4 to 1e4, at which a monotonous closed form has the impedance."""
-    from scipy.optimize import brentq
-
-    def miss(log_ratio: float) -> float:
-        return float(impedance_ohm(float(np.exp(log_ratio)))) - wanted_ohm
-
-    return float(np.exp(brentq(miss, np.log(1e-4), np.log(1e4))))
