@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import logging
 import os
-import shutil
 import tempfile
 from concurrent.futures import Future, ThreadPoolExecutor
 from typing import Any, Protocol
@@ -69,7 +68,8 @@ class DaskPool:
     def __init__(self, workers: int, function: str) -> None:
         self.size = workers
         self._function = function
-        self._scratch = tempfile.mkdtemp(prefix="simkit-")
+        # One place for all runs: dask itself clears there what killed runs have left.
+        self._scratch = os.path.join(tempfile.gettempdir(), f"simkit-{os.getuid()}")
         self._settings = self._set_up_dask()
         self._cluster, self._client = self._start(workers)
 
@@ -122,7 +122,6 @@ class DaskPool:
             logging.getLogger(__name__).debug("dask workers were slow to end", exc_info=True)
         finally:
             self._settings.__exit__(None, None, None)
-            shutil.rmtree(self._scratch, ignore_errors=True)
 
 
 def do_block(function: str, job: BlockJob) -> Receipt:

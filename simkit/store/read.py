@@ -166,20 +166,22 @@ def as_grid(dataset: xr.Dataset) -> xr.Dataset:
             f"a part of the cases ({dataset.sizes['case']} of {int(np.prod(shape))}) spans no "
             "grid; unstack the whole dataset first, then select"
         )
-    variables: dict[Any, Any] = {}
-    for name, variable in dataset.variables.items():
-        if name in sizes:
-            axis = stored.index(str(name))
-            grid = variable.values.reshape(shape)
-            line = np.moveaxis(grid, axis, 0).reshape(shape[axis], -1)[:, 0]
-            variables[name] = xr.Variable((name,), line, variable.attrs)
-        elif name == "case":
-            variables[name] = xr.Variable(stored, variable.values.reshape(shape), variable.attrs)
-        elif "case" in variable.dims:
-            variables[name] = variable.unstack(case=sizes)
-        else:
-            variables[name] = variable
+    variables = {
+        name: _on_grid(str(name), variable, sizes) for name, variable in dataset.variables.items()
+    }
     coords = {name: variables.pop(name) for name in dataset.coords}
-    grid_set = xr.Dataset(variables, coords, dataset.attrs)
-    order = (*stored, ...)
-    return grid_set.transpose(*order)
+    return xr.Dataset(variables, coords, dataset.attrs).transpose(*stored, ...)
+
+
+def _on_grid(name: str, variable: xr.Variable, sizes: dict[str, int]) -> xr.Variable:
+    """One variable with the swept dimensions `sizes`, in their order, in place of ``case``."""
+    import xarray as xr
+
+    if "case" not in variable.dims:
+        return variable
+    if name == "case":
+        return xr.Variable(tuple(sizes), variable.values.reshape(*sizes.values()), variable.attrs)
+    grid = variable.unstack(case=sizes)
+    if name in sizes:  # the same along every other swept value
+        return grid.isel({other: 0 for other in sizes if other != name})
+    return grid

@@ -147,6 +147,27 @@ def test_a_feed_swept_past_a_corner_is_refused_only_there(make):
     assert len({*built[:2], *built[4:]}) == 1
 
 
+def test_a_feed_swept_along_its_leg_shares_the_legs_segments(make):
+    """Equal lengths but for a short side of few segments, and the same number in every case."""
+    antennas = [make.straight(150, 6, at) for at in np.linspace(15, 135, 13)]
+    plan = plan_mesh(antennas)
+    assert plan.moving
+    grids = [build_wires(antenna, plan) for antenna in antennas]
+    assert len({grid.segments for grid in grids}) == 1
+    lengths = np.array([[wire.segment_m for wire in grid.wires] for grid in grids])
+    assert lengths.min() > 2.06 * 0.0015
+    assert lengths.max() < 1.35 * lengths.mean()
+    for grid, antenna in zip(grids, antennas, strict=True):
+        ((source, _),) = grid.source
+        middle = np.mean([ends[source][0] for ends in grid.ends_m()])
+        assert middle == pytest.approx(antenna.feed.at_m, abs=1e-12)
+
+
+def test_a_feed_swept_a_little_keeps_its_counts(make):
+    plan = plan_mesh([make.straight(150, 6, at) for at in (40, 45, 50)])
+    assert not plan.moving
+
+
 def test_cases_that_cannot_be_laid_out_do_not_spoil_the_plan(make):
     good, bad = make.straight(150, 6, 40), make.straight(150, 6, 400)
     assert plan_mesh([bad, good, bad]) == plan_mesh([good])

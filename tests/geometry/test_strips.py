@@ -81,6 +81,11 @@ def test_a_path_that_crosses_itself(make):
     refused(antenna, r"'strip' crosses or overlaps itself near \(30, 0\) mm: its legs 1 and 4")
 
 
+def test_a_tight_loop_that_crosses_within_three_widths_of_path(make):
+    antenna = make.strip([(0, 0), (40, 0), (44, 8), (34, 8), (36, -40)], 8, 12)
+    refused(antenna, "crosses or overlaps itself .* legs 1 and 4 come within 0 mm")
+
+
 def test_a_path_that_comes_back_within_its_width(make):
     antenna = make.strip([(0, 0), (60, 0), (60, 30), (20, 30), (20, 5)], 6, 12)
     refused(antenna, r"legs 1 and 4 come within 5 mm, less than the width of 6 mm; spread")

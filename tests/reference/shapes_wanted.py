@@ -52,6 +52,14 @@ def _boxes(name: str, *strips: tuple[list[Point], Any], **more: Any) -> dict[str
     return _shape(name, "boxes", rows, **more)
 
 
+def _step(name: str, places: list[float], widths: list[float]) -> dict[str, Any]:
+    """Abrupt steps: the point of each is repeated, with the width before and after it."""
+    pairs = zip(places, places[1:], widths, strict=False)
+    rows = [([x, 0.0], w) for x0, x1, w in pairs for x in (float(x0), float(x1))]
+    strip = {"path": [p for p, _ in rows], "width": [w for _, w in rows]}
+    return _shape(name, "boxes", [strip])
+
+
 def _arc(radius: float, length: float, width: float) -> dict[str, Any]:
     half = length / radius / 2
     line = []
@@ -106,14 +114,9 @@ TAPERS = [
     _profile("taper-12-4", [-75, 0, 75], [4, 12, 4]),
     _profile("taper-18-3", [-75, 0, 75], [3, 18, 3]),
     _profile("taper-one-side-4-16", [-75, 75], [4, 16]),
-    _boxes("step-6-9", ([(-75, 0), (0, 0)], 6), ([(0, 0), (75, 0)], 9)),
-    _boxes("step-6-12", ([(-75, 0), (0, 0)], 6), ([(0, 0), (75, 0)], 12)),
-    _boxes(
-        "step-6-9-ends",
-        ([(-35, 0), (35, 0)], 6),
-        ([(35, 0), (75, 0)], 9),
-        ([(-75, 0), (-35, 0)], 9),
-    ),
+    _step("step-6-9", [-75, 0, 75], [6, 9]),
+    _step("step-6-12", [-75, 0, 75], [6, 12]),
+    _step("step-6-9-ends", [-75, -35, 35, 75], [9, 6, 9]),
 ]
 
 STRAIGHT = [
@@ -142,7 +145,7 @@ JUNCTIONS = [
 
 
 def _slant(angle: float, meets: float, width: float, branch_width: float) -> dict[str, Any]:
-    end = [meets + round(40 * cos(radians(angle)), 6), round(40 * sin(radians(angle)), 6)]
+    end = [round(meets + 40 * cos(radians(angle)), 6), round(40 * sin(radians(angle)), 6)]
     bar = {"path": [[-60.0, 0.0], [60.0, 0.0]], "width": width}
     branch = {"path": [[meets, 0.0], end], "width": branch_width}
     more = "" if branch_width == width else f"-branch-{branch_width:g}"

@@ -81,12 +81,15 @@ def test_what_is_kept_is_what_is_wanted() -> None:
 PEAKS = {
     ("straight-150x6", 75): [[0.9073, 69.6], [2.8531, 98.0]],
     ("straight-150x6", 37.5): [[0.9063, 122.7], [1.8773, 86.3], [2.8675, 186.8]],
+    ("straight-150x1.5", 75): [[0.9364, 70.6], [2.9042, 102.5]],
+    ("straight-150x20", 75): [[0.8672, 67.8], [2.7943, 87.3]],
+    ("taper-3-30", 75): [[0.7376, 54.3], [2.6827, 146.4]],
 }
 
 
-@pytest.mark.parametrize("key", PEAKS, ids=["centre", "quarter"])
+@pytest.mark.parametrize("key", PEAKS, ids=[f"{name} at {at:g}" for name, at in PEAKS])
 def test_published_conductance_peaks(key: tuple[str, float]) -> None:
     feed = next(f for f in FEEDS if (f["shape"], f["at_mm"]) == key)
-    # 0.02 % in frequency; the height depends a little on how the gap is drawn.
-    np.testing.assert_allclose(np.array(feed["peaks"])[:, 0], np.array(PEAKS[key])[:, 0], rtol=4e-4)
-    np.testing.assert_allclose(np.array(feed["peaks"])[:, 1], np.array(PEAKS[key])[:, 1], rtol=5e-3)
+    # 0.03 % in frequency for the published ones, as much here, the taper twice that.
+    np.testing.assert_allclose(np.array(feed["peaks"])[:, 0], np.array(PEAKS[key])[:, 0], rtol=6e-4)
+    np.testing.assert_allclose(np.array(feed["peaks"])[:, 1], np.array(PEAKS[key])[:, 1], rtol=3e-3)

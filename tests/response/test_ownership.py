@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from simkit.response.features import find_dips, reflection
+from simkit.response.features import conductance_peaks, find_dips, reflection
 from simkit.response.modes import NaturalMode
 from simkit.response.ownership import owned_features
 
@@ -58,12 +58,23 @@ def test_of_two_features_of_one_mode_the_stronger_is_kept():
     assert owned.dip == dips[0]
 
 
+def test_what_another_pole_causes_is_not_given_to_the_nearest_mode():
+    """The cause was not kept as a mode; its neighbour carries a thousandth of the conductance."""
+    cause, neighbour = mode(0.9, 4, 60), mode(0.912, 30, 6e4, 2)
+    (owned,) = owned_features([neighbour], FREQUENCY, impedance([cause, neighbour]), 50.0)
+    assert owned.dip is None
+    assert owned.peak is None
+
+
 def test_what_lies_far_from_every_pole_is_nobodys():
-    known = mode(0.5, 20, 70)
-    other = mode(2.8, 9, 100)
-    (owned,) = owned_features([known], FREQUENCY, impedance([known, other]), 50.0)
-    assert owned.dip.frequency_hz == pytest.approx(0.5e9, rel=0.01)
-    assert owned.peak.frequency_hz == pytest.approx(0.5e9, rel=0.01)
+    """On the skirt of a mode below the band, seven half widths away, it still carries 40 %."""
+    below, unknown = mode(0.25, 3, 60), mode(0.6, 20, 3000)
+    curve = impedance([below, unknown])
+    (peak,) = conductance_peaks(FREQUENCY, curve)
+    share = below.feed_admittance(np.array([peak.frequency_hz]))[0].real * peak.resistance_ohm
+    assert share > 0.3
+    (owned,) = owned_features([below], FREQUENCY, curve, 50.0)
+    assert owned.peak is None
 
 
 def test_without_modes_there_are_no_owners():

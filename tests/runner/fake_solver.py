@@ -21,7 +21,7 @@ from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, V
 from simkit.study.model import Antenna
 
 SEGMENTS = 7
-CRASH_MM, SEGFAULT_MM, HANG_MM, ERROR_MM, REFUSED_MM, BUG_MM, MISFIT_MM = 3, 5, 7, 9, 11, 13, 15
+CRASH_MM, SEGFAULT_MM, HANG_MM, ERROR_MM, KILLED_ONCE_MM, BUG_MM, MISFIT_MM = 3, 5, 7, 9, 11, 13, 15
 """Strip widths at which the stand-in misbehaves."""
 
 
@@ -64,6 +64,8 @@ def misbehave(width_mm: int) -> None:
         os._exit(3)
     if width_mm == SEGFAULT_MM:
         os.kill(os.getpid(), signal.SIGSEGV)
+    if width_mm == KILLED_ONCE_MM and len(list(Path(os.environ["FAKE_MARKS"]).iterdir())) == 1:
+        os.kill(os.getpid(), signal.SIGKILL)
     if width_mm == HANG_MM:
         time.sleep(600)
     if width_mm == ERROR_MM:

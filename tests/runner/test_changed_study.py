@@ -143,6 +143,14 @@ def test_damaged_cases_are_not_taken_over(go, make_study, marks):
     assert np.isfinite(open_results(summary.results_dir)["x"].values).all()
 
 
+def test_cases_whose_status_was_never_written_are_not_taken_over(go, make_study):
+    """A run killed between the data and the status of a block."""
+    first = go(make_study([60, 64, 70, 75]))
+    (first.results_dir / "store.zarr" / "status" / "c.0").unlink()
+    summary = go(make_study([60, 70, 80]))
+    assert (summary.reused, summary.solved) == (1, 2)
+
+
 def test_another_model_version_solves_all_anew_and_says_so(go, make_study, fake, marks):
     study = make_study([60, 64])
     go(study)

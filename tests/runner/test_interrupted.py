@@ -104,6 +104,7 @@ def test_a_killed_run_is_continued_without_loss(start, make_study, fake, marks, 
     assert not alive
 
 
+@pytest.mark.long
 def test_ctrl_c_finishes_the_blocks_in_hand(start, make_study, fake, marks, tmp_path):
     study = make_study(ARMS)
     store = tmp_path / "out" / "ford" / "store.zarr"

@@ -94,6 +94,12 @@ def test_bad_cases_are_marked_and_the_good_ones_solved(go, make_study):
     assert "case 5 timed-out: stopped at the time limit" in log_of(summary)
 
 
+def test_an_innocent_case_survives_the_loss_of_its_process(go, make_study, marks):
+    """As when the system ends a process for want of memory that another one took."""
+    assert go(make_study([60], [11])).ok
+    assert marks() == ["0.060000"] * 2
+
+
 def test_failed_cases_are_not_tried_again(go, make_study, marks):
     study = make_study([60, 61], [8, 9])
     go(study)

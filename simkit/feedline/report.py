@@ -1,0 +1,140 @@
+"""What the design of a match gives: networks with their worth, and the table of them."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from string import ascii_uppercase
+
+from simkit.feedline.bound import MatchBound
+from simkit.feedline.chain import Chain
+from simkit.feedline.checks import quantity as q
+from simkit.feedline.vary import Dimension
+
+
+@dataclass(frozen=True)
+class Design:
+    """A network and how well it matches the band.
+
+    Attributes
+    ----------
+    kind : str
+    chain : Chain
+    dimensions : tuple of Dimension
+        All that is built: lengths, values, sizes of lines.
+    worst_db : float
+        Smallest return loss over the band, at most 100.
+    changed_db : float
+        The same once the most sensitive dimension is off by 1 %.
+    sensitive : str
+        Name of that dimension; empty if there is none.
+    tolerance_db : float
+        Smallest return loss with every bought part at either end of its tolerance; `worst_db`
+        without parts.
+    efficiency : float
+        Smallest part of the accepted power that reaches the antenna, over the band.
+    doubts : tuple of str
+    """
+
+    kind: str
+    chain: Chain
+    dimensions: tuple[Dimension, ...]
+    worst_db: float
+    changed_db: float
+    sensitive: str
+    tolerance_db: float
+    efficiency: float
+    doubts: tuple[str, ...] = ()
+
+    @property
+    def about(self) -> str:
+        """The elements from the antenna to the connector."""
+        return "; ".join(element.about for element in self.chain.elements) or "nothing"
+
+    def as_row(self) -> dict[str, float | str]:
+        """Return the numbers by name."""
+        return {
+            "kind": self.kind,
+            "worst_return_loss_db": self.worst_db,
+            "return_loss_after_1_percent_db": self.changed_db,
+            "most_sensitive": self.sensitive,
+            "return_loss_within_tolerance_db": self.tolerance_db,
+            "efficiency": self.efficiency,
+            "network": self.about,
+        }
+
+
+@dataclass(frozen=True)
+class MatchReport:
+    """Networks for one load and band, the best first.
+
+    Attributes
+    ----------
+    start_hz, stop_hz, reference_ohm : float
+    before_db : float
+        Smallest return loss over the band without a network.
+    designs : tuple of Design
+    bound : MatchBound
+    wanted_db : float
+    notes : tuple of str
+        Kinds of network that give nothing here, and why.
+    """
+
+    start_hz: float
+    stop_hz: float
+    reference_ohm: float
+    before_db: float
+    designs: tuple[Design, ...]
+    bound: MatchBound
+    wanted_db: float
+    notes: tuple[str, ...] = ()
+
+    @property
+    def best(self) -> Design:
+        """The first design."""
+        return self.designs[0]
+
+    def as_rows(self) -> list[dict[str, float | str]]:
+        """Return one row a design."""
+        return [{"rank": rank, **design.as_row()} for rank, design in enumerate(self.designs, 1)]
+
+    def as_text(self, most: int = 10) -> str:
+        """Return the table of the best designs, the bound and the notes."""
+        lines = [
+            f"match to {self.reference_ohm:g} ohm from {q(self.start_hz, 'Hz')} to "
+            f"{q(self.stop_hz, 'Hz')}; without a network at least {self.before_db:.1f} dB "
+            "return loss",
+            "rank  band   1 % off  tolerance  efficiency  network, from the antenna",
+        ]
+        shown = self.designs[:most]
+        named = _named_lines(shown)
+        for rank, design in enumerate(shown, 1):
+            about = design.about
+            # Longer words first: those of one line may begin those of another.
+            for text, letter in sorted(named.items(), key=lambda item: -len(item[0])):
+                about = about.replace(text, f"line {letter}")
+            lines.append(
+                f"{rank:4d}  {design.worst_db:4.1f}  {design.changed_db:6.1f} dB "
+                f"{design.tolerance_db:7.1f} dB {design.efficiency:10.1%}   {design.kind}: {about}"
+            )
+            if design.sensitive:
+                lines.append(f"{'':42}most sensitive: {design.sensitive}")
+        lines += [f"line {letter}: {text}" for text, letter in named.items()]
+        lines.append(self._verdict())
+        doubts = dict.fromkeys(d for design in shown for d in design.doubts)
+        return "\n".join([*lines, *self.notes, *(f"doubtful: {doubt}" for doubt in doubts)])
+
+    def _verdict(self) -> str:
+        centre_hz = (self.start_hz + self.stop_hz) / 2
+        bound = self.bound.as_text(centre_hz)
+        if self.bound.return_loss_db < self.wanted_db:
+            return f"{self.wanted_db:g} dB cannot be had without loss: {bound}"
+        return bound[0].upper() + bound[1:]
+
+
+def _named_lines(designs: Sequence[Design]) -> dict[str, str]:
+    """A letter, or two, for the words of each line."""
+    lines = (getattr(e, "line", None) for design in designs for e in design.chain.elements)
+    texts = list(dict.fromkeys(line.about for line in lines if line is not None))
+    letters = [a + b for a in ("", *ascii_uppercase) for b in ascii_uppercase]
+    return dict(zip(texts, letters, strict=False))

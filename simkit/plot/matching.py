@@ -1,0 +1,222 @@
+"""What a matching network does: its way through the Smith chart, and the reflection it leaves."""
+
+from __future__ import annotations
+
+import re
+from typing import TYPE_CHECKING
+
+import numpy as np
+from matplotlib.ticker import MultipleLocator
+
+from simkit.feedline.checks import FeedlineError, quantity
+from simkit.plot.smith import draw_chart
+from simkit.plot.style import (
+    INK,
+    QUIET,
+    frequency_unit,
+    legend_beside,
+    mode_style,
+    new_axes,
+    put_title,
+    tidy,
+)
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from numpy.typing import NDArray
+
+    from simkit.feedline.chain import Chain
+    from simkit.feedline.oneport import OnePort
+
+BAND = "#e8eef2"
+DEEPEST_DB = -40.0
+"""Deeper than this a curve is cut off: nothing built comes nearer to a match."""
+
+
+def plot_match_path(
+    chain: Chain,
+    load: OnePort,
+    frequency_hz: float,
+    band_hz: tuple[float, float] | None = None,
+    *,
+    ax: Axes | None = None,
+) -> Axes:
+    """Draw the way from the terminals to the connector through a Smith chart.
+
+    Parameters
+    ----------
+    chain : Chain
+    load : OnePort
+    frequency_hz : float
+        Of the way.
+    band_hz : (float, float), optional
+        Band over which terminals and connector are drawn as curves as well.
+    ax : matplotlib.axes.Axes, optional
+        Rectilinear axes; a new figure is made if left out.
+
+    Returns
+    -------
+    matplotlib.axes.Axes
+
+    Raises
+    ------
+    FeedlineError
+        If the load does not cover the frequency or the band.
+    """
+    ax = new_axes(ax, (9.2, 6.6))
+    put_title(ax, f"from terminals to connector at {quantity(frequency_hz, 'Hz', 6)}")
+    draw_chart(ax, chain.reference_ohm)
+    if band_hz is not None:
+        _draw_curves(ax, chain, load, band_hz)
+    start = load.at([frequency_hz]).referred_to(chain.reference_ohm).reflection[0]
+    _mark(ax, start, "s", "terminals")
+    end = start
+    for number, (element, way) in enumerate(chain.path(load, frequency_hz), start=1):
+        style = mode_style(number)
+        ax.plot(
+            way.real,
+            way.imag,
+            color=style.colour,
+            linestyle=style.linestyle,
+            linewidth=2.2,
+            zorder=4,
+            label=f"{number}  {folded(element.about)}",
+        )
+        _arrow(ax, way, style.colour, str(number))
+        end = way[-1]
+    _mark(ax, end, "o", "connector")
+    legend_beside(ax, "from the antenna")
+    return ax
+
+
+def _draw_curves(ax: Axes, chain: Chain, load: OnePort, band_hz: tuple[float, float]) -> None:
+    band = load.at(np.linspace(*band_hz, 121))
+    seen = band.referred_to(chain.reference_ohm).reflection
+    after = chain.reflection(band)
+    words = f"{quantity(band_hz[0], 'Hz')} to {quantity(band_hz[1], 'Hz')}"
+    for curve, colour, name in ((seen, QUIET, "terminals"), (after, INK, "connector")):
+        ax.plot(
+            curve.real, curve.imag, color=colour, linewidth=1.2, zorder=3, label=f"{name},\n{words}"
+        )
+
+
+def _mark(ax: Axes, place: complex, marker: str, label: str) -> None:
+    ax.plot(
+        place.real,
+        place.imag,
+        marker=marker,
+        markersize=7,
+        color=INK,
+        markerfacecolor="white",
+        linestyle="none",
+        zorder=6,
+        label=label,
+    )
+
+
+def _arrow(ax: Axes, way: NDArray[np.complex128], colour: str, text: str) -> None:
+    """An arrow head and the element's number half way along; none on a way of no length."""
+    along = np.concatenate([[0.0], np.cumsum(np.abs(np.diff(way)))])
+    if along[-1] < 1e-3:
+        return
+    place = int(np.clip(np.searchsorted(along, along[-1] / 2), 1, len(way) - 1))
+    tail, head = way[place - 1], way[place]
+    ax.annotate(
+        "",
+        (head.real, head.imag),
+        xytext=(tail.real, tail.imag),
+        arrowprops={"arrowstyle": "-|>", "color": colour, "mutation_scale": 16},
+        zorder=5,
+    )
+    across = 1j * (head - tail) / abs(head - tail) * 0.06
+    beside = head + across if abs(head + across) < abs(head - across) else head - across
+    ax.text(beside.real, beside.imag, text, color=colour, ha="center", va="center", zorder=5)
+
+
+def folded(text: str, width: int = 34) -> str:
+    """Break a text into lines for a legend."""
+    lines = [""]
+    for word in re.sub(r"(\d) (?=(?:mm|ohm|MHz|dB|pF|nH|ps)\b)", "\\1\u00a0", text).split(" "):
+        if len(lines[-1]) + len(word) > width:
+            lines.append("")
+        lines[-1] = f"{lines[-1]} {word}".strip()
+    return "\n".join(lines)
+
+
+def plot_match(
+    chain: Chain,
+    load: OnePort,
+    start_hz: float,
+    stop_hz: float,
+    *,
+    ax: Axes | None = None,
+) -> Axes:
+    """Draw |reflection| in dB before and after the network, with the band shaded.
+
+    Parameters
+    ----------
+    chain : Chain
+    load : OnePort
+        Drawn over all its frequencies.
+    start_hz, stop_hz : float
+        The band.
+    ax : matplotlib.axes.Axes, optional
+        A new figure is made if left out.
+
+    Returns
+    -------
+    matplotlib.axes.Axes
+
+    Raises
+    ------
+    FeedlineError
+        If the band has no width or the load does not cover it.
+    """
+    if not start_hz < stop_hz:
+        raise FeedlineError(
+            f"the band from {quantity(start_hz, 'Hz')} to {quantity(stop_hz, 'Hz')} has no width"
+        )
+    band = load.at(np.linspace(start_hz, stop_hz, 201))
+    ax = new_axes(ax, (8.6, 4.8))
+    unit = frequency_unit(load.frequency_hz)
+    tidy(ax)
+    put_title(ax, "reflection at the terminals and at the connector")
+    ax.set_xlabel(unit.label("frequency"))
+    ax.set_ylabel(f"|reflection| (dB re {chain.reference_ohm:g} ohm)")
+    ax.axvspan(start_hz * unit.factor, stop_hz * unit.factor, color=BAND, zorder=0, label="band")
+    # With the band's own points, so that a narrow band is not stepped over.
+    whole = load.at(np.union1d(load.frequency_hz, band.frequency_hz))
+    x = whole.frequency_hz * unit.factor
+    for curve, inside, colour, dashes, name in (
+        (
+            whole.referred_to(chain.reference_ohm).reflection,
+            band.referred_to(chain.reference_ohm).reflection,
+            QUIET,
+            (0, (6, 2)),
+            "terminals",
+        ),
+        (chain.reflection(whole), chain.reflection(band), INK, "solid", "connector"),
+    ):
+        worst = float(_level(inside).max())
+        ax.plot(
+            x,
+            _level(curve),
+            color=colour,
+            linestyle=dashes,
+            linewidth=1.6,
+            label=f"{name}:\nat most {_signed(worst)} dB in the band",
+        )
+    ax.set_xlim(float(x[0]), float(x[-1]) if len(x) > 1 else None)
+    ax.yaxis.set_major_locator(MultipleLocator(5.0))
+    lowest = min(float(_level(chain.reflection(whole)).min()), -20.0)
+    ax.set_ylim(max(DEEPEST_DB, 5 * np.floor(lowest / 5)), 0.5)
+    legend_beside(ax)
+    return ax
+
+
+def _level(reflection: NDArray[np.complex128]) -> NDArray[np.float64]:
+    return np.asarray(20 * np.log10(np.maximum(np.abs(reflection), 1e-5)))
+
+
+def _signed(value: float) -> str:
+    return f"{value:.1f}".replace("-", "−")
