@@ -226,10 +226,11 @@ def carrier_text(antenna: Antenna) -> str:
     """Return the plastic, the shape of the carrier and what it does to strips of each width."""
     carrier = antenna.carrier
     assert carrier is not None  # only called for antennas with one
-    return "\n".join([*_carrier_lines(carrier), *_kappa_lines(antenna)])
+    return "\n".join([*carrier_lines(carrier), *_kappa_lines(antenna)])
 
 
-def _carrier_lines(carrier: Carrier) -> list[str]:
+def carrier_lines(carrier: Carrier) -> list[str]:
+    """Return plastic, mixture and shape of a carrier as described, one line each."""
     from simkit.crosssection import printed_layers
 
     lines = [
