@@ -62,11 +62,7 @@ REFUSED = {
     "vee-120-taper-4-12": "grid: rails of the two legs come within 0.445 mm of each other in the "
     "block of a corner inside a taper",
 }
-LOST = "the grid model's sweep loses a mode; "
 DISAGREE = {
-    "straight-150x1.5": LOST + "the others agree to 0.06 %",
-    "straight-130x4": LOST + "the others agree to 0.02 %",
-    "bend-90-100-50-w12": LOST + "the others agree to 0.04 %",
     "bend-90-75-75-w12": "grid over line: -0.03, +0.11, -0.41 %",
     "bend-90-100-50-w4": "grid over line: +0.01, -0.10, -0.38 %",
     "vee-60-w8": "grid over line: -0.05, +0.92, -0.65 %",

@@ -319,10 +319,6 @@ def test_currents_between_the_samples_are_those_of_a_direct_solution(make, model
             assert abs(row - exact).max() < 1e-2 * abs(exact).max()
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="the half-wave mode is lost among currents between rails, as in the last test",
-)
 def test_rails_fed_off_centre_have_all_modes(make):
     band = make.band(0.278352e9, 3.180067e9, 201)
     antenna = replace(make.straight(150, 1.5, 37.5, band=band), model="grid")
