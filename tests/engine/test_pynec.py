@@ -2,6 +2,8 @@
 
 import subprocess
 import sys
+from dataclasses import replace
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -179,6 +181,32 @@ def test_engine_version_names_the_engine():
     name, number = engine_version().split()
     assert name == "PyNEC"
     assert number[0].isdigit()
+
+
+def test_a_strip_of_changing_width_has_wires_of_one_radius(make, monkeypatch):
+    """Where wires of two radii meet, the engine errs by per cents and says nothing."""
+    seen = []
+
+    class Recorder:
+        def get_geometry(self):
+            return self
+
+        def wire(self, tag, segments, *numbers):
+            seen.append(numbers[6:])
+
+        def geometry_complete(self, *_):
+            raise RuntimeError("enough seen")
+
+    antenna = make.strip([(-75, 0), (0, 0), (75, 30)], 30, 75)
+    (one,) = antenna.strips
+    antenna = replace(antenna, strips=(replace(one, widths_m=(0.03, 0.006, 0.03)),))
+    grid = build_wires(antenna, plan_mesh([antenna]))
+    monkeypatch.setitem(sys.modules, "PyNEC", SimpleNamespace(nec_context=Recorder))
+    with pytest.raises(EngineError, match="enough seen"):
+        solve_wires(grid.wires, grid.radius_m, 1e9, [grid.source])
+    assert len(seen) == len(grid.wires)
+    # Radius, and the two factors by which radius and length of segments may grow along a wire.
+    assert set(seen) == {(grid.radius_m, 1.0, 1.0)}
 
 
 def test_importing_the_module_does_not_load_the_engine():
