@@ -29,7 +29,11 @@ def on_chain(one):
     """What of a grid of one chain is looked at when half waves are counted."""
     path = (PathPiece(0, 0.0, one.length_m),)
     return SimpleNamespace(
-        chains=(one,), path=path, path_closed=one.closed, path_on_plane=(False, False)
+        chains=(one,),
+        path=path,
+        path_closed=one.closed,
+        path_on_plane=(False, False),
+        feed_width_m=1e-3,
     )
 
 
