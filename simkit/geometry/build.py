@@ -168,8 +168,7 @@ def _grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> WireG
     drawn: dict[int, Chain] = {}
     for index in _host_order(lines):
         chain = plan.chains[index]
-        corners = [kind == "figure" for kind in chain.vertices]
-        intervals = layout(lines, index, rule, widen, source_m(antenna, rule), corners)
+        intervals = layout(lines, index, rule, widen, source_m(antenna, rule), chain.vertices)
         counts = chain.counts
         pair = gap_pair(intervals) if plan.moving and index == 0 else None
         if pair is not None:

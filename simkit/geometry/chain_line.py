@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from typing import Literal
 
@@ -171,11 +172,21 @@ def with_vertex(line: ChainLine, arc_m: float) -> tuple[ChainLine, int]:
     return added, at
 
 
-def reopened(line: ChainLine) -> ChainLine:
-    """A closed chain, begun in the middle of the leg that lies half way round from its feed."""
+def reopened(line: ChainLine, avoid_m: Sequence[float] = ()) -> ChainLine:
+    """A closed chain, begun in the middle of the leg that lies half way round from its feed.
+
+    If other strips end on that leg, at arc lengths `avoid_m`, the nearest leg without such is taken.
+    """
     legs = len(line.points) - 1
     fed = line.feed.vertex if line.feed is not None else 0
-    leg = (fed + legs // 2) % legs
+    order = [(fed + k) % legs for k in sorted(range(legs), key=lambda k: abs(k - legs // 2))]
+    ends = line.arcs_m
+    free = [
+        leg
+        for leg in order
+        if not any(ends[leg] - TOUCH_M < arc < ends[leg + 1] + TOUCH_M for arc in avoid_m)
+    ]
+    leg = (free or order)[0]
     arcs = line.arcs_m
     middle = float(arcs[leg] + arcs[leg + 1]) / 2
     line, vertex = with_vertex(line, middle)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
+from typing import Literal
 
 import numpy as np
 
@@ -21,6 +22,9 @@ BLOCK_FROM_RAD = np.deg2rad(40.0)
 """From here up the rails of both legs run on through the corner and cross in a block of nodes;
 below they turn on the mitre line."""
 
+FOLD_RAD = np.deg2rad(170.0)
+"""Legs that turn back by more than this have no corner; rails of the two would never cross."""
+
 CORNER_RUNGS_WIDTHS = (0.2, 0.8)
 JUNCTION_RUNGS_WIDTHS = (0.6, 1.2)
 
@@ -28,6 +32,12 @@ STEP_JUMPS = 1.7
 """Half the length of a step in width over the farthest that a rail is moved: rails 2.1 radii apart
 then keep two radii on the slant. Against flat metal steps of 1.5 and 2 are good to 0.33 and 0.38 %
 in mode frequency."""
+
+CornerKind = str
+"""As the vertex kinds of a mesh plan: "smooth", "node" or "figure"."""
+
+BLOCK_ROOM_RADII = 2.03
+"""Least distance of crossing rails in a block, in radii."""
 
 Widen = Callable[[float], float]
 """Effective width of a drawn width, metres: the carrier's doing; the identity without one."""
@@ -109,7 +119,7 @@ def layout(
     rule: RailRule,
     widen: Widen,
     source_m: float,
-    corners: Sequence[bool],
+    corners: Sequence[CornerKind],
 ) -> list[Interval]:
     """Stations of one chain in order, as the intervals between them.
 
@@ -122,8 +132,9 @@ def layout(
     widen : callable
     source_m : float
         Length of the source segment of a straight feed.
-    corners : sequence of bool
-        For each inner vertex, whether it is a corner with rungs (the same in all cases of a study).
+    corners : sequence of str
+        For each inner vertex "smooth", "node" (a row on the mitre line, with rungs beside it) or
+        "figure" (a block of crossing rails); the same in all cases of a study.
 
     Raises
     ------
@@ -131,6 +142,23 @@ def layout(
         A leg is too short for the rows its corners and junctions need.
     """
     return _Walk(lines, index, rule, widen, source_m, corners).intervals()
+
+
+def corner_kind(
+    line: ChainLine, vertex: int, rule: RailRule, widen: Widen
+) -> Literal["smooth", "node", "figure"]:
+    """How a vertex of one case would best be modelled.
+
+    Crossing rails come closer than side by side by the sine of the turn, so bundles whose rails are
+    as close as they may be turn on the mitre line unless the corner is all but square.
+    """
+    turn = float(turns(line.points)[vertex - 1])
+    if turn < CORNER_FROM_RAD:
+        return "smooth"
+    widths = float(line.width_before_m[vertex]), float(line.width_after_m[vertex])
+    closest = min(float(np.diff(rule.offsets_m(widen(width))).min()) for width in widths)
+    room = closest * np.sin(turn) > BLOCK_ROOM_RADII * rule.radius_m
+    return "figure" if turn >= BLOCK_FROM_RAD and room else "node"
 
 
 class _Walk:
@@ -143,7 +171,7 @@ class _Walk:
         rule: RailRule,
         widen: Widen,
         source_m: float,
-        corners: Sequence[bool],
+        corners: Sequence[CornerKind],
     ) -> None:
         self.lines, self.index = lines, index
         self.line = lines[index]
@@ -235,7 +263,7 @@ class _Walk:
         line = self.line
         branches = [branch for at, branch in line.tees if at == vertex]
         fed = line.feed is not None and line.feed.vertex == vertex
-        corner = self.corners[vertex - 1]
+        corner = self.corners[vertex - 1] != "smooth"
         if branches:
             if fed or corner or len(branches) > 1:
                 x, y = line.points[vertex] * 1e3
@@ -273,7 +301,13 @@ class _Walk:
         line = self.line
         arc, turn = float(line.arcs_m[vertex]), float(self.bends[vertex - 1])
         width = float(line.width_before_m[vertex])
-        if turn >= BLOCK_FROM_RAD:
+        if turn > FOLD_RAD:
+            x, y = line.points[vertex] * 1e3
+            raise GeometryError(
+                f"the corner at ({x:.4g}, {y:.4g}) mm turns by {np.rad2deg(turn):.0f} degrees, so "
+                "the metal lies on itself there: open the corner, or drop a strip drawn twice"
+            )
+        if self.corners[vertex - 1] == "figure":
             self._corner_block(vertex, fed=fed)
             return
         reach = self.edge_m(width) * np.tan(turn / 2)
@@ -366,7 +400,14 @@ def _across(lines: Sequence[ChainLine], host: int, vertex: int, branch: int) -> 
     line, other = lines[host], lines[branch]
     along = unit(line.points[vertex + 1] - line.points[vertex])
     outwards = branch_direction(other, _joint_end(other, host, vertex))
-    return float(along @ outwards), float(along[0] * outwards[1] - along[1] * outwards[0])
+    sine = float(along[0] * outwards[1] - along[1] * outwards[0])
+    if abs(sine) < np.sin(np.deg2rad(40.0)):
+        x, y = line.points[vertex] * 1e3
+        raise GeometryError(
+            f"at ({x:.4g}, {y:.4g}) mm a strip leaves another at less than 40 degrees; junctions "
+            "are covered from 40 to 90 degrees"
+        )
+    return float(along @ outwards), sine
 
 
 def junction_block(
@@ -379,12 +420,6 @@ def junction_block(
 ) -> Block:
     """Rows of the host at a junction: the branch's rails carried on across it."""
     cosine, sine = _across(lines, host, vertex, branch)
-    if abs(sine) < np.sin(np.deg2rad(40.0)):
-        x, y = lines[host].points[vertex] * 1e3
-        raise GeometryError(
-            f"at ({x:.4g}, {y:.4g}) mm a strip leaves another at less than 40 degrees; junctions "
-            "are covered from 40 to 90 degrees"
-        )
     other = lines[branch]
     at_start = _joint_end(other, host, vertex) == "start"
     width = float(other.width_after_m[0] if at_start else other.width_before_m[-1])

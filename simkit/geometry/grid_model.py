@@ -192,13 +192,19 @@ class Rails:
             ]
 
 
-def is_even(line: ChainLine, interval: Interval) -> bool:
-    """True if the interval is straight and of constant width."""
+def is_straight(line: ChainLine, interval: Interval) -> bool:
+    """True if no vertex bends the interval."""
     arcs = line.arcs_m
     inside = (arcs > interval.start.arc_m + 1e-12) & (arcs < interval.stop.arc_m - 1e-12)
     bends = turns(line.points)
-    bent = bool(np.any(bends[inside[1:-1]] > 1e-6)) if len(bends) else False
-    return not bent and abs(interval.start.width_m - interval.stop.width_m) < 1e-9
+    return not (len(bends) and np.any(bends[inside[1:-1]] > 1e-6))
+
+
+def is_even(line: ChainLine, interval: Interval) -> bool:
+    """True if the interval is straight and of constant width."""
+    return (
+        is_straight(line, interval) and abs(interval.start.width_m - interval.stop.width_m) < 1e-9
+    )
 
 
 def outer_detour_m(line: ChainLine, interval: Interval, rule: RailRule) -> float:

@@ -66,6 +66,7 @@ def chains_of(antenna: Antenna, *, tips: bool = True) -> tuple[ChainLine, ...]:
     if isinstance(antenna.feed, CutFeed):
         builder.feed_cut(antenna.feed, names[antenna.feed.strip])
     builder.order_fed_first()
+    builder.turn_loops()
     builder.attach_branches()
     lines = [_standing(line, antenna) for line in builder.lines]
     if not tips:
@@ -243,6 +244,26 @@ class _Builder:
         if self.lines[0].feed is None:
             raise GeometryError("feed: no strip carries the feed")
 
+    def turn_loops(self) -> None:
+        """Let no loop begin on a leg on which another strip ends."""
+        for index, line in enumerate(self.lines):
+            if not line.closed:
+                continue
+            ends = self._touching(index)
+            first, last = line.arcs_m[1] + TOUCH_M, line.arcs_m[-2] - TOUCH_M
+            if any(arc < first or arc > last for arc in ends):
+                self.lines[index] = reopened(line, ends)
+
+    def _touching(self, index: int) -> list[float]:
+        """Arc lengths at which ends of other chains lie on a chain's metal."""
+        host, found = self.lines[index], []
+        for other, _, point, _ in self._open_ends():
+            arc, distance = nearest(host, point)
+            half_width = float(host.width_at(np.array([arc]))[0]) / 2
+            if other != index and distance <= half_width + TOUCH_M:
+                found.append(arc)
+        return found
+
     def attach_branches(self) -> None:
         """Chains that end on the side of another become its branches."""
         for index in range(len(self.lines)):
@@ -257,19 +278,30 @@ class _Builder:
         if any(same_point(point, fed) for fed in self.fed_ends):
             return
         for other, host in enumerate(self.lines):
-            if other == index:
+            if other == index or index in _hosts(host):
                 continue
             arc, distance = nearest(host, point)
             half_width = float(host.width_at(np.array([arc]))[0]) / 2
             if distance > half_width + TOUCH_M:
                 continue
             joined, vertex = with_vertex(host, arc)
+            if vertex in (0, len(joined.points) - 1):
+                raise GeometryError(
+                    f"a strip ends at {_place(point)} on the very end of another: for a corner let "
+                    "both end at one point, for a junction move it a width away from the end"
+                )
             self._renumber(other, vertex, len(joined.points) - len(host.points))
             tees = tuple(
                 (v + (v >= vertex and len(joined.points) > len(host.points)), b)
                 for v, b in host.tees
             )
             self.lines[other] = replace(joined, tees=(*tees, (vertex, index)))
+            inner = line.points[1 if end == "start" else -2]
+            if (joined.points[vertex] - inner) @ (point - inner) < TOUCH_M**2:
+                raise GeometryError(
+                    f"the strip that ends on another at {_place(point)} does not reach out from "
+                    "under its metal: lengthen its last leg"
+                )
             moved = end_moved(line, end, joined.points[vertex])
             self.lines[index] = _with_joint(moved, end, Joint(other, vertex))
             return
@@ -284,6 +316,11 @@ class _Builder:
                 if joint is not None and joint.chain == chain and joint.vertex >= vertex:
                     moved = Joint(chain, joint.vertex + 1)
                     self.lines[index] = _with_joint(self.lines[index], end, moved)
+
+
+def _hosts(line: ChainLine) -> tuple[int, ...]:
+    """Chains that a chain ends on."""
+    return tuple(joint.chain for joint in (line.start, line.end) if joint is not None)
 
 
 def _with_joint(line: ChainLine, end: str, joint: Joint) -> ChainLine:

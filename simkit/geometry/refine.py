@@ -94,8 +94,8 @@ def _grid_limits(
     """Most segments of each interval, and which intervals stay as they are."""
     widen = dressing_of(antenna).effective_width_m
     rule = grid_rule(lines, plan.rails, widen)
-    corners = [kind == "figure" for kind in plan.chains[index].vertices]
-    rows = layout(lines, index, rule, widen, source_m(antenna, rule), corners)
+    kinds = plan.chains[index].vertices
+    rows = layout(lines, index, rule, widen, source_m(antenna, rule), kinds)
     lengths = np.array([row.length_m for row in rows])
     # Pieces inside corners, steps and junctions have the lengths their rules were found with.
     fixed = np.array([bool(row.fed) or row.single or row.block >= 0 for row in rows])

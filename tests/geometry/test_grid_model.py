@@ -239,7 +239,7 @@ def rows_of(antenna, chain=0):
     """Arc lengths (mm), tied or not, of the rows of a chain before they are divided."""
     lines = chains_of(antenna)
     rule = grid_rule(lines, None, lambda w: w)
-    corners = [kind == "figure" for kind in plan_mesh([antenna]).chains[chain].vertices]
+    corners = plan_mesh([antenna]).chains[chain].vertices
     found = layout(lines, chain, rule, lambda w: w, source_m(antenna, rule), corners)
     stations = [found[0].start, *(interval.stop for interval in found)]
     return found, [(s.arc_m * 1e3, s.tied) for s in stations], rule
@@ -359,6 +359,13 @@ def test_a_leg_too_short_for_its_corner():
     refused(antenna, r"near .* mm a leg is too short for its width of 6 mm between corners, junc")
 
 
+def test_a_strip_drawn_twice():
+    """Their common ends meet, so the chain turns right back; planning comes before the checks."""
+    main = strip("main", [(0, 0), (40, 0)], 4)
+    twins = [strip(f"twin {k}", [(0, 0), (0, 30)], 4) for k in range(2)]
+    refused(of(main, *twins, at=20), r"turns by 180 degrees, so the metal lies on itself there")
+
+
 def test_a_junction_at_a_corner():
     bent, stub = strip("s", turned(60, 90), 5), strip("stub", [(60, 0), (100, 0)], 5)
     refused(of(bent, stub, at=25), r"at \(60, 0\) mm a strip ends on another at its feed, at a cor")
@@ -366,6 +373,12 @@ def test_a_junction_at_a_corner():
 
 def test_a_junction_too_slanted():
     refused(slanted(35), r"at \(15, 0\) mm a strip leaves another at less than 40 degrees")
+
+
+def test_a_branch_that_begins_on_another_and_runs_along_it():
+    bar = strip("bar", [(0, 0), (80, 0)], 4)
+    twins = [strip(f"twin {k}", [(40, y), (40, 30)], 4) for k, y in enumerate((2.8, 0))]
+    refused(of(bar, *twins, at=20), r"a strip leaves another at less than 40 degrees")
 
 
 def test_strips_that_end_on_each_other_in_a_ring():
