@@ -175,18 +175,17 @@ def with_vertex(line: ChainLine, arc_m: float) -> tuple[ChainLine, int]:
 def reopened(line: ChainLine, avoid_m: Sequence[float] = ()) -> ChainLine:
     """A closed chain, begun in the middle of the leg that lies half way round from its feed.
 
-    If other strips end on that leg, at arc lengths `avoid_m`, the nearest leg without such is taken.
+    If other strips end on the chain, at arc lengths `avoid_m`: in the middle of the longest leg
+    without such an end.
     """
     legs = len(line.points) - 1
     fed = line.feed.vertex if line.feed is not None else 0
-    order = [(fed + k) % legs for k in sorted(range(legs), key=lambda k: abs(k - legs // 2))]
-    ends = line.arcs_m
-    free = [
-        leg
-        for leg in order
-        if not any(ends[leg] - TOUCH_M < arc < ends[leg + 1] + TOUCH_M for arc in avoid_m)
-    ]
-    leg = (free or order)[0]
+    leg = (fed + legs // 2) % legs
+    if avoid_m:
+        ends, taken = line.arcs_m, np.asarray(avoid_m)
+        lengths = leg_lengths(line.points)
+        inside = (taken > ends[:-1, None] - TOUCH_M) & (taken < ends[1:, None] + TOUCH_M)
+        leg = int(np.argmax(np.where(inside.any(axis=1), 0.0, lengths)))
     arcs = line.arcs_m
     middle = float(arcs[leg] + arcs[leg + 1]) / 2
     line, vertex = with_vertex(line, middle)

@@ -377,7 +377,7 @@ def test_a_junction_too_slanted():
 
 def test_a_branch_that_begins_on_another_and_runs_along_it():
     bar = strip("bar", [(0, 0), (80, 0)], 4)
-    twins = [strip(f"twin {k}", [(40, y), (40, 30)], 4) for k, y in enumerate((2.8, 0))]
+    twins = [strip(f"twin {k}", [(40, y), (40, 25 + y)], 4) for k, y in enumerate((2.8, 0))]
     refused(of(bar, *twins, at=20), r"a strip leaves another at less than 40 degrees")
 
 

@@ -199,6 +199,47 @@ class TestBranches:
         lines = chains_of(antenna(BAR, other, bridge, feed=cut("bar", 30)))
         assert (lines[2].start.chain, lines[2].end.chain) == (0, 1)
 
+    def test_two_strips_do_not_end_on_each_other(self):
+        """The start of the bar lies on the stem, and that of the stem on the bar."""
+        bar, stem = strip("bar", [(0, 0), (60, 0)], 6.0), strip("stem", [(3, 2), (3, 30)], 8.0)
+        for strips in ((bar, stem), (stem, bar)):
+            refused(antenna(*strips, feed=cut("bar", 30)), "on the very end of another")
+
+    def test_a_branch_that_stays_under_the_metal_it_ends_on(self):
+        under = strip("under", [(20, 3), (20, 1)], 2.0)
+        wide = strip("wide", [(-60, 0), (60, 0)], 12.0)
+        refused(
+            antenna(wide, under, feed=cut("wide", 30)),
+            r"ends on another at \(20, .\) mm does not reach out from under its metal",
+        )
+
+    @pytest.mark.parametrize("y", [0.5, 2.0])
+    def test_a_branch_on_the_very_end_of_its_host(self, y):
+        stem = strip("stem", [(60, y), (60, 40)])
+        refused(
+            antenna(BAR, stem, feed=cut("bar", 30)),
+            r"a strip ends at \(60, .*\) mm on the very end of another: for a corner let both end",
+        )
+
+    @pytest.mark.parametrize("at", [10, 30, 75, 130])
+    @pytest.mark.parametrize("place", [0.25, 0.5, 0.75])
+    @pytest.mark.parametrize("side", range(4))
+    def test_a_loop_never_begins_where_a_branch_ends(self, at, place, side):
+        corners = np.array([(0, 0), (60, 0), (60, 40), (0, 40), (0, 0)], dtype=float)
+        along = corners[side + 1] - corners[side]
+        start = corners[side] + place * along
+        outwards = np.array([along[1], -along[0]]) / np.linalg.norm(along)
+        if np.linalg.norm(start - [[10, 0], [30, 0], [60, 15], [30, 40]], axis=1).min() < 8:
+            return  # on the feed
+        loop = strip("loop", corners, 3.0)
+        stub = strip("stub", [start, start + 30 * outwards], 3.0)
+        host, branch = chains_of(antenna(loop, stub, feed=cut("loop", at)))
+        ((vertex, _),) = host.tees
+        assert 0 < vertex < len(host.points) - 1
+        assert points_mm(host)[vertex] == pytest.approx(start, abs=1e-9)
+        assert branch.start == Joint(0, vertex)
+        assert min(host.arcs_m[vertex], host.length_m - host.arcs_m[vertex]) > 9e-3
+
     def test_a_branch_on_a_loop(self):
         loop = strip("loop", [(0, 0), (60, 0), (60, 40), (0, 40), (0, 0)])
         stub = strip("stub", [(60, 20), (90, 20)])

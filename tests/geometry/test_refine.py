@@ -30,7 +30,7 @@ def test_a_centred_feed_keeps_a_segment_in_the_middle(make):
 
 
 def test_wide_strips_leave_no_room_for_finer_segments(make):
-    antenna = make.ell(80, 10, 90, 30)
+    antenna = replace(make.ell(80, 10, 90, 30), model="line")
     plan = plan_mesh([antenna])
     assert refined(plan, antenna, 1.5) == plan
     assert cut_count(refined(plan, antenna, 2 / 3)) < cut_count(plan)
