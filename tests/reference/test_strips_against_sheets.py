@@ -39,16 +39,8 @@ QUICK = {
 
 FREQUENCY_MISSED = {
     "straight-150x30": "grid: -0.41, -0.32, -0.44 % (0.2 of its length wide)",
-    "bend-90-100-50-w12": "line: -0.03, -0.03, -0.40 %",
-    "arc-r50-w6": "line: +0.23, +0.27, +0.37 %",
-    "arc-r25-w6": "line: +0.04, +0.87, +0.73 %",
-    "arc-r50-w12": "line: +0.36, +0.71, +1.23 %",
 }
-Q_MISSED = {
-    "bend-90-100-50-w12": "line: +0.7, +1.3, +4.9 %",
-    "arc-r25-w6": "line: +1.2, +4.9, +5.1 %",
-    "arc-r50-w12": "line: +1.8, +6.6, +7.7 %",
-}
+Q_MISSED: dict[str, str] = {}
 UNBALANCED = {
     "straight-150x30": "1.033 at the 3/2-wave mode",
     "zigzag-60-w8": "1.036 at the 3/2-wave mode",
@@ -63,7 +55,6 @@ REFUSED = {
     "block of a corner inside a taper",
 }
 DISAGREE = {
-    "bend-90-75-75-w12": "grid over line: -0.03, +0.11, -0.41 %",
     "bend-90-100-50-w4": "grid over line: +0.01, -0.10, -0.38 %",
     "vee-60-w8": "grid over line: -0.05, +0.92, -0.65 %",
     "zigzag-70-w6": "grid over line: +0.05, -0.03, -0.39 %",
@@ -71,9 +62,6 @@ DISAGREE = {
     "zigzag-45-w8": "grid over line: -0.22, -0.25, -0.46 %",
     "u-50-50-50-w6": "grid over line: +0.10, -0.11, -0.39 %",
     "u-60-30-60-w4": "grid over line: +0.13, -0.34, -0.07 %",
-    "arc-r50-w6": "grid over line: -0.17, -0.28, -0.51 %",
-    "arc-r25-w6": "grid over line: +0.15, -0.95, -1.10 %",
-    "arc-r50-w12": "grid over line: -0.34, -0.89, -1.85 %",
     "loop-60x40-w4": "grid over line: -0.38, +0.09, -0.75 %",
     "loop-50x50-w6": "grid over line: -0.23, -0.23, -0.65 %",
     "loop-80x25-w5": "grid over line: -0.50, +0.29, -0.37 %",
