@@ -18,9 +18,10 @@ from simkit.geometry.wires import FloatArray
 CORNER_FROM_RAD = np.deg2rad(25.0)
 """Corners from here up get metal across; gentler bends are followed by the rails alone."""
 
-BLOCK_FROM_RAD = np.deg2rad(40.0)
+BLOCK_FROM_RAD = np.deg2rad(65.0)
 """From here up the rails of both legs run on through the corner and cross in a block of nodes;
-below they turn on the mitre line."""
+below they turn on the mitre line. Against flat metal the mitre line is within 0.1 % up to 60 degrees
+and 0.3 to 1 % off at 90, the block within 0.2 % at 70 to 90 and 0.7 % off at 120."""
 
 FOLD_RAD = np.deg2rad(170.0)
 """Legs that turn back by more than this have no corner; rails of the two would never cross."""

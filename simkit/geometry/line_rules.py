@@ -178,16 +178,18 @@ def _wide_corner_excuse(antenna: Antenna, line: ChainLine) -> str:
 
 
 def _curve_excuse(line: ChainLine) -> str:
-    """Curves drawn as many short legs: the radius of the circle through neighbouring legs."""
-    legs, bends = leg_lengths(line.points), turns(line.points)
+    """Curves drawn as many short legs: the mean curvature over three widths of path."""
+    legs, bends, arcs = leg_lengths(line.points), turns(line.points), line.arcs_m[1:-1]
+    window = 3 * line.widest_m
     for vertex, turn in enumerate(bends, start=1):
-        before, after = legs[vertex - 1], legs[vertex]
-        curved = max(before, after) < 1.5 * line.widest_m and 1e-6 < turn < FIGURE_FROM_RAD
-        radius = (before + after) / 2 / turn if turn > 1e-6 else np.inf
-        if curved and line.widest_m > MOST_CURVED * radius:
+        short = max(legs[vertex - 1], legs[vertex]) < 1.5 * line.widest_m
+        if not short or not 1e-6 < turn < FIGURE_FROM_RAD:
+            continue
+        curvature = float(bends[abs(arcs - arcs[vertex - 1]) < window / 2].sum()) / window
+        if line.widest_m * curvature > MOST_CURVED:
             return (
                 f"the curve at {_place(line.points[vertex])} has a radius of "
-                f"{radius / line.widest_m:.2g} widths and the line model needs "
+                f"{1 / (curvature * line.widest_m):.2g} widths and the line model needs "
                 f"{1 / MOST_CURVED:.0f}"
             )
     return ""

@@ -28,9 +28,11 @@ from simkit.study.model import Antenna, Carrier
 Kind = Literal["line", "grid"]
 Case = tuple[Antenna, tuple[ChainLine, ...]]
 
-GRID_TARGET_WAVELENGTHS = 1 / 28
-GRID_TARGET_MANY_RAILS = 1 / 24
-"""Nine rails leave room for fewer segments along them."""
+GRID_TARGET_WAVELENGTHS = {3: 1 / 36, 5: 1 / 28, 7: 1 / 28, 9: 1 / 24}
+"""Length of segments aimed at, by the number of rails: more rails leave room for fewer along."""
+
+GRID_TARGET_PLAIN = 1 / 28
+"""Of three rails without corners or junctions: shorter segments have wide straight strips lower."""
 
 GRID_TARGET_CURVED = 1 / 25
 """On curves: at 1/20 tight ones come out 0.3 % high, at 1/28 wide ones 0.3 % low."""
@@ -447,7 +449,7 @@ def _grid_cut(
     wishes, limits, ties = [], [], [0]
     for antenna, line, rule, interval in cases:
         wavelength = light_speed / antenna.frequency.stop_hz
-        share = GRID_TARGET_MANY_RAILS if rule.count > 7 else GRID_TARGET_WAVELENGTHS
+        share = GRID_TARGET_PLAIN if plain else GRID_TARGET_WAVELENGTHS[rule.count]
         if not is_straight(line, interval):
             share = GRID_TARGET_CURVED
         shortest = GRID_SHORTEST_RADII * rule.radius_m
