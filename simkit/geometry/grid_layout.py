@@ -20,8 +20,8 @@ CORNER_FROM_RAD = np.deg2rad(25.0)
 
 BLOCK_FROM_RAD = np.deg2rad(65.0)
 """From here up the rails of both legs run on through the corner and cross in a block of nodes;
-below they turn on the mitre line. Against flat metal the mitre line is within 0.1 % up to 60 degrees
-and 0.3 to 1 % off at 90, the block within 0.2 % at 70 to 90 and 0.7 % off at 120."""
+below they turn on the mitre line. Against flat metal the mitre line is within 0.1 % up to 60
+degrees and 0.3 to 1 % off at 90, the block within 0.2 % at 70 to 90 and 0.7 % off at 120."""
 
 FOLD_RAD = np.deg2rad(170.0)
 """Legs that turn back by more than this have no corner; rails of the two would never cross."""
