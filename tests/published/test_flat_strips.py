@@ -116,11 +116,6 @@ def test_bent_strips_of_rails(row, quantity):
     row.check(quantity, arrays[name][slot] * factor, f"bent_{quantity}" if bent else None)
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="radiated power of rails fed at an apex is 4.9 % above the power of the source, which "
-    "sits half on the pieces into and half on those out of the corner's block",
-)
 @pytest.mark.published("full_wave_strips", "bent")
 def test_power_of_bent_strips_of_rails_balances(row):
     solved(described(row.data["antenna"][row["antenna"]], "grid"))
