@@ -9,6 +9,9 @@ from pathlib import Path
 
 import pytest
 
+from simkit.cli import COMMANDS
+from simkit.study import load_study
+
 ROOT = Path(__file__).resolve().parents[1]
 TEXTS = ("README.md", "DEVELOPERS.md", "CHANGELOG.md", ".ci/run", "pyproject.toml")
 
@@ -79,3 +82,32 @@ def test_lock_has_hashes_and_names_no_host() -> None:
     assert len(
         re.findall(r"^[a-z0-9].*==.*\\\n\s+--hash=sha256:", text, flags=re.MULTILINE)
     ) == len(pins)
+
+
+def test_the_studies_it_shows_are_read(tmp_path: Path) -> None:
+    """The first as it stands, the others as parts to add to it."""
+    text = (ROOT / "README.md").read_text("utf-8")
+    whole, *parts = re.findall(r"^```toml\n(.*?)^```$", text, flags=re.MULTILINE | re.DOTALL)
+    assert len(parts) == 2
+    path = tmp_path / "study.toml"
+    path.write_text(whole, "utf-8")
+    assert load_study(path).case_count == 5
+    path.write_text("\n".join([whole, *parts]), "utf-8")
+    antenna = load_study(path).nominal()
+    assert [strip.name for strip in antenna.strips] == [
+        "east",
+        "west",
+        "fin",
+        "stub",
+        "sag",
+        "bow",
+    ]
+    assert antenna.carrier is not None
+    assert antenna.ground is not None
+    assert antenna.converge
+
+
+def test_every_command_is_in_its_table() -> None:
+    text = (ROOT / "README.md").read_text("utf-8")
+    named = re.findall(r"^\| `simkit (\w+) ", text, flags=re.MULTILINE)
+    assert named == list(COMMANDS)

@@ -28,32 +28,44 @@ if TYPE_CHECKING:
     metavar="FILE",
     help="Where to draw the geometry; geometry.png in results/NAME/plots if left out.",
 )
-def command(study: str, results: str | None, output: str | None) -> None:
+@click.option(
+    "--converge",
+    is_flag=True,
+    help="Solve the nominal antenna on coarser and finer meshes too, and say what they change.",
+)
+def command(study: str, results: str | None, output: str | None, converge: bool) -> None:
     """Check STUDY, say what was understood, estimate time and disk, draw the geometry.
 
-    Nothing is solved but one frequency sweep of the nominal antenna, to time it. The exit status
-    is 1 if a case of the sweep cannot be built.
+    Nothing is solved but one frequency sweep of the nominal antenna, to time it, and with
+    --converge a few more to estimate the error of its mode frequencies. The exit status is 1 if a
+    case of the sweep cannot be built.
 
     \b
     Example:
       simkit check studies/creek_gauge.toml
+      simkit check studies/creek_gauge.toml --converge
     """
     from simkit.cli import summary
+    from simkit.cli.study_lines import lines_named
     from simkit.geometry import build_wires
     from simkit.study import load_study
 
     loaded = load_study(study)
     click.echo(summary.study_text(loaded))
-    plan = summary.mesh_of(loaded)
-    problems = summary.case_problems(loaded, plan)
-    click.echo(summary.problems_text(problems, len(summary.looked_at(loaded)), loaded.case_count))
-    shown, which = summary.shown_antenna(loaded, plan)
+    with lines_named(loaded):
+        plan = summary.mesh_of(loaded)
+        problems = summary.case_problems(loaded, plan)
+        looked_at = len(summary.looked_at(loaded))
+        click.echo(summary.problems_text(problems, looked_at, loaded.case_count))
+        shown, which = summary.shown_antenna(loaded, plan)
     wires = build_wires(shown, plan)
     click.echo(labelled("Shown below", which))
-    click.echo(summary.wires_text(wires, shown))
+    click.echo(summary.wires_text(wires, plan))
     title = f"{loaded.title}: {which}"
     click.echo(labelled("Drawing", str(draw(loaded, shown, wires, title, results, output))))
     click.echo(summary.cost_text(loaded, wires, summary.timed_solve(shown, plan)))
+    if converge:
+        click.echo(f"\nConvergence\n{summary.convergence_text(summary.refine(shown, plan))}")
     if problems:
         raise click.exceptions.Exit(1)
     click.echo(f"\nNext: simkit run {study}")

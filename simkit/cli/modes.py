@@ -27,19 +27,32 @@ natural: frequency and Q of the mode itself, whatever the feed.
 dip: minimum of the reflection at the connector, which is what an analyser shows; it lies above.
 X = 0: series resonance at the feed with its resistance.  gain: the largest, in any direction."""
 
+_LOSS_KEY = """
+efficiency: radiated over radiated and lost power; gain is directivity less what is lost."""
+
+LEAST_LOSS = 5e-4
+"""Efficiencies nearer to 1 than this are not worth two columns."""
+
 
 @click.command()
 @results_argument
 @json_option
 @csv_option
 @case_option
-def command(results: str, as_json: bool, as_csv: bool, case: int | None) -> None:
+@click.option(
+    "--places", is_flag=True, help="List where each mode's current is largest and where it is zero."
+)
+def command(results: str, as_json: bool, as_csv: bool, case: int | None, places: bool) -> None:
     """List the natural modes of the results in DIR, with the dips and resonances they own.
+
+    With --places: the places of their current maxima and nodes, which is where feeds and supports
+    go; JSON has them under the key "places" of each mode.
 
     \b
     Example:
       simkit modes results/creek_gauge
       simkit modes results/creek_gauge --case 2 --json
+      simkit modes results/creek_gauge --case 2 --places
     """
     form = one_format(as_json, as_csv)
     from simkit.store import open_results
@@ -52,12 +65,30 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None) -> None
             raise click.UsageError(f"--case {case}: these results hold the cases 0 to {last}.")
         dataset = dataset.sel(case=[case])
     rows = modes(dataset)
+    if places:
+        show_places(dataset, rows, results, form)
+        return
     if form == "json":
         emit(json_text(rows))
     elif form == "csv":
         emit(csv_text(flat_rows(rows, _attribute(dataset, "units"))))
     else:
-        emit(f"{modes_table(rows, _attribute(dataset, 'display_unit'))}\n\n{_KEY}")
+        key = _KEY + (_LOSS_KEY if lossy(rows) else "")
+        emit(f"{modes_table(rows, _attribute(dataset, 'display_unit'))}\n\n{key}")
+
+
+def show_places(dataset: xr.Dataset, rows: list[Row], results: str, form: str) -> None:
+    """Print maxima and nodes instead of what the modes own; in JSON besides."""
+    from simkit.cli.folder import study_of
+    from simkit.cli.places import PLACES_KEY, add_places, flat_places, places_table
+
+    add_places(rows, dataset, study_of(results), results)
+    if form == "json":
+        emit(json_text(rows))
+    elif form == "csv":
+        emit(csv_text(flat_places(rows)))
+    else:
+        emit(f"{places_table(rows)}\n\n{PLACES_KEY}")
 
 
 def _attribute(dataset: xr.Dataset, attribute: str) -> dict[str, str]:
@@ -85,29 +116,46 @@ def _with_unit(name: str, units: dict[str, str]) -> str:
     return name if unit in {"", "1"} else f"{name}_{unit.lower()}"
 
 
+def lossy(rows: list[Row]) -> bool:
+    """Return whether some mode loses power that is worth showing."""
+    return any(
+        mode.get("efficiency", 1.0) < 1 - LEAST_LOSS for row in rows for mode in row["modes"]
+    )
+
+
 def modes_table(rows: list[Row], units: dict[str, str]) -> str:
-    """Return the table for people: one line per mode, one for a case without any."""
+    """Return the table for people: one line per mode, one for a case without any.
+
+    Where power is lost, directivity and efficiency stand beside the gain.
+    """
     names = list(rows[0]["values"]) if rows else []
+    losses = lossy(rows)
     head = ["case", *names, "status", "mode", "natural", "+/-", "Q", "dip", "return loss"]
-    head += ["X = 0", "R", "gain"]
+    head += ["X = 0", "R", "gain", *(["directivity", "efficiency"] if losses else [])]
     lines = []
     for row in rows:
         swept = [quantity_text(row["values"][name], units.get(name, "1")) for name in names]
         start = [str(row["case"]), *swept, row["status"]]
         if row["modes"]:
-            lines += [start + _mode_cells(mode) for mode in row["modes"]]
+            lines += [start + _mode_cells(mode, losses=losses) for mode in row["modes"]]
         else:
-            lines.append([*start, row.get("reason", ""), *[""] * 8])
-    return table(head, lines)
+            lines.append([*start, "-", *[""] * (len(head) - len(start) - 1)])
+    # Under the table, where a long sentence does not push the numbers apart.
+    reasons = [
+        f"case {row['case']}: {row['status']}: {row['reason']}"
+        for row in rows
+        if row.get("reason") and not row["modes"]
+    ]
+    return "\n".join([table(head, lines), *([""] if reasons else []), *reasons])
 
 
-def _mode_cells(mode: Row) -> list[str]:
+def _mode_cells(mode: Row, *, losses: bool) -> list[str]:
     from simkit.response.labels import half_wave_label
 
     number = mode["half_waves"]
     error = mode.get("frequency_error")
-    return [
-        half_wave_label(-1 if number is None else number),
+    cells = [
+        half_wave_label(-1 if number is None else number, mode.get("on_plane", False)),
         frequency_text(mode["frequency_hz"]),
         number_text(error * 100, 2, "%") if error is not None else "-",
         number_text(mode.get("q"), 2),
@@ -117,3 +165,8 @@ def _mode_cells(mode: Row) -> list[str]:
         number_text(mode.get("series_resonance_resistance_ohm"), 1, "ohm"),
         number_text(mode.get("peak_gain_dbi"), 1, "dBi"),
     ]
+    if losses:
+        efficiency = mode.get("efficiency")
+        cells.append(number_text(mode.get("directivity_dbi"), 1, "dBi"))
+        cells.append(number_text(efficiency * 100, 1, "%") if efficiency is not None else "-")
+    return cells

@@ -42,7 +42,7 @@ def command(study: str, results: str | None, workers: int | None, fresh: bool) -
     loaded = load_study(study)
     summary = run(loaded, results=results, workers=workers, fresh=fresh)
     dataset = open_results(summary.results_dir)
-    show_remarks(dataset)
+    show_remarks(dataset, loaded)
     trouble = False
     if summary.complete:
         draw(dataset, loaded, summary.results_dir)
@@ -52,11 +52,11 @@ def command(study: str, results: str | None, workers: int | None, fresh: bool) -
         raise click.exceptions.Exit(1)
 
 
-def show_remarks(dataset: xr.Dataset) -> None:
+def show_remarks(dataset: xr.Dataset, study: Study) -> None:
     """Print why some cases have no solution, or one to be doubted."""
     from simkit.cli.status import remarked_cases, remarks_lines
 
-    for line in remarks_lines(remarked_cases(dataset)):
+    for line in remarks_lines(remarked_cases(dataset, study)):
         click.echo(line)
 
 

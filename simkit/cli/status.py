@@ -6,11 +6,16 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from simkit.cli.folder import study_of
 from simkit.cli.options import csv_option, json_option, one_format, results_argument
 from simkit.cli.output import csv_text, emit, json_text, table
+from simkit.cli.study_lines import with_line
+from simkit.errors import StudyError
 
 if TYPE_CHECKING:
     import xarray as xr
+
+    from simkit.study import Study
 
 _SHOWN = 20
 
@@ -35,7 +40,7 @@ def command(results: str, as_json: bool, as_csv: bool) -> None:
 
     state = status(results)
     dataset = open_results(results)
-    remarks = remarked_cases(dataset)
+    remarks = remarked_cases(dataset, _copied_study(results))
     if form == "csv":
         emit(csv_text(remarks))
     elif form == "json":
@@ -55,16 +60,37 @@ def command(results: str, as_json: bool, as_csv: bool) -> None:
         emit("\n".join([*status_lines(state), *remarks_lines(remarks)]))
 
 
-def remarked_cases(dataset: xr.Dataset) -> list[dict[str, Any]]:
-    """Return case, status and reason of every settled case that is not simply solved."""
+def _copied_study(results: str) -> Study | None:
+    """The study copied into a results folder; None if it is not there or no longer understood."""
+    try:
+        return study_of(results)
+    except StudyError:
+        return None
+
+
+def remarked_cases(dataset: xr.Dataset, study: Study | None = None) -> list[dict[str, Any]]:
+    """Return case, status and reason of every settled case that is not simply solved.
+
+    With the study, a reason that is about a strip or the feed ends with its line there.
+    """
     from simkit.store.schema import Status
 
     columns = (dataset["case"].values, dataset["status"].values, dataset["reason"].values)
     return [
-        {"case": int(case), "status": Status(int(code)).label, "reason": str(reason)}
+        {
+            "case": int(case),
+            "status": Status(int(code)).label,
+            "reason": _with_line(str(reason), study, int(case)),
+        }
         for case, code, reason in zip(*columns, strict=True)
         if code not in (Status.WAITING, Status.SOLVED)
     ]
+
+
+def _with_line(reason: str, study: Study | None, case: int) -> str:
+    if study is None or case >= study.case_count:
+        return reason
+    return with_line(reason, study, study.case(case).antenna)
 
 
 def remarks_lines(remarks: list[dict[str, Any]]) -> list[str]:

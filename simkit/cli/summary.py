@@ -1,31 +1,33 @@
-"""What `simkit check` says of a study: strips, feed, sweep, wires, cost."""
+"""What `simkit check` says of a study: antenna, sweep, wires, convergence, cost."""
 
 from __future__ import annotations
 
 import math
 import os
 from collections.abc import Sequence
-from itertools import chain, pairwise
-from typing import TYPE_CHECKING
+from itertools import chain
+from typing import TYPE_CHECKING, Any
 
+from simkit.cli.antenna_text import antenna_text
 from simkit.cli.output import (
     duration_text,
     frequency_text,
     labelled,
-    length_text,
+    number_text,
     quantity_text,
     size_text,
     table,
 )
+from simkit.cli.study_lines import with_line
 from simkit.errors import GeometryError, SimkitError
-from simkit.study.model import Antenna, CutFeed, Strip
+from simkit.study.model import Antenna
 
 if TYPE_CHECKING:
     from simkit.geometry import MeshPlan, WireGrid
+    from simkit.runner.convergence import Convergence
     from simkit.runner.result import CaseResult
     from simkit.study import Study
 
-_SHOWN_POINTS = 6
 _SHOWN_PROBLEMS = 10
 _MOST_LOOKED_AT = 2000
 """Cases whose wires are laid out for the check, a few milliseconds each."""
@@ -35,16 +37,14 @@ _START_S = 4.0
 
 
 def study_text(study: Study) -> str:
-    """Return title, values, strips, feed, metal, band and sweep as simkit understood them."""
+    """Return title, values, antenna, band and sweep as simkit understood them."""
     nominal = study.nominal()
     band = nominal.frequency
     values = [f"{name} {_value(study, name, value)}" for name, value in study.values.items()]
     parts = [
         f"{study.title} ({study.path})",
         labelled("Values", ", ".join(values) or "none"),
-        labelled("Strips", strips_table(nominal.strips)),
-        labelled("Feed", feed_text(nominal)),
-        labelled("Metal", metal_text(nominal)),
+        antenna_text(nominal),
         labelled(
             "Band",
             f"{frequency_text(band.start_hz)} to {frequency_text(band.stop_hz)}, "
@@ -56,67 +56,6 @@ def study_text(study: Study) -> str:
         files = [f"{m.path}{_in_brackets(study, m.build, 'as built: ')}" for m in study.measured]
         parts.append(labelled("Measured", "\n".join(files)))
     return "\n".join(parts)
-
-
-def strips_table(strips: Sequence[Strip]) -> str:
-    """Return one line per strip: name, width, developed length, path."""
-    rows = [
-        [strip.name, length_text(strip.width_m), length_text(developed_m(strip)), _path(strip)]
-        for strip in strips
-    ]
-    return table(["name", "width", "developed", "centre line, mm"], rows)
-
-
-def developed_m(strip: Strip) -> float:
-    """Return the length of a strip's centre line, metres: what to cut before bending."""
-    points = strip.path_m
-    return sum(math.dist(a, b) for a, b in pairwise(points))
-
-
-def _path(strip: Strip) -> str:
-    points = [f"({x * 1e3:.4g}, {y * 1e3:.4g})" for x, y in strip.path_m]
-    if len(points) > _SHOWN_POINTS:
-        left_out = len(points) - 4
-        points = [*points[:3], f"... {left_out} more ...", points[-1]]
-    return " ".join(points)
-
-
-def feed_text(antenna: Antenna) -> str:
-    """Return where the source sits and what reflections refer to."""
-    feed = antenna.feed
-    if isinstance(feed, CutFeed):
-        place = (
-            f"a cut {length_text(feed.gap_m)} wide across {feed.strip}, "
-            f"{length_text(feed.at_m)} along its centre line"
-        )
-    else:
-        place = (
-            f"between {feed.from_strip}.{feed.from_end} and {feed.to_strip}.{feed.to_end}, "
-            f"{length_text(_end_gap_m(antenna))} apart"
-        )
-    return f"{place}; reflections refer to {antenna.reference_ohm:.6g} ohm"
-
-
-def _end_gap_m(antenna: Antenna) -> float:
-    feed = antenna.feed
-    if isinstance(feed, CutFeed):
-        return feed.gap_m
-    paths = {strip.name: strip.path_m for strip in antenna.strips}
-    first = paths[feed.from_strip][0 if feed.from_end == "start" else -1]
-    second = paths[feed.to_strip][0 if feed.to_end == "start" else -1]
-    return math.dist(first, second)
-
-
-def metal_text(antenna: Antenna) -> str:
-    """Return material, thickness and conductivity."""
-    metal = antenna.metal
-    if metal.conductivity_s_per_m is None:
-        return "perfect conductor" + (
-            f", {length_text(metal.thickness_m)}" if metal.thickness_m else ""
-        )
-    return (
-        f"{metal.material}, {length_text(metal.thickness_m)}, {metal.conductivity_s_per_m:.3g} S/m"
-    )
 
 
 def sweep_text(study: Study) -> str:
@@ -165,7 +104,7 @@ def case_problems(study: Study, plan: MeshPlan) -> list[str]:
             try:
                 build_wires(case.antenna, plan)
             except GeometryError as error:
-                reason = str(error)
+                reason = with_line(str(error), study, case.antenna)
         if reason:
             found.append(f"case {case.index}{_in_brackets(study, case.values)}: {reason}")
     return found
@@ -198,14 +137,16 @@ def shown_antenna(study: Study, plan: MeshPlan) -> tuple[Antenna, str]:
     raise first or GeometryError("the study has no case that can be built")
 
 
-def wires_text(wires: WireGrid, antenna: Antenna) -> str:
-    """Return the model, its wires, the error to expect and the limits it exceeds."""
+def wires_text(wires: WireGrid, plan: MeshPlan) -> str:
+    """Return the model and why, its wires, the error to expect and the limits it exceeds."""
     lengths_mm = [wire.segment_m * 1e3 for wire in wires.wires]
-    kind = "line: one wire on the centre line of each strip"
-    if antenna.model == "auto":
-        kind += " (chosen by auto: every strip has constant width)"
+    across = (
+        "one wire on the centre line of each strip"
+        if plan.kind == "line"
+        else f"{plan.rails} rails along each strip"
+    )
     lines = [
-        labelled("Model", kind),
+        labelled("Model", f"{plan.why}\n{across}"),
         labelled(
             "Wires",
             f"{len(wires.wires)}, radius {wires.radius_m * 1e3:.3g} mm, {wires.segments} segments "
@@ -217,6 +158,57 @@ def wires_text(wires: WireGrid, antenna: Antenna) -> str:
     ]
     lines += [labelled("Doubtful", doubt) for doubt in wires.doubts]
     return "\n".join(lines)
+
+
+def convergence_text(found: Convergence) -> str:
+    """Return mode frequencies mesh by mesh, with shifts, and the error they speak for."""
+    from simkit.response.labels import half_wave_label
+
+    head = ["mode"]
+    for place, level in enumerate(found.levels):
+        head.append(f"{level.name} ({level.segments})")
+        if place:
+            head.append("shift")
+    if found.other_rails is not None:
+        head += [f"{found.other_rails.name} ({found.other_rails.segments})", "shift"]
+    head += ["mesh", "rules", "together"]
+    rows = []
+    for mode, number in enumerate(found.half_waves):
+        cells = [half_wave_label(number, found.on_plane)]
+        before = None
+        for level in found.levels:
+            here = level.frequency_hz[mode]
+            cells.append(_megahertz(here))
+            if before is not None:
+                cells.append(_percent(here / before - 1, "+"))
+            before = here
+        if found.other_rails is not None:
+            here = found.other_rails.frequency_hz[mode]
+            cells.append(_megahertz(here))
+            cells.append(_percent(here / found.levels[found.planned].frequency_hz[mode] - 1, "+"))
+        cells.append(f"{_percent(found.mesh_error[mode])} ({found.how[mode]})")
+        cells += [_percent(found.rules_error), _percent(found.relative_error[mode])]
+        rows.append(cells)
+    lines = [table(head, rows)]
+    if found.exhausted:
+        lines.append(
+            "The model cannot be refined further: the engine needs segments of about two wire "
+            "radii, and the radius is a quarter of the strip's width."
+        )
+    lines += list(found.remarks)
+    lines.append(
+        "MHz, with the number of unknowns of each mesh. Finer wires come no nearer to flat metal\n"
+        "than the rules behind them, so the error together is never less than theirs."
+    )
+    return "\n".join(lines)
+
+
+def _megahertz(frequency_hz: float) -> str:
+    return number_text(frequency_hz / 1e6, 2)
+
+
+def _percent(part: float, sign: str = "") -> str:
+    return f"{part * 100:{sign}.3f} %" if math.isfinite(part) else "-"
 
 
 def problems_text(problems: Sequence[str], looked_at: int, cases: int) -> str:
@@ -239,16 +231,32 @@ def timed_solve(antenna: Antenna, plan: MeshPlan) -> CaseResult:
     SimkitError
         If it has no solution.
     """
+    result: CaseResult = _in_child("solve_case", antenna, plan)
+    return result
+
+
+def refine(antenna: Antenna, plan: MeshPlan) -> Convergence:
+    """Solve one antenna on several meshes, in a process that can be killed.
+
+    Raises
+    ------
+    SimkitError
+        If it has no solution.
+    """
+    result: Convergence = _in_child("solve_convergence", antenna, plan)
+    return result
+
+
+def _in_child(function: str, antenna: Antenna, plan: MeshPlan) -> Any:
     from simkit.engine.child import Child, Kind
 
-    with Child("simkit.runner.solve:solve_case") as child:
+    with Child(f"simkit.runner.solve:{function}") as child:
         outcome = child.call(antenna, plan, limit_s=_TIMED_SOLVE_LIMIT_S)
     if outcome.kind is Kind.BUG:
         raise RuntimeError(outcome.trace)
     if outcome.kind is not Kind.VALUE:
-        raise SimkitError(f"the antenna to be timed has no solution: {outcome.reason}")
-    result: CaseResult = outcome.value
-    return result
+        raise SimkitError(f"the antenna has no solution: {outcome.reason}")
+    return outcome.value
 
 
 def cost_text(study: Study, wires: WireGrid, result: CaseResult) -> str:

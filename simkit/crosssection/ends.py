@@ -110,7 +110,11 @@ def end_correction(section: CrossSection, end_overhang_m: float) -> EndCorrectio
         max((section.right_m - section.left_m) / width_m - 1, 0.0) / 2,
         end_overhang_m / width_m,
     )
-    permittivity = _uniform_permittivity(sizes[0], sizes[1], kappa_strip)
+    if len(section.layers) == 1 and not _embedded(section):
+        # Uniform already; metal of some thickness changes the end by less than the table's error.
+        permittivity = complex(section.layers[0].permittivity).real
+    else:
+        permittivity = _uniform_permittivity(sizes[0], sizes[1], kappa_strip)
     from_table = _table_value(*sizes, permittivity)
     shortening = from_table + ENGINE_EXCESS * (np.exp(kappa_strip) - 1)
     doubts = _doubts(section, sizes, permittivity)

@@ -1,7 +1,17 @@
 """Paths, strips, mesh plans and wire grids."""
 
-from simkit.geometry.line_model import build_wires
+from simkit.geometry.build import build_wires
 from simkit.geometry.mesh import MeshPlan, plan_mesh
+from simkit.geometry.network import chains_of
 from simkit.geometry.wires import Chain, StripSpan, Wire, WireGrid
 
-__all__ = ["Chain", "MeshPlan", "StripSpan", "Wire", "WireGrid", "build_wires", "plan_mesh"]
+__all__ = [
+    "Chain",
+    "MeshPlan",
+    "StripSpan",
+    "Wire",
+    "WireGrid",
+    "build_wires",
+    "chains_of",
+    "plan_mesh",
+]

@@ -58,9 +58,11 @@ def _check_wire(wire: Wire, radius_m: float, wavelength_m: float) -> None:
             f"{radius_m * 1e3:.4g} mm: the strip is too wide for its length; narrow it or lengthen "
             "the leg"
         )
-    if wire.segment_m > wavelength_m / 10:
+    # Pieces of corner and junction figures may be longer: their rules were found with them.
+    part = 10 if wire.segments > 1 else 6
+    if wire.segment_m > wavelength_m / part:
         raise GeometryError(
-            f"{where} has segments of {wire.segment_m * 1e3:.4g} mm, over a tenth of the "
+            f"{where} has segments of {wire.segment_m * 1e3:.4g} mm, over 1/{part} of the "
             f"wavelength ({wavelength_m * 1e2:.4g} mm) at the band's top: lower frequency.stop, "
             "or narrow the strip so that segments can be shorter"
         )

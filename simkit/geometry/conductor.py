@@ -33,13 +33,14 @@ def surface_resistance_ohm(
     return float(np.real((1 + 1j) / (conductivity_s_per_m * skin_m) / np.tanh(argument)))
 
 
-def strip_resistance_ohm_per_m(width_m: float, metal: Metal, frequency_hz: float) -> float:
-    """Series resistance per metre of a strip, its crowding at the edges included.
+def crowding_per_m(width_m: float, thickness_m: float) -> float:
+    """Resistance per metre of a strip over the surface resistance of one face, 1/m.
 
     Returns
     -------
     float
-        ``Rs/(pi w) [1 + ln(4 pi w/t)/pi]``, ohm per metre; 0 for a perfect conductor.
+        ``[1 + ln(4 pi w/t)/pi] / (pi w)``: twice the even spread over both faces, since the current
+        crowds at the edges.
 
     Notes
     -----
@@ -50,8 +51,24 @@ def strip_resistance_ohm_per_m(width_m: float, metal: Metal, frequency_hz: float
     ----------
     H. A. Wheeler, "Formulas for the skin effect", Proc. IRE 30(9), 1942 (the rule).
     """
+    return float((1 + np.log(4 * np.pi * width_m / thickness_m) / np.pi) / (np.pi * width_m))
+
+
+def face_resistance_ohm(metal: Metal, frequency_hz: float) -> float:
+    """Surface resistance of one face of a metal sheet, ohm; 0 for a perfect conductor."""
     if metal.conductivity_s_per_m is None:
         return 0.0
-    face = surface_resistance_ohm(metal.conductivity_s_per_m, metal.thickness_m, frequency_hz)
-    crowding = 1 + np.log(4 * np.pi * width_m / metal.thickness_m) / np.pi
-    return float(face / (np.pi * width_m) * crowding)
+    return surface_resistance_ohm(metal.conductivity_s_per_m, metal.thickness_m, frequency_hz)
+
+
+def strip_resistance_ohm_per_m(width_m: float, metal: Metal, frequency_hz: float) -> float:
+    """Series resistance per metre of a strip, its crowding at the edges included.
+
+    Returns
+    -------
+    float
+        ``Rs/(pi w) [1 + ln(4 pi w/t)/pi]``, ohm per metre; 0 for a perfect conductor.
+    """
+    if metal.conductivity_s_per_m is None:
+        return 0.0
+    return face_resistance_ohm(metal, frequency_hz) * crowding_per_m(width_m, metal.thickness_m)

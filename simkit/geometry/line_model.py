@@ -1,8 +1,9 @@
 """The line model: each strip becomes one chain of wire segments on its centre line.
 
 The wires have the equivalent radius of the strip, stop short of open ends, and carry small figures
-at sharp corners: a chamfer of two segments with a whisker pointing outwards, which together give a
-mitred corner the inductance and the capacitance that a plain bend lacks.
+at sharp corners and at junctions. A corner's chamfer of two segments with a whisker pointing
+outwards gives it the inductance and the capacitance that a plain bend lacks; a junction is a
+rhombus of four segments with nothing at its centre.
 """
 
 from __future__ import annotations
@@ -12,106 +13,42 @@ from dataclasses import dataclass, field
 from itertools import pairwise
 
 import numpy as np
-from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
-from simkit.geometry.checks import check_wires
-from simkit.geometry.mesh import (
-    FIGURE_FROM_RAD,
+from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.line_rules import (
     FIGURE_UP_TO_RAD,
-    FINE_WAVELENGTHS,
-    LONGEST_WAVELENGTHS,
-    MeshPlan,
+    TEE_BRANCH_WIDTHS,
+    TEE_FAR_WIDTHS,
+    TEE_HOST_WIDTHS,
     Run,
     VertexKind,
     chamfer_m,
     runs,
-    signature,
-    split_counts,
     whisker_m,
 )
-from simkit.geometry.paths import leg_lengths, point_at, sub_path, turns, unit
-from simkit.geometry.skeleton import Skeleton, skeletons
-from simkit.geometry.strips import check_strips, equivalent_radius_m, model_gap_m
-from simkit.geometry.wires import Chain, FloatArray, Wire, WireGrid
-from simkit.study.model import Antenna
+from simkit.geometry.paths import point_at, sub_path, turns, unit
+from simkit.geometry.wires import Chain, FloatArray, Wire
 
-PROBE_PLACE = 0.13
-"""Second source, as a fraction of the fed path: at no node of any of the first seven modes."""
+Source = tuple[tuple[int, float], ...]
 
-STRAIGHT_LIMIT = 0.2
-"""Width over length up to which the line model of straight strips is checked."""
-
-
-def build_wires(antenna: Antenna, plan: MeshPlan) -> WireGrid:
-    """Turn an antenna into the wire grid of the line model.
-
-    Parameters
-    ----------
-    antenna : Antenna
-    plan : MeshPlan
-        From `plan_mesh` over all cases of the study.
-
-    Raises
-    ------
-    GeometryError
-        The strips cannot be built, or the wires would be outside what the engine can solve.
-    """
-    doubts = list(check_strips(antenna))
-    lines = skeletons(antenna, plan.feed_kind)
-    if [len(line.points) - 2 for line in lines] != [len(c.vertices) for c in plan.chains]:
-        raise GeometryError(
-            "the path has another number of points than in the other cases of the study "
-            f"({signature(lines)}), so they cannot share one mesh; split the study"
-        )
-    radius = equivalent_radius_m(lines[0].width_m, antenna.metal.thickness_m)
-    maker = _Maker()
-    chains = []
-    for index, (line, chain_plan) in enumerate(zip(lines, plan.chains, strict=True)):
-        centred = plan.centred and index == 0
-        doubts += _corner_doubts(line, chain_plan.vertices)
-        counts = chain_plan.counts
-        if plan.moving and index == 0:
-            counts = split_counts(runs(line, chain_plan.vertices, centred=False), counts)
-        chains.append(maker.chain(line, chain_plan.vertices, counts, centred=centred))
-    source, source_length = maker.source(lines[0], chains[0])
-    # Corner figures were found with these very wires, up to 12 mm wide and 3.6 GHz: not a doubt.
-    plain = [wire for k, wire in enumerate(maker.wires) if k not in maker.figure_wires]
-    doubts += _length_doubts(antenna, lines, plain)
-    feed = lines[0].feed
-    assert feed is not None  # the first skeleton is the fed one by construction
-    check_wires(maker.wires, radius, antenna.frequency.stop_hz)
-    strip_index, strip_position = _strip_places(chains, sum(w.segments for w in maker.wires))
-    return WireGrid(
-        wires=tuple(maker.wires),
-        radius_m=radius,
-        chains=tuple(chains),
-        strip_index=strip_index,
-        strip_position=strip_position,
-        source=source,
-        probe=_probe(chains[0], source),
-        model_gap_m=model_gap_m(source_length, lines[0].width_m),
-        study_gap_m=feed.gap_m,
-        feed_width_m=lines[0].width_m,
-        relative_error=_relative_error(
-            lines,
-            plan,
-            max(wire.segment_m for wire in maker.wires),
-            light_speed / antenna.frequency.stop_hz,
-        ),
-        doubts=tuple(doubts),
-    )
+FED_OTHERWISE = (
+    "its feed sits at the foot of a strip on the plane and that of other cases of the study does "
+    "not, or the other way round, so they cannot share one mesh; split the study"
+)
 
 
 @dataclass
-class _Maker:
-    """Collects wires and the chain bookkeeping while walking along skeletons."""
+class LineDrawing:
+    """Collects wires and the chain bookkeeping while walking along chains."""
 
     wires: list[Wire] = field(default_factory=list)
     segments: int = 0
-    figure_wires: set[int] = field(default_factory=set)
+    longest_run_m: float = 0.0
+    branch_nodes: dict[tuple[int, int], FloatArray] = field(default_factory=dict)
 
     def add(self, start: FloatArray, end: FloatArray, count: int) -> list[int]:
+        """A straight wire; returns its segments."""
         self.wires.append(
             Wire(
                 (float(start[0]), float(start[1]), 0.0), (float(end[0]), float(end[1]), 0.0), count
@@ -121,86 +58,119 @@ class _Maker:
         self.segments += count
         return list(range(first, self.segments))
 
-    def stretch(
-        self, points: FloatArray, start_m: float, stop_m: float, count: int
-    ) -> tuple[list[int], list[float]]:
-        """`count` segments along the part of a path between two arc lengths."""
-        nodes = np.linspace(start_m, stop_m, count + 1)
-        middles = list((nodes[:-1] + nodes[1:]) / 2)
-        part = sub_path(points, start_m, stop_m)
-        if np.linalg.norm(part[-1] - part[0]) > (stop_m - start_m) * (1 - 1e-9):
-            return self.add(part[0], part[-1], count), middles
-        places = point_at(points, nodes)
-        made: list[int] = []
-        for a, b in pairwise(places):
-            made += self.add(a, b, 1)
-        return made, middles
-
-    def chain(
+    def draw(
         self,
-        line: Skeleton,
+        lines: Sequence[ChainLine],
+        index: int,
         kinds: Sequence[VertexKind],
         counts: Sequence[int],
         *,
         centred: bool,
     ) -> Chain:
+        """Draw one chain; hosts must be drawn before their branches."""
+        line = lines[index]
         stretches = runs(line, kinds, centred=centred)
+        if len(stretches) != len(counts):
+            raise GeometryError(FED_OTHERWISE)
         _check_room(line, stretches)
-        made: list[int] = []
-        middles: list[float] = []
+        walk = _Walk(self, line)
         bounds = _without_source(stretches, counts, centred=centred)
-        figures = _figures(line, kinds)
-        for index, ((start, stop), count) in enumerate(zip(bounds, counts, strict=True)):
-            segments, at = self.stretch(line.points, start, stop, count)
-            made += segments
-            middles += at
-            # Only between the two fed runs: behind the second one a corner figure may follow.
-            pair = stretches[index : index + 2]
-            if not centred and len(pair) == 2 and pair[0].fed and pair[1].fed:
-                segments, at = self.stretch(line.points, stop, bounds[index + 1][0], 1)
-                made += segments
-                middles += at
-            for vertex in figures:
-                if abs(vertex.arc_m - vertex.cut_m - stretches[index].stop_m) < 1e-12:
-                    segments, at = self.figure(vertex)
-                    made += segments
-                    middles += at
-        return Chain(
-            segments=np.array(made),
-            signs=np.ones(len(made), dtype=int),
-            arc_m=np.array(middles),
-            length_m=line.length_m,
-            closed=line.closed,
-            spans=line.spans,
-        )
+        figures: list[_Corner | _Tee] = [*_corners(line, kinds), *_tees(lines, index, kinds)]
+        for number, ((start, stop), count) in enumerate(zip(bounds, counts, strict=True)):
+            ends = self._ends(line, first=number == 0, last=number == len(bounds) - 1)
+            walk.stretch(start, stop, count, *ends)
+            if number + 1 < len(bounds):
+                following = bounds[number + 1][0]
+                fed = stretches[number].fed and stretches[number + 1].fed and not centred
+                if fed and following > stop:
+                    walk.stretch(stop, following, 1)
+            for figure in figures:
+                if abs(figure.arc_m - figure.cut_m - stretches[number].stop_m) < 1e-12:
+                    figure.draw(walk)
+        return walk.chain()
 
-    def figure(self, corner: _Corner) -> tuple[list[int], list[float]]:
-        middle = (corner.before + corner.after) / 2
-        made = self.add(corner.before, middle, 1) + self.add(middle, corner.after, 1)
-        self.add(middle, middle + corner.outwards * corner.whisker_m, 1)
-        self.figure_wires |= set(range(len(self.wires) - 3, len(self.wires)))
-        return made, [corner.arc_m - corner.cut_m / 2, corner.arc_m + corner.cut_m / 2]
+    def _ends(
+        self, line: ChainLine, *, first: bool, last: bool
+    ) -> tuple[FloatArray | None, FloatArray | None]:
+        """Exact nodes of the host's figure where a branch begins or ends."""
+        start = end = None
+        if first and line.start is not None:
+            start = self.branch_nodes[line.start.chain, line.start.vertex]
+        if last and line.end is not None:
+            end = self.branch_nodes[line.end.chain, line.end.vertex]
+        return start, end
 
-    def source(self, line: Skeleton, chain: Chain) -> tuple[tuple[tuple[int, float], ...], float]:
-        """Source segments with their volts, and the segment length that sets the model's gap.
+    def source(self, line: ChainLine, kinds: Sequence[VertexKind], chain: Chain) -> Source:
+        """Source segments with their volts.
 
         At an apex the source sits half and half on the two segments beside the node (those of the
         chamfer, if the corner has a figure), so that it neither crosses a corner nor breaks the
         symmetry of the two arms.
         """
         feed = line.feed
-        assert feed is not None
-        lengths = [wire.segment_m for wire in self.wires for _ in range(wire.segments)]
-        if feed.kind == "straight":
-            segment = int(chain.segments[np.argmin(abs(chain.arc_m - feed.arc_m))])
-            return ((segment, 1.0),), lengths[segment]
-        after = int(np.searchsorted(chain.arc_m, feed.arc_m))
-        pair = [int(chain.segments[after - 1]), int(chain.segments[after])]
-        return tuple((s, 0.5) for s in pair), float(np.mean([lengths[s] for s in pair]))
+        assert feed is not None  # only called for the fed chain
+        arc = float(line.arcs_m[feed.vertex])
+        if kinds[feed.vertex - 1] == "feed":
+            return ((int(chain.segments[np.argmin(abs(chain.arc_m - arc))]), 1.0),)
+        after = int(np.searchsorted(chain.arc_m, arc))
+        pair = (int(chain.segments[after - 1]), int(chain.segments[after]))
+        return tuple((segment, 0.5) for segment in pair)
+
+
+@dataclass
+class _Walk:
+    """Segments of one chain, in the order they are drawn."""
+
+    drawing: LineDrawing
+    line: ChainLine
+    made: list[tuple[float, int]] = field(default_factory=list)
+
+    def note(self, segments: Sequence[int], middles_m: Sequence[float]) -> None:
+        self.made += [(float(arc), s) for arc, s in zip(middles_m, segments, strict=True)]
+
+    def stretch(
+        self,
+        start_m: float,
+        stop_m: float,
+        count: int,
+        first: FloatArray | None = None,
+        last: FloatArray | None = None,
+    ) -> None:
+        """`count` segments along the part of the chain between two arc lengths."""
+        points = self.line.points
+        # The figures of corners and junctions are checked with the segments they have; only the
+        # runs between them answer to the wavelength.
+        self.drawing.longest_run_m = max(self.drawing.longest_run_m, (stop_m - start_m) / count)
+        nodes = np.linspace(start_m, stop_m, count + 1)
+        middles = [float(m) for m in (nodes[:-1] + nodes[1:]) / 2]
+        places = point_at(points, nodes)
+        places[0] = places[0] if first is None else first
+        places[-1] = places[-1] if last is None else last
+        part = sub_path(points, start_m, stop_m)
+        if np.linalg.norm(part[-1] - part[0]) > (stop_m - start_m) * (1 - 1e-9):
+            self.note(self.drawing.add(places[0], places[-1], count), middles)
+            return
+        for middle, (a, b) in zip(middles, pairwise(places), strict=True):
+            self.note(self.drawing.add(a, b, 1), [middle])
+
+    def chain(self) -> Chain:
+        self.made.sort()
+        return Chain(
+            segments=np.array([segment for _, segment in self.made]),
+            signs=np.ones(len(self.made), dtype=int),
+            arc_m=np.array([arc for arc, _ in self.made]),
+            length_m=self.line.length_m,
+            closed=self.line.closed,
+            spans=self.line.spans,
+            open_start=self.line.start is None and not self.line.start_on_plane,
+            open_end=self.line.end is None and not self.line.end_on_plane,
+        )
 
 
 @dataclass(frozen=True)
 class _Corner:
+    """Chamfer with whisker."""
+
     arc_m: float
     cut_m: float
     whisker_m: float
@@ -208,44 +178,101 @@ class _Corner:
     after: FloatArray
     outwards: FloatArray
 
+    def draw(self, walk: _Walk) -> None:
+        middle = (self.before + self.after) / 2
+        add = walk.drawing.add
+        chamfer = add(self.before, middle, 1) + add(middle, self.after, 1)
+        walk.note(chamfer, [self.arc_m - self.cut_m / 2, self.arc_m + self.cut_m / 2])
+        add(middle, middle + self.outwards * self.whisker_m, 1)
 
-def _figures(line: Skeleton, kinds: Sequence[VertexKind]) -> list[_Corner]:
+
+@dataclass(frozen=True)
+class _Tee:
+    """Rhombus of a junction: two ways round, the far side's and the branch's."""
+
+    arc_m: float
+    cut_m: float
+    before: FloatArray
+    after: FloatArray
+    far: FloatArray
+    branch: FloatArray
+    key: tuple[int, int]
+
+    def draw(self, walk: _Walk) -> None:
+        add = walk.drawing.add
+        arcs = [self.arc_m - self.cut_m / 2, self.arc_m + self.cut_m / 2]
+        for corner in (self.far, self.branch):
+            walk.note(add(self.before, corner, 1) + add(corner, self.after, 1), arcs)
+        walk.drawing.branch_nodes[self.key] = self.branch
+
+
+def _corners(line: ChainLine, kinds: Sequence[VertexKind]) -> list[_Corner]:
     found = []
-    arcs = np.concatenate([[0.0], np.cumsum(leg_lengths(line.points))])
+    arcs = line.arcs_m
     for vertex, (kind, turn) in enumerate(zip(kinds, turns(line.points), strict=True), start=1):
         if kind != "figure":
             continue
-        if turn > FIGURE_UP_TO_RAD + 1e-9:
-            x, y = line.points[vertex] * 1e3
-            raise GeometryError(
-                f"the corner at ({x:.4g}, {y:.4g}) mm turns by {np.rad2deg(turn):.0f} degrees; the "
-                "line model holds up to 120: open the corner or split it in two bends"
-            )
         at = line.points[vertex]
+        if turn > FIGURE_UP_TO_RAD:
+            raise GeometryError(
+                f"the corner at ({at[0] * 1e3:.4g}, {at[1] * 1e3:.4g}) mm turns by "
+                f"{np.rad2deg(turn):.0f} degrees; the line model holds up to 120: open the corner "
+                "or split it in two bends"
+            )
         before, after = unit(at - line.points[vertex - 1]), unit(line.points[vertex + 1] - at)
-        cut = chamfer_m(turn, line.width_m)
+        cut = chamfer_m(turn, line.widest_m)
+        # In a case whose corner happens to be straight the whisker still needs a direction.
+        away = before - after if turn > 1e-6 else np.array([before[1], -before[0]])
         found.append(
             _Corner(
                 arc_m=float(arcs[vertex]),
                 cut_m=cut,
-                whisker_m=whisker_m(turn, line.width_m),
+                whisker_m=whisker_m(turn, line.widest_m),
                 before=at - cut * before,
                 after=at + cut * after,
-                outwards=unit(before - after),
+                outwards=unit(away),
             )
         )
     return found
 
 
-def _check_room(line: Skeleton, stretches: Sequence[Run]) -> None:
+def _tees(lines: Sequence[ChainLine], index: int, kinds: Sequence[VertexKind]) -> list[_Tee]:
+    line = lines[index]
+    found = []
+    for vertex, branch in line.tees:
+        if kinds[vertex - 1] != "tee":
+            continue
+        other = lines[branch]
+        at_start = other.start is not None and other.start.chain == index
+        at_start = at_start and other.start is not None and other.start.vertex == vertex
+        outwards = unit(
+            other.points[1] - other.points[0] if at_start else other.points[-2] - other.points[-1]
+        )
+        at, width = line.points[vertex], line.widest_m
+        back, ahead = unit(at - line.points[vertex - 1]), unit(line.points[vertex + 1] - at)
+        found.append(
+            _Tee(
+                arc_m=float(line.arcs_m[vertex]),
+                cut_m=TEE_HOST_WIDTHS * width,
+                before=at - TEE_HOST_WIDTHS * width * back,
+                after=at + TEE_HOST_WIDTHS * width * ahead,
+                far=at - TEE_FAR_WIDTHS * width * outwards,
+                branch=at + TEE_BRANCH_WIDTHS * width * outwards,
+                key=(index, vertex),
+            )
+        )
+    return found
+
+
+def _check_room(line: ChainLine, stretches: Sequence[Run]) -> None:
     for run in stretches:
-        if run.stop_m - run.start_m < 0.5 * line.width_m:
+        if run.stop_m - run.start_m < 0.5 * line.widest_m:
             x, y = point_at(line.points, (run.start_m + run.stop_m) / 2) * 1e3
             raise GeometryError(
                 f"near ({x:.4g}, {y:.4g}) mm the straight part of a leg is "
-                f"{max(run.stop_m - run.start_m, 0) * 1e3:.3g} mm long between corners, ends or "
-                f"feed; a strip {line.width_m * 1e3:.4g} mm wide needs half a width there: "
-                "lengthen the leg, move the feed, or narrow the strip"
+                f"{max(run.stop_m - run.start_m, 0) * 1e3:.3g} mm long between corners, junctions, "
+                f"ends or feed; a strip {line.widest_m * 1e3:.4g} mm wide needs half a width "
+                "there: lengthen the leg, move the feed, or narrow the strip"
             )
 
 
@@ -263,92 +290,3 @@ def _without_source(
     bounds[left] = (bounds[left][0], bounds[left][1] - half)
     bounds[right] = (bounds[right][0] + half, bounds[right][1])
     return bounds
-
-
-def _probe(chain: Chain, source: tuple[tuple[int, float], ...]) -> tuple[tuple[int, float], ...]:
-    places = abs(chain.arc_m - PROBE_PLACE * chain.length_m)
-    taken = {segment for segment, _ in source}
-    order = [int(chain.segments[k]) for k in np.argsort(places, kind="stable")]
-    free = [segment for segment in order if segment not in taken]
-    if not free:
-        raise GeometryError(
-            f"a fed path of {chain.length_m * 1e3:.4g} mm has {len(order)} segments, all taken by "
-            "the source: it is too short for its width and band; lengthen or narrow the strip, or "
-            "raise frequency.stop"
-        )
-    return ((free[0], 1.0),)
-
-
-def _strip_places(chains: Sequence[Chain], segments: int) -> tuple[np.ndarray, FloatArray]:
-    index = np.full(segments, -1, dtype=int)
-    position = np.full(segments, np.nan)
-    for chain in chains:
-        for span in chain.spans:
-            at = (chain.arc_m - span.start_m) / (span.end_m - span.start_m)
-            if chain.closed:
-                at = at % 1.0
-            on = (at >= 0) & (at <= 1)
-            index[chain.segments[on]] = span.strip
-            position[chain.segments[on]] = at[on]
-        figures = set(range(int(chain.segments.min()), int(chain.segments.max()) + 1))
-        for whisker in figures - set(chain.segments.tolist()):
-            index[whisker] = index[whisker - 1]
-    return index, position
-
-
-def _corner_doubts(line: Skeleton, kinds: Sequence[VertexKind]) -> list[str]:
-    found = []
-    legs = leg_lengths(line.points)
-    for vertex, (kind, turn) in enumerate(zip(kinds, turns(line.points), strict=True), start=1):
-        x, y = line.points[vertex] * 1e3
-        shortest = min(legs[vertex - 1], legs[vertex])
-        if kind == "figure" and shortest < 2.5 * line.width_m:
-            found.append(
-                f"a leg of {shortest * 1e3:.4g} mm at the corner ({x:.4g}, {y:.4g}) mm is shorter "
-                f"than 2.5 widths ({2.5 * line.width_m * 1e3:.4g} mm): mode frequencies may be off "
-                "by 1.3 % and Q by 12 %"
-            )
-        apex = line.feed is not None and line.feed.vertex == vertex
-        if kind == "figure" and not apex and turn < FIGURE_FROM_RAD - 1e-9:
-            found.append(
-                f"the corner at ({x:.4g}, {y:.4g}) mm turns by {np.rad2deg(turn):.0f} degrees here "
-                "and by 50 or more in other cases, so it keeps the figure of a sharp corner: mode "
-                "frequencies may be off by 0.4 %"
-            )
-    return found
-
-
-def _length_doubts(antenna: Antenna, lines: Sequence[Skeleton], wires: Sequence[Wire]) -> list[str]:
-    found = []
-    wavelength = light_speed / antenna.frequency.stop_hz
-    longest = max(wire.segment_m for wire in wires)
-    # A wide strip's segments may not be shorter than its width allows; the error is then the
-    # width's own, which the next rule covers.
-    if longest > LONGEST_WAVELENGTHS * wavelength and longest > 0.8 * lines[0].width_m:
-        found.append(
-            f"segments of {longest * 1e3:.3g} mm are longer than 1/18 of the wavelength "
-            f"({wavelength * LONGEST_WAVELENGTHS * 1e3:.3g} mm) at the top of the band: mode "
-            "frequencies may be off by more than 0.13 %; lower frequency.stop or split the sweep"
-        )
-    ratio = max(line.width_m / line.length_m for line in lines)
-    if ratio > STRAIGHT_LIMIT:
-        found.append(
-            f"the strip is {ratio:.2f} of its length wide; the line model is checked up to "
-            f"{STRAIGHT_LIMIT}: mode frequencies may be off by more than 0.3 %"
-        )
-    return found
-
-
-def _relative_error(
-    lines: Sequence[Skeleton], plan: MeshPlan, longest_m: float, wavelength_m: float
-) -> float:
-    """Standard error of mode frequencies, from the evidence behind the rules."""
-    ratio = max(line.width_m / line.length_m for line in lines)
-    error = 0.0005 if ratio <= 0.08 else 0.001 if ratio <= 0.13 else 0.002
-    if longest_m > FINE_WAVELENGTHS * wavelength_m:
-        error = max(error, 0.0012)
-    kinds = {kind for chain in plan.chains for kind in chain.vertices}
-    bent = any(np.any(turns(line.points) > 1e-3) for line in lines)
-    if "figure" in kinds or any(line.closed for line in lines):
-        return max(error, 0.002)
-    return max(error, 0.0015) if bent else error

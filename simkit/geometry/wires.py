@@ -42,20 +42,22 @@ class StripSpan:
 
 @dataclass(frozen=True)
 class Chain:
-    """Segments in a row from tip to tip (or once round a loop).
+    """Segments along one run of metal, from end to end (or once round a loop).
 
     Attributes
     ----------
     segments : (C,) int array
-        In order along the chain.
     signs : (C,) int array
         +1 where the segment's positive current flows along the chain.
     arc_m : (C,) float array
-        Segment middles as arc length along the centre line from the first tip, metres.
+        Segment middles as arc length along the centre line, ascending, metres. Segments of equal
+        arc length run side by side; the strip's current there is their sum.
     length_m : float
-        Arc length from tip to tip, feed gap included.
+        Arc length from end to end, feed gap included.
     closed : bool
     spans : tuple of StripSpan
+    open_start, open_end : bool
+        The metal, and so the current, ends there; otherwise it goes on into another chain.
     """
 
     segments: IntArray
@@ -64,6 +66,22 @@ class Chain:
     length_m: float
     closed: bool
     spans: tuple[StripSpan, ...]
+    open_start: bool = True
+    open_end: bool = True
+
+    def places(self) -> tuple[FloatArray, IntArray]:
+        """Distinct arc lengths, and for each segment the number of its own."""
+        arcs, number = np.unique(np.round(self.arc_m, 9), return_inverse=True)
+        return arcs, number
+
+
+@dataclass(frozen=True)
+class PathPiece:
+    """Part of the tip-to-tip path: a chain from one arc length to another, either way."""
+
+    chain: int
+    start_m: float
+    end_m: float
 
 
 @dataclass(frozen=True)
@@ -76,8 +94,15 @@ class WireGrid:
         In engine order; segments are numbered through all wires from 0.
     radius_m : float
         One radius for all wires: where wires of different radius meet the engine errs by per cents.
+    conductor_factor_per_m : (W,) float array
+        Resistance per metre of each wire over the metal's surface resistance of one face.
+    series_inductance_h_per_m, loss_inductance_h_per_m : (W,) float arrays
+        The carrier's series inductance of each wire, and its imaginary part times -1.
     chains : tuple of Chain
-        Current paths; the first one runs through the feed.
+        The first one carries the feed.
+    path : tuple of PathPiece
+        The longest way from tip to tip through the feed (once round, if the fed chain is a loop),
+        along which half waves are counted.
     strip_index : (S,) int array
         Strip of each segment, -1 for a segment in the feed gap.
     strip_position : (S,) float array
@@ -87,16 +112,24 @@ class WireGrid:
         Segments and volts of the feed and of the second, off-centre source; the volts of each add
         up to 1, so the terminal current is their weighted mean of the segment currents.
     model_gap_m, study_gap_m, feed_width_m : float
-        Gap the engine's source acts like, gap of the study, strip width there.
+        Gap the engine's source acts like, gap of the study, strip width there. A feed between a
+        strip's foot and a ground plane counts twice the width: that gap has the charge of two, of
+        the strip to its image and back.
     relative_error : float
         Standard error of mode frequencies expected of the rules used.
     doubts : tuple of str
         Limits of the rules that this grid exceeds, one sentence each.
+    path_on_plane : (bool, bool)
+        The path's start and end stand on a ground plane, where it goes on into its image.
     """
 
     wires: tuple[Wire, ...]
     radius_m: float
+    conductor_factor_per_m: FloatArray
+    series_inductance_h_per_m: FloatArray
+    loss_inductance_h_per_m: FloatArray
     chains: tuple[Chain, ...]
+    path: tuple[PathPiece, ...]
     strip_index: IntArray
     strip_position: FloatArray
     source: tuple[tuple[int, float], ...]
@@ -106,11 +139,21 @@ class WireGrid:
     feed_width_m: float
     relative_error: float
     doubts: tuple[str, ...] = ()
+    path_on_plane: tuple[bool, bool] = (False, False)
 
     @property
     def segments(self) -> int:
         """Number of segments, the unknowns of the engine."""
         return sum(wire.segments for wire in self.wires)
+
+    @property
+    def path_closed(self) -> bool:
+        """The path is a loop."""
+        return self.chains[0].closed
+
+    def per_segment(self, per_wire: FloatArray) -> FloatArray:
+        """Values of wires repeated for their segments, (S,)."""
+        return np.repeat(per_wire, [wire.segments for wire in self.wires])
 
     def ends_m(self) -> tuple[FloatArray, FloatArray]:
         """Starts and ends of all segments, two (S, 3) arrays in metres."""

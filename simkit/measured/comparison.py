@@ -49,6 +49,8 @@ class ModeLine:
         The measured dip paired with it.
     simulated_ratio, measured_ratio : float
         Dip over that of the lowest mode which has both.
+    on_plane : bool
+        `half_waves` counts the metal together with its image in a ground plane.
     """
 
     half_waves: int
@@ -62,11 +64,12 @@ class ModeLine:
     measured_bandwidth_hz: float = NAN
     simulated_ratio: float = NAN
     measured_ratio: float = NAN
+    on_plane: bool = False
 
     @property
     def label(self) -> str:
-        """The mode's length: ``1/2 wave``, ``1 wave``, ``3/2 wave``."""
-        return half_wave_label(self.half_waves)
+        """The mode's length: ``1/2 wave``, ``1 wave``, ``3/2 wave``; quarters on a plane."""
+        return half_wave_label(self.half_waves, self.on_plane)
 
     @property
     def ratio(self) -> float:
@@ -241,8 +244,8 @@ def _doubt_notes(dataset: xr.Dataset, row: int) -> list[str]:
 
 def _unexcited_notes(modes: CaseModes, pairing: Pairing) -> list[str]:
     return [
-        f"the {half_wave_label(modes.half_waves[i])} mode is measured but not excited by the "
-        "modelled feed: the build is not symmetric there, or its cable radiates"
+        f"the {half_wave_label(modes.half_waves[i], modes.on_plane)} mode is measured but not "
+        "excited by the modelled feed: the build is not symmetric there, or its cable radiates"
         for i, _ in pairing.pairs
         if not np.isfinite(modes.dip_hz[i])
     ]
@@ -287,6 +290,7 @@ def _lines(modes: CaseModes, dips: list[Dip], pairing: Pairing) -> tuple[ModeLin
         lines.append(
             ModeLine(
                 half_waves=half_waves,
+                on_plane=modes.on_plane,
                 natural_hz=float(modes.natural_hz[i]),
                 q=float(modes.q[i]),
                 simulated_hz=simulated,

@@ -33,7 +33,8 @@ SAME_BUILD = 1e-6
 class CaseModes:
     """Natural modes of one case with the dips they own, lowest frequency first.
 
-    All arrays have the shape (M,); NaN where a mode owns no dip.
+    All arrays have the shape (M,); NaN where a mode owns no dip. `on_plane`: the metal stands on a
+    ground plane, and its half waves are counted with those of its image.
     """
 
     half_waves: tuple[int, ...]
@@ -42,6 +43,7 @@ class CaseModes:
     dip_hz: FloatArray
     return_loss_db: FloatArray
     bandwidth_hz: FloatArray
+    on_plane: bool = False
 
     def expected_dips(self) -> list[ModelledDip]:
         """One entry per mode; those without a dip stand where one would be expected."""
@@ -90,13 +92,16 @@ def modes_of_cases(dataset: xr.Dataset) -> list[CaseModes]:
             "dip_bandwidth",
         )
     }
+    stands = np.zeros(dataset.sizes["case"], dtype=bool)
+    if "path_on_plane" in dataset:
+        stands = dataset["path_on_plane"].values == 1
     return [
-        _modes({name: table[row] for name, table in columns.items()})
+        _modes({name: table[row] for name, table in columns.items()}, bool(stands[row]))
         for row in range(dataset.sizes["case"])
     ]
 
 
-def _modes(columns: dict[str, FloatArray]) -> CaseModes:
+def _modes(columns: dict[str, FloatArray], on_plane: bool) -> CaseModes:
     natural = columns["mode_frequency"]
     order = np.argsort(natural)
     order = order[np.isfinite(natural[order])]
@@ -108,6 +113,7 @@ def _modes(columns: dict[str, FloatArray]) -> CaseModes:
         dip_hz=kept["dip_frequency"],
         return_loss_db=kept["dip_return_loss"],
         bandwidth_hz=kept["dip_bandwidth"],
+        on_plane=on_plane,
     )
 
 

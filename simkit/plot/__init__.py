@@ -10,7 +10,14 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    from simkit.plot.charge import plot_charge
     from simkit.plot.current import plot_current
+    from simkit.plot.density import (
+        plot_charge_map,
+        plot_charge_maps,
+        plot_current_map,
+        plot_current_maps,
+    )
     from simkit.plot.geometry import plot_geometry
     from simkit.plot.impedance import plot_impedance
     from simkit.plot.kinds import KINDS
@@ -24,7 +31,12 @@ if TYPE_CHECKING:
 __all__ = [
     "KINDS",
     "MeasuredBuild",
+    "plot_charge",
+    "plot_charge_map",
+    "plot_charge_maps",
     "plot_current",
+    "plot_current_map",
+    "plot_current_maps",
     "plot_geometry",
     "plot_impedance",
     "plot_overlay",
@@ -40,7 +52,12 @@ __all__ = [
 _HOME = {
     "KINDS": "kinds",
     "MeasuredBuild": "tracks",
+    "plot_charge": "charge",
+    "plot_charge_map": "density",
+    "plot_charge_maps": "density",
     "plot_current": "current",
+    "plot_current_map": "density",
+    "plot_current_maps": "density",
     "plot_geometry": "geometry",
     "plot_impedance": "impedance",
     "plot_overlay": "overlay",

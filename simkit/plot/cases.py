@@ -28,11 +28,12 @@ class Mode:
     half_waves: int
     frequency_hz: float
     q: float
+    on_plane: bool = False
 
     @property
     def label(self) -> str:
-        """The mode's length, as in ``3/2 wave``."""
-        return half_wave_label(self.half_waves)
+        """The mode's length, as in ``3/2 wave``; ``3/4 wave`` where it stands on a plane."""
+        return half_wave_label(self.half_waves, self.on_plane)
 
 
 def has_data(dataset: xr.Dataset) -> np.ndarray[tuple[int, ...], np.dtype[np.bool_]]:
@@ -142,13 +143,18 @@ def title_of(case: xr.Dataset, what: str) -> str:
     return f"{first}\n{second}" if second else first
 
 
+def on_plane(dataset: xr.Dataset) -> bool:
+    """Return whether metal of any case stands on a ground plane, so that modes count quarters."""
+    return "path_on_plane" in dataset and bool((dataset["path_on_plane"].values == 1).any())
+
+
 def numbered_modes(case: xr.Dataset) -> list[Mode]:
     """Return the natural modes of one case from the lowest frequency up, empty slots left out."""
     frequency = np.asarray(case["mode_frequency"].values, dtype=float)
     half_waves = np.asarray(case["mode_half_waves"].values)
     q = np.asarray(case["mode_q"].values, dtype=float)
     found = [
-        Mode(slot, int(half_waves[slot]), float(frequency[slot]), float(q[slot]))
+        Mode(slot, int(half_waves[slot]), float(frequency[slot]), float(q[slot]), on_plane(case))
         for slot in range(frequency.size)
         if np.isfinite(frequency[slot])
     ]

@@ -7,35 +7,41 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from simkit.plot.along import (
+    Axis,
+    axis_of,
+    dress,
+    joined,
+    mark_extrema,
+    mode_label,
+    steadied,
+    strip_currents,
+    wanted_modes,
+)
 from simkit.plot.cases import Mode, is_solved, numbered_modes, one_case, title_of, why_empty
-from simkit.plot.strip_path import StripPath, strip_path
 from simkit.plot.style import (
-    INK,
     MILLIMETRE,
     QUIET,
-    frequency_text,
-    frequency_unit,
+    ModeStyle,
     legend_beside,
-    mode_style,
+    mode_styles,
     new_axes,
-    plain,
     put_title,
     say_empty,
     tidy,
 )
+from simkit.study.model import Antenna
 
 if TYPE_CHECKING:
     import xarray as xr
     from matplotlib.axes import Axes
-
-LOWEST_MODES = 5
-"""More curves than this cannot be told apart in one picture."""
 
 
 def plot_current(
     dataset: xr.Dataset,
     case: int | None = None,
     *,
+    antenna: Antenna | None = None,
     half_waves: Sequence[int] | None = None,
     ax: Axes | None = None,
 ) -> Axes:
@@ -47,6 +53,9 @@ def plot_current(
         Results, or one case of them.
     case : int, optional
         Label of the case; the solved one in the middle of the sweep if left out.
+    antenna : Antenna, optional
+        Of that case, ``study.case(number).antenna``. Strips joined in a T or over their edges are
+        known from it; without it only ends that meet are.
     half_waves : sequence of int, optional
         Modes to draw, by their number of half waves; the lowest five if left out.
     ax : matplotlib.axes.Axes, optional
@@ -65,7 +74,9 @@ def plot_current(
     -----
     The strong line is the real part, the faint one of the same colour the magnitude. All strips
     count positive in the direction of the path, whichever way they were described, so each change
-    of sign is a phase reversal of the mode.
+    of sign is a phase reversal of the mode. Branches follow after the path, each counted from its
+    joint and positive away from it. A filled marker stands at each maximum of the current, a cross
+    at each node.
     """
     chosen = one_case(dataset, case)
     ax = new_axes(ax, (9.0, 5.0))
@@ -76,65 +87,28 @@ def plot_current(
     if not is_solved(chosen):
         say_empty(ax, why_empty(chosen))
         return ax
-    path = strip_path(chosen)
+    axis = axis_of(chosen, antenna)
     ax.axhline(0.0, color=QUIET, linewidth=0.8)
-    for mode in _wanted(numbered_modes(chosen), half_waves):
-        _draw_mode(ax, chosen, mode, path)
-    ax.set_ylim(-1.12, 1.22)
-    _name_strips(ax, chosen, path)
+    modes = wanted_modes(numbered_modes(chosen), half_waves)
+    styles = mode_styles([mode.half_waves for mode in modes])
+    for mode, style in zip(modes, styles, strict=True):
+        _draw_mode(ax, chosen, mode, style, axis)
+    dress(ax, chosen, axis, top=1.3, bottom=-1.12)
     legend_beside(ax, "natural modes\n(faint: magnitude)")
     return ax
 
 
-def _wanted(modes: list[Mode], half_waves: Sequence[int] | None) -> list[Mode]:
-    if half_waves is None:
-        return modes[:LOWEST_MODES]
-    return [mode for mode in modes if mode.half_waves in half_waves]
-
-
-def _draw_mode(ax: Axes, case: xr.Dataset, mode: Mode, path: StripPath) -> None:
-    current = case["mode_current"].isel(mode=mode.slot).transpose("strip", "position").values
-    distance_m, joined = path.join(current, np.asarray(case["position"].values, dtype=float))
-    style = mode_style(mode.half_waves)
-    unit = frequency_unit(case["frequency"])
+def _draw_mode(ax: Axes, case: xr.Dataset, mode: Mode, style: ModeStyle, axis: Axis) -> None:
+    current, position = strip_currents(case, mode)
+    current = steadied(current, axis.routes[0], position)
+    place, along = joined(axis, [route.current(current, position) for route in axis.routes])
     ax.plot(
-        distance_m * MILLIMETRE.factor,
-        joined.real,
+        place,
+        along.real,
         color=style.colour,
         linestyle=style.linestyle,
         linewidth=1.8,
-        label=f"{mode.label}:\n{frequency_text(mode.frequency_hz, unit)}, Q {mode.q:.2f}",
+        label=mode_label(case, mode),
     )
-    ax.plot(
-        distance_m * MILLIMETRE.factor,
-        np.abs(joined),
-        color=style.colour,
-        linewidth=0.8,
-        alpha=0.35,
-    )
-
-
-def _name_strips(ax: Axes, case: xr.Dataset, path: StripPath) -> None:
-    """Name each strip along the top and mark the feed."""
-    names = case["strip"].values
-    for piece in path.pieces:
-        middle = (piece.begin_m + piece.length_m / 2) * MILLIMETRE.factor
-        name = (
-            plain(str(names[piece.strip]))
-            if piece.on_path
-            else f"{plain(str(names[piece.strip]))} (apart)"
-        )
-        ax.text(middle, 1.15, name, ha="center", va="center", fontsize="small", color=QUIET)
-    first = plain(str(names[path.pieces[0].strip]))
-    ax.set_xlabel(MILLIMETRE.label(f"distance along the strip from the tip of '{first}'"))
-    if np.isfinite(path.feed_m):
-        place = path.feed_m * MILLIMETRE.factor
-        ax.axvline(place, color=INK, linewidth=1.0, linestyle=(0, (1, 2)))
-        ax.annotate(
-            "feed",
-            (place, -1.12),
-            xytext=(3, 3),
-            textcoords="offset points",
-            fontsize="small",
-            color=INK,
-        )
+    ax.plot(place, np.abs(along), color=style.colour, linewidth=0.8, alpha=0.35)
+    mark_extrema(ax, axis, style, current, position)

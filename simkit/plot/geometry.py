@@ -1,4 +1,4 @@
-"""The antenna to scale: outlines, feed, open ends, overall size, and the wires of its model."""
+"""The antenna to scale: outlines, feed, ends, sizes, and the wires of its model."""
 
 from __future__ import annotations
 
@@ -7,13 +7,21 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from matplotlib.patches import PathPatch
-from matplotlib.path import Path
 from numpy.typing import NDArray
-from shapely import Polygon, get_parts, union_all
+from shapely import get_parts, union_all
 from shapely.geometry.base import BaseGeometry
 
+from simkit.geometry.outlines import developed_length_m
+from simkit.geometry.paths import arc_lengths, point_at
 from simkit.geometry.wires import WireGrid
-from simkit.plot.outline import feed_place, metal_of, open_ends
+from simkit.plot.metal import (
+    as_path,
+    feed_place,
+    in_plane,
+    metal_of,
+    strip_ends,
+    widths_text,
+)
 from simkit.plot.style import (
     INK,
     METAL,
@@ -24,7 +32,7 @@ from simkit.plot.style import (
     plain,
     put_title,
 )
-from simkit.study.model import Antenna, Strip
+from simkit.study.model import Antenna, Placement, Strip
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -40,6 +48,8 @@ MARGIN = 0.12
 """Room around the metal for dimensions, over the larger overall size."""
 PICTURE_IN = 8.0
 """Largest width of the drawing itself, inches."""
+MANY_SEGMENTS = 120
+"""From here up wires are drawn thin, with small dots at their joints."""
 
 Bounds = tuple[float, float, float, float]
 
@@ -51,7 +61,7 @@ def plot_geometry(
     title: str = "",
     ax: Axes | None = None,
 ) -> Axes:
-    """Draw the strips to scale in millimetres, with feed, open ends and overall size.
+    """Draw the strips to scale in millimetres, with feed, ends, joints and overall size.
 
     Parameters
     ----------
@@ -59,23 +69,29 @@ def plot_geometry(
     wires : WireGrid or xarray.Dataset, optional
         The model, or one case of the results: wires and segment ends are drawn on top.
     title : str
-        First line above the picture.
+        First line above the picture; the last one gives length, area and overall size.
     ax : matplotlib.axes.Axes, optional
         A new figure is made if left out, as high as the antenna needs.
 
     Returns
     -------
     matplotlib.axes.Axes
-        Equal scales in x and y.
+        Equal scales in x and y, in the plane of the strips before any placement.
+
+    Raises
+    ------
+    GeometryError
+        A strip's path has no sane outline.
     """
     outlines = metal_of(antenna)
-    x1, y1, x2, y2 = union_all(list(outlines.values())).bounds
+    metal = union_all(list(outlines.values()))
+    x1, y1, x2, y2 = metal.bounds
     bounds = (x1 * _MM, y1 * _MM, x2 * _MM, y2 * _MM)
     ax = new_axes(ax, _figure_size(bounds))
     for number, strip in enumerate(antenna.strips):
         _draw_outline(ax, outlines[strip.name], "metal" if number == 0 else "_")
     if wires is not None:
-        _draw_wires(ax, wires)
+        _draw_wires(ax, wires, antenna.placement)
     _mark_ends_and_feed(ax, antenna)
     for strip in antenna.strips:
         _name_strip(ax, strip)
@@ -83,9 +99,21 @@ def plot_geometry(
     ax.set_aspect("equal")
     ax.set_xlabel(MILLIMETRE.label("x"))
     ax.set_ylabel(MILLIMETRE.label("y"))
-    put_title(ax, title or "antenna to scale")
+    put_title(ax, f"{title or 'antenna to scale'}\n{_facts(antenna, metal.area, bounds)}")
     legend_beside(ax)
     return ax
+
+
+def _facts(antenna: Antenna, area_m2: float, bounds: Bounds) -> str:
+    """Length along the centre lines, metal and overall size, for who cuts the sheet."""
+    length = sum(developed_length_m(strip) for strip in antenna.strips) * _MM
+    facts = (
+        f"{length:.4g} mm along the centre lines, {area_m2 * 1e4:.3g} cm² of metal, "
+        f"fits into {bounds[2] - bounds[0]:.4g} × {bounds[3] - bounds[1]:.4g} mm"
+    )
+    if antenna.placement != Placement():
+        facts += "; drawn flat, before it is placed"
+    return facts
 
 
 def _figure_size(bounds: Bounds) -> tuple[float, float]:
@@ -101,7 +129,7 @@ def _draw_outline(ax: Axes, outline: BaseGeometry, label: str) -> None:
     for polygon in get_parts(outline):
         ax.add_patch(
             PathPatch(
-                _as_path(polygon),
+                as_path(polygon, _MM),
                 facecolor=METAL,
                 edgecolor=INK,
                 linewidth=1.0,
@@ -112,35 +140,27 @@ def _draw_outline(ax: Axes, outline: BaseGeometry, label: str) -> None:
         label = "_"
 
 
-def _as_path(polygon: Polygon) -> Path:
-    rings = [polygon.exterior, *polygon.interiors]
-    return Path.make_compound_path(
-        *(Path(np.asarray(ring.coords) * _MM, closed=True) for ring in rings)
-    )
-
-
-def _draw_wires(ax: Axes, wires: WireGrid | xr.Dataset) -> None:
+def _draw_wires(ax: Axes, wires: WireGrid | xr.Dataset, placement: Placement) -> None:
     """Wires of the model, a dot at each segment end, and the segments that carry the source."""
-    segments = _segments(wires)
-    label = (
-        f"wires of the model,\n{len(segments.starts_mm)} segments,\n"
-        f"radius {segments.radius_mm:.3g} mm"
-    )
+    segments = _segments(wires, placement)
+    count = len(segments.starts_mm)
+    many = count > MANY_SEGMENTS
+    label = f"wires of the model,\n{count} segments,\nradius {segments.radius_mm:.3g} mm"
     ax.plot(
         *segments.line(),
         color=WIRE_COLOUR,
-        linewidth=1.0,
+        linewidth=0.6 if many else 1.0,
         marker=".",
-        markersize=4,
+        markersize=2.0 if many else 4.0,
         label=label,
         zorder=3,
     )
     ax.plot(
         *segments.line(segments.driven),
         color=FEED_COLOUR,
-        linewidth=3.0,
+        linewidth=2.0 if many else 3.0,
         solid_capstyle="butt",
-        label="source segment",
+        label="source segment" if len(segments.driven) == 1 else "source segments",
         zorder=4,
     )
 
@@ -162,74 +182,70 @@ class _Segments:
         return points[:, 0], points[:, 1]
 
 
-def _segments(wires: WireGrid | xr.Dataset) -> _Segments:
+def _segments(wires: WireGrid | xr.Dataset, placement: Placement) -> _Segments:
     """Read segments from a wire grid, or from one case of the results."""
     if isinstance(wires, WireGrid):
         starts, ends = wires.ends_m()
         driven = [segment for segment, _ in wires.source]
-        return _Segments(starts[:, :2] * _MM, ends[:, :2] * _MM, driven, wires.radius_m * _MM)
-    middles = np.stack([wires["x"].values, wires["y"].values], axis=1)
-    directions = np.stack([wires["direction_x"].values, wires["direction_y"].values], axis=1)
-    halves = directions * np.asarray(wires["length"].values)[:, np.newaxis] / 2
-    there = np.isfinite(middles).all(axis=1)
+        radius = wires.radius_m
+    else:
+        middles = np.stack([wires[axis].values for axis in "xyz"], axis=1)
+        along = np.stack([wires[f"direction_{axis}"].values for axis in "xyz"], axis=1)
+        halves = along * np.asarray(wires["length"].values)[:, np.newaxis] / 2
+        there = np.isfinite(middles).all(axis=1)
+        starts, ends = (middles - halves)[there], (middles + halves)[there]
+        driven = np.flatnonzero(np.nan_to_num(wires["source_weight"].values[there])).tolist()
+        radius = float(wires["wire_radius"])
     return _Segments(
-        (middles - halves)[there] * _MM,
-        (middles + halves)[there] * _MM,
-        [int(wires["source_segment"])],
-        float(wires["wire_radius"]) * _MM,
+        in_plane(starts, placement) * _MM, in_plane(ends, placement) * _MM, driven, radius * _MM
     )
 
 
 def _mark_ends_and_feed(ax: Axes, antenna: Antenna) -> None:
-    place = np.asarray(feed_place(antenna).middle_m) * _MM
-    ax.plot(
-        *place,
-        linestyle="none",
-        marker="D",
-        markersize=9,
-        markeredgewidth=1.8,
-        fillstyle="none",
-        color=FEED_COLOUR,
-        label=f"feed, gap {_gap_m(antenna) * _MM:.3g} mm",
-        zorder=5,
+    feed = feed_place(antenna)
+    ends = strip_ends(antenna)
+    marks = (
+        ("D", 9, 1.8, FEED_COLOUR, f"feed, gap {feed.gap_m * _MM:.3g} mm", [feed.middle_m]),
+        ("o", 7, 1.4, INK, "open end", ends.open_m),
+        ("s", 6, 1.4, INK, "strips joined", ends.joined_m),
+        ("v", 9, 1.4, INK, "on the ground plane", ends.grounded_m),
     )
-    ends = np.asarray(open_ends(antenna), dtype=float).reshape(-1, 2) * _MM
-    if len(ends):
-        ax.plot(
-            ends[:, 0],
-            ends[:, 1],
-            linestyle="none",
-            marker="o",
-            markersize=7,
-            markeredgewidth=1.4,
-            fillstyle="none",
-            color=INK,
-            label="open end",
-            zorder=5,
-        )
-
-
-def _gap_m(antenna: Antenna) -> float:
-    """Width of the feed gap."""
-    first, second = feed_place(antenna).sides_m
-    return float(np.hypot(second[0] - first[0], second[1] - first[1]))
+    for marker, size, edge, colour, label, places in marks:
+        shown = np.asarray(places, dtype=float).reshape(-1, 2) * _MM
+        if len(shown):
+            ax.plot(
+                shown[:, 0],
+                shown[:, 1],
+                linestyle="none",
+                marker=marker,
+                markersize=size,
+                markeredgewidth=edge,
+                fillstyle="none",
+                color=colour,
+                label=label,
+                zorder=5,
+            )
 
 
 def _name_strip(ax: Axes, strip: Strip) -> None:
-    """Name and width along the strip's longest leg, clear of the metal."""
+    """Name and width along the strip, clear of the metal."""
     points = np.asarray(strip.path_m, dtype=np.float64)
-    legs = np.diff(points, axis=0)
-    longest = int(np.argmax(np.hypot(legs[:, 0], legs[:, 1])))
-    angle = float(np.arctan2(legs[longest, 1], legs[longest, 0]))
+    arcs = arc_lengths(points)
+    legs = np.diff(arcs)
+    longest = int(np.argmax(legs))
+    at = float(arcs[longest] + arcs[longest + 1]) / 2
+    if legs[longest] < 0.2 * arcs[-1]:
+        at = float(arcs[-1]) / 2  # a curve of many short legs: none of them is the place
+    leg = min(int(np.searchsorted(arcs, at, side="right")) - 1, len(legs) - 1)
+    along = points[leg + 1] - points[leg]
+    half = float(np.interp(at, arcs, strip.widths)) / 2
+    angle = float(np.arctan2(along[1], along[0]))
     # Text is read from below or from the right: turn it into -90 < angle <= 90 degrees.
     angle -= np.pi * np.ceil((angle - np.pi / 2) / np.pi - 1e-9)
-    x, y = (points[longest] + points[longest + 1]) / 2
+    x, y = point_at(points, at)
     ax.annotate(
-        f"{plain(strip.name)}, {strip.width_m * _MM:.3g} mm wide",
-        (
-            (x - strip.width_m / 2 * np.sin(angle)) * _MM,
-            (y + strip.width_m / 2 * np.cos(angle)) * _MM,
-        ),
+        f"{plain(strip.name)}, {widths_text(strip.widths)} wide",
+        ((x - half * np.sin(angle)) * _MM, (y + half * np.cos(angle)) * _MM),
         xytext=(-5 * np.sin(angle), 5 * np.cos(angle)),
         textcoords="offset points",
         ha="center",

@@ -47,6 +47,13 @@ KINDS: dict[str, Kind] = {
         ),
         Kind("smith", "reflection in a Smith chart with the dips marked", "plot_smith"),
         Kind("current", "current of each natural mode along the strip", "plot_current"),
+        Kind("charge", "charge of each natural mode along the strip", "plot_charge"),
+        Kind(
+            "current_map",
+            "current density of the lowest modes on the metal, maxima and nodes",
+            "plot_current_maps",
+        ),
+        Kind("charge_map", "charge density of the lowest modes on the metal", "plot_charge_maps"),
         Kind("pattern", "gain of each mode in the three principal planes", "plot_pattern_cuts"),
         Kind("tracks", "modes and dips against a swept value", "plot_tracks", of_one_case=False),
     )

@@ -15,14 +15,16 @@ from simkit.plot.style import (
     DASH_ROOM,
     DPI,
     GRID,
+    ModeStyle,
     frequency_text,
     frequency_unit,
     legend_beside,
-    mode_style,
+    mode_styles,
     new_axes,
     plain,
     say_empty,
 )
+from simkit.response.mode_pattern import ModePattern
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -37,6 +39,8 @@ RANGE_DB = 30.0
 """From the rim of the polar scale to its centre; deeper nulls are drawn at the centre."""
 LOWEST_MODES = 4
 FINE_POINTS = 361
+STEP_DEG = 2.0
+"""Between directions of a cut worked out from the currents, narrow enough to show its nulls."""
 
 _ANGLES: dict[Plane, str] = {
     "xy": "xy plane: phi at theta = 90°",
@@ -111,6 +115,27 @@ def smooth_cut(cut: Cut, points: int = FINE_POINTS) -> Cut:
     return Cut(fine, 10.0 * np.log10(np.maximum(summed, floor)))
 
 
+def pattern_of(case: xr.Dataset, slot: int) -> ModePattern | None:
+    """Return the pattern of a mode worked out from the currents that the results keep.
+
+    None if they keep none, or if the pattern of the currents alone is not the stored one.
+    """
+    if "current" not in case or not np.isfinite(case["sample_frequency"].values).any():
+        return None
+    pattern = ModePattern(case, slot)
+    return pattern if pattern.trusted else None
+
+
+def computed_cut(pattern: ModePattern, plane: Plane, step_deg: float = STEP_DEG) -> Cut:
+    """Work out one plane's full circle, counted as by `pattern_cut`, every `step_deg` degrees."""
+    angle = np.linspace(0.0, 360.0, round(360.0 / step_deg) + 1)
+    if plane == "xy":
+        return Cut(angle, pattern.gain_dbi(90.0, angle))
+    near = 0.0 if plane == "xz" else 90.0
+    theta = np.where(angle <= 180.0, angle, 360.0 - angle)
+    return Cut(angle, pattern.gain_dbi(theta, np.where(angle <= 180.0, near, near + 180.0)))
+
+
 def plot_pattern(
     dataset: xr.Dataset,
     case: int | None = None,
@@ -147,21 +172,19 @@ def plot_pattern(
         If there is no such case.
     ValueError
         If there is no such plane or `ax` is not polar.
+
+    Notes
+    -----
+    The cuts are worked out from the stored currents every 2 degrees; for results without them, or
+    where currents alone do not give the stored gain, the stored grid of directions is interpolated.
     """
     if plane not in PLANES:
         raise ValueError(f"plane must be one of {', '.join(PLANES)}, not '{plane}'")
     chosen = one_case(dataset, case)
     polar = cast("PolarAxes", new_axes(ax, (9.4, 6.2), polar=True))
-    polar.set_title(plain(title_of(chosen, f"gain in dBi, {_ANGLES[plane]}")), fontsize="medium")
-    _name_angles(polar, plane)
-    modes = _wanted(chosen, half_waves)
-    if not modes:
-        say_empty(polar, why_empty(chosen) if not is_solved(chosen) else "no mode has a pattern")
-        return polar
-    _set_scale(polar, chosen, modes)
-    for mode in modes:
-        _draw_mode(polar, chosen, mode, plane)
-    if legend:
+    curves = _curves(chosen, half_waves)
+    _fill(polar, chosen, plane, curves)
+    if legend and curves:
         legend_beside(polar, "modes", away=1.12)
     return polar
 
@@ -187,9 +210,10 @@ def plot_pattern_cuts(
     """
     chosen = one_case(dataset, case)
     figure = Figure(figsize=(13.0, 5.8), dpi=DPI, layout="constrained")
+    curves = _curves(chosen, half_waves)
     for column, plane in enumerate(PLANES, start=1):
         ax = figure.add_subplot(1, 3, column, projection="polar")
-        plot_pattern(chosen, plane=plane, half_waves=half_waves, legend=False, ax=ax)
+        _fill(cast("PolarAxes", ax), chosen, plane, curves)
         ax.set_title(_ANGLES[plane], fontsize="medium")
     figure.suptitle(plain(title_of(chosen, "gain in dBi")), fontsize="medium")
     handles, labels = figure.axes[0].get_legend_handles_labels()
@@ -203,6 +227,36 @@ def plot_pattern_cuts(
             handlelength=DASH_ROOM,
         )
     return figure
+
+
+@dataclass(frozen=True)
+class _Curve:
+    """A mode to draw; without a pattern of its currents the stored grid serves."""
+
+    mode: Mode
+    style: ModeStyle
+    pattern: ModePattern | None
+
+
+def _curves(case: xr.Dataset, half_waves: Sequence[int] | None) -> list[_Curve]:
+    modes = _wanted(case, half_waves)
+    styles = mode_styles([mode.half_waves for mode in modes])
+    return [
+        _Curve(mode, style, pattern_of(case, mode.slot))
+        for mode, style in zip(modes, styles, strict=True)
+    ]
+
+
+def _fill(ax: PolarAxes, case: xr.Dataset, plane: Plane, curves: list[_Curve]) -> None:
+    """Draw one plane, or why there is nothing to draw."""
+    ax.set_title(plain(title_of(case, f"gain in dBi, {_ANGLES[plane]}")), fontsize="medium")
+    _name_angles(ax, plane)
+    if not curves:
+        say_empty(ax, why_empty(case) if not is_solved(case) else "no mode has a pattern")
+        return
+    _set_scale(ax, case, [curve.mode for curve in curves])
+    for curve in curves:
+        _draw_mode(ax, case, curve, plane)
 
 
 def _wanted(case: xr.Dataset, half_waves: Sequence[int] | None) -> list[Mode]:
@@ -251,16 +305,18 @@ def _set_scale(ax: PolarAxes, case: xr.Dataset, modes: list[Mode]) -> None:
     ax.set_rlabel_position(52.0)
 
 
-def _draw_mode(ax: PolarAxes, case: xr.Dataset, mode: Mode, plane: Plane) -> None:
-    cut = smooth_cut(pattern_cut(case["gain"].isel(mode=mode.slot), plane))
-    style = mode_style(mode.half_waves)
+def _draw_mode(ax: PolarAxes, case: xr.Dataset, curve: _Curve, plane: Plane) -> None:
+    if curve.pattern is not None:
+        cut = computed_cut(curve.pattern, plane)
+    else:
+        cut = smooth_cut(pattern_cut(case["gain"].isel(mode=curve.mode.slot), plane))
     ax.plot(
         np.deg2rad(cut.angle_deg),
         np.maximum(cut.gain_dbi, ax.get_ylim()[0]),
-        color=style.colour,
-        linestyle=style.linestyle,
+        color=curve.style.colour,
+        linestyle=curve.style.linestyle,
         linewidth=1.8,
-        label=_legend_text(case, mode),
+        label=_legend_text(case, curve.mode),
     )
 
 

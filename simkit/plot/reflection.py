@@ -30,7 +30,6 @@ from simkit.plot.style import (
     tidy,
 )
 from simkit.response.features import reflection
-from simkit.response.labels import half_wave_label
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -42,16 +41,17 @@ WELL_MATCHED_DB = -10.0
 
 @dataclass(frozen=True)
 class OwnedDip:
-    """A dip of |reflection| and the number of half waves of the mode it belongs to."""
+    """A dip of |reflection|, with the number of half waves and the words of its mode."""
 
     half_waves: int
     frequency_hz: float
     return_loss_db: float
+    label: str
 
     def text(self, unit: DisplayUnit) -> str:
         """Return two lines: ``1/2 wave:`` and ``918.0 MHz, −15.1 dB``."""
         place = frequency_text(self.frequency_hz, unit)
-        return f"{half_wave_label(self.half_waves)}:\n{place}, −{self.return_loss_db:.1f} dB"
+        return f"{self.label}:\n{place}, −{self.return_loss_db:.1f} dB"
 
 
 def owned_dips(case: xr.Dataset) -> list[OwnedDip]:
@@ -59,7 +59,7 @@ def owned_dips(case: xr.Dataset) -> list[OwnedDip]:
     frequency = np.asarray(case["dip_frequency"].values, dtype=float)
     depth = np.asarray(case["dip_return_loss"].values, dtype=float)
     dips = [
-        OwnedDip(mode.half_waves, float(frequency[mode.slot]), float(depth[mode.slot]))
+        OwnedDip(mode.half_waves, float(frequency[mode.slot]), float(depth[mode.slot]), mode.label)
         for mode in numbered_modes(case)
         if np.isfinite(frequency[mode.slot])
     ]
@@ -128,7 +128,7 @@ def _mark_dip(ax: Axes, dip: OwnedDip, unit: DisplayUnit) -> None:
         label=dip.text(unit),
     )
     ax.annotate(
-        half_wave_label(dip.half_waves),
+        dip.label,
         place,
         xytext=(0, -9),
         textcoords="offset points",

@@ -14,7 +14,9 @@ from matplotlib.figure import Figure
 
 from simkit.errors import MeasurementError, StoreError
 from simkit.plot.cases import describe_case, is_solved, nearest_case, one_case, title_of
+from simkit.plot.charge import plot_charge
 from simkit.plot.current import plot_current
+from simkit.plot.density import plot_charge_maps, plot_current_maps
 from simkit.plot.geometry import plot_geometry
 from simkit.plot.impedance import plot_impedance
 from simkit.plot.kinds import KINDS
@@ -29,6 +31,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
     from simkit.study import Study
+    from simkit.study.model import Antenna
 
 FORMATS = ("png", "svg", "pdf")
 
@@ -36,8 +39,10 @@ _OF_RESULTS = {
     "impedance": plot_impedance,
     "reflection": plot_reflection,
     "smith": plot_smith,
-    "current": plot_current,
 }
+_ALONG = {"current": plot_current, "charge": plot_charge}
+_ON_METAL = {"current_map": plot_current_maps, "charge_map": plot_charge_maps}
+NEED_STUDY = ("geometry", *_ON_METAL)
 
 
 def draw(
@@ -59,7 +64,8 @@ def draw(
     case : int, optional
         Label of the case; the solved one nearest to the study's nominal values if left out.
     study : Study, optional
-        Needed for the geometry; gives nominal values and measured builds to the others.
+        Needed for pictures of the metal; tells the others which strips are joined, the nominal
+        values, and the measured builds.
     by : str, optional
         Swept value along the axis of `tracks`.
 
@@ -71,7 +77,8 @@ def draw(
     Raises
     ------
     StoreError
-        If there is no such kind, case or swept value, or the geometry is wanted without a study.
+        If there is no such kind, case or swept value, or a picture of the metal is
+        wanted without a study.
     """
     if kind not in KINDS:
         raise StoreError(f"there is no picture '{kind}'; choose from {', '.join(KINDS)}")
@@ -80,8 +87,11 @@ def draw(
         builds = measured_builds(study, by or next(iter(swept_names(dataset)), ""))
         return _figure(plot_tracks(dataset, by, nominal=nominal, measured=builds))
     number = nearest_case(dataset, nominal) if case is None else case
-    if kind == "geometry":
-        return _figure(_draw_geometry(dataset, number, study))
+    if kind in NEED_STUDY:
+        return _draw_metal(dataset, kind, number, study)
+    if kind in _ALONG:
+        antenna = _antenna(number, study)
+        return _figure(_ALONG[kind](dataset, number, antenna=antenna))
     if kind == "pattern":
         return plot_pattern_cuts(dataset, number)
     return _figure(_OF_RESULTS[kind](dataset, number))
@@ -124,7 +134,7 @@ def save_all(
     folder : path
         Made if it is missing.
     study : Study, optional
-        Without it there is no picture of the geometry.
+        Without it there is no picture of the metal.
     case : int, optional
         Label of the case; the solved one nearest to the study's nominal values if left out.
 
@@ -145,7 +155,7 @@ def save_all(
     chosen = one_case(dataset, number)
     written = []
     for kind in KINDS.values():
-        if (kind.name == "geometry" and study is None) or not kind.of_one_case:
+        if (kind.name in NEED_STUDY and study is None) or not kind.of_one_case:
             continue
         if kind.name == "geometry" or is_solved(chosen):
             path = save_plot(
@@ -183,15 +193,24 @@ def measured_builds(study: Study | None, by: str) -> list[MeasuredBuild]:
     return builds
 
 
-def _draw_geometry(dataset: xr.Dataset, number: int, study: Study | None) -> Axes:
+def _antenna(number: int, study: Study | None) -> Antenna | None:
+    return study.case(number).antenna if study is not None else None
+
+
+def _draw_metal(dataset: xr.Dataset, kind: str, number: int, study: Study | None) -> Figure:
+    """Pictures for which the shape of the metal must be known."""
     chosen = one_case(dataset, number)
     if study is None:
-        raise StoreError("the geometry is drawn from the study file: name the study as well")
-    antenna = study.case(number).antenna
+        raise StoreError(
+            f"{kind.replace('_', ' ')}: the metal is drawn from the study file: name the study too"
+        )
+    antenna = _antenna(number, study)
     if antenna is None:
         raise StoreError(f"case {number} has no geometry to draw: {study.case(number).refused}")
+    if kind in _ON_METAL:
+        return _ON_METAL[kind](dataset, antenna, number)
     wires = chosen if is_solved(chosen) else None
-    return plot_geometry(antenna, wires, title=title_of(chosen, "geometry"))
+    return _figure(plot_geometry(antenna, wires, title=title_of(chosen, "geometry")))
 
 
 def _figure(ax: Axes) -> Figure:

@@ -57,6 +57,29 @@ def mode_style(half_waves: int) -> ModeStyle:
     return ModeStyle(_COLOURS[place], _DASHES[place], _MARKERS[place])
 
 
+def mode_styles(half_waves: Sequence[int]) -> list[ModeStyle]:
+    """Return the looks of modes drawn together: of one number all but the first are darker.
+
+    Loops and branched antennas have several modes with one number of half waves.
+    """
+    found = []
+    for place, number in enumerate(half_waves):
+        style = mode_style(number)
+        for _ in range(list(half_waves[:place]).count(number)):
+            style = _darker(style)
+        found.append(style)
+    return found
+
+
+def _darker(style: ModeStyle) -> ModeStyle:
+    """The same hue at half the light, with the dashes and the marker next in line."""
+    channels = [int(style.colour[at : at + 2], 16) for at in (1, 3, 5)]
+    colour = "#" + "".join(f"{channel // 2:02x}" for channel in channels)
+    dashes = _DASHES[(_DASHES.index(style.linestyle) + 3) % len(_DASHES)]
+    marker = _MARKERS[(_MARKERS.index(style.marker) + 3) % len(_MARKERS)]
+    return ModeStyle(colour, dashes, marker)
+
+
 def new_axes(
     ax: Axes | None, size_in: tuple[float, float] = (8.0, 5.0), *, polar: bool = False
 ) -> Axes:

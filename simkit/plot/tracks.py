@@ -11,7 +11,7 @@ from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
 from simkit.errors import StoreError
-from simkit.plot.cases import has_data, nearest_case, swept_unit
+from simkit.plot.cases import has_data, nearest_case, on_plane, swept_unit
 from simkit.plot.style import (
     INK,
     QUIET,
@@ -121,7 +121,8 @@ def plot_tracks(
         places = np.asarray(build.dip_frequency_hz, dtype=float) * up.factor
         across_at = np.full(places.size, build.value * across.factor)
         ax.plot(across_at, places, linestyle="none", marker="x", markersize=8, color=INK, zorder=5)
-    _explain(ax, numbers, groups, measured, _blemishes(dataset))
+    labels = {n: half_wave_label(n, on_plane(dataset)) for n in numbers}
+    _explain(ax, labels, groups, measured, _blemishes(dataset))
     return ax
 
 
@@ -263,16 +264,15 @@ def _blemishes(dataset: xr.Dataset) -> str:
 
 def _explain(
     ax: Axes,
-    numbers: list[int],
+    labels: dict[int, str],
     groups: list[_Group],
     measured: Sequence[MeasuredBuild],
     blemishes: str,
 ) -> None:
     """Legend beside the picture: modes, kinds of line, values of the strong and faint lines."""
     handles = []
-    for half_waves in reversed(numbers):
+    for half_waves, label in reversed(labels.items()):
         style = mode_style(half_waves)
-        label = half_wave_label(half_waves)
         handles.append(Line2D([], [], color=style.colour, marker=style.marker, label=label))
     handles.append(Line2D([], [], color=INK, marker="o", markersize=5, label="natural mode"))
     handles.append(

@@ -16,6 +16,7 @@ from simkit.geometry.wires import FloatArray
 from simkit.response.pattern import Radiators, far_field, intensity_w_per_sr, radiated_power_w
 from simkit.response.rational import ComplexArray, RationalModel
 from simkit.response.terminals import feed_impedance_ohm
+from simkit.study.model import Ground
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -60,7 +61,19 @@ def radiators_of(case: xr.Dataset) -> Radiators:
     used = _segments(case)
     middle = np.stack([_values(case, axis)[used] for axis in "xyz"], axis=1)
     along = np.stack([_values(case, f"direction_{axis}")[used] for axis in "xyz"], axis=1)
-    return Radiators(middle, along, _values(case, "length")[used])
+    return Radiators(middle, along, _values(case, "length")[used], ground_of(case))
+
+
+def ground_of(case: xr.Dataset) -> Ground | None:
+    """What lies below z = 0 in a case; None for free space, and in stores that keep no ground."""
+    if "ground_conductivity" not in case:
+        return None
+    conductivity = float(_values(case, "ground_conductivity"))
+    if np.isnan(conductivity):
+        return None
+    if np.isinf(conductivity):
+        return Ground("plane")
+    return Ground("earth", float(_values(case, "ground_permittivity")), conductivity)
 
 
 def current_at(case: xr.Dataset, frequency_hz: ArrayLike) -> ComplexArray:
@@ -148,6 +161,8 @@ def gain_at(
 ) -> FloatArray:
     """Gain of the antenna driven at its feed, IEEE Std 145: losses of the metal counted.
 
+    So are those in real earth.
+
     Parameters
     ----------
     case : xarray.Dataset
@@ -168,16 +183,22 @@ def gain_at(
     Notes
     -----
     The power it refers to is that radiated and lost by the currents, as for the stored `gain`;
-    `power_balance` says how far that is from the power at the feed.
+    `power_balance` says how far that is from the power at the feed. Over real earth, where nothing
+    tells what the earth takes, it is the power at the feed.
     """
     current, radiators = _drive(case, frequency_hz), radiators_of(case)
     field = _field(radiators, current, frequency_hz, theta_deg, phi_deg)
-    lost_w = (
-        0.5
-        * _resistance_ohm_per_m(case, frequency_hz)
-        * np.sum(abs(current) ** 2 * radiators.length_m)
+    if radiators.ground is not None and radiators.ground.kind == "earth":
+        weight = _values(case, "source_weight")[_segments(case)]
+        return _dbi(field, 0.5 * float(current.real @ weight))
+    lost_w = 0.5 * np.sum(
+        _resistance_ohm_per_m(case, frequency_hz) * abs(current) ** 2 * radiators.length_m
     )
     power_w = radiated_power_w(radiators, current, frequency_hz) + lost_w
+    return _dbi(field, power_w)
+
+
+def _dbi(field: tuple[ComplexArray, ComplexArray], power_w: float) -> FloatArray:
     gain = 4 * np.pi * intensity_w_per_sr(*field) / power_w
     return np.asarray(10 * np.log10(np.maximum(gain, 1e-10)))
 
@@ -230,11 +251,16 @@ def _field(
     return e_theta.reshape(theta.shape), e_phi.reshape(theta.shape)
 
 
-def _resistance_ohm_per_m(case: xr.Dataset, frequency_hz: float) -> float:
-    """Interpolated on logarithmic axes, where the skin effect is all but straight."""
-    samples, stored = _values(case, "sample_frequency"), _values(case, "series_resistance")
+def _resistance_ohm_per_m(case: xr.Dataset, frequency_hz: float) -> FloatArray:
+    """Series resistance of each segment; the metal's part by its skin effect."""
+    samples, stored = _values(case, "sample_frequency"), _values(case, "surface_resistance")
     taken = np.isfinite(samples)
-    if not np.any(stored[taken]):
-        return 0.0
-    known = np.log(stored[taken])
-    return float(np.exp(np.interp(np.log(frequency_hz), np.log(samples[taken]), known)))
+    face = 0.0
+    if np.any(stored[taken]):
+        # On logarithmic axes the skin effect is all but straight.
+        known = np.log(stored[taken])
+        face = float(np.exp(np.interp(np.log(frequency_hz), np.log(samples[taken]), known)))
+    here = _segments(case)
+    conductor = _values(case, "conductor_factor")[here]
+    plastic = _values(case, "loss_inductance")[here]
+    return np.asarray(face * conductor + 2 * np.pi * frequency_hz * plastic)

@@ -7,8 +7,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from simkit.geometry.wires import Chain, FloatArray, WireGrid
+from simkit.geometry.wires import FloatArray, WireGrid
 from simkit.response.rational import ComplexArray, Sweep
+from simkit.response.strip_current import (
+    coherence,
+    current_along_path,
+    path_turns_m,
+    totals_matrix,
+)
 
 LEAST_RESIDUE = 1e-3
 """Poles whose residue is smaller than this part of the largest are noise of the fit."""
@@ -21,6 +27,23 @@ Real ones move by under 0.5 %, the poles with which a fit paints its background 
 
 LEAST_Q = 0.5
 """Below this a pole is overdamped: no resonance and no half waves to count."""
+
+LEAST_COHERENCE = 0.5
+LEAST_TOTAL = 0.03
+"""A pole is an artefact of the model if its current flows between the rails of a bundle, not along
+the strip: coherence below the first, and a residue of the strips' total current below this part of
+the largest. Coherence alone would not do: the sweep is judged by total currents, so a sharp pole
+between rails that it left aside spoils the currents of single rails, and modes of strips come out
+with anything from 0.09. Their totals are 0.35 and more, those between rails under 0.005."""
+
+ECHO_LIKENESS = 0.6
+ECHO_STRENGTH = 0.15
+"""Two modes of one number are one mode and a ground's echo of it if their currents overlap so much,
+or if one is so much weaker. A dipole's echoes near its mode have 0.9 and more; those between two
+modes have 0.3 to 0.7 and a tenth of the strength."""
+
+TURN_WIDTHS = 1.2
+"""Reach of a junction figure along the strips, in widths."""
 
 QUIET = 0.05
 """Currents under this part of the largest do not count when phase reversals are counted."""
@@ -35,17 +58,22 @@ class NaturalMode:
     pole_hz : complex
         Complex natural frequency; its imaginary part, positive, is the decay rate over 2 pi.
     half_waves : int
-        Half waves of current along the tip-to-tip path (whole periods times two on a loop).
+        Half waves of current along the tip-to-tip path (whole periods times two on a loop); for a
+        path that stands on a ground plane, along it and its image, so that quarter waves of the
+        path itself.
     current : (S,) complex array
         Segment currents, the largest being 1 and real.
     feed_residue_hz : complex
         Residue of the feed admittance, siemens times Hz: how strongly the feed excites the mode.
+    strength_s : float
+        Size of the currents at the mode's resonance for 1 V at either source, siemens.
     """
 
     pole_hz: complex
     half_waves: int
     current: ComplexArray
     feed_residue_hz: complex
+    strength_s: float = 0.0
 
     @property
     def frequency_hz(self) -> float:
@@ -100,7 +128,19 @@ def find_modes(
     size = np.linalg.norm(residues, axis=1)
     strong = size > LEAST_RESIDUE * size.max()
     poles, residues = poles[strong], residues[strong]
-    return tuple(_mode(complex(poles[k]), residues[k], grid) for k in np.argsort(poles.real))
+    order = np.argsort(poles.real)
+    modes = [_mode(complex(poles[k]), residues[k], grid) for k in order]
+    alike = np.array([coherence(mode.current, grid) for mode in modes])
+    if alike.min() <= LEAST_COHERENCE:
+        total = _total_strength(residues[order], grid)
+        alike[total > LEAST_TOTAL * total.max()] = 1.0
+    return tuple(mode for mode, a in zip(modes, alike, strict=True) if a > LEAST_COHERENCE)
+
+
+def _total_strength(residues: ComplexArray, grid: WireGrid) -> FloatArray:
+    """How much of each residue is current along the strips, rails taken together."""
+    by_source = residues.reshape(len(residues), 2, -1)
+    return np.asarray(np.linalg.norm(by_source @ totals_matrix(grid).T, axis=(1, 2)))
 
 
 def _surviving(poles: ComplexArray, others: ComplexArray) -> ComplexArray:
@@ -115,74 +155,70 @@ def _mode(pole_hz: complex, residue: ComplexArray, grid: WireGrid) -> NaturalMod
     shape = np.linalg.svd(by_source, full_matrices=False)[2][0]
     shape = shape / shape[int(np.argmax(abs(shape)))]
     feed = sum((volts * by_source[0, segment] for segment, volts in grid.source), 0j)
-    return NaturalMode(pole_hz, half_waves(shape, grid.chains[0]), shape, complex(feed))
+    strength = float(np.linalg.norm(residue)) / pole_hz.imag
+    return NaturalMode(pole_hz, half_waves(shape, grid), shape, complex(feed), strength)
 
 
-def half_waves(current: ComplexArray, chain: Chain) -> int:
-    """Count the half waves of a mode current along a chain.
+def without_echoes(modes: Sequence[NaturalMode]) -> tuple[NaturalMode, ...]:
+    """Of modes of one number, those alike the strongest or much weaker than it are left out.
+
+    Notes
+    -----
+    From half a wavelength above a ground up, waves run to the ground and back while a mode dies
+    away. Antenna and ground then resonate together, as two or more poles where the antenna alone
+    has one.
+    """
+    kept: list[NaturalMode] = []
+    for mode in sorted(modes, key=lambda mode: -mode.strength_s):
+        if not any(
+            mode.half_waves == other.half_waves
+            and (
+                alike(mode.current, other.current) > ECHO_LIKENESS
+                or mode.strength_s < ECHO_STRENGTH * other.strength_s
+            )
+            for other in kept
+        ):
+            kept.append(mode)
+    return tuple(sorted(kept, key=lambda mode: mode.frequency_hz))
+
+
+def alike(first: ComplexArray, other: ComplexArray) -> float:
+    """Overlap of two current shapes, 0 to 1."""
+    return float(abs(np.vdot(first, other)) / (np.linalg.norm(first) * np.linalg.norm(other)))
+
+
+def half_waves(current: ComplexArray, grid: WireGrid) -> int:
+    """Count the half waves of a mode current along the tip-to-tip path.
 
     Parameters
     ----------
     current : (S,) complex array
         Segment currents.
-    chain : Chain
+    grid : WireGrid
 
     Returns
     -------
     int
-        Phase reversals plus one from tip to tip; phase reversals once round a loop.
+        Phase reversals plus one from tip to tip; phase reversals once round a loop. A path that
+        stands on a ground plane goes on into its image, from tip to tip or once round: the number
+        then counts quarter waves of the path itself.
     """
-    along = turned_to_real(current[chain.segments] * chain.signs).real
-    loud = along[abs(along) > QUIET * abs(along).max()]
+    distance, along_path = current_along_path(current, grid)
+    along = turned_to_real(along_path).real
+    # Where the path turns from one chain into another the current belongs to neither.
+    turning = np.min(abs(distance[:, None] - path_turns_m(grid)[None]), axis=1, initial=np.inf)
+    counts = turning > TURN_WIDTHS * grid.feed_width_m
+    loud = along[counts & (abs(along) > QUIET * abs(along).max())]
     signs = np.sign(loud)
-    if chain.closed:
+    if grid.path_closed:
         return int(np.sum(signs != np.roll(signs, 1)))
-    return int(np.sum(signs[1:] != signs[:-1])) + 1
+    reversals = int(np.sum(signs[1:] != signs[:-1]))
+    feet = sum(grid.path_on_plane)
+    # The image carries the current on through the foot without a reversal there.
+    return reversals + 1 if not feet else 2 * reversals + (feet == 1)
 
 
 def turned_to_real(current: ComplexArray) -> ComplexArray:
     """Rotate the common phase so that the sum of squared real parts is largest."""
     turned = current * np.exp(-0.5j * np.angle(np.sum(current**2)))
     return np.asarray(turned, dtype=np.complex128)
-
-
-def current_along_strips(
-    current: ComplexArray, chains: Sequence[Chain], strips: int, positions: FloatArray
-) -> ComplexArray:
-    """Currents at places along each strip, positive from its start to its end.
-
-    Parameters
-    ----------
-    current : (S,) complex array
-    chains : sequence of Chain
-    strips : int
-    positions : (P,) float array
-        0..1 along each strip.
-
-    Returns
-    -------
-    (strips, P) complex array
-        NaN for a strip on no chain. Zero at open ends.
-    """
-    result = np.full((strips, len(positions)), complex(np.nan, np.nan))
-    for chain in chains:
-        arc, value = _knots(current, chain)
-        for span in chain.spans:
-            at = span.start_m + positions * (span.end_m - span.start_m)
-            if chain.closed:
-                at = at % chain.length_m
-            forward = 1 if span.end_m > span.start_m else -1
-            result[span.strip] = forward * np.interp(at, arc, value)
-    return result
-
-
-def _knots(current: ComplexArray, chain: Chain) -> tuple[FloatArray, ComplexArray]:
-    arc, value = chain.arc_m, current[chain.segments] * chain.signs
-    if chain.closed:
-        arc = np.concatenate([[arc[-1] - chain.length_m], arc, [arc[0] + chain.length_m]])
-        return arc, np.concatenate([value[-1:], value, value[:1]])
-    zero = np.zeros(1, dtype=np.complex128)
-    return (
-        np.concatenate([[0.0], arc, [chain.length_m]]),
-        np.concatenate([zero, value, zero]),
-    )

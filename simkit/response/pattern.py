@@ -15,8 +15,15 @@ from scipy.constants import epsilon_0, mu_0
 
 from simkit.geometry.wires import FloatArray, WireGrid
 from simkit.response.rational import ComplexArray
+from simkit.study.model import Ground
 
 WAVE_IMPEDANCE_OHM = float(np.sqrt(mu_0 / epsilon_0))
+
+HORIZON_RAD = 1e-9
+"""Directions so little below the horizon are on it, for the rounding of angles."""
+
+EARTH_RINGS = 24
+"""Directions more for the reflection coefficients of earth, which change fast near the horizon."""
 
 
 @dataclass(frozen=True)
@@ -29,19 +36,27 @@ class Radiators:
     direction : (S, 3) float array
         Unit vectors along positive current.
     length_m : (S,) float array
+    ground : Ground or None
+        What lies below z = 0; the segments lie above it.
     """
 
     middle_m: FloatArray
     direction: FloatArray
     length_m: FloatArray
+    ground: Ground | None = None
 
     @classmethod
-    def of(cls, grid: WireGrid) -> Radiators:
+    def of(cls, grid: WireGrid, ground: Ground | None = None) -> Radiators:
         """Segments of a wire grid."""
         starts, ends = grid.ends_m()
         along = ends - starts
         length = np.linalg.norm(along, axis=1)
-        return cls((starts + ends) / 2, along / length[:, None], length)
+        return cls((starts + ends) / 2, along / length[:, None], length, ground)
+
+    def image(self) -> Radiators:
+        """The segments as a perfect plane at z = 0 mirrors them, with their currents."""
+        up = np.array([1.0, 1.0, -1.0])
+        return Radiators(self.middle_m * up, -self.direction * up, self.length_m)
 
 
 def far_field(
@@ -66,7 +81,64 @@ def far_field(
     -------
     e_theta, e_phi : (D,) complex arrays
         Volts.
+
+    Notes
+    -----
+    Over a ground, the wave that it reflects is that of the image in a perfect plane times Fresnel's
+    reflection coefficient of each polarisation: exact for the far field of a perfect plane and, but
+    for the ground wave, which dies out faster than 1/r, of flat earth. Below the horizon there is
+    nothing.
     """
+    e_theta, e_phi = _direct_field(radiators, current, frequency_hz, theta_rad, phi_rad)
+    if radiators.ground is None:
+        return e_theta, e_phi
+    image = _direct_field(radiators.image(), current, frequency_hz, theta_rad, phi_rad)
+    upright, flat = reflection_coefficients(radiators.ground, frequency_hz, theta_rad)
+    above = theta_rad <= np.pi / 2 + HORIZON_RAD
+    return (
+        np.where(above, e_theta + upright * image[0], 0),
+        np.where(above, e_phi + flat * image[1], 0),
+    )
+
+
+def reflection_coefficients(
+    ground: Ground, frequency_hz: float, theta_rad: FloatArray
+) -> tuple[ComplexArray, ComplexArray]:
+    """Fresnel's reflection coefficients, over those of a perfect plane.
+
+    Parameters
+    ----------
+    ground : Ground
+    frequency_hz : float
+    theta_rad : (D,) float array
+        Direction of the reflected wave from +z; beyond the horizon as on it.
+
+    Returns
+    -------
+    upright, flat : (D,) complex arrays
+        For the electric field in and across the plane of incidence; both 1 for a perfect plane,
+        both -1 at grazing incidence on earth.
+    """
+    if ground.kind == "plane":
+        ones = np.ones(theta_rad.shape, dtype=np.complex128)
+        return ones, ones
+    omega = 2 * np.pi * frequency_hz
+    loss = ground.conductivity_s_per_m / (omega * epsilon_0)
+    permittivity = ground.relative_permittivity - 1j * loss
+    cosine = np.maximum(np.cos(theta_rad), 0.0)
+    refracted = np.sqrt(permittivity - np.sin(theta_rad) ** 2)
+    upright = (permittivity * cosine - refracted) / (permittivity * cosine + refracted)
+    flat = (refracted - cosine) / (refracted + cosine)
+    return np.asarray(upright), np.asarray(flat)
+
+
+def _direct_field(
+    radiators: Radiators,
+    current: ComplexArray,
+    frequency_hz: float,
+    theta_rad: FloatArray,
+    phi_rad: FloatArray,
+) -> tuple[ComplexArray, ComplexArray]:
     k = 2 * np.pi * frequency_hz / light_speed
     sin_t, cos_t = np.sin(theta_rad), np.cos(theta_rad)
     sin_p, cos_p = np.sin(phi_rad), np.cos(phi_rad)
@@ -91,25 +163,42 @@ def intensity_w_per_sr(e_theta: ComplexArray, e_phi: ComplexArray) -> FloatArray
 
 
 @cache
-def _sphere(size: int) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Gauss-Legendre in cos(theta), equal steps in phi: directions and weights of the sphere."""
-    nodes, weights = np.polynomial.legendre.leggauss(size)
-    phi = np.arange(2 * size) * np.pi / size
+def _sphere(rings: int, around: int, upper: bool) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Gauss-Legendre in cos(theta), equal steps in phi: directions and weights of the sphere.
+
+    `upper`: of the half of it above the horizon.
+    """
+    nodes, weights = np.polynomial.legendre.leggauss(rings)
+    if upper:
+        nodes, weights = (nodes + 1) / 2, weights / 2
+    phi = np.arange(around) * 2 * np.pi / around
     theta, azimuth = np.meshgrid(np.arccos(nodes), phi, indexing="ij")
-    weight = np.repeat(weights[:, None] * np.pi / size, 2 * size, axis=1)
+    weight = np.repeat(weights[:, None] * 2 * np.pi / around, around, axis=1)
     return theta.ravel(), azimuth.ravel(), weight.ravel()
 
 
 def radiated_power_w(radiators: Radiators, current: ComplexArray, frequency_hz: float) -> float:
     """Power through the sphere at infinity, watt (currents are peak values).
 
+    Over a ground it is the power through the half above the horizon; what goes into the earth is
+    not in it.
+
     The number of directions follows the electrical size: a radiation intensity of a source of
-    radius a has angular orders up to about 2ka, which the Gauss grid integrates exactly.
+    radius a has angular orders up to about 2ka, which the Gauss grid integrates exactly. Over a
+    ground the source is as high as its image is deep; round the vertical axis its width counts.
     """
     centre = (radiators.middle_m.min(axis=0) + radiators.middle_m.max(axis=0)) / 2
-    reach = float(np.linalg.norm(radiators.middle_m - centre, axis=1).max())
-    size = int(np.ceil(2 * np.pi * frequency_hz / light_speed * reach)) + 6
-    theta, phi, weight = _sphere(size)
+    if radiators.ground is not None:
+        centre[2] = 0.0
+    away = radiators.middle_m - centre
+    k = 2 * np.pi * frequency_hz / light_speed
+    rings, across = (
+        int(np.ceil(k * np.linalg.norm(part, axis=1).max())) + 6 for part in (away, away[:, :2])
+    )
+    upper = radiators.ground is not None
+    if radiators.ground is not None and radiators.ground.kind == "earth":
+        rings += EARTH_RINGS
+    theta, phi, weight = _sphere(rings, 2 * (across if upper else rings), upper)
     field = far_field(radiators, current, frequency_hz, theta, phi)
     return float(weight @ intensity_w_per_sr(*field))
 
@@ -122,7 +211,10 @@ def gain_grid_dbi(
     theta_deg: FloatArray,
     phi_deg: FloatArray,
 ) -> FloatArray:
-    """Gain over a power on a grid of directions, (theta, phi), dBi; nulls are cut at -100 dBi."""
+    """Gain over a power on a grid of directions, (theta, phi), dBi; nulls are cut at -100 dBi.
+
+    So are directions below a ground.
+    """
     theta, phi = np.meshgrid(np.deg2rad(theta_deg), np.deg2rad(phi_deg), indexing="ij")
     field = far_field(radiators, current, frequency_hz, theta.ravel(), phi.ravel())
     gain = 4 * np.pi * intensity_w_per_sr(*field).reshape(theta.shape) / power_w

@@ -176,6 +176,7 @@ def adaptive_sweep(
     tolerance: float = 1e-3,
     most_samples: int = 40,
     seed: int = 20,
+    observe: FloatArray | None = None,
 ) -> Sweep:
     """Sample a vector response until a rational function describes it over a whole band.
 
@@ -189,6 +190,9 @@ def adaptive_sweep(
         at least 3e-4, to stay clear of the engine's noise.
     most_samples : int
         Cap on solved frequencies; a sweep that reaches it says it did not converge.
+    observe : (P, K) float array, optional
+        What of the vector the fit is judged by, as a matrix; all of it if left out. The whole
+        vector is still evaluated with the same poles.
     seed : int
         Of the random projection that compresses the vectors for the fit.
 
@@ -196,7 +200,7 @@ def adaptive_sweep(
     -------
     Sweep
     """
-    search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed)
+    search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed, observe)
     while True:
         frequency, difference = search.where_models_differ()
         if difference < search.tolerance:
@@ -220,6 +224,7 @@ class _Search:
         stop_hz: float,
         tolerance: float,
         seed: int,
+        observe: FloatArray | None,
     ) -> None:
         self.solve = solve
         self.start_hz, self.stop_hz = start_hz, stop_hz
@@ -229,9 +234,11 @@ class _Search:
         first[0], first[-1] = start_hz, stop_hz
         self.frequencies: list[float] = [float(f) for f in first]
         self.values = [solve(f) for f in self.frequencies]
-        size = len(self.values[0])
+        size = len(self.values[0]) if observe is None else len(observe)
         rng = np.random.default_rng(seed)
         self.projection = rng.standard_normal((size, min(SKETCH, size))) / np.sqrt(size)
+        if observe is not None:
+            self.projection = observe.T @ self.projection
         self.sketch = [value @ self.projection for value in self.values]
         self.candidates = np.linspace(start_hz, stop_hz, CANDIDATES)
         self.fits: dict[tuple[int, ...], ComplexArray] = {}

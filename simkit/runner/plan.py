@@ -34,10 +34,13 @@ def block_size_for(seconds: float, cases: int, workers: int) -> int:
     return max(1, min(by_time, by_count, LARGEST_BLOCK))
 
 
-def limit_for(segments: int) -> float:
-    """Time limit of one case in seconds, some ten times what a slow machine needs."""
+def limit_for(segments: int, *, converge: bool = False) -> float:
+    """Time limit of one case in seconds, some ten times what a slow machine needs.
+
+    A case that is refined solves meshes of up to two and a half times the segments as well.
+    """
     matrix_s = 0.55e-6 * segments**2
-    return 60.0 + 10.0 * SAMPLES * matrix_s
+    return 60.0 + 10.0 * SAMPLES * matrix_s * (12.0 if converge else 1.0)
 
 
 def first_to_solve(prepared: Prepared, index: Index) -> Iterator[CaseJob]:

@@ -20,7 +20,7 @@ class CaseResult:
     status : Status
         Any but `Status.WAITING`.
     reason : str
-        Why the case is not simply solved; empty for `Status.SOLVED`.
+        Why the case is not simply solved; for `Status.SOLVED` empty, or what was not checked.
     seconds : float
         Time the case took.
     solves : int

@@ -134,7 +134,9 @@ class _Choices:
 
     def limit_s(self, prepared: Prepared) -> float:
         """Time limit of one case."""
-        return self.time_limit_s or limit_for(prepared.segments)
+        antennas = (case.antenna for case in prepared.cases)
+        converge = any(antenna.converge for antenna in antennas if antenna is not None)
+        return self.time_limit_s or limit_for(prepared.segments, converge=converge)
 
 
 class _Session:

@@ -8,12 +8,13 @@ from typing import Any
 
 import numpy as np
 
-from simkit.engine.pynec import SeriesLoad, engine_version, solve_wires
+from simkit.engine.pynec import EarthMethod, SeriesLoad, solve_wires
 from simkit.errors import EngineError, GeometryError
 from simkit.geometry import MeshPlan, WireGrid, build_wires
-from simkit.geometry.conductor import strip_resistance_ohm_per_m
+from simkit.geometry.conductor import face_resistance_ohm
+from simkit.geometry.placement import far_from_earth
 from simkit.geometry.wires import FloatArray
-from simkit.response.modes import NaturalMode, current_along_strips, find_modes
+from simkit.response.modes import NaturalMode, find_modes, without_echoes
 from simkit.response.ownership import OwnedFeatures, owned_features
 from simkit.response.pattern import (
     Radiators,
@@ -22,13 +23,12 @@ from simkit.response.pattern import (
     radiated_power_w,
 )
 from simkit.response.rational import ComplexArray, Sweep, adaptive_sweep
+from simkit.response.strip_current import current_along_strips, totals_matrix
 from simkit.response.terminals import feed_impedance_ohm
+from simkit.runner.convergence import Convergence, converge
 from simkit.runner.result import CaseResult
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
 from simkit.study.model import Antenna
-
-MODEL_VERSION = "line-1"
-"""Raised whenever a change of the model changes its numbers; part of every case's identity."""
 
 BALANCE_TOLERANCE = 0.03
 """Radiated plus lost power may differ from the input power by this part before a case is doubtful.
@@ -59,18 +59,58 @@ def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
         grid = build_wires(antenna, plan)
         sweep = sweep_currents(antenna, grid)
         solves = len(sweep.model.frequency_hz)
-        arrays, doubts = _evaluate(antenna, grid, sweep)
+        arrays, doubts, notes = _evaluate(antenna, grid, sweep)
+        if antenna.converge:
+            errors = _convergence(antenna, plan, grid, sweep).relative_error
+            arrays["mode_frequency_error"] = _padded(errors)
     except GeometryError as error:
         return CaseResult(Status.REFUSED, str(error), time.perf_counter() - begin, solves)
     except EngineError as error:
         return CaseResult(Status.FAILED, str(error), time.perf_counter() - begin, solves)
     status = Status.DOUBTFUL if doubts else Status.SOLVED
-    return CaseResult(status, "; ".join(doubts), time.perf_counter() - begin, solves, arrays)
+    words = "; ".join([*doubts, *notes])
+    return CaseResult(status, words, time.perf_counter() - begin, solves, arrays)
 
 
-def case_identity() -> dict[str, str]:
-    """Versions that decide, with the resolved inputs, whether a stored case is still valid."""
-    return {"model": MODEL_VERSION, "engine": engine_version()}
+def solve_convergence(antenna: Antenna, plan: MeshPlan) -> Convergence:
+    """Mode frequencies of one case on its planned mesh, on coarser and on finer ones.
+
+    Raises
+    ------
+    GeometryError, EngineError
+        The case has no solution on its planned mesh.
+    """
+    grid = build_wires(antenna, plan)
+    return _convergence(antenna, plan, grid, sweep_currents(antenna, grid))
+
+
+def _convergence(antenna: Antenna, plan: MeshPlan, grid: WireGrid, sweep: Sweep) -> Convergence:
+    return converge(
+        antenna,
+        plan,
+        _modes(antenna, grid, sweep)[0],
+        lambda antenna, grid: _modes(antenna, grid, sweep_currents(antenna, grid))[0],
+    )
+
+
+def _modes(
+    antenna: Antenna, grid: WireGrid, sweep: Sweep
+) -> tuple[tuple[NaturalMode, ...], list[str]]:
+    """Natural modes to keep, and what to say of others."""
+    band = antenna.frequency
+    found = find_modes(sweep, grid, band.start_hz, band.stop_hz)
+    if antenna.ground is None:
+        return found[:MODES], []
+    kept = without_echoes(found)
+    stay = {mode.pole_hz for mode in kept}
+    gone = [f"{m.frequency_hz / 1e6:.1f}" for m in found if m.pole_hz not in stay]
+    if not gone:
+        return kept[:MODES], []
+    return kept[:MODES], [
+        "the ground's echo comes back when a mode has largely died away, so antenna and ground "
+        f"resonate together; left out are weaker natural modes at {', '.join(gone)} MHz with the "
+        "same current as one that is kept; without [ground] the modes are those of the antenna"
+    ]
 
 
 def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3) -> Sweep:
@@ -82,20 +122,45 @@ def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3)
     """
 
     def solve(frequency_hz: float) -> ComplexArray:
-        series = SeriesLoad(_resistance_ohm_per_m(antenna, grid, frequency_hz))
         currents = solve_wires(
-            grid.wires, grid.radius_m, frequency_hz, [grid.source, grid.probe], series=series
+            grid.wires,
+            grid.radius_m,
+            frequency_hz,
+            [grid.source, grid.probe],
+            series=_series_loads(antenna, grid, frequency_hz),
+            ground=antenna.ground,
+            earth=earth,
         )
         return np.asarray(currents.ravel(), dtype=np.complex128)
 
+    # One way for the whole band: a change from one to the other would be a step.
+    earth: EarthMethod = "integrals" if far_from_earth(grid, antenna) else "reflection"
     band = antenna.frequency
+    totals = totals_matrix(grid)
+    none = np.zeros_like(totals)
     return adaptive_sweep(
-        solve, band.start_hz, band.stop_hz, tolerance=tolerance, most_samples=SAMPLES
+        solve,
+        band.start_hz,
+        band.stop_hz,
+        tolerance=tolerance,
+        most_samples=SAMPLES,
+        observe=np.block([[totals, none], [none, totals]]),
     )
 
 
-def _resistance_ohm_per_m(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> float:
-    return strip_resistance_ohm_per_m(grid.feed_width_m, antenna.metal, frequency_hz)
+def _series_loads(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> list[SeriesLoad]:
+    resistance = resistance_ohm_per_m(antenna, grid, frequency_hz)
+    return [
+        SeriesLoad(float(ohm), float(henry))
+        for ohm, henry in zip(resistance, grid.series_inductance_h_per_m, strict=True)
+    ]
+
+
+def resistance_ohm_per_m(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> FloatArray:
+    """Series resistance of each wire, conductor and plastic, (W,) ohm per metre."""
+    face = face_resistance_ohm(antenna.metal, frequency_hz)
+    omega = 2 * np.pi * frequency_hz
+    return np.asarray(face * grid.conductor_factor_per_m + omega * grid.loss_inductance_h_per_m)
 
 
 def feed_impedance(
@@ -119,32 +184,42 @@ def source_weight(grid: WireGrid) -> FloatArray:
     return weight
 
 
-def _evaluate(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> tuple[dict[str, Any], list[str]]:
+def _evaluate(
+    antenna: Antenna, grid: WireGrid, sweep: Sweep
+) -> tuple[dict[str, Any], list[str], list[str]]:
+    """Arrays of the store, doubts, and notes: what to know without being doubtful for it."""
     band = antenna.frequency
     frequency_hz = np.linspace(band.start_hz, band.stop_hz, band.points)
     currents = sweep.model.matrix(frequency_hz) @ sweep.model.values[:, : grid.segments]
     impedance = feed_impedance(grid, currents, frequency_hz)
-    modes = find_modes(sweep, grid, band.start_hz, band.stop_hz)[:MODES]
+    modes, notes = _modes(antenna, grid, sweep)
     features = owned_features(modes, frequency_hz, impedance, antenna.reference_ohm)
     arrays: dict[str, Any] = {"impedance": impedance}
-    arrays |= _grid_arrays(grid) | _sample_arrays(antenna, grid, sweep)
+    arrays |= _grid_arrays(grid) | _ground_arrays(antenna) | _sample_arrays(antenna, grid, sweep)
     arrays |= _mode_arrays(antenna, grid, modes) | _feature_arrays(features)
     radiation = [
         _radiation(antenna, grid, sweep, mode, owned)
         for mode, owned in zip(modes, features, strict=True)
     ]
     arrays |= _stacked(radiation)
-    return arrays, _doubts(grid, sweep, modes, radiation)
+    if antenna.ground is not None and antenna.ground.kind == "earth":
+        notes.append("over real earth the power balance is not checked: the earth's part is unseen")
+    return arrays, _doubts(antenna, grid, sweep, modes, radiation), notes
 
 
 def _doubts(
-    grid: WireGrid, sweep: Sweep, modes: Sequence[NaturalMode], radiation: list[dict[str, Any]]
+    antenna: Antenna,
+    grid: WireGrid,
+    sweep: Sweep,
+    modes: Sequence[NaturalMode],
+    radiation: list[dict[str, Any]],
 ) -> list[str]:
     found = list(grid.doubts)
     if not sweep.converged:
         found.append(
             f"the frequency sweep did not settle within {len(sweep.model.frequency_hz)} samples "
             f"(last difference {sweep.error:.1e}): narrow the band"
+            + (", or leave [ground] out if it is far below" if antenna.ground else "")
         )
     for mode, row in zip(modes, radiation, strict=True):
         if abs(row["power_balance"] - 1) > BALANCE_TOLERANCE:
@@ -160,6 +235,9 @@ def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
     radiators = Radiators.of(grid)
     arrays: dict[str, Any] = {
         "length": radiators.length_m,
+        "conductor_factor": grid.per_segment(grid.conductor_factor_per_m),
+        "series_inductance": grid.per_segment(grid.series_inductance_h_per_m),
+        "loss_inductance": grid.per_segment(grid.loss_inductance_h_per_m),
         "strip_index": grid.strip_index,
         "strip_position": grid.strip_position,
         "model_gap": grid.model_gap_m,
@@ -168,11 +246,24 @@ def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
         "wire_radius": grid.radius_m,
         "source_segment": grid.source[0][0],
         "source_weight": source_weight(grid),
+        "path_on_plane": int(any(grid.path_on_plane)),
     }
     for axis, name in enumerate("xyz"):
         arrays[name] = radiators.middle_m[:, axis]
         arrays[f"direction_{name}"] = radiators.direction[:, axis]
     return arrays
+
+
+def _ground_arrays(antenna: Antenna) -> dict[str, Any]:
+    ground = antenna.ground
+    if ground is None:
+        return {"ground_permittivity": np.nan, "ground_conductivity": np.nan}
+    if ground.kind == "plane":
+        return {"ground_permittivity": 1.0, "ground_conductivity": np.inf}
+    return {
+        "ground_permittivity": ground.relative_permittivity,
+        "ground_conductivity": ground.conductivity_s_per_m,
+    }
 
 
 def _sample_arrays(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> dict[str, Any]:
@@ -181,16 +272,14 @@ def _sample_arrays(antenna: Antenna, grid: WireGrid, sweep: Sweep) -> dict[str, 
     frequency[:count] = sweep.model.frequency_hz
     weight = np.full(SAMPLES, complex(np.nan, np.nan))
     weight[:count] = sweep.model.weight
-    resistance = np.full(SAMPLES, np.nan)
-    resistance[:count] = [
-        _resistance_ohm_per_m(antenna, grid, float(f)) for f in sweep.model.frequency_hz
-    ]
+    face = np.full(SAMPLES, np.nan)
+    face[:count] = [face_resistance_ohm(antenna.metal, float(f)) for f in sweep.model.frequency_hz]
     currents = np.full((2, SAMPLES, grid.segments), complex(np.nan, np.nan))
     currents[:, :count] = np.moveaxis(sweep.model.values.reshape(count, 2, grid.segments), 1, 0)
     return {
         "sample_frequency": frequency,
         "weight": weight,
-        "series_resistance": resistance,
+        "surface_resistance": face,
         "current": currents[0],
         "probe_current": currents[1],
     }
@@ -255,24 +344,31 @@ def _radiation(
 
     A mode the feed excites is shown as it is driven, at its conductance peak; the others by their
     own current at the natural frequency, with the balance taken for the second source.
+
+    Over real earth there is no balance. What the earth takes is the rest of the input power and
+    counts as lost; a mode that the feed does not excite has none, so it is taken to lose the same
+    part as the currents of the second source.
     """
     driven = owned.peak is not None
     frequency_hz = owned.peak.frequency_hz if owned.peak else mode.frequency_hz
     both = sweep.model(np.array([frequency_hz]))[0].reshape(2, -1)
     fed, source = (both[0], grid.source) if driven else (both[1], grid.probe)
     shown = fed if driven else mode.current
-    radiators = Radiators.of(grid)
-    resistance = _resistance_ohm_per_m(antenna, grid, frequency_hz)
+    radiators = Radiators.of(grid, antenna.ground)
+    resistance = grid.per_segment(resistance_ohm_per_m(antenna, grid, frequency_hz))
 
     def lost_w(current: ComplexArray) -> float:
-        return float(0.5 * resistance * np.sum(abs(current) ** 2 * radiators.length_m))
+        return float(0.5 * np.sum(resistance * abs(current) ** 2 * radiators.length_m))
 
     input_w = 0.5 * sum(volts * fed[segment].real for segment, volts in source)
     radiated_w = radiated_power_w(radiators, fed, frequency_hz)
     balance = (radiated_w + lost_w(fed)) / input_w
+    radiated_share = radiated_w / input_w
     if not driven:
         radiated_w = radiated_power_w(radiators, shown, frequency_hz)
     efficiency = radiated_w / (radiated_w + lost_w(shown))
+    if antenna.ground is not None and antenna.ground.kind == "earth":
+        efficiency, balance = radiated_share, float("nan")
     gain = gain_grid_dbi(
         radiators, shown, frequency_hz, radiated_w / efficiency, THETA_DEG, PHI_DEG
     )

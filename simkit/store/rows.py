@@ -56,7 +56,9 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
         ``values`` (swept values, SI), ``solves``, and three lists from the lowest frequency up:
 
         - ``modes``: ``half_waves`` (None if the mode has no number), ``frequency_hz`` and ``q`` of
-          the natural mode, then what the mode owns; what does not exist is left out;
+          the natural mode, then what the mode owns; what does not exist is left out. For metal that
+          stands on a ground plane ``half_waves`` counts it together with its image, and
+          ``on_plane`` is True;
         - ``resonances``: every zero of the reactance at the feed: ``frequency_hz``, ``kind``
           ("series" or "parallel"), ``resistance_ohm``;
         - ``dips``: every minimum of the reflection at the connector: ``frequency_hz``,
@@ -83,7 +85,15 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
     names = _stored_names(dataset)
     if "case" not in dataset.dims:
         dataset = dataset.expand_dims("case")
-    wanted = ["status", "reason", "solves", "impedance", "mode_half_waves", "driven"]
+    wanted = [
+        "status",
+        "reason",
+        "solves",
+        "impedance",
+        "mode_half_waves",
+        "path_on_plane",
+        "driven",
+    ]
     kept = [name for name in (*wanted, *_OF_MODE.values()) if name in dataset]
     table = dataset[kept].load()
     return [_row(table.isel(case=place), names) for place in range(table.sizes["case"])]
@@ -128,6 +138,8 @@ def _modes(case: xr.Dataset) -> list[Row]:
     for slot in np.flatnonzero(np.isfinite(columns["frequency_hz"])):
         number = int(case["mode_half_waves"].values[slot])
         mode: Row = {"half_waves": number if number >= 0 else None}
+        if "path_on_plane" in case and int(case["path_on_plane"]) == 1:
+            mode["on_plane"] = True
         mode |= {
             key: float(column[slot])
             for key, column in columns.items()

@@ -82,6 +82,13 @@ VARIABLES: dict[str, Variable] = {
     "mode_half_waves": Variable(
         ("case", "mode"), "i2", "1", "half waves of current along the tip-to-tip path, -1 for none"
     ),
+    "path_on_plane": Variable(
+        ("case",),
+        "i1",
+        "",
+        "1: the path stands on a ground plane and mode_half_waves counts path and image, so "
+        "quarter waves of the path; 0: it does not; -1: no solution",
+    ),
     "mode_frequency_error": _per_mode("1", "relative standard error of the natural frequency"),
     "mode_current": Variable(
         ("case", "mode", "strip", "position"),
@@ -113,15 +120,19 @@ VARIABLES: dict[str, Variable] = {
     "peak_theta": _per_mode("degree", "polar angle from +z of the largest gain"),
     "peak_phi": _per_mode("degree", "azimuth from +x of the largest gain"),
     "directivity": _per_mode("dBi", "directivity in the direction of the largest gain"),
-    "efficiency": _per_mode("1", "radiation efficiency"),
-    "power_balance": _per_mode("1", "radiated plus lost power over input power; 1 if consistent"),
+    "efficiency": _per_mode(
+        "1", "radiation efficiency; over real earth what the earth takes counts as lost"
+    ),
+    "power_balance": _per_mode(
+        "1", "radiated plus lost power over input power; 1 if consistent, NaN over real earth"
+    ),
     # The rational model, enough to evaluate everything at any frequency of the band.
     "sample_frequency": Variable(("case", "sample"), "f8", "Hz", "frequencies solved, ascending"),
     "weight": Variable(
         ("case", "sample"), "c16", "1", "barycentric weight, 0 for a sample that only verified"
     ),
-    "series_resistance": Variable(
-        ("case", "sample"), "f8", "ohm/m", "resistance of the strip per metre of its length"
+    "surface_resistance": Variable(
+        ("case", "sample"), "f8", "ohm", "resistance per square of one face of the metal"
     ),
     "current": Variable(
         ("case", "sample", "segment"), "c16", "A", "segment currents for 1 V at the feed"
@@ -137,13 +148,24 @@ VARIABLES: dict[str, Variable] = {
     "direction_y": _per_segment("f8", "1", "unit vector along positive current"),
     "direction_z": _per_segment("f8", "1", "unit vector along positive current"),
     "length": _per_segment("f8", "m", "segment length"),
+    "conductor_factor": _per_segment("f8", "1/m", "resistance per metre over surface resistance"),
+    "series_inductance": _per_segment("f8", "H/m", "series inductance due to the carrier"),
+    "loss_inductance": _per_segment("f8", "H/m", "its loss: resistance per metre over omega"),
     "strip_index": _per_segment("i2", "", "strip the segment belongs to, -1 for the feed gap"),
     "strip_position": _per_segment(
         "f8", "1", "place along the strip, 0..1; NaN off the centre line"
     ),
     "model_gap": Variable(("case",), "f8", "m", "gap the engine's source acts like"),
     "study_gap": Variable(("case",), "f8", "m", "feed gap of the study, to which impedance refers"),
-    "feed_width": Variable(("case",), "f8", "m", "strip width at the feed"),
+    "feed_width": Variable(
+        ("case",), "f8", "m", "strip width at the feed, twice for a feed on a plane"
+    ),
+    "ground_permittivity": Variable(
+        ("case",), "f8", "1", "relative permittivity below z = 0; NaN in free space"
+    ),
+    "ground_conductivity": Variable(
+        ("case",), "f8", "S/m", "below z = 0: infinite for a perfect plane, NaN in free space"
+    ),
     "wire_radius": Variable(("case",), "f8", "m", "radius of every wire of the model"),
     "source_segment": Variable(("case",), "i4", "1", "first segment with the feed, 0-based"),
     "source_weight": _per_segment(

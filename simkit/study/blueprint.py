@@ -2,22 +2,69 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import Literal
+from collections.abc import Iterator
+from dataclasses import dataclass, fields, is_dataclass
+from typing import Any
 
-from simkit.study.model import ModelKind, StripEnd
+from simkit.study.model import CarrierSide, GroundKind, MixingName, ModelKind, StripEnd
+from simkit.study.paths import Axis
 from simkit.study.tables import Quantity
 
-Axis = Literal["x", "y"]
+
+@dataclass(frozen=True)
+class PolylinePlan:
+    """A path from point to point, or a spline through the points."""
+
+    points: tuple[tuple[Quantity, Quantity], ...]
+    smooth: bool
+
+
+@dataclass(frozen=True)
+class CurvePlan:
+    """A path of `points` points for equal steps of the parameter t."""
+
+    x: Quantity
+    y: Quantity
+    first: Quantity | None
+    last: Quantity | None
+    points: Quantity | None
+    line: int | None
+
+
+@dataclass(frozen=True)
+class ArcPlan:
+    """A part of a circle, counterclockwise if the angle grows from start to stop."""
+
+    centre: tuple[Quantity, Quantity]
+    radius: Quantity
+    start: Quantity
+    stop: Quantity
+    points: Quantity | None
+    line: int | None
+
+
+@dataclass(frozen=True)
+class MovePlan:
+    """A turn about the origin, then a shift."""
+
+    rotate: Quantity | None = None
+    shift: tuple[Quantity, ...] | None = None
 
 
 @dataclass(frozen=True)
 class PathPlan:
-    """A strip with a path of its own."""
+    """A strip with a path of its own.
+
+    `path` is None after a problem. `width` holds one width for all, one per point of a polyline,
+    some at equal steps along a curve or arc, or is one that depends on the parameter of the curve.
+    """
 
     name: str
-    path: tuple[tuple[Quantity, Quantity], ...]
-    width: Quantity | None
+    path: PolylinePlan | CurvePlan | ArcPlan | None
+    width: tuple[Quantity, ...]
+    width_along: bool = False
+    move: MovePlan = MovePlan()
+    line: int | None = None
 
 
 @dataclass(frozen=True)
@@ -28,6 +75,7 @@ class MirrorPlan:
     of: str
     axis: Axis
     line: int | None
+    move: MovePlan = MovePlan()
 
 
 @dataclass(frozen=True)
@@ -71,6 +119,46 @@ class FrequencyPlan:
 
 
 @dataclass(frozen=True)
+class PlacementPlan:
+    """The table [placement]: turns about x, y and z in this order, then a shift."""
+
+    rotate_x: Quantity | None = None
+    rotate_y: Quantity | None = None
+    rotate_z: Quantity | None = None
+    shift: tuple[Quantity, ...] | None = None
+
+
+@dataclass(frozen=True)
+class CarrierPlan:
+    """The table [carrier]; a named material stands with its solid permittivity and loss tangent."""
+
+    material: str
+    material_permittivity: float | None
+    material_loss_tangent: float
+    permittivity: Quantity | None
+    loss_tangent: Quantity | None
+    infill: Quantity | None
+    mixing: MixingName
+    skin: Quantity | None
+    thickness: Quantity | None
+    overhang: Quantity | None
+    end_overhang: Quantity | None
+    offset: Quantity | None
+    side: CarrierSide
+    depth: Quantity | None
+
+
+@dataclass(frozen=True)
+class GroundPlan:
+    """The table [ground]."""
+
+    kind: GroundKind
+    permittivity: Quantity | None
+    conductivity: Quantity | None
+    line: int | None
+
+
+@dataclass(frozen=True)
 class Blueprint:
     """Everything an antenna is resolved from, besides the numbers of [values].
 
@@ -84,21 +172,31 @@ class Blueprint:
     reference: Quantity | None
     frequency: FrequencyPlan | None
     model: ModelKind
+    converge: bool = False
+    placement: PlacementPlan = PlacementPlan()
+    carrier: CarrierPlan | None = None
+    ground: GroundPlan | None = None
 
     def shared(self) -> tuple[Quantity, ...]:
         """Return the quantities that all cases of a study have in common."""
         band = self.frequency
         found = [] if band is None else [band.start, band.stop, band.points]
         found.append(self.reference)
+        paths = (strip.path for strip in self.strips if isinstance(strip, PathPlan))
+        found += [path.points for path in paths if isinstance(path, CurvePlan | ArcPlan)]
         return tuple(quantity for quantity in found if quantity is not None)
 
     def names(self) -> set[str]:
         """Return the names of [values] the antenna depends on directly."""
-        quantities: list[Quantity | None] = [*self.shared()]
-        for strip in self.strips:
-            if isinstance(strip, PathPlan):
-                quantities += [strip.width, *(place for point in strip.path for place in point)]
-        quantities += [self.metal.conductivity, self.metal.thickness]
-        if isinstance(self.feed, CutFeedPlan):
-            quantities += [self.feed.at, self.feed.gap]
-        return {name for q in quantities if q is not None for name in q.expression.names}
+        return {name for quantity in _quantities(self) for name in quantity.expression.names}
+
+
+def _quantities(part: Any) -> Iterator[Quantity]:
+    if isinstance(part, Quantity):
+        yield part
+    elif isinstance(part, tuple):
+        for item in part:
+            yield from _quantities(item)
+    elif is_dataclass(part):
+        for entry in fields(part):
+            yield from _quantities(getattr(part, entry.name))

@@ -8,11 +8,17 @@ from typing import Literal
 
 ModelKind = Literal["auto", "line", "grid"]
 StripEnd = Literal["start", "end"]
+MixingName = Literal["plastic-host", "bruggeman", "series", "parallel"]
+CarrierSide = Literal["below", "both", "embedded"]
+GroundKind = Literal["plane", "earth"]
+Vector = tuple[float, float, float]
+
+NO_ROTATION: tuple[Vector, Vector, Vector] = ((1.0, 0.0, 0.0), (0.0, 1.0, 0.0), (0.0, 0.0, 1.0))
 
 
 @dataclass(frozen=True)
 class Strip:
-    """A flat conductor following a path in the plane z = 0.
+    """A flat conductor following a path in the plane z = 0, before it is placed in space.
 
     Attributes
     ----------
@@ -21,12 +27,20 @@ class Strip:
         Centre line, at least two points, metres. A path whose last point equals its first is a
         closed loop.
     width_m : float
-        Constant width, metres.
+        Width, metres; the largest one if it changes along the path.
+    widths_m : tuple of float
+        Width at each path point if it changes, linear in between; empty if it does not.
     """
 
     name: str
     path_m: tuple[tuple[float, float], ...]
     width_m: float
+    widths_m: tuple[float, ...] = ()
+
+    @property
+    def widths(self) -> tuple[float, ...]:
+        """Width at each path point, metres."""
+        return self.widths_m or (self.width_m,) * len(self.path_m)
 
 
 @dataclass(frozen=True)
@@ -39,8 +53,86 @@ class Metal:
 
 
 @dataclass(frozen=True)
+class Placement:
+    """How the plane of the strips is turned and lifted: a point p goes to `rotation` p + shift.
+
+    Attributes
+    ----------
+    rotation : 3 by 3 tuple of float
+        Rows of a rotation matrix.
+    shift_m : (float, float, float)
+        Applied after the rotation, metres.
+    """
+
+    rotation: tuple[Vector, Vector, Vector] = NO_ROTATION
+    shift_m: Vector = (0.0, 0.0, 0.0)
+
+
+@dataclass(frozen=True)
+class Carrier:
+    """The plastic under all strips, as described; its cross-section follows from it strip by strip.
+
+    Attributes
+    ----------
+    relative_permittivity, loss_tangent : float
+        Of the solid plastic.
+    thickness_m : float
+        Whole thickness; of each of the two carriers if `side` is "both".
+    infill : float
+        Solid part of the volume, skins included, 0 to 1.
+    mixing : str
+        Rule for plastic mixed with air: Maxwell Garnett with plastic as host, Bruggeman, or layers
+        across ("series") or along ("parallel") the field.
+    skin_m : float
+        Solid skin at the bottom and at the top of the carrier, metres each.
+    overhang_m : float
+        Carrier beyond each edge of the strip, sideways, for a strip in the middle of it.
+    end_overhang_m : float
+        Carrier beyond open strip ends.
+    offset_m : float
+        How far the strip lies off the carrier's centre line, to the left seen along its path: the
+        carrier reaches `overhang_m` - `offset_m` beyond the left edge.
+    side : str
+        "below" the strip, "both" for one carrier on either side, or "embedded".
+    depth_m : float
+        Plastic above an embedded strip; else 0.
+    material : str
+        Its name, for tables.
+    """
+
+    relative_permittivity: float
+    loss_tangent: float
+    thickness_m: float
+    infill: float = 1.0
+    mixing: MixingName = "plastic-host"
+    skin_m: float = 0.0
+    overhang_m: float = 0.0
+    end_overhang_m: float = 0.0
+    offset_m: float = 0.0
+    side: CarrierSide = "below"
+    depth_m: float = 0.0
+    material: str = "given permittivity"
+
+    @property
+    def permittivity(self) -> complex:
+        """Relative permittivity of the solid plastic, eps' - j eps''."""
+        loss = self.relative_permittivity * self.loss_tangent
+        # Not `-1j * 0`, which would leave an imaginary part of -0.0.
+        return complex(self.relative_permittivity, -loss if loss else 0.0)
+
+
+@dataclass(frozen=True)
+class Ground:
+    """What fills the space below z = 0: a perfect plane, or earth with these constants."""
+
+    kind: GroundKind
+    relative_permittivity: float = 1.0
+    conductivity_s_per_m: float = 0.0
+
+
+@dataclass(frozen=True)
 class EndFeed:
-    """A source bridging two strip ends."""
+    """A source bridging two strip ends, of two strips or of one."""
 
     from_strip: str
     from_end: StripEnd
@@ -68,7 +160,11 @@ class FrequencyBand:
 
 @dataclass(frozen=True)
 class Antenna:
-    """Everything the solution of one case depends on, resolved to SI."""
+    """Everything the solution of one case depends on, resolved to SI.
+
+    Without a carrier the strips are in air, without a ground in free space. `converge` asks for a
+    refinement of the model in every case, as an estimate of its error.
+    """
 
     strips: tuple[Strip, ...]
     metal: Metal
@@ -76,6 +172,10 @@ class Antenna:
     reference_ohm: float
     frequency: FrequencyBand
     model: ModelKind = "auto"
+    placement: Placement = Placement()
+    carrier: Carrier | None = None
+    ground: Ground | None = None
+    converge: bool = False
 
 
 @dataclass(frozen=True)

@@ -2,20 +2,19 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 from simkit.study.blueprint import (
     Blueprint,
     CutFeedPlan,
     EndFeedPlan,
     FrequencyPlan,
     MetalPlan,
-    MirrorPlan,
-    PathPlan,
 )
+from simkit.study.fields import read_switch
 from simkit.study.metals import METALS
-from simkit.study.model import StripEnd
-from simkit.study.tables import NAME, Quantity, Table, toml_kind
+from simkit.study.model import ModelKind, StripEnd
+from simkit.study.strip_schema import read_strips
+from simkit.study.surroundings_schema import read_carrier, read_ground, read_placement
+from simkit.study.tables import Quantity, Table
 from simkit.study.units import (
     CONDUCTIVITY,
     FREQUENCY,
@@ -25,163 +24,41 @@ from simkit.study.units import (
     nearest,
 )
 
-MOST_POINTS = 2000
-"""Points a strip's path may have."""
+MODEL_KINDS: tuple[ModelKind, ...] = ("auto", "line", "grid")
 
-LATER_TABLES = {
-    "carrier": "leave the table out; the strips are simulated in air",
-    "ground": "leave the table out; the antenna is simulated in free space",
-    "placement": "leave the table out; the strips lie in the plane z = 0",
-    "feedline": "leave it out; the connector then sits at the feed",
-}
 _ONE_BAND = "all cases of a study share one frequency band"
 _ONE_REFERENCE = "all cases of a study share one reference"
 
 
 def read_blueprint(root: Table) -> Blueprint:
-    """Read strips, metal, feed, connector, frequency and model; problems are left in the notes.
+    """Read every table that describes the antenna; problems are left in the notes.
 
     Parameters
     ----------
     root : Table
         The whole file. Every key of it that belongs here counts as known afterwards.
     """
-    strips, names = _read_strips(root)
+    strips, names = read_strips(root)
     metal = _read_metal(root.table("metal"))
     feed = _read_feed(root.table("feed", "add [feed] to say where the source sits"), names)
     reference = _read_connector(root.table("connector"))
     frequency = _read_frequency(
         root.table("frequency", "add [frequency] with start, stop and points")
     )
-    model = _read_model(root.table("model"))
-    for name, instead in LATER_TABLES.items():
-        root.later(name, instead)
-    return Blueprint(strips, metal, feed, reference, frequency, model)
-
-
-def _read_strips(root: Table) -> tuple[tuple[PathPlan | MirrorPlan, ...], set[str]]:
-    """Return the strips that could be read, and the names of all."""
-    advice = "describe the metal by at least one [[strip]]"
-    tables = root.tables("strip", advice)
-    if root.data.get("strip") == []:
-        root.report("strip", f"is empty; {advice}")
-    strips: list[PathPlan | MirrorPlan] = []
-    named: dict[str, Table] = {}
-    for table in tables:
-        name = _strip_name(table, named)
-        if name is not None:
-            named[name] = table
-            table.label = f"strip.{name}"
-        strip = _read_strip(table, name or table.label)
-        if strip is not None and name is not None:
-            strips.append(strip)
-    return tuple(_without_lost_mirrors(strips, named)), set(named)
-
-
-def _strip_name(table: Table, taken: dict[str, Table]) -> str | None:
-    name = table.text("name", 'give every strip a name, as in name = "east"')
-    if name is None:
-        return None
-    if not NAME.fullmatch(name):
-        table.report("name", "a name is a letter, then up to 59 letters, digits or underscores")
-    elif name in taken:
-        table.report("name", "another strip has this name already; names must differ")
-    else:
-        return name
-    return None
-
-
-def _read_strip(table: Table, name: str) -> PathPlan | MirrorPlan | None:
-    table.later("curve", "write the curve as points of `path`")
-    table.later("smooth", "write more points of `path` along the curve")
-    table.later("arc", "write the arc as points of `path`, turning less than 20 degrees at each")
-    if table.has("mirror"):
-        return _read_mirror(table, name)
-    if table.has("axis"):
-        table.report("axis", "belongs to a strip with `mirror`; leave it out")
-    path = _read_path(table)
-    width = _read_width(table)
-    table.close("a strip")
-    return PathPlan(name, path or (), width)
-
-
-def _read_mirror(table: Table, name: str) -> MirrorPlan | None:
-    of = table.text("mirror")
-    axis = table.choice("axis", ("y", "x"), "y")
-    for key in ("path", "width"):
-        if table.has(key):
-            table.report(key, "a mirrored strip takes this from its original; leave it out here")
-    table.notes.fixed[table.key("width")] = f"a mirrored strip has the width of `{of}`"
-    table.close("a mirrored strip")
-    if of is None or axis is None:
-        return None
-    line = table.notes.line((*table.path, "mirror"))
-    return MirrorPlan(name, of, "x" if axis == "x" else "y", line)
-
-
-def _without_lost_mirrors(
-    strips: list[PathPlan | MirrorPlan], named: dict[str, Table]
-) -> list[PathPlan | MirrorPlan]:
-    """Report mirrors of nothing and circles of mirrors; keep what leads to a path."""
-    plans = {strip.name: strip for strip in strips}
-    kept = []
-    for strip in strips:
-        plan: PathPlan | MirrorPlan | None = strip
-        seen: set[str] = set()
-        while isinstance(plan, MirrorPlan) and plan.name not in seen:
-            seen.add(plan.name)
-            plan = plans.get(plan.of)
-        if isinstance(plan, PathPlan):
-            kept.append(strip)
-        elif plan is not None:
-            named[strip.name].report(
-                "mirror", "these mirrors lead round in a circle; give one of them a path"
-            )
-        elif isinstance(strip, MirrorPlan) and strip.of not in named:
-            hint = nearest(strip.of, [name for name in named if name != strip.name])
-            advice = f'do you mean "{hint}"?' if hint else "name a strip that has a path"
-            named[strip.name].report("mirror", f"no strip has this name; {advice}")
-    return kept
-
-
-def _read_path(table: Table) -> tuple[tuple[Quantity, Quantity], ...] | None:
-    raw = table.raw("path")
-    example = 'as in path = [["0 mm", "0 mm"], ["76 mm", "0 mm"]]'
-    if "path" not in table.data:
-        table.report("path", f"is missing; list the points of the centre line, {example}")
-    elif not isinstance(raw, list):
-        table.report("path", f"a list of points is needed, {example}, but this is {toml_kind(raw)}")
-    elif len(raw) < 2:
-        table.report("path", f"has {len(raw)} point; at least 2 are needed, {example}")
-    elif len(raw) > MOST_POINTS:
-        table.report("path", f"has {len(raw)} points; at most {MOST_POINTS} are allowed")
-    else:
-        points = [_read_point(table, i, point) for i, point in enumerate(raw)]
-        if all(points):
-            return tuple(point for point in points if point is not None)
-    return None
-
-
-def _read_point(table: Table, i: int, raw: Any) -> tuple[Quantity, Quantity] | None:
-    path = (*table.path, "path", i)
-    key = f"{table.key('path')}[{i + 1}]"
-    if not isinstance(raw, list) or len(raw) != 2:
-        table.notes.report(path, key, 'a point is a pair [x, y], as in ["76 mm", "0 mm"]', raw)
-        return None
-    x = table.notes.expression(raw[0], LENGTH, (*path, 0), f"{key}.x")
-    y = table.notes.expression(raw[1], LENGTH, (*path, 1), f"{key}.y")
-    return (x, y) if x and y else None
-
-
-def _read_width(table: Table) -> Quantity | None:
-    if isinstance(table.raw("width"), list):
-        table.report(
-            "width",
-            "widths that vary along a strip are not available in this version; "
-            "give one width for the whole strip",
-        )
-        return None
-    return table.quantity("width", LENGTH, 'write how wide the strip is, as in width = "8 mm"')
+    model, converge = _read_model(root.table("model"))
+    root.later("feedline", "leave it out; the connector then sits at the feed")
+    return Blueprint(
+        strips,
+        metal,
+        feed,
+        reference,
+        frequency,
+        model,
+        converge,
+        placement=read_placement(root.table("placement")),
+        carrier=read_carrier(root.table("carrier")),
+        ground=read_ground(root.table("ground")),
+    )
 
 
 def _read_metal(table: Table | None) -> MetalPlan:
@@ -295,15 +172,10 @@ def _read_frequency(table: Table | None) -> FrequencyPlan | None:
     return FrequencyPlan(start, stop, points)
 
 
-def _read_model(table: Table | None) -> Any:
+def _read_model(table: Table | None) -> tuple[ModelKind, bool]:
     if table is None:
-        return "auto"
-    if table.raw("kind") == "grid":
-        table.report(
-            "kind",
-            'the model "grid" is not available in this version; write "line" or leave it out',
-        )
-        return "auto"
-    kind = table.choice("kind", ("auto", "line"), "auto")
+        return "auto", False
+    kind = table.choice("kind", MODEL_KINDS, "auto")
+    converge = read_switch(table, "converge")
     table.close()
-    return kind or "auto"
+    return next((known for known in MODEL_KINDS if known == kind), "auto"), converge

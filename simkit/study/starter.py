@@ -52,11 +52,54 @@ width = "width"
 name   = "west"
 mirror = "east"
 
+# Strips of other shapes; those that touch are joined. A list of widths is a taper, one width per
+# point of a path. smooth = true bends the path as a thin lath round its points. A curve gives x and
+# y for t along it. rotate turns a strip about [0, 0], then shift moves it. For instance:
+# [[strip]]
+# name   = "tapered"
+# path   = [["0 mm", "150 mm"], ["30 mm", "160 mm"], ["60 mm", "150 mm"]]
+# width  = ["6 mm", "9 mm", "4 mm"]
+# smooth = true
+# [[strip]]
+# name   = "sagging"
+# curve  = { x = "t*80 mm", y = "-9 mm * (1 - exp(-4*t**2))", t = [0, 1], points = 60 }
+# width  = "5 mm"
+# shift  = ["0 mm", "-150 mm"]
+# [[strip]]
+# name   = "bow"
+# arc    = { centre = ["0 mm", "0 mm"], radius = "50 mm", from = "-60 deg", to = "60 deg" }
+# width  = "5 mm"
+# rotate = "5 deg"
+# shift  = ["200 mm", "0 mm"]
+
 # Copper, brass, aluminium, phosphor bronze, tin, stainless steel ..., or conductivity = "1.5e7 S/m"
 # in place of material. Without this table the metal is perfect.
 [metal]
 material  = "brass"
 thickness = "0.15 mm"
+
+# The plastic the strips are glued to, from the table of materials or by permittivity = 2.7 and
+# loss_tangent = 0.01 of the solid. infill is the solid part, skins included, best by weighing.
+# Further keys: skin (solid, at the bottom and the top), mixing ("maxwell-garnett", "bruggeman",
+# "series", "parallel"), side ("below", "both", or "embedded" with depth) and offset (of the strip
+# from the carrier's middle).
+# [carrier]
+# material     = "ASA"
+# infill       = 0.4
+# thickness    = "2.4 mm"
+# overhang     = "2 mm"     # beyond each edge of the strip, sideways
+# end_overhang = "0 mm"     # beyond its open ends
+
+# Turn the strips about the x, the y and the z axis, in this order, then lift them.
+# [placement]
+# rotate_x = "90 deg"
+# shift    = ["0 mm", "0 mm", "300 mm"]
+
+# What lies below z = 0: a perfect plane, or earth. Left out, the antenna is in free space.
+# [ground]
+# kind         = "earth"    # or "plane", without the two lines below
+# permittivity = 13
+# conductivity = "5 mS/m"
 
 # The source bridges two strip ends. For a cut across one strip write instead, for instance,
 # strip = "loop", at = "12 mm" (along its path); the cut is a tenth of the width, or gap = "1 mm".
@@ -78,6 +121,12 @@ points = 1351
 [sweep]
 arm   = { from = "70 mm", to = "82 mm", count = 3 }
 width = ["4 mm", "8 mm"]
+
+# How strips become wires: "line" (one wire a strip), "grid" (rails with ties) or "auto", which
+# chooses and says why. converge = true refines every case to estimate its error, and takes longer.
+# [model]
+# kind     = "auto"
+# converge = true
 
 # To take the values in step instead of in all combinations:
 # [sampling]

@@ -27,10 +27,12 @@ RESULT_NAMES = frozenset(
     series_resonance_resistance parallel_resonance_frequency parallel_resonance_resistance
     dip_frequency dip_return_loss dip_bandwidth impedance_q pattern_frequency driven gain peak_gain
     peak_theta peak_phi directivity efficiency power_balance sample_frequency weight current
-    series_resistance source_weight probe_current x y z direction_x direction_y direction_z length
+    series_resistance series_inductance loss_inductance surface_resistance conductor_factor
+    source_weight probe_current x y z direction_x direction_y direction_z length
     strip_index strip_position
+    path_on_plane ground_permittivity ground_conductivity
     model_gap study_gap feed_width wire_radius source_segment impedance_at_connector
-    """.split()  # noqa: SIM905, sixty names are read better as text
+    """.split()  # noqa: SIM905, seventy names are read better as text
 )
 """Names the results give to something else, so that a swept value cannot have them."""
 

@@ -101,16 +101,25 @@ class Notes:
         self.problems.append(Problem(what, key, written, self.line(path)))
 
     def expression(
-        self, raw: Any, dimension: Dimension | None, path: KeyPath, key: str
+        self,
+        raw: Any,
+        dimension: Dimension | None,
+        path: KeyPath,
+        key: str,
+        parameter: str = "",
     ) -> Quantity | None:
-        """Parse a quantity and check its dimension (any, if None); None after a problem."""
+        """Parse a quantity and check its dimension (any, if None); None after a problem.
+
+        `parameter` is a pure number that runs along a curve and may be used besides [values].
+        """
+        names = {**self.names, parameter: PURE} if parameter else self.names
         try:
             parsed = self._parse(raw, dimension)
             if parsed.names & self.broken:
                 return None
-            found = parsed.dimension(self.names)
+            found = parsed.dimension(names)
             if dimension is not None and found != dimension:
-                raise ExpressionError(_misfit(dimension, found, parsed))
+                raise ExpressionError(_misfit(dimension, found, parsed, parameter))
         except ExpressionError as error:
             self.report(path, key, str(error), raw)
         else:
@@ -135,13 +144,16 @@ class Notes:
         return constant(float(raw))
 
 
-def _misfit(wanted: Dimension, found: Dimension, parsed: Expression) -> str:
+def _misfit(wanted: Dimension, found: Dimension, parsed: Expression, parameter: str) -> str:
     single = len(parsed.steps) == 1
     subject = f"`{parsed.text.strip()}`" if single and parsed.names else "this"
     message = f"{describe(wanted)} is needed, but {subject} is {describe(found)}"
     unit = usual_unit(wanted)
-    if parsed.names:
-        return f"{message}; check the units of {_listed(sorted(parsed.names))} in [values]"
+    names = sorted(parsed.names - {parameter})
+    if names:
+        return f"{message}; check the units of {_listed(names)} in [values]"
+    if parsed.names and found == PURE:
+        return f"{message}; multiply it by one, as in {parameter} * 8 {unit}"
     if wanted == PURE:
         return f"{message}; write it without a unit"
     if found == PURE and not parsed.units:
@@ -260,7 +272,12 @@ class Table:
         return None
 
     def quantity(
-        self, name: str, dimension: Dimension, missing: str = "", fixed: str = ""
+        self,
+        name: str,
+        dimension: Dimension,
+        missing: str = "",
+        fixed: str = "",
+        parameter: str = "",
     ) -> Quantity | None:
         """Return a quantity.
 
@@ -272,6 +289,8 @@ class Table:
             What to do if the key is missing, which then is a problem; empty if it may be missing.
         fixed : str
             Why a sweep may not vary it; empty if it may.
+        parameter : str
+            As for `Notes.expression`.
         """
         raw = self.raw(name)
         if fixed or name not in self.data:
@@ -281,7 +300,8 @@ class Table:
         else:
             self.notes.slots[self.key(name)] = dimension
         if name in self.data:
-            return self.notes.expression(raw, dimension, (*self.path, name), self.key(name))
+            path, key = (*self.path, name), self.key(name)
+            return self.notes.expression(raw, dimension, path, key, parameter)
         if missing:
             self.report(name, f"is missing; {missing}")
         return None

@@ -54,6 +54,8 @@ def test_check_names_the_case_that_cannot_be_built(tmp_path: Path) -> None:
     assert "1 of 3 cannot be built" in result.stdout
     assert "case 2 (as built: lift -12 mm)" not in result.stdout
     assert "case 2 (lift -12 mm): " in result.stdout
+    assert "(hook.toml:7)" in result.stdout
+    assert "Convergence" not in result.stdout
     assert picture.is_file()
 
 
@@ -63,3 +65,30 @@ def test_check_shows_a_case_where_the_nominal_antenna_cannot_be_built(tmp_path: 
     result = simkit("check", study, "-o", tmp_path / "hook.png")
     assert result.exit_code == 1
     assert "Shown below   case 0 (lift 10 mm)" in result.stdout
+
+
+def test_a_study_of_which_nothing_can_be_built_says_the_line(tmp_path: Path) -> None:
+    study = tmp_path / "hook.toml"
+    text = STUDY[: STUDY.index("[sweep]")]
+    study.write_text(text.replace('lift = "10 mm"', 'lift = "-12 mm"'), "utf-8")
+    result = simkit("check", study, "-o", tmp_path / "hook.png")
+    assert result.exit_code == 1
+    assert "strip 'hook' crosses or overlaps itself" in result.stderr
+    assert result.stderr.rstrip().endswith("(hook.toml:7)")
+
+
+def test_check_refines_where_asked(tmp_path: Path) -> None:
+    study = tmp_path / "hook.toml"
+    study.write_text(STUDY, "utf-8")
+    result = simkit("check", study, "-o", tmp_path / "hook.png", "--converge")
+    table = result.stdout.split("\nConvergence\n")[1].splitlines()
+    for word in ("coarser (", "as planned (", "finer (", "shift", "mesh", "rules", "together"):
+        assert word in table[0]
+    (half,) = [line for line in table if line.lstrip().startswith("1/2 wave")]
+    numbers = [float(word) for word in half.replace("%", " ").split() if _is_number(word)]
+    rules, together = numbers[-2:]
+    assert 0 < rules <= together
+
+
+def _is_number(word: str) -> bool:
+    return word.replace(".", "", 1).lstrip("+-").isdigit()

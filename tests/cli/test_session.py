@@ -27,6 +27,7 @@ def test_run_goes_on_past_a_refused_case_and_exits_non_zero(session: Session) ->
     assert f"simkit modes {session.results}" in out
     (line,) = [line for line in out.splitlines() if line.split()[:2] == ["2", "refused"]]
     assert "hook" in line
+    assert line.endswith("(hook.toml:7)")  # the table of the strip
 
 
 def test_run_draws_every_picture_and_names_it(session: Session) -> None:
@@ -52,6 +53,7 @@ def test_status(session: Session) -> None:
     assert data["title"] == "Hook on the gauge mast"
     assert data["counts"]["solved"] == 2
     assert [(r["case"], r["status"]) for r in data["remarks"]] == [(2, "refused")]
+    assert data["remarks"][0]["reason"].endswith("(study.toml:7)")
     assert data["running"] is False
 
 

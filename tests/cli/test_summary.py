@@ -8,7 +8,7 @@ from types import SimpleNamespace
 import numpy as np
 import pytest
 
-from simkit.cli import summary
+from simkit.cli import antenna_text, summary
 from simkit.geometry import build_wires, plan_mesh
 from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 
@@ -23,12 +23,8 @@ ANTENNA = Antenna(
 )
 
 
-def test_developed_length_follows_the_bend() -> None:
-    assert summary.developed_m(EAST) == pytest.approx(0.1, abs=1e-12)
-
-
 def test_strips_table_gives_width_developed_length_and_path() -> None:
-    line = summary.strips_table(ANTENNA.strips).splitlines()[2]
+    line = antenna_text.strips_table(ANTENNA.strips).splitlines()[2]
     assert line.split() == [
         "east",
         "3",
@@ -46,17 +42,17 @@ def test_strips_table_gives_width_developed_length_and_path() -> None:
 
 def test_long_paths_are_shortened_in_the_middle() -> None:
     curve = Strip("bow", tuple((x, x**2) for x in np.linspace(0, 0.05, 41)), 0.003)
-    text = summary.strips_table([curve])
+    text = antenna_text.strips_table([curve])
     assert "... 37 more ... (50, 2.5)" in text
 
 
 def test_end_feed_names_both_ends_and_their_distance() -> None:
-    text = summary.feed_text(ANTENNA)
+    text = antenna_text.feed_text(ANTENNA)
     assert text == "between west.start and east.start, 2 mm apart; reflections refer to 50 ohm"
 
 
 def test_cut_feed_names_place_and_gap() -> None:
-    text = summary.feed_text(replace(ANTENNA, feed=CutFeed("west", 0.012, 0.0005)))
+    text = antenna_text.feed_text(replace(ANTENNA, feed=CutFeed("west", 0.012, 0.0005)))
     assert text.startswith("a cut 0.5 mm wide across west, 12 mm along its centre line")
 
 
@@ -70,22 +66,30 @@ def test_cut_feed_names_place_and_gap() -> None:
     ids=["brass", "foil", "sheet"],
 )
 def test_metal(metal: Metal, text: str) -> None:
-    assert summary.metal_text(replace(ANTENNA, metal=metal)) == text
+    assert antenna_text.metal_text(replace(ANTENNA, metal=metal)) == text
 
 
 def test_wires_are_counted_with_radius_unknowns_and_expected_error() -> None:
-    wires = build_wires(ANTENNA, plan_mesh([ANTENNA]))
-    text = summary.wires_text(wires, ANTENNA)
+    plan = plan_mesh([ANTENNA])
+    wires = build_wires(ANTENNA, plan)
+    text = summary.wires_text(wires, plan)
     assert f"{wires.segments} segments (unknowns)" in text
     assert f"radius {wires.radius_m * 1e3:.3g} mm" in text
-    assert "chosen by auto" in text
+    assert plan.why in text
+    assert "one wire on the centre line of each strip" in text
     assert f"{wires.relative_error * 100:.2g} % of mode frequencies" in text
-    assert "chosen by auto" not in summary.wires_text(wires, replace(ANTENNA, model="line"))
+
+
+def test_rails_are_counted() -> None:
+    grid = replace(ANTENNA, model="grid")
+    plan = plan_mesh([grid])
+    assert "3 rails along each strip" in summary.wires_text(build_wires(grid, plan), plan)
 
 
 def test_doubts_are_shown() -> None:
-    wires = replace(build_wires(ANTENNA, plan_mesh([ANTENNA])), doubts=("legs of 2 widths",))
-    assert summary.wires_text(wires, ANTENNA).splitlines()[-1] == "Doubtful      legs of 2 widths"
+    plan = plan_mesh([ANTENNA])
+    wires = replace(build_wires(ANTENNA, plan), doubts=("legs of 2 widths",))
+    assert summary.wires_text(wires, plan).splitlines()[-1] == "Doubtful      legs of 2 widths"
 
 
 def test_problems_are_counted_and_cut_short() -> None:

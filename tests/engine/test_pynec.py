@@ -2,6 +2,8 @@
 
 import subprocess
 import sys
+from dataclasses import replace
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -89,7 +91,7 @@ def test_lumped_load_on_the_source_adds_to_the_impedance():
 def test_series_load_damps_and_slows():
     peak = [
         abs(solve([((22, 1.0),)], series=series)[0][22])
-        for series in (None, SeriesLoad(0.0), SeriesLoad(200.0), SeriesLoad(0.0, 50e-9))
+        for series in ((), [SeriesLoad(0.0)], [SeriesLoad(200.0)], [SeriesLoad(0.0, 50e-9)])
     ]
     assert peak[1] == peak[0]
     assert peak[2] < peak[0]
@@ -99,9 +101,34 @@ def test_series_load_damps_and_slows():
 def test_series_resistance_takes_its_part_of_the_power():
     """Input power minus that with the same currents lost in the wire stays positive."""
     ohm_per_m = 50.0
-    current = solve([((22, 1.0),)], series=SeriesLoad(ohm_per_m))[0]
+    current = solve([((22, 1.0),)], series=[SeriesLoad(ohm_per_m)])[0]
     lost = 0.5 * ohm_per_m * np.sum(abs(current) ** 2) * 0.15 / 45
     assert 0.02 < lost / (0.5 * current[22].real) < 0.5
+
+
+def test_each_wire_has_its_own_series_load():
+    """On one wire of three, then on all: the same as lumped loads on its segments, on every one."""
+    parts = (
+        Wire((0.0, 0.0, 0.0), (0.05, 0.0, 0.0), 15),
+        Wire((0.05, 0.0, 0.0), (0.10, 0.0, 0.0), 15),
+        Wire((0.10, 0.0, 0.0), (0.15, 0.0, 0.0), 15),
+    )
+    ohm, henry, frequency = 300.0, 2e-7, 0.95e9
+    length = 0.05 / 15
+    for loaded in ((False, True, False), (False, False, True), (True, True, True)):
+        series = [SeriesLoad(ohm, henry) if on else SeriesLoad() for on in loaded]
+        lumped = [
+            LumpedLoad(15 * number + k, ohm * length, henry * length)
+            for number, on in enumerate(loaded)
+            if on
+            for k in range(15)
+        ]
+        spread = solve([((22, 1.0),)], frequency, parts, series=series)
+        # The engine takes the angular frequency of lumped loads from rounded constants, 5e-5 off.
+        assert spread == pytest.approx(
+            solve([((22, 1.0),)], frequency, parts, lumped=lumped), rel=2e-4
+        )
+    assert abs(spread[0][22] / solve([((22, 1.0),)], frequency, parts)[0][22] - 1) > 0.1
 
 
 @pytest.mark.parametrize("frequency", [0.0, -1e9, float("nan"), float("inf")])
@@ -154,6 +181,32 @@ def test_engine_version_names_the_engine():
     name, number = engine_version().split()
     assert name == "PyNEC"
     assert number[0].isdigit()
+
+
+def test_a_strip_of_changing_width_has_wires_of_one_radius(make, monkeypatch):
+    """Where wires of two radii meet, the engine errs by per cents and says nothing."""
+    seen = []
+
+    class Recorder:
+        def get_geometry(self):
+            return self
+
+        def wire(self, tag, segments, *numbers):
+            seen.append(numbers[6:])
+
+        def geometry_complete(self, *_):
+            raise RuntimeError("enough seen")
+
+    antenna = make.strip([(-75, 0), (0, 0), (75, 30)], 30, 75)
+    (one,) = antenna.strips
+    antenna = replace(antenna, strips=(replace(one, widths_m=(0.03, 0.006, 0.03)),))
+    grid = build_wires(antenna, plan_mesh([antenna]))
+    monkeypatch.setitem(sys.modules, "PyNEC", SimpleNamespace(nec_context=Recorder))
+    with pytest.raises(EngineError, match="enough seen"):
+        solve_wires(grid.wires, grid.radius_m, 1e9, [grid.source])
+    assert len(seen) == len(grid.wires)
+    # Radius, and the two factors by which radius and length of segments may grow along a wire.
+    assert set(seen) == {(grid.radius_m, 1.0, 1.0)}
 
 
 def test_importing_the_module_does_not_load_the_engine():

@@ -73,7 +73,12 @@ def test_wires_that_meet_need_segments_over_two_radii():
 
 def test_segments_over_a_tenth_of_the_shortest_wavelength():
     check_wires([wire((0, 0), (59, 0), 2)], RADIUS, TOP_HZ)
-    refused([wire((0, 0), (61, 0), 2)], r"segments of 30.5 mm, over a tenth of the wavelength")
+    refused([wire((0, 0), (61, 0), 2)], r"segments of 30.5 mm, over 1/10 of the wavelength")
+
+
+def test_a_piece_of_a_figure_over_a_sixth_of_the_shortest_wavelength():
+    check_wires([wire((0, 0), (49, 0))], RADIUS, TOP_HZ)
+    refused([wire((0, 0), (51, 0))], r"segments of 51 mm, over 1/6 of the wavelength")
 
 
 def test_the_same_wire_twice():

@@ -12,8 +12,8 @@ from simkit.geometry.strips import (
     check_strips,
     equivalent_radius_m,
     model_gap_m,
-    outline,
 )
+from simkit.study.model import EndFeed, Strip
 
 
 def refused(antenna, match):
@@ -49,12 +49,6 @@ def test_model_gap_scales_with_the_strip(scale):
     )
 
 
-def test_outline_of_a_right_angle_is_two_rectangles_with_a_mitre(make):
-    shape = outline(make.ell(40, 6, 90, 12).strips[0])
-    assert shape.area == pytest.approx(2 * 0.040 * 0.006, rel=1e-9)
-    assert shape.bounds == pytest.approx((0.0, -0.003, 0.043, 0.040), abs=1e-12)
-
-
 def test_sound_strips_pass_without_doubts(make):
     assert check_strips(make.ell(40, 6, 90, 12)) == ()
 
@@ -79,7 +73,7 @@ def test_path_points_that_coincide(make):
 
 
 def test_a_patch_is_not_a_strip(make):
-    refused(make.straight(19, 10, 6), "19 mm is shorter than twice the width of 10 mm")
+    refused(make.straight(9, 10, 6), "a path of 9 mm is shorter than its width of 10 mm")
 
 
 def test_a_path_that_crosses_itself(make):
@@ -105,24 +99,70 @@ def test_a_closed_loop_does_not_overlap_itself(make):
     assert check_strips(make.loop(60, 40, 4, 25)) == ()
 
 
-def test_strips_of_different_widths(make):
-    antenna = make.dipole([(1, 0), (60, 0)], [(-1, 0), (-60, 0)], 4)
-    east, west = antenna.strips
-    antenna = replace(antenna, strips=(east, replace(west, width_m=0.005)))
-    refused(antenna, r"different widths \(east 4 mm, west 5 mm\).*give all strips the same width")
-
-
 def test_fed_strips_that_touch_short_the_feed(make):
     """Ends 0.5 mm apart on the centre line, square, at 90 degrees: the inner corners overlap."""
     antenna = make.dipole([(0.5, 0), (60, 0)], [(0, -0.5), (0, -60)], 4)
     refused(antenna, "touch near .* shorts the feed between them .*: widen the gap")
 
 
-def test_strips_that_touch_away_from_the_feed(make):
-    antenna = make.dipole([(1, 0), (60, 0)], [(-1, 0), (-60, 0)], 4)
-    third = replace(antenna.strips[0], name="stub", path_m=((0.04, 0.001), (0.04, 0.03)))
-    antenna = replace(antenna, strips=(*antenna.strips, third))
-    refused(antenna, r"strips 'east' and 'stub' touch or overlap near .* move them apart")
+DIPOLE = [(1, 0), (60, 0)], [(-1, 0), (-60, 0)]
+
+
+def with_third(make, name, path_mm, width_mm=4.0):
+    antenna = make.dipole(*DIPOLE, 4)
+    path = tuple((x * 1e-3, y * 1e-3) for x, y in path_mm)
+    third = Strip(name, path, width_mm * 1e-3)
+    return replace(antenna, strips=(*antenna.strips, third))
+
+
+def test_strips_that_cross_away_from_their_ends(make):
+    antenna = with_third(make, "bar", [(40, -20), (40, 30)])
+    refused(antenna, r"'east' and 'bar' cross or overlap near \(4?\d.*, -?2\) mm without an end of")
+
+
+def test_strips_that_lie_on_each_other_away_from_their_joint(make):
+    """They leave their common end at 5 degrees: after 25 mm they are not yet a width apart."""
+    antenna = with_third(make, "twin", [(60, 0), (0.5, 4.8)])
+    refused(antenna, r"'east' and 'twin' overlap near .* mm, away from where they are joined")
+
+
+@pytest.mark.parametrize("start_y", [0.0, 1.5, 1.9999])
+def test_an_end_on_the_metal_of_another_is_a_joint(make, start_y):
+    assert check_strips(with_third(make, "stub", [(40, start_y), (40, 30)])) == ()
+
+
+@pytest.mark.parametrize(("start_y", "short"), [(2.1, 0.1), (5.9, 3.9)])
+def test_an_end_that_stops_just_short_of_another_strip(make, start_y, short):
+    antenna = with_third(make, "stub", [(40, start_y), (40, 30)])
+    refused(
+        antenna,
+        rf"the start of strip 'stub' at \(40, {start_y}\) mm stops {short} mm short of strip "
+        "'east', less than its own width of 4 mm: let it touch, or leave more room",
+    )
+
+
+def test_an_end_a_width_away_from_another_strip_is_meant(make):
+    assert check_strips(with_third(make, "rod", [(40, 6.1), (40, 30)])) == ()
+
+
+def test_a_near_miss_of_the_other_strips_end(make):
+    """Whichever of the two stops short, and whichever is named first."""
+    antenna = with_third(make, "bar", [(62.5, -20), (62.5, 20)], 3.0)
+    refused(antenna, r"the end of strip 'east' at \(60, 0\) mm stops 1 mm short of strip 'bar'")
+
+
+def test_the_fed_ends_do_not_count_as_near_misses(make):
+    """They face each other across 2 mm, half their width."""
+    assert check_strips(make.dipole(*DIPOLE, 4)) == ()
+
+
+def test_a_loop_fed_between_its_own_ends_needs_a_gap(make):
+    antenna = make.loop(60, 40, 4, 25)
+    feed = EndFeed("strip", "start", "strip", "end")
+    refused(
+        replace(antenna, feed=feed),
+        r"start and end of strip 'strip' meet at \(0, 0\) mm, so the feed is shorted",
+    )
 
 
 def test_a_close_neighbour_is_a_doubt_that_says_how_close(make):

@@ -149,6 +149,7 @@ def _fill_wires(value: dict[str, np.ndarray], case: int, arm: float, width: floa
     value["strip_index"][case] = np.repeat([1, -1, 0], [15, 1, 15])
     value["strip_position"][case] = np.concatenate([position[::-1], [np.nan], position])
     value["source_segment"][case] = 15
+    value["source_weight"][case] = np.arange(SEGMENTS) == 15
     value["study_gap"][case] = value["model_gap"][case] = GAP_M
     value["feed_width"][case] = width
     value["wire_radius"][case] = width / 4

@@ -6,9 +6,18 @@ import numpy as np
 import pytest
 import xarray as xr
 from matplotlib.figure import Figure
+from numpy.typing import ArrayLike
 
 from simkit.plot import plot_pattern, plot_pattern_cuts
-from simkit.plot.pattern import PLANES, Cut, Plane, pattern_cut, smooth_cut
+from simkit.plot.pattern import (
+    PLANES,
+    Cut,
+    Plane,
+    computed_cut,
+    pattern_cut,
+    pattern_of,
+    smooth_cut,
+)
 
 
 @pytest.fixture
@@ -113,3 +122,28 @@ def test_wrong_plane_and_wrong_axes_are_refused(dataset: xr.Dataset) -> None:
 def test_refused_case_shows_its_reason(dataset: xr.Dataset) -> None:
     assert plot_pattern(dataset, 10).texts[0].get_text().startswith("refused: strip east")
     assert not plot_pattern_cuts(dataset, 10).legends
+
+
+class Sweeping:
+    """Stands for a pattern: gain grows with theta, and with phi by a tenth of that."""
+
+    def gain_dbi(self, theta_deg: ArrayLike, phi_deg: ArrayLike) -> np.ndarray:
+        return np.asarray(theta_deg) / 10 + np.asarray(phi_deg) / 100
+
+
+@pytest.mark.parametrize("plane", PLANES)
+def test_computed_cuts_run_as_the_stored_ones_every_2_degrees(plane: Plane) -> None:
+    theta, phi = np.arange(0.0, 181.0, 10.0), np.arange(0.0, 361.0, 10.0)
+    grid = xr.DataArray(
+        Sweeping().gain_dbi(theta[:, np.newaxis], phi),
+        {"theta": theta, "phi": phi},
+        ("theta", "phi"),
+    )
+    stored, fine = pattern_cut(grid, plane), computed_cut(Sweeping(), plane)  # type: ignore[arg-type]
+    np.testing.assert_array_equal(np.diff(fine.angle_deg), 2.0)
+    np.testing.assert_allclose(fine.gain_dbi[::5], stored.gain_dbi)
+
+
+def test_without_currents_the_stored_grid_serves(dataset: xr.Dataset) -> None:
+    assert pattern_of(dataset.sel(case=7), 0) is None
+    assert pattern_of(dataset.sel(case=7).drop_vars("current"), 0) is None

@@ -65,20 +65,23 @@ def test_all_pictures_of_a_run(dataset: xr.Dataset, study_path: Path, tmp_path: 
         "reflection.png",
         "smith.png",
         "current.png",
+        "charge.png",
+        "current_map.png",
+        "charge_map.png",
         "pattern.png",
         "tracks.png",
         "tracks_width.png",
     ]
     assert sorted(names) == sorted(path.name for path in folder.iterdir())
     assert all(path.read_bytes().startswith(PNG) for path, _ in written)
-    assert all("case 7: arm 76 mm, width 8 mm" in about for _, about in written[:6])
+    assert all("case 7: arm 76 mm, width 8 mm" in about for _, about in written[:9])
     assert dict(matplotlib.rcParams) == settings
 
 
 def test_without_study_or_sweep_there_is_less_to_draw(dataset: xr.Dataset, tmp_path: Path) -> None:
     single = dataset.isel(case=[7]).assign_attrs(swept={})
     names = [path.stem for path, _ in save_all(single, tmp_path)]
-    assert names == ["impedance", "reflection", "smith", "current", "pattern"]
+    assert names == ["impedance", "reflection", "smith", "current", "charge", "pattern"]
 
 
 def test_nothing_solved_leaves_geometry_and_empty_tracks(
@@ -111,7 +114,7 @@ def test_the_ending_says_the_format(dataset: xr.Dataset, tmp_path: Path, ending:
 def test_what_cannot_be_drawn_or_written_is_said(dataset: xr.Dataset, tmp_path: Path) -> None:
     with pytest.raises(StoreError, match="no picture 'waterfall'; choose from geometry, impedance"):
         save_plot(dataset, "waterfall", tmp_path / "a.png")
-    with pytest.raises(StoreError, match="name the study as well"):
+    with pytest.raises(StoreError, match="name the study too"):
         save_plot(dataset, "geometry", tmp_path / "a.png")
     with pytest.raises(StoreError, match=r"file name ends in \.png, \.svg, \.pdf"):
         save_plot(dataset, "smith", tmp_path / "a.docx")
@@ -158,7 +161,7 @@ def test_drawing_leaves_pyplot_alone_and_listing_needs_no_matplotlib(tmp_path: P
     code = (
         "import sys\n"
         "from simkit.plot import KINDS\n"
-        "assert len(KINDS) == 7\n"
+        "assert len(KINDS) == 10\n"
         "assert not [m for m in sys.modules if m.startswith(('matplotlib', 'xarray'))]\n"
         "import simkit.plot.save\n"
         "assert 'matplotlib.figure' in sys.modules\n"

@@ -26,24 +26,32 @@ STORED = {
 }
 
 
-def antenna(path_mm, width_mm, feed_at_mm, stop_ghz):
+def antenna(path_mm, width_mm, feed_at_mm, stop_ghz, model="auto", widths_mm=()):
     path = tuple((x * 1e-3, y * 1e-3) for x, y in path_mm)
+    widths = tuple(w * 1e-3 for w in widths_mm)
     return Antenna(
-        strips=(Strip("strip", path, width_mm * 1e-3),),
+        strips=(Strip("strip", path, max(widths or (width_mm * 1e-3,)), widths),),
         metal=PERFECT,
         feed=CutFeed("strip", feed_at_mm * 1e-3, width_mm * 1e-4),
         reference_ohm=50.0,
         frequency=FrequencyBand(0.1e9, stop_ghz * 1e9, 1451),
+        model=model,
     )
 
 
-def described(data):
+def described(data, model="auto"):
+    if "tips" in data:
+        middle = data["length"] / 2
+        path = [(-middle, 0.0), (0.0, 0.0), (middle, 0.0)]
+        widths = (data["tips"], data["width"], data["tips"])
+        return antenna(path, data["width"], data["feed_at"], data["stop_ghz"], model, widths)
     if "arm" not in data:
         path = [(0.0, 0.0), (data["length"], 0.0)]
-        return antenna(path, data["width"], data["feed_at"], data["stop_ghz"])
+        return antenna(path, data["width"], data["feed_at"], data["stop_ghz"], model)
     half = np.deg2rad(data["included_deg"] / 2)
     x, y = data["arm"] * np.sin(half), -data["arm"] * np.cos(half)
-    return antenna([(-x, y), (0.0, 0.0), (x, y)], data["width"], data["arm"], data["stop_ghz"])
+    path = [(-x, y), (0.0, 0.0), (x, y)]
+    return antenna(path, data["width"], data["arm"], data["stop_ghz"], model)
 
 
 @cache
@@ -58,16 +66,35 @@ def slot_of(arrays, half_waves):
     return slot
 
 
-def found(row, quantity):
-    arrays = solved(described(row.data["antenna"][row["antenna"]]))
+def found(row, quantity, model="auto"):
+    arrays = solved(described(row.data["antenna"][row["antenna"]], model))
     name, factor = STORED[quantity]
     return arrays[name][slot_of(arrays, row["half_waves"])] * factor
 
 
+MODELS = ("line", "grid")
+
+MISSED = {
+    ("20 mm wide, 3/2", "grid", "peak_ohm"): "85.0 ohm, 2.6 % low",
+    ("3 to 30 mm wide, 3/2", "auto", "peak_ohm"): "141.1 ohm, 3.6 % low",
+}
+
+
+@pytest.fixture
+def missed(request):
+    """Marks what is known to miss its tolerance; strict, so that an improvement is noticed."""
+    values = request.node.callspec.params
+    key = values["row"]["name"], values.get("model", "auto"), values["quantity"]
+    if key in MISSED:
+        request.applymarker(pytest.mark.xfail(strict=True, reason=MISSED[key]))
+
+
+@pytest.mark.usefixtures("missed")
 @pytest.mark.parametrize("quantity", QUANTITIES)
+@pytest.mark.parametrize("model", MODELS)
 @pytest.mark.published("full_wave_strips", "straight")
-def test_straight_strips(row, quantity):
-    row.check(quantity, found(row, quantity))
+def test_straight_strips(row, model, quantity):
+    row.check(quantity, found(row, quantity, model))
 
 
 @pytest.mark.parametrize("quantity", QUANTITIES)
@@ -75,6 +102,44 @@ def test_straight_strips(row, quantity):
 def test_bent_strips(row, quantity):
     bent = row.data["tolerance"].get(f"bent_{quantity}")
     row.check(quantity, found(row, quantity), f"bent_{quantity}" if bent else None)
+
+
+@pytest.mark.parametrize("quantity", ["mode_mhz", "mode_q", "peak_mhz", "dip_mhz"])
+@pytest.mark.published("full_wave_strips", "bent")
+def test_bent_strips_of_rails(row, quantity):
+    """Whether or not the power of their split source balances."""
+    one = described(row.data["antenna"][row["antenna"]], "grid")
+    arrays = solve_case(one, plan_mesh([one])).arrays
+    name, factor = STORED[quantity]
+    bent = row.data["tolerance"].get(f"bent_{quantity}")
+    slot = slot_of(arrays, row["half_waves"])
+    row.check(quantity, arrays[name][slot] * factor, f"bent_{quantity}" if bent else None)
+
+
+@pytest.mark.published("full_wave_strips", "bent")
+def test_power_of_bent_strips_of_rails_balances(row):
+    solved(described(row.data["antenna"][row["antenna"]], "grid"))
+
+
+@pytest.mark.usefixtures("missed")
+@pytest.mark.parametrize("quantity", QUANTITIES)
+@pytest.mark.published("full_wave_strips", "taper")
+def test_tapered_strips(row, quantity):
+    row.check(quantity, found(row, quantity), f"taper_{quantity}")
+
+
+@pytest.mark.published("full_wave_strips", "straight")
+def test_line_and_grid_agree(row):
+    one, other = (found(row, "mode_mhz", model) for model in MODELS)
+    allowed = row.data["tolerance"]["models_mode_mhz"]["relative"]
+    assert other == pytest.approx(one, rel=allowed), row["name"]
+
+
+@pytest.mark.published("full_wave_strips", "straight")
+def test_auto_takes_the_line_model_where_it_holds(row):
+    for name, one in row.data["antenna"].items():
+        wanted = "grid" if "tips" in one else "line"
+        assert plan_mesh([described(one)]).kind == wanted, name
 
 
 @pytest.mark.parametrize("feed_at_mm", FEED_PLACES_MM)

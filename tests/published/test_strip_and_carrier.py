@@ -21,6 +21,10 @@ from simkit.crosssection import (
 from simkit.crosssection.carrier_kappa import series_inductance_h_per_m, wire_radius_m
 from simkit.crosssection.panels import chain, circle, join
 from simkit.crosssection.potential import solve
+from simkit.geometry import plan_mesh
+from simkit.runner.solve import solve_case
+from simkit.store.schema import Status
+from simkit.study.model import Antenna, Carrier, CutFeed, FrequencyBand, Metal, Strip
 
 DATA = tomllib.loads((Path(__file__).parent / "strip_and_carrier.toml").read_text("utf-8"))
 RULES = ("series", "air-host", "bruggeman", "plastic-host", "parallel")
@@ -84,3 +88,51 @@ def test_table_of_plastics_allows_for_what_was_measured(row: Row) -> None:
             assert low <= entry.permittivity <= high, name
         else:
             assert entry.permittivity <= high, name
+
+
+def carried(row: Row, model: str, loss_tangent: float = 0.0) -> dict[str, Any]:
+    """What is kept of the strip of a row, fed in the middle."""
+    length, width = row["length_mm"] * 1e-3, row["width_mm"] * 1e-3
+    antenna = Antenna(
+        strips=(Strip("strip", ((0.0, 0.0), (length, 0.0)), width),),
+        metal=Metal("perfect", None, 0.0),
+        feed=CutFeed("strip", length / 2, width / 10),
+        reference_ohm=50.0,
+        frequency=FrequencyBand(0.4e9, 3e9, 131),
+        model=model,  # type: ignore[arg-type]
+        carrier=Carrier(
+            row["permittivity"],
+            loss_tangent,
+            row["thickness_mm"] * 1e-3,
+            overhang_m=row["overhang_mm"] * 1e-3,
+        ),
+    )
+    result = solve_case(antenna, plan_mesh([antenna]))
+    assert result.status == Status.SOLVED, result.reason
+    return result.arrays
+
+
+@pytest.mark.parametrize("model", ["line", "grid"])
+@pytest.mark.parametrize("row", DATA["strip_on_carrier"], ids=lambda row: f"w={row['width_mm']}")
+def test_modes_of_a_strip_on_a_carrier(row: Row, model: str) -> None:
+    found = carried(row, model)
+    for number, mhz, q in zip(row["half_waves"], row["frequency_mhz"], row["q"], strict=True):
+        (slot,) = np.flatnonzero(found["mode_half_waves"] == number)
+        # What is promised of carriers; measured 0.15 and 0.09 % low (grid 0.23, 0.11 %).
+        assert found["mode_frequency"][slot] * 1e-6 == pytest.approx(mhz, rel=0.003)
+        # Promised; measured 0.3 and 0.4 % high (grid 0.5, 1.4 %).
+        assert found["mode_q"][slot] == pytest.approx(q, rel=0.02)
+        assert found["efficiency"][slot] == pytest.approx(1.0, abs=1e-9)
+
+
+@pytest.mark.parametrize("model", ["line", "grid"])
+@pytest.mark.parametrize("row", DATA["strip_on_carrier"], ids=lambda row: f"w={row['width_mm']}")
+def test_plastic_loss_lowers_q_as_it_lowers_the_efficiency(row: Row, model: str) -> None:
+    """Radiated over all power is Q with the loss over Q without, to the first order in the loss."""
+    lossless, lossy = carried(row, model), carried(row, model, 0.01)
+    for number in row["half_waves"]:
+        (slot,) = np.flatnonzero(lossless["mode_half_waves"] == number)
+        ratio = lossy["mode_q"][slot] / lossless["mode_q"][slot]
+        assert 0.98 < lossy["efficiency"][slot] < 0.998
+        # Efficiency is taken at the conductance peak, some per cent above the natural frequency.
+        assert 1 - lossy["efficiency"][slot] == pytest.approx(1 - ratio, rel=0.15)

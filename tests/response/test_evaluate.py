@@ -69,7 +69,7 @@ def dataset(antennas, grids):
 
 def direct(antenna, grid, frequency):
     resistance = strip_resistance_ohm_per_m(grid.feed_width_m, antenna.metal, frequency)
-    series = SeriesLoad(resistance)
+    series = [SeriesLoad(resistance)] * len(grid.wires)
     return solve_wires(grid.wires, grid.radius_m, frequency, [grid.source], series=series)[0]
 
 
@@ -138,7 +138,7 @@ def test_gain_is_the_stored_one_of_modes_driven_at_the_feed(dataset):
 def test_losses_lower_the_gain(dataset):
     """Without the stored resistance the same currents would seem to lose nothing."""
     case = dataset.isel(case=2)
-    lossless = case.assign(series_resistance=0 * case["series_resistance"])
+    lossless = case.assign(surface_resistance=0 * case["surface_resistance"])
     frequency = float(case["pattern_frequency"][0])
     drop = gain_at(lossless, frequency, 40.0, 90.0) - gain_at(case, frequency, 40.0, 90.0)
     assert 10 ** (-drop / 10) == pytest.approx(float(case["efficiency"][0]), rel=1e-4)

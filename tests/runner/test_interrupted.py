@@ -21,6 +21,9 @@ from simkit.store.schema import Status
 from simkit.store.write import StoreFile
 
 HERE = Path(__file__).parent
+PATHS = os.pathsep.join([str(HERE), str(HERE.parents[1])])
+"""The solver of these tests, and the simkit they belong to."""
+
 ARMS = range(60, 84)
 IN_HAND = 4
 """Cases that two workers may have in hand, in blocks of two."""
@@ -34,7 +37,7 @@ def start(fake, marks, tmp_path):
     def start(study, workers=2, seconds=0.1):
         process = subprocess.Popen(
             [sys.executable, str(HERE / "drive.py"), study.path, tmp_path / "out", str(workers)],
-            env=os.environ | {"PYTHONPATH": str(HERE), "FAKE_SECONDS": str(seconds)},
+            env=os.environ | {"PYTHONPATH": PATHS, "FAKE_SECONDS": str(seconds)},
             stdout=subprocess.PIPE,
             stderr=subprocess.STDOUT,
             text=True,

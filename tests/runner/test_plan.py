@@ -26,6 +26,7 @@ def test_block_sizes(seconds, cases, workers, size):
 def test_the_time_limit_grows_with_the_matrix():
     assert limit_for(30) < 70
     assert limit_for(800) > 10 * 40 * 0.3  # ten times forty solves of 0.37 s
+    assert limit_for(800, converge=True) > 8 * limit_for(800)
 
 
 def test_a_key_depends_on_every_input_and_on_nothing_else(make_study):

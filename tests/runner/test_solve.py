@@ -10,8 +10,10 @@ from simkit.errors import EngineError
 from simkit.geometry import build_wires, plan_mesh
 from simkit.response.features import reflection
 from simkit.runner import solve as solve_module
-from simkit.runner.solve import case_identity, solve_case
+from simkit.runner.identity import MODEL_VERSION, engine_version
+from simkit.runner.solve import solve_case
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, VARIABLES, Status
+from simkit.study.model import CutFeed, Strip
 
 
 def solved(antenna, plan=None):
@@ -82,7 +84,8 @@ def test_mode_currents_are_scaled_to_a_real_one(bent_result):
         assert abs(current).max() == pytest.approx(1)
         assert current.flat[np.argmax(abs(current))] == pytest.approx(1, abs=1e-12)
         # Open ends carry nothing; the current goes through the gap, into one strip, out of one.
-        assert abs(current[:, -1]).max() == 0
+        # (Zero but for the rounding of the interpolation.)
+        assert abs(current[:, -1]).max() < 1e-15
         assert current[0, 0] == pytest.approx(-current[1, 0], abs=0.1)
 
 
@@ -154,7 +157,7 @@ def test_bad_geometry_is_refused_with_the_reason(make):
 
 
 def test_a_strip_too_wide_for_its_segments_is_refused(make):
-    fine, fat = make.ell(60, 4, 90, 20), make.ell(60, 18, 90, 20)
+    fine, fat = (replace(make.ell(60, width, 90, 20), model="line") for width in (4, 18))
     result = solve_case(fat, plan_mesh([fine, fat]))
     assert result.status == Status.REFUSED
     assert "narrow" in result.reason
@@ -202,15 +205,15 @@ def test_a_sweep_that_does_not_settle_makes_a_case_doubtful(make, monkeypatch):
 
 
 def test_a_limit_of_the_rules_makes_a_case_doubtful(make):
-    antenna = make.straight(80, 18, 40)
+    antenna = replace(make.straight(80, 18, 40), model="line")
     result = solve_case(antenna, plan_mesh([antenna]))
     assert result.status == Status.DOUBTFUL
     assert "of its length wide" in result.reason
 
 
 def test_identity_names_model_and_engine():
-    assert case_identity()["engine"] == pynec.engine_version()
-    assert case_identity()["model"]
+    assert pynec.engine_version() == f"PyNEC {engine_version()}"
+    assert MODEL_VERSION
 
 
 def test_the_same_case_twice_gives_the_same_bits(bent, bent_result):
@@ -259,17 +262,113 @@ def test_turning_the_antenna_in_its_plane_turns_the_pattern(make):
     )
 
 
-@pytest.mark.parametrize("kind", ["straight", "off-centre", "ell", "vee"])
-def test_modes_move_smoothly_with_a_length_swept_in_tenths_of_a_millimetre(make, kind):
+@pytest.mark.parametrize("factor", [2.0, 0.4])
+def test_scaling_a_grid_changes_nothing(make, factor):
+    """A taper with a bend: rails, their radius, ends and corner all follow."""
+
+    def of(scale):
+        band = make.band(0.4e9 / scale, 2.2e9 / scale, 31)
+        antenna = make.strip([(0, 0), (70 * scale, 0), (120 * scale, 30 * scale)], 10, 30)
+        (one,) = antenna.strips
+        widths = tuple(w * scale for w in (0.004, 0.008, 0.010))
+        feed = CutFeed("strip", 0.03 * scale, 0.0005 * scale)
+        one = replace(one, width_m=widths[-1], widths_m=widths)
+        return replace(antenna, strips=(one,), feed=feed, frequency=band)
+
+    one, other = solved(of(1.0)), solved(of(factor))
+    assert modes_of(other) * factor == pytest.approx(modes_of(one), rel=1e-4)
+    assert other["impedance"] == pytest.approx(one["impedance"], rel=2e-3)
+
+
+def test_a_mirrored_grid_has_the_same_numbers(make):
+    """Rails change places, so sums are taken in another order."""
+    path = [(0, 0), (60, 0), (80, 40)]
+    one, other = (
+        solved(replace(make.strip([(x, sign * y) for x, y in path], 5, 22), model="grid"))
+        for sign in (1, -1)
+    )
+    assert other["impedance"] == pytest.approx(one["impedance"], rel=1e-6)
+    assert modes_of(other) == pytest.approx(modes_of(one), rel=1e-7)
+
+
+@pytest.mark.parametrize(
+    "model",
+    [
+        "line",
+        pytest.param(
+            "grid",
+            marks=pytest.mark.xfail(
+                strict=True,
+                reason="the sweep is fitted to the strips' total currents; those between rails, "
+                "which resonate and circulate by themselves, are off by the size of the largest",
+            ),
+        ),
+    ],
+)
+def test_currents_between_the_samples_are_those_of_a_direct_solution(make, model):
+    """Ten times the sweep's tolerance, which holds between two models of the fit."""
+    antenna = replace(make.straight(150, 1.5, 37.5), model=model)
+    grid = build_wires(antenna, plan_mesh([antenna]))
+    sweep = solve_module.sweep_currents(antenna, grid)
+    for frequency in np.linspace(0.35e9, 2.9e9, 7):
+        wanted = solve_module.solve_wires(
+            grid.wires, grid.radius_m, frequency, [grid.source, grid.probe]
+        )
+        found = sweep.model(np.array([frequency]))[0].reshape(2, -1)
+        for row, exact in zip(found, wanted, strict=True):
+            assert abs(row - exact).max() < 1e-2 * abs(exact).max()
+
+
+def test_rails_fed_off_centre_have_all_modes(make):
+    band = make.band(0.278352e9, 3.180067e9, 201)
+    antenna = replace(make.straight(150, 1.5, 37.5, band=band), model="grid")
+    assert list(solved(antenna)["mode_half_waves"][:3]) == [1, 2, 3]
+
+
+def tee(arm, make):
+    antenna = make.straight(2 * arm, 5, 25)
+    stem = Strip("stem", ((arm * 1e-3, 0.0), (arm * 1e-3, 0.03)), 0.005)
+    return replace(antenna, strips=(*antenna.strips, stem))
+
+
+def taper(arm, make):
+    antenna = make.strip([(-arm, 0), (0, 0), (arm, 0)], 12, arm)
+    (one,) = antenna.strips
+    return replace(antenna, strips=(replace(one, widths_m=(0.012, 0.004, 0.012)),))
+
+
+def bow(arm, make):
+    radius = arm / 1.2
+    angles = (np.arange(61) / 30 - 1) * 1.2
+    return make.strip([(radius * np.sin(a), radius * np.cos(a)) for a in angles], 6, arm)
+
+
+KINDS = ("straight", "off-centre", "ell", "vee", "tee", "bow")
+
+
+@pytest.mark.parametrize(
+    ("kind", "model"),
+    [
+        *((kind, "line") for kind in KINDS),
+        *((kind, "grid") for kind in KINDS[:4]),
+        *(pytest.param(k, "grid", marks=pytest.mark.long) for k in ("tee", "bow", "taper")),
+    ],
+)
+def test_modes_move_smoothly_with_a_length_swept_in_tenths_of_a_millimetre(make, kind, model):
     """One mesh stretched: what is left of a cubic is fit error, under 0.005 %."""
     makers = {
         "straight": lambda arm: make.dipole([(1, 0), (arm, 0)], [(-1, 0), (-arm, 0)], 8),
         "off-centre": lambda arm: make.straight(2 * arm, 6, 40),
         "ell": lambda arm: make.ell(arm, 5, 90, 25),
         "vee": lambda arm: make.vee(arm, 8, 60),
+        "tee": lambda arm: tee(arm, make),
+        "bow": lambda arm: bow(arm, make),
+        "taper": lambda arm: taper(arm, make),
     }
     arms = 60 + 0.1 * np.arange(13)
-    antennas = [makers[kind](arm) for arm in arms]
+    # A rail model of many unknowns need not be solved for more than its first two modes.
+    band = make.band(0.3e9, 3e9 if model == "line" else 2.6e9, 91)
+    antennas = [replace(makers[kind](arm), model=model, frequency=band) for arm in arms]
     plan = plan_mesh(antennas)
     modes = np.array([modes_of(solved(antenna, plan)) for antenna in antennas])
     assert modes.shape[1] >= 2

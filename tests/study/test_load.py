@@ -153,7 +153,7 @@ def test_every_problem_comes_at_once_and_in_order(complaints: Complaints) -> Non
         ('"copper"', '"coper"'),
         ('"0.4 GHz"', '"0 GHz"'),
         ("points = 211", "points = 1.5\nstep = 3"),
-        added="[carrier]\n",
+        added="[[feedline]]\n",
     )
     places = [": ".join(line.split(": ")[:2]).removeprefix("weir.toml:") for line in found]
     assert places == [
@@ -167,7 +167,7 @@ def test_every_problem_comes_at_once_and_in_order(complaints: Complaints) -> Non
         '31: frequency.start = "0 GHz"',
         "33: frequency.points = 1.5",
         "34: frequency.step = 3",
-        "35: carrier = { }",
+        "35: feedline = [{ }]",
     ]
     assert "is missing; give the study a title" in found[0]
     assert "do you mean `title`?" in found[1]
@@ -312,6 +312,11 @@ PIECES = (
             "\n[[strip]]\n",
             "\n[[measured]]\n",
             "\ncarrier = 1\n",
+            "\n[ground]\nkind = 'plane'\n",
+            "\n[placement]\nrotate_x = '90 deg'\n",
+            "\nsmooth = true\n",
+            "\narc = {}\n",
+            "\nrotate = '1 rad'\n",
             '\n[sampling]\nmethod = "list"\n',
             "from",
             "strip",

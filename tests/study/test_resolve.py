@@ -7,7 +7,7 @@ from collections.abc import Callable
 import pytest
 
 from simkit.study import Study
-from simkit.study.resolve import path_length
+from simkit.study.paths import path_length
 
 Loader = Callable[..., Study]
 Complaints = Callable[..., list[str]]

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 
 import pytest
 
 from simkit.errors import StudyError
 from simkit.study import load_study
+from simkit.study.model import Ground
 from simkit.study.starter import DEFAULT_TITLE, starter_text, write_starter
 
 
@@ -21,16 +23,23 @@ def test_it_loads_and_every_case_resolves(tmp_path: Path) -> None:
 
 
 def test_it_also_loads_with_every_suggested_line_switched_on(tmp_path: Path) -> None:
-    optional = ("# [sampling]", "# method", "# [[measured]]", "# file", "# arm")
-    lines = [
-        line.removeprefix("# ") if line.startswith(optional) else line
-        for line in starter_text().splitlines()
-    ]
+    # Examples of TOML are not followed by more words, as notes of several lines are.
+    optional = re.compile(r'# (\[+[a-z]+\]+|[a-z_]+ *= (\S+|"[^"]*"|[\[{].*[\]}])( +#.*)?)')
+    text = starter_text()
+    lines = [m[1] if (m := optional.fullmatch(line)) else line for line in text.splitlines()]
     text = "\n".join(lines).replace('["4 mm", "8 mm"]', '["4 mm", "8 mm", "9 mm"]')
     (tmp_path / "all.toml").write_text(text, encoding="utf-8")
     study = load_study(tmp_path / "all.toml")
     assert study.method == "list"
     assert study.measured[0].build == {"arm": 0.0754}
+    antenna = study.nominal()
+    assert [strip.name for strip in antenna.strips] == ["east", "west", "tapered", "sagging", "bow"]
+    assert antenna.carrier is not None
+    assert antenna.carrier.material == "ASA"
+    assert antenna.ground == Ground("earth", 13.0, 0.005)
+    assert antenna.placement.shift_m == (0.0, 0.0, 0.3)
+    assert antenna.converge
+    assert not any(case.refused for case in study.cases())
 
 
 @pytest.mark.parametrize(

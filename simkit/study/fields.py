@@ -1,0 +1,60 @@
+"""Entries of a study file that several tables have: angles, points and vectors, switches."""
+
+from __future__ import annotations
+
+import json
+
+from simkit.study.tables import Quantity, Table, toml_kind
+from simkit.study.units import LENGTH, PURE
+
+
+def read_angle(table: Table, name: str, missing: str = "") -> Quantity | None:
+    """Return an angle.
+
+    To expressions an angle is a pure number in radians. A number written alone is refused, because
+    who writes 30 means degrees.
+    """
+    angle = table.quantity(name, PURE, missing)
+    if angle is None or not _is_bare(angle):
+        return angle
+    number = angle.expression.text.strip().removesuffix(".0")
+    table.report(name, f'an angle takes its unit, as in "{number} deg" or "0.5 rad"')
+    return None
+
+
+def _is_bare(angle: Quantity) -> bool:
+    try:
+        return float(angle.expression.text) != 0
+    except ValueError:
+        return False
+
+
+def read_vector(
+    table: Table, name: str, axes: str, missing: str = ""
+) -> tuple[Quantity, ...] | None:
+    """Return one length per letter of `axes`, written as a list."""
+    raw = table.raw(name)
+    table.notes.fixed[table.key(name)] = "it is a list; sweep a name of [values] used in it"
+    if name not in table.data:
+        if missing:
+            table.report(name, f"is missing; {missing}")
+        return None
+    if not isinstance(raw, list) or len(raw) != len(axes):
+        example = json.dumps([f"{10 * (i + 1)} mm" for i in range(len(axes))])
+        table.report(name, f"write one length each for {', '.join(axes)}, as in {name} = {example}")
+        return None
+    found = [
+        table.notes.expression(item, LENGTH, (*table.path, name, i), f"{table.key(name)}.{axis}")
+        for i, (item, axis) in enumerate(zip(raw, axes, strict=True))
+    ]
+    complete = tuple(quantity for quantity in found if quantity is not None)
+    return complete if len(complete) == len(axes) else None
+
+
+def read_switch(table: Table, name: str) -> bool:
+    """Return true or false; false if the key is left out or after a problem."""
+    raw = table.raw(name)
+    if name in table.data and not isinstance(raw, bool):
+        table.report(name, f"must be true or false, without quotes, not {toml_kind(raw)}")
+        return False
+    return raw is True
