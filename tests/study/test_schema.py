@@ -44,11 +44,6 @@ def test_tables_of_later_versions_are_refused(
         ('width = "width"', 'width = "width"\narc = 1', "write the arc as points"),
         ('width = "width"', 'width = ["1 mm", "2 mm"]', "vary along a strip are not available"),
         ("[connector]", '[model]\nkind = "grid"\n[connector]', '"grid" is not available'),
-        (
-            "[connector]",
-            '[sampling]\nmethod="sobol"\nsamples=9\n[connector]',
-            "not available in th",
-        ),
     ],
 )
 def test_keys_of_later_versions_are_refused(
