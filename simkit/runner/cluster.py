@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import logging
 import time
 from collections.abc import Callable, Mapping
@@ -45,7 +46,7 @@ class ClusterPool:
         self._say = say
         self._versions = program_versions()
         self._size, self._looked = 0, 0.0
-        self._settings = set_up_dask({})
+        self._settings = self._quietly()
         try:
             self._client = self._connect()
             self._wait_for_workers()
@@ -55,6 +56,16 @@ class ClusterPool:
             self.close()
             raise
         self._say(f"{self.size} workers at {address}{self._dashboard()}")
+
+    @staticmethod
+    def _quietly() -> contextlib.ExitStack:
+        """Settings for dask, and no tracebacks of its own between the lines of the run."""
+        settings = contextlib.ExitStack()
+        settings.enter_context(set_up_dask({}))
+        from distributed.utils import silence_logging_cmgr
+
+        settings.enter_context(silence_logging_cmgr(logging.CRITICAL))
+        return settings
 
     def _connect(self) -> Any:
         from distributed import Client
@@ -126,7 +137,7 @@ class ClusterPool:
         except (OSError, DaskTimeoutError):
             logging.getLogger(__name__).debug("the scheduler was slow", exc_info=True)
         finally:
-            self._settings.__exit__(None, None, None)
+            self._settings.close()
 
 
 def do_checked_block(function: str, job: BlockJob, versions: Mapping[str, str]) -> Receipt:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from pathlib import Path
 
 from simkit.errors import StoreError
 from simkit.runner.prepare import Prepared
@@ -110,6 +111,7 @@ class ResultsFolder:
         for pattern in ("store*.zarr.part", f"{STUDY_NAME}.part"):
             for part in self.path.glob(pattern):
                 remove(part)
+        self._drop_half_written()
         if isinstance(self.path, RemotePath):
             # A swap is a copy there; the new store is whole until the copy is.
             if store_exists(self.unfinished) and not store_exists(self.store):
@@ -144,7 +146,14 @@ class ResultsFolder:
             flush([self.path])
             remove(self.old)
             self._drop_left()
+        self._drop_half_written()
         self.keep_text(text)
+
+    def _drop_half_written(self) -> None:
+        """Remove files that workers were writing aside when they were killed."""
+        if isinstance(self.path, Path):
+            for part in self.path.glob("store*.zarr/*/*.partial"):
+                remove(part)
 
     def keep_text(self, text: str) -> None:
         """Copy the study file into the folder."""

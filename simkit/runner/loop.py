@@ -210,7 +210,7 @@ def _worker_trouble(error: Exception) -> Exception:
     if name in ("FutureCancelledError", "CancelledError", "CommClosedError"):
         return SimkitError(
             "the scheduler of the run is gone; what is stored is kept: start it again, then give "
-            f"the same command again ({error})"
+            f"the same command again ({str(error).splitlines()[0]})"
         )
     if isinstance(error, ModuleNotFoundError):
         return SimkitError(

@@ -25,12 +25,12 @@ from simkit.store.schema import Status
 from simkit.store.write import StoreFile
 
 try:
-    from .machinery import BLOCK, WORKERS, Cluster, Site, differences, end, kill, wait_for
-    from .machinery import write_study
-except ImportError:
-    from machinery import BLOCK, WORKERS, Cluster, Site, differences, end, kill, wait_for
-    from machinery import write_study
+    from . import machinery
+except ImportError:  # as a script
+    import machinery
 
+BLOCK, WORKERS = machinery.BLOCK, machinery.WORKERS
+Cluster, Site = machinery.Cluster, machinery.Site
 CASES = 60
 VICTIMS = ("client", "worker", "client of a cluster", "worker of a cluster", "scheduler")
 
@@ -99,7 +99,7 @@ def killed_run(folder: Path, victim: str, moment: float, calm: Path, figures: Fi
     figures.lost += len(set(kept) - now) + (CASES - len(now))
     figures.stored_cases_solved_again += sum(tries[site.key(case)] > 1 for case in kept)
     figures.solved_twice.append(sum(tries.values()) - CASES)
-    figures.files_unlike += len(differences(site.store, calm))
+    figures.files_unlike += len(machinery.differences(site.store, calm))
 
 
 def _strike(
@@ -107,15 +107,17 @@ def _strike(
 ) -> list[int]:
     """Kill at a part of the run that is drawn; return what is stored then."""
     # Before the first block there is nothing to lose: moments count from it on.
-    assert wait_for(lambda: site.settled() or process.poll() is not None), site.output(process)
+    assert machinery.wait_for(lambda: site.settled() or process.poll() is not None), site.output(
+        process
+    )
     goal = max(1, int(moment * (CASES - 4 * BLOCK)))
-    wait_for(lambda: len(site.settled()) >= goal or process.poll() is not None)
+    machinery.wait_for(lambda: len(site.settled()) >= goal or process.poll() is not None)
     time.sleep(moment * 0.137 % 0.05)
     if victim.startswith("worker"):
         kept = site.settled()
-        kill(cluster.worker_process(0) if cluster else _own_worker(site))
+        machinery.kill(cluster.worker_process(0) if cluster else _own_worker(site))
     else:
-        kill(cluster.scheduler.pid if cluster and victim == "scheduler" else process.pid)
+        machinery.kill(cluster.scheduler.pid if cluster and victim == "scheduler" else process.pid)
         kept = site.settled()
     return kept
 
@@ -151,7 +153,7 @@ def poisoned(folder: Path) -> str:
     bad = {7: 3, 20: 5, 33: 7, 34: 9, 50: 3, 61: 5, 62: 7, 80: 9, 95: 3, 109: 9}
     for case, width in bad.items():
         widths[case] = width
-    write_study(site.study, widths)
+    machinery.write_study(site.study, widths)
     process = site.start(str(WORKERS), limit_s="3")
     process.wait()
     assert "stopped: no" in site.output(process), site.output(process)
@@ -205,7 +207,7 @@ def full_disk(folder: Path, calm: Path) -> str:
         process.wait()
         assert "stopped: no" in site.output(process), site.output(process)
         again = sum(site.tries()[site.key(case)] > 1 for case in kept)
-        unlike = len(differences(site.store, calm))
+        unlike = len(machinery.differences(site.store, calm))
     finally:
         subprocess.run(["umount", str(site.out)], check=True)
     return (

@@ -1,4 +1,4 @@
-"""What a campaign of faults needs: studies, runs, clusters of processes, and a look at the store."""
+"""What a campaign of faults needs: studies, runs, clusters of processes, a look at the store."""
 
 from __future__ import annotations
 
@@ -70,6 +70,7 @@ class Site:
     folder: Path
     cases: int
     seconds: float = 0.05
+    gated: bool = False
     started: list[subprocess.Popen[str]] = field(default_factory=list)
 
     def __post_init__(self) -> None:
@@ -86,7 +87,11 @@ class Site:
         path = self.out / "ford" / "log.txt"
         return path.read_text() if path.exists() else ""
 
-    def start(self, where: str, *, limit_s: str = "20", **env: str) -> subprocess.Popen[str]:
+    def open_gate(self) -> None:
+        """Let the cases go on that wait at the gate."""
+        (self.folder / "gate").touch()
+
+    def start(self, where: str, *, limit_s: str = "240", **env: str) -> subprocess.Popen[str]:
         """Start a run in its own process group; `where` is a number of workers or an address."""
         return self._popen(
             [str(RUNNER_TESTS / "drive.py"), str(self.study), str(self.out), where, limit_s], env
@@ -103,6 +108,8 @@ class Site:
             "FAKE_MARKS": str(self.folder / "marks"),
             "FAKE_BLOCK": str(BLOCK),
         }
+        if self.gated:
+            settings["FAKE_GATE"] = str(self.folder / "gate")
         number = len(self.started)
         with (self.folder / f"output-{number}.txt").open("w") as output:
             process = subprocess.Popen(

@@ -47,6 +47,7 @@ def solve(antenna: Antenna, plan: Plan) -> CaseResult:
     length_m, width_mm = strip.path_m[-1][0], round(strip.width_m * 1e3)
     leave_mark(length_m)
     time.sleep(float(os.environ.get("FAKE_SECONDS", "0")))
+    wait_at_the_gate()
     misbehave(width_mm)
     arrays = numbers(length_m, antenna.frequency.points)
     if width_mm == MISFIT_MM:
@@ -58,6 +59,13 @@ def leave_mark(length_m: float) -> None:
     """One file per attempt, named after the case."""
     if folder := os.environ.get("FAKE_MARKS"):
         Path(folder, f"{length_m:.6f}-{time.time_ns()}-{os.getpid()}").touch()
+
+
+def wait_at_the_gate() -> None:
+    """With FAKE_GATE set, go on after nine attempts only when there is a file of that name."""
+    if gate := os.environ.get("FAKE_GATE"):
+        while len(list(Path(os.environ["FAKE_MARKS"]).iterdir())) > 9 and not Path(gate).exists():
+            time.sleep(0.05)
 
 
 def misbehave(width_mm: int) -> None:

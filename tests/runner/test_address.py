@@ -1,4 +1,4 @@
-"""Results at an address: a file system in memory, and an S3-compatible server if it is installed."""
+"""Results at an address: in memory, and at an S3-compatible server if one is installed."""
 
 from __future__ import annotations
 
@@ -123,10 +123,10 @@ def test_a_store_whose_writing_fails_is_said_and_continued(go, make_study, monke
     def broken(self, block, content):
         if block == 1:
             with self._reached():
-                raise RuntimeErrorOfTheCloud
+                raise CloudError
         whole(self, block, content)
 
-    class RuntimeErrorOfTheCloud(Exception):
+    class CloudError(Exception):
         pass
 
     monkeypatch.setattr(StoreFile, "write_block", broken)

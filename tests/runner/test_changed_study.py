@@ -208,6 +208,7 @@ def test_a_swap_broken_off_is_finished_by_the_next_run(go, make_study, marks, mo
     store = folder / "store.zarr"
     shutil.copytree(store, folder / "store.old.zarr")
     (folder / "store.new.zarr.part").mkdir()
+    (store / "gain" / "c.0.0.0.0123abc.partial").write_text("half")
     if moment == "before the new one is moved":
         store.rename(folder / "store.new.zarr")
     assert go(study).reused == 2
