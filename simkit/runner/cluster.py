@@ -11,7 +11,7 @@ from typing import Any
 from simkit.engine.child import interrupts_held
 from simkit.errors import SimkitError
 from simkit.runner.identity import program_versions
-from simkit.runner.pool import do_block, set_up_dask
+from simkit.runner.pool import do_block, packed, set_up_dask
 from simkit.runner.work import BlockJob, Receipt
 
 CONNECT_S = 20.0
@@ -55,7 +55,7 @@ class ClusterPool:
         except BaseException:
             self.close()
             raise
-        self._say(f"{self.size} workers at {address}{self._dashboard()}")
+        self._say(f"{_workers_text(self.size, address)}{self._dashboard()}")
 
     @staticmethod
     def _quietly() -> contextlib.ExitStack:
@@ -116,14 +116,14 @@ class ClusterPool:
             except (OSError, TimeoutError):
                 now = self._size  # the blocks in flight will tell that the scheduler is gone
             if self._looked and now != self._size:
-                self._say(f"{now} workers at {self._address}")
+                self._say(_workers_text(now, self._address))
             self._size, self._looked = now, time.monotonic()
         return max(1, self._size)
 
     def submit(self, job: BlockJob) -> Any:
         """Start a block some time soon."""
         return self._client.submit(
-            do_checked_block, self._function, job, self._versions, pure=False
+            do_checked_block, self._function, packed(job), self._versions, pure=False
         )
 
     def close(self) -> None:
@@ -140,7 +140,11 @@ class ClusterPool:
             self._settings.close()
 
 
-def do_checked_block(function: str, job: BlockJob, versions: Mapping[str, str]) -> Receipt:
+def _workers_text(count: int, address: str) -> str:
+    return f"{count} {'worker' if count == 1 else 'workers'} at {address}"
+
+
+def do_checked_block(function: str, job: bytes, versions: Mapping[str, str]) -> Receipt:
     """Task of a worker: one block, unless the worker joined with other versions meanwhile."""
     if program_versions() != versions:
         from distributed import Reschedule, get_worker

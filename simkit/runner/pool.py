@@ -5,8 +5,10 @@ from __future__ import annotations
 import logging
 import multiprocessing
 import os
+import pickle
 import tempfile
 import threading
+import zlib
 from concurrent.futures import Future, ThreadPoolExecutor
 from typing import Any, Protocol
 
@@ -103,7 +105,7 @@ class DaskPool:
 
     def submit(self, job: BlockJob) -> Any:
         """Start a block some time soon."""
-        return self._client.submit(do_block, self._function, job, pure=False)
+        return self._client.submit(do_block, self._function, packed(job), pure=False)
 
     def close(self) -> None:
         """End all workers."""
@@ -128,11 +130,18 @@ def set_up_dask(more: dict[str, Any]) -> Any:
         "distributed.logging.tornado": "critical",
         "distributed.admin.large-graph-warning-threshold": "1 GB",
         "distributed.comm.timeouts.connect": "60s",
+        # The scheduler remembers what it sent, a thousand blocks of work by default.
+        "distributed.admin.low-level-log-length": 20,
     }
     return dask.config.set(settings | more)
 
 
-def do_block(function: str, job: BlockJob) -> Receipt:
+def packed(job: BlockJob) -> bytes:
+    """A job as the scheduler shall see it: small, and nothing it looks into."""
+    return zlib.compress(pickle.dumps(job), 1)
+
+
+def do_block(function: str, job: bytes) -> Receipt:
     """Task of a dask worker: one block, with the `Worker` this thread of it keeps."""
     from distributed import get_worker
 
@@ -142,7 +151,7 @@ def do_block(function: str, job: BlockJob) -> Receipt:
     if worker is None:
         may_have_children()
         worker = kept.worker = Worker(function)
-    receipt: Receipt = worker.do(job)
+    receipt: Receipt = worker.do(pickle.loads(zlib.decompress(job)))
     return receipt
 
 
