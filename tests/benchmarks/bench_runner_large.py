@@ -2,7 +2,7 @@
 
     python tests/benchmarks/bench_runner_large.py [CASES] [WORKERS]
 
-A strip of 150 mm x 6 mm with 51 segments and 281 frequencies; the stand-in fills the large
+A strip of 150 mm x 6 mm with 51 segments and 2801 frequencies; the stand-in fills the large
 variables and costs next to nothing. Memory is sampled while the run goes on, in the process that
 leads it and in the workers; nothing is asserted.
 """
@@ -44,7 +44,7 @@ at = "arm/2"
 [frequency]
 start = "0.1 GHz"
 stop = "2.9 GHz"
-points = 281
+points = 2801
 
 [sweep]
 arm = {{ from = "140 mm", to = "160 mm" }}
