@@ -2,18 +2,32 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import click
 
+
+class PathOrAddress(click.Path):
+    """A path as click checks it, or an fsspec address (``s3://bucket/folder``) as it stands."""
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> Any:
+        """Return the text; only paths can be checked."""
+        if isinstance(value, str) and "://" in value:
+            return value
+        return super().convert(value, param, ctx)
+
+
 STUDY = click.Path(exists=True, dir_okay=False)
-RESULTS = click.Path(exists=True, file_okay=False)
+RESULTS = PathOrAddress(exists=True, file_okay=False)
 
 study_argument = click.argument("study", type=STUDY, metavar="STUDY")
 results_argument = click.argument("results", type=RESULTS, metavar="DIR")
 results_option = click.option(
     "--results",
-    type=click.Path(file_okay=False),
+    type=PathOrAddress(file_okay=False),
     metavar="DIR",
-    help="Folder that holds the results folders; results/ if left out.",
+    help="Folder, or address as s3://bucket/folder, that holds the results folders; results/ if "
+    "left out.",
 )
 json_option = click.option("--json", "as_json", is_flag=True, help="Print JSON, SI units.")
 csv_option = click.option("--csv", "as_csv", is_flag=True, help="Print CSV, SI units.")

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -14,6 +16,7 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from simkit.runner import RunSummary
+    from simkit.store.remote import Place
     from simkit.study import Study
 
 
@@ -24,32 +27,79 @@ if TYPE_CHECKING:
     "--workers", type=click.IntRange(min=1), metavar="N", help="Processes; one a core if left out."
 )
 @click.option("--fresh", is_flag=True, help="Solve every case again.")
-def command(study: str, results: str | None, workers: int | None, fresh: bool) -> None:
+@click.option("--retry", is_flag=True, help="Solve the cases again that failed or were timed out.")
+@click.option(
+    "--until",
+    metavar="HH:MM",
+    help="Start nothing new from this hour on; the same command goes on.",
+)
+@click.option(
+    "--scheduler",
+    metavar="ADDRESS",
+    help="Use the workers of a dask cluster, tcp://host:port, in place of processes here.",
+)
+def command(
+    study: str,
+    results: str | None,
+    workers: int | None,
+    fresh: bool,
+    retry: bool,
+    until: str | None,
+    scheduler: str | None,
+) -> None:
     """Solve every case of STUDY, draw the plots, compare with the measured files it names.
 
     What is solved already is not solved again: after any interruption give the same command. The
-    results are in results/NAME, NAME being that of the study file. The exit status is 1 if a case
-    has no solution or the run was stopped.
+    results are in results/NAME, NAME being that of the study file. Ctrl-C finishes what is in hand,
+    Ctrl-C again stops at once. The exit status is 1 if a case has no solution or the run was
+    stopped.
 
     \b
     Example:
       simkit run studies/creek_gauge.toml
+      simkit run studies/creek_gauge.toml --until 07:00
+      simkit run studies/creek_gauge.toml --scheduler tcp://192.168.1.20:8786
     """
+    if scheduler is not None and workers is not None:
+        raise click.UsageError("--workers is for processes here; a cluster has its own.")
     from simkit.runner import run
     from simkit.store import open_results
     from simkit.study import load_study
 
     loaded = load_study(study)
-    summary = run(loaded, results=results, workers=workers, fresh=fresh)
+    summary = run(
+        loaded,
+        results=results,
+        workers=workers,
+        fresh=fresh,
+        retry=retry,
+        until=until,
+        scheduler=scheduler,
+    )
     dataset = open_results(summary.results_dir)
     show_remarks(dataset, loaded)
     trouble = False
     if summary.complete:
-        draw(dataset, loaded, summary.results_dir)
-        trouble = show_comparisons(dataset, loaded, summary.results_dir)
+        with drawing_folder(summary.results_dir) as folder:
+            draw(dataset, loaded, folder)
+            trouble = show_comparisons(dataset, loaded, folder)
     click.echo(end_text(summary, study))
-    if trouble or not summary.ok:
+    if trouble or not summary.ok or summary.stopped:
         raise click.exceptions.Exit(1)
+
+
+@contextmanager
+def drawing_folder(results: Place) -> Iterator[Path]:
+    """The folder pictures are drawn into; those for an address are sent there afterwards."""
+    if isinstance(results, Path):
+        yield results
+        return
+    import tempfile
+
+    with tempfile.TemporaryDirectory(prefix="simkit-") as folder:
+        yield Path(folder)
+        results.upload_tree(Path(folder))
+    click.echo(f"  ... sent to {results}")
 
 
 def show_remarks(dataset: xr.Dataset, study: Study) -> None:
@@ -98,13 +148,14 @@ def end_text(summary: RunSummary, study: str) -> str:
     counts = ", ".join(f"{n} {status.label}" for status, n in summary.counts.items() if n)
     results = summary.results_dir
     lines = ["", labelled("Cases", f"{counts} ({summary.reused} reused)")]
-    if not summary.complete:
-        return "\n".join([*lines, labelled("Next", f"simkit run {study} (continues)")])
+    if summary.stopped or not summary.complete:
+        why = f"stopped {summary.stopped}; the same command continues" if summary.stopped else ""
+        return "\n".join([*lines, labelled("Next", why or f"simkit run {study} (continues)")])
     return "\n".join(
         [
             *lines,
             labelled("Results", str(results)),
-            labelled("Plots", str(results / "plots")),
+            labelled("Plots", f"{results}/plots"),
             labelled("Next", f"simkit modes {results}"),
         ]
     )

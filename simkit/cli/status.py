@@ -15,6 +15,7 @@ from simkit.errors import StudyError
 if TYPE_CHECKING:
     import xarray as xr
 
+    from simkit.runner.overview import RunStatus, StoreCounts
     from simkit.study import Study
 
 _SHOWN = 20
@@ -27,7 +28,8 @@ _SHOWN = 20
 def command(results: str, as_json: bool, as_csv: bool) -> None:
     """Count the cases in DIR by how they stand, and say why some have no solution.
 
-    Works while a run is going on.
+    Works at any time, also while a run is going on: then it says who is running, how many cases a
+    second, and about how long it will take.
 
     \b
     Example:
@@ -39,23 +41,13 @@ def command(results: str, as_json: bool, as_csv: bool) -> None:
     from simkit.store import open_results
 
     state = status(results)
-    dataset = open_results(results)
-    remarks = remarked_cases(dataset, _copied_study(results))
+    remarks = []
+    if state.current is not None:
+        remarks = remarked_cases(open_results(results), _copied_study(results))
     if form == "csv":
         emit(csv_text(remarks))
     elif form == "json":
-        current = state.current
-        emit(
-            json_text(
-                {
-                    "title": current.title,
-                    "cases": current.cases,
-                    "counts": {code.label: count for code, count in current.counts.items()},
-                    "running": bool(state.running),
-                    "remarks": remarks,
-                }
-            )
-        )
+        emit(json_text(status_row(state) | {"remarks": remarks}))
     else:
         emit("\n".join([*status_lines(state), *remarks_lines(remarks)]))
 
@@ -66,6 +58,25 @@ def _copied_study(results: str) -> Study | None:
         return study_of(results)
     except StudyError:
         return None
+
+
+def status_row(state: RunStatus) -> dict[str, Any]:
+    """Return the state of a results folder as plain data; a part that is not there is None."""
+    current = state.current
+    return {
+        "title": current.title if current else None,
+        "cases": current.cases if current else None,
+        "counts": _counts(current),
+        "unfinished": _counts(state.unfinished),
+        "running": bool(state.running),
+        "holder": state.running or None,
+        "pace": state.pace or None,
+        "last_event": state.last_event or None,
+    }
+
+
+def _counts(store: StoreCounts | None) -> dict[str, int] | None:
+    return {code.label: n for code, n in store.counts.items()} if store is not None else None
 
 
 def remarked_cases(dataset: xr.Dataset, study: Study | None = None) -> list[dict[str, Any]]:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-import os
 from collections.abc import Sequence
 from itertools import chain
 from typing import TYPE_CHECKING, Any
@@ -29,6 +28,7 @@ if TYPE_CHECKING:
     from simkit.study import Study
 
 _SHOWN_PROBLEMS = 10
+_COMBINED = {"grid": "every value with every other", "list": "values in step"}
 _MOST_LOOKED_AT = 2000
 """Cases whose wires are laid out for the check, a few milliseconds each."""
 _TIMED_SOLVE_LIMIT_S = 600.0
@@ -67,8 +67,13 @@ def sweep_text(study: Study) -> str:
         shown = [_value(study, swept.name, value) for value in swept.values]
         if len(shown) > 8:
             shown = [*shown[:3], "...", shown[-1]]
-        lines.append(f"{swept.name}: {', '.join(shown)} ({len(swept.values)} values)")
-    how = "every value with every other" if study.method == "grid" else "values in step"
+        if study.method in _COMBINED:
+            lines.append(f"{swept.name}: {', '.join(shown)} ({len(swept.values)} values)")
+        else:
+            ends = (min(swept.values), max(swept.values))
+            low, high = (_value(study, swept.name, value) for value in ends)
+            lines.append(f"{swept.name}: samples from {low} to {high}")
+    how = _COMBINED.get(study.method, f"{study.method} samples")
     return "\n".join([*lines, f"{study.case_count} cases, {how}"])
 
 
@@ -84,8 +89,9 @@ def _in_brackets(study: Study, values: dict[str, float], before: str = "") -> st
 def mesh_of(study: Study) -> MeshPlan:
     """Return the mesh all cases of a study share."""
     from simkit.geometry import plan_mesh
+    from simkit.runner.prepare import mesh_antennas
 
-    return plan_mesh(case.antenna for case in study.cases() if case.antenna is not None)
+    return plan_mesh(mesh_antennas(study))
 
 
 def looked_at(study: Study) -> range:
@@ -261,16 +267,20 @@ def _in_child(function: str, antenna: Antenna, plan: MeshPlan) -> Any:
 
 def cost_text(study: Study, wires: WireGrid, result: CaseResult) -> str:
     """Return the estimates of time and disk from one timed solution."""
-    from simkit.store import estimate_bytes
+    from simkit.runner.plan import block_size_for
+    from simkit.runner.pool import core_count
+    from simkit.store.size import case_bytes, estimate_bytes
 
-    workers = os.cpu_count() or 1
+    workers = core_count()
     antenna = study.nominal()
-    size = estimate_bytes(
-        cases=study.case_count,
-        frequencies=antenna.frequency.points,
-        strips=len(antenna.strips),
-        segments=wires.segments,
-    )
+    sizes = {
+        "frequencies": antenna.frequency.points,
+        "strips": len(antenna.strips),
+        "segments": wires.segments,
+    }
+    cases = study.case_count
+    block = block_size_for(result.seconds, cases, workers, case_bytes(**sizes))
+    size = estimate_bytes(cases=cases, block_size=block, **sizes)
     total_s = _START_S + result.seconds * math.ceil(study.case_count / workers)
     one = f"{duration_text(result.seconds)}, {result.solves} engine solves: {result.status.label}"
     if result.reason:
@@ -281,7 +291,7 @@ def cost_text(study: Study, wires: WireGrid, result: CaseResult) -> str:
             labelled(
                 "The run",
                 f"about {duration_text(total_s)} with {workers} workers, "
-                f"about {size_text(size)} of disk",
+                f"about {size_text(size)} of disk in {math.ceil(cases / block)} blocks",
             ),
         ]
     )

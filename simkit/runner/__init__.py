@@ -9,7 +9,8 @@ from simkit.runner.result import CaseResult, InternalError, RunSummary
 
 if TYPE_CHECKING:
     from simkit.runner.overview import RunStatus, status
-    from simkit.runner.session import run, summary_lines
+    from simkit.runner.said import summary_lines
+    from simkit.runner.session import run
 
 __all__ = [
     "CaseResult",
@@ -25,7 +26,7 @@ _HOME = {
     "RunStatus": "simkit.runner.overview",
     "run": "simkit.runner.session",
     "status": "simkit.runner.overview",
-    "summary_lines": "simkit.runner.session",
+    "summary_lines": "simkit.runner.said",
 }
 
 

@@ -2,15 +2,14 @@
 
 from __future__ import annotations
 
-import os
-import shutil
 from dataclasses import dataclass
 from pathlib import Path
 
 from simkit.errors import StoreError
 from simkit.runner.prepare import Prepared
-from simkit.store.files import flush, replace_text
+from simkit.store.files import flush, move, remove, replace_text, store_exists
 from simkit.store.read import STORE_NAME, UNFINISHED_NAME
+from simkit.store.remote import Place, RemotePath
 from simkit.store.write import read_attrs
 
 OLD_NAME = "store.old.zarr"
@@ -24,18 +23,18 @@ class Target:
 
     Attributes
     ----------
-    path : Path
+    path : Path or RemotePath
     exists : bool
         A store of the same study is continued.
-    sources : tuple of Path
+    sources : tuple of Path or RemotePath
         Older stores whose unchanged cases are taken over.
     takeover : bool
         Whether they may be.
     """
 
-    path: Path
+    path: Place
     exists: bool
-    sources: tuple[Path, ...]
+    sources: tuple[Place, ...]
     takeover: bool
 
 
@@ -44,11 +43,11 @@ class ResultsFolder:
 
     Parameters
     ----------
-    path : Path
+    path : Path or RemotePath
         ``results/<stem of the study file>``.
     """
 
-    def __init__(self, path: Path) -> None:
+    def __init__(self, path: Place) -> None:
         self.path = path
         self.store = path / STORE_NAME
         self.unfinished = path / UNFINISHED_NAME
@@ -82,7 +81,7 @@ class ResultsFolder:
             The folder holds a study with another title, or one that cannot be read.
         """
         for store in (self.store, self.unfinished, self.old):
-            if not store.exists():
+            if not store_exists(store):
                 continue
             try:
                 found = read_attrs(store).get("title")
@@ -111,61 +110,69 @@ class ResultsFolder:
         """Finish what a killed run left half done: a swap, a layout."""
         for pattern in ("store*.zarr.part", f"{STUDY_NAME}.part"):
             for part in self.path.glob(pattern):
-                _remove(part)
+                remove(part)
+        self._drop_half_written()
+        if isinstance(self.path, RemotePath):
+            # A swap is a copy there; the new store is whole until the copy is.
+            if store_exists(self.unfinished) and not store_exists(self.store):
+                move(self.unfinished, self.store)
+            return
         if self.old.exists() and not self.store.exists():
-            os.rename(self.unfinished if self.unfinished.exists() else self.old, self.store)
-        _remove(self.old)
+            move(self.unfinished if self.unfinished.exists() else self.old, self.store)
+        remove(self.old)
 
     def choose(self, prepared: Prepared, *, fresh: bool) -> Target:
         """Decide which store is written, moving nothing but stores that are in the way."""
         if fresh:
-            _remove(self.unfinished)
+            remove(self.unfinished)
             self._drop_left()
         else:
             for path in (self.unfinished, self.store):
-                if path.exists() and self._identity(path) == prepared.identity:
+                if store_exists(path) and self._identity(path) == prepared.identity:
                     takeover = path == self.unfinished and bool(read_attrs(path).get("takeover"))
                     return Target(path, True, self._sources() if takeover else (), takeover)
-        if not self.store.exists():
+        if not store_exists(self.store):
             return Target(self.store, False, (), takeover=False)
-        if self.unfinished.exists():
-            os.rename(self.unfinished, self._free_left_name())
+        if store_exists(self.unfinished):
+            move(self.unfinished, self._free_left_name())
         return Target(self.unfinished, False, () if fresh else self._sources(), takeover=not fresh)
 
     def finish(self, target: Target, text: str) -> None:
         """Put a complete store in its place and keep the study's text beside it."""
         if target.path != self.store:
-            os.rename(self.store, self.old)
-            os.rename(target.path, self.store)
+            if not isinstance(self.path, RemotePath):
+                move(self.store, self.old)
+            move(target.path, self.store)
             flush([self.path])
-            _remove(self.old)
+            remove(self.old)
             self._drop_left()
+        self._drop_half_written()
         self.keep_text(text)
+
+    def _drop_half_written(self) -> None:
+        """Remove files that workers were writing aside when they were killed."""
+        if isinstance(self.path, Path):
+            for part in self.path.glob("store*.zarr/*/*.partial"):
+                remove(part)
 
     def keep_text(self, text: str) -> None:
         """Copy the study file into the folder."""
         replace_text(self.study_copy, text)
 
     @staticmethod
-    def _identity(path: Path) -> str:
+    def _identity(path: Place) -> str:
         return str(read_attrs(path).get("identity"))
 
-    def _sources(self) -> tuple[Path, ...]:
-        return (self.store, *sorted(self.path.glob(LEFT_PATTERN)))
+    def _sources(self) -> tuple[Place, ...]:
+        left: list[Place] = sorted(self.path.glob(LEFT_PATTERN))
+        return (self.store, *left)
 
-    def _free_left_name(self) -> Path:
+    def _free_left_name(self) -> Place:
         number = 1
-        while (path := self.path / LEFT_PATTERN.replace("*", str(number))).exists():
+        while store_exists(path := self.path / LEFT_PATTERN.replace("*", str(number))):
             number += 1
         return path
 
     def _drop_left(self) -> None:
         for path in self.path.glob(LEFT_PATTERN):
-            _remove(path)
-
-
-def _remove(path: Path) -> None:
-    if path.is_dir():
-        shutil.rmtree(path)
-    else:
-        path.unlink(missing_ok=True)
+            remove(path)

@@ -9,6 +9,9 @@ from dataclasses import asdict
 from importlib.metadata import PackageNotFoundError, version
 from typing import Any
 
+import numpy as np
+from numpy.typing import NDArray
+
 from simkit.store.layout import SweptColumn, layout_hash
 from simkit.study.model import Case
 
@@ -25,6 +28,18 @@ def engine_version() -> str:
         return version("PyNEC")
     except PackageNotFoundError:
         return "none"
+
+
+def program_versions() -> dict[str, str]:
+    """What must be the same wherever cases of one run are solved."""
+    from simkit import __version__
+
+    return {
+        "simkit": __version__,
+        "model": MODEL_VERSION,
+        "engine": engine_version(),
+        "store": layout_hash(),
+    }
 
 
 def canonical_json(value: Any) -> str:
@@ -55,7 +70,13 @@ def case_key(case: Case, study_part: str) -> str:
     return sha256(f"{inputs}\n{study_part}")
 
 
-def study_identity(keys: Sequence[str], swept: Sequence[SweptColumn], shape: Sequence[int]) -> str:
+def study_identity(
+    keys: NDArray[np.bytes_], swept: Sequence[SweptColumn], shape: Sequence[int]
+) -> str:
     """Hash of a whole run: equal if the store of one run can be continued by another."""
-    columns = [[c.name, c.units, c.values.tolist()] for c in swept]
-    return sha256(canonical_json([list(keys), columns, list(shape), layout_hash()]))
+    digest = hashlib.sha256(keys.tobytes())
+    for column in swept:
+        digest.update(canonical_json([column.name, column.units]).encode())
+        digest.update(np.asarray(column.values, dtype="<f8").tobytes())
+    digest.update(canonical_json([list(shape), layout_hash()]).encode())
+    return digest.hexdigest()

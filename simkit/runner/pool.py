@@ -3,8 +3,12 @@
 from __future__ import annotations
 
 import logging
+import multiprocessing
 import os
+import pickle
 import tempfile
+import threading
+import zlib
 from concurrent.futures import Future, ThreadPoolExecutor
 from typing import Any, Protocol
 
@@ -18,7 +22,9 @@ PER_WORKER = 2
 class Pool(Protocol):
     """Takes blocks, hands back futures with `add_done_callback` and `result`."""
 
-    size: int
+    @property
+    def size(self) -> int:
+        """Workers there are now; may change."""
 
     def submit(self, job: BlockJob) -> Any:
         """Start a block some time soon."""
@@ -70,24 +76,14 @@ class DaskPool:
         self._function = function
         # One place for all runs: dask itself clears there what killed runs have left.
         self._scratch = os.path.join(tempfile.gettempdir(), f"simkit-{os.getuid()}")
-        self._settings = self._set_up_dask()
+        self._settings = set_up_dask(
+            {
+                # A worker that is a daemon may have no child process.
+                "distributed.worker.daemon": False,
+                "temporary-directory": self._scratch,
+            }
+        )
         self._cluster, self._client = self._start(workers)
-
-    def _set_up_dask(self) -> Any:
-        """Settings that hold as long as the pool: workers that die are started anew under them."""
-        import dask
-        import distributed  # noqa: F401  its own defaults must be there before, to be there after
-
-        settings = {
-            # A worker that is a daemon may have no child process.
-            "distributed.worker.daemon": False,
-            "distributed.logging.distributed": "critical",
-            "distributed.logging.tornado": "critical",
-            "distributed.admin.large-graph-warning-threshold": "1 GB",
-            "distributed.comm.timeouts.connect": "60s",
-            "temporary-directory": self._scratch,
-        }
-        return dask.config.set(settings)
 
     def _start(self, workers: int) -> tuple[Any, Any]:
         from distributed import Client, LocalCluster
@@ -109,7 +105,7 @@ class DaskPool:
 
     def submit(self, job: BlockJob) -> Any:
         """Start a block some time soon."""
-        return self._client.submit(do_block, self._function, job, pure=False)
+        return self._client.submit(do_block, self._function, packed(job), pure=False)
 
     def close(self) -> None:
         """End all workers."""
@@ -124,16 +120,49 @@ class DaskPool:
             self._settings.__exit__(None, None, None)
 
 
-def do_block(function: str, job: BlockJob) -> Receipt:
-    """Task of a dask worker: one block, with the `Worker` this process keeps."""
+def set_up_dask(more: dict[str, Any]) -> Any:
+    """Settings that hold as long as a pool: workers that die are started anew under them."""
+    import dask
+    import distributed  # noqa: F401  its own defaults must be there before, to be there after
+
+    settings = {
+        "distributed.logging.distributed": "critical",
+        "distributed.logging.tornado": "critical",
+        "distributed.admin.large-graph-warning-threshold": "1 GB",
+        "distributed.comm.timeouts.connect": "60s",
+        # The scheduler remembers what it sent, a thousand blocks of work by default.
+        "distributed.admin.low-level-log-length": 20,
+    }
+    return dask.config.set(settings | more)
+
+
+def packed(job: BlockJob) -> bytes:
+    """A job as the scheduler shall see it: small, and nothing it looks into."""
+    return zlib.compress(pickle.dumps(job), 1)
+
+
+def do_block(function: str, job: bytes) -> Receipt:
+    """Task of a dask worker: one block, with the `Worker` this thread of it keeps."""
     from distributed import get_worker
 
     dask_worker: Any = get_worker()
-    worker = getattr(dask_worker, "simkit_worker", None)
+    kept = dask_worker.__dict__.setdefault("simkit_workers", threading.local())
+    worker = getattr(kept, "worker", None)
     if worker is None:
-        worker = dask_worker.simkit_worker = Worker(function)
-    receipt: Receipt = worker.do(job)
+        may_have_children()
+        worker = kept.worker = Worker(function)
+    receipt: Receipt = worker.do(pickle.loads(zlib.decompress(job)))
     return receipt
+
+
+def may_have_children() -> None:
+    """Lift the rule that a daemon process has no children of its own.
+
+    A worker started by hand is such a process. The rule guards against orphans, and the engine's
+    child ends with its parent anyway.
+    """
+    settings: dict[str, Any] = multiprocessing.current_process()._config  # type: ignore[attr-defined]
+    settings["daemon"] = False
 
 
 def core_count() -> int:

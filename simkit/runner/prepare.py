@@ -19,10 +19,17 @@ from simkit.runner.identity import (
     study_identity,
 )
 from simkit.store.layout import Layout, SweptColumn
+from simkit.store.write import KEY_DTYPE
 from simkit.study.model import Antenna, Case
 
 if TYPE_CHECKING:
     from simkit.study import Study
+
+
+MESH_CASES = 2000
+"""Cases the mesh of a study is planned from; of larger studies these stand for the rest."""
+
+_CORNERS = 512
 
 
 def mesh_of(antennas: Sequence[Antenna]) -> tuple[Any, int]:
@@ -67,12 +74,11 @@ class Solver:
 
 @dataclass(frozen=True)
 class Prepared:
-    """A study resolved into cases, with mesh, keys and what the store says about them.
+    """A study with mesh and keys. Its cases are resolved when they are asked for, and not kept.
 
     Attributes
     ----------
-    cases : tuple of Case
-    keys : tuple of str
+    keys : (N,) bytes array
         Hash of each case.
     plan : object or None
         Mesh plan; None if no case can be laid out.
@@ -84,10 +90,8 @@ class Prepared:
         Hash of the run, see `study_identity`.
     """
 
-    title: str
-    text: str
-    cases: tuple[Case, ...]
-    keys: tuple[str, ...]
+    study: Study
+    keys: NDArray[np.bytes_]
     plan: Any
     no_plan: str
     segments: int
@@ -97,43 +101,63 @@ class Prepared:
     identity: str
     attrs: dict[str, Any]
 
-    def layout(self, block_size: int, *, takeover: bool) -> Layout:
+    @property
+    def title(self) -> str:
+        """Title of the study."""
+        return self.study.title
+
+    @property
+    def text(self) -> str:
+        """The study file."""
+        return self.study.text
+
+    @property
+    def count(self) -> int:
+        """Number of cases."""
+        return len(self.keys)
+
+    def case(self, number: int) -> Case:
+        """Resolve one case."""
+        return self.study.case(number)
+
+    def key(self, number: int) -> str:
+        """Key of one case."""
+        return bytes(self.keys[number]).decode()
+
+    def layout(self, block_size: int, *, takeover: bool, limit_s: float) -> Layout:
         """Layout of a store for this study."""
         return Layout(
-            cases=len(self.cases),
+            cases=self.count,
             segments=self.segments,
             block_size=block_size,
             frequency_hz=self.frequency_hz,
             strips=self.strips,
             swept=self.swept,
-            attrs=self.attrs | {"takeover": takeover},
+            attrs=self.attrs | {"takeover": takeover, "time_limit_s": limit_s},
         )
 
 
 def prepare(study: Study, solver: Solver) -> Prepared:
-    """Resolve every case of a study, plan the mesh and hash.
+    """Plan the mesh of a study and hash its cases, holding few of them at a time.
 
     Raises
     ------
     StudyError
         The study has no case at all, or none whose values resolve.
     """
-    cases = tuple(study.cases())
-    antennas = [case.antenna for case in cases if case.antenna is not None]
-    if not antennas:
-        first = f": {cases[0].refused}" if cases else ""
-        raise StudyError(str(study.path), [Problem(f"no case of the study resolves{first}")])
+    columns = _columns(study)
+    antennas = mesh_antennas(study, columns)
     plan, segments, no_plan = _mesh(antennas, solver)
     plan_text = canonical_json(plan.as_dict()) if plan is not None else "null"
     study_part = canonical_json([plan_text, solver.version, engine_version()])
-    keys = tuple(case_key(case, study_part) for case in cases)
-    swept = _swept_columns(study, cases)
+    keys = np.zeros(study.case_count, dtype=KEY_DTYPE)
+    for case in study.cases():
+        keys[case.index] = case_key(case, study_part).encode()
+    swept = _swept_columns(study, columns)
     band = antennas[0].frequency
     shape = [int(count) for count in study.shape]
     return Prepared(
-        title=study.title,
-        text=study.text,
-        cases=cases,
+        study=study,
         keys=keys,
         plan=plan,
         no_plan=no_plan,
@@ -158,6 +182,59 @@ def prepare(study: Study, solver: Solver) -> Prepared:
     )
 
 
+def mesh_antennas(study: Study, columns: NDArray[np.float64] | None = None) -> list[Antenna]:
+    """The antennas a mesh is planned from, at least one.
+
+    Raises
+    ------
+    StudyError
+        The study has no case at all, or none whose values resolve.
+    """
+    rows = representative(_columns(study) if columns is None else columns)
+    cases = (study.case(int(row)) for row in rows)
+    antennas = [case.antenna for case in cases if case.antenna is not None]
+    if not antennas and len(rows) < study.case_count:
+        antennas = [case.antenna for case in study.cases() if case.antenna is not None][:1]
+    if not antennas:
+        first = f": {study.case(0).refused}" if study.case_count else ""
+        raise StudyError(str(study.path), [Problem(f"no case of the study resolves{first}")])
+    return antennas
+
+
+def representative(columns: NDArray[np.float64], most: int = MESH_CASES) -> NDArray[np.int64]:
+    """Cases that stand for all: every one of a few, else the extremes and an even spread.
+
+    Parameters
+    ----------
+    columns : (N, S) float array
+        Swept values.
+    most : int
+
+    Returns
+    -------
+    (K,) int array
+        Ascending, the same for the same columns.
+    """
+    count = len(columns)
+    if count <= most:
+        return np.arange(count)
+    low, high = columns == columns.min(axis=0), columns == columns.max(axis=0)
+    corners = np.flatnonzero((low | high).all(axis=1))[:_CORNERS]
+    extremes = [int(np.argmax(side[:, k])) for side in (low, high) for k in range(side.shape[1])]
+    # Steps of the golden ratio: no step of a grid is in tune with them.
+    parts = np.modf(np.arange(most) * 0.6180339887498949)[0]
+    spread = (parts * count).astype(np.int64)
+    return np.unique(np.concatenate([corners, np.array(extremes, dtype=np.int64), spread]))
+
+
+def _columns(study: Study) -> NDArray[np.float64]:
+    """(N, S) swept values, SI."""
+    columns = np.zeros((study.case_count, len(study.swept)))
+    for number in range(study.case_count):
+        columns[number] = list(study.sweep.point(number).values())
+    return columns
+
+
 def _mesh(antennas: list[Antenna], solver: Solver) -> tuple[Any, int, str]:
     try:
         plan, segments = solver.mesh(antennas)
@@ -166,15 +243,15 @@ def _mesh(antennas: list[Antenna], solver: Solver) -> tuple[Any, int, str]:
     return plan, segments, ""
 
 
-def _swept_columns(study: Study, cases: tuple[Case, ...]) -> tuple[SweptColumn, ...]:
+def _swept_columns(study: Study, columns: NDArray[np.float64]) -> tuple[SweptColumn, ...]:
     return tuple(
         SweptColumn(
             name=value.name,
             units=value.unit_text,
             display_unit=study.display_unit(value.name),
-            values=np.array([case.values[value.name] for case in cases], dtype=float),
+            values=columns[:, place].copy(),
         )
-        for value in study.swept
+        for place, value in enumerate(study.swept)
     )
 
 

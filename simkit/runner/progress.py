@@ -4,7 +4,50 @@ from __future__ import annotations
 
 import sys
 import time
+from dataclasses import dataclass
 from typing import IO, Any, Protocol
+
+
+@dataclass(frozen=True)
+class Tally:
+    """How far a run is, in cases.
+
+    Attributes
+    ----------
+    total, done : int
+        Of the study, and settled so far.
+    reused : int
+        Settled by earlier runs.
+    refused, failed : int
+        Without a solution, now or before; timed-out ones count as failed.
+    to_solve, solved : int
+        That this run has to settle itself, and has settled.
+    """
+
+    total: int
+    done: int = 0
+    reused: int = 0
+    refused: int = 0
+    failed: int = 0
+    to_solve: int = 0
+    solved: int = 0
+
+
+class Pace:
+    """Cases a second and time left, by a clock nobody can set."""
+
+    def __init__(self) -> None:
+        self._begin = time.monotonic()
+
+    def per_second(self, tally: Tally) -> float | None:
+        """Cases this run settles in a second, None before the first."""
+        elapsed = time.monotonic() - self._begin
+        return tally.solved / elapsed if tally.solved and elapsed > 0 else None
+
+    def left_s(self, tally: Tally) -> float | None:
+        """Time for the rest at the pace so far, None before the first case."""
+        rate = self.per_second(tally)
+        return max(0, tally.to_solve - tally.solved) / rate if rate else None
 
 
 class Progress(Protocol):
@@ -13,11 +56,11 @@ class Progress(Protocol):
     def say(self, text: str) -> None:
         """Show one line."""
 
-    def start(self, total: int, done: int) -> None:
-        """Begin to count: `total` cases, of which `done` need no work."""
+    def start(self, tally: Tally) -> None:
+        """Begin to count."""
 
-    def update(self, done: int, failed: int) -> None:
-        """`done` cases are settled now, `failed` of them without a solution."""
+    def update(self, tally: Tally) -> None:
+        """Show how far the run is now."""
 
     def close(self) -> None:
         """End the display."""
@@ -29,10 +72,10 @@ class QuietProgress:
     def say(self, text: str) -> None:
         """Show nothing."""
 
-    def start(self, total: int, done: int) -> None:
+    def start(self, tally: Tally) -> None:
         """Count nothing."""
 
-    def update(self, done: int, failed: int) -> None:
+    def update(self, tally: Tally) -> None:
         """Show nothing."""
 
     def close(self) -> None:
@@ -52,33 +95,32 @@ class LineProgress:
     def __init__(self, stream: IO[str], interval_s: float = 10.0) -> None:
         self._stream = stream
         self._interval_s = interval_s
-        self._begin = self._last = time.monotonic()
-        self._total = self._reused = 0
+        self._last = time.monotonic()
+        self._pace = Pace()
 
     def say(self, text: str) -> None:
         """Show one line."""
         print(text, file=self._stream, flush=True)
 
-    def start(self, total: int, done: int) -> None:
+    def start(self, tally: Tally) -> None:
         """Begin to count."""
-        self._total, self._reused = total, done
-        self._begin = self._last = time.monotonic()
+        self._last = time.monotonic()
+        self._pace = Pace()
 
-    def update(self, done: int, failed: int) -> None:
+    def update(self, tally: Tally) -> None:
         """Show a line if the last one is old enough, and at the end."""
         now = time.monotonic()
-        if done < self._total and now - self._last < self._interval_s:
+        if tally.done < tally.total and now - self._last < self._interval_s:
             return
         self._last = now
-        left = time_left_s(now - self._begin, done - self._reused, self._total - done)
-        self.say(progress_text(done, self._total, failed, left))
+        self.say(progress_text(tally, self._pace.per_second(tally), self._pace.left_s(tally)))
 
     def close(self) -> None:
         """Do nothing."""
 
 
 class BarProgress:
-    """A bar with time left, on a terminal.
+    """A bar with counts, pace and time left, on a terminal.
 
     Parameters
     ----------
@@ -91,40 +133,33 @@ class BarProgress:
         self._console = Console(file=stream, highlight=False)
         self._bar: Any = None
         self._task: Any = None
+        self._pace = Pace()
 
     def say(self, text: str) -> None:
         """Show one line above the bar."""
         self._console.print(text, markup=False, soft_wrap=True)
 
-    def start(self, total: int, done: int) -> None:
+    def start(self, tally: Tally) -> None:
         """Begin to count."""
-        from rich.progress import (
-            BarColumn,
-            MofNCompleteColumn,
-            TextColumn,
-            TimeElapsedColumn,
-            TimeRemainingColumn,
-        )
+        from rich.progress import BarColumn, TextColumn
         from rich.progress import Progress as RichProgress
 
+        self._pace = Pace()
         self._bar = RichProgress(
-            TextColumn("cases"),
-            BarColumn(),
-            MofNCompleteColumn(),
-            TextColumn("{task.fields[note]}"),
-            TimeElapsedColumn(),
-            TextColumn("left"),
-            TimeRemainingColumn(),
+            BarColumn(bar_width=None),
+            TextColumn("{task.fields[note]}", markup=False),
             console=self._console,
+            expand=True,
         )
-        self._task = self._bar.add_task("cases", total=total, completed=done, note="")
+        note = progress_text(tally, None, None)
+        self._task = self._bar.add_task("", total=tally.total, completed=tally.done, note=note)
         self._bar.start()
 
-    def update(self, done: int, failed: int) -> None:
+    def update(self, tally: Tally) -> None:
         """Move the bar."""
         if self._bar is not None:
-            note = f"{failed} without solution" if failed else ""
-            self._bar.update(self._task, completed=done, note=note)
+            note = progress_text(tally, self._pace.per_second(tally), self._pace.left_s(tally))
+            self._bar.update(self._task, completed=tally.done, note=note)
 
     def close(self) -> None:
         """Leave the bar as it stands."""
@@ -139,11 +174,6 @@ def choose_progress(stream: IO[str] | None = None) -> Progress:
     return BarProgress(stream) if stream.isatty() else LineProgress(stream)
 
 
-def time_left_s(elapsed_s: float, done: int, left: int) -> float | None:
-    """Time for `left` cases at the pace so far, None before the first is done."""
-    return elapsed_s / done * left if done > 0 else None
-
-
 def duration_text(seconds: float) -> str:
     """Such as "42 s", "3 min 20 s", "2 h 05 min"."""
     whole = round(seconds)
@@ -154,11 +184,13 @@ def duration_text(seconds: float) -> str:
     return f"{whole // 3600} h {whole % 3600 // 60:02d} min"
 
 
-def progress_text(done: int, total: int, failed: int, left_s: float | None) -> str:
-    """One line: "12 of 60 cases, 1 without solution, 3 min 20 s left"."""
-    parts = [f"{done} of {total} cases"]
-    if failed:
-        parts.append(f"{failed} without solution")
-    if left_s is not None and done < total:
+def progress_text(tally: Tally, per_second: float | None, left_s: float | None) -> str:
+    """One line: "12 of 60 cases, 4 reused, 1 failed, 2.4 cases a second, 3 min 20 s left"."""
+    parts = [f"{tally.done} of {tally.total} cases"]
+    counts = {"reused": tally.reused, "refused": tally.refused, "failed": tally.failed}
+    parts += [f"{count} {word}" for word, count in counts.items() if count]
+    if per_second is not None:
+        parts.append(f"{per_second:.3g} cases a second")
+    if left_s is not None and tally.done < tally.total:
         parts.append(f"{duration_text(left_s)} left")
     return ", ".join(parts)

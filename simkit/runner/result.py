@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
+from simkit.store.remote import Place
 from simkit.store.schema import Status
 
 
@@ -28,7 +28,7 @@ class CaseResult:
     arrays : dict of str to ndarray
         Named as in `simkit.store.schema.VARIABLES` and shaped as there without the leading
         ``case`` dimension. Names left out stay at their fill value. `status`, `reason`,
-        `case_key`, `seconds` and `solves` are not repeated here.
+        `case_key`, `seconds`, `solves` and `worker` are not repeated here.
     """
 
     status: Status
@@ -50,7 +50,7 @@ class RunSummary:
         Cases settled before this run: by an earlier run of the study or of a changed one.
     solved : int
         Cases settled by this run, with or without a solution.
-    results_dir : Path
+    results_dir : Path or RemotePath
     seconds : float
         Wall time.
     stopped : str
@@ -60,7 +60,7 @@ class RunSummary:
     counts: dict[Status, int]
     reused: int
     solved: int
-    results_dir: Path
+    results_dir: Place
     seconds: float
     stopped: str = ""
 

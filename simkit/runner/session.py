@@ -6,36 +6,40 @@ import multiprocessing
 import shutil
 import time
 import traceback
-from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
 from os import PathLike
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from simkit.errors import SimkitError, StoreError
 from simkit.runner.folder import ResultsFolder, Target
-from simkit.runner.lock import RunLock
+from simkit.runner.lock import Lock, take_lock
 from simkit.runner.log import EventLog
 from simkit.runner.loop import Loop
+from simkit.runner.overview import count_statuses
 from simkit.runner.plan import (
     Index,
+    Jobs,
     block_size_for,
     first_to_solve,
-    jobs_for,
     key_index,
     limit_for,
+    waiting_cases,
 )
-from simkit.runner.pool import DaskPool, InlinePool, Pool, core_count
+from simkit.runner.pool import core_count
 from simkit.runner.prepare import Prepared, Solver, prepare
-from simkit.runner.progress import Progress, choose_progress, duration_text
+from simkit.runner.progress import Progress, Tally, choose_progress
 from simkit.runner.result import CaseResult, InternalError, RunSummary
-from simkit.runner.stop import StopRequest
-from simkit.runner.work import BlockJob, ForeignError, Worker, solve_guarded
-from simkit.store.layout import create_store
+from simkit.runner.said import begin_text, stopping_text, summary_lines, versions_text
+from simkit.runner.stop import Deadline, StopRequest
+from simkit.runner.work import ForeignError, Worker, solve_guarded
+from simkit.runner.workplace import Choices, Workplace
+from simkit.store.layout import create_store, layout_hash
+from simkit.store.remote import place
 from simkit.store.schema import Status
-from simkit.store.size import estimate_bytes
+from simkit.store.size import case_bytes, estimate_bytes
 from simkit.store.write import StoreFile, read_attrs
 
 if TYPE_CHECKING:
@@ -55,6 +59,9 @@ def run(
     fresh: bool = False,
     progress: Progress | None = None,
     *,
+    retry: bool = False,
+    until: str | None = None,
+    scheduler: str | None = None,
     solver: Solver | None = None,
     block_size: int | None = None,
     time_limit_s: float | None = None,
@@ -70,20 +77,27 @@ def run(
     ----------
     study : Study
         From `simkit.load_study`.
-    results : path, optional
-        Parent folder in place of ``results`` under the current directory.
+    results : path or address, optional
+        Parent folder in place of ``results`` under the current directory; an fsspec address such
+        as ``s3://bucket/folder`` will do.
     workers : int, optional
         Worker processes, by default one a core.
     fresh : bool
         Solve everything anew. The old store stays until the new one is complete.
     progress : Progress, optional
         By default a bar on a terminal, plain lines elsewhere, both on standard error.
+    retry : bool
+        Solve cases again that failed or were timed out.
+    until : str, optional
+        Hour of the day, ``07:00``, from which on no further block is started.
+    scheduler : str, optional
+        Address of a dask scheduler whose workers do the work, in place of processes here.
     solver : Solver, optional
         For tests and benchmarks.
     block_size : int, optional
         Cases per block of a new store, by default a few seconds of work.
     time_limit_s : float, optional
-        Longest time for one case, by default generous for the size of the model.
+        Longest time for one case, by default many times what a first case took.
 
     Returns
     -------
@@ -94,6 +108,9 @@ def run(
     ------
     StoreError
         The folder holds another study, is in use or cannot be written, or the disk is full.
+    SimkitError
+        The hour cannot be read; the cluster cannot be reached, or its workers are not like this
+        installation.
     InternalError
         simkit itself went wrong; ``log.txt`` has the traceback. What was stored is kept.
 
@@ -104,11 +121,20 @@ def run(
     """
     _refuse_in_a_worker()
     begin = time.monotonic()
-    folder = ResultsFolder(Path(results or "results") / study.path.stem)
+    deadline = Deadline.at(until) if until else None
+    folder = ResultsFolder(place(results or "results") / study.path.stem)
+    choices = Choices(
+        solver or Solver(),
+        workers or core_count(),
+        block_size,
+        time_limit_s,
+        retry,
+        scheduler,
+        deadline,
+    )
     folder.check_title(study.title, fresh=fresh)
     folder.create()
-    choices = _Choices(solver or Solver(), workers or core_count(), block_size, time_limit_s)
-    lock = RunLock(folder.path)
+    lock = take_lock(folder.path)
     try:
         session = _Session(folder, lock, progress or choose_progress(), choices)
         return session.guarded(study, fresh=fresh, begin=begin)
@@ -125,25 +151,11 @@ def _refuse_in_a_worker() -> None:
         )
 
 
-@dataclass(frozen=True)
-class _Choices:
-    solver: Solver
-    workers: int
-    block_size: int | None
-    time_limit_s: float | None
-
-    def limit_s(self, prepared: Prepared) -> float:
-        """Time limit of one case."""
-        antennas = (case.antenna for case in prepared.cases)
-        converge = any(antenna.converge for antenna in antennas if antenna is not None)
-        return self.time_limit_s or limit_for(prepared.segments, converge=converge)
-
-
 class _Session:
     """The steps of one run, in the order in which they happen."""
 
     def __init__(
-        self, folder: ResultsFolder, lock: RunLock, progress: Progress, choices: _Choices
+        self, folder: ResultsFolder, lock: Lock, progress: Progress, choices: Choices
     ) -> None:
         self.folder = folder
         self.lock = lock
@@ -178,32 +190,35 @@ class _Session:
             raise
         finally:
             self.progress.close()
+            self.log.flush()
 
     def _go(self, study: Study, *, fresh: bool, begin: float) -> RunSummary:
         self.folder.recover()
         prepared = prepare(study, self.choices.solver)
         self.log.write(
-            f"run of {prepared.title!r}: {len(prepared.cases)} cases, {prepared.segments} segments,"
-            f" {_versions(prepared.attrs)}"
+            f"run of {prepared.title!r}: {prepared.count} cases, {prepared.segments} segments,"
+            f" {versions_text(prepared.attrs)}"
         )
         target = self.folder.choose(prepared, fresh=fresh)
         self._say_versions(target, prepared)
-        worker = Worker(self.choices.solver.function)
+        workplace = Workplace(self.choices, self._say)
         try:
-            with StopRequest() as stop:
-                loop = Loop(self.progress, self.log, stop, self._on_stop, self.folder.path)
-                store, done = self._settle(prepared, target, worker, loop)
+            workplace.open()
+            with StopRequest(self.choices.deadline) as stop:
+                loop = Loop(
+                    self.progress, self.log, stop, self.lock, self._on_stop, self.folder.path
+                )
+                store, done = self._settle(prepared, target, workplace, loop)
         finally:
-            worker.close()
-        codes = store.read_statuses()
-        counts = {status: int(np.count_nonzero(codes == status)) for status in Status}
+            workplace.close()
+        counts = count_statuses(store.read_statuses())
         summary = RunSummary(
             counts=counts,
             reused=done + loop.reused,
             solved=loop.solved,
             results_dir=self.folder.path,
             seconds=time.monotonic() - begin,
-            stopped=loop.stopped if counts[Status.WAITING] else "",
+            stopped=loop.stopped if done + loop.reused + loop.solved < prepared.count else "",
         )
         if summary.complete:
             self.folder.finish(target, prepared.text)
@@ -211,41 +226,47 @@ class _Session:
         return summary
 
     def _settle(
-        self, prepared: Prepared, target: Target, worker: Worker, loop: Loop
+        self, prepared: Prepared, target: Target, workplace: Workplace, loop: Loop
     ) -> tuple[StoreFile, int]:
         """Settle all waiting cases; return the store and how many cases were settled before."""
-        index = key_index(target.sources)
+        index = key_index(target.sources, retry=self.choices.retry)
         ready: dict[int, CaseResult] = {}
         if not target.exists:
-            size, ready = self._before_layout(prepared, target, index, worker)
-            create_store(target.path, prepared.layout(size, takeover=target.takeover))
-            if target.path == self.folder.store:
-                self.folder.keep_text(prepared.text)
+            ready = self._create(prepared, target, index, workplace)
         store = StoreFile(target.path)
-        done = int(np.count_nonzero(store.read_statuses()))
+        limit_s = self.choices.time_limit_s or float(
+            store.attrs.get("time_limit_s", limit_for(prepared.segments))
+        )
+        done = 0
         for turn in range(_PASSES):
-            jobs = jobs_for(
+            statuses = store.read_statuses()
+            retry = self.choices.retry and turn == 0
+            todo = waiting_cases(statuses, retry=retry)
+            jobs = Jobs(
                 prepared,
                 store,
                 index,
                 ready,
-                limit_s=self.choices.limit_s(prepared),
-                lock=self.lock.path,
-                token=self.lock.token,
+                todo,
+                retry,
+                limit_s,
+                self.lock.path,
+                self.lock.token,
             )
             if turn == 0:
-                self._say_begin(store, jobs, done)
-                self.progress.start(store.cases, done)
+                done = int(np.count_nonzero(~todo))
+                self._say(begin_text(jobs, done))
             if not jobs or loop.stopped:
                 break
-            self._work(jobs, worker, loop, store)
+            self._work(jobs, workplace, loop, _tally(statuses, jobs, done, loop))
         return store, done
 
-    def _work(self, jobs: list[BlockJob], worker: Worker, loop: Loop, store: StoreFile) -> None:
-        pool = self._pool(len(jobs), worker)
+    def _work(self, jobs: Jobs, workplace: Workplace, loop: Loop, tally: Tally) -> None:
+        self.progress.start(tally)
+        pool = workplace.pool(len(jobs))
         over = False
         try:
-            loop.run(pool, jobs, int(np.count_nonzero(store.read_statuses())))
+            loop.run(pool, jobs, tally)
             over = not loop.stopped
         finally:
             if not over:
@@ -254,42 +275,57 @@ class _Session:
             pool.close()
             self.progress.close()
 
-    def _pool(self, blocks: int, worker: Worker) -> Pool:
-        count = min(self.choices.workers, blocks)
-        if count == 1:
-            return InlinePool(worker)
-        worker.close()
-        return DaskPool(count, self.choices.solver.function)
-
     # -- before a new store --------------------------------------------------------------------
 
-    def _before_layout(
-        self, prepared: Prepared, target: Target, index: Index, worker: Worker
-    ) -> tuple[int, dict[int, CaseResult]]:
-        """Block size of a new store, and the results of the cases solved to find it."""
+    def _create(
+        self, prepared: Prepared, target: Target, index: Index, workplace: Workplace
+    ) -> dict[int, CaseResult]:
+        """Lay out a new store; return the results of the cases solved to size its blocks."""
         self._check_disk(prepared)
-        if self.choices.block_size:
-            return self.choices.block_size, {}
+        size, limit_s = self.choices.block_size, limit_for(prepared.segments)
         ready: dict[int, CaseResult] = {}
-        seconds = 0.0
+        if size is None:
+            ready, seconds = self._timed(prepared, index, workplace.worker)
+            limit_s = limit_for(prepared.segments, seconds)
+            size = self._block_size(prepared, target, workplace, index, seconds)
+        layout = prepared.layout(size, takeover=target.takeover, limit_s=limit_s)
+        create_store(target.path, layout)
+        if target.path == self.folder.store:
+            self.folder.keep_text(prepared.text)
+        return ready
+
+    def _block_size(
+        self,
+        prepared: Prepared,
+        target: Target,
+        workplace: Workplace,
+        index: Index,
+        seconds: float | None,
+    ) -> int:
+        if seconds is None and target.sources and len(index):
+            return int(read_attrs(target.sources[0])["block_size"])
+        return block_size_for(
+            seconds or 0.0, prepared.count, workplace.workers, case_bytes(**_sizes(prepared))
+        )
+
+    def _timed(
+        self, prepared: Prepared, index: Index, worker: Worker
+    ) -> tuple[dict[int, CaseResult], float | None]:
+        """Results of the first cases, up to one with a solution, and the time it took."""
+        ready: dict[int, CaseResult] = {}
         for case in first_to_solve(prepared, index):
-            limit_s = self.choices.limit_s(prepared)
+            converge = bool(getattr(case.antenna, "converge", False))
+            limit_s = self.choices.time_limit_s or limit_for(prepared.segments, converge=converge)
             result = solve_guarded(worker.child, case, prepared.plan, limit_s)
             ready[case.index] = result
-            seconds = result.seconds
             if result.status in (Status.SOLVED, Status.DOUBTFUL):
-                break
-        if not ready and target.sources and index:
-            return int(read_attrs(target.sources[0])["block_size"]), {}
-        return block_size_for(seconds, len(prepared.cases), self.choices.workers), ready
+                return ready, result.seconds
+        return ready, None
 
     def _check_disk(self, prepared: Prepared) -> None:
-        need = estimate_bytes(
-            cases=len(prepared.cases),
-            frequencies=len(prepared.frequency_hz),
-            strips=len(prepared.strips),
-            segments=prepared.segments,
-        )
+        if not isinstance(self.folder.path, Path):
+            return
+        need = estimate_bytes(cases=prepared.count, **_sizes(prepared))
         free = shutil.disk_usage(self.folder.path).free
         # The estimate may be twice too high, and a study is not refused for that.
         if free < need // 2 + RESERVE_BYTES:
@@ -301,27 +337,20 @@ class _Session:
 
     # -- what is said --------------------------------------------------------------------------
 
-    def _on_stop(self) -> None:
+    def _on_stop(self, reason: str) -> None:
         self.lock.stop_starting()
-        self._say("stopping: the blocks in hand are finished; Ctrl-C again stops at once")
+        self._say(stopping_text(reason))
 
     def _say_versions(self, target: Target, prepared: Prepared) -> None:
         """Other versions never mix with these: say so where it makes cases be solved anew."""
         if target.exists or not target.sources:
             return
-        before, now = _versions(read_attrs(target.sources[0])), _versions(prepared.attrs)
+        earlier = read_attrs(target.sources[0])
+        before, now = versions_text(earlier), versions_text(prepared.attrs)
         if before != now:
             self._say(f"earlier results are of {before}; this is {now}: all is solved anew")
-
-    def _say_begin(self, store: StoreFile, jobs: list[BlockJob], done: int) -> None:
-        taken = sum(case.source is not None for job in jobs for case in job.cases)
-        parts = [f"{store.cases} cases in {store.blocks} blocks"]
-        if done:
-            parts.append(f"{done} reused from the earlier run")
-        if taken:
-            parts.append(f"{taken} taken over unchanged from the earlier study")
-        parts.append(f"{store.cases - done - taken} to solve")
-        self._say(", ".join(parts))
+        elif earlier.get("layout_hash") != layout_hash():
+            self._say("earlier results lack variables of this version: all is solved anew")
 
     def _say_end(self, summary: RunSummary) -> None:
         """All into the log; the caller shows the summary, so only a stop is said at once."""
@@ -335,17 +364,22 @@ class _Session:
         self.progress.say(text)
 
 
-def _versions(attrs: Mapping[str, object]) -> str:
-    return f"model {attrs.get('model_version')}, engine {attrs.get('engine_version')}"
+def _sizes(prepared: Prepared) -> dict[str, int]:
+    return {
+        "frequencies": len(prepared.frequency_hz),
+        "strips": len(prepared.strips),
+        "segments": prepared.segments,
+    }
 
 
-def summary_lines(summary: RunSummary) -> Iterator[str]:
-    """Counts per status, where the results are and how to go on."""
-    counts = ", ".join(f"{n} {status.label}" for status, n in summary.counts.items() if n)
-    yield (
-        f"{counts}; {summary.reused} reused, {summary.solved} settled in "
-        f"{duration_text(summary.seconds)}"
+def _tally(statuses: NDArray[np.int8], jobs: Jobs, done: int, loop: Loop) -> Tally:
+    """Where a run stands before its blocks are handed out."""
+    kept = statuses[~jobs.todo]
+    return Tally(
+        total=len(statuses),
+        done=len(kept),
+        reused=done + loop.reused,
+        refused=int(np.count_nonzero(kept == Status.REFUSED)),
+        failed=int(np.count_nonzero(np.isin(kept, (Status.FAILED, Status.TIMED_OUT)))),
+        to_solve=int(np.count_nonzero(jobs.todo)) - jobs.taken,
     )
-    yield f"results: {summary.results_dir}"
-    if summary.stopped:
-        yield f"stopped {summary.stopped}; give the same command again to continue"

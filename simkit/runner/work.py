@@ -3,18 +3,22 @@
 from __future__ import annotations
 
 import os
+import socket
 import time
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 from simkit.engine.child import Child, Kind
 from simkit.errors import SimkitError
 from simkit.runner.lock import may_start, writing
 from simkit.runner.result import CaseResult
+from simkit.store.remote import Place
 from simkit.store.schema import Status
 from simkit.store.write import TORN, Block, StoreFile
 from simkit.study.model import Antenna
+
+CHECKPOINT_S = 30.0
+"""A block that takes longer is written before it is whole, so that no more than this is lost."""
 
 
 @dataclass(frozen=True)
@@ -29,7 +33,7 @@ class CaseJob:
         None: `ready` or `source` settles the case.
     ready : CaseResult or None
         Known already, as for a case that is refused without being tried.
-    source : tuple of (Path, int) or None
+    source : tuple of (place, int) or None
         Store and case there from which the unchanged case is taken over.
     """
 
@@ -37,20 +41,24 @@ class CaseJob:
     key: str
     antenna: Antenna | None = None
     ready: CaseResult | None = None
-    source: tuple[Path, int] | None = None
+    source: tuple[Place, int] | None = None
 
 
 @dataclass(frozen=True)
 class BlockJob:
-    """One block of a store with the cases that are still waiting in it."""
+    """One block of a store with the cases that are still waiting in it.
 
-    store: Path
+    Cases that stand in it with one of the statuses `retried` count as waiting too.
+    """
+
+    store: Place
     block: int
     cases: tuple[CaseJob, ...]
     plan: Any
     limit_s: float
-    lock: Path
+    lock: Place
     token: str
+    retried: tuple[Status, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -67,10 +75,14 @@ class Receipt:
     seconds : float
     dropped : bool
         The run is stopping; nothing was done.
+    whole : bool
+        Every case of the job is settled; not so if the run was asked to stop meanwhile.
     bug : str
         Traceback of an error in simkit itself; nothing was written.
     trouble : str
         Why the block could not be written.
+    worker : str
+        Process and machine.
     """
 
     block: int
@@ -80,9 +92,10 @@ class Receipt:
     solves: int = 0
     seconds: float = 0.0
     dropped: bool = False
+    whole: bool = True
     bug: str = ""
     trouble: str = ""
-    pid: int = 0
+    worker: str = ""
 
 
 class ForeignError(Exception):
@@ -125,7 +138,8 @@ class Worker:
 
     def __init__(self, function: str) -> None:
         self.child = Child(function)
-        self._stores: dict[Path, StoreFile] = {}
+        self.name = f"process {os.getpid()} on {socket.gethostname()}"
+        self._stores: dict[Place, StoreFile] = {}
 
     def close(self) -> None:
         """End the child; a later block starts another."""
@@ -154,32 +168,47 @@ class Worker:
     def _do(self, job: BlockJob, start: float) -> Receipt:
         store = self._store(job.store)
         content, waiting = self._begin(store, job)
-        solves = solved = reused = 0
+        settled: list[int] = []
+        solves = reused = 0
+        written = time.monotonic()
         for case in waiting:
+            if settled and time.monotonic() - written > CHECKPOINT_S:
+                if not self._write(store, job, content):
+                    return Receipt(job.block, dropped=True)
+                written = time.monotonic()
+                if not may_start(job.lock, job.token):
+                    break
             if case.source is not None and self._take(content, case):
                 reused += 1
-                continue
-            result = case.ready or solve_guarded(self.child, case, job.plan, job.limit_s)
-            if self.child.abandoned:
-                return Receipt(job.block, dropped=True)
-            self._put(content, case, result)
-            solved += 1
-            solves += result.solves
-        with writing(job.lock, job.token) as allowed:
-            if not allowed:
-                return Receipt(job.block, dropped=True)
-            store.write_block(job.block, content)
+            else:
+                result = case.ready or solve_guarded(self.child, case, job.plan, job.limit_s)
+                if self.child.abandoned:
+                    return Receipt(job.block, dropped=True)
+                self._put(content, case, result)
+                solves += result.solves
+            settled.append(case.index)
+        if not self._write(store, job, content):
+            return Receipt(job.block, dropped=True)
         return Receipt(
             job.block,
-            tuple(_settled(content, case.index) for case in waiting),
-            solved=solved,
+            tuple(_settled(content, index) for index in settled),
+            solved=len(settled) - reused,
             reused=reused,
             solves=solves,
             seconds=time.monotonic() - start,
-            pid=os.getpid(),
+            whole=len(settled) == len(waiting),
+            worker=self.name,
         )
 
-    def _store(self, path: Path) -> StoreFile:
+    @staticmethod
+    def _write(store: StoreFile, job: BlockJob, content: Block) -> bool:
+        """Write the block as it stands; False if another run has taken over."""
+        with writing(job.lock, job.token) as allowed:
+            if allowed:
+                store.write_block(job.block, content)
+        return allowed
+
+    def _store(self, path: Place) -> StoreFile:
         if path not in self._stores:
             self._stores[path] = StoreFile(path)
         return self._stores[path]
@@ -191,12 +220,15 @@ class Worker:
         A block may be given out again after its worker died just behind the last write.
         """
         content = store.new_block(job.block)
+        if store.read_waiting(job.block):
+            return content, list(job.cases)
         try:
             stored = store.read_arrays(job.block)
         except TORN:
             return content, list(job.cases)
-        for row in range(content.count):
-            if stored["status"][row] != Status.WAITING:
+        again = {case.index - content.first for case in job.cases}
+        for row, code in enumerate(stored["status"]):
+            if code != Status.WAITING and not (code in job.retried and row in again):
                 content.take(content.first + row, stored, row)
         statuses = content.statuses()
         waiting = [c for c in job.cases if statuses[c.index - content.first] is Status.WAITING]
@@ -222,8 +254,7 @@ class Worker:
             self._old_key = key
         return self._old_arrays
 
-    @staticmethod
-    def _put(content: Block, case: CaseJob, result: CaseResult) -> None:
+    def _put(self, content: Block, case: CaseJob, result: CaseResult) -> None:
         try:
             content.put(case.index, result.arrays)
             content.put(
@@ -234,6 +265,7 @@ class Worker:
                     "case_key": case.key,
                     "seconds": float(result.seconds),
                     "solves": int(result.solves),
+                    "worker": self.name,
                 },
             )
         except ValueError as error:

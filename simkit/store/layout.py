@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import math
 import os
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -13,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from simkit.store.files import flush_tree
+from simkit.store.remote import Place
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, VARIABLES, Status
 
 if TYPE_CHECKING:
@@ -22,6 +24,9 @@ STORE_VERSION = 1
 """Raised when a reader of the older layout would misunderstand a newer store."""
 
 _INTEGER_FILL = {"status": 0, "solves": 0, "driven": -1}
+
+_PIECE_BYTES = 1_000_000
+"""What is read at least, unpacked, to get at one case of a large variable."""
 
 
 @dataclass(frozen=True)
@@ -112,12 +117,12 @@ def layout_hash() -> str:
     return hashlib.sha256(json.dumps(table).encode()).hexdigest()[:16]
 
 
-def create_store(path: Path, layout: Layout) -> None:
+def create_store(path: Place, layout: Layout) -> None:
     """Write an empty store to `path`, which appears complete or not at all.
 
     Parameters
     ----------
-    path : Path
+    path : Path or RemotePath
         Must not exist.
     layout : Layout
 
@@ -126,16 +131,27 @@ def create_store(path: Path, layout: Layout) -> None:
     OSError
         The folder cannot be written.
     """
+    import tempfile
+
+    if not isinstance(path, Path):
+        with tempfile.TemporaryDirectory(prefix="simkit-") as folder:
+            create_store(Path(folder) / path.name, layout)
+            path.upload_tree(Path(folder) / path.name)
+        return
+    aside = path.with_name(path.name + ".part")
+    _write_empty(aside, layout)
+    flush_tree(aside)
+    os.rename(aside, path)
+    flush_tree(path.parent, files=False)
+
+
+def _write_empty(aside: Path, layout: Layout) -> None:
     import zarr
 
-    aside = path.with_name(path.name + ".part")
     group = zarr.create_group(aside, zarr_format=3, attributes=_group_attrs(layout), overwrite=True)
     for name in VARIABLES:
         _add_variable(group, name, layout)
     _add_coordinates(group, layout)
-    flush_tree(aside)
-    os.rename(aside, path)
-    flush_tree(path.parent, files=False)
 
 
 def _group_attrs(layout: Layout) -> dict[str, Any]:
@@ -170,10 +186,14 @@ def _add_variable(group: zarr.Group, name: str, layout: Layout) -> None:
 
     dims = VARIABLES[name].dims
     shape = tuple(layout.sizes[dim] for dim in dims)
+    block = min(layout.block_size, layout.cases)
+    piece = _cases_in_a_piece(block, numpy_dtype(name).itemsize * math.prod(shape[1:]))
     group.create_array(
         name,
         shape=shape,
-        chunks=(min(layout.block_size, layout.cases), *shape[1:]),
+        # One file holds a block, in pieces that can be read alone if the block is large.
+        chunks=(piece, *shape[1:]),
+        shards=(block, *shape[1:]) if piece < block else None,
         dtype=numpy_dtype(name),
         fill_value=fill_value(name),
         compressors=[ZstdCodec(level=1), Crc32cCodec()],
@@ -182,6 +202,14 @@ def _add_variable(group: zarr.Group, name: str, layout: Layout) -> None:
         chunk_key_encoding={"name": "default", "separator": "."},
         attributes=_variable_attrs(name),
     )
+
+
+def _cases_in_a_piece(block: int, case_bytes: int) -> int:
+    """Largest part of a block, dividing it evenly, that keeps the reading of one case quick."""
+    if block * case_bytes <= 4 * _PIECE_BYTES:
+        return block
+    most = max(1, _PIECE_BYTES // case_bytes)
+    return next(count for count in range(most, 0, -1) if block % count == 0)
 
 
 def _add_coordinates(group: zarr.Group, layout: Layout) -> None:

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from os import PathLike
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from simkit.errors import StoreError
+from simkit.store.files import store_exists
+from simkit.store.remote import Place, place, zarr_store
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
@@ -18,7 +19,7 @@ STORE_NAME = "store.zarr"
 UNFINISHED_NAME = "store.new.zarr"
 
 
-def store_path(path: str | PathLike[str]) -> Path:
+def store_path(path: str | PathLike[str] | Place) -> Place:
     """The store inside a results folder; a path to the store itself is taken as it is.
 
     Raises
@@ -26,14 +27,14 @@ def store_path(path: str | PathLike[str]) -> Path:
     StoreError
         There is no such folder, or nothing was run into it.
     """
-    folder = Path(path)
+    folder = place(path)
     if folder.suffix == ".zarr":
         return folder
     if not folder.exists():
         raise StoreError(f"{folder}: no such results folder; `simkit run STUDY` makes one")
     if not folder.is_dir():
         raise StoreError(f"{folder}: this is a file; give the results folder that a run made")
-    if not (folder / STORE_NAME).exists():
+    if not store_exists(folder / STORE_NAME):
         raise StoreError(
             f"{folder}: there is no {STORE_NAME} in this folder; `simkit run STUDY` writes one "
             "to results/NAME, NAME being that of the study file"
@@ -41,13 +42,13 @@ def store_path(path: str | PathLike[str]) -> Path:
     return folder / STORE_NAME
 
 
-def open_results(path: str | PathLike[str]) -> xr.Dataset:
+def open_results(path: str | PathLike[str] | Place) -> xr.Dataset:
     """Open the results of a run.
 
     Parameters
     ----------
-    path : path
-        Results folder, as `simkit run` prints it at the end.
+    path : path or address
+        Results folder, as `simkit run` prints it at the end; any fsspec address will do.
 
     Returns
     -------
@@ -68,7 +69,7 @@ def open_results(path: str | PathLike[str]) -> xr.Dataset:
     store = store_path(path)
     attrs = read_attrs(store)
     try:
-        dataset = xr.open_zarr(store, consolidated=False, chunks=None)
+        dataset = xr.open_zarr(zarr_store(store, read_only=True), consolidated=False, chunks=None)
         # Small, and wanted as plain text for selecting strips by name.
         strips = dataset["strip"]
         words = np.array([str(name) for name in strips.values])

@@ -75,6 +75,7 @@ VARIABLES: dict[str, Variable] = {
     "case_key": Variable(("case",), "str", "", "hash of resolved inputs, model and engine version"),
     "seconds": Variable(("case",), "f8", "s", "time the case took"),
     "solves": Variable(("case",), "i4", "1", "frequencies solved by the engine"),
+    "worker": Variable(("case",), "str", "", "process and machine that settled the case"),
     "impedance": Variable(("case", "frequency"), "c16", "ohm", "impedance at the feed gap"),
     # Natural modes: feed-independent.
     "mode_frequency": _per_mode("Hz", "natural frequency, real part of the pole"),

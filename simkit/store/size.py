@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, VARIABLES
@@ -30,7 +32,28 @@ def estimate_bytes(
     int
         Bytes.
     """
-    sizes = {
+    sizes = _sizes(frequencies, strips, segments)
+    per_case = 0.0
+    for variable in VARIABLES.values():
+        width = 64 if variable.dtype == "str" else np.dtype(variable.dtype).itemsize
+        used = [sizes[dim] * _USED.get(dim, 1.0) for dim in variable.dims[1:]]
+        per_case += width * float(np.prod(used))
+    files = len(VARIABLES) * -(-cases // block_size)
+    return int(cases * per_case) + files * _BLOCK_OVERHEAD
+
+
+def case_bytes(*, frequencies: int, strips: int, segments: int) -> int:
+    """Memory one case takes in a block that is being filled."""
+    sizes = _sizes(frequencies, strips, segments)
+    return sum(
+        (64 if variable.dtype == "str" else np.dtype(variable.dtype).itemsize)
+        * math.prod(sizes[dim] for dim in variable.dims[1:])
+        for variable in VARIABLES.values()
+    )
+
+
+def _sizes(frequencies: int, strips: int, segments: int) -> dict[str, int]:
+    return {
         "frequency": frequencies,
         "mode": MODES,
         "strip": strips,
@@ -40,10 +63,3 @@ def estimate_bytes(
         "sample": SAMPLES,
         "segment": segments,
     }
-    per_case = 0.0
-    for variable in VARIABLES.values():
-        width = 64 if variable.dtype == "str" else np.dtype(variable.dtype).itemsize
-        used = [sizes[dim] * _USED.get(dim, 1.0) for dim in variable.dims[1:]]
-        per_case += width * float(np.prod(used))
-    files = len(VARIABLES) * -(-cases // block_size)
-    return int(cases * per_case) + files * _BLOCK_OVERHEAD

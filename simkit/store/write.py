@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from pathlib import Path
+import contextlib
+from collections.abc import Iterator, Mapping
+from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from simkit.errors import StoreError
 from simkit.store.files import flush
 from simkit.store.layout import fill_value, numpy_dtype
+from simkit.store.remote import Place, RemotePath, zarr_store
 from simkit.store.schema import VARIABLES, Status
 
 if TYPE_CHECKING:
@@ -18,6 +21,10 @@ if TYPE_CHECKING:
 
 TORN = (ValueError, RuntimeError, OSError)
 """What reading a damaged chunk can raise: a wrong checksum, a codec's complaint, a missing file."""
+
+
+KEY_DTYPE = np.dtype("S64")
+"""Type of many case keys at once: the hexadecimal digits, empty for none."""
 
 
 class Block:
@@ -80,7 +87,7 @@ class StoreFile:
 
     Parameters
     ----------
-    path : Path
+    path : Path or RemotePath
         Folder of the store, ``store.zarr``.
 
     Raises
@@ -89,21 +96,20 @@ class StoreFile:
         The folder is not a store of this version.
     """
 
-    def __init__(self, path: Path) -> None:
+    def __init__(self, path: Place) -> None:
         self.path = path
         self.attrs = read_attrs(path)
         self._group: zarr.Group | None = None
         self._arrays: dict[str, Any] = {}
         self.block_size = int(self.attrs["block_size"])
         self.cases = int(self.array("status").shape[0])
-        self.sizes = self._read_sizes()
 
     def array(self, name: str) -> Any:
         """The zarr array of one variable, kept open."""
         import zarr
 
         if self._group is None:
-            self._group = zarr.open_group(self.path, mode="r+", zarr_format=3)
+            self._group = zarr.open_group(zarr_store(self.path), mode="r+", zarr_format=3)
         if name not in self._arrays:
             try:
                 self._arrays[name] = self._group[name]
@@ -113,7 +119,9 @@ class StoreFile:
                 ) from error
         return self._arrays[name]
 
-    def _read_sizes(self) -> dict[str, int]:
+    @cached_property
+    def sizes(self) -> dict[str, int]:
+        """Length of every dimension."""
         sizes: dict[str, int] = {}
         for name in VARIABLES:
             sizes |= dict(zip(VARIABLES[name].dims, self.array(name).shape, strict=True))
@@ -141,8 +149,22 @@ class StoreFile:
         ValueError, RuntimeError, OSError
             A file of the block is damaged (see `TORN`).
         """
-        rows = self.rows(block)
-        return {name: self.array(name)[rows] for name in VARIABLES}
+        return {name: self._read_one(name, block) for name in VARIABLES}
+
+    def read_waiting(self, block: int) -> bool:
+        """Whether no case of a block is settled, as far as its status can be read."""
+        try:
+            return not self._read_one("status", block).any()
+        except TORN:
+            return True
+
+    def _read_one(self, name: str, block: int) -> Any:
+        chunk = self._chunk(name, block)
+        # A shard of no bytes would pass for one that was never written.
+        if not isinstance(chunk, RemotePath) and chunk.exists() and chunk.stat().st_size == 0:
+            raise ValueError(f"{chunk}: empty")
+        with self._reached():
+            return self.array(name)[self.rows(block)]
 
     def write_block(self, block: int, content: Block) -> None:
         """Write one block: data first, flushed to the disk, then the status, flushed too.
@@ -164,35 +186,52 @@ class StoreFile:
 
     def _write(self, block: int, content: Block, names: list[str]) -> None:
         rows = self.rows(block)
-        for name in names:
-            self.array(name)[rows] = content.arrays[name]
+        with self._reached():
+            for name in names:
+                self.array(name)[rows] = content.arrays[name]
         flush(self._chunk(name, block) for name in names)
         flush(self.path / name for name in names)
 
-    def _chunk(self, name: str, block: int) -> Path:
+    def _chunk(self, name: str, block: int) -> Place:
         trailing = ".0" * (len(VARIABLES[name].dims) - 1)
         return self.path / name / f"c.{block}{trailing}"
 
-    def read_statuses(self) -> Any:
+    @contextlib.contextmanager
+    def _reached(self) -> Iterator[None]:
+        """Say in one kind of error that an address cannot be reached, whatever lies behind it."""
+        try:
+            yield
+        except TORN:
+            raise
+        except Exception as error:
+            if isinstance(self.path, RemotePath):
+                raise StoreError(f"{self.path}: cannot be reached: {error}") from error
+            raise
+
+    def read_statuses(self) -> NDArray[np.int8]:
         """Status codes of all cases, (N,) int8; a torn block counts as waiting."""
-        return self._read_by_block("status")
-
-    def read_keys(self) -> list[str]:
-        """Keys of all cases, empty where nothing was written or the block is torn."""
-        return [str(key) for key in self._read_by_block("case_key")]
-
-    def _read_by_block(self, name: str) -> Any:
-        values = np.full(self.cases, fill_value(name), dtype=numpy_dtype(name))
+        codes = np.zeros(self.cases, dtype=np.int8)
         for block in range(self.blocks):
             rows = self.rows(block)
             try:
-                values[rows] = self.array(name)[rows]
+                codes[rows] = self.array("status")[rows]
             except TORN:
                 continue
-        return values
+        return codes
+
+    def read_keys(self) -> NDArray[np.bytes_]:
+        """Keys of all cases, (N,) bytes, empty where nothing was written or the block is torn."""
+        keys = np.zeros(self.cases, dtype=KEY_DTYPE)
+        for block in range(self.blocks):
+            rows = self.rows(block)
+            try:
+                keys[rows] = self.array("case_key")[rows].astype(KEY_DTYPE)
+            except TORN:
+                continue
+        return keys
 
 
-def read_attrs(path: Path) -> dict[str, Any]:
+def read_attrs(path: Place) -> dict[str, Any]:
     """Attributes of a store.
 
     Raises

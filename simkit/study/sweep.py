@@ -12,17 +12,18 @@ from simkit.study.locate import KeyPath
 from simkit.study.tables import Notes, Table, toml_kind, written_unit
 from simkit.study.units import PURE, Dimension, nearest, si_unit
 
-Method = Literal["grid", "list"]
+Method = Literal["grid", "list", "latin-hypercube", "sobol"]
 
 MOST_CASES = 1_000_000
-_LATER_METHODS = ("latin-hypercube", "sobol")
+_METHODS: tuple[Method, ...] = ("grid", "list", "latin-hypercube", "sobol")
 _RANGE_KEYS = ("from", "to", "count")
+_RANGE_EXAMPLE = '{ from = "70 mm", to = "82 mm" }'
 _EXAMPLE = '{ from = "70 mm", to = "82 mm", count = 5 } or a list as ["4 mm", "8 mm"]'
 
 RESULT_NAMES = frozenset(
     """
     case frequency mode strip position theta phi sample segment status reason case_key seconds
-    solves impedance mode_frequency mode_q mode_half_waves mode_frequency_error mode_current
+    solves worker impedance mode_frequency mode_q mode_half_waves mode_frequency_error mode_current
     conductance_peak_frequency conductance_peak_resistance series_resonance_frequency
     series_resonance_resistance parallel_resonance_frequency parallel_resonance_resistance
     dip_frequency dip_return_loss dip_bandwidth impedance_q pattern_frequency driven gain peak_gain
@@ -69,8 +70,8 @@ class Sweep:
 
     @property
     def shape(self) -> tuple[int, ...]:
-        """Counts per swept value for a grid; one count, that of the cases, for a list."""
-        if self.method == "list" and self.swept:
+        """Counts per swept value for a grid; one count, that of the cases, for all else."""
+        if self.method != "grid" and self.swept:
             return (len(self.swept[0].values),)
         return tuple(len(value.values) for value in self.swept)
 
@@ -81,7 +82,7 @@ class Sweep:
 
     def point(self, index: int) -> dict[str, float]:
         """Return the swept values of one case; the last named varies fastest in a grid."""
-        if self.method == "list":
+        if self.method != "grid":
             return {value.name: value.values[index] for value in self.swept}
         places = []
         for count in reversed(self.shape):
@@ -104,15 +105,20 @@ def read_sweep(
     numbers : dict of str to float
         Numbers of [values], which entries of a sweep may use.
     """
-    method = _read_method(sampling)
+    plan = _read_sampling(sampling)
     if sweep is None:
-        return Sweep((), method)
-    reader = _SweepReader(notes, numbers, method)
+        if sampling is not None and plan.sampled:
+            sampling.report("method", "there is no [sweep] to take samples of; name what to vary")
+        return Sweep((), "grid" if plan.sampled else plan.method)
+    reader = _SweepReader(notes, numbers, plan.method)
     for path, name, raw in entries(sweep):
         reader.entry(path, name, raw)
     if not sweep.data:
         sweep.report("", f"is empty; name what to vary, as in arm = {_EXAMPLE}, or leave it out")
-    result = Sweep(tuple(reader.swept), method, reader.units)
+    swept = tuple(reader.swept)
+    if plan.sampled:
+        swept = _sampled(swept, plan)
+    result = Sweep(swept, plan.method, reader.units)
     _check_size(sweep, result)
     return result
 
@@ -134,23 +140,81 @@ def _is_nested(key: str, item: Any) -> bool:
     return isinstance(item, dict) or key not in _RANGE_KEYS
 
 
-def _read_method(table: Table | None) -> Method:
+@dataclass(frozen=True)
+class _Sampling:
+    """The table [sampling]; `samples` and `seed` belong to the two methods that take samples."""
+
+    method: Method = "grid"
+    samples: int = 0
+    seed: int = 0
+
+    @property
+    def sampled(self) -> bool:
+        """Whether swept values are drawn from ranges."""
+        return self.method in ("latin-hypercube", "sobol")
+
+
+def _read_sampling(table: Table | None) -> _Sampling:
     if table is None:
-        return "grid"
-    method = table.raw("method")
-    if method in _LATER_METHODS:
-        table.report(
-            "method",
-            'this method is not available in this version; write "grid" (all combinations) or '
-            '"list" (values taken in step)',
-        )
-        return "grid"
-    for key in ("samples", "seed"):
-        if table.has(key):
-            table.report(key, 'has no meaning for the methods "grid" and "list"; leave it out')
-    chosen = table.choice("method", ("grid", "list"), "grid")
+        return _Sampling()
+    chosen = table.choice("method", _METHODS, "grid")
+    method: Method = next((name for name in _METHODS if name == chosen), "grid")
+    plan = _Sampling(method)
+    if not plan.sampled:
+        for key in ("samples", "seed"):
+            if table.has(key):
+                table.report(key, f'has no meaning for the method "{method}"; leave it out')
+    else:
+        missing = "say how many cases to take, as in samples = 64"
+        samples = _whole(table, "samples", 1, MOST_CASES, missing)
+        plan = _Sampling(method, samples or 1, _whole(table, "seed", 0, 2**32 - 1) or 0)
     table.close()
-    return "list" if chosen == "list" else "grid"
+    return plan
+
+
+def _whole(table: Table, key: str, lowest: int, highest: int, missing: str = "") -> int | None:
+    raw = table.raw(key)
+    if not table.has(key):
+        if missing:
+            table.report(key, f"is missing; {missing}")
+        return None
+    if not isinstance(raw, int) or isinstance(raw, bool) or not lowest <= raw <= highest:
+        table.report(key, f"must be a whole number from {lowest:,} to {highest:,}")
+        return None
+    return raw
+
+
+def _sampled(swept: tuple[SweptValue, ...], plan: _Sampling) -> tuple[SweptValue, ...]:
+    """Replace the ends of each range by samples between them.
+
+    The same seed gives the same samples. More samples of the Sobol sequence continue it, so that
+    a study extended this way keeps its cases; a Latin hypercube is drawn anew.
+    """
+    if not swept:
+        return ()
+    points = _unit_points(len(swept), plan)
+    return tuple(
+        SweptValue(
+            value.name,
+            value.unit_text,
+            tuple(
+                float(f"{value.values[0] + (value.values[-1] - value.values[0]) * part:.14g}")
+                for part in column
+            ),
+        )
+        for value, column in zip(swept, points.T.tolist(), strict=True)
+    )
+
+
+def _unit_points(dimensions: int, plan: _Sampling) -> Any:
+    """(samples, dimensions) numbers from 0 to 1."""
+    from scipy.stats import qmc
+
+    if plan.method == "sobol":
+        power = math.ceil(math.log2(plan.samples))
+        sobol = qmc.Sobol(dimensions, scramble=True, rng=plan.seed)
+        return sobol.random_base2(power)[: plan.samples]
+    return qmc.LatinHypercube(dimensions, rng=plan.seed).random(plan.samples)
 
 
 def _check_size(table: Table, sweep: Sweep) -> None:
@@ -162,7 +226,7 @@ def _check_size(table: Table, sweep: Sweep) -> None:
             table.label,
             f'the method "list" takes values in step, so all need the same count, not {listed}',
         )
-    elif sweep.case_count > MOST_CASES:
+    elif sweep.method == "grid" and sweep.case_count > MOST_CASES:
         table.notes.report(
             table.path,
             table.label,
@@ -175,6 +239,7 @@ class _SweepReader:
     def __init__(self, notes: Notes, numbers: dict[str, float], method: Method) -> None:
         self.notes = notes
         self.numbers = numbers
+        self.sampled = method in ("latin-hypercube", "sobol")
         self.method = method
         self.swept: list[SweptValue] = []
         self.name = ""
@@ -187,13 +252,16 @@ class _SweepReader:
             return
         before = len(self.notes.problems)
         self.name = name
-        if isinstance(raw, list):
+        if isinstance(raw, list) and not self.sampled:
             values = self.listed(path, key, raw, dimension)
         elif isinstance(raw, dict):
             values = self.range(path, key, raw, dimension)
         else:
             values = None
-            self.notes.report(path, key, f"this is {toml_kind(raw)}; write {_EXAMPLE}", raw)
+            example = _EXAMPLE
+            if self.sampled:
+                example = f'{_RANGE_EXAMPLE}, between which "{self.method}" takes its samples'
+            self.notes.report(path, key, f"this is {toml_kind(raw)}; write {example}", raw)
         if values is None or len(self.notes.problems) > before:
             return
         if self.method == "grid" and len(set(values)) < len(values):
@@ -253,14 +321,23 @@ class _SweepReader:
                 number = self.number(raw[end], dimension, (*path, end), f"{key}.{end}")
                 ends.append(number)
             else:
-                table.report(end, f"is missing; write {_EXAMPLE}")
+                example = _RANGE_EXAMPLE if self.sampled else _EXAMPLE
+                table.report(end, f"is missing; write {example}")
         count = self.count(table)
         table.close("a range")
         if count is None or len(ends) < 2 or ends[0] is None or ends[1] is None:
             return None
+        if self.sampled and ends[0] == ends[1]:
+            table.report("to", "equals `from`, so there is nothing to take samples between")
+            return None
         return spread(ends[0], ends[1], count)
 
     def count(self, table: Table) -> int | None:
+        if self.sampled:
+            if table.has("count"):
+                what = f'`samples` says how many cases "{self.method}" takes; leave it out'
+                table.report("count", what)
+            return 2
         if not table.has("count"):
             table.report("count", f"is missing; write {_EXAMPLE}")
             return None

@@ -21,6 +21,7 @@ from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, V
 from simkit.study.model import Antenna
 
 SEGMENTS = 7
+OF_THE_RUN = ("status", "reason", "case_key", "seconds", "solves", "worker")
 CRASH_MM, SEGFAULT_MM, HANG_MM, ERROR_MM, KILLED_ONCE_MM, BUG_MM, MISFIT_MM = 3, 5, 7, 9, 11, 13, 15
 """Strip widths at which the stand-in misbehaves."""
 
@@ -46,6 +47,7 @@ def solve(antenna: Antenna, plan: Plan) -> CaseResult:
     length_m, width_mm = strip.path_m[-1][0], round(strip.width_m * 1e3)
     leave_mark(length_m)
     time.sleep(float(os.environ.get("FAKE_SECONDS", "0")))
+    wait_at_the_gate()
     misbehave(width_mm)
     arrays = numbers(length_m, antenna.frequency.points)
     if width_mm == MISFIT_MM:
@@ -59,6 +61,13 @@ def leave_mark(length_m: float) -> None:
         Path(folder, f"{length_m:.6f}-{time.time_ns()}-{os.getpid()}").touch()
 
 
+def wait_at_the_gate() -> None:
+    """With FAKE_GATE set, go on after nine attempts only when there is a file of that name."""
+    if gate := os.environ.get("FAKE_GATE"):
+        while len(list(Path(os.environ["FAKE_MARKS"]).iterdir())) > 9 and not Path(gate).exists():
+            time.sleep(0.05)
+
+
 def misbehave(width_mm: int) -> None:
     if width_mm == CRASH_MM:
         os._exit(3)
@@ -68,7 +77,7 @@ def misbehave(width_mm: int) -> None:
         os.kill(os.getpid(), signal.SIGKILL)
     if width_mm == HANG_MM:
         time.sleep(600)
-    if width_mm == ERROR_MM:
+    if width_mm == ERROR_MM and "FAKE_MENDED" not in os.environ:
         raise EngineError("the matrix is singular")
     if width_mm == BUG_MM:
         raise KeyError("a name that is not there")
@@ -89,7 +98,7 @@ def numbers(length_m: float, points: int) -> dict[str, np.ndarray]:
     }
     arrays = {}
     for name, variable in VARIABLES.items():
-        if name in ("status", "reason", "case_key", "seconds", "solves"):
+        if name in OF_THE_RUN:
             continue
         dtype = numpy_dtype(name)
         values = rng.uniform(1, 100, [sizes[dim] for dim in variable.dims[1:]])

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from simkit.errors import StoreError, StudyError
+from simkit.errors import SimkitError, StoreError, StudyError
 from simkit.runner import InternalError, run
 from simkit.runner.progress import QuietProgress
 from simkit.store import open_results
@@ -105,6 +105,88 @@ def test_failed_cases_are_not_tried_again(go, make_study, marks):
     go(study)
     assert go(study).reused == 4
     assert len(marks()) == 4
+
+
+def test_failed_cases_are_tried_again_if_asked_for(go, make_study, marks, monkeypatch):
+    study = make_study([60, 61], [8, 9, 0])
+    first = go(study)
+    assert first.counts[Status.FAILED] == first.counts[Status.REFUSED] == 2
+    monkeypatch.setenv("FAKE_MENDED", "1")
+    summary = go(study, retry=True)
+    assert (summary.reused, summary.solved, summary.stopped) == (4, 2, "")
+    assert summary.counts[Status.SOLVED] == 4
+    assert len(marks()) == 6
+    assert "4 reused from the earlier run, 2 to solve" in log_of(summary)
+    dataset = open_results(summary.results_dir)
+    assert [str(text) for text in dataset["reason"][[1, 4]].values] == ["", ""]
+    assert np.isfinite(dataset["x"][[0, 1, 3, 4]]).all()
+    assert go(study, retry=True).solved == 0
+
+
+def test_what_fails_again_is_tried_once_a_run(go, make_study, marks):
+    study = make_study([60, 61], [8, 9])
+    go(study)
+    summary = go(study, retry=True)
+    assert (summary.reused, summary.solved) == (2, 2)
+    assert summary.counts[Status.FAILED] == 2
+    assert len(marks()) == 6
+
+
+def test_failed_cases_of_an_earlier_study_are_not_taken_over_if_retried(go, make_study, marks):
+    go(make_study([60, 61], [8, 9]))
+    summary = go(make_study([60, 61, 62], [8, 9]), retry=True)
+    assert (summary.reused, summary.solved) == (2, 4)
+
+
+def test_at_the_hour_no_further_block_is_started(go, direct, make_study, marks, monkeypatch):
+    from simkit.runner.stop import Deadline
+
+    study = make_study(ARMS, WIDTHS)
+    monkeypatch.setattr(Deadline, "passed", lambda self: len(marks()) > 3)
+    summary = go(study, until="07:00")
+    assert summary.stopped == "at 07:00, as asked"
+    assert not summary.complete
+    assert 4 <= len(marks()) == summary.solved < 15
+    assert "stopping at 07:00, as asked: the blocks in hand are finished" in log_of(summary)
+    monkeypatch.undo()
+    with pytest.raises(SimkitError, match="an hour and a minute of the day"):
+        go(study, until="seven")
+
+
+def test_a_long_block_is_written_before_it_is_whole(go, direct, make_study, marks, monkeypatch):
+    """A worker killed in it loses no more than came after."""
+    monkeypatch.setattr("simkit.runner.work.CHECKPOINT_S", 0.0)
+    written = []
+    whole = StoreFile.write_block
+
+    def note(self, block, content):
+        whole(self, block, content)
+        written.append(int(np.count_nonzero(content.arrays["status"])))
+        if len(written) == 3:
+            raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(StoreFile, "write_block", note)
+    study = make_study(range(60, 67))
+    with pytest.raises(StoreError, match="No space left"):
+        go(study, block_size=7)
+    assert written == [1, 2, 3]
+    monkeypatch.setattr(StoreFile, "write_block", whole)
+    summary = go(study)
+    assert (summary.reused, summary.solved) == (3, 4)
+    assert len(marks()) == 7
+
+
+def test_a_long_block_ends_early_when_the_run_is_stopping(
+    go, direct, make_study, marks, monkeypatch
+):
+    monkeypatch.setattr("simkit.runner.work.CHECKPOINT_S", 0.0)
+    monkeypatch.setattr("simkit.runner.work.may_start", lambda *_: len(marks()) < 3)
+    study = make_study(range(60, 67))
+    summary = go(study, block_size=7)
+    assert not summary.complete
+    assert summary.solved == 3
+    assert "block 0 stored in part: 3 solved" in log_of(summary)
+    monkeypatch.undo()
 
 
 def test_a_bug_stops_the_run_with_a_traceback_and_keeps_what_is_stored(go, make_study):

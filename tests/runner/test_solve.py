@@ -57,7 +57,7 @@ def test_every_variable_of_the_store_is_filled_in_its_shape(bent, bent_result):
         "sample": SAMPLES,
         "segment": grid.segments,
     }
-    of_the_run = {"status", "reason", "case_key", "seconds", "solves"}
+    of_the_run = {"status", "reason", "case_key", "seconds", "solves", "worker"}
     assert set(bent_result.arrays) == set(VARIABLES) - of_the_run
     for name, value in bent_result.arrays.items():
         expected = tuple(sizes[dim] for dim in VARIABLES[name].dims[1:])

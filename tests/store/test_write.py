@@ -39,6 +39,38 @@ def test_chunks_are_blocks_of_cases_with_a_checksum(make_results):
         assert any(type(codec).__name__ == "Crc32cCodec" for codec in array.metadata.codecs), name
 
 
+def test_a_large_block_is_one_file_whose_cases_are_read_alone(make_results):
+    """The gain of a case takes 28 kB, so 320 cases of it are 9 MB in one file."""
+    store = StoreFile(make_results(cases=700, block_size=320, swept=()) / "store.zarr")
+    assert store.array("gain").shards == (320, 10, 19, 37)
+    assert store.array("gain").chunks == (32, 10, 19, 37)
+    assert store.array("mode_q").shards is None
+    for block in (0, 2):
+        content = store.new_block(block)
+        for case in range(content.first, content.first + content.count):
+            content.put(case, case_values(case) | {"status": int(Status.SOLVED)})
+        store.write_block(block, content)
+    files = sorted(path.name for path in (store.path / "gain").glob("c.*"))
+    assert files == ["c.0.0.0.0", "c.2.0.0.0"]
+    again = StoreFile(store.path)
+    assert (again.array("gain")[699] == -3.5 * 699).all()
+    assert np.isnan(again.array("gain")[320]).all()
+    arrays = again.read_arrays(2)
+    assert len(arrays["gain"]) == 60
+    assert (arrays["x"][-1] == case_values(699)["x"]).all()
+
+
+@pytest.mark.parametrize("content", [b"", b"torn"])
+def test_a_torn_large_block_does_not_pass_as_data(make_results, content):
+    store = StoreFile(make_results(cases=320, block_size=320, swept=()) / "store.zarr")
+    block = store.new_block(0)
+    block.put(7, case_values(7) | {"status": int(Status.SOLVED)})
+    store.write_block(0, block)
+    (store.path / "gain" / "c.0.0.0.0").write_bytes(content)
+    with pytest.raises(ValueError, match=r"empty|checksum"):
+        StoreFile(store.path).read_arrays(0)
+
+
 def test_units_meanings_and_flags_are_kept(make_results):
     group = zarr.open_group(make_results() / "store.zarr")
     for name, variable in VARIABLES.items():
@@ -72,7 +104,7 @@ def test_a_short_last_block_leaves_the_others_alone(results):
         np.array_equal(before[n], after[n], equal_nan=before[n].dtype.kind in "fc") for n in after
     )
     assert store.read_statuses().tolist() == [1, 3, 5, 2, 1, 1]
-    assert store.read_keys() == [f"key {case}" for case in range(6)]
+    assert store.read_keys().tolist() == [b"key %d" % case for case in range(6)]
 
 
 def test_the_status_is_written_after_everything_else_is_on_the_disk(results, monkeypatch):
@@ -118,7 +150,7 @@ def test_a_torn_status_or_key_counts_as_waiting(results):
         chunk.write_bytes(chunk.read_bytes()[:-1])
     store = StoreFile(results / "store.zarr")
     assert store.read_statuses().tolist() == [0] * 6
-    assert store.read_keys() == [""] * 6
+    assert store.read_keys().tolist() == [b""] * 6
 
 
 def test_a_store_appears_whole_or_not_at_all(tmp_path, monkeypatch):
@@ -148,7 +180,7 @@ def test_a_store_appears_whole_or_not_at_all(tmp_path, monkeypatch):
 def test_a_store_that_cannot_be_used_is_refused_in_words(results, change, message):
     change(results / "store.zarr")
     with pytest.raises(StoreError, match=message):
-        StoreFile(results / "store.zarr")
+        StoreFile(results / "store.zarr").new_block(0)
 
 
 def _set_version(store, version):

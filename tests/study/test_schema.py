@@ -23,13 +23,6 @@ def test_feed_lines_belong_to_a_later_version(complaints: Complaints) -> None:
     assert "is not available in this version; leave it out; the connector then sits" in line
 
 
-@pytest.mark.parametrize("method", ["sobol", "latin-hypercube"])
-def test_samples_belong_to_a_later_version(complaints: Complaints, method: str) -> None:
-    sampling = f'[sampling]\nmethod = "{method}"\nsamples = 9\n[connector]'
-    (line,) = complaints(("[connector]", sampling))
-    assert "this method is not available in this version" in line
-
-
 @pytest.mark.parametrize(
     ("old", "new", "line", "sentence"),
     [

@@ -156,7 +156,6 @@ def test_a_carrier_of_a_known_plastic(load: Loader, name: str) -> None:
 
 def test_the_cross_section_knows_every_mixing_rule_of_the_study() -> None:
     from simkit.crosssection import mixed_permittivity
-
     from simkit.study.surroundings_schema import MIXING
 
     mixed = {name: mixed_permittivity(2.7, 0.4, rule).real for name, rule in MIXING.items()}

@@ -123,15 +123,72 @@ def test_entries_that_are_refused(complaints: Complaints, entry: str, sentence: 
             'width = {from="1 mm",to="9 mm",count=1000}',
             "this makes 1,001,000 cases (arm 1001, width 1000); at most 1,000,000",
         ),
-        ('[sampling]\nmethod = "latin-hypercube"\nsamples = 9\nseed = 1', "sampling.method = "),
-        ("[sampling]\nsamples = 9", 'has no meaning for the methods "grid" and "list"'),
-        ('[sampling]\nmethod = "gird"', 'must be one of "grid", "list"; do you mean "grid"?'),
+        ('[sampling]\nmethod = "sobol"\nsamples = 9', "there is no [sweep] to take samples of"),
+        ("[sampling]\nsamples = 9", 'has no meaning for the method "grid"; leave it out'),
+        ('[sampling]\nmethod = "gird"', '"sobol"; do you mean "grid"?'),
         ("[sampling]\nmethods = 1", "is not a key of [sampling]; do you mean `method`?"),
     ],
 )
 def test_samplings_that_are_refused(complaints: Complaints, added: str, sentence: str) -> None:
     (line,) = complaints(added=added)
     assert sentence in line
+
+
+SAMPLED = (
+    '\n[sampling]\nmethod = "{method}"\nsamples = {samples}\nseed = {seed}\n[sweep]\n'
+    'arm = {{ from = "70 mm", to = "82 mm" }}\nwidth = {{ from = "6 mm", to = "2 mm" }}\n'
+)
+
+
+def points(study: Study) -> list[tuple[float, ...]]:
+    return [tuple(case.values.values()) for case in study.cases()]
+
+
+@pytest.mark.parametrize("method", ["latin-hypercube", "sobol"])
+def test_samples_lie_between_the_ends_and_follow_the_seed(load: Loader, method: str) -> None:
+    first = load(added=SAMPLED.format(method=method, samples=12, seed=3))
+    assert (first.method, first.shape, first.case_count) == (method, (12,), 12)
+    found = points(first)
+    assert len(set(found)) == 12
+    assert all(0.070 <= arm <= 0.082 and 0.002 <= width <= 0.006 for arm, width in found)
+    assert found == points(load(added=SAMPLED.format(method=method, samples=12, seed=3)))
+    assert found != points(load(added=SAMPLED.format(method=method, samples=12, seed=4)))
+    assert first.display_unit("arm") == "mm"
+
+
+def test_a_latin_hypercube_has_one_sample_in_every_slice(load: Loader) -> None:
+    found = points(load(added=SAMPLED.format(method="latin-hypercube", samples=12, seed=3)))
+    assert sorted(int((arm - 0.070) / 0.001) for arm, _ in found) == list(range(12))
+    assert sorted(int((0.006 - width) / (0.004 / 12)) for _, width in found) == list(range(12))
+
+
+def test_more_samples_of_sobol_continue_the_sequence(load: Loader) -> None:
+    few = points(load(added=SAMPLED.format(method="sobol", samples=12, seed=3)))
+    many = points(load(added=SAMPLED.format(method="sobol", samples=50, seed=3)))
+    assert many[:12] == few
+    # A quarter of each half of the range, as of every box of this size.
+    assert sum(arm < 0.076 and width < 0.004 for arm, width in many[:32]) == 8
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "sentence"),
+    [
+        ("samples = 12\n", "", "sampling.samples: is missing; say how many cases to take"),
+        ("samples = 12", "samples = 0", "must be a whole number from 1 to 1,000,000"),
+        ("samples = 12", "samples = 2.5", "must be a whole number from 1 to 1,000,000"),
+        ("seed = 3", "seed = -1", "must be a whole number from 0 to"),
+        ('to = "82 mm" }', 'to = "82 mm", count = 5 }', "`samples` says how many cases"),
+        ('to = "82 mm"', 'to = "70 mm"', "equals `from`, so there is nothing to take samples"),
+        (', to = "82 mm"', "", 'is missing; write { from = "70 mm", to = "82 mm" }'),
+        ('{ from = "70 mm", to = "82 mm" }', '["70 mm", "82 mm"]', 'between which "sobol" takes'),
+    ],
+)
+def test_what_samples_need_is_said(
+    complaints: Complaints, old: str, new: str, sentence: str
+) -> None:
+    text = SAMPLED.format(method="sobol", samples=12, seed=3)
+    assert old in text
+    assert any(sentence in line for line in complaints(added=text.replace(old, new, 1)))
 
 
 def test_what_all_cases_share_may_not_move(complaints: Complaints) -> None:

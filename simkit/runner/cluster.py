@@ -1,0 +1,190 @@
+"""Blocks worked on by the workers of a dask cluster that is there already."""
+
+from __future__ import annotations
+
+import contextlib
+import logging
+import time
+from collections.abc import Callable, Mapping
+from typing import Any
+
+from simkit.engine.child import interrupts_held
+from simkit.errors import SimkitError
+from simkit.runner.identity import program_versions
+from simkit.runner.pool import do_block, packed, set_up_dask
+from simkit.runner.work import BlockJob, Receipt
+
+CONNECT_S = 20.0
+WORKERS_S = 60.0
+"""Longest wait for the first worker."""
+
+_LOOK_S = 2.0
+_TOPIC = "simkit"
+
+
+class ClusterPool:
+    """Workers of a cluster, as many as there are at the moment.
+
+    Parameters
+    ----------
+    address : str
+        Of the scheduler, ``tcp://host:port``.
+    function : str
+        Solver, as `Child` takes it.
+    say : callable
+        Shows one line.
+
+    Raises
+    ------
+    SimkitError
+        There is no scheduler, no worker, or a worker with other versions of simkit or engine.
+    """
+
+    def __init__(self, address: str, function: str, say: Callable[[str], None]) -> None:
+        self._address = address
+        self._function = function
+        self._say = say
+        self._versions = program_versions()
+        self._size, self._looked = 0, 0.0
+        self._settings = self._quietly()
+        try:
+            self._client = self._connect()
+            self._wait_for_workers()
+            check_versions(self._ask_versions(), self._versions)
+            self._client.subscribe_topic(_TOPIC, lambda event: self._say(str(event[1])))
+        except BaseException:
+            self.close()
+            raise
+        self._say(f"{_workers_text(self.size, address)}{self._dashboard()}")
+
+    @staticmethod
+    def _quietly() -> contextlib.ExitStack:
+        """Settings for dask, and no tracebacks of its own between the lines of the run."""
+        settings = contextlib.ExitStack()
+        settings.enter_context(set_up_dask({}))
+        from distributed.utils import silence_logging_cmgr
+
+        settings.enter_context(silence_logging_cmgr(logging.CRITICAL))
+        return settings
+
+    def _connect(self) -> Any:
+        from distributed import Client
+
+        try:
+            with interrupts_held():
+                return Client(self._address, timeout=CONNECT_S)  # type: ignore[no-untyped-call]
+        except (OSError, ValueError) as error:
+            raise SimkitError(
+                f"{self._address}: there is no scheduler to reach ({error}); `dask scheduler` "
+                "starts one and prints its address"
+            ) from error
+
+    def _wait_for_workers(self) -> None:
+        end = time.monotonic() + WORKERS_S
+        if not self._client.nthreads():
+            self._say(f"waiting for workers at {self._address}")
+        while not self._client.nthreads():
+            if time.monotonic() > end:
+                raise SimkitError(
+                    f"{self._address}: no worker has joined this scheduler within "
+                    f"{WORKERS_S:.0f} s; `dask worker {self._address}` starts some"
+                )
+            time.sleep(0.25)
+
+    def _ask_versions(self) -> dict[str, Any]:
+        def versions() -> Any:  # sent by its code: a worker without simkit can answer too
+            try:
+                from simkit.runner.identity import program_versions
+            except ImportError:
+                return None
+            return program_versions()
+
+        found: dict[str, Any] = self._client.run(versions)
+        return found
+
+    def _dashboard(self) -> str:
+        info = self._client.scheduler_info()
+        has_one = "dashboard" in info.get("services", {})
+        return f", dashboard {self._client.dashboard_link}" if has_one else ""
+
+    @property
+    def size(self) -> int:
+        """Threads of all workers now, at least 1: what is handed out waits for the next worker."""
+        if time.monotonic() - self._looked > _LOOK_S:
+            try:
+                now = sum(self._client.nthreads().values())
+            except (OSError, TimeoutError):
+                now = self._size  # the blocks in flight will tell that the scheduler is gone
+            if self._looked and now != self._size:
+                self._say(_workers_text(now, self._address))
+            self._size, self._looked = now, time.monotonic()
+        return max(1, self._size)
+
+    def submit(self, job: BlockJob) -> Any:
+        """Start a block some time soon."""
+        return self._client.submit(
+            do_checked_block, self._function, packed(job), self._versions, pure=False
+        )
+
+    def close(self) -> None:
+        """Leave the cluster; what its workers have in hand is dropped before it is written."""
+        from distributed import TimeoutError as DaskTimeoutError
+
+        client = getattr(self, "_client", None)
+        try:
+            if client is not None:
+                client.close(timeout=5)
+        except (OSError, DaskTimeoutError):
+            logging.getLogger(__name__).debug("the scheduler was slow", exc_info=True)
+        finally:
+            self._settings.close()
+
+
+def _workers_text(count: int, address: str) -> str:
+    return f"{count} {'worker' if count == 1 else 'workers'} at {address}"
+
+
+def do_checked_block(function: str, job: bytes, versions: Mapping[str, str]) -> Receipt:
+    """Task of a worker: one block, unless the worker joined with other versions meanwhile."""
+    if program_versions() != versions:
+        from distributed import Reschedule, get_worker
+
+        worker: Any = get_worker()
+        if not hasattr(worker, "simkit_said"):
+            worker.simkit_said = True
+            text = _difference(worker.address, program_versions(), versions)
+            worker.log_event(_TOPIC, f"no block is given to {text}")
+        time.sleep(1.0)
+        raise Reschedule
+    return do_block(function, job)
+
+
+def check_versions(found: Mapping[str, Any], wanted: Mapping[str, str]) -> None:
+    """Refuse to run where numbers of two kinds would come out.
+
+    Raises
+    ------
+    SimkitError
+        With every worker that differs.
+    """
+    others = [
+        _difference(worker, versions, wanted)
+        for worker, versions in found.items()
+        if versions != dict(wanted)
+    ]
+    if others:
+        raise SimkitError(
+            f"nothing is solved, because not all workers are alike: {'; '.join(others)}. Install "
+            "the same simkit and engine everywhere and start these workers again"
+        )
+
+
+def _difference(worker: str, found: Mapping[str, str] | None, wanted: Mapping[str, str]) -> str:
+    if found is None:
+        return f"worker {worker}, which has no simkit"
+    parts = [
+        f"{name} {found.get(name)} instead of {value}"
+        for name, value in wanted.items()
+        if found.get(name) != value
+    ]
+    return f"worker {worker}, which has {', '.join(parts)}"

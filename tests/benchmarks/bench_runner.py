@@ -1,0 +1,227 @@
+"""What a run costs beside the engine, and beside the script one would write instead.
+
+    python tests/benchmarks/bench_runner.py [CASES]
+
+A strip of 150 mm x 6 mm as one wire of about 51 segments, 2801 frequencies from 0.1 to 2.9 GHz; and
+one of 600 mm, of about 200 segments. Wall times are of one session on one machine, whatever else it
+does; processor times are those of all processes of a run, the start of its workers included.
+Nothing is asserted. Linear algebra runs on one thread, as in the workers.
+"""
+
+# ruff: noqa: E402  the number of threads is read when numpy is loaded
+
+from __future__ import annotations
+
+import multiprocessing
+import os
+import shutil
+import sys
+import tempfile
+import time
+from collections.abc import Callable
+from pathlib import Path
+
+for _library in ("OMP", "OPENBLAS", "MKL"):
+    os.environ[f"{_library}_NUM_THREADS"] = "1"
+
+import numpy as np
+import psutil
+
+from simkit.engine.pynec import solve_wires
+from simkit.geometry import build_wires
+from simkit.geometry.wires import Wire
+from simkit.runner import run
+from simkit.runner.prepare import Solver, prepare
+from simkit.runner.progress import QuietProgress, Tally
+from simkit.runner.solve import solve_case
+from simkit.store import open_results
+from simkit.study import Study, load_study
+
+WORKERS = 2
+FREQUENCY_HZ = np.linspace(0.1e9, 2.9e9, 2801)
+RADIUS_M = 0.0015
+
+TEXT = """\
+title = "Bench {length}"
+
+[values]
+arm = "{length} mm"
+width = "6 mm"
+
+[[strip]]
+name = "arm"
+path = [["0 mm", "0 mm"], ["arm", "0 mm"]]
+width = "width"
+
+[feed]
+strip = "arm"
+at = "arm/2"
+
+[frequency]
+start = "0.1 GHz"
+stop = "2.9 GHz"
+points = 2801
+
+[sweep]
+arm = {{ from = "{length} mm", to = "{longest} mm", count = {cases} }}
+"""
+
+
+def study_of(folder: Path, length_mm: int, cases: int) -> Study:
+    path = folder / f"bench_{length_mm}.toml"
+    longest = length_mm * 1.05
+    path.write_text(TEXT.format(length=length_mm, longest=longest, cases=cases))
+    return load_study(path)
+
+
+# -- the script one would write instead -----------------------------------------------------------
+
+
+def script_case(job: tuple[float, str]) -> None:
+    """Feed current of one strip at every frequency, each solved for, into a file."""
+    length_m, path = job
+    wires = (Wire((0.0, 0.0, 0.0), (length_m, 0.0, 0.0), 51),)
+    feed = ((25, 1.0),)
+    current = [solve_wires(wires, RADIUS_M, f, [feed])[0, 25] for f in FREQUENCY_HZ]
+    np.savez(path, frequency_hz=FREQUENCY_HZ, current=current)
+
+
+def script(folder: Path, cases: int) -> float:
+    """Wall time of a process pool over some cases."""
+    jobs = [(0.15 + 0.0001 * k, str(folder / f"case_{k}.npz")) for k in range(cases)]
+    begin = time.monotonic()
+    with multiprocessing.get_context("spawn").Pool(WORKERS) as pool:
+        pool.map(script_case, jobs, chunksize=1)
+    return time.monotonic() - begin
+
+
+# -- a run ---------------------------------------------------------------------------------------
+
+
+class Clock(QuietProgress):
+    """Notes when blocks come in, and the processor time of all processes then."""
+
+    def __init__(self) -> None:
+        self.seen: list[tuple[float, int]] = []
+        self.processor_s = 0.0
+
+    def update(self, tally: Tally) -> None:
+        """Note one block."""
+        self.seen.append((time.monotonic(), tally.done))
+        everyone = [psutil.Process(), *psutil.Process().children(recursive=True)]
+        self.processor_s = sum(sum(p.cpu_times()[:2]) for p in everyone if p.is_running())
+
+    def steady_rate(self) -> float:
+        """Cases a second between the first and the last block."""
+        (begin, first), (end, last) = self.seen[0], self.seen[-1]
+        return (last - first) / (end - begin)
+
+
+def timed_run(study: Study, folder: Path, solver: Solver | None = None) -> tuple[float, Clock]:
+    """Wall time of a whole run and what its clock saw."""
+    clock = Clock()
+    own = sum(psutil.Process().cpu_times()[:2])
+    begin = time.monotonic()
+    run(study, folder / "out", workers=WORKERS, progress=clock, solver=solver)
+    wall = time.monotonic() - begin
+    clock.processor_s -= own
+    return wall, clock
+
+
+def engine_s(study: Study, results: Path, part: int) -> float:
+    """Processor time of the engine alone for every solution the run made, from some cases of it."""
+    prepared = prepare(study, Solver())
+    dataset = open_results(results)
+    solves, cases = dataset["solves"].values, range(0, study.case_count, part)
+    spent, counted = 0.0, 0
+    for case in cases:
+        antenna = study.case(case).antenna
+        assert antenna is not None
+        grid = build_wires(antenna, prepared.plan)
+        samples = dataset["sample_frequency"].values[case]
+        begin = time.process_time()
+        for frequency in samples[np.isfinite(samples)]:
+            solve_wires(grid.wires, grid.radius_m, frequency, [grid.source, grid.probe])
+        spent += time.process_time() - begin
+        counted += int(solves[case])
+    return spent / counted * float(solves.sum())
+
+
+# -- two bare processes ---------------------------------------------------------------------------
+
+
+def bare_cases(study_path: str, first: int, ready: Callable[[], None], out: object) -> None:
+    """Solve every second case without a store."""
+    study = load_study(study_path)
+    plan = prepare(study, Solver()).plan
+    ready()  # both begin together
+    begin = time.monotonic()
+    count = 0
+    for case in range(first, study.case_count, WORKERS):
+        antenna = study.case(case).antenna
+        assert antenna is not None
+        solve_case(antenna, plan)
+        count += 1
+    out.put(count / (time.monotonic() - begin))  # type: ignore[attr-defined]
+
+
+def bare_rate(study: Study) -> float:
+    """Cases a second of two processes that only solve."""
+    context = multiprocessing.get_context("spawn")
+    barrier, rates = context.Barrier(WORKERS), context.Queue()
+    several = [
+        context.Process(target=bare_cases, args=(str(study.path), first, barrier.wait, rates))
+        for first in range(WORKERS)
+    ]
+    for process in several:
+        process.start()
+    total = sum(rates.get() for _ in several)
+    for process in several:
+        process.join()
+    return total
+
+
+def main() -> None:
+    cases = int(sys.argv[1]) if len(sys.argv) > 1 else 400
+    folder = Path(tempfile.mkdtemp(prefix="simkit-bench-"))
+    try:
+        print(f"load of the machine before: {os.getloadavg()[0]:.1f}")
+        small = study_of(folder, 150, cases)
+        few = 8
+        script_s = script(folder, few)
+        wall, clock = timed_run(small, folder)
+        script_s = (script_s + script(folder, few)) / 2
+        ratio = (cases / wall) / (few / script_s)
+        steady = clock.steady_rate() / (few / script_s)
+        print(
+            f"script: {few / script_s:.2f} cases a second; run of {cases}: {cases / wall:.1f}, "
+            f"{clock.steady_rate():.1f} between its first and last block"
+        )
+        print(f"end to end over the script        {ratio:.0f}, {steady:.0f} without the start")
+        bare = bare_rate(small)
+        print(f"two workers over two bare processes  {clock.steady_rate() / bare:.2f}")
+        for study, seen, took, part in ((small, clock, wall, 20),):
+            report(study, folder, seen, took, part)
+        large = study_of(folder, 600, max(20, cases // 10))
+        took, seen = timed_run(large, folder)
+        report(large, folder, seen, took, 5)
+        print(f"load of the machine after: {os.getloadavg()[0]:.1f}")
+    finally:
+        shutil.rmtree(folder, ignore_errors=True)
+
+
+def report(study: Study, folder: Path, clock: Clock, wall: float, part: int) -> None:
+    """Print a run's time over that of the engine alone."""
+    results = folder / "out" / study.path.stem
+    engine = engine_s(study, results, part)
+    segments = open_results(results).sizes["segment"]
+    solving = float(open_results(results)["seconds"].values.sum())
+    print(
+        f"{segments} segments, {study.case_count} cases: engine {engine:.1f} s; over it: "
+        f"wall x workers {wall * WORKERS / engine:.2f}, processor time of all processes "
+        f"{clock.processor_s / engine:.2f}, wall time inside the cases {solving / engine:.2f}"
+    )
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,75 @@
+"""Options of `simkit run` and what `simkit status` says while a run goes on."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import fsspec
+import pytest
+
+from simkit.cli.run import drawing_folder
+from simkit.runner.lock import take_lock
+from simkit.store.remote import place
+
+from .hook import Session
+
+
+def test_a_cluster_has_its_own_workers(session: Session) -> None:
+    words = ("run", session.study, "--workers", "2", "--scheduler", "tcp://127.0.0.1:1")
+    result = session.simkit(*words)
+    assert result.exit_code == 2
+    assert "--workers is for processes here" in result.output
+
+
+def test_an_hour_that_is_none_is_said_before_anything_is_done(
+    session: Session, tmp_path: Path
+) -> None:
+    out = tmp_path / "out"
+    result = session.simkit("run", session.study, "--results", out, "--until", "25:00")
+    assert result.exit_code == 1
+    assert "write an hour and a minute of the day" in result.stderr
+    assert not out.exists()
+
+
+def test_retry_leaves_refused_cases_alone(session: Session) -> None:
+    words = ("run", session.study, "--results", session.results.parent, "--workers", "1")
+    result = session.simkit(*words, "--retry")
+    assert "3 reused from the earlier run, 0 to solve" in result.stderr
+
+
+def test_status_before_anything_is_stored(session: Session, tmp_path: Path) -> None:
+    lock = take_lock(tmp_path)
+    try:
+        lock.note({"per_second": 12.5, "left_s": 400.0})
+        text = session.simkit("status", tmp_path).output
+        row = json.loads(session.simkit("status", tmp_path, "--json").stdout)
+    finally:
+        lock.release()
+    assert "the first run is preparing; nothing is stored yet" in text
+    assert "running now: process " in text
+    assert "12.5 cases a second, about 6 min 40 s left" in text
+    assert row["running"] is True
+    assert row["counts"] is None
+    assert session.simkit("status", tmp_path).exit_code == 1
+
+
+def test_pictures_for_an_address_are_sent_there(capsys: pytest.CaptureFixture[str]) -> None:
+    results = place("memory://pictures/hook")
+    with drawing_folder(results) as folder:
+        (folder / "plots").mkdir()
+        (folder / "plots" / "geometry.png").write_bytes(b"picture")
+    assert fsspec.filesystem("memory").cat("/pictures/hook/plots/geometry.png") == b"picture"
+    assert "sent to memory://pictures/hook" in capsys.readouterr().out
+    fsspec.filesystem("memory").rm("/pictures", recursive=True)
+
+
+def test_results_at_an_address_are_read_by_every_command(session: Session, tmp_path: Path) -> None:
+    there = place("memory://reading/hook")
+    there.upload_tree(session.results)  # type: ignore[union-attr]
+    for words in (("status",), ("modes", "--json")):
+        one = session.simkit(words[0], session.results, *words[1:])
+        other = session.simkit(words[0], "memory://reading/hook", *words[1:])
+        assert other.exit_code == 0, other.output
+        assert other.stdout == one.stdout
+    fsspec.filesystem("memory").rm("/reading", recursive=True)
