@@ -404,14 +404,16 @@ def test_expected_error_grows_with_corners_and_tapers():
     [
         (of(strip("s", [(-80, 0), (0, 0), (80, 0)], (36, 3, 36)), at=80), "widens 12.0 times"),
         (of(strip("s", turned(75, 130), 4), at=35), r"turns by 130 degrees; folds over 120"),
+        (SHAPES["bend of 110 degrees"], "turns by 110 degrees; rails hold up to 100"),
+        (SHAPES["loop"], "rails have its modes up to 0.5 % low"),
     ],
-    ids=["12 to 1", "fold"],
+    ids=["12 to 1", "fold", "sharp", "loop"],
 )
 def test_limits_are_doubted(antenna, doubt):
     assert any(doubt.replace("\\", "") in found for found in grid_of(antenna).doubts)
 
 
-@named
+@pytest.mark.parametrize("name", [n for n in SHAPES if n not in ("loop", "bend of 110 degrees")])
 def test_shapes_within_the_limits_are_not_doubted(name):
     assert grid_of(SHAPES[name]).doubts == ()
 

@@ -97,28 +97,13 @@ def test_straight_strips(row, model, quantity):
     row.check(quantity, found(row, quantity, model))
 
 
+@pytest.mark.usefixtures("missed")
 @pytest.mark.parametrize("quantity", QUANTITIES)
+@pytest.mark.parametrize("model", MODELS)
 @pytest.mark.published("full_wave_strips", "bent")
-def test_bent_strips(row, quantity):
+def test_bent_strips(row, model, quantity):
     bent = row.data["tolerance"].get(f"bent_{quantity}")
-    row.check(quantity, found(row, quantity), f"bent_{quantity}" if bent else None)
-
-
-@pytest.mark.parametrize("quantity", ["mode_mhz", "mode_q", "peak_mhz", "dip_mhz"])
-@pytest.mark.published("full_wave_strips", "bent")
-def test_bent_strips_of_rails(row, quantity):
-    """Whether or not the power of their split source balances."""
-    one = described(row.data["antenna"][row["antenna"]], "grid")
-    arrays = solve_case(one, plan_mesh([one])).arrays
-    name, factor = STORED[quantity]
-    bent = row.data["tolerance"].get(f"bent_{quantity}")
-    slot = slot_of(arrays, row["half_waves"])
-    row.check(quantity, arrays[name][slot] * factor, f"bent_{quantity}" if bent else None)
-
-
-@pytest.mark.published("full_wave_strips", "bent")
-def test_power_of_bent_strips_of_rails_balances(row):
-    solved(described(row.data["antenna"][row["antenna"]], "grid"))
+    row.check(quantity, found(row, quantity, model), f"bent_{quantity}" if bent else None)
 
 
 @pytest.mark.usefixtures("missed")
@@ -129,7 +114,16 @@ def test_tapered_strips(row, quantity):
 
 
 @pytest.mark.published("full_wave_strips", "straight")
-def test_line_and_grid_agree(row):
+def test_line_and_grid_agree_on_straight_strips(row):
+    agree(row)
+
+
+@pytest.mark.published("full_wave_strips", "bent")
+def test_line_and_grid_agree_on_bent_strips(row):
+    agree(row)
+
+
+def agree(row):
     one, other = (found(row, "mode_mhz", model) for model in MODELS)
     allowed = row.data["tolerance"]["models_mode_mhz"]["relative"]
     assert other == pytest.approx(one, rel=allowed), row["name"]

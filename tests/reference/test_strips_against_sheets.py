@@ -47,27 +47,19 @@ UNBALANCED = {
     "taper-3-9": "1.036 at the full-wave mode: fed half way to the tip",
     "taper-3-18": "1.041 at the full-wave mode: fed half way to the tip",
     "taper-5-25": "1.050 at the full-wave mode: fed half way to the tip",
-    "slant-45-w6": "1.031 at the full-wave mode",
+    "slant-45-w6": "1.030 at the third mode",
 }
 REFUSED = {
     "cross-off-w6": "strips that cross are not covered",
-    "vee-120-taper-4-12": "grid: rails of the two legs come within 0.445 mm of each other in the "
+    "vee-120-taper-4-12": "grid: rails of the two legs come within two radii of each other in the "
     "block of a corner inside a taper",
 }
 DISAGREE = {
-    "bend-90-100-50-w4": "grid over line: +0.01, -0.10, -0.38 %",
-    "vee-60-w8": "grid over line: -0.05, +0.92, -0.65 %",
-    "zigzag-70-w6": "grid over line: +0.05, -0.03, -0.39 %",
-    "zigzag-60-w8": "grid over line: -0.17, -0.10, -0.32 %",
-    "zigzag-45-w8": "grid over line: -0.22, -0.25, -0.46 %",
-    "u-50-50-50-w6": "grid over line: +0.10, -0.11, -0.39 %",
-    "u-60-30-60-w4": "grid over line: +0.13, -0.34, -0.07 %",
-    "loop-60x40-w4": "grid over line: -0.38, +0.09, -0.75 %",
-    "loop-50x50-w6": "grid over line: -0.23, -0.23, -0.65 %",
-    "loop-80x25-w5": "grid over line: -0.50, +0.29, -0.37 %",
-    "tee-off-w8": "grid over line: -0.15, -0.25, -0.36 %",
+    "vee-60-w8": "grid over line: -0.06, +0.92, -0.46 %",
+    "loop-60x40-w4": "grid over line: -0.30, +0.08, -0.49 %",
+    "loop-80x25-w5": "grid over line: -0.35, +0.14, -0.09 %",
 }
-"""Nearly all by the third mode of the grid model, which comes out low where there are corners."""
+"""All three are beyond the limits of the grid model, which doubts them."""
 
 
 def shapes(*missed: dict[str, str]) -> pytest.MarkDecorator:
