@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
+from tempfile import TemporaryDirectory
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
@@ -11,10 +12,18 @@ if TYPE_CHECKING:
 
 def study_of(results: str | Path) -> Study | None:
     """Return the study a results folder was made from, None if its copy is not there."""
+    from simkit.store.remote import place
     from simkit.study import load_study
 
-    copy = Path(results) / "study.toml"
-    return load_study(copy) if copy.is_file() else None
+    copy = place(results) / "study.toml"
+    if not copy.is_file():
+        return None
+    if isinstance(copy, Path):
+        return load_study(copy)
+    with TemporaryDirectory(prefix="simkit-") as folder:
+        local = Path(folder) / copy.name
+        local.write_text(copy.read_text(), encoding="utf-8")
+        return load_study(local)
 
 
 def build_of(study: Study | None, measured: str | Path) -> dict[str, float] | None:

@@ -30,6 +30,11 @@ from simkit.runner.result import CaseResult
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
 from simkit.study.model import Antenna
 
+SEGMENT_WEIGHT = 0.1
+"""Weight of a segment's current against its strip's in judging a sweep. On rails of 1.5 to 30 mm
+wide strips it leaves 1.6 % of the largest current as the error of any, and the poles are those of
+the totals alone; it costs 0 to 8 samples where rails are not tied, else up to 4."""
+
 BALANCE_TOLERANCE = 0.03
 """Radiated plus lost power may differ from the input power by this part before a case is doubtful.
 
@@ -136,16 +141,26 @@ def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3)
     # One way for the whole band: a change from one to the other would be a step.
     earth: EarthMethod = "integrals" if far_from_earth(grid, antenna) else "reflection"
     band = antenna.frequency
-    totals = totals_matrix(grid)
-    none = np.zeros_like(totals)
     return adaptive_sweep(
         solve,
         band.start_hz,
         band.stop_hz,
         tolerance=tolerance,
         most_samples=SAMPLES,
-        observe=np.block([[totals, none], [none, totals]]),
+        observe=_judged(grid),
     )
+
+
+def _judged(grid: WireGrid) -> FloatArray:
+    """What a sweep is judged by: totals of the strips and, less strictly, every segment's current.
+
+    Without the latter, currents between rails are found at the samples only: in between they come
+    out wrong by the size of the largest, and a mode's own current drowns in them.
+    """
+    totals = totals_matrix(grid)
+    one = np.vstack([totals, SEGMENT_WEIGHT * np.eye(grid.segments)])
+    none = np.zeros_like(one)
+    return np.block([[one, none], [none, one]])
 
 
 def _series_loads(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> list[SeriesLoad]:

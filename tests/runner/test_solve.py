@@ -281,30 +281,21 @@ def test_scaling_a_grid_changes_nothing(make, factor):
 
 
 def test_a_mirrored_grid_has_the_same_numbers(make):
-    """Rails change places, so sums are taken in another order."""
+    """Rails change places, so the random projection of the sweep sees another order.
+
+    The two fits then differ by up to the sweep's tolerance, 1e-3 of the median current; near the
+    antiresonance, where the feed current is small, that is more of the impedance.
+    """
     path = [(0, 0), (60, 0), (80, 40)]
     one, other = (
         solved(replace(make.strip([(x, sign * y) for x, y in path], 5, 22), model="grid"))
         for sign in (1, -1)
     )
-    assert other["impedance"] == pytest.approx(one["impedance"], rel=1e-6)
-    assert modes_of(other) == pytest.approx(modes_of(one), rel=1e-7)
+    assert other["impedance"] == pytest.approx(one["impedance"], rel=4e-3)
+    assert modes_of(other) == pytest.approx(modes_of(one), rel=1e-4)
 
 
-@pytest.mark.parametrize(
-    "model",
-    [
-        "line",
-        pytest.param(
-            "grid",
-            marks=pytest.mark.xfail(
-                strict=True,
-                reason="the sweep is fitted to the strips' total currents; those between rails, "
-                "which resonate and circulate by themselves, are off by the size of the largest",
-            ),
-        ),
-    ],
-)
+@pytest.mark.parametrize("model", ["line", "grid"])
 def test_currents_between_the_samples_are_those_of_a_direct_solution(make, model):
     """Ten times the sweep's tolerance, which holds between two models of the fit."""
     antenna = replace(make.straight(150, 1.5, 37.5), model=model)
