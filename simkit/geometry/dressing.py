@@ -158,6 +158,13 @@ def _end(metal: Metal, carrier: Carrier, width_m: float) -> EndCorrection:
     return end_correction(_section(metal, carrier, width_m), carrier.end_overhang_m)
 
 
+def section_of(antenna: Antenna) -> CrossSection:
+    """Cross-section of the widest strip on its carrier; the antenna must have one."""
+    assert antenna.carrier is not None  # told by the caller
+    widest = max(width for strip in antenna.strips for width in strip.widths)
+    return _section(antenna.metal, antenna.carrier, widest)
+
+
 def dressing_of(antenna: Antenna) -> Dressing:
     """Metal and carrier of an antenna."""
     widths = [width for strip in antenna.strips for width in strip.widths]

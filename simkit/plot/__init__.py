@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from simkit.plot.charge import plot_charge
+    from simkit.plot.crosssection import plot_crosssection
     from simkit.plot.current import plot_current
     from simkit.plot.density import (
         plot_charge_map,
@@ -34,6 +35,7 @@ __all__ = [
     "plot_charge",
     "plot_charge_map",
     "plot_charge_maps",
+    "plot_crosssection",
     "plot_current",
     "plot_current_map",
     "plot_current_maps",
@@ -55,6 +57,7 @@ _HOME = {
     "plot_charge": "charge",
     "plot_charge_map": "density",
     "plot_charge_maps": "density",
+    "plot_crosssection": "crosssection",
     "plot_current": "current",
     "plot_current_map": "density",
     "plot_current_maps": "density",

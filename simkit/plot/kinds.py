@@ -55,6 +55,7 @@ KINDS: dict[str, Kind] = {
         ),
         Kind("charge_map", "charge density of the lowest modes on the metal", "plot_charge_maps"),
         Kind("pattern", "gain of each mode in the three principal planes", "plot_pattern_cuts"),
+        Kind("carrier", "cross-section of the widest strip with its carrier", "plot_crosssection"),
         Kind("tracks", "modes and dips against a swept value", "plot_tracks", of_one_case=False),
     )
 }

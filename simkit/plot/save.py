@@ -15,6 +15,7 @@ from matplotlib.figure import Figure
 from simkit.errors import MeasurementError, StoreError
 from simkit.plot.cases import describe_case, is_solved, nearest_case, one_case, title_of
 from simkit.plot.charge import plot_charge
+from simkit.plot.crosssection import plot_crosssection
 from simkit.plot.current import plot_current
 from simkit.plot.density import plot_charge_maps, plot_current_maps
 from simkit.plot.geometry import plot_geometry
@@ -42,7 +43,7 @@ _OF_RESULTS = {
 }
 _ALONG = {"current": plot_current, "charge": plot_charge}
 _ON_METAL = {"current_map": plot_current_maps, "charge_map": plot_charge_maps}
-NEED_STUDY = ("geometry", *_ON_METAL)
+NEED_STUDY = ("geometry", "carrier", *_ON_METAL)
 
 
 def draw(
@@ -87,6 +88,8 @@ def draw(
         builds = measured_builds(study, by or next(iter(swept_names(dataset)), ""))
         return _figure(plot_tracks(dataset, by, nominal=nominal, measured=builds))
     number = nearest_case(dataset, nominal) if case is None else case
+    if kind == "carrier":
+        return _draw_carrier(number, study)
     if kind in NEED_STUDY:
         return _draw_metal(dataset, kind, number, study)
     if kind in _ALONG:
@@ -157,6 +160,8 @@ def save_all(
     for kind in KINDS.values():
         if (kind.name in NEED_STUDY and study is None) or not kind.of_one_case:
             continue
+        if kind.name == "carrier" and not _has_carrier(_antenna(number, study)):
+            continue
         if kind.name == "geometry" or is_solved(chosen):
             path = save_plot(
                 dataset, kind.name, target / f"{kind.name}.png", case=number, study=study
@@ -191,6 +196,22 @@ def measured_builds(study: Study | None, by: str) -> list[MeasuredBuild]:
                 places = tuple(dip.frequency_hz for dip in dips)
                 builds.append(MeasuredBuild(measured.path.stem, measured.build[by], places))
     return builds
+
+
+def _has_carrier(antenna: Antenna | None) -> bool:
+    return antenna is not None and antenna.carrier is not None
+
+
+def _draw_carrier(number: int, study: Study | None) -> Figure:
+    from simkit.geometry.dressing import section_of
+
+    antenna = _antenna(number, study)
+    if antenna is None or antenna.carrier is None:
+        raise StoreError(
+            "the picture 'carrier' needs a study with a [carrier] table; this one has its strips "
+            "in air, or its copy is not in the results folder"
+        )
+    return _figure(plot_crosssection(section_of(antenna)))
 
 
 def _antenna(number: int, study: Study | None) -> Antenna | None:

@@ -84,6 +84,18 @@ def test_without_study_or_sweep_there_is_less_to_draw(dataset: xr.Dataset, tmp_p
     assert names == ["impedance", "reflection", "smith", "current", "charge", "pattern"]
 
 
+def test_a_carrier_is_drawn_where_there_is_one(
+    dataset: xr.Dataset, study_path: Path, tmp_path: Path
+) -> None:
+    with pytest.raises(StoreError, match=r"needs a study with a \[carrier\] table"):
+        save_plot(dataset, "carrier", tmp_path / "a.png", study=load_study(study_path))
+    carried = study_path.with_name("carried.toml")
+    table = '[carrier]\npermittivity = 2.7\nloss_tangent = 0.01\nthickness = "2 mm"\n'
+    carried.write_text(f"{STUDY}\n{table}", encoding="utf-8")
+    (ax, *_) = draw(dataset, "carrier", study=load_study(carried)).axes
+    assert "mm" in ax.get_xlabel()
+
+
 def test_nothing_solved_leaves_geometry_and_empty_tracks(
     dataset: xr.Dataset, study_path: Path, tmp_path: Path
 ) -> None:
@@ -161,7 +173,7 @@ def test_drawing_leaves_pyplot_alone_and_listing_needs_no_matplotlib(tmp_path: P
     code = (
         "import sys\n"
         "from simkit.plot import KINDS\n"
-        "assert len(KINDS) == 10\n"
+        "assert len(KINDS) == 11\n"
         "assert not [m for m in sys.modules if m.startswith(('matplotlib', 'xarray'))]\n"
         "import simkit.plot.save\n"
         "assert 'matplotlib.figure' in sys.modules\n"
