@@ -24,7 +24,9 @@ class ErrorSizes:
     Attributes
     ----------
     model : float
-        Relative, of each mode's frequency on its own.
+        Relative, of all modelled frequencies together.
+    mode : float
+        Relative, of each mode's frequency on its own, besides.
     capacitance_f : float
         Across the feed: solder, the connector's flange, the model of the gap.
     delay_s : float
@@ -35,6 +37,7 @@ class ErrorSizes:
     """
 
     model: float = MODEL_ERROR
+    mode: float = 0.7 * MODEL_ERROR
     capacitance_f: float = 0.03e-12
     delay_s: float = 20e-12
     directivity: float = 0.011

@@ -216,8 +216,8 @@ class _File:
 class FitProblem:
     """Residuals over the unknowns: free values in half widths of their bounds, then errors.
 
-    The errors are in standard deviations: one per mode, the capacitance, then `ANALYSER` for each
-    file.
+    The errors are in standard deviations: one per mode, one of all modes, the capacitance, then
+    `ANALYSER` for each file.
     """
 
     def __init__(
@@ -249,7 +249,12 @@ class FitProblem:
     @property
     def unknowns(self) -> int:
         """Free values and errors."""
-        return self.free + len(self.half_waves) + 1 + len(ANALYSER) * len(self.files)
+        return self.common + len(ANALYSER) * len(self.files)
+
+    @property
+    def common(self) -> int:
+        """Unknowns that all files share; they come first."""
+        return self.free + len(self.half_waves) + 2
 
     def values(self, x: FloatArray, build: Mapping[str, float]) -> dict[str, float]:
         """Numbers for every axis of a surrogate, SI."""
@@ -270,16 +275,16 @@ class FitProblem:
 
     def mode_errors(self, x: FloatArray) -> FloatArray:
         """Relative frequency error of each mode of `half_waves`."""
-        start = self.free
-        return np.asarray(x[start : start + len(self.half_waves)] * self.sizes.model)
+        own = x[self.free : self.free + len(self.half_waves)] * self.sizes.mode
+        return np.asarray(own + x[self.common - 2] * self.sizes.model)
 
     def capacitance_f(self, x: FloatArray) -> float:
         """Capacitance across the feed."""
-        return float(x[self.free + len(self.half_waves)] * self.sizes.capacitance_f)
+        return float(x[self.common - 1] * self.sizes.capacitance_f)
 
     def analyser(self, x: FloatArray, place: int) -> AnalyserErrors:
         """Errors of one file."""
-        start = self.free + len(self.half_waves) + 1 + place * len(ANALYSER)
+        start = self.common + place * len(ANALYSER)
         return AnalyserErrors.of(x[start : start + len(ANALYSER)], self.sizes)
 
     def true_curve(

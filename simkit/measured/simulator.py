@@ -132,7 +132,8 @@ class Surrogate:
         """
         weight = self._weights(values)
         stretch = np.exp(weight @ self._log_stretch)
-        curve = CubicSpline(self._grid, weight @ self._curves)
+        # Small enough that threads of a linear algebra library would only wait for each other.
+        curve = CubicSpline(self._grid, np.einsum("n,nf->f", weight, self._curves))
         return np.asarray(curve(frequency_hz * values.get(SCALE, 1.0) / stretch))
 
     def modes(self, values: Mapping[str, float]) -> CaseModes:
