@@ -51,6 +51,12 @@ DIP_SIGMA = 0.002
 at worst."""
 
 DEPTH_SIGMA = 0.1
+MOST_POINTS = 240
+"""Neighbours are averaged down to about so many; their errors are shared anyway."""
+
+POINTS_ACROSS = 8
+"""Points kept across the narrowest dip."""
+
 LIMIT_95 = 1.96
 CONFOUNDED = 0.9
 """Correlation from which two values cannot be told apart in practice: together they are known more
@@ -249,7 +255,7 @@ class FitProblem:
     @property
     def unknowns(self) -> int:
         """Free values and errors."""
-        return self.common + len(ANALYSER) * len(self.files)
+        return self.common + ANALYSER * len(self.files)
 
     @property
     def common(self) -> int:
@@ -284,8 +290,8 @@ class FitProblem:
 
     def analyser(self, x: FloatArray, place: int) -> AnalyserErrors:
         """Errors of one file."""
-        start = self.common + place * len(ANALYSER)
-        return AnalyserErrors.of(x[start : start + len(ANALYSER)], self.sizes)
+        start = self.common + place * ANALYSER
+        return AnalyserErrors.of(x[start : start + ANALYSER], self.sizes)
 
     def true_curve(
         self, x: FloatArray, surrogate: Surrogate, values: Mapping[str, float], f: FloatArray
@@ -581,6 +587,7 @@ def _files(
         cut = _cut(measurement, made[key].band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
         pinned = _pinned(pins[place] if pins is not None else {}, dips, measurement)
         noise = smooth(cut).noise
+        cut = _thinned(cut, dips)
         weight = 1 / (FIRST_SIGMA * np.sqrt(max(len(cut.frequency_hz) / 30, 1.0)))
         files.append(_File(cut, build, made[key], tuple(dips), noise, pinned, float(weight)))
     return files, engine, notes
@@ -618,6 +625,24 @@ def _cut(
         measurement,
         frequency_hz=measurement.frequency_hz[inside],
         reflection=measurement.reflection[inside],
+    )
+
+
+def _thinned(measurement: Measurement, dips: Sequence[Dip]) -> Measurement:
+    """Means of neighbouring points, as many as leave each dip well sampled."""
+    frequency, gamma = measurement.frequency_hz, measurement.reflection
+    group = len(frequency) // MOST_POINTS
+    widths = [dip.bandwidth_hz for dip in dips if np.isfinite(dip.bandwidth_hz)]
+    if widths:
+        step = float(np.median(np.diff(frequency)))
+        group = min(group, int(min(widths) / step / POINTS_ACROSS))
+    if group < 2:
+        return measurement
+    count = len(frequency) // group * group
+    return replace(
+        measurement,
+        frequency_hz=frequency[:count].reshape(-1, group).mean(axis=1),
+        reflection=gamma[:count].reshape(-1, group).mean(axis=1),
     )
 
 

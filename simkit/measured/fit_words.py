@@ -49,7 +49,7 @@ def value_table(result: FitResult) -> list[str]:
                 before,
             )
         )
-    return _aligned(rows)
+    return aligned(rows)
 
 
 def mode_table(curve: FittedCurve) -> list[str]:
@@ -62,13 +62,13 @@ def mode_table(curve: FittedCurve) -> list[str]:
         rows.append(
             (
                 half_wave_label(half_waves, curve.modes_after.on_plane),
-                _number(curve.modes_before.dip_hz[place] / 1e6, 1),
-                _number(fitted / 1e6, 1),
-                _number(dip / 1e6, 1),
-                _number(dip / fitted, 4),
+                number_text(curve.modes_before.dip_hz[place] / 1e6, 1),
+                number_text(fitted / 1e6, 1),
+                number_text(dip / 1e6, 1),
+                number_text(dip / fitted, 4),
             )
         )
-    return [f"{curve.measurement.path.name}:", *_aligned(rows)]
+    return [f"{curve.measurement.path.name}:", *aligned(rows)]
 
 
 def statements(result: FitResult) -> list[str]:
@@ -131,11 +131,13 @@ def _confounding_statement(result: FitResult, c: Confounding) -> str:
     )
 
 
-def _number(value: float, digits: int) -> str:
+def number_text(value: float, digits: int) -> str:
+    """Return a number with fixed digits, - for none."""
     return f"{value:.{digits}f}" if np.isfinite(value) else "-"
 
 
-def _aligned(rows: list[tuple[str, ...]]) -> list[str]:
+def aligned(rows: list[tuple[str, ...]]) -> list[str]:
+    """Set a table: first row its head, first column flush left."""
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
     lines = [
         "  ".join(

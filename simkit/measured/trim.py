@@ -52,6 +52,8 @@ class Trim:
         The same by plain scaling, frequency going with one over the dimension.
     sigma : float
         Standard deviation of the change.
+    slope_hz_per_m : float
+        How the dip moves with the dimension (per unit of it in SI).
     correction_factor : float
         Model over scaling: multiply a change from plain scaling by it.
     modes : tuple of ModeChange
@@ -70,6 +72,7 @@ class Trim:
     change: float
     scaling_change: float
     sigma: float
+    slope_hz_per_m: float
     modes: tuple[ModeChange, ...]
     values: FloatArray = field(repr=False)
     dips_hz: FloatArray = field(repr=False)
@@ -95,6 +98,22 @@ class Trim:
     def adds_metal(self) -> bool:
         """The dimension must grow."""
         return self.change > 0
+
+    @property
+    def in_steps(self) -> bool:
+        """Metal is to be removed and the uncertainty is large against the cut."""
+        return self.change < 0 and LIMIT_95 * self.sigma > CAUTIOUS * abs(self.change)
+
+    @property
+    def first_share(self) -> float:
+        """Part of the cut that surely does not go too far, at most 60 %."""
+        safe = 1 - LIMIT_95 * self.sigma / abs(self.change) if self.change else 0.0
+        return min(FIRST_SHARE, max(np.floor(10 * safe) / 10, 0.3))
+
+    @property
+    def first_step(self) -> float:
+        """First cut where `in_steps`."""
+        return self.first_share * self.change
 
     def as_text(self) -> str:
         """The cut with what to know about it."""
@@ -170,6 +189,7 @@ def trim_fitted(
         change=aim - present,
         scaling_change=present * (now / target_hz - 1),
         sigma=abs(spread / slope),
+        slope_hz_per_m=slope,
         modes=_mode_changes(problem, x, file, name, aim - present),
         values=grid,
         dips_hz=track,
