@@ -90,9 +90,7 @@ def with_capacitance(
     return np.asarray((gamma - half * (1 + gamma)) / (1 + half * (1 + gamma)))
 
 
-def warp(
-    frequency_hz: FloatArray, places_hz: FloatArray, errors: FloatArray
-) -> FloatArray:
+def warp(frequency_hz: FloatArray, places_hz: FloatArray, errors: FloatArray) -> FloatArray:
     """Frequencies at which to read the model when each mode is off by an error of its own.
 
     Between the modes the error is taken as straight over the logarithm of frequency.

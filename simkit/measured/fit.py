@@ -25,9 +25,10 @@ from simkit.measured.bench_errors import (
     warp,
     with_capacitance,
 )
-from simkit.measured.dips import measured_dips, smooth
+from simkit.measured.dips import measured_dips, pinned_dip, smooth
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.pairing import ModelledDip, Pairing
+from simkit.measured.quality import quality_notes
 from simkit.measured.selection import CaseModes
 from simkit.measured.simulator import REFERENCE_OHM, Engine, Surrogate, build_surrogate
 from simkit.measured.variation import SCALE, Known, Variation
@@ -242,9 +243,7 @@ class FitProblem:
         pairs = [bounds[name] for name in self.names]
         self.middle = np.array([(low + high) / 2 for low, high in pairs])
         self.half = np.array([(high - low) / 2 for low, high in pairs])
-        self.half_waves = tuple(
-            sorted({n for file in files for n in file.surrogate.half_waves})
-        )
+        self.half_waves = tuple(sorted({n for file in files for n in file.surrogate.half_waves}))
         self.pairings: list[tuple[tuple[int, int], ...]] = [() for _ in files]
 
     @property
@@ -358,14 +357,16 @@ class FitProblem:
         heard = [ModelledDip(d.frequency_hz, 10 ** (-d.return_loss_db / 20)) for d in file.dips]
         band = file.surrogate.band_hz
         swept = (file.measurement.frequency_hz[0], file.measurement.frequency_hz[-1])
-        return modes.pair(heard, band, (float(swept[0]), float(swept[1])))
+        pins = [
+            (modes.half_waves.index(n), j) for n, j in file.pins.items() if n in modes.half_waves
+        ]
+        return modes.pair(heard, band, (float(swept[0]), float(swept[1])), pins)
 
     def settle_pairs(self, x: FloatArray) -> None:
-        """Keep the pairing at some unknowns for the features; pinned pairs count before it."""
+        """Keep the pairing at some unknowns for the features."""
         for place, file in enumerate(self.files):
             names = file.surrogate.half_waves
             found = {names[i]: j for i, j in self.pair(x, place).pairs}
-            found = {n: j for n, j in found.items() if j not in file.pins.values()} | file.pins
             self.pairings[place] = tuple(sorted(found.items()))
 
     def misfit(self, x: FloatArray) -> float:
@@ -492,7 +493,6 @@ def fit(
     variation = Variation(study)
     bounds, beliefs = _free_values(variation, free, known)
     sizes = sizes or ErrorSizes()
-    antenna = study.nominal()
     files, engine, notes = _files(
         variation, measurements, bounds, builds, pins, also or {}, surrogate, progress
     )
@@ -500,16 +500,13 @@ def fit(
     nominal = problem.at({name: variation.nominal(name) for name in problem.names})
     solution = _searched(problem)
     covariance, data_only = _covariances(problem, solution)
-    curves = tuple(
-        _curve(problem, solution, nominal, place) for place in range(len(problem.files))
-    )
+    curves = tuple(_curve(problem, solution, nominal, place) for place in range(len(problem.files)))
     error = 0.0
     if engine is not None:
         at = problem.values(solution, problem.files[0].build)
         error = problem.files[0].surrogate.error_at(
             at, engine.node({k: v for k, v in at.items() if k != SCALE})
         )
-    del antenna
     return FitResult(
         study=study,
         to=to,
@@ -583,7 +580,8 @@ def _files(
             common = _common(measurement, band)
             made[key], engine = build_surrogate(variation, held, axes, common, progress=progress)
         dips, dip_notes = measured_dips(measurement)
-        notes += [f"{measurement.path.name}: {n}" for n in (*measurement.notes, *dip_notes)]
+        said = (*measurement.notes, *quality_notes(measurement), *dip_notes)
+        notes += [f"{measurement.path.name}: {note}" for note in said]
         cut = _cut(measurement, made[key].band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
         pinned = _pinned(pins[place] if pins is not None else {}, dips, measurement)
         noise = smooth(cut).noise
@@ -649,20 +647,7 @@ def _thinned(measurement: Measurement, dips: Sequence[Dip]) -> Measurement:
 def _pinned(
     wanted: Mapping[int, float], dips: Sequence[Dip], measurement: Measurement
 ) -> dict[int, int]:
-    found = {}
-    for half_waves, frequency in wanted.items():
-        if not dips:
-            raise MeasurementError(f"{measurement.path}: there is no measured dip to pin")
-        off = [abs(dip.frequency_hz / frequency - 1) for dip in dips]
-        if min(off) > 0.02:
-            raise MeasurementError(
-                f"{measurement.path}: no measured dip lies within 2 % of the pinned "
-                f"{frequency / 1e6:g} MHz; they are at "
-                + ", ".join(f"{dip.frequency_hz / 1e6:.1f}" for dip in dips)
-                + " MHz"
-            )
-        found[half_waves] = int(np.argmin(off))
-    return found
+    return {n: pinned_dip(dips, frequency, measurement) for n, frequency in wanted.items()}
 
 
 def _searched(problem: FitProblem) -> FloatArray:

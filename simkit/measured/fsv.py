@@ -38,6 +38,11 @@ GRADES = (
 POINTS = 512
 
 
+def decibels(reflection: ArrayLike) -> FloatArray:
+    """|reflection| in dB, no lower than -60: nothing below is ever measured."""
+    return np.asarray(20 * np.log10(np.maximum(np.abs(np.asarray(reflection)), 1e-3)))
+
+
 def grade(value: float) -> str:
     """Return the word for a difference measure: below 0.1, 0.2, 0.4, 0.8, 1.6 and above."""
     return next(word for limit, word in GRADES if value < limit or limit == np.inf)
@@ -177,7 +182,5 @@ def _feature(parts: Parts) -> FloatArray:
     (_, trend1, fine1), (_, trend2, fine2) = parts
     slope = _relative(np.gradient(trend1), np.gradient(trend2), 2.0)
     detail = _relative(np.gradient(fine1), np.gradient(fine2), 6.0)
-    bend = _relative(
-        np.gradient(np.gradient(fine1)), np.gradient(np.gradient(fine2)), 7.2
-    )
+    bend = _relative(np.gradient(np.gradient(fine1)), np.gradient(np.gradient(fine2)), 7.2)
     return np.asarray(2 * np.abs(slope + detail + bend))

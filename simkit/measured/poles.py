@@ -146,7 +146,9 @@ def measured_modes(
     )
     delay, order, error = _chosen(frequency, gamma, folds, delays)
     model = fit_poles(frequency, gamma, order, delay)
-    spare = [fit_poles(frequency[folds != k], gamma[folds != k], order, delay) for k in range(FOLDS)]
+    spare = [
+        fit_poles(frequency[folds != k], gamma[folds != k], order, delay) for k in range(FOLDS)
+    ]
     band = (float(frequency[0]), float(frequency[-1]))
     modes = _modes(model, spare, band)
     notes = []

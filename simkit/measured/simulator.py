@@ -98,7 +98,9 @@ class Surrogate:
         self.nodes = tuple(nodes)
         common = set.intersection(*(set(node.modes) for node in nodes))
         self.half_waves = tuple(
-            sorted(common, key=lambda n: float(np.mean([node.modes[n][_NATURAL] for node in nodes])))
+            sorted(
+                common, key=lambda n: float(np.mean([node.modes[n][_NATURAL] for node in nodes]))
+            )
         )
         table = np.array([[node.modes[n] for n in self.half_waves] for node in nodes])
         table = table.reshape(len(nodes), len(self.half_waves), 4)
@@ -214,9 +216,7 @@ class Engine:
 
         def impedance(frequency_hz: FloatArray) -> ComplexArray:
             currents = sweep.model.matrix(frequency_hz) @ feed_values
-            return at_connector(
-                antenna, frequency_hz, feed_impedance(grid, currents, frequency_hz)
-            )
+            return at_connector(antenna, frequency_hz, feed_impedance(grid, currents, frequency_hz))
 
         frequency = np.linspace(self.band.start_hz, self.band.stop_hz, self.band.points)
         modes = find_modes(sweep, grid, self.band.start_hz, self.band.stop_hz)

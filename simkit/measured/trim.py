@@ -219,9 +219,7 @@ def _reached(
     return float(grid[place]), float(grid[place + 1])
 
 
-def _dip_sigma(
-    result: FitResult, dip: Callable[[float, FloatArray], float], value: float
-) -> float:
+def _dip_sigma(result: FitResult, dip: Callable[[float, FloatArray], float], value: float) -> float:
     """Standard deviation of the modelled dip from the covariance of all unknowns."""
     problem, x = result.problem, result.solution
     rows = []

@@ -33,6 +33,7 @@ def comparison_text(comparison: Comparison) -> str:
         *_table(rows),
         "",
         *_conclusion(comparison),
+        comparison.agreement().as_text(),
     ]
     parts += [
         f"unpaired: measured dip at {dip.frequency_hz / 1e6:.1f} MHz, "
