@@ -46,9 +46,9 @@ class ErrorSizes:
 
 
 CABLE_DELAYS_S = (0.0,)
-"""What leaks past the antenna returns after these times, one way; the directivity is shared out over
-them. One without delay is enough: with six over a metre of cable the fit explained its own model's
-faults by them, and the permittivity of synthetic prototypes came out a third worse."""
+"""What leaks past the antenna returns after these times, one way; the directivity is shared out
+over them. One without delay is enough: with six over a metre of cable the fit explained its own
+model's faults by them, and the permittivity of synthetic prototypes came out a third worse."""
 
 ANALYSER = 5 + 2 * len(CABLE_DELAYS_S)
 """Terms each measured file has for itself: delay, tracking, source match, directivity."""

@@ -6,11 +6,13 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from simkit.measured.fit import LEARNT
+from simkit.measured.fit_result import LEARNT
 from simkit.response.labels import half_wave_label
 
 if TYPE_CHECKING:
-    from simkit.measured.fit import Confounding, FitResult, FittedCurve, FittedValue
+    from collections.abc import Sequence
+
+    from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
 
 
 def fit_text(result: FitResult) -> str:
@@ -136,7 +138,7 @@ def number_text(value: float, digits: int) -> str:
     return f"{value:.{digits}f}" if np.isfinite(value) else "-"
 
 
-def aligned(rows: list[tuple[str, ...]]) -> list[str]:
+def aligned(rows: Sequence[tuple[str, ...]]) -> list[str]:
     """Set a table: first row its head, first column flush left."""
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
     lines = [

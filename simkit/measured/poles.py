@@ -179,7 +179,7 @@ def fit_poles(
     s = 1j * frequency_hz / scale
     flat = gamma * np.exp(4j * np.pi * frequency_hz * delay_s)
     places = np.linspace(s[0].imag, s[-1].imag, order + 2)[1:-1]
-    poles = -0.1 * places + 1j * places
+    poles = np.asarray(-0.1 * places + 1j * places, dtype=np.complex128)
     for _ in range(ROUNDS):
         poles = _relocated(s, flat, poles)
     basis = _basis(s, poles)

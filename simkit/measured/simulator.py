@@ -221,7 +221,7 @@ class Engine:
         frequency = np.linspace(self.band.start_hz, self.band.stop_hz, self.band.points)
         modes = find_modes(sweep, grid, self.band.start_hz, self.band.stop_hz)
         features = owned_features(modes, frequency, impedance(frequency), antenna.reference_ohm)
-        owned = {}
+        owned: dict[int, tuple[float, float, float, float]] = {}
         for mode, feature in zip(modes, features, strict=True):
             dip = feature.dip
             owned.setdefault(

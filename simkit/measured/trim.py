@@ -1,4 +1,4 @@
-"""How much to cut: the change of one or two dimensions that puts a mode's dip where it is wanted."""
+"""How much to cut: the change of a dimension that puts a mode's dip where it is wanted."""
 
 from __future__ import annotations
 
@@ -9,8 +9,10 @@ import numpy as np
 from scipy.optimize import brentq
 
 from simkit.errors import MeasurementError
-from simkit.measured.fit import LIMIT_95, FitProblem, FitResult, modelled_dip
+from simkit.measured.fit_problem import FitProblem, modelled_dip, referred
+from simkit.measured.fit_result import LIMIT_95, FitResult
 from simkit.measured.measurement import FloatArray
+from simkit.measured.simulator import REFERENCE_OHM
 from simkit.response.labels import half_wave_label
 
 CURVE_POINTS = 41
@@ -57,6 +59,8 @@ class Trim:
     correction_factor : float
         Model over scaling: multiply a change from plain scaling by it.
     modes : tuple of ModeChange
+    band_hz, band_return_loss_db
+        The wanted band and the least return loss in it after the change.
     values, dips_hz, dip_sigmas_hz : (N,) float array
         Trim curve: the dip against the dimension, with its standard deviation.
     """
@@ -78,6 +82,8 @@ class Trim:
     dips_hz: FloatArray = field(repr=False)
     dip_sigmas_hz: FloatArray = field(repr=False)
     measured_hz: float = float("nan")
+    band_hz: tuple[float, float] = (float("nan"), float("nan"))
+    band_return_loss_db: float = float("nan")
 
     @property
     def low(self) -> float:
@@ -108,7 +114,7 @@ class Trim:
     def first_share(self) -> float:
         """Part of the cut that surely does not go too far, at most 60 %."""
         safe = 1 - LIMIT_95 * self.sigma / abs(self.change) if self.change else 0.0
-        return min(FIRST_SHARE, max(np.floor(10 * safe) / 10, 0.3))
+        return float(min(FIRST_SHARE, max(np.floor(10 * safe) / 10, 0.3)))
 
     @property
     def first_step(self) -> float:
@@ -130,6 +136,7 @@ def trim_fitted(
     reach: tuple[float, float],
     *,
     file: int = -1,
+    band_hz: tuple[float, float] | None = None,
 ) -> Trim:
     """Trim one dimension with a fitted model.
 
@@ -145,6 +152,10 @@ def trim_fitted(
         Values the dimension may take, SI.
     file : int, optional
         Which of the measured builds is trimmed; the last one if left out.
+    band_hz : (float, float), optional
+        Band in which the match after the trim is told.
+    band_hz : (float, float), optional
+        Band in which the match after the trim is told.
 
     Raises
     ------
@@ -194,10 +205,32 @@ def trim_fitted(
         values=grid,
         dips_hz=track,
         dip_sigmas_hz=sigma_track,
+        band_hz=band_hz or (target_hz, target_hz),
+        band_return_loss_db=_worst_db(
+            problem, x, file, name, aim - present, band_hz or (target_hz, target_hz)
+        ),
         measured_hz=float("nan")
         if measured is None
         else result.curves[file].dips[measured].frequency_hz,
     )
+
+
+def _worst_db(
+    problem: FitProblem,
+    x: FloatArray,
+    file: int,
+    name: str,
+    change: float,
+    band_hz: tuple[float, float],
+) -> float:
+    """Least return loss in a band after the change."""
+    chosen = problem.files[file]
+    values = problem.values(x, chosen.build)
+    values[name] += change
+    f = np.linspace(*band_hz, 41)
+    gamma = problem.true_curve(x, chosen.surrogate, values, f)
+    shown = referred(gamma, REFERENCE_OHM, chosen.measurement.reference_ohm)
+    return float(-20 * np.log10(max(float(np.abs(shown).max()), 1e-6)))
 
 
 def _reached(

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from simkit.measured.fit import LIMIT_95
+from simkit.measured.fit_result import LIMIT_95
 from simkit.measured.fit_words import aligned, number_text
 from simkit.study.units import as_text
 
@@ -16,6 +16,8 @@ if TYPE_CHECKING:
     from simkit.measured.trim import Trim
 
 SHALLOW_DB = 10.0
+MISSED = 0.004
+"""Relative distance of the measured dip from the fitted one that an analyser's errors may make."""
 
 
 def trim_text(trim: Trim) -> str:
@@ -60,6 +62,17 @@ def mode_lines(trim: Trim) -> list[str]:
 def advice(trim: Trim) -> list[str]:
     """What to do, and what to beware of."""
     lines = []
+    if trim.band_hz[1] > trim.band_hz[0]:
+        lines.append(
+            f"return loss then at least {trim.band_return_loss_db:.1f} dB from "
+            f"{_megahertz(trim.band_hz[0])} to {_megahertz(trim.band_hz[1])}"
+        )
+    missed = trim.measured_hz - trim.present_hz
+    if abs(missed) > max(3 * trim.present_sigma_hz, MISSED * trim.present_hz):
+        lines.append(
+            f"the measured dip is at {_megahertz(trim.measured_hz)}, the fitted model puts it at "
+            f"{_megahertz(trim.present_hz)}: free a value that explains this before you cut"
+        )
     if abs(trim.change) < LIMIT_95 * trim.sigma:
         lines.append("the dip is where it is wanted as far as these data can tell: cut nothing")
     elif trim.adds_metal:

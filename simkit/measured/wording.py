@@ -7,7 +7,11 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping, Sequence
+
     from simkit.measured.comparison import Comparison, ModeLine
+    from simkit.measured.measurement import Measurement
+    from simkit.measured.nearest import NearCase
 
 MOVE_ALIKE = 0.004
 """Spread of the ratios up to which the modes moved alike: the model's own error of 0.15 % in each
@@ -60,6 +64,26 @@ def quantity_text(name: str, value: float, units: str) -> str:
         units, (1.0, f" {units}")
     )
     return f"{name} {value * factor:.5g}{unit}"
+
+
+def nearest_text(
+    measurement: Measurement, cases: Sequence[NearCase], units: Mapping[str, str]
+) -> str:
+    """Return the stored cases that come nearest to a measurement as a table."""
+    from simkit.measured.fit_words import aligned
+
+    rows = [("rank", "case", "dip misfit", "curve rms", "values")]
+    rows += [
+        (
+            str(rank + 1),
+            str(near.case),
+            _number(near.misfit, 2),
+            _number(near.curve, 3),
+            ", ".join(quantity_text(n, v, units.get(n, "1")) for n, v in near.values.items()),
+        )
+        for rank, near in enumerate(cases)
+    ]
+    return "\n".join([f"{measurement.path}: nearest stored cases as they stand", *aligned(rows)])
 
 
 def _cells(line: ModeLine) -> tuple[str, ...]:
