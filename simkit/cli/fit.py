@@ -43,6 +43,7 @@ def command(
     extension: str | None,
     pins: tuple[str, ...],
     to: str,
+    results: str | None,
     plots: str | None,
     as_json: bool,
     as_csv: bool,
@@ -70,7 +71,15 @@ def command(
     from simkit.study import load_study
 
     result = fitted(
-        load_study(study), measured, free, known, port=port, extension=extension, pins=pins, to=to
+        load_study(study),
+        measured,
+        free,
+        known,
+        port=port,
+        extension=extension,
+        pins=pins,
+        to=to,
+        results=results,
     )
     if form == "json":
         emit(json_text(as_data(result)))

@@ -57,6 +57,12 @@ to_option = click.option(
     show_default=True,
     help="Fit the complex reflection, its magnitude, or the dips of the modes alone.",
 )
+stored_option = click.option(
+    "--results",
+    type=click.Path(exists=True, file_okay=False),
+    metavar="DIR",
+    help="Interpolate the stored sweep in DIR instead of solving; it must cover the bounds.",
+)
 plots_option = click.option(
     "--plots",
     type=click.Path(file_okay=False),
@@ -69,6 +75,7 @@ def options_of_fit(function: Callable[..., None]) -> Callable[..., None]:
     """Add the options both commands take."""
     for option in (
         plots_option,
+        stored_option,
         to_option,
         pin_option,
         extension_option,
@@ -91,6 +98,7 @@ def fitted(
     pins: Sequence[str],
     to: str,
     also: dict[str, tuple[float, float]] | None = None,
+    results: str | None = None,
 ) -> FitResult:
     """Read the files and fit, with a line of progress on standard error."""
     from simkit.measured import asked
@@ -100,11 +108,21 @@ def fitted(
     variation = Variation(study)
     files = asked.measurements(measured, port, extension)
     fixed = asked.pins_of(pins, on_plane=asked.stands(study)) if pins else {}
+    bounds = dict(variation.bounds(text) for text in free)
+    beliefs = [variation.known(text) for text in known]
+    surrogate = None
+    if results is not None:
+        from simkit.measured.stored import surrogate_of_results
+        from simkit.store import open_results
+
+        needed = {k.name: k.bounds for k in beliefs} | bounds | (also or {})
+        surrogate = surrogate_of_results(open_results(results), needed)
     return fit(
         study,
         files,
-        dict(variation.bounds(text) for text in free),
-        known=[variation.known(text) for text in known],
+        bounds,
+        known=beliefs,
+        surrogate=surrogate,
         to=cast("Any", to),
         builds=[asked.build_in(study, file) for file in files],
         pins=[fixed] * len(files),

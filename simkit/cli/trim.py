@@ -53,6 +53,7 @@ def command(
     extension: str | None,
     pins: tuple[str, ...],
     to: str,
+    results: str | None,
     plots: str | None,
     as_json: bool,
     as_csv: bool,
@@ -90,6 +91,7 @@ def command(
         pins=pins,
         to=to,
         also=reaches,
+        results=results,
     )
     middle = (low * high) ** 0.5
     trims = [

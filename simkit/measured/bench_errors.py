@@ -27,6 +27,8 @@ class ErrorSizes:
         Relative, of all modelled frequencies together.
     mode : float
         Relative, of each mode's frequency on its own, besides.
+    level : float
+        Relative, of the impedance: the model's resistance and reactance slope.
     capacitance_f : float
         Across the feed: solder, the connector's flange, the model of the gap.
     delay_s : float
@@ -38,6 +40,7 @@ class ErrorSizes:
 
     model: float = MODEL_ERROR
     mode: float = 0.7 * MODEL_ERROR
+    level: float = 0.02
     capacitance_f: float = 0.03e-12
     delay_s: float = 20e-12
     directivity: float = 0.011

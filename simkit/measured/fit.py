@@ -145,7 +145,7 @@ def _free_values(
     beliefs = {k.name: k for k in known}
     bounds = dict(free)
     for k in known:
-        bounds.setdefault(k.name, (k.value - 3 * k.width, k.value + 3 * k.width))
+        bounds.setdefault(k.name, k.bounds)
     if not bounds:
         raise MeasurementError(
             "nothing is free to fit: name at least one value with its bounds, as in "

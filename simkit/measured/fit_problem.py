@@ -56,8 +56,8 @@ class FitFile:
 class FitProblem:
     """Residuals over the unknowns: free values in half widths of their bounds, then errors.
 
-    The errors are in standard deviations: one per mode, one of all modes, the capacitance, then
-    `ANALYSER` for each file.
+    The errors are in standard deviations: one per mode, one of all modes, the level of the
+    impedance, the capacitance, then `ANALYSER` for each file.
     """
 
     def __init__(
@@ -92,7 +92,7 @@ class FitProblem:
     @property
     def common(self) -> int:
         """Unknowns that all files share; they come first."""
-        return self.free + len(self.half_waves) + 2
+        return self.free + len(self.half_waves) + 3
 
     def values(self, x: FloatArray, build: Mapping[str, float]) -> dict[str, float]:
         """Numbers for every axis of a surrogate, SI."""
@@ -114,7 +114,11 @@ class FitProblem:
     def mode_errors(self, x: FloatArray) -> FloatArray:
         """Relative frequency error of each mode of `half_waves`."""
         own = x[self.free : self.free + len(self.half_waves)] * self.sizes.mode
-        return np.asarray(own + x[self.common - 2] * self.sizes.model)
+        return np.asarray(own + x[self.common - 3] * self.sizes.model)
+
+    def level(self, x: FloatArray) -> float:
+        """Factor of the modelled impedance."""
+        return float(np.exp(x[self.common - 2] * self.sizes.level))
 
     def capacitance_f(self, x: FloatArray) -> float:
         """Capacitance across the feed."""
@@ -135,6 +139,7 @@ class FitProblem:
             np.isfinite(modes.dip_hz), modes.dip_hz, modes.natural_hz * EXPECTED_OVER_POLE
         )
         gamma = surrogate.reflection(values, warp(f, places, errors))
+        gamma = referred(gamma, REFERENCE_OHM * self.level(x), REFERENCE_OHM)
         return with_capacitance(f, gamma, self.capacitance_f(x), REFERENCE_OHM)
 
     def shown(self, x: FloatArray, place: int) -> ComplexArray:

@@ -176,10 +176,11 @@ def fit_poles(
         One way.
     """
     scale = float(np.sqrt(frequency_hz[0] * frequency_hz[-1])) or float(frequency_hz[-1])
-    s = 1j * frequency_hz / scale
-    flat = gamma * np.exp(4j * np.pi * frequency_hz * delay_s)
+    s: ComplexArray = np.asarray(1j * frequency_hz / scale, dtype=np.complex128)
+    turned = gamma * np.exp(4j * np.pi * frequency_hz * delay_s)
+    flat: ComplexArray = np.asarray(turned, dtype=np.complex128)
     places = np.linspace(s[0].imag, s[-1].imag, order + 2)[1:-1]
-    poles = np.asarray(-0.1 * places + 1j * places, dtype=np.complex128)
+    poles: ComplexArray = np.asarray((1j - 0.1) * places, dtype=np.complex128)
     for _ in range(ROUNDS):
         poles = _relocated(s, flat, poles)
     basis = _basis(s, poles)

@@ -37,6 +37,11 @@ class Known:
         """Standard deviation."""
         return self.width / 2
 
+    @property
+    def bounds(self) -> tuple[float, float]:
+        """Three widths to either side: how far a fit may go if nothing else is said."""
+        return self.value - 3 * self.width, self.value + 3 * self.width
+
 
 class Variation:
     """A study whose values can be overridden by name.

@@ -222,7 +222,14 @@ def plot_mode_ratios(result: FitResult, *, ax: Axes | None = None) -> Axes:
     """
     ax = new_axes(ax, (8.6, 4.6))
     tidy(ax)
-    put_title(ax, f"{result.study.title}\nmeasured over modelled dip, mode by mode")
+    said = [
+        f"{curve.measurement.path.name} says: {_comment(curve)[:70]}"
+        for curve in result.curves
+        if _comment(curve)
+    ]
+    put_title(
+        ax, "\n".join([f"{result.study.title}: measured over modelled dip, mode by mode", *said])
+    )
     labels: list[str] = []
     for number, curve in enumerate(result.curves):
         for half_waves, place in curve.pairs:
@@ -279,13 +286,18 @@ def _decibels(gamma: ComplexArray) -> FloatArray:
     return np.asarray(20 * np.log10(np.maximum(np.abs(gamma), 1e-4)))
 
 
+def _comment(curve: FittedCurve) -> str:
+    """The first line in which the measured file says what it is."""
+    return next((line for line in curve.measurement.comments if line), "")
+
+
 def _title(result: FitResult, curve: FittedCurve) -> str:
     text = result.problem.variation.text
     values = ", ".join(
         f"{v.name} {text(v.name, v.value, 4)} (was {text(v.name, v.nominal, 4)})"
         for v in result.values
     )
-    said = next((line for line in curve.measurement.comments if line), "")
+    said = _comment(curve)
     return f"{result.study.title} - {curve.measurement.path.name}\n{values}" + (
         f"\nthe measured file says: {said[:80]}" if said else ""
     )
