@@ -18,7 +18,7 @@ import numpy as np
 from simkit.errors import MeasurementError
 from simkit.measured.bench_errors import ErrorSizes
 from simkit.measured.dips import measured_dips, pinned_dip, smooth
-from simkit.measured.fit_problem import FitFile, FitProblem, To
+from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To
 from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.quality import quality_notes
@@ -40,9 +40,6 @@ POINTS_ACROSS = 8
 
 FIRST_SIGMA = 0.02
 """Residual of |reflection| assumed before the first look: a directivity of -34 dB."""
-
-INDEPENDENT = 30
-"""Points that count as independent before the first look."""
 
 CONFOUNDED = 0.9
 """Correlation from which two values cannot be told apart in practice: together they are known more

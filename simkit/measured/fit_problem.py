@@ -35,6 +35,13 @@ DIP_SIGMA = 0.002
 """Relative error of a measured dip's frequency: a directivity of -36 dB moves a dip of Q 5 by 0.3 %
 at worst."""
 
+LEAST_RESIDUAL = 0.003
+"""No model of wires follows a curve better than this, however little noise there is."""
+
+INDEPENDENT = 40
+"""Points of a sweep that count as independent at most: what separates analyser and model from the
+truth is smooth."""
+
 DEPTH_SIGMA = 0.1
 """Error of |reflection| in a dip, the model's of the match included."""
 
@@ -242,8 +249,9 @@ class FitProblem:
         """Set each file's weight from the size and the correlation length of its residual."""
         for place, file in enumerate(self.files):
             off = file.measurement.reflection - self.shown(x, place)
-            size = max(float(np.sqrt(np.mean(np.abs(off) ** 2) / 2)), file.noise, 1e-4)
-            self.files[place] = replace(file, weight=1 / (size * np.sqrt(correlation_length(off))))
+            size = max(float(np.sqrt(np.mean(np.abs(off) ** 2) / 2)), file.noise, LEAST_RESIDUAL)
+            alike = max(correlation_length(off), len(off) / INDEPENDENT)
+            self.files[place] = replace(file, weight=float(1 / (size * np.sqrt(alike))))
 
     def jacobian(self, x: FloatArray) -> FloatArray:
         """Central differences of the residuals, (R, U)."""

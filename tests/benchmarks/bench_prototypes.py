@@ -127,9 +127,7 @@ def one(rng, variation, surrogate):
         Known("arm", truth["arm"] + rng.normal(0, 0.05e-3), 0.1e-3),
         Known("width", 6e-3, 0.2e-3),
     ]
-    result = fit(
-        variation.study, [measurement], BOUNDS, known=known, surrogate=surrogate
-    )
+    result = fit(variation.study, [measurement], BOUNDS, known=known, surrogate=surrogate)
     curve = result.curves[0]
     paired = dict(curve.pairs)
     right = all(
