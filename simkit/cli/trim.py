@@ -71,7 +71,7 @@ def command(
     """
     form = one_format(as_json, as_csv)
     from simkit.measured import asked
-    from simkit.measured.trim import trim_fitted
+    from simkit.measured.trim import trim_fitted, with_gain
     from simkit.measured.variation import Variation
     from simkit.plot.trim import plot_trim
     from simkit.study import load_study
@@ -95,7 +95,7 @@ def command(
     )
     middle = (low * high) ** 0.5
     trims = [
-        trim_fitted(result, half_waves, middle, name, reach, band_hz=(low, high))
+        with_gain(result, trim_fitted(result, half_waves, middle, name, reach, band_hz=(low, high)))
         for name, reach in reaches.items()
     ]
     if form == "json":
@@ -149,6 +149,8 @@ def as_data(trim: Trim) -> dict[str, Any]:
         "first_cut": trim.first_step if trim.in_steps else trim.change,
         "adds_metal": trim.adds_metal,
         "band_return_loss_db": trim.band_return_loss_db,
+        "gain_before_dbi": trim.gain_dbi[0],
+        "gain_after_dbi": trim.gain_dbi[1],
         "modes": [
             {
                 "mode": m.label,

@@ -183,7 +183,8 @@ def _best(errors: list[FloatArray]) -> int:
     """The window whose mean error is least above the best one in the worst part of the sweep."""
     blocks = min(BLOCKS, len(errors[-1]) // 4 or 1)
     score = np.array([[part.mean() for part in np.array_split(e, blocks)] for e in errors])
-    floor = np.maximum(score.min(axis=0), np.finfo(float).tiny)
+    # A reflection has rounding errors of this square: below it no window is better than another.
+    floor = np.maximum(score.min(axis=0), np.finfo(float).eps ** 2)
     return int(np.argmin((score / floor).max(axis=1)))
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from scipy.optimize import brentq
@@ -13,6 +13,7 @@ from simkit.measured.fit_problem import FitProblem, modelled_dip, referred
 from simkit.measured.fit_result import LIMIT_95, FitResult
 from simkit.measured.measurement import FloatArray
 from simkit.measured.simulator import REFERENCE_OHM
+from simkit.measured.variation import SCALE
 from simkit.response.labels import half_wave_label
 
 CURVE_POINTS = 41
@@ -61,6 +62,8 @@ class Trim:
     modes : tuple of ModeChange
     band_hz, band_return_loss_db
         The wanted band and the least return loss in it after the change.
+    gain_dbi : (float, float)
+        Peak gain of the mode before and after, NaN unless `with_gain` has found it.
     values, dips_hz, dip_sigmas_hz : (N,) float array
         Trim curve: the dip against the dimension, with its standard deviation.
     """
@@ -84,6 +87,7 @@ class Trim:
     measured_hz: float = float("nan")
     band_hz: tuple[float, float] = (float("nan"), float("nan"))
     band_return_loss_db: float = float("nan")
+    gain_dbi: tuple[float, float] = (float("nan"), float("nan"))
 
     @property
     def low(self) -> float:
@@ -265,6 +269,37 @@ def _dip_sigma(result: FitResult, dip: Callable[[float, FloatArray], float], val
     gradient = np.nan_to_num(np.array(rows))
     covariance = result.covariance[: len(rows), : len(rows)]
     return float(np.sqrt(max(gradient @ covariance @ gradient, 0.0)))
+
+
+def with_gain(result: FitResult, trim: Trim, *, file: int = -1) -> Trim:
+    """Return the trim with the peak gain of its mode before and after, from two more solutions.
+
+    Parameters are those of `trim_fitted` and what it returned.
+
+    Raises
+    ------
+    GeometryError, EngineError, StudyError
+    """
+    from simkit.geometry import plan_mesh
+    from simkit.runner.solve import solve_case
+
+    problem = result.problem
+    chosen = problem.files[file % len(problem.files)]
+    values = chosen.build | problem.values(result.solution, chosen.build)
+    values.pop(SCALE, None)
+    antennas = [
+        replace(problem.variation.antenna(point), converge=False)
+        for point in (values, values | {trim.name: trim.present + trim.change})
+    ]
+    plan = plan_mesh(antennas)
+    gains = []
+    for antenna in antennas:
+        solved = solve_case(antenna, plan)
+        numbers = solved.arrays.get("mode_half_waves")
+        place = [] if numbers is None else list(np.flatnonzero(numbers == trim.half_waves))
+        peaks = np.asarray(solved.arrays.get("peak_gain", ()))
+        gains.append(float(peaks[place[0]]) if place else float("nan"))
+    return replace(trim, gain_dbi=(gains[0], gains[1]))
 
 
 def _mode_changes(

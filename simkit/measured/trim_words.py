@@ -61,34 +61,48 @@ def mode_lines(trim: Trim) -> list[str]:
 
 def advice(trim: Trim) -> list[str]:
     """What to do, and what to beware of."""
+    return [*_what_to_expect(trim), _what_to_do(trim), *_side_effects(trim)]
+
+
+def _what_to_expect(trim: Trim) -> list[str]:
     lines = []
     if trim.band_hz[1] > trim.band_hz[0]:
         lines.append(
             f"return loss then at least {trim.band_return_loss_db:.1f} dB from "
             f"{_megahertz(trim.band_hz[0])} to {_megahertz(trim.band_hz[1])}"
         )
+    if np.isfinite(trim.gain_dbi).all():
+        before, after = trim.gain_dbi
+        lines.append(f"peak gain of the mode {before:.2f} dBi now, {after:.2f} dBi then")
     missed = trim.measured_hz - trim.present_hz
     if abs(missed) > max(3 * trim.present_sigma_hz, MISSED * trim.present_hz):
         lines.append(
             f"the measured dip is at {_megahertz(trim.measured_hz)}, the fitted model puts it at "
             f"{_megahertz(trim.present_hz)}: free a value that explains this before you cut"
         )
+    return lines
+
+
+def _what_to_do(trim: Trim) -> str:
     if abs(trim.change) < LIMIT_95 * trim.sigma:
-        lines.append("the dip is where it is wanted as far as these data can tell: cut nothing")
-    elif trim.adds_metal:
-        lines.append(
+        return "the dip is where it is wanted as far as these data can tell: cut nothing"
+    if trim.adds_metal:
+        return (
             f"metal must be added: `{trim.name}` has to grow by "
             f"{_length(trim, trim.change)}; this piece cannot be cut to the target, solder strip "
             "on or make a new one"
         )
-    elif trim.in_steps:
+    if trim.in_steps:
         first = trim.first_step
-        lines.append(
+        return (
             f"cut {trim.first_share:.0%} first ({_change(trim, first)}), measure, fit again: the "
             "interval is wide against the cut, and metal does not grow back"
         )
-    else:
-        lines.append(f"cut {_change(trim, trim.change)} of `{trim.name}`, then measure once more")
+    return f"cut {_change(trim, trim.change)} of `{trim.name}`, then measure once more"
+
+
+def _side_effects(trim: Trim) -> list[str]:
+    lines = []
     for mode in trim.modes:
         if mode.half_waves == trim.half_waves:
             if mode.after_return_loss_db < SHALLOW_DB:

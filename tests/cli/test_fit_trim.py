@@ -1,6 +1,7 @@
 """``simkit fit`` and ``simkit trim`` from a measured file to millimetres, through the engine."""
 
 import json
+import re
 import shutil
 from pathlib import Path
 
@@ -67,6 +68,8 @@ def test_trim_says_how_much_to_cut(folder):
     assert done.exit_code == 0, done.output
     assert "cut -" in done.stdout
     assert "correction factor" in done.stdout
+    # A short dipole has 1.76 dBi, a half-wave one 2.15.
+    assert re.search(r"peak gain of the mode 2\.\d\d dBi now, 2\.\d\d dBi then", done.stdout)
     assert (folder / "plots" / "trim_arm.png").stat().st_size > 10_000
     as_json = json.loads(run(folder, "trim", *words, "--json").stdout)[0]
     # The dip of 902 MHz and 12 MHz per millimetre.
