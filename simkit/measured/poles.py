@@ -30,6 +30,9 @@ LARGEST_DELAY_S = 60e-12
 DELAYS = 7
 """Delays tried around the mean one of the sweep, one way: up to 18 mm of air."""
 
+LEAST_DECAY = 1e-4
+"""Of a pole over its size: a pole on the frequency axis would make the model infinite there."""
+
 LEAST_Q = 1.0
 LARGEST_SPREAD = 0.02
 """Relative standard error of a frequency above which the data do not support the mode."""
@@ -90,9 +93,10 @@ class PoleModel:
 
     def natural_hz(self) -> ComplexArray:
         """Natural frequencies: zeros of 1 + reflection with the delay taken off; Im > 0 decays."""
-        matrix = np.diag(self.poles) - np.outer(
-            np.ones(len(self.poles)), self.residues / (1 + self.constant)
-        )
+        # A short far from all poles has its zero at infinity; nearly there is near enough.
+        level = 1 + self.constant
+        level = level if abs(level) > 1e-9 else 1e-9
+        matrix = np.diag(self.poles) - np.outer(np.ones(len(self.poles)), self.residues / level)
         s = np.linalg.eigvals(matrix)
         found = -1j * s * self.scale_hz
         return np.asarray(found[(found.real > 0) & (found.imag > 0)])
@@ -219,7 +223,8 @@ def _relocated(s: ComplexArray, gamma: ComplexArray, poles: ComplexArray) -> Com
     ones = np.zeros(size)
     ones[::2] = 2.0
     moved = np.linalg.eigvals(matrix - np.outer(ones, found))
-    moved = -np.abs(moved.real) + 1j * moved.imag
+    decay = np.maximum(np.abs(moved.real), LEAST_DECAY * np.maximum(np.abs(moved), LEAST_DECAY))
+    moved = -decay + 1j * moved.imag
     upper = moved[moved.imag > 1e-9]
     # Pairs that met on the real axis are parted again, so that the order stays.
     lost = np.sort_complex(moved[np.abs(moved.imag) <= 1e-9])[::2]

@@ -82,7 +82,13 @@ def _mean_delay_s(measurement: Measurement) -> float:
     gamma, frequency = measurement.reflection, measurement.frequency_hz
     turn = np.unwrap(np.angle(gamma))
     weight = np.abs(gamma) ** 2
-    if not weight.sum() > 0 or np.ptp(frequency) <= 0:
+    total = float(weight.sum())
+    if not total > 0:
         return 0.0
-    slope = float(np.polyfit(frequency, turn, 1, w=np.sqrt(weight))[0])
+    away = frequency - float(weight @ frequency) / total
+    moment = float(weight @ away**2)
+    # All the power at one frequency: there is no slope to speak of.
+    if not moment > 1e-9 * total * float(np.ptp(frequency)) ** 2:
+        return 0.0
+    slope = float(weight @ (away * turn)) / moment
     return max(-slope / (4 * np.pi), 0.0)
