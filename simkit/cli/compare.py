@@ -40,6 +40,11 @@ if TYPE_CHECKING:
     help="The measured dip that is certainly of a mode: '3/2=2.81 GHz'; may be repeated.",
 )
 @click.option(
+    "--natural",
+    is_flag=True,
+    help="Read natural modes from the sweep itself as well, with 95 % intervals.",
+)
+@click.option(
     "--nearest",
     is_flag=True,
     help="Rank the stored cases by how near they come, and draw the best five.",
@@ -60,6 +65,7 @@ def command(
     port: int | None,
     extension: str | None,
     pins: tuple[str, ...],
+    natural: bool,
     nearest: bool,
     output: str | None,
 ) -> None:
@@ -95,10 +101,19 @@ def command(
     elif form == "csv":
         emit(csv_text(rows))
     else:
-        emit("\n\n".join(comparison.as_text() for comparison in found))
+        emit("\n\n".join(_text(comparison, natural=natural) for comparison in found))
     for comparison in found:
         path = save_overlay(comparison, output or overlay_path(results, comparison))
         click.echo(f"written: {path}", err=True)
+
+
+def _text(comparison: Comparison, *, natural: bool) -> str:
+    if not natural:
+        return comparison.as_text()
+    from simkit.measured.poles import measured_modes
+    from simkit.measured.wording import natural_text
+
+    return f"{comparison.as_text()}\n{natural_text(measured_modes(comparison.measurement))}"
 
 
 def _show_nearest(

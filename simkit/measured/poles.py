@@ -25,7 +25,8 @@ FOLDS = 5
 BLOCKS = 20
 """The sweep is cut into so many pieces; every fifth is held out together."""
 
-ROUNDS = 15
+MOST_POINTS = 250
+ROUNDS = 12
 LARGEST_DELAY_S = 60e-12
 DELAYS = 7
 """Delays tried around the mean one of the sweep, one way: up to 18 mm of air."""
@@ -242,8 +243,8 @@ def _least(columns: ComplexArray, wanted: ComplexArray) -> FloatArray:
 
 
 def _thinned(measurement: Measurement) -> tuple[FloatArray, ComplexArray]:
-    """At most some 400 points, means of neighbours."""
-    group = max(len(measurement.frequency_hz) // 400, 1)
+    """At most some 250 points, means of neighbours."""
+    group = max(len(measurement.frequency_hz) // MOST_POINTS, 1)
     count = len(measurement.frequency_hz) // group * group
     frequency = measurement.frequency_hz[:count].reshape(-1, group).mean(axis=1)
     gamma = measurement.reflection[:count].reshape(-1, group).mean(axis=1)

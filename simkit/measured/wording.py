@@ -12,6 +12,7 @@ if TYPE_CHECKING:
     from simkit.measured.comparison import Comparison, ModeLine
     from simkit.measured.measurement import Measurement
     from simkit.measured.nearest import NearCase
+    from simkit.measured.poles import MeasuredModes
 
 MOVE_ALIKE = 0.004
 """Spread of the ratios up to which the modes moved alike: the model's own error of 0.15 % in each
@@ -64,6 +65,21 @@ def quantity_text(name: str, value: float, units: str) -> str:
         units, (1.0, f" {units}")
     )
     return f"{name} {value * factor:.5g}{unit}"
+
+
+def natural_text(found: MeasuredModes) -> str:
+    """Return the natural modes a sweep shows, and those it does not support, in one line."""
+    sure = [
+        f"{mode.frequency_hz / 1e6:.1f} +- {1.96 * mode.frequency_sigma_hz / 1e6:.1f} MHz "
+        f"(Q {mode.q:.2f})"
+        for mode in found.modes
+        if mode.supported
+    ]
+    unsure = sum(not mode.supported for mode in found.modes)
+    text = "natural modes read from the sweep: " + (", ".join(sure) or "none is supported by it")
+    if unsure:
+        text += f"; {unsure} more pole{'s' if unsure > 1 else ''} of the fit not supported"
+    return "; ".join([text, *found.notes])
 
 
 def nearest_text(

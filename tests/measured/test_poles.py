@@ -1,5 +1,6 @@
 """Natural modes read from sweeps whose poles are known."""
 
+import re
 from pathlib import Path
 
 import numpy as np
@@ -11,6 +12,7 @@ from simkit.measured.measurement import Measurement
 from simkit.measured.plane import delay_of_s, extended
 from simkit.measured.poles import fit_poles, measured_modes
 from simkit.measured.quality import quality_notes
+from simkit.measured.wording import natural_text
 
 F = np.linspace(0.4e9, 3.2e9, 561)
 BRANCHES = ((70.0, 60e-9, 0.9e9), (98.0, 45e-9, 2.8e9))
@@ -73,6 +75,14 @@ def test_the_sample_shows_its_two_odd_modes():
     # Poles of the straight wire the sample was made of, within what its analyser does to them.
     assert [mode.frequency_hz for mode in modes] == pytest.approx([0.877e9, 2.76e9], rel=0.015)
     assert all(mode.why for mode in found.modes if not mode.supported)
+
+
+def test_the_words_tell_sure_modes_from_unsure_poles():
+    text = natural_text(measured_modes(read_touchstone(SAMPLE)))
+    assert re.match(
+        r"natural modes read from the sweep: 87\d\.\d \+- \d\.\d MHz \(Q 4\.\d\d\)", text
+    )
+    assert "not supported" in text
 
 
 def test_extension_takes_a_delay_off_and_says_so():
