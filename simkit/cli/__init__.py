@@ -14,7 +14,7 @@ import click
 from simkit import __version__
 from simkit.errors import MeasurementError, SimkitError, StudyError
 
-COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare")
+COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare", "fit", "trim")
 """Subcommands in the order in which one uses them; each is `command` in a module of its name."""
 
 

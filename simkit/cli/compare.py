@@ -12,9 +12,10 @@ from simkit.cli.options import case_option, csv_option, json_option, one_format,
 from simkit.cli.output import csv_text, emit, json_text
 
 if TYPE_CHECKING:
+    import xarray as xr
     from matplotlib.figure import Figure
 
-    from simkit.measured import Comparison
+    from simkit.measured import Comparison, Measurement
 
 
 @click.command()
@@ -25,6 +26,28 @@ if TYPE_CHECKING:
 @case_option
 @click.option(
     "--port", type=click.IntRange(min=1), metavar="N", help="Port to read of a file with several."
+)
+@click.option(
+    "--extension",
+    metavar="DELAY",
+    help="Move the reference plane towards the antenna: '120 ps', '35 mm' or '35 mm in 2.1'.",
+)
+@click.option(
+    "--pin",
+    "pins",
+    multiple=True,
+    metavar="MODE=FREQUENCY",
+    help="The measured dip that is certainly of a mode: '3/2=2.81 GHz'; may be repeated.",
+)
+@click.option(
+    "--natural",
+    is_flag=True,
+    help="Read natural modes from the sweep itself as well, with 95 % intervals.",
+)
+@click.option(
+    "--nearest",
+    is_flag=True,
+    help="Rank the stored cases by how near they come, and draw the best five.",
 )
 @click.option(
     "-o",
@@ -40,6 +63,10 @@ def command(
     as_csv: bool,
     case: int | None,
     port: int | None,
+    extension: str | None,
+    pins: tuple[str, ...],
+    natural: bool,
+    nearest: bool,
     output: str | None,
 ) -> None:
     """Set MEASURED one-port Touchstone files beside the results in DIR: one line per mode.
@@ -54,14 +81,19 @@ def command(
     form = one_format(as_json, as_csv)
     if output is not None and len(measured) > 1:
         raise click.UsageError("-o names one picture: give one measured file, or leave -o out.")
-    from simkit.measured import compare, read_touchstone
+    from simkit.measured import asked, compare
     from simkit.store import open_results
 
     dataset = open_results(results)
     study = study_of(results)
+    on_plane = study is not None and asked.stands(study)
+    fixed = asked.pins_of(pins, on_plane=on_plane) if pins else {}
+    files = asked.measurements(measured, port, extension)
+    if nearest:
+        _show_nearest(results, dataset, files, form, output)
+        return
     found = [
-        compare(dataset, read_touchstone(path, port), case, build=build_of(study, path))
-        for path in measured
+        compare(dataset, file, case, build=build_of(study, file.path), pins=fixed) for file in files
     ]
     rows = [row for comparison in found for row in comparison.as_rows()]
     if form == "json":
@@ -69,10 +101,52 @@ def command(
     elif form == "csv":
         emit(csv_text(rows))
     else:
-        emit("\n\n".join(comparison.as_text() for comparison in found))
+        emit("\n\n".join(_text(comparison, natural=natural) for comparison in found))
     for comparison in found:
         path = save_overlay(comparison, output or overlay_path(results, comparison))
         click.echo(f"written: {path}", err=True)
+
+
+def _text(comparison: Comparison, *, natural: bool) -> str:
+    if not natural:
+        return comparison.as_text()
+    from simkit.measured.poles import measured_modes
+    from simkit.measured.wording import natural_text
+
+    return f"{comparison.as_text()}\n{natural_text(measured_modes(comparison.measurement))}"
+
+
+def _show_nearest(
+    results: str, dataset: xr.Dataset, files: list[Measurement], form: str, output: str | None
+) -> None:
+    """Table and picture of the stored cases that come nearest to each file."""
+    from simkit.measured.nearest import nearest_cases
+    from simkit.measured.wording import nearest_text
+    from simkit.plot.nearest import plot_nearest
+    from simkit.plot.save import write
+
+    ranked = [nearest_cases(dataset, file) for file in files]
+    rows = [
+        {"file": str(file.path), "rank": rank + 1} | near.as_row()
+        for file, cases in zip(files, ranked, strict=True)
+        for rank, near in enumerate(cases)
+    ]
+    if form == "json":
+        emit(json_text(rows))
+    elif form == "csv":
+        emit(csv_text(rows))
+    else:
+        units = {name: str(dataset[name].attrs.get("units", "1")) for name in ranked[0][0].values}
+        emit(
+            "\n\n".join(
+                nearest_text(file, cases, units) for file, cases in zip(files, ranked, strict=True)
+            )
+        )
+    for file, cases in zip(files, ranked, strict=True):
+        target = output or Path(results) / "plots" / f"nearest_{file.path.stem}.png"
+        reference = float(dataset.attrs.get("reference_ohm", 50.0))
+        axes = plot_nearest(file.renormalised(reference), cases)
+        click.echo(f"written: {write(cast('Figure', axes.figure), target)}", err=True)
 
 
 def overlay_path(results: str | Path, comparison: Comparison) -> Path:

@@ -1,7 +1,27 @@
 """Measured sweeps: reading them, finding their dips, setting them beside the simulation."""
 
 from simkit.measured.comparison import Comparison, ModeLine, compare
+from simkit.measured.fit import fit
+from simkit.measured.fit_result import FitResult
 from simkit.measured.measurement import Measurement
+from simkit.measured.nearest import nearest_cases
+from simkit.measured.plane import delay_of_s, extended
+from simkit.measured.poles import measured_modes
 from simkit.measured.touchstone import read_touchstone
+from simkit.measured.trim import Trim, trim_fitted
 
-__all__ = ["Comparison", "Measurement", "ModeLine", "compare", "read_touchstone"]
+__all__ = [
+    "Comparison",
+    "FitResult",
+    "Measurement",
+    "ModeLine",
+    "Trim",
+    "compare",
+    "delay_of_s",
+    "extended",
+    "fit",
+    "measured_modes",
+    "nearest_cases",
+    "read_touchstone",
+    "trim_fitted",
+]

@@ -9,9 +9,11 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from simkit.errors import MeasurementError, StoreError
-from simkit.measured.dips import measured_dips
+from simkit.measured.dips import measured_dips, pinned_dip
+from simkit.measured.fsv import Agreement, agreement, decibels
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.pairing import ModelledDip, Pairing
+from simkit.measured.quality import quality_notes
 from simkit.measured.selection import (
     CaseModes,
     IntArray,
@@ -120,6 +122,16 @@ class Comparison:
     unpaired: tuple[Dip, ...]
     notes: tuple[str, ...]
 
+    def agreement(self) -> Agreement:
+        """How alike the curves are, |reflection| in dB by IEEE Std 1597.1."""
+        measured = decibels(self.measurement.reflection)
+        return agreement(
+            self.measurement.frequency_hz,
+            measured,
+            self.frequency_hz,
+            decibels(self.simulated_reflection),
+        )
+
     @property
     def file_comment(self) -> str:
         """The first line in which the measured file says what it is, empty if it does not."""
@@ -147,6 +159,7 @@ def compare(
     case: int | None = None,
     *,
     build: Mapping[str, float] | None = None,
+    pins: Mapping[int, float] | None = None,
 ) -> Comparison:
     """Set a measured sweep beside one case of the results.
 
@@ -161,6 +174,8 @@ def compare(
         measured ones best as they stand.
     build : mapping of str to float, optional
         Swept values as cut, SI; the nearest solved case is taken, with a note unless it is exact.
+    pins : mapping of int to float, optional
+        Half waves of a mode to the frequency (Hz) of the measured dip that is certainly its own.
 
     Returns
     -------
@@ -185,11 +200,13 @@ def compare(
     dips, dip_notes = measured_dips(measurement)
     heard = [ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20)) for dip in dips]
     every = modes_of_cases(dataset)
-    notes = [*measurement.notes, *dip_notes]
+    notes = [*measurement.notes, *quality_notes(measurement), *dip_notes]
     rows, build_notes = _candidates(dataset, case, build)
     row, fit_notes = _best_row(rows, every, heard, bands)
     notes += [*build_notes, *fit_notes]
-    pairing = every[row].pair(heard, *bands)
+    fixed = _fixed_pairs(every[row], dips, pins or {}, measurement)
+    pairing = every[row].pair(heard, *bands, fixed)
+    notes += _ambiguity_notes(every[row], dips, pairing, heard, bands, fixed)
     notes += _doubt_notes(dataset, row)
     notes += _unexcited_notes(every[row], pairing)
     return _comparison(dataset, row, measurement, every[row], dips, pairing, notes)
@@ -249,6 +266,45 @@ def _unexcited_notes(modes: CaseModes, pairing: Pairing) -> list[str]:
         for i, _ in pairing.pairs
         if not np.isfinite(modes.dip_hz[i])
     ]
+
+
+def _fixed_pairs(
+    modes: CaseModes, dips: list[Dip], pins: Mapping[int, float], measurement: Measurement
+) -> list[tuple[int, int]]:
+    found = []
+    for half_waves, frequency in pins.items():
+        if half_waves not in modes.half_waves:
+            known = ", ".join(half_wave_label(n, modes.on_plane) for n in modes.half_waves)
+            raise MeasurementError(
+                f"the pinned {half_wave_label(half_waves, modes.on_plane)} mode is not among those "
+                f"of this case: {known}"
+            )
+        found.append((modes.half_waves.index(half_waves), pinned_dip(dips, frequency, measurement)))
+    return found
+
+
+def _ambiguity_notes(
+    modes: CaseModes,
+    dips: list[Dip],
+    pairing: Pairing,
+    heard: list[ModelledDip],
+    bands: tuple[tuple[float, float], tuple[float, float]],
+    fixed: list[tuple[int, int]],
+) -> list[str]:
+    notes = []
+    for (i, j), other in modes.doubtful(pairing, heard, *bands, fixed).items():
+        instead = [k for k, dip in other.pairs if dip == j]
+        what = (
+            f"it may as well be the {half_wave_label(modes.half_waves[instead[0]], modes.on_plane)}"
+            if instead
+            else "it may as well belong to none"
+        )
+        notes.append(
+            f"ambiguous: the dip at {dips[j].frequency_hz / 1e6:.1f} MHz is taken for the "
+            f"{half_wave_label(modes.half_waves[i], modes.on_plane)} mode, but {what}; "
+            "pin it if you know"
+        )
+    return notes
 
 
 def _comparison(

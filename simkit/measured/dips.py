@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from scipy.signal import savgol_coeffs, savgol_filter
 
+from simkit.errors import MeasurementError
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.response.features import Dip, find_dips
 
@@ -27,6 +29,9 @@ residual makes ripples of that height which are not the antenna's.
 NOISE_FACTOR = 8.0
 """A dip must also exceed the noise left after smoothing by this much: the extremes of a thousand
 noisy points lie 3.3 sigma above and below, and sigma itself is only known to some 10 %."""
+
+PIN_REACH = 0.02
+"""How near a pinned frequency must be to the dip it means."""
 
 FEW_POINTS = 5
 """Fewer points than these within the band of a dip leave its depth to chance."""
@@ -127,6 +132,25 @@ def measured_dips(measurement: Measurement) -> tuple[list[Dip], list[str]]:
     return dips, notes
 
 
+def pinned_dip(dips: Sequence[Dip], frequency_hz: float, measurement: Measurement) -> int:
+    """Place of the measured dip a user means by a frequency.
+
+    Raises
+    ------
+    MeasurementError
+        If none lies within 2 % of it.
+    """
+    off = [abs(dip.frequency_hz / frequency_hz - 1) for dip in dips]
+    if not off or min(off) > PIN_REACH:
+        known = ", ".join(f"{dip.frequency_hz / 1e6:.1f}" for dip in dips)
+        raise MeasurementError(
+            f"{measurement.path}: no measured dip lies within {PIN_REACH:.0%} of the pinned "
+            f"{frequency_hz / 1e6:g} MHz; "
+            + (f"they are at {known} MHz" if dips else "there is none at all")
+        )
+    return int(np.argmin(off))
+
+
 def _step_angle(gamma: ComplexArray) -> float:
     """Mean change of phase from point to point, radian."""
     return float(np.angle(np.sum(gamma[1:] * gamma[:-1].conj())))
@@ -159,7 +183,8 @@ def _best(errors: list[FloatArray]) -> int:
     """The window whose mean error is least above the best one in the worst part of the sweep."""
     blocks = min(BLOCKS, len(errors[-1]) // 4 or 1)
     score = np.array([[part.mean() for part in np.array_split(e, blocks)] for e in errors])
-    floor = np.maximum(score.min(axis=0), np.finfo(float).tiny)
+    # A reflection has rounding errors of this square: below it no window is better than another.
+    floor = np.maximum(score.min(axis=0), np.finfo(float).eps ** 2)
     return int(np.argmin((score / floor).max(axis=1)))
 
 

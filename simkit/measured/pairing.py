@@ -58,6 +58,12 @@ class ModelledDip:
     depth: float
 
 
+AMBIGUOUS = 2.0
+"""A pair is ambiguous if doing without it costs less than this more: odds of about 7 to 1."""
+
+IMPOSSIBLE = 1e6
+
+
 @dataclass(frozen=True)
 class Pairing:
     """The best assignment.
@@ -85,6 +91,9 @@ def pair(
     measured: Sequence[ModelledDip],
     modelled_band_hz: tuple[float, float] = (0.0, np.inf),
     measured_band_hz: tuple[float, float] = (0.0, np.inf),
+    *,
+    pins: Sequence[tuple[int, int]] = (),
+    forbidden: Sequence[tuple[int, int]] = (),
 ) -> Pairing:
     """Assign measured dips to modelled ones, both in order of frequency.
 
@@ -94,6 +103,10 @@ def pair(
         Ascending in frequency.
     modelled_band_hz, measured_band_hz : (float, float), optional
         What either side covers. Dips beyond the other side's band cost nothing unpaired.
+    pins : sequence of (int, int), optional
+        Pairs that are certain, in the same order on both sides.
+    forbidden : sequence of (int, int), optional
+        Pairs not to make.
 
     Returns
     -------
@@ -103,10 +116,11 @@ def pair(
     """
     model = _Side.of(modelled, modelled_band_hz)
     bench = _Side.of(measured, measured_band_hz)
-    best = _assign(model, bench, 0.0)
+    rules = _Rules(tuple(pins), tuple(forbidden))
+    best = _assign(model, bench, 0.0, rules)
     for log_scale in _candidates(model, bench):
         for _ in range(3):
-            found = _assign(model, bench, log_scale)
+            found = _assign(model, bench, log_scale, rules)
             if found.cost < best.cost:
                 best = found
             improved = float(np.log(found.scale))
@@ -114,6 +128,48 @@ def pair(
                 break
             log_scale = improved
     return best
+
+
+def ambiguous_pairs(
+    best: Pairing,
+    modelled: Sequence[ModelledDip],
+    measured: Sequence[ModelledDip],
+    modelled_band_hz: tuple[float, float],
+    measured_band_hz: tuple[float, float],
+    pins: Sequence[tuple[int, int]] = (),
+) -> dict[tuple[int, int], Pairing]:
+    """Return for each doubtful pair the best pairing that does without it.
+
+    Parameters are those of `pair` and what it returned; pinned pairs are never doubtful.
+    """
+    doubtful = {}
+    for link in best.pairs:
+        if link in pins:
+            continue
+        other = pair(
+            modelled, measured, modelled_band_hz, measured_band_hz, pins=pins, forbidden=[link]
+        )
+        if other.cost - best.cost < AMBIGUOUS:
+            doubtful[link] = other
+    return doubtful
+
+
+@dataclass(frozen=True)
+class _Rules:
+    """Pairs that must and that must not be."""
+
+    pins: tuple[tuple[int, int], ...] = ()
+    forbidden: tuple[tuple[int, int], ...] = ()
+
+    def impose(self, pair_cost: FloatArray, skip_model: FloatArray, skip_bench: FloatArray) -> None:
+        """Write them into the costs."""
+        for i, j in self.forbidden:
+            pair_cost[i, j] = IMPOSSIBLE
+        for i, j in self.pins:
+            kept = pair_cost[i, j]
+            pair_cost[i], pair_cost[:, j] = IMPOSSIBLE, IMPOSSIBLE
+            pair_cost[i, j] = min(kept, 1.0)
+            skip_model[i] = skip_bench[j] = IMPOSSIBLE
 
 
 @dataclass(frozen=True)
@@ -147,12 +203,13 @@ def _candidates(model: _Side, bench: _Side) -> FloatArray:
     return np.unique(np.round(np.append(ratios, 0.0), 4))
 
 
-def _assign(model: _Side, bench: _Side, log_scale: float) -> Pairing:
+def _assign(model: _Side, bench: _Side, log_scale: float, rules: _Rules) -> Pairing:
     """Best monotone assignment for one common factor."""
     offset = bench.log_frequency[None, :] - model.log_frequency[:, None]
     pair_cost = _pair_cost(model, bench, offset - log_scale)
     skip_model = model.missed(log_scale, bench.log_band)
     skip_bench = bench.missed(-log_scale, model.log_band)
+    rules.impose(pair_cost, skip_model, skip_bench)
     pairs = _align(pair_cost, skip_model, skip_bench)
     rows, columns = [i for i, _ in pairs], [j for _, j in pairs]
     skipped = np.delete(skip_model, rows).sum() + np.delete(skip_bench, columns).sum()

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from simkit.errors import StoreError
 from simkit.measured.measurement import ComplexArray, FloatArray
-from simkit.measured.pairing import ModelledDip, Pairing, pair
+from simkit.measured.pairing import ModelledDip, Pairing, ambiguous_pairs, pair
 from simkit.response.features import reflection
 from simkit.store.read import swept_names
 from simkit.store.schema import Status
@@ -64,14 +64,44 @@ class CaseModes:
         measured: list[ModelledDip],
         band_hz: tuple[float, float],
         measured_band_hz: tuple[float, float],
+        pins: Sequence[tuple[int, int]] = (),
     ) -> Pairing:
         """Pair measured dips with the modes; indices refer to the order of the modes."""
+        order, modelled = self._ordered()
+        found = pair(
+            modelled, measured, band_hz, measured_band_hz, pins=_sorted_places(order, pins)
+        )
+        return _back(order, found)
+
+    def doubtful(
+        self,
+        best: Pairing,
+        measured: list[ModelledDip],
+        band_hz: tuple[float, float],
+        measured_band_hz: tuple[float, float],
+        pins: Sequence[tuple[int, int]] = (),
+    ) -> dict[tuple[int, int], Pairing]:
+        """Pairs of `best` that another pairing is nearly as good without, with that pairing."""
+        order, modelled = self._ordered()
+        inner = replace(best, pairs=tuple(_sorted_places(order, best.pairs)))
+        found = ambiguous_pairs(
+            inner, modelled, measured, band_hz, measured_band_hz, _sorted_places(order, pins)
+        )
+        return {(order[i], j): _back(order, other) for (i, j), other in found.items()}
+
+    def _ordered(self) -> tuple[list[int], list[ModelledDip]]:
+        """Two modes may own dips in the other order, when one of them is hardly excited."""
         modelled = self.expected_dips()
-        # Two modes may own dips in the other order, when one of them is hardly excited.
         order = sorted(range(len(modelled)), key=lambda i: modelled[i].frequency_hz)
-        found = pair([modelled[i] for i in order], measured, band_hz, measured_band_hz)
-        pairs = tuple(sorted((order[i], j) for i, j in found.pairs))
-        return Pairing(pairs, found.scale, found.cost, found.misfit)
+        return order, [modelled[i] for i in order]
+
+
+def _sorted_places(order: list[int], pairs: Sequence[tuple[int, int]]) -> list[tuple[int, int]]:
+    return [(order.index(i), j) for i, j in pairs]
+
+
+def _back(order: list[int], found: Pairing) -> Pairing:
+    return replace(found, pairs=tuple(sorted((order[i], j) for i, j in found.pairs)))
 
 
 def as_cases(dataset: xr.Dataset) -> xr.Dataset:

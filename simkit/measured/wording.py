@@ -7,7 +7,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping, Sequence
+
     from simkit.measured.comparison import Comparison, ModeLine
+    from simkit.measured.measurement import Measurement
+    from simkit.measured.nearest import NearCase
+    from simkit.measured.poles import MeasuredModes
 
 MOVE_ALIKE = 0.004
 """Spread of the ratios up to which the modes moved alike: the model's own error of 0.15 % in each
@@ -33,6 +38,7 @@ def comparison_text(comparison: Comparison) -> str:
         *_table(rows),
         "",
         *_conclusion(comparison),
+        comparison.agreement().as_text(),
     ]
     parts += [
         f"unpaired: measured dip at {dip.frequency_hz / 1e6:.1f} MHz, "
@@ -59,6 +65,41 @@ def quantity_text(name: str, value: float, units: str) -> str:
         units, (1.0, f" {units}")
     )
     return f"{name} {value * factor:.5g}{unit}"
+
+
+def natural_text(found: MeasuredModes) -> str:
+    """Return the natural modes a sweep shows, and those it does not support, in one line."""
+    sure = [
+        f"{mode.frequency_hz / 1e6:.1f} +- {1.96 * mode.frequency_sigma_hz / 1e6:.1f} MHz "
+        f"(Q {mode.q:.2f})"
+        for mode in found.modes
+        if mode.supported
+    ]
+    unsure = sum(not mode.supported for mode in found.modes)
+    text = "natural modes read from the sweep: " + (", ".join(sure) or "none is supported by it")
+    if unsure:
+        text += f"; {unsure} more pole{'s' if unsure > 1 else ''} of the fit not supported"
+    return "; ".join([text, *found.notes])
+
+
+def nearest_text(
+    measurement: Measurement, cases: Sequence[NearCase], units: Mapping[str, str]
+) -> str:
+    """Return the stored cases that come nearest to a measurement as a table."""
+    from simkit.measured.fit_words import aligned
+
+    rows = [("rank", "case", "dip misfit", "curve rms", "values")]
+    rows += [
+        (
+            str(rank + 1),
+            str(near.case),
+            _number(near.misfit, 2),
+            _number(near.curve, 3),
+            ", ".join(quantity_text(n, v, units.get(n, "1")) for n, v in near.values.items()),
+        )
+        for rank, near in enumerate(cases)
+    ]
+    return "\n".join([f"{measurement.path}: nearest stored cases as they stand", *aligned(rows)])
 
 
 def _cells(line: ModeLine) -> tuple[str, ...]:

@@ -9,24 +9,25 @@ from simkit.study.units import LENGTH, PURE
 
 
 def read_angle(table: Table, name: str, missing: str = "") -> Quantity | None:
-    """Return an angle.
-
-    To expressions an angle is a pure number in radians. A number written alone is refused, because
-    who writes 30 means degrees.
-    """
+    """Return an angle, which to expressions is a pure number in radians."""
+    table.notes.angles.add(table.key(name))
     angle = table.quantity(name, PURE, missing)
-    if angle is None or not _is_bare(angle):
+    complaint = "" if angle is None else bare_angle(angle)
+    if not complaint:
         return angle
-    number = angle.expression.text.strip().removesuffix(".0")
-    table.report(name, f'an angle takes its unit, as in "{number} deg" or "0.5 rad"')
+    table.report(name, complaint)
     return None
 
 
-def _is_bare(angle: Quantity) -> bool:
+def bare_angle(angle: Quantity) -> str:
+    """Return what is wrong with an angle written as a number alone: who writes 30 means degrees."""
+    text = angle.expression.text.strip()
     try:
-        return float(angle.expression.text) != 0
+        if float(text) == 0:
+            return ""
     except ValueError:
-        return False
+        return ""
+    return f'an angle takes its unit, as in "{text.removesuffix(".0")} deg" or "0.5 rad"'
 
 
 def read_vector(

@@ -92,8 +92,8 @@ def smoothed(path_m: PathPoints, widths_m: Sequence[float]) -> tuple[PathPoints,
     parts = [i / SPLINE_POINTS for i in range(SPLINE_POINTS)]
     where = [a + (b - a) * part for a, b in pairwise(knots) for part in parts]
     spline = CubicSpline(knots, path_m, bc_type="periodic" if is_closed(path_m) else "natural")
+    # At the knots the spline is exact: there its polynomials are their constant terms.
     drawn: list[Point] = [(x, y) for x, y in spline(where).tolist()]
-    drawn[::SPLINE_POINTS] = path_m[:-1]
     if not widths_m:
         return (*drawn, path_m[-1]), ()
     widths = [a + (b - a) * part for a, b in pairwise(widths_m) for part in parts]

@@ -126,7 +126,7 @@ def _skin(
     skin = evaluator.number(plan.skin, lowest=0.0, highest=FARTHEST_M)
     if plan.skin is None or skin is None or thickness_m is None:
         return 0.0
-    slack = 1 + 1e-9
+    slack = 1 + 1e-12  # of rounding: two skins of 0.1 mm just fit in 0.2 mm
     if 2 * skin > thickness_m * slack:
         what = (
             f"two skins do not fit in a carrier of {as_text(thickness_m, 'mm')}; "

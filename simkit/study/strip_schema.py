@@ -253,7 +253,6 @@ def _read_widths(table: Table, kind: str) -> tuple[Quantity, ...]:
     width = table.quantity("width", LENGTH, missing, parameter=parameter)
     if width is not None and parameter in width.expression.names:
         key = table.key("width")
-        table.notes.slots.pop(key, None)
         table.notes.fixed[key] = "it changes along the curve; sweep a name of [values] used in it"
     return () if width is None else (width,)
 

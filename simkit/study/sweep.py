@@ -8,8 +8,9 @@ from dataclasses import dataclass, field
 from typing import Any, Literal
 
 from simkit.study.expression import ExpressionError
+from simkit.study.fields import bare_angle
 from simkit.study.locate import KeyPath
-from simkit.study.tables import Notes, Table, toml_kind, written_unit
+from simkit.study.tables import Notes, Quantity, Table, toml_kind, written_unit
 from simkit.study.units import PURE, Dimension, nearest, si_unit
 
 Method = Literal["grid", "list", "latin-hypercube", "sobol"]
@@ -342,7 +343,9 @@ class _SweepReader:
             table.report("count", f"is missing; write {_EXAMPLE}")
             return None
         path = (*table.path, "count")
-        number = self.number(table.data["count"], PURE, path, table.key("count"))
+        raw = table.data["count"]
+        quantity = self.notes.expression(raw, PURE, path, table.key("count"))
+        number = None if quantity is None else self.evaluated(quantity, path, raw)
         if number is None:
             return None
         if number != round(number) or not 1 <= number <= MOST_CASES:
@@ -351,16 +354,24 @@ class _SweepReader:
         return round(number)
 
     def number(self, raw: Any, dimension: Dimension, path: KeyPath, key: str) -> float | None:
+        """Read one swept value."""
         quantity = self.notes.expression(raw, dimension, path, key)
         if quantity is None:
+            return None
+        complaint = bare_angle(quantity) if self.name in self.notes.angles else ""
+        if complaint:
+            self.notes.report(path, key, complaint, raw)
             return None
         unit = written_unit(quantity)
         if unit is not None:
             self.units.setdefault(self.name, unit)
+        return self.evaluated(quantity, path, raw)
+
+    def evaluated(self, quantity: Quantity, path: KeyPath, raw: Any) -> float | None:
         try:
             return quantity.expression.evaluate(self.numbers)
         except ExpressionError as error:
-            self.notes.report(path, key, str(error), raw)
+            self.notes.report(path, quantity.key, str(error), raw)
             return None
 
 

@@ -75,6 +75,8 @@ class Notes:
         Dotted keys that a sweep may vary.
     fixed : dict of str to str
         Dotted keys that a sweep may not vary, and why.
+    angles : set of str
+        Dotted keys of angles, whose numbers must not stand without a unit.
     quantities : dict of str to Quantity
         Every quantity understood so far, by its dotted key.
     problems : list of Problem
@@ -85,6 +87,7 @@ class Notes:
     broken: set[str] = field(default_factory=set)
     slots: dict[str, Dimension] = field(default_factory=dict)
     fixed: dict[str, str] = field(default_factory=dict)
+    angles: set[str] = field(default_factory=set)
     quantities: dict[str, Quantity] = field(default_factory=dict)
     problems: list[Problem] = field(default_factory=list)
 

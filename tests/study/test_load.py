@@ -327,6 +327,34 @@ PIECES = (
         ]
     )
 )
+SHAPES = """
+[[strip]]
+name = "sail"
+path = [["9 mm", "70 mm"], ["20 mm", "75 mm"], ["30 mm", "70 mm"]]
+width = ["1 mm", "2 mm", "width"]
+smooth = true
+rotate = "7 deg"
+[[strip]]
+name = "sag"
+curve = { x = "t*arm", y = "90 mm*t**2", t = [0, 1], points = 9 }
+width = "1 mm + t*2 mm"
+[[strip]]
+name = "bow"
+arc = { centre = ["0 mm", "0 mm"], radius = "200 mm", from = "3 deg", to = "90 deg", points = 9 }
+width = "2 mm"
+shift = ["1 mm", "2 mm"]
+[placement]
+rotate_x = "90 deg"
+shift = ["0 mm", "0 mm", "300 mm"]
+[carrier]
+permittivity = 2.7
+thickness = "2 mm"
+skin = "0.2 mm"
+[ground]
+kind = "earth"
+permittivity = 13
+conductivity = "5 mS/m"
+"""
 EDITS = st.lists(st.tuples(st.floats(0, 1), st.integers(0, 12), PIECES), min_size=1, max_size=4)
 
 
@@ -345,7 +373,7 @@ def scratch(tmp_path_factory: pytest.TempPathFactory) -> Path:
 def test_a_mangled_study_gives_a_study_or_a_study_error(
     scratch: Path, text: str, edits: list[tuple[float, int, str]]
 ) -> None:
-    text += SWEEP + '[[measured]]\nfile = "a.s1p"\narm = "70 mm"\n'
+    text += SHAPES + SWEEP + '[[measured]]\nfile = "a.s1p"\narm = "70 mm"\n'
     for place, removed, piece in edits:
         start = int(place * len(text))
         text = text[:start] + piece + text[start + removed :]

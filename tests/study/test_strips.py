@@ -188,6 +188,13 @@ def test_a_turn_can_be_swept(load: Loader) -> None:
     assert "(here 500 deg): must be at most 360 deg; check its unit" in study.case(2).refused
 
 
+@pytest.mark.parametrize("values", ["[0, 5]", '{ from = "0 deg", to = 5, count = 2 }'])
+def test_a_swept_angle_takes_its_unit_too(complaints: Complaints, values: str) -> None:
+    turned = (WIDTH, WIDTH + '\nrotate = "0 deg"')
+    (line,) = complaints(turned, added=f'[sweep]\n"strip.upper.rotate" = {values}')
+    assert line.endswith('= 5: an angle takes its unit, as in "5 deg" or "0.5 rad"')
+
+
 def test_a_strip_may_be_fed_between_its_own_ends(load: Loader) -> None:
     body = (
         'arc = { centre = ["0 mm", "0 mm"], radius = "90 mm", from = "3 deg", to = "357 deg" }\n'
@@ -302,6 +309,11 @@ def test_a_value_called_t_would_be_taken_for_the_parameter(complaints: Complaint
         ('gap   = "3 mm"', 'gap   = "3 mm"\nt = "2 mm"'), added=strip_of(f'{CURVE}\nwidth = "gap"')
     )
     assert line.startswith("weir.toml:7: values.t: in a curve t runs along it; give this value an")
+
+
+def test_a_value_called_t_is_like_any_other_where_no_curve_is(load: Loader) -> None:
+    study = load(('gap   = "3 mm"', 'gap   = "3 mm"\nt = "2 mm"'), (WIDTH, 'width = "t"'))
+    assert study.nominal().strips[0].width_m == 0.002
 
 
 @pytest.mark.parametrize(

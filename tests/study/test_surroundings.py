@@ -7,11 +7,18 @@ import math
 import pickle
 from collections.abc import Callable
 from dataclasses import asdict
+from itertools import product
 
 import pytest
 
 from simkit.study import Study
+from simkit.study.blueprint import PlacementPlan
+from simkit.study.evaluate import Evaluator
+from simkit.study.expression import constant
 from simkit.study.model import NO_ROTATION, Carrier, Ground, Placement, Vector
+from simkit.study.resolve_surroundings import resolve_placement
+from simkit.study.tables import Quantity
+from simkit.study.units import PURE
 
 Loader = Callable[..., Study]
 Complaints = Callable[..., list[str]]
@@ -74,7 +81,20 @@ def test_turns_follow_one_another_about_fixed_axes_before_the_shift(load: Loader
     placement = load(added=turns + 'shift = ["gap", "-1 mm", "10 mm"]').nominal().placement
     # about x: y to z; about y: z to x; about z: x to y
     assert placed(placement, (0.0, 1.0, 0.0)) == (0.003, 0.999, 0.010)
-    assert "-0.0" not in json.dumps(placement.rotation)
+
+
+def test_equal_placements_are_equal_as_text() -> None:
+    """Quarter turns in every combination give twenty-four rotations, and no zero has a sign."""
+    quarters = [k * math.pi / 2 for k in (-3, -2, -1, 0, 1, 2, 3)]
+    plans = [PlacementPlan(*(_angle(a) for a in abc)) for abc in product(quarters, repeat=3)]
+    evaluator = Evaluator({})
+    texts = {json.dumps(asdict(resolve_placement(evaluator, plan))) for plan in plans}  # type: ignore[arg-type]
+    assert len(texts) == 24
+    assert not any("-0.0" in text for text in texts)
+
+
+def _angle(radians: float) -> Quantity:
+    return Quantity("placement.rotate_x", None, "", constant(radians), PURE)
 
 
 def test_any_turn_keeps_lengths_and_handedness(load: Loader) -> None:

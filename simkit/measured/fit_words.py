@@ -1,0 +1,151 @@
+"""A fit in words: values with intervals, what they mean, and what the data cannot tell."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from simkit.measured.fit_result import LEARNT
+from simkit.response.labels import half_wave_label
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
+
+
+def fit_text(result: FitResult) -> str:
+    """Return the whole report of a fit."""
+    parts = [
+        f"{result.study.title}: fitted to "
+        + ", ".join(str(curve.measurement.path) for curve in result.curves),
+        "",
+        *value_table(result),
+        "",
+        *(f"  {statement}" for statement in statements(result)),
+        "",
+    ]
+    for curve in result.curves:
+        parts += [*mode_table(curve), ""]
+    parts += [f"note: {note}" for note in result.notes]
+    return "\n".join(parts).rstrip()
+
+
+def value_table(result: FitResult) -> list[str]:
+    """One line per free value."""
+    text = result.problem.variation.text
+    rows = [("value", "study", "fitted", "95 % interval", "known before")]
+    for v in result.values:
+        before = (
+            f"{text(v.name, v.prior.value)} +- {text(v.name, v.prior.width)}"
+            if v.prior
+            else f"{text(v.name, v.bounds[0])} .. {text(v.name, v.bounds[1])}"
+        )
+        rows.append(
+            (
+                v.name,
+                text(v.name, v.nominal),
+                text(v.name, v.value),
+                f"{text(v.name, v.low)} .. {text(v.name, v.high)}",
+                before,
+            )
+        )
+    return aligned(rows)
+
+
+def mode_table(curve: FittedCurve) -> list[str]:
+    """One line per mode: dips before and after the fit against the measured ones."""
+    measured = dict(curve.pairs)
+    rows = [("mode", "dip in study, MHz", "fitted, MHz", "measured, MHz", "measured/fitted")]
+    for place, half_waves in enumerate(curve.modes_after.half_waves):
+        fitted = curve.modes_after.dip_hz[place]
+        dip = curve.dips[measured[half_waves]].frequency_hz if half_waves in measured else np.nan
+        rows.append(
+            (
+                half_wave_label(half_waves, curve.modes_after.on_plane),
+                number_text(curve.modes_before.dip_hz[place] / 1e6, 1),
+                number_text(fitted / 1e6, 1),
+                number_text(dip / 1e6, 1),
+                number_text(dip / fitted, 4),
+            )
+        )
+    return [f"{curve.measurement.path.name}:", *aligned(rows)]
+
+
+def statements(result: FitResult) -> list[str]:
+    """What the fit says, one sentence each."""
+    said = [
+        f"difference from the measured curve: {result.rms_before:.3f} before, "
+        f"{result.rms_after:.3f} after (rms of |reflection|)"
+    ]
+    said += [text for v in result.values if (text := _value_statement(result, v))]
+    said += [_confounding_statement(result, c) for c in result.confounded]
+    if result.surrogate_error > 0.01:
+        said.append(
+            f"the interpolated model is off by up to {result.surrogate_error:.3f} in reflection "
+            "from a solution at the fitted values: narrow the bounds for a finer one"
+        )
+    if result.rms_after > 0.08:
+        said.append(
+            "the fitted model still differs visibly: something that is not free is wrong (feed, "
+            "cable, something near the antenna), so distrust the values"
+        )
+    picofarad = result.capacitance_f * 1e12
+    if abs(picofarad) > 2 * result.problem.sizes.capacitance_f * 1e12:
+        said.append(f"the feed shows {picofarad:+.2f} pF that the model lacks: solder or connector")
+    for curve in result.curves:
+        delay = curve.errors.delay_s
+        if abs(delay) > 2 * result.problem.sizes.delay_s:
+            said.append(
+                f"{curve.measurement.path.name}: the reference plane misses the feed by "
+                f"{delay * 1e12:+.0f} ps one way ({delay * 2.998e11:+.1f} mm of air): set the port "
+                "extension"
+            )
+    return said
+
+
+def _value_statement(result: FitResult, v: FittedValue) -> str:
+    text = result.problem.variation.text
+    if v.at_bound:
+        return (
+            f"{v.name} ran to its bound {text(v.name, v.value)}: the bounds are too narrow or "
+            "another assumption is wrong"
+        )
+    if v.learnt > LEARNT:
+        source = "what was known before" if v.prior else "the bounds"
+        return f"the data do not determine {v.name}: its interval comes from {source}"
+    if v.low <= v.nominal <= v.high:
+        return f"{v.name}: the study's {text(v.name, v.nominal)} agrees with the measurement"
+    change = f" ({v.value / v.nominal - 1:+.1%})" if v.nominal else ""
+    return (
+        f"{v.name}: {text(v.name, v.value)} instead of the study's "
+        f"{text(v.name, v.nominal)}{change}"
+    )
+
+
+def _confounding_statement(result: FitResult, c: Confounding) -> str:
+    exponent = f"{c.exponent:.2f}"
+    return (
+        f"{c.first} and {c.second} cannot be told apart by these data (correlation "
+        f"{c.correlation:+.3f}): only {c.first} * {c.second}^{exponent} is known, within "
+        f"{1.96 * c.relative_sigma:.2%}; measure one of them and say so with --known"
+    )
+
+
+def number_text(value: float, digits: int) -> str:
+    """Return a number with fixed digits, - for none."""
+    return f"{value:.{digits}f}" if np.isfinite(value) else "-"
+
+
+def aligned(rows: Sequence[tuple[str, ...]]) -> list[str]:
+    """Set a table: first row its head, first column flush left."""
+    widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
+    lines = [
+        "  ".join(
+            cell.ljust(width) if i == 0 else cell.rjust(width)
+            for i, (cell, width) in enumerate(zip(row, widths, strict=True))
+        ).rstrip()
+        for row in rows
+    ]
+    return [lines[0], "  ".join("-" * width for width in widths), *lines[1:]]

@@ -1,0 +1,120 @@
+"""A stored sweep as the model of a fit: nothing is solved if it covers the bounds."""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Mapping
+from typing import TYPE_CHECKING
+
+import numpy as np
+from scipy.interpolate import CubicSpline
+
+from simkit.errors import StoreError
+from simkit.measured.measurement import ComplexArray, FloatArray
+from simkit.measured.selection import as_cases, is_solved, modes_of_cases
+from simkit.measured.simulator import REFERENCE_OHM, Axis, Node, Surrogate
+from simkit.measured.variation import SCALE
+from simkit.response.features import reflection
+from simkit.store.read import swept_names
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+FEWEST_NODES = 3
+"""Values along a swept quantity; with fewer its curve is anybody's guess."""
+
+
+def surrogate_of_results(
+    dataset: xr.Dataset, bounds: Mapping[str, tuple[float, float]]
+) -> Surrogate:
+    """Interpolate the cases of a grid sweep.
+
+    Parameters
+    ----------
+    dataset : xarray.Dataset
+        Results.
+    bounds : mapping of str to (float, float)
+        What must be covered, SI; `scale` needs no cases.
+
+    Returns
+    -------
+    Surrogate
+
+    Raises
+    ------
+    StoreError
+        If a value is not swept, the sweep does not cover its bounds, is no full grid, or has
+        cases without a solution.
+    """
+    dataset = as_cases(dataset)
+    axes = [
+        Axis(name, np.unique(np.asarray(dataset[name].values, dtype=float)))
+        for name in swept_names(dataset)
+    ]
+    _check_cover(axes, bounds)
+    rows = _rows(dataset, axes)
+    if not is_solved(dataset)[rows].all():
+        bad = int(dataset["case"].values[rows[~is_solved(dataset)[rows]][0]])
+        raise StoreError(
+            f"case {bad} of the stored sweep has no solution, so it cannot be interpolated; leave "
+            "--results out to solve through the engine"
+        )
+    frequency = np.asarray(dataset["frequency"].values, dtype=float)
+    name = "impedance_at_connector" if "impedance_at_connector" in dataset else "impedance"
+    gamma = reflection(dataset[name].values, REFERENCE_OHM)
+    modes = modes_of_cases(dataset)
+    nodes = []
+    for row in rows:
+        found = modes[row]
+        table = zip(
+            found.half_waves,
+            zip(found.dip_hz, found.natural_hz, found.q, found.return_loss_db, strict=True),
+            strict=True,
+        )
+        owned: dict[int, tuple[float, float, float, float]] = {}
+        for half_waves, (dip, natural, q, loss) in table:
+            owned.setdefault(half_waves, (float(dip), float(natural), float(q), float(loss)))
+        nodes.append(Node(_curve(frequency, gamma[row]), owned, found.on_plane))
+    return Surrogate(axes, nodes, (float(frequency[0]), float(frequency[-1])))
+
+
+def _curve(frequency: FloatArray, gamma: ComplexArray) -> CubicSpline:
+    return CubicSpline(frequency, gamma)
+
+
+def _check_cover(axes: list[Axis], bounds: Mapping[str, tuple[float, float]]) -> None:
+    swept = {axis.name: axis.nodes for axis in axes}
+    for name, (low, high) in bounds.items():
+        if name == SCALE:
+            continue
+        if name not in swept:
+            raise StoreError(
+                f"the stored sweep does not vary `{name}`, but {', '.join(swept) or 'nothing'}; "
+                "sweep it too, or leave --results out"
+            )
+        nodes = swept[name]
+        if len(nodes) < FEWEST_NODES:
+            raise StoreError(
+                f"the stored sweep has only {len(nodes)} values of `{name}`, at least "
+                f"{FEWEST_NODES} are needed to interpolate; leave --results out"
+            )
+        slack = 1e-9 * abs(high - low)
+        if low < nodes[0] - slack or high > nodes[-1] + slack:
+            raise StoreError(
+                f"the stored sweep holds `{name}` from {nodes[0]:.6g} to {nodes[-1]:.6g} (SI), the "
+                f"bounds go from {low:.6g} to {high:.6g}: narrow them, or leave --results out"
+            )
+
+
+def _rows(dataset: xr.Dataset, axes: list[Axis]) -> np.ndarray[tuple[int, ...], np.dtype[np.intp]]:
+    """Place of the case at every node, in the order of the nodes."""
+    columns = [np.asarray(dataset[axis.name].values, dtype=float) for axis in axes]
+    place = {values: row for row, values in enumerate(zip(*columns, strict=True))}
+    points = itertools.product(*(map(float, axis.nodes) for axis in axes))
+    try:
+        return np.array([place[point] for point in points], dtype=np.intp)
+    except KeyError:
+        raise StoreError(
+            "the stored sweep is no full grid, so it cannot be interpolated; leave --results out "
+            "to solve through the engine"
+        ) from None

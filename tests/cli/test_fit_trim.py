@@ -1,0 +1,112 @@
+"""``simkit fit`` and ``simkit trim`` from a measured file to millimetres, through the engine."""
+
+import json
+import re
+import shutil
+from pathlib import Path
+
+import numpy as np
+import pytest
+from click.testing import CliRunner
+
+from simkit.cli import main
+from simkit.study import load_study
+
+STUDY = """
+title = "Creek gauge link"
+[values]
+arm = "76 mm"
+[[strip]]
+name = "east"
+path = [["1 mm", "0 mm"], ["1 mm + arm", "0 mm"]]
+width = "8 mm"
+[[strip]]
+name = "west"
+mirror = "east"
+[feed]
+from = "west.start"
+to = "east.start"
+[frequency]
+start = "600 MHz"
+stop = "1200 MHz"
+points = 101
+"""
+SAMPLE = Path(__file__).parents[2] / "studies" / "creek_gauge_build_1.s1p"
+
+
+@pytest.fixture(scope="module")
+def folder(tmp_path_factory):
+    folder = tmp_path_factory.mktemp("fit")
+    (folder / "gauge.toml").write_text(STUDY)
+    shutil.copy(SAMPLE, folder / "build.s1p")
+    return folder
+
+
+def run(folder, *words):
+    files = [str(folder / "gauge.toml"), str(folder / "build.s1p")]
+    return CliRunner().invoke(main, [words[0], *files, *words[1:]])
+
+
+def test_fit_writes_a_fitted_study_and_pictures(folder):
+    done = run(folder, "fit", "--free", "arm=72 mm..79 mm", "--json")
+    assert done.exit_code == 0, done.output
+    (value,) = json.loads(done.stdout)["values"]
+    # Cut at 75.1 and 74.3 mm with a gap of 2.4 instead of 2 mm: as if 74.9 mm.
+    assert value["low"] < 74.9e-3 < value["high"]
+    fitted = load_study(folder / "gauge_fitted.toml")
+    assert fitted.values["arm"] == pytest.approx(value["fitted"], rel=1e-5)
+    names = {path.name for path in (folder / "plots").iterdir()}
+    assert names == {
+        "fit_build.png", "fit_build_smith.png", "fit_build_residuals.png", "fit_mode_ratios.png",
+    }  # fmt: skip
+    assert "1 mm + arm" in (folder / "gauge_fitted.toml").read_text()
+
+
+def test_trim_says_how_much_to_cut(folder):
+    words = ("--mode", "1/2", "--target", "930 MHz", "--by", "arm", "--free", "arm=72 mm..79 mm")
+    done = run(folder, "trim", *words)
+    assert done.exit_code == 0, done.output
+    assert "cut -" in done.stdout
+    assert "correction factor" in done.stdout
+    # A short dipole has 1.76 dBi, a half-wave one 2.15.
+    assert re.search(r"peak gain of the mode 2\.\d\d dBi now, 2\.\d\d dBi then", done.stdout)
+    assert (folder / "plots" / "trim_arm.png").stat().st_size > 10_000
+    as_json = json.loads(run(folder, "trim", *words, "--json").stdout)[0]
+    # The dip of 902 MHz and 12 MHz per millimetre.
+    assert as_json["change"] == pytest.approx(-2.3e-3, abs=0.5e-3)
+    assert as_json["low"] < as_json["change"] < as_json["high"] < 0
+
+
+@pytest.mark.parametrize(
+    ("words", "said"),
+    [
+        (("fit",), "nothing is free to fit"),
+        (("fit", "--free", "arn=1 mm..2 mm"), "do you mean `arm`"),
+        (("fit", "--free", "arm=79 mm..72 mm"), "first bound must be below"),
+        (("trim", "--mode", "x", "--target", "1 GHz", "--by", "arm"), "is no mode"),
+        (("trim", "--mode", "1/2", "--target", "1 m", "--by", "arm"), "a frequency is needed"),
+    ],
+)
+def test_bad_requests_are_refused_with_a_sentence(folder, words, said):
+    done = run(folder, *words)
+    assert done.exit_code == 2
+    assert said in done.output
+    assert "Traceback" not in done.output
+
+
+def test_the_fitted_study_does_not_replace_the_study(folder):
+    done = run(folder, "fit", "--free", "arm=72 mm..79 mm", "-o", str(folder / "gauge.toml"))
+    assert done.exit_code == 2
+    assert "names the study itself" in done.output
+    assert (folder / "gauge.toml").read_text() == STUDY
+
+
+def test_a_measurement_elsewhere_is_refused(folder, tmp_path):
+    frequency = np.linspace(4e9, 5e9, 50)
+    rows = "\n".join(f"{f:.0f} 0.5 0.1" for f in frequency)
+    other = tmp_path / "far.s1p"
+    other.write_text(f"# Hz S RI R 50\n{rows}\n")
+    words = ["fit", str(folder / "gauge.toml"), str(other), "--free", "arm=72 mm..79 mm"]
+    done = CliRunner().invoke(main, words)
+    assert done.exit_code == 2
+    assert "no frequency in common" in done.output

@@ -1,0 +1,267 @@
+"""Fits and trims on a response that is a formula, so that the truth is known."""
+
+import numpy as np
+import pytest
+
+from simkit.errors import MeasurementError, StoreError
+from simkit.measured.bench_errors import ErrorSizes, with_capacitance
+from simkit.measured.fit import fit
+from simkit.measured.fit_problem import correlation_length, referred
+from simkit.measured.stored import surrogate_of_results
+from simkit.measured.trim import trim_fitted
+from simkit.measured.trim_words import factor_lines
+from simkit.measured.variation import Known, Variation
+from simkit.study import load_study
+
+from . import synthetic
+
+FREE_EPS = {"eps": (2.1, 3.3)}
+BOTH = {"arm": (72e-3, 76e-3), "eps": (2.1, 3.3)}
+
+
+@pytest.fixture(scope="module")
+def study(tmp_path_factory):
+    path = tmp_path_factory.mktemp("study") / "gauge.toml"
+    path.write_text(synthetic.STUDY)
+    return load_study(path)
+
+
+@pytest.fixture(scope="module")
+def model():
+    return synthetic.surrogate()
+
+
+@pytest.fixture(scope="module")
+def known_length(study, model):
+    data = synthetic.measured(74.4e-3, 3.0, directivity=0.012 + 0.005j)
+    return fit(study, [data], FREE_EPS, known=[Known("arm", 74.4e-3, 0.1e-3)], surrogate=model)
+
+
+def test_interpolation_is_as_good_as_a_solution(model):
+    f = np.linspace(*model.band_hz, 300)
+    exact = synthetic.node(73.1e-3, 2.41).reflect(f)
+    found = model.reflection({"arm": 73.1e-3, "eps": 2.41}, f)
+    # A tenth of the usual directivity: never what limits a fit.
+    assert np.abs(found - exact).max() < 1.6e-3
+
+
+def test_scale_moves_everything_by_one_factor(model):
+    f = np.linspace(0.8e9, 2.6e9, 50)
+    here = {"arm": 74e-3, "eps": 2.7}
+    scaled = model.reflection({**here, "scale": 1.02}, f)
+    assert scaled == pytest.approx(model.reflection(here, f * 1.02), abs=1e-9)
+    dips = model.modes({**here, "scale": 1.02}).dip_hz
+    assert dips * 1.02 == pytest.approx(model.modes(here).dip_hz, rel=1e-12)
+
+
+@pytest.mark.parametrize("to", ["complex", "magnitude", "features"])
+def test_permittivity_is_found_with_the_length_known(study, model, to):
+    data = synthetic.measured(74.4e-3, 3.0)
+    result = fit(
+        study, [data], FREE_EPS, known=[Known("arm", 74.4e-3, 0.1e-3)], surrogate=model, to=to
+    )
+    value = next(v for v in result.values if v.name == "eps")
+    # Noise of 1e-3 alone: far within the interval, which is made for worse analysers.
+    assert value.value == pytest.approx(3.0, rel=0.03)
+    assert value.low < 3.0 < value.high
+    assert dict(result.curves[0].pairs) == {1: 0, 3: 1}
+
+
+def test_the_interval_holds_the_model_error(study, model):
+    data = synthetic.measured(74.4e-3, 3.0, noise=1e-5)
+    known = [Known("arm", 74.4e-3, 0.001e-3)]
+    value = fit(study, [data], FREE_EPS, known=known, surrogate=model).values[0]
+    # 0.2 % of each of two modes over sensitivities of 0.07 and 0.09.
+    assert value.sigma / value.value > 0.002 / np.sqrt(2) / 0.09
+    small = ErrorSizes(model=1e-6, mode=1e-6, capacitance_f=1e-16, level=1e-5)
+    sure = fit(study, [data], FREE_EPS, known=known, surrogate=model, sizes=small).values[0]
+    assert sure.sigma < 0.5 * value.sigma
+
+
+def test_length_and_permittivity_together_are_called_confounded(study, model):
+    data = synthetic.measured(74.4e-3, 3.0)
+    result = fit(study, [data], BOTH, surrogate=model)
+    (pair,) = result.confounded
+    assert {pair.first, pair.second} == {"arm", "eps"}
+    assert pair.correlation < -0.9
+    # The product is right although neither value is.
+    truth = 74.4e-3 * 3.0**pair.exponent
+    assert pair.product == pytest.approx(truth, rel=4 * pair.relative_sigma)
+    assert "cannot be told apart" in result.as_text()
+
+
+def test_delay_of_the_reference_plane_is_told(study, model):
+    data = synthetic.measured(74.4e-3, 3.0, delay_s=70e-12)
+    result = fit(study, [data], FREE_EPS, known=[Known("arm", 74.4e-3, 0.1e-3)], surrogate=model)
+    assert result.curves[0].errors.delay_s == pytest.approx(70e-12, abs=5e-12)
+    assert "set the port extension" in result.as_text()
+
+
+def test_a_value_at_its_bound_is_reported(study, model):
+    data = synthetic.measured(74.4e-3, 3.0)
+    result = fit(study, [data], {"eps": (2.1, 2.6)}, surrogate=model)
+    assert result.values[0].at_bound
+    assert "ran to its bound 2.6" in result.as_text()
+
+
+def test_several_builds_share_one_permittivity(study, model):
+    data = [synthetic.measured(arm, 3.0, seed=k) for k, arm in enumerate((73e-3, 75.5e-3))]
+    builds = [{"arm": 73e-3}, {"arm": 75.5e-3}]
+    result = fit(
+        study, data, FREE_EPS, builds=builds, also={"arm": (72e-3, 76e-3)}, surrogate=model
+    )
+    assert len(result.curves) == 2
+    assert result.values[0].value == pytest.approx(3.0, rel=0.03)
+
+
+def test_the_fitted_study_holds_the_values(study, known_length, tmp_path):
+    path = tmp_path / "fitted.toml"
+    path.write_text(known_length.study_text())
+    again = load_study(path)
+    fitted = known_length.fitted()
+    assert again.values["eps"] == pytest.approx(fitted["eps"], rel=1e-5)
+    assert again.values["arm"] == pytest.approx(fitted["arm"], rel=1e-5)
+    assert again.values["half"] == pytest.approx(fitted["arm"] / 2, rel=1e-5)
+    assert "# fitted, was 74 mm; as drawn" in path.read_text()
+
+
+def test_nothing_free_is_refused(study, model):
+    with pytest.raises(MeasurementError, match="nothing is free to fit"):
+        fit(study, [synthetic.measured(74e-3, 2.7)], {}, surrogate=model)
+
+
+def test_another_band_is_refused(study, model):
+    data = synthetic.measured(74e-3, 2.7, band=(5e9, 6e9))
+    with pytest.raises(MeasurementError, match=r"only 0 points lie"):
+        fit(study, [data], FREE_EPS, also={"arm": (72e-3, 76e-3)}, surrogate=model)
+
+
+def test_pinning_a_dip_that_is_not_there_is_refused(study, model):
+    with pytest.raises(MeasurementError, match=r"no measured dip lies within 2% of the pinned"):
+        fit(
+            study,
+            [synthetic.measured(74e-3, 2.7)],
+            FREE_EPS,
+            pins=[{3: 2.0e9}],
+            also={"arm": (72e-3, 76e-3)},
+            surrogate=model,
+        )
+
+
+def test_no_dip_at_all_still_gives_an_answer_with_a_note(study, model):
+    data = synthetic.measured(74e-3, 2.7)
+    flat = type(data)(data.path, data.frequency_hz, 0.9 + 0 * data.reflection, 50.0)
+    result = fit(study, [flat], FREE_EPS, also={"arm": (72e-3, 76e-3)}, surrogate=model)
+    assert any("no dip stands out" in note for note in result.notes)
+    assert "still differs visibly" in result.as_text()
+
+
+def test_trim_lands_on_the_target(known_length):
+    target = 0.93e9
+    cut = trim_fitted(known_length, 1, target, "arm", (71e-3, 77e-3))
+    after = synthetic.node(74.4e-3 + cut.change, 3.0).modes[1][0]
+    # Half the 0.5 % a trim is wanted to keep.
+    assert after == pytest.approx(target, rel=2.5e-3)
+    assert cut.change < 0
+    assert cut.low < cut.change < cut.high
+    # Frequency goes with 1/arm here: plain scaling is right by construction.
+    assert cut.correction_factor == pytest.approx(1.0, abs=0.02)
+    text = cut.as_text()
+    assert "cut -" in text
+    assert "3/2 wave dip moves by" in text
+    assert "MHz/mm" in "\n".join(factor_lines([cut]))
+
+
+def test_trim_warns_when_metal_must_be_added(known_length):
+    cut = trim_fitted(known_length, 1, 0.88e9, "arm", (71e-3, 77e-3))
+    assert cut.adds_metal
+    assert "metal must be added" in cut.as_text()
+
+
+def test_a_small_cut_with_a_wide_interval_goes_in_steps(known_length):
+    present = trim_fitted(known_length, 1, 0.92e9, "arm", (71e-3, 77e-3)).present_hz
+    cut = trim_fitted(known_length, 1, present * 1.006, "arm", (71e-3, 77e-3))
+    assert cut.in_steps
+    assert 0.3 <= cut.first_share <= 0.6
+    assert "% first" in cut.as_text()
+
+
+def test_no_cut_where_the_dip_is_right(known_length):
+    present = trim_fitted(known_length, 1, 0.92e9, "arm", (71e-3, 77e-3)).present_hz
+    cut = trim_fitted(known_length, 1, present * 1.0002, "arm", (71e-3, 77e-3))
+    assert "cut nothing" in cut.as_text()
+
+
+def test_a_target_out_of_reach_is_refused(known_length):
+    with pytest.raises(MeasurementError, match=r"1500\.0 MHz is out of reach"):
+        trim_fitted(known_length, 1, 1.5e9, "arm", (71e-3, 77e-3))
+    with pytest.raises(MeasurementError, match="does not vary `width`"):
+        trim_fitted(known_length, 1, 0.9e9, "width", (5e-3, 7e-3))
+
+
+def test_correlation_length_of_noise_and_of_a_slow_ripple():
+    rng = np.random.default_rng(5)
+    noise = rng.standard_normal(500) + 1j * rng.standard_normal(500)
+    assert correlation_length(noise) < 2
+    slow = np.exp(2j * np.pi * np.arange(500) / 200)
+    assert correlation_length(slow) > 30
+    assert correlation_length(np.zeros(5, complex)) == 1.0
+
+
+def test_capacitance_and_reference_are_those_of_circuits():
+    f, z = np.array([1e9]), np.array([60 - 20j])
+    gamma = (z - 50) / (z + 50)
+    loaded = 1 / (1 / z + 2j * np.pi * f * 0.2e-12)
+    assert with_capacitance(f, gamma, 0.2e-12, 50.0) == pytest.approx((loaded - 50) / (loaded + 50))
+    assert referred(gamma, 50.0, 75.0) == pytest.approx((z - 75) / (z + 75))
+
+
+@pytest.mark.parametrize(
+    ("text", "match"),
+    [
+        ("arm", "write NAME=LOW..HIGH"),
+        ("arm=77 mm..74 mm", "first bound must be below"),
+        ("arm=2..3", "a length is needed"),
+        ("arn=70 mm..74 mm", "do you mean `arm`"),
+        ("carrier.infill=0.2..0.4", "must be written in the study"),
+    ],
+)
+def test_bounds_that_cannot_be_read(study, text, match):
+    with pytest.raises(MeasurementError, match=match):
+        Variation(study).bounds(text)
+
+
+@pytest.mark.parametrize(
+    ("text", "match"),
+    [
+        ("arm = 74 mm", "write NAME = VALUE"),
+        ("arm = 74 mm +- 0 mm", "must be positive"),
+        ("arm = 74 mm +- 1", "a length is needed"),
+    ],
+)
+def test_knowledge_that_cannot_be_read(study, text, match):
+    with pytest.raises(MeasurementError, match=match):
+        Variation(study).known(text)
+
+
+def test_overrides_move_dependent_values_and_dotted_keys(study):
+    variation = Variation(study)
+    antenna = variation.antenna({"arm": 70e-3, "carrier.permittivity": 2.2})
+    assert antenna.strips[0].path_m[-1][0] == pytest.approx(71e-3)
+    assert antenna.carrier.relative_permittivity == 2.2
+    assert variation.known("arm=74.5 mm ± 0.1 mm") == Known(
+        "arm", pytest.approx(74.5e-3), pytest.approx(0.1e-3)
+    )
+
+
+def test_a_sweep_that_does_not_cover_the_bounds_is_refused():
+    xr = pytest.importorskip("xarray")
+    dataset = xr.Dataset(
+        {"status": ("case", np.ones(3, dtype="i1"))},
+        coords={"case": np.arange(3), "arm": ("case", [0.07, 0.074, 0.078], {"units": "m"})},
+        attrs={"swept": {"arm": "arm"}},
+    )
+    with pytest.raises(StoreError, match="does not vary `eps`"):
+        surrogate_of_results(dataset, {"eps": (2.0, 3.0)})
+    with pytest.raises(StoreError, match="narrow them"):
+        surrogate_of_results(dataset, {"arm": (0.06, 0.075)})
