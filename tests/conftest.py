@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+import os
 from types import SimpleNamespace
 
-import numpy as np
-import pytest
+# Small matrices on cores that run other tests: before numpy reads it.
+for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
+    os.environ.setdefault(_name, "1")
 
-from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
+import numpy as np  # noqa: E402
+import pytest  # noqa: E402
+
+from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip  # noqa: E402
 
 PERFECT = Metal("perfect", None, 0.0)
 BAND = FrequencyBand(0.3e9, 3e9, 271)

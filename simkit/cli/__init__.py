@@ -6,6 +6,7 @@ command line or an input file cannot be used.
 
 from __future__ import annotations
 
+import os
 from importlib import import_module
 from typing import IO, Any
 
@@ -16,6 +17,11 @@ from simkit.errors import MeasurementError, SimkitError, StudyError
 
 COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare", "fit", "trim")
 """Subcommands in the order in which one uses them; each is `command` in a module of its name."""
+
+
+ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
+"""The matrices here are small: spread over busy cores they take up to ten times as long. Read when
+numpy is loaded, which no command has done yet; what the user has set stays."""
 
 
 class CommandFailure(click.ClickException):
@@ -48,6 +54,8 @@ class LazyGroup(click.Group):
 
     def invoke(self, ctx: click.Context) -> Any:
         """Run the subcommand."""
+        for name in ONE_THREAD:
+            os.environ.setdefault(name, "1")
         try:
             return super().invoke(ctx)
         except (StudyError, MeasurementError) as error:

@@ -109,8 +109,8 @@ class WireGrid:
         Middle of each segment along the centre line of its strip, 0..1; NaN for the outward pieces
         of corner figures and for the feed gap.
     source, probe : tuple of (int, float)
-        Segments and volts of the feed and of the second, off-centre source; the volts of each add
-        up to 1, so the terminal current is their weighted mean of the segment currents.
+        Segments and volts of the feed and of the second, off-centre source. The volts add up to 1
+        on every rail, so the terminal current is the sum of volts times segment currents.
     model_gap_m, study_gap_m, feed_width_m : float
         Gap the engine's source acts like, gap of the study, strip width there. A feed between a
         strip's foot and a ground plane counts twice the width: that gap has the charge of two, of
