@@ -234,7 +234,10 @@ class _Walk:
                 self.put(self.source_m, tied=True, volts=1.0)
         elif line.start is None:
             width = float(line.width_after_m[0])
-            self.put(self.rule.tip_m(width, self.widen(width)) + line.start_tip_m, tied=True)
+            self.put(
+                self.rule.tip_m(width, self.widen(width), self.source_m) + line.start_tip_m,
+                tied=True,
+            )
         else:
             away = host_reach_m(self.lines, self.index, "start", self.rule, self.widen)
             width = float(line.width_after_m[0])
@@ -253,7 +256,10 @@ class _Walk:
                 self.put(length - self.source_m, tied=True)
             self.put(length, tied=False, width_m=width, volts=1.0 if fed else 0.0)
         elif line.end is None:
-            self.put(length - self.rule.tip_m(width, self.widen(width)) - line.end_tip_m, tied=True)
+            self.put(
+                length - self.rule.tip_m(width, self.widen(width), self.source_m) - line.end_tip_m,
+                tied=True,
+            )
         else:
             away = host_reach_m(self.lines, self.index, "end", self.rule, self.widen)
             for rung in reversed(JUNCTION_RUNGS_WIDTHS):

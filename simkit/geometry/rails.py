@@ -24,6 +24,9 @@ CLOSEST_RADII = 2.1
 CONSTANT_RADIUS_WIDTHS = 0.05
 CONSTANT_OFFSET_WIDTHS = 0.43
 CONSTANT_TIP_WIDTHS = 0.075
+TIP_PER_SEGMENT = 0.0012
+"""More of a width is taken off where the segments are short against it. Without it straight strips
+of 1/7.5 and 1/5 of their length are 0.1 and 0.4 % low; narrower ones are not concerned."""
 
 _TIP_RATIOS = (1.0, 3.0, 6.0, 10.0)
 _TIP_WIDTHS = {
@@ -60,7 +63,7 @@ class RailRule:
             return np.linspace(-reach, reach, self.count)
         return np.array(_spread(self.count, round(width_m / self.radius_m, 9))) * self.radius_m
 
-    def tip_m(self, width_m: float, effective_m: float) -> float:
+    def tip_m(self, width_m: float, effective_m: float, segment_m: float = np.inf) -> float:
         """How far inside an open end the end bar lies, metres.
 
         Parameters
@@ -69,9 +72,12 @@ class RailRule:
             Drawn width at the end.
         effective_m : float
             The same, widened by the carrier: it sets how far the rails are spread.
+        segment_m : float
+            Length of the segments along the rails.
         """
         if self.constant:
-            return CONSTANT_TIP_WIDTHS * width_m
+            many = max(width_m / segment_m - 2.0, 0.0)
+            return (CONSTANT_TIP_WIDTHS + TIP_PER_SEGMENT * many) * width_m
         ratio = closest_radius_widths(self.count) * effective_m / self.radius_m
         value = np.interp(np.log(max(ratio, 1.0)), np.log(_TIP_RATIOS), _TIP_WIDTHS[self.count])
         return float(value * width_m)
