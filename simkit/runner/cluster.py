@@ -22,6 +22,10 @@ _LOOK_S = 2.0
 _TOPIC = "simkit"
 
 
+class UnlikeWorkerError(Exception):
+    """A block came to a worker with other versions of simkit or engine and is to go elsewhere."""
+
+
 class ClusterPool:
     """Workers of a cluster, as many as there are at the moment.
 
@@ -46,12 +50,13 @@ class ClusterPool:
         self._say = say
         self._versions = program_versions()
         self._size, self._looked = 0, 0.0
+        self._unlike: set[str] = set()
         self._settings = self._quietly()
         try:
             self._client = self._connect()
             self._wait_for_workers()
             check_versions(self._ask_versions(), self._versions)
-            self._client.subscribe_topic(_TOPIC, lambda event: self._say(str(event[1])))
+            self._client.subscribe_topic(_TOPIC, self._told)
         except BaseException:
             self.close()
             raise
@@ -120,10 +125,24 @@ class ClusterPool:
             self._size, self._looked = now, time.monotonic()
         return max(1, self._size)
 
+    def _told(self, event: tuple[Any, Any]) -> None:
+        """A worker says that it is unlike the run."""
+        said = dict(event[1])
+        self._unlike.add(str(said["worker"]))
+        self._say(str(said["text"]))
+
     def submit(self, job: BlockJob) -> Any:
-        """Start a block some time soon."""
+        """Start a block some time soon, on a worker that is like the run."""
+        only = None
+        if self._unlike:
+            only = [worker for worker in self._client.nthreads() if worker not in self._unlike]
         return self._client.submit(
-            do_checked_block, self._function, packed(job), self._versions, pure=False
+            do_checked_block,
+            self._function,
+            packed(job),
+            self._versions,
+            pure=False,
+            workers=only or None,
         )
 
     def close(self) -> None:
@@ -147,15 +166,16 @@ def _workers_text(count: int, address: str) -> str:
 def do_checked_block(function: str, job: bytes, versions: Mapping[str, str]) -> Receipt:
     """Task of a worker: one block, unless the worker joined with other versions meanwhile."""
     if program_versions() != versions:
-        from distributed import Reschedule, get_worker
+        from distributed import get_worker
 
         worker: Any = get_worker()
+        text = _difference(worker.address, program_versions(), versions)
         if not hasattr(worker, "simkit_said"):
             worker.simkit_said = True
-            text = _difference(worker.address, program_versions(), versions)
-            worker.log_event(_TOPIC, f"no block is given to {text}")
-        time.sleep(1.0)
-        raise Reschedule
+            said = {"worker": worker.address, "text": f"no block is given to {text}"}
+            worker.log_event(_TOPIC, said)
+        time.sleep(1.0)  # the run is to hear of it before it hands the block out again
+        raise UnlikeWorkerError(text)
     return do_block(function, job)
 
 

@@ -141,6 +141,9 @@ class Loop:
 
     def _lost(self, job: BlockJob, error: Exception) -> None:
         """Give a block out again whose workers died; all else that goes wrong ends the run."""
+        if type(error).__name__ == "UnlikeWorkerError":
+            self._again.append(job)
+            return
         if type(error).__name__ != "KilledWorker":
             raise _worker_trouble(error) from error
         losses = self._losses[job.block] = self._losses.get(job.block, 0) + 1
