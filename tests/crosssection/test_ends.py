@@ -17,6 +17,8 @@ from simkit.crosssection.ends import (
     end_correction,
 )
 
+pytestmark = pytest.mark.long
+
 SQUARE_PLATE = 0.366789
 CUBE = 0.660678
 """Capacitances over 4 pi eps0 and the edge, from memory of Read, J. Comput. Phys. 133, 1997, and

@@ -10,6 +10,8 @@ from matplotlib.patches import Rectangle
 from simkit.crosssection import CrossSection, FlatConductor, Layer, kappa, single_strip
 from simkit.plot.crosssection import LEVELS_PERCENT, _potential, plot_crosssection
 
+pytestmark = pytest.mark.long
+
 SECTION = single_strip(6e-3, [Layer(2e-3, 2.7), Layer(1e-3, 1.4 - 0.014j)], (3e-3, 1e-3))
 
 

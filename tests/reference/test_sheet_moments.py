@@ -8,6 +8,8 @@ from sheet_integrals import collapsed_rule, potentials
 from sheet_meshes import arc, path, profile, rectangles
 from sheet_moments import FREE_SPACE_OHM, SPEED_OF_LIGHT, Sheet
 
+pytestmark = pytest.mark.long
+
 TRIANGLE = np.array([[0.2, -0.1], [3.1, 0.4], [0.9, 0.8]])
 ALONG = np.array([1.0, 0.0])
 

@@ -26,6 +26,8 @@ from simkit.store.remote import RemotePath, place
 from simkit.store.schema import Status
 from simkit.store.write import StoreFile
 
+pytestmark = pytest.mark.long
+
 ARMS = [60, 64, 70, 75, 80]
 
 

@@ -17,6 +17,8 @@ from simkit.store.schema import Status
 from simkit.store.write import StoreFile
 from simkit.study import load_study
 
+pytestmark = pytest.mark.long
+
 
 @pytest.fixture
 def go(fake, direct, tmp_path):

@@ -94,6 +94,7 @@ def test_bad_cases_are_marked_and_the_good_ones_solved(go, make_study):
     assert "case 5 timed-out: stopped at the time limit" in log_of(summary)
 
 
+@pytest.mark.long
 def test_an_innocent_case_survives_the_loss_of_its_process(go, make_study, marks):
     """As when the system ends a process for want of memory that another one took."""
     assert go(make_study([60], [11])).ok
@@ -107,6 +108,7 @@ def test_failed_cases_are_not_tried_again(go, make_study, marks):
     assert len(marks()) == 4
 
 
+@pytest.mark.long
 def test_failed_cases_are_tried_again_if_asked_for(go, make_study, marks, monkeypatch):
     study = make_study([60, 61], [8, 9, 0])
     first = go(study)
@@ -123,6 +125,7 @@ def test_failed_cases_are_tried_again_if_asked_for(go, make_study, marks, monkey
     assert go(study, retry=True).solved == 0
 
 
+@pytest.mark.long
 def test_what_fails_again_is_tried_once_a_run(go, make_study, marks):
     study = make_study([60, 61], [8, 9])
     go(study)
@@ -132,6 +135,7 @@ def test_what_fails_again_is_tried_once_a_run(go, make_study, marks):
     assert len(marks()) == 6
 
 
+@pytest.mark.long
 def test_failed_cases_of_an_earlier_study_are_not_taken_over_if_retried(go, make_study, marks):
     go(make_study([60, 61], [8, 9]))
     summary = go(make_study([60, 61, 62], [8, 9]), retry=True)
@@ -275,6 +279,7 @@ def test_a_folder_that_cannot_be_made_is_said(go, make_study, tmp_path):
         go(make_study(ARMS))
 
 
+@pytest.mark.long
 def test_a_torn_status_is_solved_anew(go, direct, make_study, marks):
     study = make_study(ARMS)
     summary = go(study, block_size=2)
@@ -287,6 +292,7 @@ def test_a_torn_status_is_solved_anew(go, direct, make_study, marks):
     assert before.identical(open_results(again.results_dir).load())
 
 
+@pytest.mark.long
 def test_a_case_lost_from_a_torn_block_is_solved_anew(go, direct, make_study):
     """A block with one waiting case whose data are damaged: all its cases are done again."""
     study = make_study(ARMS)
