@@ -25,6 +25,9 @@ Found by comparing the feed admittance with a full-wave solution of flat strips 
 """
 
 
+CARRIER_NEIGHBOUR_THICKNESSES = 4
+"""Strips that are not joined must be so many thicknesses of their carrier apart."""
+
 THICKEST_WIDTHS = 0.1
 """Thickness over width up to which the equivalent radius is right to 0.5 %."""
 
@@ -190,6 +193,7 @@ def _check_pair(antenna: Antenna, first: Strip, second: Strip) -> list[str]:
             f"{pair} cross or overlap near ({x:.4g}, {y:.4g}) mm without an end of one on the "
             "other; crossings are not covered: end one strip on the other, or move them apart"
         )
+    _check_shared_carrier(antenna, pair, distance, (x, y))
     _check_near_miss(first, second, fed)
     _check_near_miss(second, first, fed)
     if distance < min(first.width_m, second.width_m):
@@ -227,6 +231,23 @@ def _check_joint_area(pair: str, shapes: tuple, joints: list[FloatArray], width:
         raise GeometryError(
             f"{pair} overlap near ({x * 1e3:.4g}, {y * 1e3:.4g}) mm, away from where they are "
             "joined; spread them or change the angle between them"
+        )
+
+
+def _check_shared_carrier(
+    antenna: Antenna, pair: str, distance_m: float, place_mm: tuple[float, float]
+) -> None:
+    """Each strip has a carrier of its own in the models; neighbours in one plastic couple in it."""
+    carrier = antenna.carrier
+    if carrier is None:
+        return
+    least_m = CARRIER_NEIGHBOUR_THICKNESSES * carrier.thickness_m
+    if distance_m < least_m:
+        raise GeometryError(
+            f"{pair} on one carrier come within {distance_m * 1e3:.4g} mm near "
+            f"({place_mm[0]:.4g}, {place_mm[1]:.4g}) mm; the plastic couples strips closer than "
+            f"{CARRIER_NEIGHBOUR_THICKNESSES} of its thicknesses ({least_m * 1e3:.4g} mm), which "
+            "the models do not see: move them apart, or leave [carrier] out"
         )
 
 

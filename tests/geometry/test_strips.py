@@ -13,7 +13,7 @@ from simkit.geometry.strips import (
     equivalent_radius_m,
     model_gap_m,
 )
-from simkit.study.model import EndFeed, Strip
+from simkit.study.model import Carrier, EndFeed, Strip
 
 
 def refused(antenna, match):
@@ -171,3 +171,16 @@ def test_a_close_neighbour_is_a_doubt_that_says_how_close(make):
     (doubt,) = check_strips(replace(antenna, strips=(*antenna.strips, third)))
     assert "'east' and 'rod' come within 2.5 mm" in doubt
     assert "less than a width (4 mm)" in doubt
+
+
+def test_neighbours_on_one_carrier_are_refused(make):
+    """The coupling through shared plastic is in no model; in air the same strips pass."""
+    fed = make.straight(120, 6, 60)
+    along = ((0.0, 0.0165), (0.12, 0.0165))
+    pair = replace(fed, strips=(*fed.strips, Strip("near", along, 0.006)))
+    check_strips(pair)
+    carried = replace(pair, carrier=Carrier(2.7, 0.01, 3e-3))
+    message = r"come within 10\.5 mm near .* mm; .* 4 of its thicknesses \(12 mm\)"
+    with pytest.raises(GeometryError, match=message):
+        check_strips(carried)
+    check_strips(replace(carried, carrier=Carrier(2.7, 0.01, 2e-3)))
