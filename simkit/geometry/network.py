@@ -38,6 +38,10 @@ from simkit.geometry.placement import stands_on_plane
 from simkit.geometry.wires import FloatArray, StripSpan
 from simkit.study.model import Antenna, CutFeed, EndFeed, Strip
 
+FACING_RAD = np.deg2rad(30.0)
+"""Ends of all but parallel strips face each other if the gap leads on by less than this; ends more
+out of line than half the gap would be drawn together into strips that slant."""
+
 STRAIGHT_FEED_RAD = np.deg2rad(2.0)
 """A feed whose strips turn by less than this counts as lying inside a straight leg."""
 
@@ -351,7 +355,7 @@ def _apex(
             "gap that the real feed has between them"
         )
     before, after = unit(end_a - inner_a), unit(inner_b - end_b)
-    facing = turn_angle(before, end_b - end_a) < np.pi / 2
+    facing = turn_angle(before, end_b - end_a) < FACING_RAD
     if facing and turn_angle(before, after) < np.deg2rad(10.0):
         return (end_a + end_b) / 2, gap
     problem = GeometryError(

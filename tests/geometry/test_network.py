@@ -138,6 +138,12 @@ class TestEnds:
             r"the two strip ends meet at \(0, 0\) mm, so the feed is shorted; leave the gap",
         )
 
+    def test_fed_ends_out_of_line_by_more_than_the_gap(self):
+        """Joined at the middle of the gap, both strips would slant."""
+        east, west = strip("east", [(1, 0), (71, 0)]), strip("west", [(-1, 5), (-51, 5)])
+        feed = EndFeed("west", "start", "east", "start")
+        refused(antenna(east, west, feed=feed), "do not face each other across the gap")
+
     def test_fed_ends_that_do_not_face_each_other(self):
         """West begins beyond the start of east, so both run past each other."""
         east, west = strip("east", [(1, 0), (71, 0)]), strip("west", [(4, 9), (-51, 9)])
