@@ -109,8 +109,8 @@ to   = "east.start"
 
 # What lies between the feed and the connector, item by item from the antenna on: "line", "stub",
 # "tapped-line" (of two-strips, strip-over-plate, coplanar-strips, coaxial or uniform line),
-# "resistor", "inductor", "capacitor", "transformer" (a balun is one) and "port-extension". Left out,
-# the connector sits at the feed. A name makes its sizes keys to sweep: feedline.pair.length
+# "resistor", "inductor", "capacitor", "transformer" (a balun is one) and "port-extension". Without
+# any the connector sits at the feed. By its name an item can be swept: feedline.pair.length
 # [[feedline]]
 # kind       = "line"
 # name       = "pair"

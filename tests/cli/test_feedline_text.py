@@ -24,8 +24,7 @@ def test_each_item_with_its_line_and_what_it_is_worth(make):
     assert head.startswith("Feed line     item ")
     assert cable.split()[:5] == ["cable", "line,", "300", "mm", "of"]
     # 0.2 dB/m at 900 MHz are 0.2 sqrt(1650 / 900) in the middle of the band
-    assert "75.00 ohm" in cable
-    assert "0.6600  0.271 dB/m  any" in cable
+    assert cable.split()[-6:] == ["75.00", "ohm", "0.6600", "0.271", "dB/m", "any"]
     assert "open series stub, 18 mm of two strips 30 mm wide, 10 mm apart in air" in tune
     assert tune.split()[-1] == "MHz"
     assert last.split()[1:] == ["shunt", "3.3", "nH,", "Q", "40"]
