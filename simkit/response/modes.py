@@ -25,8 +25,9 @@ SURVIVAL = 0.05
 Real ones move by under 0.5 %, the poles with which a fit paints its background by 5 % and more.
 """
 
-LEAST_Q = 0.5
-"""Below this a pole is overdamped: no resonance and no half waves to count."""
+LEAST_Q = 1.0
+"""Below this a pole is wider than its own frequency: no resonance that anybody could see. A fit
+paints the background of a whole band with poles of 0.5 to 0.7, which may survive all else."""
 
 LEAST_COHERENCE = 0.5
 LEAST_TOTAL = 0.03
