@@ -26,17 +26,18 @@ SURVIVAL = 0.05
 """A real pole moves by less than this part of its half width when a sample is left out.
 
 Of 540 poles of strips up to six wavelengths long, real ones move by 2 % at most in two of three
-fits. In the third the sample that is left out may be the one that shows a narrow mode. The poles
-with which a fit paints its background move by 5 % and more in one fit at least, and are wide.
+fits. In the third the sample that is left out may be the one that shows a narrow mode.
 """
 
-WIDE_Q = 2.0
-"""Poles below it must survive in every fit, others in two of three. Natural modes of strips, bent
-or not, have 2.4 and more; those of the background 1.9 and less."""
+WIDE_Q = 2.3
+WIDE_SURVIVAL = 0.01
+"""Poles below that Q must survive in every fit, and so much better. Natural modes of strips, bent
+or not, have 2.4 and more. What a fit paints its background with has 2.1 and less, and one in fifty
+of those moves by less than 5 % in all fits."""
 
-LEAST_Q = 1.0
-"""Below this a pole is wider than its own frequency: no resonance that anybody could see. A fit
-paints the background of a whole band with poles of 0.5 to 0.7, which may survive all else."""
+LEAST_Q = 1.5
+"""Below this a pole is about as wide as its own frequency: no resonance anybody could see. A fit
+paints the background of a whole band with poles of 0.5 to 1.3, which may survive all else."""
 
 LEAST_COHERENCE = 0.5
 LEAST_TOTAL = 0.03
@@ -154,11 +155,11 @@ def _total_strength(residues: ComplexArray, grid: WireGrid) -> FloatArray:
 
 def _surviving(poles: ComplexArray, others: Sequence[ComplexArray]) -> BoolArray:
     """Which poles are found again by enough of the fits that lack a sample."""
+    wide = poles.real < 2 * WIDE_Q * poles.imag
+    limit = np.where(wide, WIDE_SURVIVAL, SURVIVAL) * poles.imag
     found = np.zeros(poles.shape, dtype=int)
     for spare in others:
-        moved = np.min(abs(poles[:, None] - spare), axis=1, initial=np.inf)
-        found += moved < SURVIVAL * poles.imag
-    wide = poles.real < 2 * WIDE_Q * poles.imag
+        found += np.min(abs(poles[:, None] - spare), axis=1, initial=np.inf) < limit
     return np.asarray(found >= np.where(wide, len(others), len(others) - len(others) // 3))
 
 

@@ -19,6 +19,9 @@ FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 
 FIRST_SAMPLES = 8
+VERIFIED_EACH = 9
+"""One sample more is spent on verification for so many: a long band hides a mode more easily."""
+
 SKETCH = 6
 """Random combinations of all currents that the fit looks at."""
 
@@ -206,12 +209,13 @@ def adaptive_sweep(
     Sweep
     """
     search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed, observe)
+    verified = 0
     while True:
         frequency, difference = search.where_models_differ()
         if difference < search.tolerance:
-            frequency = search.emptiest()
-            difference = search.error_at(frequency)
-            if difference < search.tolerance:
+            difference = search.error_at(search.emptiest())
+            verified = verified + 1 if difference < search.tolerance else 0
+            if verified * VERIFIED_EACH >= len(search.frequencies) - verified:
                 return search.result(converged=True, error=difference)
         elif len(search.frequencies) < most_samples:
             search.add(frequency)
