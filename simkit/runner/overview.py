@@ -133,7 +133,11 @@ def _counts_or_none(path: Place) -> StoreCounts | None:
 
 
 def _counts(path: Place) -> StoreCounts:
-    store = StoreFile(path)
+    return counts_of(StoreFile(path))
+
+
+def counts_of(store: StoreFile) -> StoreCounts:
+    """Title of a store and its cases per status."""
     return StoreCounts(
         title=str(store.attrs.get("title", "")),
         cases=store.cases,
