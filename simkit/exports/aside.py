@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import errno
 import os
 import shutil
@@ -33,7 +34,8 @@ def new_file(path: Path, *, overwrite: bool) -> Iterator[Path]:
             os.replace(aside, path)
             flush([path.parent])
     finally:
-        aside.unlink(missing_ok=True)
+        with contextlib.suppress(OSError):  # the error that brought us here says more
+            aside.unlink(missing_ok=True)
 
 
 @contextmanager

@@ -18,10 +18,13 @@ import numpy as np
 from simkit.errors import ExportError
 from simkit.exports.aside import new_file
 from simkit.exports.outcome import Exported, Seen
+from simkit.finding.reading import damage_in_words
 from simkit.finding.select import parts
 
 if TYPE_CHECKING:
     import xarray as xr
+
+_OF_THE_STORE = ("store_version", "layout_hash", "variables", "block_size", "takeover")
 
 LARGEST_BYTES = 1_000_000_000
 """Numbers in one file; while it is written about twice as much memory is needed."""
@@ -76,11 +79,12 @@ def _loaded(chosen: xr.Dataset, seen: Seen) -> xr.Dataset:
     }
     for rows in parts(chosen):
         part = chosen.isel(case=rows)
-        for name, target in arrays.items():
-            if isinstance(target, list):
-                target += [str(text) for text in part[name].values]
-            else:
-                target[rows] = part[name].values
+        with damage_in_words(part):
+            for name, target in arrays.items():
+                if isinstance(target, list):
+                    target += [str(text) for text in part[name].values]
+                else:
+                    target[rows] = part[name].values
         seen(rows.stop)
     variables = {
         name: (chosen[name].dims, _text(array) if isinstance(array, list) else array,
@@ -116,8 +120,13 @@ def split_complex(dataset: xr.Dataset) -> xr.Dataset:
 
 
 def plain_attrs(attrs: Mapping[Any, Any]) -> dict[str, Any]:
-    """Return attributes as text and numbers; lists and tables become JSON."""
+    """Return attributes as text and numbers; lists and tables become JSON.
+
+    What belongs to the store alone is left out, and must be: an attribute called ``variables``
+    takes the place of the variables themselves in scipy's writer.
+    """
     return {
         str(key): value if isinstance(value, str | int | float) else json.dumps(value)
         for key, value in attrs.items()
+        if key not in _OF_THE_STORE
     }

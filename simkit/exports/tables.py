@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from simkit.exports.aside import new_file
 from simkit.exports.outcome import Exported, Seen
+from simkit.finding.reading import damage_in_words
 from simkit.finding.select import parts
 from simkit.store.read import connector_impedance, swept_names
 from simkit.store.rows import OF_MODE, column_name
@@ -39,7 +40,9 @@ def write_modes(dataset: xr.Dataset, path: Path, seen: Seen, *, overwrite: bool)
         writer.writerow(head)
         for rows in parts(dataset):
             part = dataset.isel(case=rows)
-            writer.writerows(zip(*_mode_columns(part, names), strict=True))
+            with damage_in_words(part):
+                columns = _mode_columns(part, names)
+            writer.writerows(zip(*columns, strict=True))
             seen(rows.stop)
     return Exported(path, dataset.sizes["case"])
 
@@ -79,7 +82,8 @@ def write_curves(dataset: xr.Dataset, path: Path, seen: Seen, *, overwrite: bool
                 *(_cells(part[name].values) for name in swept_names(part).values()),
                 strict=True,
             )
-            curves = part[connector_impedance(part)].values
+            with damage_in_words(part):
+                curves = part[connector_impedance(part)].values
             for start, curve in zip(starts, curves, strict=True):
                 if np.isfinite(curve).all():
                     written += 1

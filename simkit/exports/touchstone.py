@@ -14,6 +14,7 @@ import numpy as np
 from simkit.errors import ExportError
 from simkit.exports.aside import new_files
 from simkit.exports.outcome import Exported, Seen
+from simkit.finding.reading import damage_in_words
 from simkit.finding.select import parts
 from simkit.store.read import connector_impedance, swept_names
 from simkit.store.schema import Status
@@ -31,12 +32,15 @@ def write_touchstone(
     numbers = dataset["case"].values.astype(int)
     there = _solved(dataset)
     names = file_names(stem, numbers[there])
+    needed = dataset[[connector_impedance(dataset), "status", "reason"]]
     if not names:
         raise ExportError("none of the selected cases has a solution: there is nothing to hand on")
     with new_files(folder, names, overwrite=overwrite) as aside:
         left = iter(names)
-        for rows in parts(dataset):
-            part = dataset.isel(case=rows)
+        for rows in parts(needed):
+            part = needed.isel(case=rows)
+            with damage_in_words(part):
+                part.load()
             for place in np.flatnonzero(there[rows]):
                 (aside / next(left)).write_text(
                     touchstone_text(part.isel(case=int(place))), encoding="ascii"

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import contextlib
+from collections.abc import Iterator
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -63,10 +65,17 @@ def read_term(part: xr.Dataset, term: Term) -> FloatArray:
     StoreError
         A block that is needed is damaged.
     """
+    with damage_in_words(part):
+        return _read(part, term)
+
+
+@contextlib.contextmanager
+def damage_in_words(part: xr.Dataset) -> Iterator[None]:
+    """Turn what reading a damaged block raises into one sentence that names its cases."""
     from simkit.store.write import TORN
 
     try:
-        return _read(part, term)
+        yield
     except TORN as error:
         cases = part["case"].values
         raise StoreError(

@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 
     from simkit.finding.condition import Condition, Term
 
-LARGEST_PART = 512
+LARGEST_PART = 128
 """Cases looked at together, unless the results are stored in larger blocks."""
 
 
