@@ -230,9 +230,7 @@ class _Parser:
         if quantity.kind == "band":
             return self.in_band(quantity, token)
         if self.now.is_word("of"):
-            raise self.error(
-                f"`{quantity.name}` does not belong to a mode: leave this out", self.now
-            )
+            raise self.error(f"`{quantity.name}` belongs to no mode: leave this out", self.now)
         return Term(quantity, None, None, quantity.name)
 
     def quantity(self, token: Token) -> Quantity:

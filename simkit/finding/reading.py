@@ -80,7 +80,7 @@ def damage_in_words(part: xr.Dataset) -> Iterator[None]:
         cases = part["case"].values
         raise StoreError(
             f"cases {cases[0]} to {cases[-1]}: damaged, cannot be read: {error}; "
-            "run the study again, it solves that block anew"
+            "start anew with --fresh"
         ) from error
 
 
