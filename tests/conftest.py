@@ -135,11 +135,11 @@ def creek_results(tmp_path_factory):
 
 def _creek_values(case):
     none = np.full(10, np.nan)
-    frequency, halves, quality, dip, gain = none.copy(), np.full(10, -1), none.copy(), none, none
+    frequency, quality, dip, gain = (none.copy() for _ in range(4))
+    halves = np.full(10, -1)
     frequency[:3] = creek_centre_hz(case) * np.array([0.98, 2.0, 3.1])
     halves[:3] = (1, 2, 3)
     quality[:3] = CREEK_Q + case * np.array([0.1, 0.2, 0.3])
-    dip, gain = none.copy(), none.copy()
     dip[0] = np.nan if case == 5 else creek_centre_hz(case)
     gain[:3] = (2.1 + 0.01 * case, 2.6, 3.4)
     return {
@@ -149,6 +149,7 @@ def _creek_values(case):
         "path_on_plane": np.int8(case == 6),
         "mode_q": quality,
         "dip_frequency": dip,
+        "dip_return_loss": np.where(np.isnan(dip), np.nan, 19.0 + case),
         "peak_gain": gain,
         "efficiency": np.where(np.isnan(frequency), np.nan, 0.9 + 0.005 * case),
         "gain": np.full((10, 19, 37), 2.5 - 0.25 * case, dtype=np.float32),
