@@ -145,12 +145,17 @@ def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
 
 def end_text(summary: RunSummary, study: str) -> str:
     """Return counts per status, where everything is, and what to do next."""
+    from simkit.store.schema import Status
+
     counts = ", ".join(f"{n} {status.label}" for status, n in summary.counts.items() if n)
     results = summary.results_dir
     lines = ["", labelled("Cases", f"{counts} ({summary.reused} reused)")]
     if summary.stopped or not summary.complete:
         why = f"stopped {summary.stopped}; the same command continues" if summary.stopped else ""
         return "\n".join([*lines, labelled("Next", why or f"simkit run {study} (continues)")])
+    if unlucky := summary.counts[Status.FAILED] + summary.counts[Status.TIMED_OUT]:
+        again = f"simkit run {study} --retry (solves {unlucky} failed or timed-out again)"
+        lines.append(labelled("Again", again))
     return "\n".join(
         [
             *lines,

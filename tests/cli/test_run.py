@@ -3,14 +3,18 @@
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from pathlib import Path
 
 import fsspec
 import pytest
 
-from simkit.cli.run import drawing_folder
+from simkit.cli.run import drawing_folder, end_text
+from simkit.runner import RunStatus, RunSummary
 from simkit.runner.lock import take_lock
+from simkit.runner.overview import StoreCounts, status_lines
 from simkit.store.remote import place
+from simkit.store.schema import Status
 
 from .hook import Session
 
@@ -36,6 +40,16 @@ def test_retry_leaves_refused_cases_alone(session: Session) -> None:
     words = ("run", session.study, "--results", session.results.parent, "--workers", "1")
     result = session.simkit(*words, "--retry")
     assert "3 reused from the earlier run, 0 to solve" in result.stderr
+
+
+def test_cases_without_luck_are_offered_another_try(tmp_path: Path) -> None:
+    counts = dict.fromkeys(Status, 0) | {Status.SOLVED: 3, Status.FAILED: 2, Status.TIMED_OUT: 1}
+    summary = RunSummary(counts, reused=0, solved=6, results_dir=tmp_path, seconds=1.0)
+    assert "simkit run hook.toml --retry (solves 3 failed" in end_text(summary, "hook.toml")
+    state = RunStatus(tmp_path, StoreCounts("Hook", 6, counts), None, "")
+    assert "`simkit run` with --retry solves 3 failed or timed-out again" in status_lines(state)
+    calm = summary.counts | {Status.FAILED: 0, Status.TIMED_OUT: 0}
+    assert "--retry" not in end_text(replace(summary, counts=calm), "hook.toml")
 
 
 def test_status_before_anything_is_stored(session: Session, tmp_path: Path) -> None:
