@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
+from simkit.cli.folder import drawing_folder
 from simkit.cli.options import results_option, study_argument
 from simkit.cli.output import labelled
 
@@ -16,7 +15,6 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from simkit.runner import RunSummary
-    from simkit.store.remote import Place
     from simkit.study import Study
 
 
@@ -86,20 +84,6 @@ def command(
     click.echo(end_text(summary, study))
     if trouble or not summary.ok or summary.stopped:
         raise click.exceptions.Exit(1)
-
-
-@contextmanager
-def drawing_folder(results: Place) -> Iterator[Path]:
-    """The folder pictures are drawn into; those for an address are sent there afterwards."""
-    if isinstance(results, Path):
-        yield results
-        return
-    import tempfile
-
-    with tempfile.TemporaryDirectory(prefix="simkit-") as folder:
-        yield Path(folder)
-        results.upload_tree(Path(folder))
-    click.echo(f"  ... sent to {results}")
 
 
 def show_remarks(dataset: xr.Dataset, study: Study) -> None:

@@ -9,7 +9,8 @@ from pathlib import Path
 import fsspec
 import pytest
 
-from simkit.cli.run import drawing_folder, end_text
+from simkit.cli.folder import drawing_folder
+from simkit.cli.run import end_text
 from simkit.runner import RunStatus, RunSummary
 from simkit.runner.lock import take_lock
 from simkit.runner.overview import StoreCounts, status_lines
@@ -74,11 +75,14 @@ def test_pictures_for_an_address_are_sent_there(capsys: pytest.CaptureFixture[st
         (folder / "plots").mkdir()
         (folder / "plots" / "geometry.png").write_bytes(b"picture")
     assert fsspec.filesystem("memory").cat("/pictures/hook/plots/geometry.png") == b"picture"
-    assert "sent to memory://pictures/hook" in capsys.readouterr().out
+    assert "sent to memory://pictures/hook" in capsys.readouterr().err
     fsspec.filesystem("memory").rm("/pictures", recursive=True)
 
 
-def test_results_at_an_address_are_read_by_every_command(session: Session, tmp_path: Path) -> None:
+def test_results_at_an_address_are_read_by_every_command(
+    session: Session, measured: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)
     there = place("memory://reading/hook")
     there.upload_tree(session.results)  # type: ignore[union-attr]
     for words in (("status",), ("modes", "--json")):
@@ -86,4 +90,18 @@ def test_results_at_an_address_are_read_by_every_command(session: Session, tmp_p
         other = session.simkit(words[0], "memory://reading/hook", *words[1:])
         assert other.exit_code == 0, other.output
         assert other.stdout == one.stdout
+    system = fsspec.filesystem("memory")
+    drawn = session.simkit("plot", "memory://reading/hook", "geometry", "--case", "0")
+    assert drawn.exit_code == 0, drawn.output
+    assert system.cat("/reading/hook/plots/geometry_case_0.png").startswith(b"\x89PNG")
+    for words in (
+        ("check", session.study, "--results", "memory://reading"),
+        ("compare", "memory://reading/hook", measured),
+        ("compare", "memory://reading/hook", measured, "--nearest"),
+    ):
+        done = session.simkit(*words)
+        assert done.exit_code in (0, 1), done.output  # 1: a case of the study cannot be built
+        assert "sent to memory://reading/hook" in done.stderr
+    assert system.exists("/reading/hook/plots/compare_hook_build.png")
+    assert not (tmp_path / "memory:").exists()
     fsspec.filesystem("memory").rm("/reading", recursive=True)
