@@ -51,7 +51,8 @@ def new_files(folder: Path, names: list[str], *, overwrite: bool) -> Iterator[Pa
         raise ExportError(f"{folder}: this is a file; name a folder for one file a case")
     for name in names:
         _require_free(folder / name, overwrite=overwrite)
-    aside = _aside(folder)
+    # Inside a folder that is there: the one around it may be closed, or on another disk.
+    aside = folder / f".{os.getpid()}.part" if folder.exists() else _aside(folder)
     try:
         with in_words(folder):
             aside.mkdir(parents=True)

@@ -213,6 +213,19 @@ def test_a_disk_that_does_not_take_it_is_said(
     assert written(tmp_path) == []
 
 
+def test_a_folder_that_is_there_takes_what_its_surroundings_do_not(dataset, tmp_path, monkeypatch):
+    """As the current folder, or a memory stick: nothing is written beside it."""
+    made = []
+    original = type(tmp_path).mkdir
+    monkeypatch.setattr(
+        type(tmp_path), "mkdir", lambda path, *a, **k: (made.append(path), original(path, *a, **k))
+    )
+    monkeypatch.chdir(tmp_path)
+    simkit.export(dataset, ".", "touchstone", where="case = 2", name="a")
+    assert written(tmp_path) == ["a_case_0002.s1p"]
+    assert all(path.absolute().is_relative_to(tmp_path) for path in made)
+
+
 def test_progress_is_told(dataset, tmp_path):
     seen = []
     simkit.export(dataset, tmp_path / "m.csv", "csv", seen=seen.append)
