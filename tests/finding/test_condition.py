@@ -6,11 +6,15 @@ import shutil
 
 import numpy as np
 import pytest
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
 
 import simkit
 from simkit.errors import ConditionError
 from simkit.finding.condition import compared
+from simkit.finding.parser import parse_condition
 from simkit.finding.quantities import QUANTITIES, quantity_rows
+from simkit.finding.reading import known_in
 from simkit.store import open_results
 from simkit.store.schema import VARIABLES
 
@@ -249,3 +253,35 @@ def test_sources_and_units_are_those_of_the_store():
             continue
         assert VARIABLES[quantity.source].units == quantity.unit
     assert len(quantity_rows()) == len(QUANTITIES) + 1
+
+
+WORDS = """
+    dip of q arm width status solved case 1/2 3 868 0.5 .. . +- ± MHz mm dB dBi % wave uniform
+    current in within is missing known and or not ( ) < <= > >= = != == - + * / , ' " ü
+    carrier.infill worst_vswr best_return_loss 1e9 1e400 5e-400
+"""
+
+
+@settings(
+    max_examples=300,
+    deadline=None,
+    suppress_health_check=[HealthCheck.function_scoped_fixture],
+)
+@given(words=st.lists(st.sampled_from(WORDS.split()), max_size=14), glue=st.sampled_from([" ", ""]))
+def test_whatever_is_typed_is_understood_or_refused_in_words(dataset, words, glue):
+    condition = glue.join(words)
+    refused = None
+    try:
+        parse_condition(condition, known_in(dataset))
+    except ConditionError as error:
+        refused = error
+    assert refused is None or 0 <= refused.start <= refused.stop <= len(condition) + 1
+
+
+def test_a_band_is_looked_at_at_the_connector_if_there_is_one(dataset):
+    # 40 ohm at the feed, 50 ohm at the connector: 19 dB become more than 100 dB.
+    behind = dataset.isel(case=[4]).load()
+    behind["impedance_at_connector"] = behind["impedance"] * 1.25
+    test = "best_return_loss in 879 MHz .. 881 MHz > 100 dB"
+    assert simkit.query(behind, test).sizes["case"] == 1
+    assert simkit.query(dataset, test).sizes["case"] == 0
