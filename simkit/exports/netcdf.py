@@ -65,7 +65,7 @@ def _require_room(chosen: xr.Dataset, path: Path) -> None:
             f"{path}: these {chosen.sizes['case']} cases are {size / 1e9:.1f} GB, more than "
             f"{LARGEST_BYTES / 1e9:.0f} GB in one netCDF file; choose cases by --where or "
             "variables by --only, or hand on the folder store.zarr itself, which is compressed and "
-            "opens with xarray.open_zarr"
+            "opens with xarray.open_zarr(..., consolidated=False)"
         )
 
 
