@@ -32,17 +32,17 @@ from simkit.finding.condition import (
 )
 from simkit.finding.quantities import OF, QUANTITIES, Quantity
 from simkit.finding.tokens import KEYWORDS, Token, tokens
+from simkit.finding.units import DECIBEL, dimension, example, in_words, unit_names
 from simkit.response.labels import half_wave_label
 from simkit.store.schema import Status
 from simkit.study.expression import ExpressionError
 from simkit.study.parser import parse as parse_quantity
-from simkit.study.units import describe, find_unit, nearest, usual_unit
+from simkit.study.units import find_unit, nearest
 
 DEEPEST = 40
 """Levels of parentheses and negations a condition may have."""
 
 _SIGNS = ("<", "<=", ">", ">=", "=", "!=")
-_DECIBEL = ("dB", "dBi")
 
 
 @dataclass(frozen=True)
@@ -330,7 +330,7 @@ class _Parser:
         tolerance = spread.number
         if spread.unit == "%":
             tolerance *= abs(first.number)
-        elif not (term.quantity.unit in _DECIBEL and spread.unit in _DECIBEL):
+        elif not (term.quantity.unit in DECIBEL and spread.unit in DECIBEL):
             self._require_alike("this tolerance", term.quantity.unit, spread)
         if tolerance < 0:
             raise self.error("a tolerance must not be negative", spread.start, spread.stop)
@@ -369,22 +369,22 @@ class _Parser:
 
     def _symbol(self) -> str:
         token = self.step()
-        if token.text not in _DECIBEL:
+        if token.text not in DECIBEL:
             try:
                 find_unit(token.text)
             except KeyError:
-                hint = nearest(token.text, _unit_names())
+                hint = nearest(token.text, unit_names())
                 advice = f"; do you mean {hint}?" if hint else ""
                 raise self.error(f"`{token.text}` is not a unit{advice}", token) from None
         return token.text
 
     def _require_alike(self, what: str, unit: str, value: _Value) -> None:
-        if _dimension(unit) == _dimension(value.unit):
+        if dimension(unit) == dimension(value.unit):
             return
         written = self.text[value.start : value.stop]
         raise self.error(
-            f"{what} is {_in_words(unit)}, but {written} is {_in_words(value.unit)}; "
-            f"write it as in {_example(unit)}",
+            f"{what} is {in_words(unit)}, but {written} is {in_words(value.unit)}; "
+            f"write it as in {example(unit)}",
             value.start,
             value.stop,
         )
@@ -392,32 +392,3 @@ class _Parser:
     def _require_order(self, low: _Value, high: _Value) -> None:
         if low.number > high.number:
             raise self.error("the lower end comes first: this range is empty", low.start, high.stop)
-
-
-def _unit_names() -> list[str]:
-    from simkit.study.units import UNITS
-
-    return [*UNITS, *_DECIBEL]
-
-
-def _dimension(unit: str) -> object:
-    if unit in _DECIBEL:
-        return unit
-    return find_unit("1" if unit == "%" else unit).dimension
-
-
-def _in_words(unit: str) -> str:
-    if unit in _DECIBEL:
-        return f"in {unit}"
-    if unit == "%":
-        return "a pure number"
-    return describe(find_unit(unit).dimension)
-
-
-def _example(unit: str) -> str:
-    if unit in _DECIBEL:
-        return f"10 {unit}"
-    example = usual_unit(find_unit(unit).dimension)
-    if example == "1":
-        return "4 or 90 %"
-    return {"MHz": "868 MHz", "mm": "76 mm"}.get(example, f"3 {example}")
