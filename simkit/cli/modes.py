@@ -30,6 +30,10 @@ X = 0: series resonance at the feed with its resistance.  gain: the largest, in 
 _LOSS_KEY = """
 efficiency: radiated over radiated and lost power; gain is directivity less what is lost."""
 
+_CABLE_KEY = """
+cable: current on the outside of the feed cable at its start over that at the feed, at the
+conductance peak; under -20 dB it hardly matters. on it: the cable's part of the squared current."""
+
 LEAST_LOSS = 5e-4
 """Efficiencies nearer to 1 than this are not worth two columns."""
 
@@ -73,7 +77,7 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None, places:
     elif form == "csv":
         emit(csv_text(flat_rows(rows, _attribute(dataset, "units"))))
     else:
-        key = _KEY + (_LOSS_KEY if lossy(rows) else "")
+        key = _KEY + (_LOSS_KEY if lossy(rows) else "") + (_CABLE_KEY if cabled(rows) else "")
         emit(f"{modes_table(rows, _attribute(dataset, 'display_unit'))}\n\n{key}")
 
 
@@ -123,21 +127,28 @@ def lossy(rows: list[Row]) -> bool:
     )
 
 
+def cabled(rows: list[Row]) -> bool:
+    """Return whether the feed cable is in the model."""
+    return any("on_cable" in mode for row in rows for mode in row["modes"])
+
+
 def modes_table(rows: list[Row], units: dict[str, str]) -> str:
     """Return the table for people: one line per mode, one for a case without any.
 
     Where power is lost, directivity and efficiency stand beside the gain.
     """
     names = list(rows[0]["values"]) if rows else []
-    losses = lossy(rows)
+    losses, cable = lossy(rows), cabled(rows)
     head = ["case", *names, "status", "mode", "natural", "+/-", "Q", "dip", "return loss"]
     head += ["X = 0", "R", "gain", *(["directivity", "efficiency"] if losses else [])]
+    head += ["cable", "on it"] if cable else []
     lines = []
     for row in rows:
         swept = [quantity_text(row["values"][name], units.get(name, "1")) for name in names]
         start = [str(row["case"]), *swept, row["status"]]
         if row["modes"]:
-            lines += [start + _mode_cells(mode, losses=losses) for mode in row["modes"]]
+            cells = (_mode_cells(mode, losses=losses, cable=cable) for mode in row["modes"])
+            lines += [start + more for more in cells]
         else:
             lines.append([*start, "-", *[""] * (len(head) - len(start) - 1)])
     # Under the table, where a long sentence does not push the numbers apart.
@@ -149,7 +160,7 @@ def modes_table(rows: list[Row], units: dict[str, str]) -> str:
     return "\n".join([table(head, lines), *([""] if reasons else []), *reasons])
 
 
-def _mode_cells(mode: Row, *, losses: bool) -> list[str]:
+def _mode_cells(mode: Row, *, losses: bool, cable: bool = False) -> list[str]:
     from simkit.response.labels import half_wave_label
 
     number = mode["half_waves"]
@@ -169,4 +180,8 @@ def _mode_cells(mode: Row, *, losses: bool) -> list[str]:
         efficiency = mode.get("efficiency")
         cells.append(number_text(mode.get("directivity_dbi"), 1, "dBi"))
         cells.append(number_text(efficiency * 100, 1, "%") if efficiency is not None else "-")
+    if cable:
+        part = mode.get("on_cable")
+        cells.append(number_text(mode.get("cable_current_db"), 1, "dB"))
+        cells.append(number_text(part * 100, 0, "%") if part is not None else "-")
     return cells

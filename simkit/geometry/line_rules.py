@@ -127,6 +127,7 @@ def _segment_excuse(antenna: Antenna, lines: Sequence[ChainLine]) -> str:
     line = lines[0]
     straight = len(lines) == 1 and not line.closed and not np.any(turns(line.points) > 1e-6)
     feed = line.feed
+    straight = straight and antenna.cable is None  # which divides the wire
     if straight and feed and abs(line.arcs_m[feed.vertex] - line.length_m / 2) < 1e-6:
         return ""  # one wire, whose segments may be shorter
     needed = UNEVEN_RUNS * SHORTEST_RADII * dressing_of(antenna).radius_m(line.widest_m)
@@ -263,6 +264,7 @@ def segment_limits_m(
     width = lines[0].widest_m
     radius = dressing_of(antenna).radius_m(width)
     alone = len(stretches) == 1 and not any(line.closed or line.start or line.end for line in lines)
+    alone = alone and antenna.cable is None
     shortest = (SHORTEST_STRAIGHT_RADII if alone else SHORTEST_RADII) * radius
     wavelength = light_speed / antenna.frequency.stop_hz
     return shortest, max(shortest, TARGET_WIDTHS * width, TARGET_WAVELENGTHS * wavelength)

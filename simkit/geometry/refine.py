@@ -50,7 +50,11 @@ def refined(plan: MeshPlan, antenna: Antenna, factor: float) -> MeshPlan:
     chains = tuple(
         _refined_chain(plan, antenna, lines, index, factor) for index in range(len(lines))
     )
-    return replace(plan, chains=chains)
+    cable = plan.cable
+    if cable is not None:
+        most = tuple(int(np.ceil(n * max(factor, 1.0))) for n in cable.most)
+        cable = replace(cable, most=most, fineness=cable.fineness * factor)
+    return replace(plan, chains=chains, cable=cable)
 
 
 def _refined_chain(

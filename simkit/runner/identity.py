@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from simkit.store.layout import SweptColumn, layout_hash
-from simkit.study.model import Case
+from simkit.study.model import Antenna, Case
 
 MODEL_VERSION = "4"
 """Raise it with every change that alters numbers: rules, engine settings, sweep, modes, patterns.
@@ -52,6 +52,15 @@ def sha256(text: str) -> str:
     return hashlib.sha256(text.encode()).hexdigest()
 
 
+LATER_PARTS = ("cable",)
+"""Parts of an antenna that came later: without them a case keeps the key it always had."""
+
+
+def _inputs(antenna: Antenna) -> dict[str, Any]:
+    inputs = asdict(antenna)
+    return {name: part for name, part in inputs.items() if part or name not in LATER_PARTS}
+
+
 def case_key(case: Case, study_part: str) -> str:
     """Hash of one case.
 
@@ -66,7 +75,7 @@ def case_key(case: Case, study_part: str) -> str:
     str
         64 hexadecimal digits; swept values count through the antenna they resolve to.
     """
-    inputs = case.refused if case.antenna is None else canonical_json(asdict(case.antenna))
+    inputs = case.refused if case.antenna is None else canonical_json(_inputs(case.antenna))
     return sha256(f"{inputs}\n{study_part}")
 
 

@@ -37,6 +37,8 @@ _OF_MODE = {
     "directivity_dbi": "directivity",
     "efficiency": "efficiency",
     "power_balance": "power_balance",
+    "cable_current_db": "cable_current",
+    "on_cable": "mode_on_cable",
 }
 """Keys of a mode's row and the variables of the store behind them."""
 

@@ -159,6 +159,22 @@ class GroundPlan:
 
 
 @dataclass(frozen=True)
+class CablePlan:
+    """The table [cable]: a route of points from the feed's end, or a direction; and a length.
+
+    A length given with a route is where the last leg ends.
+    """
+
+    strip: str
+    end: StripEnd
+    route: tuple[tuple[Quantity, ...], ...]
+    direction: tuple[Quantity, ...]
+    length: Quantity | None
+    diameter: Quantity | None
+    line: int | None
+
+
+@dataclass(frozen=True)
 class Blueprint:
     """Everything an antenna is resolved from, besides the numbers of [values].
 
@@ -176,6 +192,7 @@ class Blueprint:
     placement: PlacementPlan = PlacementPlan()
     carrier: CarrierPlan | None = None
     ground: GroundPlan | None = None
+    cable: CablePlan | None = None
 
     def shared(self) -> tuple[Quantity, ...]:
         """Return the quantities that all cases of a study have in common."""

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 from typing import Literal
 
@@ -150,6 +152,34 @@ class CutFeed:
 
 
 @dataclass(frozen=True)
+class Cable:
+    """Outer conductor of the feed cable, a wire from one end of the feed.
+
+    Attributes
+    ----------
+    strip : str
+    end : "start" or "end"
+        The end of the feed that the braid is joined to; of a cut the side that leads to this end of
+        the strip.
+    points_m : tuple of (float, float, float)
+        Its centre line from that end to the cable's own, metres, in the axes of the drawing: x and
+        y in the plane of the strips, z along its normal. It is placed together with the strips.
+    diameter_m : float
+        Of the braid.
+    """
+
+    strip: str
+    end: StripEnd
+    points_m: tuple[Vector, ...]
+    diameter_m: float
+
+    @property
+    def length_m(self) -> float:
+        """Along its centre line, metres."""
+        return sum(math.dist(a, b) for a, b in pairwise(self.points_m))
+
+
+@dataclass(frozen=True)
 class FrequencyBand:
     """`points` equally spaced frequencies from `start_hz` to `stop_hz`, both included."""
 
@@ -163,7 +193,8 @@ class Antenna:
     """Everything the solution of one case depends on, resolved to SI.
 
     Without a carrier the strips are in air, without a ground in free space. `converge` asks for a
-    refinement of the model in every case, as an estimate of its error.
+    refinement of the model in every case, as an estimate of its error. Without a `cable` nothing is
+    joined to the strips.
     """
 
     strips: tuple[Strip, ...]
@@ -176,6 +207,7 @@ class Antenna:
     carrier: Carrier | None = None
     ground: Ground | None = None
     converge: bool = False
+    cable: Cable | None = None
 
 
 @dataclass(frozen=True)

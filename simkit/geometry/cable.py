@@ -1,0 +1,288 @@
+"""The feed cable: the outside of its outer conductor as one more run of wire in space.
+
+A cable without a balun joins one terminal of the antenna to a conductor the study would else not
+know: the outside of the braid. It carries whatever current the voltage of that terminal drives
+along it. The cable begins at the outer end of the source segment on its side and has the radius of
+all other wires, because the engine errs by per cents where radii meet.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from itertools import pairwise
+from typing import Literal
+
+import numpy as np
+import shapely
+from scipy.constants import c as light_speed
+
+from simkit.errors import GeometryError
+from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.outlines import outline
+from simkit.geometry.placement import stands_on_plane
+from simkit.geometry.wires import Chain, FloatArray, Wire
+from simkit.study.model import Antenna, Cable, EndFeed, Vector
+
+SEGMENT_WAVELENGTHS = 1 / 25
+"""Length of the cable's segments aimed at, at the top of the band."""
+
+SHORTEST_RADII = 2.12
+"""As for strips: the engine refuses meeting wires with segments under two radii."""
+
+FARTHEST_LOG = float(np.log(2.0))
+"""A braid twice as thick as the model's wire, or half, makes a case doubtful."""
+
+LEAVES_WIDTHS = 1.0
+NEAR_WIDTHS = 2.5
+"""So many widths along the cable it has left the strip it is joined to, and must be clear of it."""
+
+MOST_PLACES = 20_000
+"""At so many places a cable is held against the strips."""
+
+ON_CABLE = -2
+"""Strip index of the cable's segments."""
+
+
+@dataclass(frozen=True)
+class CableCut:
+    """How the cable is cut in a study.
+
+    Attributes
+    ----------
+    most : tuple of int
+        Most segments of each leg in any case. A cable is so much longer in one case than in another
+        that no fixed number would serve: each case takes what its own legs ask for.
+    fineness : float
+        Over 1 for more segments.
+    """
+
+    most: tuple[int, ...]
+    fineness: float = 1.0
+
+
+def plan_cable(antennas: Sequence[Antenna], radii_m: Sequence[float]) -> CableCut | None:
+    """Segments of the cable that serve every case of a study; None without a cable.
+
+    Parameters
+    ----------
+    antennas : sequence of Antenna
+    radii_m : sequence of float
+        Radius of the wires of each.
+    """
+    found = [
+        _wished(antenna.cable, radius, antenna.frequency.stop_hz, 1.0)
+        for antenna, radius in zip(antennas, radii_m, strict=True)
+        if antenna.cable is not None
+    ]
+    if not found:
+        return None
+    legs = max(len(counts) for counts in found)
+    return CableCut(tuple(max(c[k] for c in found if len(c) > k) for k in range(legs)))
+
+
+def _wished(cable: Cable, radius_m: float, top_hz: float, fineness: float) -> tuple[int, ...]:
+    lengths = np.array([np.subtract(b, a) for a, b in pairwise(cable.points_m)])
+    lengths = np.linalg.norm(lengths, axis=1)
+    target = SEGMENT_WAVELENGTHS * light_speed / top_hz / fineness
+    counts = np.round(lengths / target)
+    room = np.floor(lengths / (SHORTEST_RADII * radius_m) + 1e-6)
+    return tuple(int(n) for n in np.maximum(np.minimum(counts, room), 1))
+
+
+def cable_counts(antenna: Antenna, cut: CableCut, radius_m: float) -> tuple[int, ...]:
+    """Segments of each leg of one case's cable; none without a cable."""
+    if antenna.cable is None:
+        return ()
+    wished = _wished(antenna.cable, radius_m, antenna.frequency.stop_hz, cut.fineness)
+    return tuple(min(n, most) for n, most in zip(wished, cut.most, strict=True))
+
+
+# -- wires -----------------------------------------------------------------------------------------
+
+
+def joined_cable(
+    antenna: Antenna,
+    line: ChainLine,
+    wires: Sequence[Wire],
+    source: Sequence[tuple[int, float]],
+    counts: Sequence[int],
+    radius_m: float,
+) -> tuple[list[Wire], Chain]:
+    """The wires of the antenna with those of its cable behind them, and the cable's chain.
+
+    Parameters
+    ----------
+    antenna : Antenna
+        With a cable.
+    line : ChainLine
+        The fed chain.
+    wires : sequence of Wire
+        Of all strips, along which the segments' numbers do not change.
+    source : sequence of (int, float)
+        In the order of the fed chain, whose wires run along it.
+    counts : sequence of int
+        Segments of each leg of the cable.
+    radius_m : float
+        Of all wires.
+
+    Raises
+    ------
+    GeometryError
+        The feed has no end for a cable, or a leg is too short.
+    """
+    cable = antenna.cable
+    assert cable is not None  # only called for antennas with one
+    if line.fed_foot is not None:
+        raise GeometryError(
+            "cable: the feed lies between the foot of a strip and the ground plane, so the braid "
+            "is joined to the plane and nothing is driven along it: leave [cable] out"
+        )
+    side = cable_side(antenna, line)
+    segment = source[0][0] if side == "before" else source[-1][0]
+    joined, start = _with_node(wires, segment, at_end=side == "after")
+    points = [start, *cable.points_m[1:]]
+    first = sum(wire.segments for wire in joined)
+    made = [Wire(a, b, n) for (a, b), n in zip(pairwise(points), counts, strict=True)]
+    _check_legs(made, radius_m)
+    return [*joined, *made], _chain(antenna, made, first)
+
+
+def cable_side(antenna: Antenna, line: ChainLine) -> Literal["before", "after"]:
+    """On which side of the feed, along the fed chain, the cable is joined to it."""
+    cable = antenna.cable
+    assert cable is not None  # as above
+    names = [strip.name for strip in antenna.strips]
+    span = next(s for s in line.spans if s.strip == names.index(cable.strip))
+    forward = span.end_m > span.start_m
+    # A strip fed at its start runs away from the feed; a cut has its start behind it.
+    after = (cable.end == "start") == forward
+    if not isinstance(antenna.feed, EndFeed):
+        after = not after
+    return "after" if after else "before"
+
+
+def _with_node(wires: Sequence[Wire], segment: int, *, at_end: bool) -> tuple[list[Wire], Vector]:
+    """Wires divided so that one ends at the start or end of a segment, and that place."""
+    first = 0
+    for index, wire in enumerate(wires):
+        node = segment - first + at_end
+        first += wire.segments
+        if segment >= first:
+            continue
+        if node in (0, wire.segments):
+            return list(wires), wire.start_m if node == 0 else wire.end_m
+        part = np.linspace(wire.start_m, wire.end_m, wire.segments + 1)[node]
+        place = (float(part[0]), float(part[1]), float(part[2]))
+        halves = [Wire(wire.start_m, place, node), Wire(place, wire.end_m, wire.segments - node)]
+        return [*wires[:index], *halves, *wires[index + 1 :]], place
+    raise AssertionError("the source lies on no wire")
+
+
+def _check_legs(wires: Sequence[Wire], radius_m: float) -> None:
+    for number, wire in enumerate(wires, start=1):
+        if wire.length_m < SHORTEST_RADII * radius_m:
+            raise GeometryError(
+                f"cable: its leg {number} is {wire.length_m * 1e3:.4g} mm long; the model's wires "
+                f"have a radius of {radius_m * 1e3:.4g} mm, that of the strips, and need "
+                f"{SHORTEST_RADII * radius_m * 1e3:.3g} mm: lengthen it or leave it out"
+            )
+
+
+def _chain(antenna: Antenna, wires: Sequence[Wire], first: int) -> Chain:
+    cable = antenna.cable
+    assert cable is not None  # as above
+    lengths = np.concatenate([np.full(wire.segments, wire.segment_m) for wire in wires])
+    ends = np.cumsum(lengths)
+    return Chain(
+        segments=np.arange(first, first + len(lengths)),
+        signs=np.ones(len(lengths), dtype=int),
+        arc_m=ends - lengths / 2,
+        length_m=float(ends[-1]),
+        closed=False,
+        spans=(),
+        open_start=False,
+        open_end=not stands_on_plane(cable.points_m[-1], antenna),
+    )
+
+
+# -- limits ----------------------------------------------------------------------------------------
+
+
+def check_cable(antenna: Antenna) -> tuple[str, ...]:
+    """Refuse a cable that runs into the metal; doubts where it passes closely by.
+
+    Raises
+    ------
+    GeometryError
+        Naming the strip and the place in millimetres.
+    """
+    cable = antenna.cable
+    if cable is None:
+        return ()
+    places, along = _sampled(cable, min(min(strip.widths) for strip in antenna.strips) / 4)
+    doubts = []
+    for strip in antenna.strips:
+        width = strip.width_m
+        away = shapely.distance(outline(strip), shapely.points(places[:, :2]))
+        away = np.hypot(away, places[:, 2])
+        touch = (away <= cable.diameter_m / 2) & (along > LEAVES_WIDTHS * width)
+        near = (away < width) & (along > NEAR_WIDTHS * width)
+        if touch.any():
+            raise GeometryError(
+                f"cable: it runs into strip {strip.name!r} at {_mm(places[np.argmax(touch)])}; "
+                "lead it away from the metal"
+            )
+        if near.any():
+            at = int(np.argmin(np.where(near, away, np.inf)))
+            doubts.append(
+                f"the cable comes within {away[at] * 1e3:.4g} mm of strip {strip.name!r} at "
+                f"{_mm(places[at])}, less than its width ({width * 1e3:.4g} mm): the models do not "
+                "see how the current crowds towards a neighbour, so mode frequencies may be off by "
+                "1 %"
+            )
+    return tuple(doubts)
+
+
+def _sampled(cable: Cable, step_m: float) -> tuple[FloatArray, FloatArray]:
+    """Places along the cable and their distance along it from its start."""
+    points = np.array(cable.points_m)
+    arcs = np.concatenate([[0.0], np.cumsum(np.linalg.norm(np.diff(points, axis=0), axis=1))])
+    count = int(min(np.ceil(arcs[-1] / step_m), MOST_PLACES)) + 1
+    along = np.union1d(np.linspace(0.0, arcs[-1], count), arcs)
+    return np.stack([np.interp(along, arcs, points[:, k]) for k in range(3)], axis=1), along
+
+
+def _mm(point: FloatArray) -> str:
+    return "(" + ", ".join(f"{round(value * 1e3, 6) + 0.0:.4g}" for value in point) + ") mm"
+
+
+def thickness_log(cable: Cable, radius_m: float) -> float:
+    """Logarithm of the model's wire radius over that of the braid."""
+    return float(np.log(2 * radius_m / cable.diameter_m))
+
+
+def level_error(cable: Cable, radius_m: float) -> float:
+    """Relative error of the cable's characteristic impedance by the model's radius.
+
+    Notes
+    -----
+    A wire of radius a and length l has about 60 ohm [ln(2 l/a) - 1] (its mean potential per charge;
+    Schelkunoff's average characteristic impedance, from memory, differs by a constant). Inductance
+    and capacitance go with the logarithm alike, so the wave on it keeps its speed whatever the
+    radius. A series inductance, which is all that the engine can add to a wire, would set right the
+    one without the other and make the wave slow; so none is added and the error is stated.
+    """
+    length = max(cable.length_m, 2 * cable.diameter_m)
+    return float(thickness_log(cable, radius_m) / (np.log(4 * length / cable.diameter_m) - 1))
+
+
+def thickness_doubts(cable: Cable, radius_m: float) -> tuple[str, ...]:
+    """What to say of a braid much thicker or thinner than the wires of the model."""
+    if abs(thickness_log(cable, radius_m)) <= FARTHEST_LOG:
+        return ()
+    return (
+        f"the braid of the cable is {cable.diameter_m * 1e3:.3g} mm thick and the model's wire, "
+        f"that of the strips, {2 * radius_m * 1e3:.3g} mm: currents on the cable may be off by "
+        f"{100 * abs(level_error(cable, radius_m)):.0f} %",
+    )
