@@ -10,9 +10,9 @@ import numpy as np
 from simkit.errors import GeometryError
 from simkit.geometry import line_rules
 from simkit.geometry.cable import (
+    JOINT_ERROR,
     ON_CABLE,
     CableCut,
-    cable_counts,
     check_cable,
     joined_cable,
     level_error,
@@ -173,23 +173,26 @@ def _line_grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> 
 def _with_cable(grid: WireGrid, antenna: Antenna, line: ChainLine, cut: CableCut) -> WireGrid:
     """The line model with the feed cable as the last of its chains."""
     assert antenna.cable is not None  # all cases of a study have one or none has
-    counts = cable_counts(antenna, cut, grid.radius_m)
-    wires, chain = joined_cable(antenna, line, grid.wires, grid.source, counts, grid.radius_m)
+    wires, chain = joined_cable(antenna, line, grid.wires, grid.source, cut, grid.radius_m)
     bare = np.zeros(len(chain.segments))
     dressing = dressing_of(antenna)
     # The cable lies in air and its braid is taken to conduct perfectly: no loads on its wires.
-    width = np.full(len(wires), line.widest_m)
-    width[-len(counts) :] = 0.0
+    starts = np.cumsum([0, *(wire.segments for wire in wires[:-1])])
+    width = np.where(starts < chain.segments[0], line.widest_m, 0.0)
     factor, inductance, loss = dressing.wire_loads(width, np.ones(len(wires)))
+    lengths = grid.per_segment(np.array([wire.segment_m for wire in grid.wires]))
+    both = sum(lengths[segment] for segment, _ in grid.source)
     return replace(
         grid,
         wires=tuple(wires),
+        model_gap_m=FOOT_GAP * model_gap_m(both, grid.feed_width_m),
         conductor_factor_per_m=factor,
         series_inductance_h_per_m=inductance,
         loss_inductance_h_per_m=loss,
         chains=(*grid.chains, chain),
         strip_index=np.concatenate([grid.strip_index, bare.astype(int) + ON_CABLE]),
         strip_position=np.concatenate([grid.strip_position, bare + np.nan]),
+        relative_error=float(np.hypot(grid.relative_error, JOINT_ERROR)),
         doubts=(*grid.doubts, *thickness_doubts(antenna.cable, grid.radius_m)),
         cable=len(grid.chains),
         cable_level_error=level_error(antenna.cable, grid.radius_m),

@@ -229,8 +229,10 @@ def _line_for_cable(wanted: set[ModelKind], against: str) -> str:
 
 
 def _line_plan(cases: Sequence[Case], why: str) -> MeshPlan:
+    cabled = cases[0][0].cable is not None
     kinds = [
-        _line_vertices([lines[chain] for _, lines in cases]) for chain in range(len(cases[0][1]))
+        _line_vertices([lines[chain] for _, lines in cases], cabled=cabled)
+        for chain in range(len(cases[0][1]))
     ]
     cases = _with_room_for_the_feed(cases, kinds[0])
     centred = all(_is_centred(lines[0], kinds[0]) for _, lines in cases)
@@ -313,7 +315,7 @@ def _with_room_for_the_feed(cases: Sequence[Case], kinds: Sequence[VertexKind]) 
     return found
 
 
-def _line_vertices(lines: Sequence[ChainLine]) -> tuple[VertexKind, ...]:
+def _line_vertices(lines: Sequence[ChainLine], *, cabled: bool) -> tuple[VertexKind, ...]:
     sharpest = np.max([turns(line.points) for line in lines], axis=0, initial=0.0)
     shortest = np.min([leg_lengths(line.points) / line.widest_m for line in lines], axis=0)
     branches = {vertex for vertex, _ in lines[0].tees}
@@ -321,7 +323,7 @@ def _line_vertices(lines: Sequence[ChainLine]) -> tuple[VertexKind, ...]:
     for vertex, turn in enumerate(sharpest, start=1):
         fed = lines[0].feed is not None and lines[0].feed.vertex == vertex
         roomy = min(shortest[vertex - 1], shortest[vertex]) > 1.5
-        kinds.append(line_rules.vertex_kind(float(turn), fed=fed, roomy=roomy))
+        kinds.append(line_rules.vertex_kind(float(turn), fed=fed, roomy=roomy, cabled=cabled))
         if vertex in branches:
             kinds[-1] = "tee"
     return tuple(kinds)

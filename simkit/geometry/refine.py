@@ -52,7 +52,8 @@ def refined(plan: MeshPlan, antenna: Antenna, factor: float) -> MeshPlan:
     )
     cable = plan.cable
     if cable is not None:
-        most = tuple(int(np.ceil(n * max(factor, 1.0))) for n in cable.most)
+        # Half a segment on every leg may be rounded up.
+        most = int(np.ceil(2 * cable.most * max(factor, 1.0)))
         cable = replace(cable, most=most, fineness=cable.fineness * factor)
     return replace(plan, chains=chains, cable=cable)
 

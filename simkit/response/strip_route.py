@@ -7,12 +7,14 @@ antenna, is the axis on which currents and charges are shown and their maxima ar
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
+from scipy.constants import c as light_speed
 
 from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.line_rules import CABLED_WAVELENGTHS
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import point_at
 from simkit.geometry.route import longest_path
@@ -23,6 +25,11 @@ from simkit.study.model import Antenna, Strip
 REACH_WIDTHS = 0.625
 """How far around a joint, in widths of the wider strip, the current is that of neither side: half a
 width of metal, and what a segment of the model more takes."""
+
+CABLE_REACH_SEGMENTS = 1.7
+SHORTEST_SEGMENT_WIDTHS = 0.6
+"""From the feed to the middle of the segment beyond the cable, and a little more; segments of wide
+strips are about so much of their width long."""
 
 SHORTEST_M = 1e-6
 """A micrometre of metal is an overlap of rounding, not a part of a strip."""
@@ -223,12 +230,23 @@ def routes_of(antenna: Antenna) -> tuple[Route, ...]:
     if not first.closed and _runs_backwards(first, antenna.strips):
         path = tuple(PathPiece(p.chain, p.end_m, p.start_m) for p in reversed(path))
         first = _route(lines, path)
+    if antenna.cable is not None:
+        first = replace(first, joinings=(*first.joinings, _cable_joining(antenna, first)))
     rest = [
         _route(lines, (piece,), start)
         for chain in range(len(lines))
         for piece, start in _left_over(lines, chain, path)
     ]
     return (first, *rest)
+
+
+def _cable_joining(antenna: Antenna, path: Route) -> Joining:
+    """The cable takes its part of the current a segment of the line model beside the feed."""
+    width = max(strip.width_m for strip in antenna.strips)
+    segment = CABLED_WAVELENGTHS * light_speed / antenna.frequency.stop_hz
+    return Joining(
+        path.feed_m, CABLE_REACH_SEGMENTS * max(SHORTEST_SEGMENT_WIDTHS * width, segment)
+    )
 
 
 def _runs_backwards(route: Route, strips: Sequence[Strip]) -> bool:

@@ -53,7 +53,7 @@ def mesh_of(antennas: Sequence[Antenna]) -> tuple[Any, int]:
         segments = grid.segments
         if plan.cable is not None:
             # The cable alone takes as many as its length in each case asks for.
-            segments += sum(plan.cable.most) - len(grid.chains[grid.cable].segments)
+            segments += plan.cable.most - len(grid.chains[grid.cable].segments)
         return plan, segments
     raise problem or GeometryError("the study has no case that can be laid out")
 

@@ -257,11 +257,15 @@ def _doubts(
     for mode, row in zip(modes, radiation, strict=True):
         if abs(row["power_balance"] - 1) > BALANCE_TOLERANCE:
             found.append(
-                f"at {row['pattern_frequency'] / 1e6:.1f} MHz (mode of {mode.half_waves} half "
-                f"waves) radiated and lost power are {row['power_balance']:.3f} of the input "
-                f"power; 1 within {BALANCE_TOLERANCE} is expected"
+                f"at {row['pattern_frequency'] / 1e6:.1f} MHz ({_of(mode)}) radiated and lost "
+                f"power are {row['power_balance']:.3f} of the input power; 1 within "
+                f"{BALANCE_TOLERANCE} is expected"
             )
     return found
+
+
+def _of(mode: NaturalMode) -> str:
+    return f"mode of {mode.half_waves} half waves" if mode.half_waves >= 0 else "a cable mode"
 
 
 def _grid_arrays(grid: WireGrid) -> dict[str, Any]:

@@ -174,9 +174,14 @@ class Cable:
     diameter_m: float
 
     @property
+    def legs_m(self) -> tuple[float, ...]:
+        """Length of each straight part, metres."""
+        return tuple(math.dist(a, b) for a, b in pairwise(self.points_m))
+
+    @property
     def length_m(self) -> float:
         """Along its centre line, metres."""
-        return sum(math.dist(a, b) for a, b in pairwise(self.points_m))
+        return sum(self.legs_m)
 
 
 @dataclass(frozen=True)
