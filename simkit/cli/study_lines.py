@@ -43,7 +43,7 @@ def with_line(reason: str, study: Study | None, antenna: Antenna | None = None) 
 def _line(reason: str, study: Study, antenna: Antenna | None) -> int | None:
     if reason.startswith("feed: "):
         return study.line_of("feed")
-    if re.search(r"\bcable\b", reason):
+    if re.search(r"^cable: |\bthe cable\b|\[cable\]", reason):
         return study.line_of("cable")
     named = _NAMED.search(reason)
     if named is not None:

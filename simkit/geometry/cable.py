@@ -156,16 +156,11 @@ def joined_cable(
 
     Notes
     -----
-    The source takes a segment on either side of the feed, so the cable begins that much away from
-    the end it is joined to; it is moved along as it is, but for an end on a ground plane.
+    At a straight feed the cable begins at the end it is joined to. At a corner it begins where the
+    figure of the corner ends, and is moved there as it is, but for an end on a ground plane.
     """
     cable = antenna.cable
     assert cable is not None  # only called for antennas with one
-    if line.fed_foot is not None:
-        raise GeometryError(
-            "cable: the feed lies between the foot of a strip and the ground plane, so the braid "
-            "is joined to the plane and nothing is driven along it: leave [cable] out"
-        )
     side = cable_side(antenna, line)
     segment = source[0][0] if side == "before" else source[-1][0]
     joined, start = _with_node(wires, segment, at_end=side == "after")
@@ -209,9 +204,20 @@ def _legs(points: FloatArray, cuts: Sequence[Sequence[tuple[float, int]]]) -> li
 
 
 def cable_side(antenna: Antenna, line: ChainLine) -> Literal["before", "after"]:
-    """On which side of the feed, along the fed chain, the cable is joined to it."""
+    """On which side of the feed, along the fed chain, the cable is joined to it.
+
+    Raises
+    ------
+    GeometryError
+        One side of the feed is a ground plane.
+    """
     cable = antenna.cable
     assert cable is not None  # as above
+    if line.fed_foot is not None:
+        raise GeometryError(
+            "cable: the feed lies between the foot of a strip and the ground plane, so the braid "
+            "is joined to the plane and nothing is driven along it: leave [cable] out"
+        )
     names = [strip.name for strip in antenna.strips]
     span = next(s for s in line.spans if s.strip == names.index(cable.strip))
     forward = span.end_m > span.start_m

@@ -15,7 +15,7 @@ from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
 from simkit.geometry import line_rules
-from simkit.geometry.cable import CableCut, plan_cable
+from simkit.geometry.cable import CableCut, cable_side, plan_cable
 from simkit.geometry.chain_line import ChainLine
 from simkit.geometry.dressing import dressing_of
 from simkit.geometry.grid_layout import Cut, Interval, Widen, corner_kind, layout
@@ -229,9 +229,9 @@ def _line_for_cable(wanted: set[ModelKind], against: str) -> str:
 
 
 def _line_plan(cases: Sequence[Case], why: str) -> MeshPlan:
-    cabled = cases[0][0].cable is not None
+    side = "" if cases[0][0].cable is None else cable_side(cases[0][0], cases[0][1][0])
     kinds = [
-        _line_vertices([lines[chain] for _, lines in cases], cabled=cabled)
+        _line_vertices([lines[chain] for _, lines in cases], side if chain == 0 else "")
         for chain in range(len(cases[0][1]))
     ]
     cases = _with_room_for_the_feed(cases, kinds[0])
@@ -315,7 +315,9 @@ def _with_room_for_the_feed(cases: Sequence[Case], kinds: Sequence[VertexKind]) 
     return found
 
 
-def _line_vertices(lines: Sequence[ChainLine], *, cabled: bool) -> tuple[VertexKind, ...]:
+def _line_vertices(
+    lines: Sequence[ChainLine], cable: Literal["", "before", "after"]
+) -> tuple[VertexKind, ...]:
     sharpest = np.max([turns(line.points) for line in lines], axis=0, initial=0.0)
     shortest = np.min([leg_lengths(line.points) / line.widest_m for line in lines], axis=0)
     branches = {vertex for vertex, _ in lines[0].tees}
@@ -323,7 +325,7 @@ def _line_vertices(lines: Sequence[ChainLine], *, cabled: bool) -> tuple[VertexK
     for vertex, turn in enumerate(sharpest, start=1):
         fed = lines[0].feed is not None and lines[0].feed.vertex == vertex
         roomy = min(shortest[vertex - 1], shortest[vertex]) > 1.5
-        kinds.append(line_rules.vertex_kind(float(turn), fed=fed, roomy=roomy, cabled=cabled))
+        kinds.append(line_rules.vertex_kind(float(turn), fed=fed, roomy=roomy, cable=cable))
         if vertex in branches:
             kinds[-1] = "tee"
     return tuple(kinds)

@@ -26,10 +26,10 @@ REACH_WIDTHS = 0.625
 """How far around a joint, in widths of the wider strip, the current is that of neither side: half a
 width of metal, and what a segment of the model more takes."""
 
-CABLE_REACH_SEGMENTS = 1.7
+CABLE_REACH_SEGMENTS = 1.2
 SHORTEST_SEGMENT_WIDTHS = 0.6
-"""From the feed to the middle of the segment beyond the cable, and a little more; segments of wide
-strips are about so much of their width long."""
+"""From the feed to the middles of the segments beside the cable, and a little more; segments of
+wide strips are about so much of their width long."""
 
 SHORTEST_M = 1e-6
 """A micrometre of metal is an overlap of rounding, not a part of a strip."""
@@ -241,7 +241,7 @@ def routes_of(antenna: Antenna) -> tuple[Route, ...]:
 
 
 def _cable_joining(antenna: Antenna, path: Route) -> Joining:
-    """The cable takes its part of the current a segment of the line model beside the feed."""
+    """Near the feed the cable takes its part of the current."""
     width = max(strip.width_m for strip in antenna.strips)
     segment = CABLED_WAVELENGTHS * light_speed / antenna.frequency.stop_hz
     return Joining(
