@@ -43,7 +43,8 @@ FARTHEST_LOG = float(np.log(2.0))
 
 LEAVES_WIDTHS = 1.0
 NEAR_WIDTHS = 2.5
-"""So many widths along the cable it has left the strip it is joined to, and must be clear of it."""
+"""So many widths (of the strip or the braid) along the cable it has left the strip it is joined to,
+and must be clear of it."""
 
 MOST_PLACES = 20_000
 """At so many places a cable is held against the strips."""
@@ -292,8 +293,9 @@ def check_cable(antenna: Antenna) -> tuple[str, ...]:
         width = strip.width_m
         away = shapely.distance(outline(strip), shapely.points(places[:, :2]))
         away = np.hypot(away, places[:, 2])
-        touch = (away <= cable.diameter_m / 2) & (along > LEAVES_WIDTHS * width)
-        near = (away < width) & (along > NEAR_WIDTHS * width)
+        size = max(width, cable.diameter_m)
+        touch = (away <= cable.diameter_m / 2) & (along > LEAVES_WIDTHS * size)
+        near = (away < width) & (along > NEAR_WIDTHS * size)
         if touch.any():
             raise GeometryError(
                 f"cable: it runs into strip {strip.name!r} at {_mm(places[np.argmax(touch)])}; "
