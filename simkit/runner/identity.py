@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from simkit.store.layout import SweptColumn, layout_hash
+from simkit.study.feedline_text import feedline_text
 from simkit.study.model import Antenna, Case
 
 MODEL_VERSION = "4"
@@ -52,15 +53,6 @@ def sha256(text: str) -> str:
     return hashlib.sha256(text.encode()).hexdigest()
 
 
-LATER_PARTS = ("cable",)
-"""Parts of an antenna that came later: without them a case keeps the key it always had."""
-
-
-def _inputs(antenna: Antenna) -> dict[str, Any]:
-    inputs = asdict(antenna)
-    return {name: part for name, part in inputs.items() if part or name not in LATER_PARTS}
-
-
 def case_key(case: Case, study_part: str) -> str:
     """Hash of one case.
 
@@ -77,6 +69,17 @@ def case_key(case: Case, study_part: str) -> str:
     """
     inputs = case.refused if case.antenna is None else canonical_json(_inputs(case.antenna))
     return sha256(f"{inputs}\n{study_part}")
+
+
+def _inputs(antenna: Antenna) -> dict[str, Any]:
+    """All an antenna is made of; without a feed line or a cable nothing of one, as ever."""
+    inputs = asdict(antenna)
+    if antenna.cable is None:
+        del inputs["cable"]
+    del inputs["feedline"]
+    if antenna.feedline:
+        inputs["feedline"] = feedline_text(antenna.feedline)
+    return inputs
 
 
 def study_identity(

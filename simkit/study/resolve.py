@@ -21,6 +21,7 @@ from simkit.study.evaluate import FARTHEST_M, Evaluator
 from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 from simkit.study.paths import SAME_PLACE_M, is_closed, path_length, width_at
 from simkit.study.resolve_cable import check_cable_heights, resolve_cable
+from simkit.study.resolve_feedline import resolve_feedline
 from simkit.study.resolve_strips import Strips, resolve_strips
 from simkit.study.resolve_surroundings import (
     check_heights,
@@ -82,6 +83,7 @@ def _antenna(evaluator: Evaluator, blueprint: Blueprint) -> Antenna | None:
         cable = resolve_cable(evaluator, blueprint.cable, feed, strips)
         if cable is not None and ground is not None and placement is not None:
             check_cable_heights(evaluator, blueprint.cable, placement, cable)
+    feedline = resolve_feedline(evaluator, blueprint.feedline, metal)
     if (
         evaluator.problems
         or not strips
@@ -103,6 +105,7 @@ def _antenna(evaluator: Evaluator, blueprint: Blueprint) -> Antenna | None:
         carrier,
         ground,
         blueprint.converge,
+        feedline,
         cable,
     )
 

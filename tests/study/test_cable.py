@@ -100,11 +100,12 @@ def test_it_can_be_hashed_pickled_and_written_as_json(load: Loader) -> None:
 
 
 def test_without_a_cable_a_case_keeps_its_key(load: Loader) -> None:
-    """The hash of the inputs as they were before there were cables."""
+    """The hash of the inputs as they were before there were cables and feed lines."""
     case = load().case(0)
     assert case.antenna is not None
     inputs = asdict(case.antenna)
     assert inputs.pop("cable") is None
+    assert inputs.pop("feedline") == ()
     assert case_key(case, "mesh") == sha256(f"{canonical_json(inputs)}\nmesh")
     assert case_key(load(added=PLAIN).case(0), "mesh") != case_key(case, "mesh")
 
