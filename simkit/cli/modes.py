@@ -24,8 +24,13 @@ Row = dict[str, Any]
 
 _KEY = """\
 natural: frequency and Q of the mode itself, whatever the feed.
-dip: minimum of the reflection at the connector, which is what an analyser shows; it lies above.
+dip: minimum of the reflection at the connector, which is what an analyser shows{where}.
 X = 0: series resonance at the feed with its resistance.  gain: the largest, in any direction."""
+
+_LINE_KEY = """
+The connector is behind the feed line ({items}). network: power into the antenna over power into
+the connector; realised: gain less what feed line and mismatch take; both at the dip, or for a mode
+without one at its conductance peak at the feed."""
 
 _LOSS_KEY = """
 efficiency: radiated over radiated and lost power; gain is directivity less what is lost."""
@@ -77,8 +82,12 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None, places:
     elif form == "csv":
         emit(csv_text(flat_rows(rows, _attribute(dataset, "units"))))
     else:
-        key = _KEY + (_LOSS_KEY if lossy(rows) else "") + (_CABLE_KEY if cabled(rows) else "")
-        emit(f"{modes_table(rows, _attribute(dataset, 'display_unit'))}\n\n{key}")
+        items = list(dataset.attrs.get("feedline", ()))
+        key = _KEY.format(where="" if items else "; it lies above")
+        key += _LINE_KEY.format(items=", ".join(items)) if items else ""
+        key += (_LOSS_KEY if lossy(rows) else "") + (_CABLE_KEY if cabled(rows) else "")
+        shown = modes_table(rows, _attribute(dataset, "display_unit"), feedline=bool(items))
+        emit(f"{shown}\n\n{key}")
 
 
 def show_places(dataset: xr.Dataset, rows: list[Row], results: str, form: str) -> None:
@@ -132,23 +141,27 @@ def cabled(rows: list[Row]) -> bool:
     return any("on_cable" in mode for row in rows for mode in row["modes"])
 
 
-def modes_table(rows: list[Row], units: dict[str, str]) -> str:
+def modes_table(rows: list[Row], units: dict[str, str], *, feedline: bool = False) -> str:
     """Return the table for people: one line per mode, one for a case without any.
 
-    Where power is lost, directivity and efficiency stand beside the gain.
+    Where power is lost, directivity and efficiency stand beside the gain; behind a feed line, what
+    that takes; with a feed cable in the model, what flows on it.
     """
     names = list(rows[0]["values"]) if rows else []
     losses, cable = lossy(rows), cabled(rows)
     head = ["case", *names, "status", "mode", "natural", "+/-", "Q", "dip", "return loss"]
     head += ["X = 0", "R", "gain", *(["directivity", "efficiency"] if losses else [])]
+    head += ["network", "realised"] if feedline else []
     head += ["cable", "on it"] if cable else []
     lines = []
     for row in rows:
         swept = [quantity_text(row["values"][name], units.get(name, "1")) for name in names]
         start = [str(row["case"]), *swept, row["status"]]
         if row["modes"]:
-            cells = (_mode_cells(mode, losses=losses, cable=cable) for mode in row["modes"])
-            lines += [start + more for more in cells]
+            for mode in row["modes"]:
+                cells = _mode_cells(mode, losses=losses)
+                cells += _line_cells(mode) if feedline else []
+                lines.append(start + cells + (_cable_cells(mode) if cable else []))
         else:
             lines.append([*start, "-", *[""] * (len(head) - len(start) - 1)])
     # Under the table, where a long sentence does not push the numbers apart.
@@ -160,7 +173,7 @@ def modes_table(rows: list[Row], units: dict[str, str]) -> str:
     return "\n".join([table(head, lines), *([""] if reasons else []), *reasons])
 
 
-def _mode_cells(mode: Row, *, losses: bool, cable: bool = False) -> list[str]:
+def _mode_cells(mode: Row, *, losses: bool) -> list[str]:
     from simkit.response.labels import half_wave_label
 
     number = mode["half_waves"]
@@ -179,9 +192,19 @@ def _mode_cells(mode: Row, *, losses: bool, cable: bool = False) -> list[str]:
     if losses:
         efficiency = mode.get("efficiency")
         cells.append(number_text(mode.get("directivity_dbi"), 1, "dBi"))
-        cells.append(number_text(efficiency * 100, 1, "%") if efficiency is not None else "-")
-    if cable:
-        part = mode.get("on_cable")
-        cells.append(number_text(mode.get("cable_current_db"), 1, "dB"))
-        cells.append(number_text(part * 100, 0, "%") if part is not None else "-")
+        cells.append(_percent(efficiency))
     return cells
+
+
+def _line_cells(mode: Row) -> list[str]:
+    gain = number_text(mode.get("realised_gain_dbi"), 1, "dBi")
+    return [_percent(mode.get("network_efficiency")), gain]
+
+
+def _cable_cells(mode: Row) -> list[str]:
+    level = number_text(mode.get("cable_current_db"), 1, "dB")
+    return [level, _percent(mode.get("on_cable"), 0)]
+
+
+def _percent(part: float | None, digits: int = 1) -> str:
+    return number_text(None if part is None else part * 100, digits, "%")

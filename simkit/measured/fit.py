@@ -21,6 +21,7 @@ from simkit.measured.dips import measured_dips, pinned_dip, smooth
 from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To
 from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
+from simkit.measured.plane import extended
 from simkit.measured.quality import quality_notes
 from simkit.measured.simulator import Engine, Surrogate, build_surrogate
 from simkit.measured.variation import SCALE, Known, Variation
@@ -190,7 +191,9 @@ def _files(
             common = _common(measurement, band)
             made[key], engine = build_surrogate(variation, held, axes, common, progress=progress)
         dips, dip_notes = measured_dips(measurement)
-        said = (*measurement.notes, *quality_notes(measurement), *dip_notes)
+        # What the feed line turns the phase by is no missing port extension.
+        bare = extended(measurement, _delay_s(made[key]))
+        said = (*measurement.notes, *quality_notes(bare), *dip_notes)
         notes += [f"{measurement.path.name}: {note}" for note in said]
         cut = _cut(measurement, made[key].band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
         pinned = _pinned(pins[place] if pins is not None else {}, dips, measurement)
