@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import textwrap
 
 from simkit.cli.output import labelled
 from simkit.geometry.placement import stands_on_plane
@@ -21,11 +22,14 @@ from simkit.study.resolve_cable import feed_end_m
 ALIKE = 0.05
 """Metal counts as symmetric if this part of it at most has no counterpart."""
 
-ADVICE = """\
-{what} has one side that is also the outside of something; joined to a symmetric
-antenna it carries current there, which shifts dips and bends the pattern. Put a balun
-(a `transformer` item) or a choke at the feed, lead the cable away in the plane of symmetry,
-and see what it does with a [cable] table."""
+ADVICE = (
+    "{what} has one side that is its outside too; joined to a symmetric antenna it carries current "
+    "there, which shifts dips and bends the pattern. Put a balun (a `transformer` item) or a choke "
+    "at the feed, lead the line away in the plane of symmetry, and see what its outside does with "
+    "a [cable] table."
+)
+WIDTH = 100
+"""Of the lines of the advice."""
 
 
 def balance_parts(antenna: Antenna) -> list[str]:
@@ -38,7 +42,7 @@ def balance_parts(antenna: Antenna) -> list[str]:
     words = [word for line in lines if (word := _unbalanced(line))]
     if not words or not is_symmetric(antenna):
         return []
-    return [labelled("Balance", ADVICE.format(what=words[0]))]
+    return [labelled("Balance", textwrap.fill(ADVICE.format(what=words[0]), WIDTH))]
 
 
 def _unbalanced(line: FeedLineMake) -> str:
@@ -46,7 +50,7 @@ def _unbalanced(line: FeedLineMake) -> str:
     if isinstance(line, CoaxialLine):
         return "The coaxial line"
     if isinstance(line, DataSheetLine):
-        return "A line given by its data sheet, most likely a coaxial cable,"
+        return "A line given by its data sheet, most likely coaxial,"
     if isinstance(line, StripLine) and line.kind == "strip-over-plate":
         return "The strip over a plate"
     return ""

@@ -27,6 +27,9 @@ from simkit.study.model import Antenna, Cable, EndFeed, Vector
 SEGMENT_WAVELENGTHS = 1 / 25
 """Length of the cable's segments aimed at, at the top of the band."""
 
+LIMIT_WAVELENGTHS = 1 / 10.8
+"""Of a coarser mesh; rounded up they must keep below a tenth."""
+
 STOUT_RADII = 4.0
 LONGEST_WAVELENGTHS = 1 / 11
 """Segments of thick wires are longer, as far as the wavelength allows: where such wires bend or
@@ -99,6 +102,7 @@ def _target_m(antenna: Antenna, radius_m: float, fineness: float) -> float:
     wavelength = light_speed / antenna.frequency.stop_hz
     stout = min(STOUT_RADII * radius_m, LONGEST_WAVELENGTHS * wavelength)
     target = max(SEGMENT_WAVELENGTHS * wavelength, stout) / fineness
+    target = min(target, LIMIT_WAVELENGTHS * wavelength)
     return float(max(target, SHORTEST_RADII * radius_m))
 
 
@@ -118,7 +122,7 @@ def _cuts(
             pieces.append((count * step, count))
             at += count * step
             step, count = 2 * step, 1
-        pieces.append((length - at, max(round((length - at) / target_m), 1)))
+        pieces.append((length - at, max(int(np.ceil((length - at) / target_m - 0.05)), 1)))
         found.append([(part / length, count) for part, count in pieces])
     return found
 
