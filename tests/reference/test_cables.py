@@ -59,7 +59,7 @@ def test_modes_are_those_of_flat_metal(make, row) -> None:
 def test_the_current_on_the_cable_is_that_on_the_branch(make, mhz, level_db) -> None:
     """The same metal, 1.5 mm and 75 mm, driven by a uniform field across a gap of 0.15 mm.
 
-    Current up the branch at the strip's edge over that at the feed, level 2 of the flat sheet; level
+    Current up the branch at the strip's edge over that at the feed, level 2 of the sheet; level
     1 differs by up to 0.15 dB.
     """
     row = next(row for row in ROWS if (row["width_mm"], row["branch_mm"]) == (1.5, 75.0))
