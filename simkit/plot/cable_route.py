@@ -6,11 +6,12 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.interpolate import PchipInterpolator
 
 from simkit.geometry.cable import ON_CABLE
 from simkit.plot.cases import Mode
 from simkit.response.mode_pattern import mode_current
-from simkit.response.strip_route import REACH_WIDTHS, Joining, Leg, Route
+from simkit.response.strip_route import Joining, Leg, Route
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -31,7 +32,7 @@ def cable_route(case: xr.Dataset) -> Route:
     """The cable from the feed to its end, as a leg on a strip more than the case has."""
     own, lengths = _own(case)
     length = float(lengths.sum())
-    reach = max(REACH_WIDTHS * float(case["feed_width"]), float(lengths[0]) / 2)
+    reach = float(lengths[0]) / 2  # nearer to the joint no segment tells the current
     leg = Leg(case.sizes["strip"], length, 0.0, length, 0.0)
     return Route(
         (leg,),
@@ -76,7 +77,8 @@ def with_cable(
     value = np.concatenate([known[own[:1]], known[own]])
     if not _grounded(case, own):
         at, value = np.append(at, lengths.sum()), np.append(value, 0.0)
-    row = np.interp(position * lengths.sum(), at, value)
+    places = position * lengths.sum()
+    row = PchipInterpolator(at, value.real)(places) + 1j * PchipInterpolator(at, value.imag)(places)
     rows = np.vstack([current, row[np.newaxis]])
     return np.asarray(rows / rows.flat[int(np.nanargmax(abs(rows)))])
 

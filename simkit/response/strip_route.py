@@ -20,16 +20,16 @@ from simkit.geometry.paths import point_at
 from simkit.geometry.route import longest_path
 from simkit.geometry.wires import FloatArray, IntArray, PathPiece, StripSpan
 from simkit.response.rational import ComplexArray
-from simkit.study.model import Antenna, Strip
+from simkit.study.model import Antenna, CutFeed, Strip
 
 REACH_WIDTHS = 0.625
 """How far around a joint, in widths of the wider strip, the current is that of neither side: half a
 width of metal, and what a segment of the model more takes."""
 
-CABLE_REACH_SEGMENTS = 1.2
+CABLE_REACH_SEGMENTS = 0.9
 SHORTEST_SEGMENT_WIDTHS = 0.6
-"""From the feed to the middles of the segments beside the cable, and a little more; segments of
-wide strips are about so much of their width long."""
+"""Beside a cable the current is that of neither side for half a segment either way, and known again
+one and a half away; segments of wide strips are about so much of their width long."""
 
 SHORTEST_M = 1e-6
 """A micrometre of metal is an overlap of rounding, not a part of a strip."""
@@ -241,12 +241,21 @@ def routes_of(antenna: Antenna) -> tuple[Route, ...]:
 
 
 def _cable_joining(antenna: Antenna, path: Route) -> Joining:
-    """Near the feed the cable takes its part of the current."""
-    width = max(strip.width_m for strip in antenna.strips)
-    segment = CABLED_WAVELENGTHS * light_speed / antenna.frequency.stop_hz
-    return Joining(
-        path.feed_m, CABLE_REACH_SEGMENTS * max(SHORTEST_SEGMENT_WIDTHS * width, segment)
+    """Where the cable takes its part of the current: at the end of the feed it is joined to."""
+    cable, feed = antenna.cable, antenna.feed
+    assert cable is not None  # only asked for with one
+    number = next(k for k, strip in enumerate(antenna.strips) if strip.name == cable.strip)
+    legs = [leg for leg in path.legs if leg.strip == number]
+    along = 0.0 if cable.end == "start" else legs[0].strip_length_m
+    if isinstance(feed, CutFeed):
+        along = feed.at_m + (-feed.gap_m if cable.end == "start" else feed.gap_m) / 2
+    leg = min(
+        legs, key=lambda leg: max(abs(along - (leg.start_m + leg.end_m) / 2), leg.length_m / 2)
     )
+    width = max(strip.width_m for strip in antenna.strips)
+    wave = CABLED_WAVELENGTHS * light_speed / antenna.frequency.stop_hz
+    reach = CABLE_REACH_SEGMENTS * max(SHORTEST_SEGMENT_WIDTHS * width, wave)
+    return Joining(float(leg.distance_m(np.array(along))), reach)
 
 
 def _runs_backwards(route: Route, strips: Sequence[Strip]) -> bool:

@@ -88,7 +88,7 @@ def test_what_leaves_the_strips_enters_the_cable(dataset: xr.Dataset) -> None:
 def test_it_ends_without_current(dataset: xr.Dataset) -> None:
     case = one_case(dataset, 0)
     current, _ = strip_currents(case, numbered_modes(case)[0])
-    assert current[2, -1] == 0
+    assert abs(current[2, -1]) < 1e-9
 
 
 @pytest.mark.parametrize("plot", [plot_current, plot_charge])
