@@ -264,7 +264,7 @@ def test_a_feed_on_the_plane_takes_no_cable(make):
     refused(antenna, "^cable: the feed lies between the foot of a strip and the ground plane")
 
 
-@settings(max_examples=30, deadline=None)
+@settings(max_examples=12, deadline=None)
 @given(
     length=st.floats(1.0, 2000.0),
     width=st.floats(0.3, 25.0),

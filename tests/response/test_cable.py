@@ -136,7 +136,7 @@ def test_a_half_wave_cable_takes_little(make):
     assert abs(impedance / alone - 1) < 0.05
 
 
-@pytest.mark.parametrize("way", [(0, 0, 1), (0, 1, 0)])
+@pytest.mark.parametrize("way", [(0, 0, 1), pytest.param((0, 1, 0), marks=pytest.mark.long)])
 def test_a_very_short_cable_changes_little(make, way):
     antenna = dipole(make, 3.0)
     alone, cabled = solved(antenna), solved(with_cable(antenna, 3.0, way))
@@ -195,7 +195,7 @@ def test_modes_are_the_same_for_a_branch_of_strip_fed_elsewhere(make):
 
 @pytest.mark.parametrize(
     ("width", "length", "way"),
-    [(1.5, 150, (0, 0, 1)), (8, 75, (0, 0, 1)), (8, 210, (0, 1, 1)), (6, 110, (0, -1, 0))],
+    [(1.5, 150, (0, 0, 1)), (8, 75, (0, 0, 1)), (8, 210, (0, 1, 1))],
 )
 def test_power_balances(make, width, length, way):
     arrays = solved(with_cable(dipole(make, width), length, way))
