@@ -221,6 +221,8 @@ ADDED_LATER = frozenset(
         "mismatch_factor",
         "total_efficiency",
         "realised_gain",
+        "mode_on_cable",
+        "cable_current",
     }
 )
 """Variables that stores of an earlier simkit lack; their cases are as good and are taken over."""
