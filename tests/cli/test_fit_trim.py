@@ -16,10 +16,11 @@ STUDY = """
 title = "Creek gauge link"
 [values]
 arm = "76 mm"
+width = "8 mm"
 [[strip]]
 name = "east"
 path = [["1 mm", "0 mm"], ["1 mm + arm", "0 mm"]]
-width = "8 mm"
+width = "width"
 [[strip]]
 name = "west"
 mirror = "east"
@@ -77,6 +78,32 @@ def test_trim_says_how_much_to_cut(folder):
     assert as_json["low"] < as_json["change"] < as_json["high"] < 0
 
 
+def test_trim_by_two_dimensions_meets_two_targets(folder):
+    words = (
+        "--mode", "1/2", "--target", "920 MHz..930 MHz", "--target", "13 dB", "--by", "arm",
+        "--by", "width=7 mm..9 mm", "--known", "arm = 75 mm +- 0.5 mm", "--json",
+    )  # fmt: skip
+    done = run(folder, "trim", *words)
+    assert done.exit_code == 0, done.output
+    found = json.loads(done.stdout)
+    arm, width = found["dimensions"]
+    # 12 MHz per millimetre from 902 MHz; the match of a dipole needs no other width for 13 dB.
+    assert arm["change"] == pytest.approx(-1.9e-3, abs=0.5e-3)
+    assert width["change"] == 0
+    assert found["targets"][1]["after"] > 13
+    assert found["gains_dbi"][0][1] == pytest.approx(2.12, abs=0.06)
+    assert (folder / "plots" / "trim_arm_width.png").stat().st_size > 10_000
+
+
+@pytest.mark.long
+def test_a_dimension_that_cannot_do_it_leaves_the_other(folder):
+    words = ("--mode", "1/2", "--target", "930 MHz", "--by", "width", "--by", "arm", "--csv")
+    done = run(folder, "trim", *words, "--known", "arm = 75 mm +- 0.5 mm")
+    assert done.exit_code == 0, done.output
+    assert "not by this one: 930.0 MHz is out of reach" in done.stderr
+    assert done.stdout.splitlines()[1].startswith("arm,1/2 wave")
+
+
 @pytest.mark.parametrize(
     ("words", "said"),
     [
@@ -85,6 +112,10 @@ def test_trim_says_how_much_to_cut(folder):
         (("fit", "--free", "arm=79 mm..72 mm"), "first bound must be below"),
         (("trim", "--mode", "x", "--target", "1 GHz", "--by", "arm"), "is no mode"),
         (("trim", "--mode", "1/2", "--target", "1 m", "--by", "arm"), "a frequency is needed"),
+        (
+            ("trim", "--mode", "1/2", "--target", "1 GHz", "--target", "9 dB", "--by", "arm"),
+            "two targets need two dimensions",
+        ),
     ],
 )
 def test_bad_requests_are_refused_with_a_sentence(folder, words, said):
