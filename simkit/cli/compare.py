@@ -42,7 +42,7 @@ if TYPE_CHECKING:
 @click.option(
     "--natural",
     is_flag=True,
-    help="Read natural modes from the sweep itself as well, with 95 % intervals.",
+    help="Say more of the natural modes read from the sweep itself, with 95 % intervals.",
 )
 @click.option(
     "--nearest",
@@ -87,6 +87,8 @@ def command(
     dataset = open_results(results)
     study = study_of(results)
     on_plane = study is not None and asked.stands(study)
+    if nearest and natural:
+        raise click.UsageError("--nearest ranks cases and reads no natural modes: choose one.")
     fixed = asked.pins_of(pins, on_plane=on_plane) if pins else {}
     files = asked.measurements(measured, port, extension)
     if nearest:
@@ -110,10 +112,9 @@ def command(
 def _text(comparison: Comparison, *, natural: bool) -> str:
     if not natural:
         return comparison.as_text()
-    from simkit.measured.poles import measured_modes
     from simkit.measured.wording import natural_text
 
-    return f"{comparison.as_text()}\n{natural_text(measured_modes(comparison.measurement))}"
+    return f"{comparison.as_text()}\n{natural_text(comparison.natural)}"
 
 
 def _show_nearest(

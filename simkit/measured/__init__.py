@@ -1,9 +1,10 @@
 """Measured sweeps: reading them, finding their dips, setting them beside the simulation."""
 
-from simkit.measured.comparison import Comparison, ModeLine, compare
+from simkit.measured.comparison import Comparison, compare
 from simkit.measured.fit import fit
 from simkit.measured.fit_result import FitResult
 from simkit.measured.measurement import Measurement
+from simkit.measured.mode_line import ModeLine
 from simkit.measured.nearest import nearest_cases
 from simkit.measured.plane import delay_of_s, extended
 from simkit.measured.poles import measured_modes

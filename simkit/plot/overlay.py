@@ -23,8 +23,9 @@ if TYPE_CHECKING:
     from matplotlib.artist import Artist
     from matplotlib.axes import Axes
 
-    from simkit.measured.comparison import Comparison, ModeLine
+    from simkit.measured.comparison import Comparison
     from simkit.measured.measurement import ComplexArray, FloatArray
+    from simkit.measured.mode_line import ModeLine
 
 MEASURED_COLOUR = "#8c5a9e"
 """A violet that no mode has; the simulated curve is dashed besides."""
