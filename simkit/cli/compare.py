@@ -107,6 +107,7 @@ def command(
     for comparison in found:
         path = save_overlay(comparison, output or overlay_path(results, comparison))
         click.echo(f"written: {path}", err=True)
+        click.echo(f"written: {save_smith(comparison, path)}", err=True)
 
 
 def _text(comparison: Comparison, *, natural: bool) -> str:
@@ -161,3 +162,12 @@ def save_overlay(comparison: Comparison, path: str | Path) -> Path:
     from simkit.plot.save import write
 
     return write(cast("Figure", plot_overlay(comparison).figure), path)
+
+
+def save_smith(comparison: Comparison, path: str | Path) -> Path:
+    """Draw the same in a Smith chart, into a file beside the first, and return its name."""
+    from simkit.plot.overlay import plot_overlay_smith
+    from simkit.plot.save import write
+
+    beside = Path(path).with_stem(f"{Path(path).stem}_smith")
+    return write(cast("Figure", plot_overlay_smith(comparison).figure), beside)

@@ -121,7 +121,7 @@ def draw(dataset: xr.Dataset, study: Study, results: Path) -> None:
 
 def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
     """Compare with every measured file the study names; return whether one could not be used."""
-    from simkit.cli.compare import overlay_path, save_overlay
+    from simkit.cli.compare import overlay_path, save_overlay, save_smith
     from simkit.cli.folder import nominal_of
     from simkit.errors import SimkitError
     from simkit.measured import compare, read_touchstone
@@ -139,7 +139,9 @@ def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
             trouble = True
             continue
         click.echo(f"\n{comparison.as_text()}")
-        click.echo(f"  {save_overlay(comparison, overlay_path(results, comparison))}: both curves")
+        path = save_overlay(comparison, overlay_path(results, comparison))
+        click.echo(f"  {path}: both curves")
+        click.echo(f"  {save_smith(comparison, path)}: both in a Smith chart")
     return trouble
 
 

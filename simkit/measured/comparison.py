@@ -60,10 +60,10 @@ class Comparison:
         One per natural mode of the case, lowest first.
     unpaired : tuple of Dip
         Measured dips that belong to no mode.
+    notes : tuple of str
     natural : MeasuredModes or None
         Natural modes read from the sweep; None where a feed line lies before the antenna, or no dip
         was paired.
-    notes : tuple of str
     """
 
     measurement: Measurement
@@ -76,8 +76,8 @@ class Comparison:
     simulated_reflection: ComplexArray
     lines: tuple[ModeLine, ...]
     unpaired: tuple[Dip, ...]
-    natural: MeasuredModes | None
     notes: tuple[str, ...]
+    natural: MeasuredModes | None = None
 
     def agreement(self) -> Agreement:
         """How alike the curves are, |reflection| in dB by IEEE Std 1597.1."""
@@ -308,8 +308,8 @@ def _comparison(
         simulated_reflection=gamma,
         lines=_lines(modes, found, owners),
         unpaired=tuple(dip for j, dip in enumerate(found.dips) if j not in taken),
-        natural=natural,
         notes=tuple(notes),
+        natural=natural,
     )
 
 
