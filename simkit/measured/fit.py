@@ -108,7 +108,7 @@ def fit(
     solution = _searched(problem)
     covariance, data_only = _covariances(problem, solution)
     curves = tuple(_curve(problem, solution, nominal, place) for place in range(len(problem.files)))
-    error = 0.0
+    error = float("nan")
     if engine is not None:
         at = problem.values(solution, problem.files[0].build)
         error = problem.files[0].surrogate.error_at(
@@ -190,6 +190,7 @@ def _files(
         said = (*measurement.notes, *quality_notes(measurement), *dip_notes)
         notes += [f"{measurement.path.name}: {note}" for note in said]
         cut = _cut(measurement, made[key].band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
+        notes += _lost_notes(measurement, cut, dips)
         pinned = _pinned(pins[place] if pins is not None else {}, dips, measurement)
         noise = smooth(cut).noise
         cut = _thinned(cut, dips)
@@ -231,6 +232,20 @@ def _cut(
         frequency_hz=measurement.frequency_hz[inside],
         reflection=measurement.reflection[inside],
     )
+
+
+def _lost_notes(whole: Measurement, cut: Measurement, dips: Sequence[Dip]) -> list[str]:
+    """Say which measured dips lie where the model does not reach."""
+    low, high = float(cut.frequency_hz[0]), float(cut.frequency_hz[-1])
+    lost = [d.frequency_hz for d in dips if not low <= d.frequency_hz <= high]
+    if not lost:
+        return []
+    places = ", ".join(f"{place / 1e6:.1f}" for place in lost)
+    return [
+        f"{whole.path.name}: only {low / 1e6:.0f} to {high / 1e6:.0f} MHz can be compared for all "
+        f"values within the bounds, so the measured dip at {places} MHz is left out of the curves; "
+        "narrow the bounds, or give the study (or the stored sweep) a wider band"
+    ]
 
 
 def _thinned(measurement: Measurement, dips: Sequence[Dip]) -> Measurement:
