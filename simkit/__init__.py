@@ -20,7 +20,8 @@ from simkit.errors import (
 
 if TYPE_CHECKING:
     from simkit import plot
-    from simkit.measured import compare, read_touchstone
+    from simkit.measured import compare, fit, read_touchstone, trim_pair
+    from simkit.measured import trim_fitted as trim
     from simkit.runner import run
     from simkit.store import as_grid, open_results
     from simkit.store.rows import modes
@@ -38,22 +39,28 @@ __all__ = [
     "__version__",
     "as_grid",
     "compare",
+    "fit",
     "load_study",
     "modes",
     "open_results",
     "plot",
     "read_touchstone",
     "run",
+    "trim",
+    "trim_pair",
 ]
 
 _HOME = {
     "as_grid": "simkit.store",
     "compare": "simkit.measured",
+    "fit": "simkit.measured",
     "load_study": "simkit.study",
     "modes": "simkit.store.rows",
     "open_results": "simkit.store",
     "read_touchstone": "simkit.measured",
     "run": "simkit.runner",
+    "trim": "simkit.measured:trim_fitted",
+    "trim_pair": "simkit.measured",
 }
 
 
@@ -61,7 +68,8 @@ def __getattr__(name: str) -> object:
     if name == "plot":
         return import_module("simkit.plot")
     if name in _HOME:
-        return getattr(import_module(_HOME[name]), name)
+        module, _, other = _HOME[name].partition(":")
+        return getattr(import_module(module), other or name)
     raise AttributeError(f"module 'simkit' has no attribute {name!r}")
 
 

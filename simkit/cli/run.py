@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import shutil
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -81,6 +82,7 @@ def command(
     trouble = False
     if summary.complete:
         with drawing_folder(summary.results_dir) as folder:
+            keep_measured(loaded, folder)
             draw(dataset, loaded, folder)
             trouble = show_comparisons(dataset, loaded, folder)
     click.echo(end_text(summary, study))
@@ -117,6 +119,19 @@ def draw(dataset: xr.Dataset, study: Study, results: Path) -> None:
     click.echo("\nPlots")
     for path, about in save_all(dataset, results / "plots", study=study):
         click.echo(f"  {path}: {about}")
+
+
+def keep_measured(study: Study, results: Path) -> None:
+    """Copy the measured files the study names, so that a results folder can be moved."""
+    from simkit.plot.save import MEASURED_FOLDER
+
+    for file in study.measured:
+        if not file.path.is_file():
+            continue
+        with suppress(OSError):
+            copy = results / MEASURED_FOLDER / file.path.name
+            copy.parent.mkdir(parents=True, exist_ok=True)
+            shutil.copyfile(file.path, copy)
 
 
 def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
