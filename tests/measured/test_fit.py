@@ -7,6 +7,7 @@ from simkit.errors import MeasurementError, StoreError
 from simkit.measured.bench_errors import ErrorSizes, with_capacitance
 from simkit.measured.fit import fit
 from simkit.measured.fit_problem import correlation_length, referred
+from simkit.measured.simulator import Axis, Surrogate, chebyshev
 from simkit.measured.stored import surrogate_of_results
 from simkit.measured.trim import trim_fitted
 from simkit.measured.trim_words import factor_lines
@@ -304,3 +305,43 @@ def test_a_dip_beyond_the_stored_band_is_named(study):
     data = stored_bench(0.9e9, 2.7e9)
     result = fit(study, [data], bounds, surrogate=surrogate_of_results(stored, bounds))
     assert any("so the measured dip at 27" in note for note in result.notes)
+
+
+class FormulaEngine:
+    """Solves single points of one build by the formula."""
+
+    solves = 3
+
+    def __init__(self, arm):
+        self.arm = arm
+
+    def node(self, values):
+        return synthetic.node(self.arm, values["eps"])
+
+
+def test_each_build_is_checked_against_solutions_of_its_own(study, monkeypatch):
+    def build_surrogate(variation, base, bounds, band_hz, *, progress=None):
+        axis = Axis("eps", chebyshev(*bounds["eps"], 7))
+        nodes = [synthetic.node(base["arm"], eps) for eps in axis.nodes]
+        band = (synthetic.BAND[0] / 1.1, synthetic.BAND[1] * 1.1)
+        return Surrogate([axis], nodes, band), FormulaEngine(base["arm"])
+
+    monkeypatch.setitem(fit.__globals__, "build_surrogate", build_surrogate)
+    arms = (72e-3, 75.5e-3)
+    data = [synthetic.measured(arm, 3.0, seed=k) for k, arm in enumerate(arms)]
+    result = fit(study, data, FREE_EPS, builds=[{"arm": arm} for arm in arms])
+    # The builds differ by 5 % in frequency, which makes 0.4 and more of the reflection.
+    assert result.surrogate_error < 1e-3
+    assert result.solves == 6
+    assert result.values[0].value == pytest.approx(3.0, rel=0.03)
+
+
+def test_a_value_in_which_the_builds_differ_is_not_fitted_to_all(study, model):
+    data = [synthetic.measured(arm, 3.0) for arm in (73e-3, 75.5e-3)]
+    builds = [{"arm": 73e-3}, {"arm": 75.5e-3}]
+    with pytest.raises(MeasurementError, match=r"`arm` cannot be fitted .* 73 mm and 75.5 mm"):
+        fit(study, data, BOTH, builds=builds, surrogate=model)
+    with pytest.raises(MeasurementError, match="leave it as cut, free `scale`"):
+        fit(study, data, BOTH, builds=[{}, {"arm": 75.5e-3}], surrogate=model)
+    same = [{"arm": 73e-3}, {"arm": 73e-3}]
+    assert fit(study, data[:1] * 2, BOTH, builds=same, surrogate=model).curves[1].pairs
