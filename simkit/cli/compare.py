@@ -104,8 +104,13 @@ def command(
         emit(csv_text(rows))
     else:
         emit("\n\n".join(_text(comparison, natural=natural) for comparison in found))
+    seen: list[str] = []
     for comparison in found:
-        path = save_overlay(comparison, output or overlay_path(results, comparison))
+        path = Path(output) if output else overlay_path(results, comparison)
+        seen.append(path.stem)
+        if seen.count(path.stem) > 1:  # repeats of one name, from several folders
+            path = path.with_stem(f"{path.stem}_{seen.count(path.stem)}")
+        path = save_overlay(comparison, path)
         click.echo(f"written: {path}", err=True)
         click.echo(f"written: {save_smith(comparison, path)}", err=True)
 

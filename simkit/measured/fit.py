@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from simkit.errors import MeasurementError
+from simkit.errors import GeometryError, MeasurementError, StudyError
 from simkit.measured.bench_errors import ErrorSizes
 from simkit.measured.dips import measured_dips, pinned_dip, smooth
 from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To
@@ -96,9 +96,10 @@ def fit(
     Raises
     ------
     MeasurementError
-        If there is nothing to fit, or no frequency in common.
-    GeometryError, EngineError, StudyError
-        If the study cannot be solved within the bounds.
+        If there is nothing to fit, no frequency in common, or not every antenna within the bounds
+        can be built.
+    EngineError
+        If one of them cannot be solved.
     """
     variation = Variation(study)
     bounds, beliefs = _free_values(variation, free, known)
@@ -188,7 +189,7 @@ def _files(
             made[key] = surrogate, None
         elif key not in made:
             common = _common(measurement, band)
-            made[key] = build_surrogate(variation, held, axes, common, progress=progress)
+            made[key] = _solved(variation, held, axes, common, progress)
         model, engine = made[key]
         dips, dip_notes = measured_dips(measurement)
         said = (*measurement.notes, *quality_notes(measurement), *dip_notes)
@@ -202,6 +203,28 @@ def _files(
         files.append(FitFile(cut, build, model, tuple(dips), noise, pinned, float(weight)))
         engines.append(engine)
     return files, engines, notes
+
+
+def _solved(
+    variation: Variation,
+    held: Mapping[str, float],
+    axes: Mapping[str, tuple[float, float]],
+    band_hz: tuple[float, float],
+    progress: Callable[[int, int], None] | None,
+) -> tuple[Surrogate, Engine]:
+    """The model over the bounds; an antenna that cannot be built there is said to lie there."""
+    try:
+        return build_surrogate(variation, held, axes, band_hz, progress=progress)
+    except (GeometryError, StudyError) as error:
+        text = variation.text
+        reach = ", ".join(
+            f"{name} from {text(name, low)} to {text(name, high)}"
+            for name, (low, high) in axes.items()
+        )
+        raise MeasurementError(
+            f"not every antenna within the bounds ({reach}) can be built: {error}; narrow the "
+            "bounds"
+        ) from error
 
 
 def _check_shared(

@@ -10,6 +10,8 @@ import pytest
 from click.testing import CliRunner
 
 from simkit.cli import main
+from simkit.cli.fit import write_study
+from simkit.errors import StoreError
 from simkit.study import load_study
 
 STUDY = """
@@ -141,3 +143,51 @@ def test_a_measurement_elsewhere_is_refused(folder, tmp_path):
     done = CliRunner().invoke(main, words)
     assert done.exit_code == 2
     assert "no frequency in common" in done.output
+
+
+def test_a_file_that_no_fit_wrote_is_left_alone(folder):
+    mine = folder / "mine.toml"
+    mine.write_text("# my own\n")
+    done = run(folder, "fit", "--free", "arm=72 mm..79 mm", "-o", str(mine))
+    assert done.exit_code == 2
+    assert "was not written by a fit" in done.output
+    assert mine.read_text() == "# my own\n"
+
+
+def test_a_fitted_study_is_written_whole_or_not_at_all(folder):
+    with pytest.raises(StoreError, match=r"cannot be written: .*name another place with -o"):
+        write_study(folder / "none" / "x.toml", "text")
+    target = folder / "whole.toml"
+    write_study(target, "text")
+    assert target.read_text() == "text"
+    assert not list(folder.glob(".whole*"))
+
+
+def test_values_that_cannot_be_written_back_are_refused_before_solving(folder, monkeypatch):
+    table = 'arm = "76 mm"\nwidth = "8 mm"\n'
+    inline = STUDY.replace(f"[values]\n{table}", "")
+    assert inline != STUDY
+    values = 'values = { arm = "76 mm", width = "8 mm" }\n'
+    (folder / "inline.toml").write_text(inline.replace("[[strip]]", f"{values}[[strip]]", 1))
+    monkeypatch.setattr("simkit.cli.fit.fitted", None)
+    words = ["fit", str(folder / "inline.toml"), str(folder / "build.s1p")]
+    done = CliRunner().invoke(main, [*words, "--free", "arm=72 mm..79 mm"])
+    assert done.exit_code == 2
+    assert "does not stand alone on a line" in done.output
+
+
+def test_bounds_that_make_no_antenna_are_told(folder):
+    done = run(folder, "fit", "--free", "arm=-1 mm..77 mm")
+    assert done.exit_code == 2
+    assert "not every antenna within the bounds (arm from -1 mm to 77 mm)" in done.output
+
+
+def test_repeats_of_one_name_get_pictures_of_their_own(folder):
+    (folder / "again").mkdir()
+    shutil.copy(folder / "build.s1p", folder / "again" / "build.s1p")
+    words = ["fit", str(folder / "gauge.toml"), str(folder / "build.s1p")]
+    words += [str(folder / "again" / "build.s1p"), "--free", "arm=72 mm..79 mm"]
+    done = CliRunner().invoke(main, [*words, "--plots", str(folder / "both"), "--csv"])
+    assert done.exit_code == 0, done.output
+    names = {path.name for path in (folder / "both").iterdir()}
+    assert {"fit_build_1.png", "fit_build_2.png"} <= names
