@@ -143,10 +143,9 @@ def _show_nearest(
     elif form == "csv":
         emit(csv_text(rows))
     else:
-        units = {name: str(dataset[name].attrs.get("units", "1")) for name in ranked[0][0].values}
         emit(
             "\n\n".join(
-                nearest_text(file, cases, units) for file, cases in zip(files, ranked, strict=True)
+                nearest_text(file, cases) for file, cases in zip(files, ranked, strict=True)
             )
         )
     for file, cases in zip(files, ranked, strict=True):

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping, Sequence
+    from collections.abc import Sequence
 
     from simkit.measured.comparison import Comparison
     from simkit.measured.measurement import Measurement
@@ -90,9 +90,7 @@ def natural_text(found: MeasuredModes | None) -> str:
     return "; ".join([text, *found.notes])
 
 
-def nearest_text(
-    measurement: Measurement, cases: Sequence[NearCase], units: Mapping[str, str]
-) -> str:
+def nearest_text(measurement: Measurement, cases: Sequence[NearCase]) -> str:
     """Return the stored cases that come nearest to a measurement as a table."""
     from simkit.measured.fit_words import aligned
 
@@ -103,7 +101,7 @@ def nearest_text(
             str(near.case),
             _number(near.misfit, 2),
             _number(near.curve, 3),
-            ", ".join(quantity_text(n, v, units.get(n, "1")) for n, v in near.values.items()),
+            ", ".join(quantity_text(n, v, near.units.get(n, "1")) for n, v in near.values.items()),
         )
         for rank, near in enumerate(cases)
     ]

@@ -180,9 +180,13 @@ def test_a_map_of_a_match_without_any_value_still_draws():
 
 def test_nearest_cases_over_the_measurement():
     gamma = curve().measurement.reflection
-    cases = [NearCase(k, {"arm": 0.07 + k / 1e3}, 1.0, 0.01, 2.0 + k, F, gamma) for k in range(3)]
+    units = {"arm": "m", "infill": "1"}
+    cases = [
+        NearCase(k, {"arm": 0.07 + k / 1e3, "infill": 0.4}, 1.0, 0.01, 2.0 + k, F, gamma, units)
+        for k in range(3)
+    ]
     ax = plot_nearest(curve().measurement, cases)
     assert "1: case 0" in legend_words(ax)
-    assert "arm 71 mm" in legend_words(ax)
+    assert "arm 71 mm, infill 0.4" in legend_words(ax)
     assert "invented" in ax.get_title(loc="left")
     ax.figure.canvas.draw()
