@@ -167,6 +167,7 @@ def trim_fitted(
     """
     model = TrimModel(result, file)
     present = model.present(name)
+    model.check_reach(name, reach)
     label = model.label(half_waves)
 
     def dip(value: float, x: FloatArray | None = None) -> float:

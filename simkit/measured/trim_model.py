@@ -72,6 +72,27 @@ class TrimModel:
             )
         return self.values[name]
 
+    def check_reach(self, name: str, reach: tuple[float, float]) -> None:
+        """Raise if a dimension may go where the fitted model was not solved.
+
+        Raises
+        ------
+        MeasurementError
+        """
+        for axis in self.chosen.surrogate.axes:
+            if axis.name != name:
+                continue
+            low, high = float(axis.nodes[0]), float(axis.nodes[-1])
+            slack = 1e-9 * (high - low)
+            if reach[0] < low - slack or reach[1] > high + slack:
+                text = self.problem.variation.text
+                raise MeasurementError(
+                    f"the fitted model covers `{name}` from {text(name, low)} to "
+                    f"{text(name, high)}, the trim may go from {text(name, reach[0])} to "
+                    f"{text(name, reach[1])}: fit with also={{{name!r}: (low, high)}} in SI, or "
+                    "reach less far"
+                )
+
     def label(self, half_waves: int) -> str:
         return half_wave_label(half_waves, self.on_plane)
 

@@ -182,6 +182,8 @@ def trim_pair(
     first, second = reaches
     names = (first, second)
     present = np.array([model.present(name) for name in names])
+    for name in names:
+        model.check_reach(name, reaches[name])
     limits = np.array([reaches[name] for name in names], dtype=float)
     for target in targets:
         if np.isfinite(target.band_hz).all():

@@ -153,6 +153,14 @@ def test_a_band_and_a_dip_together(result):
     assert found.after[1] == pytest.approx(truth[3][0], rel=1e-4)
 
 
+def test_no_trim_goes_where_the_model_was_not_solved(result):
+    with pytest.raises(MeasurementError, match=r"covers `arm` from 71 mm to 77 mm, .* to 79 mm"):
+        trim_fitted(result, 1, 0.92e9, "arm", (71e-3, 79e-3))
+    aims = (dip(1, 0.92e9), dip(3, 2.8e9))
+    with pytest.raises(MeasurementError, match=r"covers `eps` from 2 to 3.4"):
+        trim_pair(result, aims, REACH | {"eps": (1.5, 3.4)})
+
+
 def test_metal_is_what_the_outlines_say(result):
     model = TrimModel(result)
     # Both arms are 6 mm wide; a shorter arm loses its tip twice, a wider strip gains all along.
