@@ -208,6 +208,10 @@ def _best_row(
         return int(rows[0]), []
     misfit = [every[row].pair(heard, *bands).misfit for row in rows]
     row = int(rows[int(np.argmin(misfit))])
+    if not heard:
+        return row, [
+            f"no measured dip tells the {len(rows)} cases in question apart: name one with --case"
+        ]
     return row, [f"of {len(rows)} cases in question this one's dips fit the measured ones best"]
 
 

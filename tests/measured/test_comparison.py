@@ -192,6 +192,14 @@ def test_an_ambiguous_pair_is_marked_in_the_table_and_in_the_rows():
     assert any("ambiguous: the dip at" in note for note in found.notes)
 
 
+def test_without_a_dip_no_case_is_said_to_fit_best():
+    flat = bench(0.9e9, 2.7e9)
+    flat = Measurement(flat.path, flat.frequency_hz, 0.9 + 0 * flat.reflection, 50.0)
+    found = compare(results(), flat)
+    assert any("no measured dip tells the 6 cases in question apart" in n for n in found.notes)
+    assert "no measured dip could be paired" in found.as_text()
+
+
 def test_rows_are_plain_and_keep_unpaired_dips():
     measurement = bench(0.9e9, 2.7e9, second=1.35e9)
     found = compare(results(), measurement, case=3)

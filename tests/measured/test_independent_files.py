@@ -125,3 +125,15 @@ def test_a_high_noise_floor_is_told_and_hides_shallow_dips(tmp_path):
     (note,) = quality_notes(data)
     assert note.startswith("the noise is 0.0")
     assert "narrow the analyser's bandwidth" in note
+
+
+def test_more_points_than_needed_are_averaged(tmp_path):
+    many = np.linspace(0.4e9, 3.0e9, 50_002)
+    data = read_touchstone(written(noisy(antenna(many), 1e-2), tmp_path))
+    assert len(data.frequency_hz) == 16_667
+    assert data.notes == ("50002 points are averaged in groups of 3",)
+    exact = antenna(data.frequency_hz).s[:, 0, 0]
+    # Noise of a hundredth in groups of three.
+    assert np.std((data.reflection - exact).real) == pytest.approx(1e-2 / np.sqrt(3), rel=0.05)
+    dips, _ = measured_dips(data)
+    assert [dip.frequency_hz for dip in dips] == pytest.approx([0.9e9, 2.6e9], rel=0.02)
