@@ -97,6 +97,9 @@ def command(
     variation = Variation(loaded)
     aims = asked.targets_of(modes, targets, on_plane=asked.stands(loaded))
     reaches = dict(_reach(variation, text) for text in by)
+    if results is not None:
+        unsaid = [text.strip() for text in by if "=" not in text]
+        reaches |= _stored_reaches(results, {name: reaches[name] for name in unsaid})
     if len(aims) == 2 and len(reaches) != 2:
         raise click.UsageError(
             f"two targets need two dimensions: give --by twice, not {len(reaches)} time(s)"
@@ -198,6 +201,24 @@ def _reach(variation: Variation, text: str) -> tuple[str, tuple[float, float]]:
         )
     low, high = sorted((present * (1 - REACH), present * (1 + REACH)))
     return name, (low, high)
+
+
+def _stored_reaches(
+    results: str, reaches: dict[str, tuple[float, float]]
+) -> dict[str, tuple[float, float]]:
+    """Reaches that nobody stated, no wider than the stored sweep."""
+    from simkit.store import open_results
+    from simkit.store.read import swept_names
+
+    stored = open_results(results)
+    found = {}
+    for name in set(reaches) & set(swept_names(stored)):
+        values = stored[name].values
+        found[name] = (
+            max(reaches[name][0], float(values.min())),
+            min(reaches[name][1], float(values.max())),
+        )
+    return found
 
 
 def as_data(trim: Trim) -> dict[str, Any]:
