@@ -205,7 +205,7 @@ def trim_fitted(
         present_sigma_hz=model.sigma(lambda x: dip(present, x)),
         present=present,
         change=aim - present,
-        scaling_change=present * (now / target_hz - 1),
+        scaling_change=present * (now / dip(aim) - 1),
         sigma=abs(spread / slope),
         slope_hz_per_m=slope,
         modes=model.mode_changes(changes),

@@ -182,6 +182,7 @@ def test_bounds_that_make_no_antenna_are_told(folder):
     assert "not every antenna within the bounds (arm from -1 mm to 77 mm)" in done.output
 
 
+@pytest.mark.long
 def test_repeats_of_one_name_get_pictures_of_their_own(folder):
     (folder / "again").mkdir()
     shutil.copy(folder / "build.s1p", folder / "again" / "build.s1p")

@@ -68,6 +68,7 @@ def test_a_mode_the_noise_hides_is_not_claimed():
     assert near == []
 
 
+@pytest.mark.long
 def test_a_wrong_reference_plane_is_within_the_interval():
     """20 ps off and as much directivity as a calibration leaves: 95 % of the poles are held."""
     off = []
