@@ -10,7 +10,9 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 from simkit.errors import (
+    ConditionError,
     EngineError,
+    ExportError,
     GeometryError,
     MeasurementError,
     SimkitError,
@@ -20,6 +22,8 @@ from simkit.errors import (
 
 if TYPE_CHECKING:
     from simkit import plot
+    from simkit.exports import export
+    from simkit.finding import query
     from simkit.measured import compare, fit, read_touchstone, trim_pair
     from simkit.measured import trim_fitted as trim
     from simkit.runner import run
@@ -30,7 +34,9 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 __all__ = [
+    "ConditionError",
     "EngineError",
+    "ExportError",
     "GeometryError",
     "MeasurementError",
     "SimkitError",
@@ -39,11 +45,13 @@ __all__ = [
     "__version__",
     "as_grid",
     "compare",
+    "export",
     "fit",
     "load_study",
     "modes",
     "open_results",
     "plot",
+    "query",
     "read_touchstone",
     "run",
     "trim",
@@ -53,10 +61,12 @@ __all__ = [
 _HOME = {
     "as_grid": "simkit.store",
     "compare": "simkit.measured",
+    "export": "simkit.exports",
     "fit": "simkit.measured",
     "load_study": "simkit.study",
     "modes": "simkit.store.rows",
     "open_results": "simkit.store",
+    "query": "simkit.finding",
     "read_touchstone": "simkit.measured",
     "run": "simkit.runner",
     "trim": "simkit.measured:trim_fitted",

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from simkit.store.layout import SweptColumn, layout_hash
 from simkit.study.model import Case
 
-MODEL_VERSION = "4"
+MODEL_VERSION = "5"
 """Raise it with every change that alters numbers: rules, engine settings, sweep, modes, patterns.
 
 Cases solved under another model version are never mixed with new ones; they are solved anew.

@@ -124,6 +124,14 @@ def swept_names(dataset: xr.Dataset) -> dict[str, str]:
     return dict(dataset.attrs["swept"])
 
 
+def connector_impedance(dataset: xr.Dataset) -> str:
+    """Name of the variable that holds the impedance at the connector.
+
+    Without a feed line the connector is the feed.
+    """
+    return "impedance_at_connector" if "impedance_at_connector" in dataset else "impedance"
+
+
 def swept_values(dataset: xr.Dataset, case: int) -> dict[str, float]:
     """Swept values of one case, SI."""
     return {name: float(dataset[name].values[case]) for name in swept_names(dataset)}
