@@ -120,7 +120,8 @@ def fitted(
         stored = open_results(results)
         needed = {k.name: k.bounds for k in beliefs} | bounds | (also or {})
         builds = [asked.build_in(study, file) for file in files]
-        surrogate = surrogate_of_results(stored, _held(variation, stored, builds) | needed)
+        needed = _held(variation, stored, builds) | needed
+        surrogate = surrogate_of_results(stored, needed, variation)
     return fit(
         study,
         files,

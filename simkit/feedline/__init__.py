@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 from simkit.feedline.bound import MatchBound, match_bound
+from simkit.feedline.build import build_chain
 from simkit.feedline.chain import Chain, ChainResult
 from simkit.feedline.checks import FeedlineError
+from simkit.feedline.dips import connector_dips
 from simkit.feedline.elements import (
     Element,
     LineSection,
@@ -47,6 +49,8 @@ __all__ = [
     "TwoStrips",
     "UniformLine",
     "best_tap",
+    "build_chain",
+    "connector_dips",
     "find_matches",
     "l_solutions",
     "match_bound",

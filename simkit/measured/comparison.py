@@ -26,11 +26,12 @@ from simkit.measured.selection import (
     row_of_case,
     rows_of_build,
     simulated_reflection,
+    with_loose_dips,
 )
 from simkit.measured.wording import comparison_text
 from simkit.response.features import Dip
 from simkit.response.labels import half_wave_label
-from simkit.store.read import swept_names
+from simkit.store.read import has_feedline, swept_names
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
@@ -161,12 +162,14 @@ def compare(
     rows, build_notes = _candidates(dataset, case, build)
     row, fit_notes = _best_row(rows, every, heard, bands)
     notes += [*build_notes, *fit_notes]
+    every[row] = with_loose_dips(dataset.isel(case=row), every[row], reference)
     fixed = _fixed_pairs(every[row], dips, pins or {}, measurement)
     pairing = every[row].pair(heard, *bands, fixed)
     doubtful = every[row].doubtful(pairing, heard, *bands, fixed)
     notes += _ambiguity_notes(every[row], dips, doubtful)
+    notes += _feedline_notes(every[row], dips, pairing)
     notes += _doubt_notes(dataset, row)
-    notes += _unexcited_notes(every[row], pairing)
+    notes += _unexcited_notes(dataset.isel(case=row), every[row], pairing)
     found = _Found(dips, pairing, {i for i, _ in doubtful})
     return _comparison(dataset, row, measurement, every[row], found, notes)
 
@@ -222,13 +225,35 @@ def _doubt_notes(dataset: xr.Dataset, row: int) -> list[str]:
     return [f"the simulated case is doubtful: {reason or 'no reason is stored'}"]
 
 
-def _unexcited_notes(modes: CaseModes, pairing: Pairing) -> list[str]:
+def _feedline_notes(modes: CaseModes, dips: list[Dip], pairing: Pairing) -> list[str]:
     return [
-        f"the {half_wave_label(modes.half_waves[i], modes.on_plane)} mode is measured but not "
-        "excited by the modelled feed: the build is not symmetric there, or its cable radiates"
-        for i, _ in pairing.pairs
-        if not np.isfinite(modes.dip_hz[i])
+        f"the measured dip at {dips[j].frequency_hz / 1e6:.1f} MHz is the feed line's: the model "
+        f"has it at {modes.loose[i].frequency_hz / 1e6:.1f} MHz, where no mode takes most of the "
+        "power"
+        for i, j in pairing.others
     ]
+
+
+def _unexcited_notes(case: xr.Dataset, modes: CaseModes, pairing: Pairing) -> list[str]:
+    driven: set[int] = set()
+    if "driven" in case:
+        driven = set(case["mode_half_waves"].values[case["driven"].values == 1].tolist())
+    notes = []
+    for i, _ in pairing.pairs:
+        if np.isfinite(modes.dip_hz[i]):
+            continue
+        label = half_wave_label(modes.half_waves[i], modes.on_plane)
+        if modes.half_waves[i] in driven:
+            notes.append(
+                f"the {label} mode is measured, but the model shows no dip of it at the connector: "
+                "what lies between feed and connector is not as modelled"
+            )
+        else:
+            notes.append(
+                f"the {label} mode is measured but not excited by the modelled feed: the build is "
+                "not symmetric there, or its cable radiates"
+            )
+    return notes
 
 
 def _fixed_pairs(
@@ -296,7 +321,7 @@ def _comparison(
     natural = None
     ratios = found.ratios(modes)
     owners: dict[int, MeasuredMode] = {}
-    if np.isfinite(ratios).any() and "impedance_at_connector" not in dataset:
+    if np.isfinite(ratios).any() and not has_feedline(dataset):
         common = float(np.exp(np.nanmean(np.log(ratios))))
         natural = natural_beside(measurement, frequency, gamma, common)
         owners = natural_pairs(modes, natural, common, ratios)

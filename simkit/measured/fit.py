@@ -21,6 +21,7 @@ from simkit.measured.dips import measured_dips, pinned_dip, smooth
 from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To
 from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
+from simkit.measured.plane import extended
 from simkit.measured.quality import quality_notes
 from simkit.measured.simulator import Engine, Surrogate, build_surrogate
 from simkit.measured.variation import SCALE, Known, Variation
@@ -34,6 +35,9 @@ REWEIGHINGS = 2
 
 MOST_POINTS = 240
 """Neighbours are averaged down to about so many; their errors are shared anyway."""
+
+LARGEST_TURN_RAD = 0.3
+"""What a feed line may turn the reflection by within one mean, which then loses 0.4 % of it."""
 
 POINTS_ACROSS = 8
 """Points kept across the narrowest dip."""
@@ -192,13 +196,15 @@ def _files(
             made[key] = _solved(variation, held, axes, common, progress)
         model, engine = made[key]
         dips, dip_notes = measured_dips(measurement)
-        said = (*measurement.notes, *quality_notes(measurement), *dip_notes)
+        # What the feed line turns the phase by is no missing port extension.
+        bare = extended(measurement, _delay_s(model))
+        said = (*measurement.notes, *quality_notes(bare), *dip_notes)
         notes += [f"{measurement.path.name}: {note}" for note in said]
         cut = _cut(measurement, model.band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
         notes += _lost_notes(measurement, cut, dips)
         pinned = _pinned(pins[place] if pins is not None else {}, dips, measurement)
         noise = smooth(cut).noise
-        cut = _thinned(cut, dips)
+        cut = _thinned(cut, dips, _delay_s(model))
         weight = 1 / (FIRST_SIGMA * np.sqrt(max(len(cut.frequency_hz) / INDEPENDENT, 1.0)))
         files.append(FitFile(cut, build, model, tuple(dips), noise, pinned, float(weight)))
         engines.append(engine)
@@ -311,14 +317,24 @@ def _lost_notes(whole: Measurement, cut: Measurement, dips: Sequence[Dip]) -> li
     ]
 
 
-def _thinned(measurement: Measurement, dips: Sequence[Dip]) -> Measurement:
-    """Means of neighbouring points, as many as leave each dip well sampled."""
+def _delay_s(surrogate: Surrogate) -> float:
+    """Of the feed line as drawn, one way."""
+    if surrogate.feedline is None:
+        return 0.0
+    middle = sum(surrogate.band_hz) / 2
+    return surrogate.feedline.chain({}).delay_s(middle)
+
+
+def _thinned(measurement: Measurement, dips: Sequence[Dip], delay_s: float) -> Measurement:
+    """Means of neighbouring points, as many as leave each dip and each turn well sampled."""
     frequency, gamma = measurement.frequency_hz, measurement.reflection
     group = len(frequency) // MOST_POINTS
+    step = float(np.median(np.diff(frequency)))
     widths = [dip.bandwidth_hz for dip in dips if np.isfinite(dip.bandwidth_hz)]
     if widths:
-        step = float(np.median(np.diff(frequency)))
         group = min(group, int(min(widths) / step / POINTS_ACROSS))
+    if delay_s:
+        group = min(group, int(LARGEST_TURN_RAD / (4 * np.pi * step * delay_s)))
     if group < 2:
         return measurement
     count = len(frequency) // group * group

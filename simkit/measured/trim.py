@@ -52,6 +52,8 @@ class Trim:
         Area of metal that is to be added, and taken off; NaN if unknown.
     gain_dbi : (float, float)
         Peak gain of the mode before and after, NaN unless `with_gain` has found it.
+    of_feedline : bool
+        The dimension is one of the feed line alone, which plain scaling says nothing about.
     values, dips_hz, dip_sigmas_hz : (N,) float array
         Trim curve: the dip against the dimension, with its standard deviation.
     losses_db : (N,) float array
@@ -81,6 +83,7 @@ class Trim:
     gain_dbi: tuple[float, float] = (float("nan"), float("nan"))
     metal_m2: tuple[float, float] = (float("nan"), float("nan"))
     losses_db: FloatArray = field(repr=False, default_factory=lambda: np.empty(0))
+    of_feedline: bool = False
 
     @property
     def low(self) -> float:
@@ -184,7 +187,8 @@ def trim_fitted(
     track = np.array([dip(float(v)) for v in grid])
     unit = model.problem.variation.unit(name)
     wanted = _reached(grid, track, target_hz, present, f"{label} dip", name, unit)
-    aim = float(brentq(lambda v: dip(v) - target_hz, *wanted, xtol=1e-8))
+    fine = min(1e-8, 1e-6 * (reach[1] - reach[0]))  # a dimension may be one of nanohenry
+    aim = float(brentq(lambda v: dip(v) - target_hz, *wanted, xtol=fine))
     if band[1] > band[0]:
         aim = _best_in_band(model, band, name, present, aim, reach)
     place = int(np.searchsorted(grid, aim))
@@ -195,6 +199,7 @@ def trim_fitted(
     slope = (dip(aim + step) - dip(aim - step)) / (2 * step)
     spread = model.sigma(lambda x: dip(aim, x))
     changes = {name: aim - present}
+    of_feedline = name in model.chosen.surrogate.line_names
     return Trim(
         name=name,
         unit=unit,
@@ -205,13 +210,14 @@ def trim_fitted(
         present_sigma_hz=model.sigma(lambda x: dip(present, x)),
         present=present,
         change=aim - present,
-        scaling_change=present * (now / dip(aim) - 1),
+        scaling_change=float("nan") if of_feedline else present * (now / dip(aim) - 1),
         sigma=abs(spread / slope),
         slope_hz_per_m=slope,
         modes=model.mode_changes(changes),
         values=grid,
         dips_hz=track,
         dip_sigmas_hz=np.interp(grid, coarse, sigmas),
+        of_feedline=of_feedline,
         measured_hz=model.measured_hz(half_waves),
         band_hz=band,
         band_return_loss_db=decibels(model.worst(band, changes)),

@@ -65,10 +65,11 @@ class TrimModel:
         MeasurementError
             If the fitted model does not vary it.
         """
-        if name not in self.values:
+        varied = dict.fromkeys([*self.problem.names, *self.chosen.surrogate.names])
+        if name not in varied:
             raise MeasurementError(
                 f"the model does not vary `{name}`, so it cannot be trimmed; it varies "
-                f"{', '.join(self.values) or 'nothing'}"
+                f"{', '.join(varied) or 'nothing'}"
             )
         return self.values[name]
 

@@ -179,9 +179,14 @@ class PairSolver:
         return np.array(columns).T
 
     def scaling(self) -> FloatArray:
-        """Changes that scale both dimensions by the factor the first frequency target asks for."""
+        """Changes that scale both dimensions by the factor the first frequency target asks for.
+
+        A value of the feed line alone does not scale with the antenna and stays.
+        """
+        line = self.model.chosen.surrogate.line_names
+        scaled = np.array([name not in line for name in self.names])
         for target in self.targets:
             now = self.model.dip_hz(target.half_waves, {})
             if np.isfinite(target.middle_hz) and np.isfinite(now):
-                return np.asarray(self.present * (now / target.middle_hz - 1))
+                return np.asarray(self.present * scaled * (now / target.middle_hz - 1))
         return np.zeros(2)

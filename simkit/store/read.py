@@ -119,7 +119,38 @@ def _in_order(dataset: xr.Dataset, attrs: dict[str, Any]) -> xr.Dataset:
     others = [str(name) for name in dataset.variables if name not in {*swept, *variables, "case"}]
     coords = {name: dataset[name].variable for name in ("case", *swept, *sorted(others))}
     data = {name: dataset[name].variable for name in variables}
+    if not attrs.get("feedline"):
+        data = _connector_is_feed(data)
     return xr.Dataset(data, coords, dataset.attrs)
+
+
+def _connector_is_feed(data: dict[str, xr.Variable]) -> dict[str, xr.Variable]:
+    """Without a feed line both planes are one, and the impedance is stored once."""
+    found: dict[str, xr.Variable] = {}
+    for name, variable in data.items():
+        if name == "impedance":
+            found[name] = variable
+            found["impedance_at_connector"] = variable.copy(deep=False)
+            found["impedance_at_connector"].attrs = variable.attrs | {
+                "long_name": "impedance at the connector, which is the feed"
+            }
+        elif name != "impedance_at_connector":
+            found[name] = variable
+    return found
+
+
+def has_feedline(dataset: xr.Dataset) -> bool:
+    """Return whether results, or one case of them, are of a study with a feed line."""
+    return bool(dataset.attrs.get("feedline"))
+
+
+def connector_impedance(dataset: xr.Dataset) -> str:
+    """Return the name of the variable that holds the impedance at the connector.
+
+    It is that of the feed where nothing lies between.
+    """
+    between = dataset.attrs.get("feedline", "impedance_at_connector" in dataset)
+    return "impedance_at_connector" if between else "impedance"
 
 
 def status_labels(dataset: xr.Dataset) -> xr.DataArray:
@@ -141,14 +172,6 @@ def swept_names(dataset: xr.Dataset) -> dict[str, str]:
     The two are the same: a study that sweeps a name the store needs itself is refused.
     """
     return dict(dataset.attrs["swept"])
-
-
-def connector_impedance(dataset: xr.Dataset) -> str:
-    """Name of the variable that holds the impedance at the connector.
-
-    Without a feed line the connector is the feed.
-    """
-    return "impedance_at_connector" if "impedance_at_connector" in dataset else "impedance"
 
 
 def swept_values(dataset: xr.Dataset, case: int) -> dict[str, float]:

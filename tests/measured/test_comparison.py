@@ -173,6 +173,7 @@ def test_the_reference_plane_is_judged_by_the_simulated_phase():
 def test_behind_a_feed_line_no_natural_modes_are_read():
     data = results()
     data["impedance_at_connector"] = data["impedance"]
+    data.attrs["feedline"] = True
     found = compare(data, bench(0.9e9, 2.7e9), case=3)
     assert found.natural is None
     assert np.isnan(found.lines[0].measured_q)
