@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 
 from simkit.errors import (
     EngineError,
+    FeedlineError,
     GeometryError,
     MeasurementError,
     SimkitError,
@@ -20,6 +21,7 @@ from simkit.errors import (
 
 if TYPE_CHECKING:
     from simkit import plot
+    from simkit.feedline.sources import match
     from simkit.measured import compare, read_touchstone
     from simkit.runner import run
     from simkit.store import as_grid, open_results
@@ -30,6 +32,7 @@ __version__ = "0.1.0"
 
 __all__ = [
     "EngineError",
+    "FeedlineError",
     "GeometryError",
     "MeasurementError",
     "SimkitError",
@@ -39,6 +42,7 @@ __all__ = [
     "as_grid",
     "compare",
     "load_study",
+    "match",
     "modes",
     "open_results",
     "plot",
@@ -50,6 +54,7 @@ _HOME = {
     "as_grid": "simkit.store",
     "compare": "simkit.measured",
     "load_study": "simkit.study",
+    "match": "simkit.feedline.sources",
     "modes": "simkit.store.rows",
     "open_results": "simkit.store",
     "read_touchstone": "simkit.measured",

@@ -13,9 +13,9 @@ from typing import IO, Any
 import click
 
 from simkit import __version__
-from simkit.errors import MeasurementError, SimkitError, StudyError
+from simkit.errors import FeedlineError, MeasurementError, SimkitError, StudyError
 
-COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare", "fit", "trim")
+COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare", "match", "fit", "trim")
 """Subcommands in the order in which one uses them; each is `command` in a module of its name."""
 
 
@@ -58,7 +58,7 @@ class LazyGroup(click.Group):
             os.environ.setdefault(name, "1")
         try:
             return super().invoke(ctx)
-        except (StudyError, MeasurementError) as error:
+        except (StudyError, MeasurementError, FeedlineError) as error:
             raise InputFailure(str(error)) from error
         except SimkitError as error:
             raise CommandFailure(str(error)) from error
