@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from simkit.feedline.bound import MatchBound, match_bound
+from simkit.feedline.build import build_chain
 from simkit.feedline.chain import Chain, ChainResult
 from simkit.feedline.checks import FeedlineError
 from simkit.feedline.elements import (
@@ -47,6 +48,7 @@ __all__ = [
     "TwoStrips",
     "UniformLine",
     "best_tap",
+    "build_chain",
     "find_matches",
     "l_solutions",
     "match_bound",

@@ -6,7 +6,7 @@ come from the case's rational model, the rest from the currents.
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -20,6 +20,10 @@ from simkit.study.model import Ground
 
 if TYPE_CHECKING:
     import xarray as xr
+
+    from simkit.feedline.chain import Chain
+
+Plane = Literal["feed", "connector"]
 
 BAND_SLACK = 1e-9
 """A frequency may leave the band by this part of it, for the rounding of unit conversions."""
@@ -102,18 +106,20 @@ def current_at(case: xr.Dataset, frequency_hz: ArrayLike) -> ComplexArray:
     return model(_in_band(model, frequency_hz))
 
 
-def impedance_at(case: xr.Dataset, frequency_hz: ArrayLike) -> ComplexArray:
-    """Impedance at the feed gap of the study.
+def impedance_at(case: xr.Dataset, frequency_hz: ArrayLike, plane: Plane = "feed") -> ComplexArray:
+    """Impedance at the feed gap of the study, or behind its feed line.
 
     Parameters
     ----------
     case : xarray.Dataset
     frequency_hz : (F,) array_like
+        Ascending without repeats for the connector.
+    plane : {"feed", "connector"}
 
     Returns
     -------
     (F,) complex array
-        Ohm.
+        Ohm; infinite for an open circuit.
 
     Raises
     ------
@@ -122,13 +128,35 @@ def impedance_at(case: xr.Dataset, frequency_hz: ArrayLike) -> ComplexArray:
     """
     frequency = np.atleast_1d(np.asarray(frequency_hz, dtype=float))
     weight = _values(case, "source_weight")[_segments(case)]
-    return feed_impedance_ohm(
+    at_feed = feed_impedance_ohm(
         current_at(case, frequency) @ weight,
         frequency,
         float(case["feed_width"]),
         float(case["model_gap"]),
         float(case["study_gap"]),
     )
+    chain = chain_of_case(case)
+    if plane == "feed" or not chain.elements:
+        return at_feed
+    from simkit.feedline.oneport import OnePort, impedance_of
+
+    load = OnePort.from_impedance(frequency, at_feed, chain.reference_ohm)
+    return impedance_of(chain.reflection(load), chain.reference_ohm)
+
+
+def chain_of_case(case: xr.Dataset) -> Chain:
+    """What lies between feed and connector of a case; without elements if nothing does.
+
+    Parameters
+    ----------
+    case : xarray.Dataset
+        One case of an opened store.
+    """
+    from simkit.feedline.build import chain_of
+    from simkit.study.feedline_text import feedline_of_text
+
+    text = str(_values(case, "feedline")) if "feedline" in case else ""
+    return chain_of(feedline_of_text(text), float(case.attrs.get("reference_ohm", 50.0)))
 
 
 def far_field_at(

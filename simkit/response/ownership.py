@@ -55,6 +55,7 @@ def owned_features(
     frequency_hz: FloatArray,
     impedance_ohm: ComplexArray,
     reference_ohm: float,
+    at_connector: ComplexArray | None = None,
 ) -> tuple[OwnedFeatures, ...]:
     """Hand the features of a feed impedance to the modes that cause them.
 
@@ -65,6 +66,8 @@ def owned_features(
     impedance_ohm : (F,) complex array
     reference_ohm : float
         To which dips refer.
+    at_connector : (F,) complex array, optional
+        Reflection behind a feed line, whose dips are handed out; that of the feed if left out.
 
     Returns
     -------
@@ -73,7 +76,7 @@ def owned_features(
     """
     admittance = 1 / impedance_ohm
     share = _Shares(modes, frequency_hz, admittance.real)
-    gamma = reflection(impedance_ohm, reference_ohm)
+    gamma = reflection(impedance_ohm, reference_ohm) if at_connector is None else at_connector
     peaks = share.owners(
         conductance_peaks(frequency_hz, impedance_ohm), lambda p: -p.resistance_ohm
     )

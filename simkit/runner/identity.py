@@ -13,7 +13,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from simkit.store.layout import SweptColumn, layout_hash
-from simkit.study.model import Case
+from simkit.study.feedline_text import feedline_text
+from simkit.study.model import Antenna, Case
 
 MODEL_VERSION = "4"
 """Raise it with every change that alters numbers: rules, engine settings, sweep, modes, patterns.
@@ -66,8 +67,17 @@ def case_key(case: Case, study_part: str) -> str:
     str
         64 hexadecimal digits; swept values count through the antenna they resolve to.
     """
-    inputs = case.refused if case.antenna is None else canonical_json(asdict(case.antenna))
+    inputs = case.refused if case.antenna is None else canonical_json(_inputs(case.antenna))
     return sha256(f"{inputs}\n{study_part}")
+
+
+def _inputs(antenna: Antenna) -> dict[str, Any]:
+    """All an antenna is made of; without a feed line nothing of one, as ever."""
+    inputs = asdict(antenna)
+    del inputs["feedline"]
+    if antenna.feedline:
+        inputs["feedline"] = feedline_text(antenna.feedline)
+    return inputs
 
 
 def study_identity(

@@ -13,7 +13,7 @@ from simkit.errors import StoreError
 from simkit.runner.prepare import Prepared
 from simkit.runner.result import CaseResult
 from simkit.runner.work import BlockJob, CaseJob
-from simkit.store.layout import layout_hash
+from simkit.store.layout import usable_layouts
 from simkit.store.remote import Place
 from simkit.store.schema import SAMPLES, VARIABLES, Status
 from simkit.store.write import KEY_DTYPE, StoreFile
@@ -105,14 +105,14 @@ class Index:
 
 
 def key_index(sources: Sequence[Place], *, retry: bool = False) -> Index:
-    """Settled cases in older stores of the same layout, without those to be tried again."""
+    """Settled cases in older stores that can be used, without those to be tried again."""
     index = Index()
     for path in sources:
         try:
             store = StoreFile(path)
         except StoreError:
             continue  # beyond reading: its cases are solved again
-        if store.attrs.get("layout_hash") != layout_hash():
+        if store.attrs.get("layout_hash") not in usable_layouts():
             continue
         statuses = store.read_statuses()
         settled = statuses != Status.WAITING

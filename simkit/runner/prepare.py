@@ -176,6 +176,7 @@ def prepare(study: Study, solver: Solver) -> Prepared:
             "simkit_version": _simkit_version(),
             "mesh_plan": plan_text,
             "reference_ohm": antennas[0].reference_ohm,
+            "feedline": [item.name for item in antennas[0].feedline],
             "sweep_method": study.method,
             "sweep_shape": shape,
         },

@@ -4,12 +4,15 @@ from __future__ import annotations
 
 import time
 from collections.abc import Sequence
+from dataclasses import replace
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
 
 from simkit.engine.pynec import EarthMethod, SeriesLoad, solve_wires
 from simkit.errors import EngineError, GeometryError
+from simkit.feedline.checks import FeedlineError
 from simkit.geometry import MeshPlan, WireGrid, build_wires
 from simkit.geometry.conductor import face_resistance_ohm
 from simkit.geometry.placement import far_from_earth
@@ -25,6 +28,7 @@ from simkit.response.pattern import (
 from simkit.response.rational import ComplexArray, Sweep, adaptive_sweep
 from simkit.response.strip_current import current_along_strips, totals_matrix
 from simkit.response.terminals import feed_impedance_ohm
+from simkit.runner.connector import Connector
 from simkit.runner.convergence import Convergence, converge
 from simkit.runner.result import CaseResult
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, Status
@@ -41,6 +45,10 @@ BALANCE_TOLERANCE = 0.03
 The currents come from the same moment solution as the input power, so a gap between the two is an
 inconsistency of the solution itself; sound grids stay within 1 %.
 """
+
+
+REMEMBERED = 8
+"""Antennas a process keeps the currents of, for cases that differ in their feed line alone."""
 
 
 def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
@@ -61,20 +69,30 @@ def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
     begin = time.perf_counter()
     solves = 0
     try:
-        grid = build_wires(antenna, plan)
-        sweep = sweep_currents(antenna, grid)
+        grid, sweep = _currents(antenna, plan)
         solves = len(sweep.model.frequency_hz)
         arrays, doubts, notes = _evaluate(antenna, grid, sweep)
         if antenna.converge:
             errors = _convergence(antenna, plan, grid, sweep).relative_error
             arrays["mode_frequency_error"] = _padded(errors)
-    except GeometryError as error:
+    except (GeometryError, FeedlineError) as error:
         return CaseResult(Status.REFUSED, str(error), time.perf_counter() - begin, solves)
     except EngineError as error:
         return CaseResult(Status.FAILED, str(error), time.perf_counter() - begin, solves)
     status = Status.DOUBTFUL if doubts else Status.SOLVED
     words = "; ".join([*doubts, *notes])
     return CaseResult(status, words, time.perf_counter() - begin, solves, arrays)
+
+
+def _currents(antenna: Antenna, plan: MeshPlan) -> tuple[WireGrid, Sweep]:
+    """Wires and currents; of antennas that differ in their feed line alone, once."""
+    if antenna.feedline:
+        return _remembered(replace(antenna, feedline=()), plan)
+    grid = build_wires(antenna, plan)
+    return grid, sweep_currents(antenna, grid)
+
+
+_remembered = lru_cache(maxsize=REMEMBERED)(_currents)
 
 
 def solve_convergence(antenna: Antenna, plan: MeshPlan) -> Convergence:
@@ -208,7 +226,10 @@ def _evaluate(
     currents = sweep.model.matrix(frequency_hz) @ sweep.model.values[:, : grid.segments]
     impedance = feed_impedance(grid, currents, frequency_hz)
     modes, notes = _modes(antenna, grid, sweep)
-    features = owned_features(modes, frequency_hz, impedance, antenna.reference_ohm)
+    connector = Connector.of(antenna, frequency_hz, impedance)
+    features = owned_features(
+        modes, frequency_hz, impedance, antenna.reference_ohm, connector.reflection
+    )
     arrays: dict[str, Any] = {"impedance": impedance}
     arrays |= _grid_arrays(grid) | _ground_arrays(antenna) | _sample_arrays(antenna, grid, sweep)
     arrays |= _mode_arrays(antenna, grid, modes) | _feature_arrays(features)
@@ -217,9 +238,11 @@ def _evaluate(
         for mode, owned in zip(modes, features, strict=True)
     ]
     arrays |= _stacked(radiation)
+    arrays |= connector.arrays(arrays)
     if antenna.ground is not None and antenna.ground.kind == "earth":
         notes.append("over real earth the power balance is not checked: the earth's part is unseen")
-    return arrays, _doubts(antenna, grid, sweep, modes, radiation), notes
+    doubts = [*_doubts(antenna, grid, sweep, modes, radiation), *connector.doubts]
+    return arrays, doubts, notes
 
 
 def _doubts(

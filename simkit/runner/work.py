@@ -241,9 +241,15 @@ class Worker:
         store = self._store(path)
         block, place = divmod(row, store.block_size)
         try:
-            content.take(case.index, self._old_block(store, block), place)
+            stored = self._old_block(store, block)
+            content.take(case.index, stored, place)
         except TORN:
             return False
+        if "mismatch_factor" not in stored and case.antenna is not None:
+            from simkit.runner.connector import added_later
+
+            old = {name: array[place] for name, array in stored.items()}
+            content.put(case.index, added_later(case.antenna, old))
         return True
 
     def _old_block(self, store: StoreFile, block: int) -> dict[str, Any]:

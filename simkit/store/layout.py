@@ -15,7 +15,16 @@ from numpy.typing import NDArray
 
 from simkit.store.files import flush_tree
 from simkit.store.remote import Place
-from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, VARIABLES, Status
+from simkit.store.schema import (
+    ADDED_LATER,
+    MODES,
+    PHI_DEG,
+    POSITIONS,
+    SAMPLES,
+    THETA_DEG,
+    VARIABLES,
+    Status,
+)
 
 if TYPE_CHECKING:
     import zarr
@@ -111,10 +120,19 @@ def numpy_dtype(name: str) -> Any:
     return np.dtypes.StringDType() if kind == "str" else np.dtype(kind)
 
 
-def layout_hash() -> str:
-    """Short hash of names, dimensions and types of all variables."""
-    table = [[name, list(v.dims), v.dtype, MODES, SAMPLES] for name, v in VARIABLES.items()]
+def layout_hash(without: frozenset[str] = frozenset()) -> str:
+    """Short hash of names, dimensions and types of all variables, some left out."""
+    table = [
+        [name, list(variable.dims), variable.dtype, MODES, SAMPLES]
+        for name, variable in VARIABLES.items()
+        if name not in without
+    ]
     return hashlib.sha256(json.dumps(table).encode()).hexdigest()[:16]
+
+
+def usable_layouts() -> tuple[str, str]:
+    """Hashes of this layout and of the one before it, whose cases can be taken over."""
+    return layout_hash(), layout_hash(ADDED_LATER)
 
 
 def create_store(path: Place, layout: Layout) -> None:

@@ -100,7 +100,24 @@ def _in_order(dataset: xr.Dataset, attrs: dict[str, Any]) -> xr.Dataset:
     others = [str(name) for name in dataset.variables if name not in {*swept, *variables, "case"}]
     coords = {name: dataset[name].variable for name in ("case", *swept, *sorted(others))}
     data = {name: dataset[name].variable for name in variables}
+    if not attrs.get("feedline"):
+        data = _connector_is_feed(data)
     return xr.Dataset(data, coords, dataset.attrs)
+
+
+def _connector_is_feed(data: dict[str, xr.Variable]) -> dict[str, xr.Variable]:
+    """Without a feed line both planes are one, and the impedance is stored once."""
+    found: dict[str, xr.Variable] = {}
+    for name, variable in data.items():
+        if name == "impedance":
+            found[name] = variable
+            found["impedance_at_connector"] = variable.copy(deep=False)
+            found["impedance_at_connector"].attrs = variable.attrs | {
+                "long_name": "impedance at the connector, which is the feed"
+            }
+        elif name != "impedance_at_connector":
+            found[name] = variable
+    return found
 
 
 def status_labels(dataset: xr.Dataset) -> xr.DataArray:

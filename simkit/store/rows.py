@@ -37,6 +37,10 @@ _OF_MODE = {
     "directivity_dbi": "directivity",
     "efficiency": "efficiency",
     "power_balance": "power_balance",
+    "network_efficiency": "network_efficiency",
+    "mismatch_factor": "mismatch_factor",
+    "total_efficiency": "total_efficiency",
+    "realised_gain_dbi": "realised_gain",
 }
 """Keys of a mode's row and the variables of the store behind them."""
 
@@ -56,9 +60,11 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
         ``values`` (swept values, SI), ``solves``, and three lists from the lowest frequency up:
 
         - ``modes``: ``half_waves`` (None if the mode has no number), ``frequency_hz`` and ``q`` of
-          the natural mode, then what the mode owns; what does not exist is left out. For metal that
-          stands on a ground plane ``half_waves`` counts it together with its image, and
-          ``on_plane`` is True;
+          the natural mode, then what the mode owns; what does not exist is left out. Dips,
+          ``network_efficiency``, ``mismatch_factor``, ``total_efficiency`` and
+          ``realised_gain_dbi`` are at the connector, the rest at the feed. For metal that stands
+          on a ground plane ``half_waves`` counts it together with its image, and ``on_plane`` is
+          True;
         - ``resonances``: every zero of the reactance at the feed: ``frequency_hz``, ``kind``
           ("series" or "parallel"), ``resistance_ohm``;
         - ``dips``: every minimum of the reflection at the connector: ``frequency_hz``,
@@ -90,6 +96,7 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
         "reason",
         "solves",
         "impedance",
+        "impedance_at_connector",
         "mode_half_waves",
         "path_on_plane",
         "driven",
@@ -151,11 +158,12 @@ def _modes(case: xr.Dataset) -> list[Row]:
     return sorted(found, key=lambda mode: float(mode["frequency_hz"]))
 
 
-def _curve(case: xr.Dataset) -> tuple[np.ndarray[Any, Any], np.ndarray[Any, Any]] | None:
-    if "impedance" not in case:
+def _curve(case: xr.Dataset, name: str) -> tuple[np.ndarray[Any, Any], np.ndarray[Any, Any]] | None:
+    if name not in case:
         return None
-    impedance = np.asarray(case["impedance"].values)
-    return (case["frequency"].values, impedance) if np.isfinite(impedance).all() else None
+    impedance = np.asarray(case[name].values)
+    # An open circuit is infinite, and as good as any other.
+    return None if np.isnan(impedance).any() else (case["frequency"].values, impedance)
 
 
 def _resonances(case: xr.Dataset, owners: list[Row]) -> list[Row]:
@@ -172,8 +180,9 @@ def _resonances(case: xr.Dataset, owners: list[Row]) -> list[Row]:
         for kind in ("series", "parallel")
         if f"{kind}_resonance_frequency_hz" in mode
     ]
-    curve = _curve(case)
-    seen = [] if curve is None else [vars(found) for found in find_resonances(*curve)]
+    curve = _curve(case, "impedance")
+    known = curve is not None and np.isfinite(curve[1]).all()
+    seen = [vars(found) for found in find_resonances(*curve)] if curve and known else []
     return _united(owned, seen, _step_hz(case), same=("kind",))
 
 
@@ -189,7 +198,8 @@ def _dips(case: xr.Dataset, owners: list[Row]) -> list[Row]:
         for mode in owners
         if "dip_frequency_hz" in mode
     ]
-    curve = _curve(case)
+    plane = "impedance_at_connector" if "impedance_at_connector" in case else "impedance"
+    curve = _curve(case, plane)
     if curve is None:
         return _united(owned, [], 0.0)
     frequency, impedance = curve

@@ -77,6 +77,12 @@ VARIABLES: dict[str, Variable] = {
     "solves": Variable(("case",), "i4", "1", "frequencies solved by the engine"),
     "worker": Variable(("case",), "str", "", "process and machine that settled the case"),
     "impedance": Variable(("case", "frequency"), "c16", "ohm", "impedance at the feed gap"),
+    "impedance_at_connector": Variable(
+        ("case", "frequency"), "c16", "ohm", "impedance behind the feed line, at the connector"
+    ),
+    "feedline": Variable(
+        ("case",), "str", "", "resolved items from feed to connector as JSON, SI; empty: none"
+    ),
     # Natural modes: feed-independent.
     "mode_frequency": _per_mode("Hz", "natural frequency, real part of the pole"),
     "mode_q": _per_mode("1", "quality factor of the pole, Re/(2 Im)"),
@@ -98,16 +104,31 @@ VARIABLES: dict[str, Variable] = {
         "mode current along each strip, positive from start to end, largest value 1 and real",
     ),
     # Features a measurement shows, owned by the mode that causes them; NaN where there is none.
-    "conductance_peak_frequency": _per_mode("Hz", "maximum of the feed conductance"),
+    "conductance_peak_frequency": _per_mode("Hz", "maximum of the conductance at the feed"),
     "conductance_peak_resistance": _per_mode("ohm", "1/G at the conductance peak"),
-    "series_resonance_frequency": _per_mode("Hz", "reactance crosses zero upwards"),
+    "series_resonance_frequency": _per_mode("Hz", "reactance at the feed crosses zero upwards"),
     "series_resonance_resistance": _per_mode("ohm", "resistance at the series resonance"),
-    "parallel_resonance_frequency": _per_mode("Hz", "reactance crosses zero downwards"),
+    "parallel_resonance_frequency": _per_mode("Hz", "reactance at the feed crosses zero downwards"),
     "parallel_resonance_resistance": _per_mode("ohm", "resistance at the parallel resonance"),
     "dip_frequency": _per_mode("Hz", "minimum of |reflection| at the connector"),
     "dip_return_loss": _per_mode("dB", "return loss at the dip, positive"),
     "dip_bandwidth": _per_mode("Hz", "band around the dip with at least 10 dB return loss"),
     "impedance_q": _per_mode("1", "Q from the feed impedance at the dip (Yaghjian & Best 2005)"),
+    # At the connector, each at the mode's dip, else at its conductance peak.
+    "network_efficiency": _per_mode(
+        "1", "power into the antenna over power into the connector, at the dip; 1: no loss between"
+    ),
+    "mismatch_factor": _per_mode(
+        "1", "power into the connector over available power, at the dip: 1 - |reflection|^2"
+    ),
+    "total_efficiency": _per_mode(
+        "1", "radiated power over power available at the connector, at the dip"
+    ),
+    "realised_gain": _per_mode(
+        "dBi",
+        "realised gain, IEEE Std 145: peak_gain (at pattern_frequency) less what feed line and "
+        "mismatch take at the dip",
+    ),
     # Radiation: driven from the feed at the conductance peak, or the mode's own current.
     "pattern_frequency": _per_mode("Hz", "frequency of the pattern"),
     "driven": Variable(
@@ -179,3 +200,15 @@ Coordinates: `case` 0.., `frequency` Hz, `mode` 0.., `strip` (names), `position`
 `phi` degrees. Design documents call `strip_index` simply ``strip``; as `strip` names the dimension
 of `mode_current` the per-segment array carries the longer name.
 """
+
+ADDED_LATER = frozenset(
+    {
+        "impedance_at_connector",
+        "feedline",
+        "network_efficiency",
+        "mismatch_factor",
+        "total_efficiency",
+        "realised_gain",
+    }
+)
+"""Variables that stores of an earlier simkit lack; their cases are as good and are taken over."""

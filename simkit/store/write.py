@@ -73,9 +73,10 @@ class Block:
         target[case - self.first] = value
 
     def take(self, case: int, other: Mapping[str, Any], row: int) -> None:
-        """Copy every array of one case from row `row` of the arrays of another block."""
+        """Copy one case from row `row` of the arrays of another block, as far as that has them."""
         for name, target in self.arrays.items():
-            target[case - self.first] = other[name][row]
+            if name in other:
+                target[case - self.first] = other[name][row]
 
     def statuses(self) -> list[Status]:
         """Status of every case of the block."""
@@ -142,14 +143,15 @@ class StoreFile:
         return Block(self.sizes, rows.start, rows.stop - rows.start)
 
     def read_arrays(self, block: int) -> dict[str, Any]:
-        """Every array of one block, with the ``case`` dimension.
+        """Every array of one block that the store has, with the ``case`` dimension.
 
         Raises
         ------
         ValueError, RuntimeError, OSError
             A file of the block is damaged (see `TORN`).
         """
-        return {name: self._read_one(name, block) for name in VARIABLES}
+        stored = set(self.attrs["variables"])
+        return {name: self._read_one(name, block) for name in VARIABLES if name in stored}
 
     def read_waiting(self, block: int) -> bool:
         """Whether no case of a block is settled, as far as its status can be read."""

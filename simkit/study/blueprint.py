@@ -6,7 +6,15 @@ from collections.abc import Iterator
 from dataclasses import dataclass, fields, is_dataclass
 from typing import Any
 
-from simkit.study.model import CarrierSide, GroundKind, MixingName, ModelKind, StripEnd
+from simkit.study.model import (
+    CarrierSide,
+    Connection,
+    GroundKind,
+    LineEnd,
+    MixingName,
+    ModelKind,
+    StripEnd,
+)
 from simkit.study.paths import Axis
 from simkit.study.tables import Quantity
 
@@ -159,6 +167,40 @@ class GroundPlan:
 
 
 @dataclass(frozen=True)
+class LinePlan:
+    """What a line of the feed line is made of; items that are alike share one plan.
+
+    `item` is the dotted name of the item that describes it, `kind` one of `LINES` of the schema.
+    """
+
+    item: str
+    kind: str
+    sizes: tuple[tuple[str, Quantity], ...]
+    material_conductivity: float | None
+    place: int | None
+
+    def size(self, key: str) -> Quantity | None:
+        """Return the quantity under a key, None if it is left out."""
+        return dict(self.sizes).get(key)
+
+
+@dataclass(frozen=True)
+class FeedLinePlan:
+    """One item of the feed line; `line` is None where it has none or after a problem."""
+
+    name: str
+    kind: str
+    sizes: tuple[tuple[str, Quantity], ...]
+    line: LinePlan | None
+    end: LineEnd
+    connection: Connection
+
+    def size(self, key: str) -> Quantity | None:
+        """Return the quantity under a key, None if it is left out."""
+        return dict(self.sizes).get(key)
+
+
+@dataclass(frozen=True)
 class Blueprint:
     """Everything an antenna is resolved from, besides the numbers of [values].
 
@@ -176,6 +218,7 @@ class Blueprint:
     placement: PlacementPlan = PlacementPlan()
     carrier: CarrierPlan | None = None
     ground: GroundPlan | None = None
+    feedline: tuple[FeedLinePlan, ...] = ()
 
     def shared(self) -> tuple[Quantity, ...]:
         """Return the quantities that all cases of a study have in common."""

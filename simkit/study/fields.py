@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import json
 
+from simkit.study.metals import METALS
 from simkit.study.tables import Quantity, Table, toml_kind
-from simkit.study.units import LENGTH, PURE
+from simkit.study.units import LENGTH, PURE, nearest
 
 
 def read_angle(table: Table, name: str, missing: str = "") -> Quantity | None:
@@ -59,3 +60,15 @@ def read_switch(table: Table, name: str) -> bool:
         table.report(name, f"must be true or false, without quotes, not {toml_kind(raw)}")
         return False
     return raw is True
+
+
+def known_conductivity(table: Table, material: str) -> float | None:
+    """Return the conductivity of the metal under the key `material`, S/m; None after a problem."""
+    entry = METALS.get(material.lower())
+    if entry is not None:
+        return entry.conductivity_s_per_m
+    hint = nearest(material, list(METALS))
+    advice = f'do you mean "{hint}"?' if hint else f"known are {', '.join(METALS)}"
+    what = f'this metal is not in the table; {advice} Or give conductivity = "1.5e7 S/m".'
+    table.report("material", what)
+    return None

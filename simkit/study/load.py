@@ -269,7 +269,7 @@ class _Builder:
             blueprint=blueprint,
             moving=values.affected_by(swept),
             units=self.display_units(sweep),
-            lines=self.named_lines(),
+            lines=self.named_lines(blueprint),
         )
 
     def check_shared(self, blueprint: Blueprint, values: Values, sweep: Sweep) -> None:
@@ -311,13 +311,16 @@ class _Builder:
             )
         return units
 
-    def named_lines(self) -> dict[str, int]:
-        """Return the line of every key, strips by their names."""
-        strips = [strip["name"] for strip in self.root.data["strip"]]
+    def named_lines(self, blueprint: Blueprint) -> dict[str, int]:
+        """Return the line of every key, strips and items of the feed line by their names."""
+        names = {
+            "strip": [strip["name"] for strip in self.root.data["strip"]],
+            "feedline": [item.name for item in blueprint.feedline],
+        }
         lines: dict[str, int] = {}
         for path, line in self.notes.lines.items():
             parts = [str(part) for part in path]
-            if path[0] == "strip" and len(path) > 1:
-                parts[1] = strips[int(path[1])]
+            if path[0] in names and len(path) > 1:
+                parts[1] = names[str(path[0])][int(path[1])]
             lines[".".join(parts)] = line
         return lines

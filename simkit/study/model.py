@@ -11,6 +11,10 @@ StripEnd = Literal["start", "end"]
 MixingName = Literal["plastic-host", "bruggeman", "series", "parallel"]
 CarrierSide = Literal["below", "both", "embedded"]
 GroundKind = Literal["plane", "earth"]
+StripLineKind = Literal["two-strips", "strip-over-plate", "coplanar-strips"]
+LineEnd = Literal["short", "open"]
+Connection = Literal["shunt", "series"]
+PartKind = Literal["resistor", "inductor", "capacitor"]
 Vector = tuple[float, float, float]
 
 NO_ROTATION: tuple[Vector, Vector, Vector] = ((1.0, 0.0, 0.0), (0.0, 1.0, 0.0), (0.0, 0.0, 1.0))
@@ -150,6 +154,131 @@ class CutFeed:
 
 
 @dataclass(frozen=True)
+class StripLine:
+    """What a line of two strips, or of a strip over a plate, is made of.
+
+    Attributes
+    ----------
+    kind : str
+    width_m : float
+    distance_m : float
+        Between the faces of two strips, from strip to plate, or between the edges of strips side by
+        side.
+    other_width_m : float or None
+        Width of the second strip if it is another one.
+    sheet_m : float
+        Thickness of the sheet that carries strips side by side; 0 without one.
+    permittivity, loss_tangent : float
+        Of the sheet: between the strips, or under them if they lie side by side.
+    overhang_m : float or None
+        Sheet beyond the strips' edges; far beyond if None.
+    thickness_m : float
+        Of the metal.
+    conductivity_s_per_m : float or None
+        None for no loss.
+    """
+
+    kind: StripLineKind
+    width_m: float
+    distance_m: float
+    other_width_m: float | None = None
+    sheet_m: float = 0.0
+    permittivity: float = 1.0
+    loss_tangent: float = 0.0
+    overhang_m: float | None = None
+    thickness_m: float = 0.0
+    conductivity_s_per_m: float | None = None
+
+
+@dataclass(frozen=True)
+class CoaxialLine:
+    """A coaxial line by its diameters, metres; no loss in the metal without a conductivity."""
+
+    inner_m: float
+    outer_m: float
+    permittivity: float = 1.0
+    loss_tangent: float = 0.0
+    conductivity_s_per_m: float | None = None
+
+
+@dataclass(frozen=True)
+class DataSheetLine:
+    """A line by impedance, velocity factor and attenuation, as data sheets of cables have it."""
+
+    impedance_ohm: float
+    velocity_factor: float = 1.0
+    attenuation_db_per_m: float = 0.0
+    attenuation_at_hz: float = 1e9
+    loss_tangent: float = 0.0
+
+
+FeedLineMake = StripLine | CoaxialLine | DataSheetLine
+
+
+@dataclass(frozen=True)
+class LineItem:
+    """A length of line in the feed line."""
+
+    name: str
+    line: FeedLineMake
+    length_m: float
+
+
+@dataclass(frozen=True)
+class StubItem:
+    """A length of line with a shorted or open end, across the feed line or in it."""
+
+    name: str
+    line: FeedLineMake
+    length_m: float
+    end: LineEnd
+    connection: Connection
+
+
+@dataclass(frozen=True)
+class TappedItem:
+    """A line from the antenna to its end, with the way to the connector tapped in between."""
+
+    name: str
+    line: FeedLineMake
+    from_antenna_m: float
+    beyond_m: float
+    end: LineEnd
+
+
+@dataclass(frozen=True)
+class PartItem:
+    """A resistor, inductor or capacitor; `value` in ohm, henry or farad, `q` infinite if ideal."""
+
+    name: str
+    part: PartKind
+    value: float
+    connection: Connection
+    q: float
+
+
+@dataclass(frozen=True)
+class TransformerItem:
+    """A transformer or balun: antenna's over connector's impedance, loss, connector's impedance."""
+
+    name: str
+    impedance_ratio: float
+    loss_db: float
+    nominal_ohm: float
+
+
+@dataclass(frozen=True)
+class ExtensionItem:
+    """A stretch of ideal line of the reference resistance, by its one-way delay."""
+
+    name: str
+    delay_s: float
+
+
+FeedLineItem = LineItem | StubItem | TappedItem | PartItem | TransformerItem | ExtensionItem
+
+
+@dataclass(frozen=True)
 class FrequencyBand:
     """`points` equally spaced frequencies from `start_hz` to `stop_hz`, both included."""
 
@@ -163,7 +292,8 @@ class Antenna:
     """Everything the solution of one case depends on, resolved to SI.
 
     Without a carrier the strips are in air, without a ground in free space. `converge` asks for a
-    refinement of the model in every case, as an estimate of its error.
+    refinement of the model in every case, as an estimate of its error. `feedline` runs from the
+    feed to the connector; without items the connector is the feed.
     """
 
     strips: tuple[Strip, ...]
@@ -176,6 +306,7 @@ class Antenna:
     carrier: Carrier | None = None
     ground: Ground | None = None
     converge: bool = False
+    feedline: tuple[FeedLineItem, ...] = ()
 
 
 @dataclass(frozen=True)

@@ -20,6 +20,7 @@ from simkit.study.blueprint import (
 from simkit.study.evaluate import FARTHEST_M, Evaluator
 from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 from simkit.study.paths import SAME_PLACE_M, is_closed, path_length, width_at
+from simkit.study.resolve_feedline import resolve_feedline
 from simkit.study.resolve_strips import Strips, resolve_strips
 from simkit.study.resolve_surroundings import (
     check_heights,
@@ -76,6 +77,7 @@ def _antenna(evaluator: Evaluator, blueprint: Blueprint) -> Antenna | None:
         ground = resolve_ground(evaluator, blueprint.ground)
         if placement is not None:
             check_heights(evaluator, blueprint.ground, placement, complete)
+    feedline = resolve_feedline(evaluator, blueprint.feedline, metal)
     if (
         evaluator.problems
         or not strips
@@ -97,6 +99,7 @@ def _antenna(evaluator: Evaluator, blueprint: Blueprint) -> Antenna | None:
         carrier,
         ground,
         blueprint.converge,
+        feedline,
     )
 
 

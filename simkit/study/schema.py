@@ -9,8 +9,8 @@ from simkit.study.blueprint import (
     FrequencyPlan,
     MetalPlan,
 )
-from simkit.study.fields import read_switch
-from simkit.study.metals import METALS
+from simkit.study.feedline_schema import read_feedline
+from simkit.study.fields import known_conductivity, read_switch
 from simkit.study.model import ModelKind, StripEnd
 from simkit.study.strip_schema import read_strips
 from simkit.study.surroundings_schema import read_carrier, read_ground, read_placement
@@ -46,7 +46,6 @@ def read_blueprint(root: Table) -> Blueprint:
         root.table("frequency", "add [frequency] with start, stop and points")
     )
     model, converge = _read_model(root.table("model"))
-    root.later("feedline", "leave it out; the connector then sits at the feed")
     return Blueprint(
         strips,
         metal,
@@ -58,6 +57,7 @@ def read_blueprint(root: Table) -> Blueprint:
         placement=read_placement(root.table("placement")),
         carrier=read_carrier(root.table("carrier")),
         ground=read_ground(root.table("ground")),
+        feedline=read_feedline(root.tables("feedline")),
     )
 
 
@@ -83,16 +83,10 @@ def _read_metal(table: Table | None) -> MetalPlan:
     table.notes.fixed["metal.conductivity"] = (
         "`material` fixes it; give metal.conductivity instead of the material"
     )
-    entry = METALS.get(material.lower())
-    if entry is None:
-        hint = nearest(material, list(METALS))
-        advice = f'do you mean "{hint}"?' if hint else f"known are {', '.join(METALS)}"
-        table.report(
-            "material",
-            f'this metal is not in the table; {advice} Or give conductivity = "1.5e7 S/m".',
-        )
+    known_s_per_m = known_conductivity(table, material)
+    if known_s_per_m is None:
         return MetalPlan()
-    return MetalPlan(material.lower(), entry.conductivity_s_per_m, None, thickness)
+    return MetalPlan(material.lower(), known_s_per_m, None, thickness)
 
 
 def _read_feed(table: Table | None, strips: set[str]) -> EndFeedPlan | CutFeedPlan | None:

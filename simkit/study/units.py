@@ -33,6 +33,7 @@ CONDUCTANCE = _dimension(-2, -1, 3, 2)
 CONDUCTIVITY = _dimension(-3, -1, 3, 2)
 CAPACITANCE = _dimension(-2, -1, 4, 2)
 INDUCTANCE = _dimension(2, 1, -2, -2)
+ATTENUATION = _dimension(metre=-1)
 
 
 @dataclass(frozen=True)
@@ -65,6 +66,7 @@ _KNOWN: dict[Dimension, _Known] = {
     CONDUCTIVITY: _Known("a conductivity", "S/m", "S/m"),
     CAPACITANCE: _Known("a capacitance", "F", "pF"),
     INDUCTANCE: _Known("an inductance", "H", "nH"),
+    ATTENUATION: _Known("an attenuation per length", "dB/m", "dB/m"),
 }
 
 _BASE_PART = re.compile(r"(m|kg|s|A)(-?\d+|\^\(-?\d+/\d+\)|)(?: |$)")
@@ -103,8 +105,12 @@ UNITS: dict[str, Unit] = {
     **_prefixed("H", INDUCTANCE, "pnuµμm"),
     "rad": Unit(Fraction(1), PURE),
     "deg": Unit(Fraction(math.pi) / 180, PURE),
+    "dB": Unit(Fraction(1), PURE),
 }
-"""Unit symbol to unit. Products and quotients are written out: ``S/m``, ``m/s``."""
+"""Unit symbol to unit. Products and quotients are written out: ``S/m``, ``m/s``.
+
+Decibels are kept as the number of them: keys that take a loss count in decibels.
+"""
 
 
 def find_unit(text: str) -> Unit:

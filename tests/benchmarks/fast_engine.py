@@ -15,6 +15,7 @@ from simkit.study.model import Antenna
 SEGMENTS = 51
 FILLED = 4
 OF_THE_RUN = ("status", "reason", "case_key", "seconds", "solves", "worker")
+OF_FEED_LINES = ("impedance_at_connector", "feedline")
 
 
 @dataclass(frozen=True)
@@ -45,7 +46,7 @@ def solve(antenna: Antenna, plan: Plan) -> CaseResult:
     }
     arrays = {}
     for name, variable in VARIABLES.items():
-        if name in OF_THE_RUN:
+        if name in OF_THE_RUN + OF_FEED_LINES:
             continue
         dtype = numpy_dtype(name)
         array = np.full([sizes[dim] for dim in variable.dims[1:]], fill_value(name), dtype)

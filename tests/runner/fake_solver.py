@@ -22,6 +22,7 @@ from simkit.study.model import Antenna
 
 SEGMENTS = 7
 OF_THE_RUN = ("status", "reason", "case_key", "seconds", "solves", "worker")
+OF_FEED_LINES = ("impedance_at_connector", "feedline")
 CRASH_MM, SEGFAULT_MM, HANG_MM, ERROR_MM, KILLED_ONCE_MM, BUG_MM, MISFIT_MM = 3, 5, 7, 9, 11, 13, 15
 """Strip widths at which the stand-in misbehaves."""
 
@@ -98,7 +99,7 @@ def numbers(length_m: float, points: int) -> dict[str, np.ndarray]:
     }
     arrays = {}
     for name, variable in VARIABLES.items():
-        if name in OF_THE_RUN:
+        if name in OF_THE_RUN + OF_FEED_LINES:
             continue
         dtype = numpy_dtype(name)
         values = rng.uniform(1, 100, [sizes[dim] for dim in variable.dims[1:]])

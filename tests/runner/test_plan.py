@@ -19,7 +19,7 @@ from simkit.store.schema import VARIABLES
         (0.5, 15, 2, 3),  # three blocks a worker
         (60.0, 100, 2, 1),  # never none
         (0.05, 10_000, 2, 96),  # five seconds of 250, in pieces of 32
-        (0.5, 10_000, 2, 64),  # up to twenty seconds of a long run, or no more than 10,000 files
+        (0.5, 10_000, 2, 96),  # up to twenty seconds of a long run, or no more than 10,000 files
         (0.0, 1, 2, 1),
     ],
 )

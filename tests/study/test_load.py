@@ -167,7 +167,7 @@ def test_every_problem_comes_at_once_and_in_order(complaints: Complaints) -> Non
         '31: frequency.start = "0 GHz"',
         "33: frequency.points = 1.5",
         "34: frequency.step = 3",
-        "35: feedline = [{ }]",
+        "35: feedline.item.kind",
     ]
     assert "is missing; give the study a title" in found[0]
     assert "do you mean `title`?" in found[1]

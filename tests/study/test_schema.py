@@ -17,12 +17,6 @@ METAL = 'material  = "copper"\nthickness = "0.035 mm"'
 MIRROR = 'mirror = "upper"'
 
 
-def test_feed_lines_belong_to_a_later_version(complaints: Complaints) -> None:
-    (line,) = complaints(added="[[feedline]]")
-    assert line.startswith("weir.toml:34: ")
-    assert "is not available in this version; leave it out; the connector then sits" in line
-
-
 @pytest.mark.parametrize(
     ("old", "new", "line", "sentence"),
     [
