@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-from typing import TYPE_CHECKING, Any, Literal
+from typing import TYPE_CHECKING, Literal
 
 import click
 
-from simkit.cli.fitting import extension_option, port_option, save
-from simkit.cli.folder import study_of
+from simkit.cli.fitting import extension_option, port_option
+from simkit.cli.matching import Origin, Written, as_data, draw_network, write_network
 from simkit.cli.options import (
     PathOrAddress,
     case_option,
@@ -19,15 +18,12 @@ from simkit.cli.options import (
 from simkit.cli.output import csv_text, emit, json_text
 
 if TYPE_CHECKING:
-    from simkit.feedline import Design, Line, MatchReport, OnePort, PartSupply
-    from simkit.feedline.sources import Terminals
-    from simkit.study import Study
+    from simkit.feedline import PartSupply
 
 KINDS = ("shunt stub", "series stub", "tapped line", "L-section", "quarter wave", "single part")
 """Names of the networks, as in `simkit.feedline.candidates.MAKERS`."""
 
-AROUND_BANDS, AROUND_CENTRE = 1.5, 0.15
-"""The curve is drawn to either side by so many bands, or by so much of the centre if more."""
+STUB = "--stub-line"
 
 
 @click.command()
@@ -37,6 +33,14 @@ AROUND_BANDS, AROUND_CENTRE = 1.5, 0.15
 @case_option
 @port_option
 @extension_option
+@click.option(
+    "--plane",
+    type=click.Choice(["connector", "feed"]),
+    default="connector",
+    show_default=True,
+    help="Of results: match what the connector shows, behind the feed line that the study has "
+    "already, or the antenna itself.",
+)
 @click.option(
     "--kind",
     "kinds",
@@ -48,11 +52,10 @@ AROUND_BANDS, AROUND_CENTRE = 1.5, 0.15
     "--line",
     metavar="LINE",
     help="What sections of line are made of: '50 ohm' (with a velocity factor: '75 ohm, 0.66') or "
-    "'two-strips, width=6 mm, separation=3 mm'; the reference in air if left out.",
+    "'two-strips, width=6 mm, separation=3 mm', with the keys of a [[feedline]] item; or the name "
+    "of such an item in the study; the reference in air if left out.",
 )
-@click.option(
-    "--stub-line", metavar="LINE", help="What stubs are made of, if it is another line than that."
-)
+@click.option(STUB, metavar="LINE", help="What stubs are made of, if it is another line than that.")
 @click.option(
     "--inductor-q", type=float, default=40.0, show_default=True, help="Q of inductors in the band."
 )
@@ -114,6 +117,21 @@ AROUND_BANDS, AROUND_CENTRE = 1.5, 0.15
     metavar="FOLDER",
     help="Folder for the pictures; SOURCE/plots, or plots/ beside a file, if left out.",
 )
+@click.option(
+    "--write",
+    type=click.IntRange(min=1),
+    metavar="N",
+    help="Write network N as [[feedline]] items into a copy of the study, sizes to 0.1 mm; for a "
+    "measured file print the items.",
+)
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(dir_okay=False),
+    metavar="FILE",
+    help="File that --write makes, never one that exists; STUDY_matched.toml beside the study, or "
+    "here for a results folder, if left out.",
+)
 @json_option
 @csv_option
 def command(
@@ -123,6 +141,7 @@ def command(
     case: int | None,
     port: int | None,
     extension: str | None,
+    plane: str,
     kinds: tuple[str, ...],
     line: str | None,
     stub_line: str | None,
@@ -136,59 +155,72 @@ def command(
     most: int,
     draw: int | None,
     plots: str | None,
+    write: int | None,
+    output: str | None,
     as_json: bool,
     as_csv: bool,
 ) -> None:
     """Design networks that match an antenna to its cable from one frequency to another.
 
-    SOURCE is a results folder or a measured Touchstone file; a measured file needs no study.
-    Networks are ranked by the worst return loss over the band that is left when their most
-    sensitive dimension is 1 % off.
+    SOURCE is a results folder, a study whose results are in results/, or a measured Touchstone
+    file, which needs no study. Networks are ranked by the worst return loss over the band that is
+    left when their most sensitive dimension is 1 % off. What a study has for a feed line already
+    stays: networks come between it and the connector.
 
     \b
     Example:
       simkit match results/creek_gauge --from '863 MHz' --to '870 MHz'
+      simkit match my_antenna.toml --from '863 MHz' --to '870 MHz' --write 1
       simkit match build_1.s1p --from '863 MHz' --to '870 MHz' --kind L-section --tolerance '2 %'
     """
     form = one_format(as_json, as_csv)
+    if output is not None and write is None:
+        raise click.UsageError("-o says where --write N writes to: give both, or leave -o out.")
     from simkit.feedline import find_matches
-    from simkit.feedline.sources import terminals
     from simkit.measured import asked
 
     start_hz = asked.frequency_hz("--from", start)
     stop_hz = asked.frequency_hz("--to", stop)
-    study = None if Path(source).is_file() else study_of(source)
-    found = terminals(
-        source,
+    origin = Origin.of(source)
+    if form != "text" and write is not None and origin.study is None and output is None:
+        raise click.UsageError("--write prints the items as text: give -o FILE too.")
+    found = origin.terminals(
         start_hz,
         stop_hz,
         case=case,
-        nominal=study.values if study is not None else None,
         port=port,
         delay_s=asked.extension_s(extension) if extension else 0.0,
+        plane=plane,
     )
+    own = [origin.line(text, option) for text, option in ((line, "--line"), (stub_line, STUB))]
     report = find_matches(
         found.load,
         start_hz,
         stop_hz,
         reference_ohm=_resistance(reference, found.reference_ohm),
-        line=_line(line, "--line"),
-        stub_line=_line(stub_line, "--stub-line"),
+        line=own[0],
+        stub_line=own[1],
         kinds=_kinds(kinds),
         supply=_supply(inductor_q, capacitor_q, tolerance, series),
         wanted_db=wanted_db,
         refine=not exact,
     )
-    number = draw if draw is not None else 1
-    if number > len(report.designs):
-        raise click.UsageError(f"--draw {number}: there are {len(report.designs)} networks.")
+    for option, number in (("--write", write), ("--draw", draw)):
+        if number is not None and number > len(report.designs):
+            raise click.UsageError(f"{option} {number}: there are {len(report.designs)} networks.")
     if form == "json":
         emit(json_text(as_data(report, found)))
     elif form == "csv":
         emit(csv_text(report.as_rows()))
     else:
-        emit("\n".join([*_head(source, found, study, start_hz, stop_hz), report.as_text(most)]))
-    _draw(report, report.designs[number - 1], found, _folder(source, plots), _stem(source))
+        emit("\n".join([*origin.head(found, start_hz, stop_hz), report.as_text(most)]))
+    chain = report.designs[(draw or write or 1) - 1].chain
+    if write is not None:
+        written = Written.of(report, write, found, keep=[line for line in own if line is not None])
+        click.echo(written.about, err=True)
+        write_network(origin, written, found, plane, output)
+        chain = written.chain if draw is None else chain
+    draw_network(report, chain, found, origin.folder(plots), origin.stem)
 
 
 def _kinds(wanted: tuple[str, ...]) -> tuple[str, ...]:
@@ -207,12 +239,6 @@ def _kinds(wanted: tuple[str, ...]) -> tuple[str, ...]:
             raise click.UsageError(f"--kind {word}: there is no such network; {advice}")
         found.append(kind)
     return tuple(dict.fromkeys(found))
-
-
-def _line(text: str | None, option: str) -> Line | None:
-    from simkit.feedline.line_text import read_line
-
-    return None if text is None else read_line(text, option)
 
 
 def _resistance(text: str | None, default_ohm: float) -> float:
@@ -234,93 +260,3 @@ def _supply(inductor_q: float, capacitor_q: float, tolerance: str, series: str) 
         ) from None
     kept: Literal["E24", "any"] = "E24" if series == "E24" else "any"
     return PartSupply(inductor_q, capacitor_q, part, series=kept)
-
-
-def _head(
-    source: str, found: Terminals, study: Study | None, start_hz: float, stop_hz: float
-) -> list[str]:
-    """Which antenna this is, what it shows, and what is to be known of the data."""
-    from simkit.study.units import as_text
-
-    which = source
-    if found.case is not None:
-        which += f", case {found.case}"
-        if study is not None and study.swept:
-            values = study.case(found.case).values.items()
-            named = [f"{name} {as_text(v, study.display_unit(name))}" for name, v in values]
-            which += f": {', '.join(named)}"
-    notes = [f"note: {note}" for note in found.notes]
-    return [which, *notes, found.as_text(start_hz, stop_hz)]
-
-
-def _draw(report: MatchReport, design: Design, found: Terminals, folder: Path, stem: str) -> None:
-    """Smith path, return loss before and after, and the schematic."""
-    from simkit.plot.matching import plot_match, plot_match_path
-    from simkit.plot.schematic import plot_schematic
-
-    band = (report.start_hz, report.stop_hz)
-    chain, load = design.chain, found.load
-    save(plot_match_path(chain, load, sum(band) / 2, band), folder, f"{stem}_path.png")
-    ax = plot_match(chain, load, *band, span_hz=_span(load, band))
-    save(ax, folder, f"{stem}_reflection.png")
-    save(plot_schematic(chain), folder, f"{stem}_schematic.png")
-
-
-def _span(load: OnePort, band_hz: tuple[float, float]) -> tuple[float, float]:
-    """Frequencies around a band that show how it lies in the curve."""
-    middle, width = sum(band_hz) / 2, band_hz[1] - band_hz[0]
-    reach = max(AROUND_BANDS * width, AROUND_CENTRE * middle)
-    low, high = float(load.frequency_hz[0]), float(load.frequency_hz[-1])
-    return max(low, middle - reach), min(high, middle + reach)
-
-
-def _folder(source: str, plots: str | None) -> Path:
-    if plots is not None:
-        return Path(plots)
-    if "://" in source:
-        return Path("plots")
-    return (Path(source).parent if Path(source).is_file() else Path(source)) / "plots"
-
-
-def _stem(source: str) -> str:
-    return f"match_{Path(source).stem}" if Path(source).is_file() else "match"
-
-
-def as_data(report: MatchReport, found: Terminals) -> dict[str, Any]:
-    """Everything of a report as plain values, SI."""
-    from simkit.feedline.items import items_of
-
-    f = [report.start_hz, (report.start_hz + report.stop_hz) / 2, report.stop_hz]
-    bound = report.bound
-    return {
-        "case": found.case,
-        "plane": found.where,
-        "start_hz": report.start_hz,
-        "stop_hz": report.stop_hz,
-        "reference_ohm": report.reference_ohm,
-        "impedance": [
-            {"frequency_hz": x, "resistance_ohm": z.real, "reactance_ohm": z.imag}
-            for x, z in zip(f, found.load.at(f).impedance_ohm.tolist(), strict=True)
-        ],
-        "before_return_loss_db": report.before_db,
-        "wanted_return_loss_db": report.wanted_db,
-        "bound": {
-            "return_loss_db": bound.return_loss_db,
-            "kind": bound.kind,
-            "resistance_ohm": bound.resistance_ohm,
-            "q": bound.q_at(f[1]),
-            "misfit": bound.misfit,
-        },
-        "designs": [
-            row
-            | {
-                "dimensions": [
-                    {"name": d.name, "value": d.value, "unit": d.unit} for d in design.dimensions
-                ],
-                "feedline": items_of(design.chain),
-                "doubts": list(design.doubts),
-            }
-            for row, design in zip(report.as_rows(), report.designs, strict=True)
-        ],
-        "notes": list(report.notes),
-    }

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import math
-from collections.abc import Collection, Iterable
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import replace
 from typing import Any
 
@@ -12,7 +12,8 @@ from simkit.feedline.chain import Chain
 from simkit.feedline.checks import FeedlineError
 from simkit.feedline.elements import Element, LineSection, Lumped, Stub, TappedLine
 from simkit.feedline.line import Line
-from simkit.feedline.line_text import KEYS, line_keys
+from simkit.feedline.line_text import FIELDS, kind_of, line_keys
+from simkit.study.model import Metal
 from simkit.study.units import as_text
 
 STEP_M = 0.1e-3
@@ -62,14 +63,10 @@ def _rounded(element: Element, keep: Collection[Line]) -> Element:
 def _rounded_line(line: Line) -> Line:
     """Only what a designer sets: a strip's width, or the impedance of a uniform line."""
     for name, step in (("width_m", STEP_M), ("impedance_ohm", STEP_OHM)):
-        if name in {key.field for key in KEYS.get(_kind(line), (None, {}))[1].values()}:
+        if hasattr(line, name) and kind_of(line) in FIELDS:
             other: Line = _changed(line, {name: _to(getattr(line, name), step, least=step)})
             return other
     return line
-
-
-def _kind(line: Line) -> str:
-    return next((kind for kind, (made, _) in KEYS.items() if type(line) is made), "")
 
 
 def _to(value: float, step: float, least: float) -> float:
@@ -81,7 +78,12 @@ def _changed(value: Any, changes: dict[str, Any]) -> Any:
     return replace(value, **changes)
 
 
-def items_of(chain: Chain, taken: Collection[str] = ()) -> list[Item]:
+def items_of(
+    chain: Chain,
+    taken: Collection[str] = (),
+    known: Mapping[Line, str] | None = None,
+    metal: Metal | None = None,
+) -> list[Item]:
     """Return one item for each element, from the antenna on.
 
     Parameters
@@ -89,6 +91,10 @@ def items_of(chain: Chain, taken: Collection[str] = ()) -> list[Item]:
     chain : Chain
     taken : collection of str
         Names that other items have already.
+    known : mapping of Line to str, optional
+        Lines of other items, with the item's name.
+    metal : Metal, optional
+        Of the study.
 
     Returns
     -------
@@ -102,7 +108,7 @@ def items_of(chain: Chain, taken: Collection[str] = ()) -> list[Item]:
         If the chain holds an element or a line that this does not write.
     """
     used = set(taken)
-    lines: dict[Line, str] = {}
+    lines = dict(known or {})
     found = []
     for element in chain.elements:
         name = _free_name(element, used)
@@ -110,7 +116,7 @@ def items_of(chain: Chain, taken: Collection[str] = ()) -> list[Item]:
         item = _item(element, name)
         line = getattr(element, "line", None)
         if line is not None:
-            item |= {"like": lines[line]} if line in lines else line_keys(line)
+            item |= {"like": lines[line]} if line in lines else line_keys(line, metal)
             lines.setdefault(line, name)
         found.append(item)
     return found

@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from simkit.measured import Measurement
+    from simkit.response.evaluate import Plane
 
     Source = xr.Dataset | Measurement | OnePort | str | PathLike[str]
 
@@ -90,6 +91,7 @@ def of_results(
     *,
     case: int | None = None,
     nominal: Mapping[str, float] | None = None,
+    plane: Plane = "connector",
 ) -> Terminals:
     """Return the impedance of one case over its whole band, finely over the band to be matched.
 
@@ -102,6 +104,8 @@ def of_results(
         The solved case nearest to the nominal values if left out.
     nominal : mapping of str to float, optional
         Nominal values of what is swept; the middle of the sweep if left out.
+    plane : {"feed", "connector"}
+        The connector is behind what the study has for a feed line; without one it is the feed.
 
     Raises
     ------
@@ -110,7 +114,7 @@ def of_results(
     StoreError
         If there is no such case, or it has no solution.
     """
-    from simkit.response.evaluate import impedance_at
+    from simkit.response.evaluate import chain_of_case, impedance_at
     from simkit.store.cases import nearest_case, one_case
 
     if case is None and "case" in dataset.dims:
@@ -124,10 +128,11 @@ def of_results(
             "[frequency] in the study and run it again"
         )
     f = np.union1d(grid, np.linspace(start_hz, stop_hz, IN_BAND))
-    load = OnePort.from_impedance(f, impedance_at(chosen, f))
+    load = OnePort.from_impedance(f, impedance_at(chosen, f, plane))
     reference = float(chosen.attrs.get("reference_ohm", 50.0))
     number = int(chosen["case"]) if "case" in chosen.coords else None
-    return Terminals(load, reference, "feed", number)
+    behind = plane == "connector" and chain_of_case(chosen).elements
+    return Terminals(load, reference, "connector" if behind else "feed", number)
 
 
 def match(
@@ -138,6 +143,7 @@ def match(
     case: int | None = None,
     port: int | None = None,
     delay_s: float = 0.0,
+    plane: Plane = "connector",
     reference_ohm: float | None = None,
     line: Line | None = None,
     stub_line: Line | None = None,
@@ -161,6 +167,8 @@ def match(
         Of a Touchstone file with several.
     delay_s : float
         Port extension for a measured sweep, one way, positive towards the antenna.
+    plane : {"feed", "connector"}
+        Of results: in front of, or behind, the feed line that the study has already.
     reference_ohm : float, optional
         To be matched to: that of the study's connector or of the file if left out.
     line, stub_line, kinds, supply, wanted_db, refine
@@ -182,7 +190,7 @@ def match(
     >>> report = simkit.match("build_1.s1p", 863e6, 870e6)  # doctest: +SKIP
     >>> print(report.as_text())  # doctest: +SKIP
     """
-    found = terminals(source, start_hz, stop_hz, case=case, port=port, delay_s=delay_s)
+    found = terminals(source, start_hz, stop_hz, case=case, port=port, delay_s=delay_s, plane=plane)
     return find_matches(
         found.load,
         start_hz,
@@ -206,6 +214,7 @@ def terminals(
     nominal: Mapping[str, float] | None = None,
     port: int | None = None,
     delay_s: float = 0.0,
+    plane: Plane = "connector",
 ) -> Terminals:
     """Return the load that a source names; parameters and errors as in `match`."""
     from simkit.measured import Measurement
@@ -224,7 +233,7 @@ def terminals(
     if isinstance(source, OnePort):
         _not_of_measurements(case)
         return Terminals(source, source.reference_ohm, "terminals")
-    return of_results(source, start_hz, stop_hz, case=case, nominal=nominal)
+    return of_results(source, start_hz, stop_hz, case=case, nominal=nominal, plane=plane)
 
 
 def _read(path: str, port: int | None) -> xr.Dataset | Measurement:

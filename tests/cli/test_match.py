@@ -14,6 +14,8 @@ from click.testing import CliRunner, Result
 from scipy.constants import c
 
 from simkit.cli import main
+from simkit.cli.match import KINDS
+from simkit.feedline.candidates import MAKERS
 from simkit.response.features import reflection
 
 BOOKS = tomllib.loads(
@@ -50,7 +52,7 @@ def band(centre_hz: float, part: float = 0.01) -> tuple[str, ...]:
 def without_pictures(monkeypatch, request):
     """They take longer than the design."""
     if "pictures" not in request.node.name:
-        monkeypatch.setattr("simkit.cli.match._draw", lambda *_: None)
+        monkeypatch.setattr("simkit.cli.match.draw_network", lambda *_: None)
 
 
 @pytest.fixture
@@ -119,6 +121,10 @@ def test_table_bound_and_pictures(dipole):
     assert names == {
         "match_dipole_path.png", "match_dipole_reflection.png", "match_dipole_schematic.png",
     }  # fmt: skip
+
+
+def test_the_command_knows_every_kind():
+    assert set(KINDS) == set(MAKERS)
 
 
 def test_csv_and_json_agree(dipole):
@@ -201,9 +207,12 @@ def test_what_no_network_can_do_is_said(dipole):
         ((*BAND, "--line", "two-strips, width=6 mm"), "separation"),
         ((*BAND, "--line", "two-strips, wide=6 mm, separation=1 mm"), "do you mean"),
         ((*BAND, "--line", "two-strips, width=-6 mm, separation=1 mm"), "width"),
-        ((*BAND, "--line", "two-strips, width=900 mm, separation=1 mm"), "900"),
+        (
+            (*BAND, "--line", "two-strips, width=900 mm, separation=1 mm"),
+            "good for widths from 0.01 mm to 100 mm",
+        ),
         ((*BAND, "--line", "50 mm"), "a resistance is needed"),
-        ((*BAND, "--line", "50 ohm, 2"), "velocity factor"),
+        ((*BAND, "--line", "50 ohm, 2"), "must be at most 1"),
     ],
 )
 def test_bad_requests_are_refused_with_a_sentence(dipole, words, said):
