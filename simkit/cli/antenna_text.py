@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from itertools import combinations
 from typing import TYPE_CHECKING
 
+from simkit.cli.feedline_text import feedline_parts
 from simkit.cli.output import labelled, length_text, table
 from simkit.errors import GeometryError
 from simkit.geometry.outlines import bounding_box_m, developed_length_m, metal_area_m2
@@ -34,7 +35,7 @@ _MIXING = {
 
 
 def antenna_text(antenna: Antenna) -> str:
-    """Return strips, joints, sheet, feed, metal, carrier, placement and ground."""
+    """Return strips, joints, sheet, feed, feed line, metal, carrier, placement and ground."""
     parts = [labelled("Strips", strips_table(antenna.strips))]
     joints = joints_lines(antenna)
     if joints:
@@ -43,6 +44,7 @@ def antenna_text(antenna: Antenna) -> str:
     if sheet:
         parts.append(labelled("Sheet", sheet))
     parts.append(labelled("Feed", feed_text(antenna)))
+    parts += feedline_parts(antenna)
     parts.append(labelled("Metal", metal_text(antenna)))
     if antenna.carrier is not None:
         parts.append(labelled("Carrier", carrier_text(antenna)))

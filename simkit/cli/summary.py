@@ -101,6 +101,7 @@ def looked_at(study: Study) -> range:
 
 def case_problems(study: Study, plan: MeshPlan) -> list[str]:
     """Return one sentence for each case that will be refused, among those looked at."""
+    from simkit.feedline import FeedlineError, build_chain
     from simkit.geometry import build_wires
 
     found = []
@@ -109,7 +110,8 @@ def case_problems(study: Study, plan: MeshPlan) -> list[str]:
         if case.antenna is not None:
             try:
                 build_wires(case.antenna, plan)
-            except GeometryError as error:
+                build_chain(case.antenna)
+            except (GeometryError, FeedlineError) as error:
                 reason = with_line(str(error), study, case.antenna)
         if reason:
             found.append(f"case {case.index}{_in_brackets(study, case.values)}: {reason}")

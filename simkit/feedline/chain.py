@@ -196,6 +196,16 @@ class Chain:
             seen, _ = terminated(element.scattering(load.frequency_hz, self.reference_ohm), seen)
         return seen
 
+    def delay_s(self, frequency_hz: float) -> float:
+        """Return the delay of all elements one by one at a frequency, one way and without sign."""
+        step = 1e-6
+        f, total = np.array([1 - step, 1 + step]) * frequency_hz, 0.0
+        for element in (part for whole in self.elements for part in whole.parts):
+            first, second = element.scattering(f, self.reference_ohm)[:, 1, 0]
+            if first and second:
+                total += abs(float(np.angle(second / first))) / (2 * np.pi * (f[1] - f[0]))
+        return total
+
     def path(
         self, load: OnePort, frequency_hz: float, points: int = 60
     ) -> list[tuple[Element, ComplexArray]]:

@@ -55,7 +55,7 @@ def owned_features(
     frequency_hz: FloatArray,
     impedance_ohm: ComplexArray,
     reference_ohm: float,
-    at_connector: ComplexArray | None = None,
+    dips: Sequence[Dip] | None = None,
 ) -> tuple[OwnedFeatures, ...]:
     """Hand the features of a feed impedance to the modes that cause them.
 
@@ -66,8 +66,8 @@ def owned_features(
     impedance_ohm : (F,) complex array
     reference_ohm : float
         To which dips refer.
-    at_connector : (F,) complex array, optional
-        Reflection behind a feed line, whose dips are handed out; that of the feed if left out.
+    dips : sequence of Dip, optional
+        Those behind a feed line; those of the feed impedance if left out.
 
     Returns
     -------
@@ -76,11 +76,12 @@ def owned_features(
     """
     admittance = 1 / impedance_ohm
     share = _Shares(modes, frequency_hz, admittance.real)
-    gamma = reflection(impedance_ohm, reference_ohm) if at_connector is None else at_connector
+    if dips is None:
+        dips = find_dips(frequency_hz, reflection(impedance_ohm, reference_ohm))
     peaks = share.owners(
         conductance_peaks(frequency_hz, impedance_ohm), lambda p: -p.resistance_ohm
     )
-    dips = share.owners(find_dips(frequency_hz, gamma), lambda d: d.return_loss_db)
+    owned_dips = share.owners(dips, lambda d: d.return_loss_db)
     resonances = find_resonances(frequency_hz, impedance_ohm)
     series = share.owners(
         [r for r in resonances if r.kind == "series"], lambda r: -r.resistance_ohm
@@ -91,7 +92,7 @@ def owned_features(
     q = impedance_q(frequency_hz, impedance_ohm)
     found = []
     for index in range(len(modes)):
-        dip = dips.get(index)
+        dip = owned_dips.get(index)
         q_dip = float(np.interp(dip.frequency_hz, frequency_hz, q)) if dip else float("nan")
         found.append(
             OwnedFeatures(peaks.get(index), dip, series.get(index), parallel.get(index), q_dip)

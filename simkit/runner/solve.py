@@ -228,7 +228,7 @@ def _evaluate(
     modes, notes = _modes(antenna, grid, sweep)
     connector = Connector.of(antenna, frequency_hz, impedance)
     features = owned_features(
-        modes, frequency_hz, impedance, antenna.reference_ohm, connector.reflection
+        modes, frequency_hz, impedance, antenna.reference_ohm, connector.dips()
     )
     arrays: dict[str, Any] = {"impedance": impedance}
     arrays |= _grid_arrays(grid) | _ground_arrays(antenna) | _sample_arrays(antenna, grid, sweep)

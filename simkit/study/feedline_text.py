@@ -50,7 +50,7 @@ def feedline_of_text(text: str) -> tuple[FeedLineItem, ...]:
         return ()
     try:
         return tuple(_made(item) for item in json.loads(text))
-    except (KeyError, TypeError, AttributeError) as error:
+    except (KeyError, TypeError, AttributeError, ValueError) as error:
         raise ValueError(f"this is no feed line: {text[:80]}") from error
 
 

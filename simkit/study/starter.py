@@ -107,7 +107,23 @@ thickness = "0.15 mm"
 from = "west.start"
 to   = "east.start"
 
-# Dips, VSWR and return loss refer to this resistance.
+# What lies between the feed and the connector, item by item from the antenna on: "line", "stub",
+# "tapped-line" (of two-strips, strip-over-plate, coplanar-strips, coaxial or uniform line),
+# "resistor", "inductor", "capacitor", "transformer" (a balun is one) and "port-extension". Without
+# any the connector sits at the feed. By its name an item can be swept: feedline.pair.length
+# [[feedline]]
+# kind       = "line"
+# name       = "pair"
+# length     = "30 mm"
+# line       = "two-strips"  # face to face, of the metal above
+# width      = "6 mm"
+# separation = "3 mm"
+# [[feedline]]
+# kind   = "stub"            # across the line, shorted at its end
+# length = "15 mm"
+# like   = "pair"
+
+# Dips, VSWR and return loss are those at the connector and refer to this resistance.
 [connector]
 reference = "50 ohm"
 

@@ -7,6 +7,7 @@ from itertools import pairwise
 import numpy as np
 import pytest
 import skrf
+from scipy.constants import c
 from skrf.media import DefinedGammaZ0
 
 from simkit.feedline import (
@@ -268,3 +269,14 @@ def test_elements_that_cannot_be(make, match):
 @pytest.mark.parametrize("line", [Coaxial(1e-3, 3.5e-3, 2.1), UniformLine(50.0)])
 def test_every_line_says_what_it_is(line):
     assert line.about in LineSection(line, 0.01).about
+
+
+def test_delay_of_a_chain_is_that_of_its_lines():
+    lengths_m = (31e-3, 17e-3)
+    chain = Chain((LineSection(UniformLine(50.0, 0.7), lengths_m[0]), PortExtension(-4e-11)))
+    expected = lengths_m[0] / (0.7 * c) + 4e-11
+    assert chain.delay_s(0.9e9) == pytest.approx(expected, rel=1e-6)
+    assert Chain().delay_s(0.9e9) == 0
+    # a mismatched line is counted within the ripple of its reflections
+    mismatched = Chain((LineSection(UniformLine(75.0, 0.7), 1.0),))
+    assert mismatched.delay_s(0.9e9) == pytest.approx(1.0 / (0.7 * c), rel=0.3)
