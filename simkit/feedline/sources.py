@@ -69,11 +69,11 @@ class Terminals:
 
 def of_measurement(measurement: Measurement, start_hz: float, stop_hz: float) -> Terminals:
     """Return a measured sweep as a load; frequency 0 is left out."""
-    from simkit.measured.quality import quality_notes
+    from simkit.measured.quality import level_notes
 
     f = measurement.frequency_hz
     load = OnePort(f[f > 0], measurement.reflection[f > 0], measurement.reference_ohm)
-    notes = [*measurement.notes, *quality_notes(measurement)]
+    notes = [*measurement.notes, *level_notes(measurement)]
     inside = int(np.count_nonzero((f >= start_hz) & (f <= stop_hz)))
     if inside < FEW:
         notes.append(
