@@ -74,8 +74,8 @@ def touchstone_text(frequency_hz: Real, gamma: Complex) -> str:
     head = [
         "! INVENTED DATA FOR DEMONSTRATION - nothing was built or measured.",
         "! Creek gauge link with its matching network, build 2, at the connector: simulated with",
-        "! other dimensions and other formulas than the study, with analyser errors and noise added",
-        "! (studies/make_creek_gauge_matched_sample.py).",
+        "! other dimensions and other formulas than the study, with analyser errors and noise",
+        "! added (studies/make_creek_gauge_matched_sample.py).",
         f"# Hz S RI R {REFERENCE_OHM:g}",
     ]
     rows = [
