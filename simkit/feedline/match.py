@@ -222,7 +222,7 @@ def _why_none(kind: str, task: Task) -> str:
 def _judged(candidate: Candidate, band: OnePort, supply: PartSupply, *, refine: bool) -> Design:
     chain = candidate.chain
     if refine and candidate.refinable:
-        chain = _without_nothing(_refined(chain, band))
+        chain = without_nothing(_refined(chain, band))
     worst = worst_return_loss_db(chain, band)
     changed, sensitive = _after_change(chain, band, worst)
     result = chain.terminate(band)
@@ -268,7 +268,7 @@ def _refined(chain: Chain, band: OnePort) -> Chain:
     return best if _worst_reflection(best, band) < _worst_reflection(chain, band) else chain
 
 
-def _without_nothing(chain: Chain) -> Chain:
+def without_nothing(chain: Chain) -> Chain:
     """Leave out sections that were moved to no length, unless nothing is left then."""
     kept = tuple(
         e for e in chain.elements if not (isinstance(e, LineSection) and e.length_m < NOTHING_M)

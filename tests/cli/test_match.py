@@ -173,6 +173,13 @@ def test_a_port_extension_moves_the_plane(dipole, tmp_path):
     assert json.loads(run(behind, *words).stdout)["impedance"] != plain["impedance"]
 
 
+def test_a_sweep_too_coarse_for_the_band_is_noted(dipole):
+    """A point every 2 MHz."""
+    done = run(dipole, "--from", "866 MHz", "--to", "870 MHz", "--kind", "single part")
+    assert "note: only 3 points of the sweep lie in the band" in done.stdout
+    assert "note: " not in run(dipole, *BAND, "--kind", "single part").stdout
+
+
 def test_what_no_network_can_do_is_said(dipole):
     """Bode and Fano: pi/Q over the relative bandwidth in neper, 28 dB here."""
     done = run(dipole, "--from", "790 MHz", "--to", "950 MHz", "--wanted", "40")

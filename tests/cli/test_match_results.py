@@ -135,6 +135,8 @@ def test_the_written_study_keeps_its_promise_when_it_is_solved(folder):
     again = run("gauge_matched.toml", *BAND, "--line", "match_line", "--write", "1")
     assert again.exit_code == 0, again.output
     assert "impedance at the connector: " in again.stdout
+    before = float(again.stdout.split("without a network at least ")[1].split(" dB")[0])
+    assert before == pytest.approx(promised, abs=0.1)
     more = load_study(folder / "gauge_matched_matched.toml").nominal().feedline
     assert more[:2] == (upper, lower)
     assert len(more) > 2

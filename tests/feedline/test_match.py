@@ -24,6 +24,7 @@ from simkit.feedline import (
     worst_return_loss_db,
 )
 from simkit.feedline.candidates import MAKERS, line_of
+from simkit.feedline.match import without_nothing
 from simkit.feedline.vary import dimensions, free_dimensions
 
 F = np.linspace(780e6, 960e6, 91)
@@ -171,6 +172,13 @@ def test_best_tap_on_a_shorted_line():
     assert tapped.length_m == pytest.approx(exact.length_m)
     worse = best_tap(LOAD, *BAND, UniformLine(50.0), exact.length_m * 1.05)
     assert worse.worst_db < design.worst_db
+
+
+def test_sections_of_no_length_are_left_out():
+    line = UniformLine(50.0)
+    stub, nothing = Stub(line, 20e-3), LineSection(line, 3e-10)
+    assert without_nothing(Chain((nothing, stub), 60.0)) == Chain((stub,), 60.0)
+    assert without_nothing(Chain((nothing,))) == Chain((nothing,))
 
 
 def test_dimensions_of_a_chain():
