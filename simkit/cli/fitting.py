@@ -116,7 +116,7 @@ def fitted(
         from simkit.store import open_results
 
         needed = {k.name: k.bounds for k in beliefs} | bounds | (also or {})
-        surrogate = surrogate_of_results(open_results(results), needed)
+        surrogate = surrogate_of_results(open_results(results), needed, variation)
     return fit(
         study,
         files,

@@ -6,6 +6,7 @@ from simkit.feedline.bound import MatchBound, match_bound
 from simkit.feedline.build import build_chain
 from simkit.feedline.chain import Chain, ChainResult
 from simkit.feedline.checks import FeedlineError
+from simkit.feedline.dips import connector_dips
 from simkit.feedline.elements import (
     Element,
     LineSection,
@@ -49,6 +50,7 @@ __all__ = [
     "UniformLine",
     "best_tap",
     "build_chain",
+    "connector_dips",
     "find_matches",
     "l_solutions",
     "match_bound",

@@ -209,7 +209,7 @@ def compare(
     pairing = every[row].pair(heard, *bands, fixed)
     notes += _ambiguity_notes(every[row], dips, pairing, heard, bands, fixed)
     notes += _doubt_notes(dataset, row)
-    notes += _unexcited_notes(every[row], pairing)
+    notes += _unexcited_notes(dataset.isel(case=row), every[row], pairing)
     return _comparison(dataset, row, measurement, every[row], dips, pairing, notes)
 
 
@@ -260,13 +260,26 @@ def _doubt_notes(dataset: xr.Dataset, row: int) -> list[str]:
     return [f"the simulated case is doubtful: {reason or 'no reason is stored'}"]
 
 
-def _unexcited_notes(modes: CaseModes, pairing: Pairing) -> list[str]:
-    return [
-        f"the {half_wave_label(modes.half_waves[i], modes.on_plane)} mode is measured but not "
-        "excited by the modelled feed: the build is not symmetric there, or its cable radiates"
-        for i, _ in pairing.pairs
-        if not np.isfinite(modes.dip_hz[i])
-    ]
+def _unexcited_notes(case: xr.Dataset, modes: CaseModes, pairing: Pairing) -> list[str]:
+    driven: set[int] = set()
+    if "driven" in case:
+        driven = set(case["mode_half_waves"].values[case["driven"].values == 1].tolist())
+    notes = []
+    for i, _ in pairing.pairs:
+        if np.isfinite(modes.dip_hz[i]):
+            continue
+        label = half_wave_label(modes.half_waves[i], modes.on_plane)
+        if modes.half_waves[i] in driven:
+            notes.append(
+                f"the {label} mode is measured, but the model shows no dip of it at the connector: "
+                "what lies between feed and connector is not as modelled"
+            )
+        else:
+            notes.append(
+                f"the {label} mode is measured but not excited by the modelled feed: the build is "
+                "not symmetric there, or its cable radiates"
+            )
+    return notes
 
 
 def _fixed_pairs(

@@ -45,6 +45,9 @@ truth is smooth."""
 DEPTH_SIGMA = 0.1
 """Error of |reflection| in a dip, the model's of the match included."""
 
+LOST_DIP = 5.0
+"""Residual of a measured dip, in standard deviations, where the model has lost its own."""
+
 EXPECTED_OVER_POLE = 1.02
 """Where the frequency error of a mode without a dip is put."""
 
@@ -102,13 +105,15 @@ class FitProblem:
         return self.free + len(self.half_waves) + 3
 
     def values(self, x: FloatArray, build: Mapping[str, float]) -> dict[str, float]:
-        """Numbers for every axis of a surrogate, SI."""
+        """Numbers for every value the model depends on, SI."""
         numbers = self.middle + self.half * x[: self.free]
         nominal = {
-            axis.name: build.get(axis.name, self.variation.nominal(axis.name))
+            name: build.get(name, self.variation.nominal(name))
             for file in self.files
-            for axis in file.surrogate.axes
+            for name in file.surrogate.names
         }
+        if any(file.surrogate.feedline is not None for file in self.files):
+            nominal = dict(build) | nominal  # a build may say how its feed line was cut
         return nominal | dict(zip(self.names, map(float, numbers), strict=True))
 
     def at(self, values: Mapping[str, float]) -> FloatArray:
@@ -139,15 +144,14 @@ class FitProblem:
     def true_curve(
         self, x: FloatArray, surrogate: Surrogate, values: Mapping[str, float], f: FloatArray
     ) -> ComplexArray:
-        """Reflection of the antenna itself, reference `REFERENCE_OHM`, without the analyser."""
-        modes = surrogate.modes(values)
+        """Reflection at the connector, reference `REFERENCE_OHM`, without the analyser."""
+        modes, seen = surrogate.feed_modes(values), surrogate.places_hz(values)
         errors = self.mode_errors(x)[[self.half_waves.index(n) for n in modes.half_waves]]
-        places = np.where(
-            np.isfinite(modes.dip_hz), modes.dip_hz, modes.natural_hz * EXPECTED_OVER_POLE
-        )
-        gamma = surrogate.reflection(values, warp(f, places, errors))
+        places = np.where(np.isfinite(seen), seen, modes.natural_hz * EXPECTED_OVER_POLE)
+        gamma = surrogate.at_feed(values, warp(f, places, errors))
         gamma = referred(gamma, REFERENCE_OHM * self.level(x), REFERENCE_OHM)
-        return with_capacitance(f, gamma, self.capacitance_f(x), REFERENCE_OHM)
+        gamma = with_capacitance(f, gamma, self.capacitance_f(x), REFERENCE_OHM)
+        return surrogate.through(values, f, gamma)
 
     def shown(self, x: FloatArray, place: int) -> ComplexArray:
         """What the analyser shows of one file's antenna, in the file's reference."""
@@ -189,6 +193,8 @@ class FitProblem:
         for half_waves, dip in self.pairings[place]:
             where = modes.half_waves.index(half_waves)
             if not np.isfinite(modes.dip_hz[where]):
+                if file.surrogate.feedline is not None:  # it comes and goes with the values
+                    rows += [LOST_DIP, LOST_DIP]
                 continue
             modelled = modes.dip_hz[where] * (1 - errors[half_waves])
             measured = file.dips[dip]

@@ -94,11 +94,12 @@ def statements(result: FitResult) -> list[str]:
     picofarad = result.capacitance_f * 1e12
     if abs(picofarad) > 2 * result.problem.sizes.capacitance_f * 1e12:
         said.append(f"the feed shows {picofarad:+.2f} pF that the model lacks: solder or connector")
+    plane = "connector" if result.study.nominal().feedline else "feed"
     for curve in result.curves:
         delay = curve.errors.delay_s
         if abs(delay) > 2 * result.problem.sizes.delay_s:
             said.append(
-                f"{curve.measurement.path.name}: the reference plane misses the feed by "
+                f"{curve.measurement.path.name}: the reference plane misses the {plane} by "
                 f"{delay * 1e12:+.0f} ps one way ({delay * 2.998e11:+.1f} mm of air): set the port "
                 "extension"
             )

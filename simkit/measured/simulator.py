@@ -3,20 +3,21 @@
 Nodes are placed over the bounds of the free values (Chebyshev points through the engine, or the
 cases of a stored sweep) and the reflection is interpolated between them. It is interpolated over
 frequency divided by that of the lowest mode: the resonances then stay where they are and only the
-shape of the curve changes, which a low polynomial follows.
+shape of the curve changes, which a low polynomial follows. The feed line comes afterwards
+(`simkit.measured.connector`), for any values of its own.
 """
 
 from __future__ import annotations
 
 import itertools
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from scipy.interpolate import CubicSpline
 
 from simkit.errors import MeasurementError
-from simkit.measured.connector import at_connector
+from simkit.measured.connector import FeedLineModel, owners, values_of_line_alone
 from simkit.measured.measurement import ComplexArray, FloatArray
 from simkit.measured.selection import CaseModes
 from simkit.measured.variation import SCALE, Variation
@@ -42,15 +43,18 @@ class Node:
     Attributes
     ----------
     reflect : callable
-        Frequencies in the band to the reflection at the connector.
+        Frequencies in the band to the reflection at the feed.
     modes : dict of int to (dip_hz, natural_hz, q, return_loss_db)
-        By number of half waves; NaN where a mode owns no dip.
+        By number of half waves; NaN where a mode owns no dip. Dips are those at the feed.
     on_plane : bool
+    peaks : dict of int to (frequency_hz, resistance_ohm)
+        Conductance peaks at the feed of the modes that own one.
     """
 
     reflect: Callable[[FloatArray], ComplexArray]
     modes: dict[int, tuple[float, float, float, float]]
     on_plane: bool = False
+    peaks: dict[int, tuple[float, float]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -85,17 +89,31 @@ class Surrogate:
     Parameters
     ----------
     axes : sequence of Axis
+        Of the values that change the antenna.
     nodes : sequence of Node
         In the order of `itertools.product` over the axes.
     band_hz : (float, float)
         In which every node can be evaluated.
+    feedline : FeedLineModel, optional
+        What lies between feed and connector; without it they are one.
+    line_names : sequence of str
+        Values that change the feed line alone.
     """
 
     def __init__(
-        self, axes: Sequence[Axis], nodes: Sequence[Node], band_hz: tuple[float, float]
+        self,
+        axes: Sequence[Axis],
+        nodes: Sequence[Node],
+        band_hz: tuple[float, float],
+        feedline: FeedLineModel | None = None,
+        line_names: Sequence[str] = (),
     ) -> None:
         self.axes = tuple(axes)
         self.nodes = tuple(nodes)
+        self.feedline = feedline
+        self.line_names = tuple(line_names)
+        self.names = (*(axis.name for axis in axes), *line_names)
+        """Values the model is a function of."""
         common = set.intersection(*(set(node.modes) for node in nodes))
         self.half_waves = tuple(
             sorted(
@@ -106,6 +124,9 @@ class Surrogate:
         table = table.reshape(len(nodes), len(self.half_waves), 4)
         with np.errstate(invalid="ignore"):
             self._log = np.log(table)
+            self._log_peaks = np.log(
+                [[node.peaks.get(n, (np.nan, np.nan)) for n in self.half_waves] for node in nodes]
+            ).reshape(len(nodes), len(self.half_waves), 2)
         lowest = table[:, 0, _NATURAL] if self.half_waves else np.ones(len(nodes))
         stretch = lowest / np.exp(np.mean(np.log(lowest)))
         self._log_stretch = np.log(stretch)
@@ -127,10 +148,10 @@ class Surrogate:
             weight = np.outer(weight, axis.weights(values[axis.name])).ravel()
         return weight
 
-    def reflection(self, values: Mapping[str, float], frequency_hz: FloatArray) -> ComplexArray:
-        """Reflection at the connector for the reference `REFERENCE_OHM`, (F,).
+    def at_feed(self, values: Mapping[str, float], frequency_hz: FloatArray) -> ComplexArray:
+        """Reflection at the feed for the reference `REFERENCE_OHM`, (F,).
 
-        `values` holds one number per axis and optionally `scale`.
+        `values` holds one number per name and optionally `scale`.
         """
         weight = self._weights(values)
         stretch = np.exp(weight @ self._log_stretch)
@@ -138,8 +159,49 @@ class Surrogate:
         curve = CubicSpline(self._grid, np.einsum("n,nf->f", weight, self._curves))
         return np.asarray(curve(frequency_hz * values.get(SCALE, 1.0) / stretch))
 
+    def through(
+        self, values: Mapping[str, float], frequency_hz: FloatArray, at_feed: ComplexArray
+    ) -> ComplexArray:
+        """Reflection at the connector for one at the feed, both for `REFERENCE_OHM`, (F,)."""
+        if self.feedline is None:
+            return at_feed
+        return self.feedline.through(values, frequency_hz, at_feed, REFERENCE_OHM)
+
+    def reflection(self, values: Mapping[str, float], frequency_hz: FloatArray) -> ComplexArray:
+        """Reflection at the connector for the reference `REFERENCE_OHM`, (F,); see `at_feed`."""
+        return self.through(values, frequency_hz, self.at_feed(values, frequency_hz))
+
     def modes(self, values: Mapping[str, float]) -> CaseModes:
-        """Modes and the dips they own, interpolated; NaN where not every node has the dip."""
+        """Modes and the dips they own at the connector; NaN where a mode has none.
+
+        Without a feed line the dips are interpolated, and NaN where not every node has them.
+        """
+        modes = self.feed_modes(values)
+        if self.feedline is None:
+            return modes
+        frequency = np.linspace(*self.band_hz, STEPS)
+        at_feed = self.at_feed(values, frequency)
+        dips = self.feedline.dips(values, frequency, at_feed, REFERENCE_OHM)
+        conductance = (((1 - at_feed) / (1 + at_feed)) / REFERENCE_OHM).real
+        places = [dip.frequency_hz for dip in dips]
+        own = owners(
+            places,
+            np.interp(places, frequency, conductance),
+            modes.natural_hz,
+            modes.q,
+            self._peaks(values)[:, 1],
+        )
+        table = np.full((3, len(modes.q)), np.nan)
+        # Of several dips that fall to one mode the deepest is its own.
+        for mode, dip in sorted(
+            zip(own, dips, strict=True), key=lambda pair: pair[1].return_loss_db
+        ):
+            if mode >= 0:
+                table[:, mode] = dip.frequency_hz, dip.return_loss_db, dip.bandwidth_hz
+        return replace(modes, dip_hz=table[0], return_loss_db=table[1], bandwidth_hz=table[2])
+
+    def feed_modes(self, values: Mapping[str, float]) -> CaseModes:
+        """Modes and the dips they own at the feed; NaN where not every node has the dip."""
         rows = np.exp(np.tensordot(self._weights(values), self._log, axes=1))
         rows = rows.reshape(-1, 4)
         scale = values.get(SCALE, 1.0)
@@ -153,11 +215,24 @@ class Surrogate:
             on_plane=self.nodes[0].on_plane,
         )
 
+    def places_hz(self, values: Mapping[str, float]) -> FloatArray:
+        """Where at the feed each mode is seen, NaN where it is not: its dip, or behind a feed line,
+        where a dip at the feed is nobody's business, its conductance peak; (M,)."""
+        if self.feedline is None:
+            return self.feed_modes(values).dip_hz
+        return np.asarray(self._peaks(values)[:, 0] / values.get(SCALE, 1.0))
+
+    def _peaks(self, values: Mapping[str, float]) -> FloatArray:
+        """Frequency and resistance of the conductance peaks, (M, 2)."""
+        rows = np.exp(np.tensordot(self._weights(values), self._log_peaks, axes=1))
+        return np.asarray(rows.reshape(-1, 2))
+
     def error_at(self, values: Mapping[str, float], node: Node) -> float:
-        """Largest difference from a point solved by itself, in the band that holds throughout."""
+        """Largest difference at the feed from a point solved by itself, in the band that holds
+        throughout."""
         frequency = np.linspace(*self.band_hz, STEPS)
         solved = node.reflect(frequency)
-        return float(np.abs(self.reflection({**values, SCALE: 1.0}, frequency) - solved).max())
+        return float(np.abs(self.at_feed({**values, SCALE: 1.0}, frequency) - solved).max())
 
 
 class Engine:
@@ -190,25 +265,31 @@ class Engine:
         points = [middle, *(dict(zip(bounds, corner, strict=True)) for corner in corners)]
         self.plan = plan_mesh([self.antenna(point) for point in points])
         self.solves = 0
+        self._solved: dict[Antenna, Node] = {}
 
     def antenna(self, values: Mapping[str, float]) -> Antenna:
-        """The antenna of a point, with the band of the fit."""
+        """The antenna of a point without its feed line, with the band of the fit."""
         antenna = self.variation.antenna({**self.base, **values})
-        return replace(antenna, frequency=self.band, converge=False)
+        return replace(antenna, frequency=self.band, converge=False, feedline=())
 
     def node(self, values: Mapping[str, float]) -> Node:
-        """Solve one point.
+        """Solve one point; points that differ in the feed line alone are one.
 
         Raises
         ------
         GeometryError, EngineError, StudyError
         """
+        antenna = self.antenna(values)
+        if antenna not in self._solved:
+            self._solved[antenna] = self._solve(antenna)
+        return self._solved[antenna]
+
+    def _solve(self, antenna: Antenna) -> Node:
         from simkit.geometry import build_wires
         from simkit.response.modes import find_modes
         from simkit.response.ownership import owned_features
         from simkit.runner.solve import feed_impedance, sweep_currents
 
-        antenna = self.antenna(values)
         grid = build_wires(antenna, self.plan)
         sweep = sweep_currents(antenna, grid)
         self.solves += len(sweep.model.frequency_hz)
@@ -216,14 +297,17 @@ class Engine:
 
         def impedance(frequency_hz: FloatArray) -> ComplexArray:
             currents = sweep.model.matrix(frequency_hz) @ feed_values
-            return at_connector(antenna, frequency_hz, feed_impedance(grid, currents, frequency_hz))
+            return feed_impedance(grid, currents, frequency_hz)
 
         frequency = np.linspace(self.band.start_hz, self.band.stop_hz, self.band.points)
         modes = find_modes(sweep, grid, self.band.start_hz, self.band.stop_hz)
         features = owned_features(modes, frequency, impedance(frequency), antenna.reference_ohm)
         owned: dict[int, tuple[float, float, float, float]] = {}
+        peaks: dict[int, tuple[float, float]] = {}
         for mode, feature in zip(modes, features, strict=True):
-            dip = feature.dip
+            dip, peak = feature.dip, feature.peak
+            if peak is not None and mode.half_waves not in owned:
+                peaks[mode.half_waves] = (peak.frequency_hz, peak.resistance_ohm)
             owned.setdefault(
                 mode.half_waves,
                 (
@@ -237,6 +321,7 @@ class Engine:
             lambda frequency_hz: reflection(impedance(frequency_hz), REFERENCE_OHM),
             owned,
             any(grid.path_on_plane),
+            peaks,
         )
 
 
@@ -261,6 +346,9 @@ def build_surrogate(
         If a node cannot be solved.
     """
     bounds = {name: pair for name, pair in bounds.items() if name != SCALE}
+    line_names = values_of_line_alone(variation, base, bounds)
+    feedline = FeedLineModel(variation, base) if variation.study.nominal().feedline else None
+    bounds = {name: pair for name, pair in bounds.items() if name not in line_names}
     count = counts_for(len(bounds))
     axes = [Axis(name, chebyshev(low, high, count)) for name, (low, high) in bounds.items()]
     reach = _reach(variation, base, bounds, band_hz)
@@ -271,7 +359,7 @@ def build_surrogate(
         nodes.append(engine.node(dict(zip(bounds, map(float, point), strict=True))))
         if progress is not None:
             progress(number + 1, len(points))
-    return Surrogate(axes, nodes, reach), engine
+    return Surrogate(axes, nodes, reach, feedline, line_names), engine
 
 
 def _reach(

@@ -10,10 +10,11 @@ import numpy as np
 from scipy.interpolate import CubicSpline
 
 from simkit.errors import StoreError
+from simkit.measured.connector import FeedLineModel, values_of_line_alone
 from simkit.measured.measurement import ComplexArray, FloatArray
 from simkit.measured.selection import as_cases, is_solved, modes_of_cases
 from simkit.measured.simulator import REFERENCE_OHM, Axis, Node, Surrogate
-from simkit.measured.variation import SCALE
+from simkit.measured.variation import SCALE, Variation
 from simkit.response.features import reflection
 from simkit.store.read import swept_names
 
@@ -25,16 +26,20 @@ FEWEST_NODES = 3
 
 
 def surrogate_of_results(
-    dataset: xr.Dataset, bounds: Mapping[str, tuple[float, float]]
+    dataset: xr.Dataset,
+    bounds: Mapping[str, tuple[float, float]],
+    variation: Variation | None = None,
 ) -> Surrogate:
-    """Interpolate the cases of a grid sweep.
+    """Interpolate the cases of a grid sweep at the feed, and put the feed line before them.
 
     Parameters
     ----------
     dataset : xarray.Dataset
         Results.
     bounds : mapping of str to (float, float)
-        What must be covered, SI; `scale` needs no cases.
+        What must be covered, SI; `scale`, and what changes the feed line alone, needs no cases.
+    variation : Variation, optional
+        The study to be fitted, if it has a feed line.
 
     Returns
     -------
@@ -46,12 +51,21 @@ def surrogate_of_results(
         If a value is not swept, the sweep does not cover its bounds, is no full grid, or has
         cases without a solution.
     """
-    dataset = as_cases(dataset)
+    dataset, swept = as_cases(dataset), list(swept_names(dataset))
+    feedline: FeedLineModel | None = None
+    line_names: tuple[str, ...] = ()
+    if variation is not None and variation.study.nominal().feedline:
+        feedline = FeedLineModel(variation, {})
+        ends = {name: _ends(dataset, name) for name in swept} | dict(bounds)
+        ends.pop(SCALE, None)
+        line_names = values_of_line_alone(variation, {}, ends)
+        dataset = _at_first(dataset, [name for name in swept if name in line_names])
     axes = [
         Axis(name, np.unique(np.asarray(dataset[name].values, dtype=float)))
-        for name in swept_names(dataset)
+        for name in swept
+        if name not in line_names
     ]
-    _check_cover(axes, bounds)
+    _check_cover(axes, {name: pair for name, pair in bounds.items() if name not in line_names})
     rows = _rows(dataset, axes)
     if not is_solved(dataset)[rows].all():
         bad = int(dataset["case"].values[rows[~is_solved(dataset)[rows]][0]])
@@ -60,8 +74,28 @@ def surrogate_of_results(
             "--results out to solve through the engine"
         )
     frequency = np.asarray(dataset["frequency"].values, dtype=float)
-    name = "impedance_at_connector" if "impedance_at_connector" in dataset else "impedance"
-    gamma = reflection(dataset[name].values, REFERENCE_OHM)
+    band = (float(frequency[0]), float(frequency[-1]))
+    nodes = _nodes(dataset, rows, frequency)
+    return Surrogate(axes, nodes, band, feedline, line_names)
+
+
+def _ends(dataset: xr.Dataset, name: str) -> tuple[float, float]:
+    values = np.asarray(dataset[name].values, dtype=float)
+    return float(values.min()), float(values.max())
+
+
+def _at_first(dataset: xr.Dataset, names: list[str]) -> xr.Dataset:
+    """The cases at the first value of some swept quantities: the antenna is the same at others."""
+    for name in names:
+        values = np.asarray(dataset[name].values, dtype=float)
+        dataset = dataset.isel(case=np.flatnonzero(values == values[0]))
+    return dataset
+
+
+def _nodes(
+    dataset: xr.Dataset, rows: np.ndarray[tuple[int, ...], np.dtype[np.intp]], frequency: FloatArray
+) -> list[Node]:
+    gamma = reflection(dataset["impedance"].values, REFERENCE_OHM)
     modes = modes_of_cases(dataset)
     nodes = []
     for row in rows:
@@ -74,8 +108,25 @@ def surrogate_of_results(
         owned: dict[int, tuple[float, float, float, float]] = {}
         for half_waves, (dip, natural, q, loss) in table:
             owned.setdefault(half_waves, (float(dip), float(natural), float(q), float(loss)))
-        nodes.append(Node(_curve(frequency, gamma[row]), owned, found.on_plane))
-    return Surrogate(axes, nodes, (float(frequency[0]), float(frequency[-1])))
+        peaks = _peaks(dataset.isel(case=int(row)))
+        nodes.append(Node(_curve(frequency, gamma[row]), owned, found.on_plane, peaks))
+    return nodes
+
+
+def _peaks(case: xr.Dataset) -> dict[int, tuple[float, float]]:
+    """Conductance peaks of one case by half waves."""
+    if "conductance_peak_frequency" not in case:
+        return {}
+    found: dict[int, tuple[float, float]] = {}
+    for number, place, ohm in zip(
+        case["mode_half_waves"].values,
+        case["conductance_peak_frequency"].values,
+        case["conductance_peak_resistance"].values,
+        strict=True,
+    ):
+        if number >= 0 and np.isfinite(place):
+            found.setdefault(int(number), (float(place), float(ohm)))
+    return found
 
 
 def _curve(frequency: FloatArray, gamma: ComplexArray) -> CubicSpline:

@@ -64,6 +64,8 @@ class Trim:
         The wanted band and the least return loss in it after the change.
     gain_dbi : (float, float)
         Peak gain of the mode before and after, NaN unless `with_gain` has found it.
+    of_feedline : bool
+        The dimension is one of the feed line alone, which plain scaling says nothing about.
     values, dips_hz, dip_sigmas_hz : (N,) float array
         Trim curve: the dip against the dimension, with its standard deviation.
     """
@@ -88,6 +90,7 @@ class Trim:
     band_hz: tuple[float, float] = (float("nan"), float("nan"))
     band_return_loss_db: float = float("nan")
     gain_dbi: tuple[float, float] = (float("nan"), float("nan"))
+    of_feedline: bool = False
 
     @property
     def low(self) -> float:
@@ -112,7 +115,11 @@ class Trim:
     @property
     def in_steps(self) -> bool:
         """Metal is to be removed and the uncertainty is large against the cut."""
-        return self.change < 0 and LIMIT_95 * self.sigma > CAUTIOUS * abs(self.change)
+        return (
+            not self.of_feedline
+            and self.change < 0
+            and LIMIT_95 * self.sigma > CAUTIOUS * abs(self.change)
+        )
 
     @property
     def first_share(self) -> float:
@@ -169,7 +176,7 @@ def trim_fitted(
     problem, x = result.problem, result.solution
     file = file % len(problem.files)
     values = problem.values(x, problem.files[file].build)
-    if name not in values:
+    if name not in (*problem.names, *problem.files[file].surrogate.names):
         raise MeasurementError(f"the model does not vary `{name}`, so it cannot be trimmed")
     present = values[name]
 
@@ -186,12 +193,15 @@ def trim_fitted(
     grid = np.linspace(*reach, CURVE_POINTS)
     track = np.array([dip(float(v)) for v in grid])
     wanted = _reached(grid, track, target_hz, present, name, label)
-    aim = float(brentq(lambda v: dip(v) - target_hz, *wanted, xtol=1e-8))
+    span = reach[1] - reach[0]  # a dimension may be one of nanohenry
+    aim = float(brentq(lambda v: dip(v) - target_hz, *wanted, xtol=min(1e-8, 1e-6 * span)))
     sigmas = np.array([_dip_sigma(result, dip, float(v)) for v in grid[:: CURVE_POINTS // 8]])
     sigma_track = np.interp(grid, grid[:: CURVE_POINTS // 8], sigmas)
-    slope = (dip(aim + 1e-5) - dip(aim - 1e-5)) / 2e-5
+    step = min(1e-5, 1e-3 * span)
+    slope = (dip(aim + step) - dip(aim - step)) / (2 * step)
     spread = _dip_sigma(result, dip, aim)
     measured = dict(result.curves[file].pairs).get(half_waves)
+    of_feedline = name in problem.files[file].surrogate.line_names
     return Trim(
         name=name,
         unit=problem.variation.unit(name),
@@ -202,13 +212,14 @@ def trim_fitted(
         present_sigma_hz=_dip_sigma(result, dip, present),
         present=present,
         change=aim - present,
-        scaling_change=present * (now / target_hz - 1),
+        scaling_change=float("nan") if of_feedline else present * (now / target_hz - 1),
         sigma=abs(spread / slope),
         slope_hz_per_m=slope,
         modes=_mode_changes(problem, x, file, name, aim - present),
         values=grid,
         dips_hz=track,
         dip_sigmas_hz=sigma_track,
+        of_feedline=of_feedline,
         band_hz=band_hz or (target_hz, target_hz),
         band_return_loss_db=_worst_db(
             problem, x, file, name, aim - present, band_hz or (target_hz, target_hz)

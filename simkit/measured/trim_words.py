@@ -29,18 +29,21 @@ def trim_text(trim: Trim) -> str:
         f"  by the fitted model  {_change(trim, trim.change)}, to "
         f"{_length(trim, trim.present + trim.change)}; 95 % interval "
         f"{_change(trim, trim.low)} to {_change(trim, trim.high)}",
-        f"  by plain scaling     {_change(trim, trim.scaling_change)}"
-        + (
-            f"; correction factor {trim.correction_factor:.3f}"
-            if np.isfinite(trim.correction_factor)
-            else ""
-        ),
+        *_scaling_lines(trim),
         "",
         *mode_lines(trim),
         "",
         *(f"  {line}" for line in advice(trim)),
     ]
     return "\n".join(lines).rstrip()
+
+
+def _scaling_lines(trim: Trim) -> list[str]:
+    if trim.of_feedline:
+        return []
+    factor = trim.correction_factor
+    said = f"; correction factor {factor:.3f}" if np.isfinite(factor) else ""
+    return [f"  by plain scaling     {_change(trim, trim.scaling_change)}{said}"]
 
 
 def mode_lines(trim: Trim) -> list[str]:
@@ -86,6 +89,8 @@ def _what_to_expect(trim: Trim) -> list[str]:
 def _what_to_do(trim: Trim) -> str:
     if abs(trim.change) < LIMIT_95 * trim.sigma:
         return "the dip is where it is wanted as far as these data can tell: cut nothing"
+    if trim.of_feedline:
+        return f"change `{trim.name}` by {_change(trim, trim.change)}, then measure once more"
     if trim.adds_metal:
         return (
             f"metal must be added: `{trim.name}` has to grow by "

@@ -53,8 +53,10 @@ def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
         x, y - spread, y + spread, color=style.colour, alpha=0.18, linewidth=0, label="95 % band"
     )
     ax.plot(x, y, color=style.colour, linewidth=1.8, label="fitted model")
-    plain = trim.present_hz * trim.present / trim.values * unit.factor
-    ax.plot(x, plain, color=QUIET, linewidth=1.3, linestyle=(0, (4, 2)), label="plain scaling")
+    plain = np.full(len(x), np.nan)
+    if not trim.of_feedline:
+        plain = trim.present_hz * trim.present / trim.values * unit.factor
+        ax.plot(x, plain, color=QUIET, linewidth=1.3, linestyle=(0, (4, 2)), label="plain scaling")
     _mark_target(ax, trim, unit.factor)
     now, aim = trim.present * scale, (trim.present + trim.change) * scale
     ax.axvspan(

@@ -113,7 +113,6 @@ def impedance_at(case: xr.Dataset, frequency_hz: ArrayLike, plane: Plane = "feed
     ----------
     case : xarray.Dataset
     frequency_hz : (F,) array_like
-        Ascending without repeats for the connector.
     plane : {"feed", "connector"}
 
     Returns
@@ -140,8 +139,9 @@ def impedance_at(case: xr.Dataset, frequency_hz: ArrayLike, plane: Plane = "feed
         return at_feed
     from simkit.feedline.oneport import OnePort, impedance_of
 
-    load = OnePort.from_impedance(frequency, at_feed, chain.reference_ohm)
-    return impedance_of(chain.reflection(load), chain.reference_ohm)
+    ascending, first, back = np.unique(frequency, return_index=True, return_inverse=True)
+    load = OnePort.from_impedance(ascending, at_feed[first], chain.reference_ohm)
+    return impedance_of(chain.reflection(load), chain.reference_ohm)[back]
 
 
 def chain_of_case(case: xr.Dataset) -> Chain:

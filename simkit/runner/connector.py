@@ -10,21 +10,16 @@ import numpy as np
 
 from simkit.feedline.build import build_chain
 from simkit.feedline.chain import Chain, ChainResult
+from simkit.feedline.dips import connector_dips
 from simkit.feedline.oneport import OnePort
 from simkit.geometry.wires import FloatArray
-from simkit.response.features import Dip, find_dips
+from simkit.response.features import Dip
 from simkit.response.rational import ComplexArray
 from simkit.study.feedline_text import feedline_text
 from simkit.study.model import Antenna
 
 LEAST_FACTOR = 1e-10
 """A smaller part of the power counts as this: gains end at -100 dB."""
-
-LARGEST_STEP_RAD = 0.3
-"""A reflection may turn by so much from one frequency to the next: a spline through it then errs by
-2e-5 at most."""
-
-MOST_POINTS = 50_000
 
 _NEEDED = ("impedance", "dip_frequency", "pattern_frequency", "driven", "efficiency", "peak_gain")
 
@@ -71,20 +66,8 @@ class Connector:
         return cls(antenna, chain, load, chain.terminate(load))
 
     def dips(self) -> list[Dip]:
-        """Minima of |reflection| at the connector.
-
-        Looked for on a finer grid than the study's where a long line turns the reflection too fast
-        for a smooth curve through the study's frequencies.
-        """
-        f = self.load.frequency_hz
-        if not self.chain.elements:
-            return find_dips(f, self.load.reflection)
-        turn_rad = 4 * np.pi * (f[-1] - f[0]) * self.chain.delay_s(float(f[len(f) // 2]))
-        count = min(int(np.ceil(turn_rad / LARGEST_STEP_RAD)) + 1, MOST_POINTS)
-        if count <= len(f):
-            return find_dips(f, self.seen.reflection[-1])
-        fine = self.load.at(np.linspace(f[0], f[-1], count))
-        return find_dips(fine.frequency_hz, self.chain.reflection(fine))
+        """Minima of |reflection| at the connector."""
+        return connector_dips(self.chain, self.load)
 
     @property
     def doubts(self) -> list[str]:

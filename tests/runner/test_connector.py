@@ -325,7 +325,10 @@ def test_any_frequency_at_either_plane(go):
     frequency_hz = dataset["frequency"].values
     for plane, name in (("feed", "impedance"), ("connector", "impedance_at_connector")):
         # the same model at the same frequencies
-        assert impedance_at(case, frequency_hz, plane) == pytest.approx(case[name].values, rel=1e-9)
+        found = impedance_at(case, frequency_hz, plane)
+        assert found == pytest.approx(case[name].values, rel=1e-9)
+        again = impedance_at(case, frequency_hz[[7, 3, 7]], plane)  # in any order, repeated
+        assert again == pytest.approx(found[[7, 3, 7]], rel=1e-9)
 
 
 def test_without_a_feed_line_the_connector_is_the_feed(go):
