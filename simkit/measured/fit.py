@@ -18,11 +18,11 @@ import numpy as np
 from simkit.errors import MeasurementError
 from simkit.measured.bench_errors import ErrorSizes
 from simkit.measured.dips import measured_dips, pinned_dip, smooth
-from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To
+from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To, referred
 from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.quality import quality_notes
-from simkit.measured.simulator import Engine, Surrogate, build_surrogate
+from simkit.measured.simulator import REFERENCE_OHM, STEPS, Engine, Surrogate, build_surrogate
 from simkit.measured.variation import SCALE, Known, Variation
 from simkit.response.features import Dip
 
@@ -190,7 +190,8 @@ def _files(
             common = _common(measurement, band)
             made[key], engine = build_surrogate(variation, held, axes, common, progress=progress)
         dips, dip_notes = measured_dips(measurement)
-        said = (*measurement.notes, *quality_notes(measurement), *dip_notes)
+        expected = _expected(made[key], measurement.reference_ohm)
+        said = (*measurement.notes, *quality_notes(measurement, expected), *dip_notes)
         notes += [f"{measurement.path.name}: {note}" for note in said]
         cut = _cut(measurement, made[key].band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
         pinned = _pinned(pins[place] if pins is not None else {}, dips, measurement)
@@ -199,6 +200,14 @@ def _files(
         weight = 1 / (FIRST_SIGMA * np.sqrt(max(len(cut.frequency_hz) / INDEPENDENT, 1.0)))
         files.append(FitFile(cut, build, made[key], tuple(dips), noise, pinned, float(weight)))
     return files, engine, notes
+
+
+def _expected(surrogate: Surrogate, reference_ohm: float) -> tuple[FloatArray, ComplexArray]:
+    """What the model shows in the middle of the bounds."""
+    middle = {axis.name: float(axis.nodes[[0, -1]].mean()) for axis in surrogate.axes}
+    frequency = np.linspace(*surrogate.band_hz, STEPS)
+    gamma = surrogate.reflection(middle, frequency)
+    return frequency, referred(gamma, REFERENCE_OHM, reference_ohm)
 
 
 def _common(measurement: Measurement, band: tuple[float, float]) -> tuple[float, float]:
