@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import re
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from string import ascii_uppercase
 
@@ -125,7 +126,7 @@ class MatchReport:
                 f"{design.changed_db:.1f} dB",
                 f"{design.tolerance_db:.1f} dB",
                 f"{100 * design.efficiency:.1f} %",
-                design.sensitive or "-",
+                _with_letter(design, named) or "-",
             )
             for rank, design in enumerate(shown, 1)
         ]
@@ -145,6 +146,16 @@ class MatchReport:
         if self.bound.return_loss_db < self.wanted_db:
             return f"{self.wanted_db:g} dB cannot be had without loss: {bound}"
         return bound[0].upper() + bound[1:]
+
+
+def _with_letter(design: Design, named: Mapping[str, str]) -> str:
+    """The most sensitive dimension; a line by its letter, not by its place in the network."""
+    words = re.fullmatch(r"line (?:(\d+) )?(.*)", design.sensitive)
+    if words is None:
+        return design.sensitive
+    lines = (getattr(element, "line", None) for element in design.chain.elements)
+    distinct = [line.about for line in dict.fromkeys(lines) if line is not None]
+    return f"line {named[distinct[int(words[1] or 1) - 1]]} {words[2]}"
 
 
 def _named_lines(designs: Sequence[Design]) -> dict[str, str]:

@@ -159,6 +159,15 @@ def test_rows_and_text(report):
     assert text.startswith("match to 50 ohm from 853 MHz to 883 MHz; without a network at least")
     assert "efficiency  most sensitive\n" in text
     assert f"{report.best.changed_db:.1f} dB" in text
+    line = UniformLine(115.0)
+    steps = find_matches(LOAD, *BAND, line=line, kinds=("quarter wave",), refine=False)
+    # The first design's lines are A and B, those of the second A again and C.
+    shown = [line for line in steps.as_text().splitlines() if "quarter wave  " in line]
+    letters = [{"1": "A", "2": "B"}, {"1": "A", "2": "C"}]
+    for line, design, letter in zip(shown, steps.designs, letters, strict=True):
+        word, number, rest = design.sensitive.split(" ", 2)
+        assert word == "line"
+        assert line.endswith(f"line {letter[number]} {rest}")
     assert f"{len(rows) - 3} more, with less left when 1 % off" in text
 
 
