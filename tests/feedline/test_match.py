@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -159,16 +160,20 @@ def test_rows_and_text(report):
     assert text.startswith("match to 50 ohm from 853 MHz to 883 MHz; without a network at least")
     assert "efficiency  most sensitive\n" in text
     assert f"{report.best.changed_db:.1f} dB" in text
-    line = UniformLine(115.0)
-    steps = find_matches(LOAD, *BAND, line=line, kinds=("quarter wave",), refine=False)
-    # The first design's lines are A and B, those of the second A again and C.
-    shown = [line for line in steps.as_text().splitlines() if "quarter wave  " in line]
-    letters = [{"1": "A", "2": "B"}, {"1": "A", "2": "C"}]
-    for line, design, letter in zip(shown, steps.designs, letters, strict=True):
-        word, number, rest = design.sensitive.split(" ", 2)
-        assert word == "line"
-        assert line.endswith(f"line {letter[number]} {rest}")
     assert f"{len(rows) - 3} more, with less left when 1 % off" in text
+
+
+def test_a_line_has_one_letter_throughout_the_table():
+    found = find_matches(LOAD, *BAND, line=UniformLine(115.0), kinds=("quarter wave",))
+    named = [replace(found.designs[0], sensitive=f"line {n} impedance 9 ohm") for n in (1, 2)]
+    text = replace(found, designs=tuple(named)).as_text()
+    assert [line[-22:] for line in text.splitlines() if line.endswith(" 9 ohm")] == [
+        "line A impedance 9 ohm",
+        "line B impedance 9 ohm",
+    ]
+    one = find_matches(LOAD, *BAND, kinds=("tapped line",)).designs[0]
+    text = replace(found, designs=(replace(one, sensitive="line impedance 9 ohm"),)).as_text()
+    assert "line A impedance 9 ohm" in text
 
 
 def test_best_tap_on_a_shorted_line():
