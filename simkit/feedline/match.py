@@ -37,6 +37,9 @@ CHANGE = 0.01
 ROUNDS = 300
 """Most evaluations that refining one network may take."""
 
+LOG_REACH = (-20.0, 1.5)
+"""Logarithms of the factors by which refining may move a dimension: to nothing, and to 4.5 times."""
+
 NOTHING_M = 1e-6
 """A section shorter than this is none."""
 
@@ -247,7 +250,7 @@ def _refined(chain: Chain, band: OnePort) -> Chain:
 
     def moved(logs: FloatArray) -> Chain:
         other = chain
-        for dimension, log in zip(free, logs, strict=True):
+        for dimension, log in zip(free, np.clip(logs, *LOG_REACH), strict=True):
             other = dimension.scaled(other, math.exp(float(log)))
         return other
 

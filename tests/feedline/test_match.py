@@ -84,6 +84,19 @@ def test_refining_gains_over_the_match_in_the_middle():
         assert worst_return_loss_db(design.chain, middle) == pytest.approx(100.0)
 
 
+def test_refining_does_not_run_off_to_endless_lines():
+    """On a line with loss a hopeless load is matched best by loss alone."""
+    w = 2 * np.pi * np.linspace(500e6, 1500e6, 101)
+    load = OnePort.from_impedance(w / 2 / np.pi, 0.47 + 1j * (w * 3.67e-9 - 1 / (w * 44e-15)))
+    line = UniformLine(60.0, 0.55, 3.0, 1e9, 0.02)
+    found = find_matches(
+        load, 838e6, 1066e6, reference_ohm=216.0, kinds=("shunt stub",), line=line, wanted_db=1.0
+    )
+    lengths = [d.value for design in found.designs for d in free_dimensions(design.chain)]
+    half_wave_m = line.wavelength_at(952e6) / 2
+    assert half_wave_m < max(lengths) <= half_wave_m * math.exp(1.5)
+
+
 def test_all_stub_solutions_are_there():
     found = find_matches(LOAD, *BAND, kinds=("shunt stub", "series stub"))
     ends = {(d.kind, d.chain.elements[1].end) for d in found.designs}
