@@ -24,8 +24,13 @@ Row = dict[str, Any]
 
 _KEY = """\
 natural: frequency and Q of the mode itself, whatever the feed.
-dip: minimum of the reflection at the connector, which is what an analyser shows; it lies above.
+dip: minimum of the reflection at the connector, which is what an analyser shows{where}.
 X = 0: series resonance at the feed with its resistance.  gain: the largest, in any direction."""
+
+_LINE_KEY = """
+The connector is behind the feed line ({items}). network: power into the antenna over power into
+the connector; realised: gain less what feed line and mismatch take; both at the dip, or for a mode
+without one at its conductance peak at the feed."""
 
 _LOSS_KEY = """
 efficiency: radiated over radiated and lost power; gain is directivity less what is lost."""
@@ -73,8 +78,12 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None, places:
     elif form == "csv":
         emit(csv_text(flat_rows(rows, _attribute(dataset, "units"))))
     else:
-        key = _KEY + (_LOSS_KEY if lossy(rows) else "")
-        emit(f"{modes_table(rows, _attribute(dataset, 'display_unit'))}\n\n{key}")
+        items = list(dataset.attrs.get("feedline", ()))
+        key = _KEY.format(where="" if items else "; it lies above")
+        key += _LINE_KEY.format(items=", ".join(items)) if items else ""
+        key += _LOSS_KEY if lossy(rows) else ""
+        shown = modes_table(rows, _attribute(dataset, "display_unit"), feedline=bool(items))
+        emit(f"{shown}\n\n{key}")
 
 
 def show_places(dataset: xr.Dataset, rows: list[Row], results: str, form: str) -> None:
@@ -123,21 +132,26 @@ def lossy(rows: list[Row]) -> bool:
     )
 
 
-def modes_table(rows: list[Row], units: dict[str, str]) -> str:
+def modes_table(rows: list[Row], units: dict[str, str], *, feedline: bool = False) -> str:
     """Return the table for people: one line per mode, one for a case without any.
 
-    Where power is lost, directivity and efficiency stand beside the gain.
+    Where power is lost, directivity and efficiency stand beside the gain; behind a feed line, what
+    that takes.
     """
     names = list(rows[0]["values"]) if rows else []
     losses = lossy(rows)
     head = ["case", *names, "status", "mode", "natural", "+/-", "Q", "dip", "return loss"]
     head += ["X = 0", "R", "gain", *(["directivity", "efficiency"] if losses else [])]
+    head += ["network", "realised"] if feedline else []
     lines = []
     for row in rows:
         swept = [quantity_text(row["values"][name], units.get(name, "1")) for name in names]
         start = [str(row["case"]), *swept, row["status"]]
         if row["modes"]:
-            lines += [start + _mode_cells(mode, losses=losses) for mode in row["modes"]]
+            lines += [
+                start + _mode_cells(mode, losses=losses) + (_line_cells(mode) if feedline else [])
+                for mode in row["modes"]
+            ]
         else:
             lines.append([*start, "-", *[""] * (len(head) - len(start) - 1)])
     # Under the table, where a long sentence does not push the numbers apart.
@@ -168,5 +182,14 @@ def _mode_cells(mode: Row, *, losses: bool) -> list[str]:
     if losses:
         efficiency = mode.get("efficiency")
         cells.append(number_text(mode.get("directivity_dbi"), 1, "dBi"))
-        cells.append(number_text(efficiency * 100, 1, "%") if efficiency is not None else "-")
+        cells.append(_percent(efficiency))
     return cells
+
+
+def _line_cells(mode: Row) -> list[str]:
+    gain = number_text(mode.get("realised_gain_dbi"), 1, "dBi")
+    return [_percent(mode.get("network_efficiency")), gain]
+
+
+def _percent(part: float | None) -> str:
+    return number_text(None if part is None else part * 100, 1, "%")

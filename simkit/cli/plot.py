@@ -10,7 +10,8 @@ from simkit.cli.folder import study_of
 from simkit.cli.options import case_option, results_argument
 from simkit.plot.kinds import KINDS
 
-_KINDS = "\n".join(f"  {kind.name:<12}{kind.about}" for kind in KINDS.values())
+_WIDTH = max(map(len, KINDS)) + 2
+_KINDS = "\n".join(f"  {kind.name:<{_WIDTH}}{kind.about}" for kind in KINDS.values())
 
 
 @click.command(

@@ -13,7 +13,7 @@ from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.pairing import ModelledDip
 from simkit.measured.selection import as_cases, is_solved, modes_of_cases
 from simkit.response.features import reflection
-from simkit.store.read import swept_names
+from simkit.store.read import connector_variable, swept_names
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -115,14 +115,10 @@ def nearest_cases(
                 curve=float(curves[place]),
                 score=float(score[place]),
                 frequency_hz=frequency,
-                reflection=reflection(chosen[_impedance_name(dataset)].values, reference),
+                reflection=reflection(chosen[connector_variable(dataset)].values, reference),
             )
         )
     return tuple(found)
-
-
-def _impedance_name(dataset: xr.Dataset) -> str:
-    return "impedance_at_connector" if "impedance_at_connector" in dataset else "impedance"
 
 
 def _curve_differences(
@@ -147,7 +143,7 @@ def _curve_differences(
     step = max((last - first) // CURVE_POINTS, 1)
     chosen = slice(first, last, step)
     wanted = np.interp(frequency[chosen], measurement.frequency_hz, np.abs(measurement.reflection))
-    impedance = dataset[_impedance_name(dataset)]
+    impedance = dataset[connector_variable(dataset)]
     total = []
     for start in range(0, len(rows), CHUNK):
         part = impedance.isel(case=rows[start : start + CHUNK]).values[:, chosen]

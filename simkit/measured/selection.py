@@ -13,7 +13,7 @@ from simkit.errors import StoreError
 from simkit.measured.measurement import ComplexArray, FloatArray
 from simkit.measured.pairing import ModelledDip, Pairing, ambiguous_pairs, pair
 from simkit.response.features import reflection
-from simkit.store.read import swept_names
+from simkit.store.read import connector_variable, swept_names
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
@@ -149,9 +149,8 @@ def _modes(columns: dict[str, FloatArray], on_plane: bool) -> CaseModes:
 
 def simulated_reflection(case: xr.Dataset, reference_ohm: float) -> tuple[FloatArray, ComplexArray]:
     """Frequencies and reflection at the connector of one case."""
-    name = "impedance_at_connector" if "impedance_at_connector" in case else "impedance"
     frequency = np.asarray(case["frequency"].values, dtype=np.float64)
-    return frequency, reflection(case[name].values, reference_ohm)
+    return frequency, reflection(case[connector_variable(case)].values, reference_ohm)
 
 
 def is_solved(dataset: xr.Dataset) -> np.ndarray[tuple[int, ...], np.dtype[np.bool_]]:

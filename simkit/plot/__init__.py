@@ -19,13 +19,16 @@ if TYPE_CHECKING:
         plot_current_map,
         plot_current_maps,
     )
+    from simkit.plot.feedline import plot_feedline, plot_feedline_match, plot_feedline_path
     from simkit.plot.geometry import plot_geometry
     from simkit.plot.impedance import plot_impedance
     from simkit.plot.kinds import KINDS
+    from simkit.plot.matching import plot_match, plot_match_path
     from simkit.plot.overlay import plot_overlay
     from simkit.plot.pattern import plot_pattern, plot_pattern_cuts
     from simkit.plot.reflection import plot_reflection
     from simkit.plot.save import save_all, save_plot
+    from simkit.plot.schematic import plot_schematic
     from simkit.plot.smith import plot_smith
     from simkit.plot.tracks import MeasuredBuild, plot_tracks
 
@@ -39,12 +42,18 @@ __all__ = [
     "plot_current",
     "plot_current_map",
     "plot_current_maps",
+    "plot_feedline",
+    "plot_feedline_match",
+    "plot_feedline_path",
     "plot_geometry",
     "plot_impedance",
+    "plot_match",
+    "plot_match_path",
     "plot_overlay",
     "plot_pattern",
     "plot_pattern_cuts",
     "plot_reflection",
+    "plot_schematic",
     "plot_smith",
     "plot_tracks",
     "save_all",
@@ -61,12 +70,18 @@ _HOME = {
     "plot_current": "current",
     "plot_current_map": "density",
     "plot_current_maps": "density",
+    "plot_feedline": "feedline",
+    "plot_feedline_match": "feedline",
+    "plot_feedline_path": "feedline",
     "plot_geometry": "geometry",
     "plot_impedance": "impedance",
+    "plot_match": "matching",
+    "plot_match_path": "matching",
     "plot_overlay": "overlay",
     "plot_pattern": "pattern",
     "plot_pattern_cuts": "pattern",
     "plot_reflection": "reflection",
+    "plot_schematic": "schematic",
     "plot_smith": "smith",
     "plot_tracks": "tracks",
     "save_all": "save",

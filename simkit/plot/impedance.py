@@ -7,7 +7,13 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from simkit.plot.cases import is_solved, numbered_modes, one_case, title_of, why_empty
+from simkit.plot.cases import (
+    is_solved,
+    numbered_modes,
+    one_case,
+    title_of,
+    why_empty,
+)
 from simkit.plot.style import (
     INK,
     QUIET,
@@ -22,6 +28,7 @@ from simkit.plot.style import (
     tidy,
 )
 from simkit.response.features import find_resonances
+from simkit.store.read import connector_variable, has_feedline
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -32,7 +39,9 @@ REACTANCE_COLOUR = "#8c5a9e"
 
 
 def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | None = None) -> Axes:
-    """Draw R and X over frequency, with natural modes and resonances marked.
+    """Draw R and X at the feed over frequency, with natural modes and resonances marked.
+
+    Of a study with a feed line both are drawn at the connector too, thin.
 
     Parameters
     ----------
@@ -59,7 +68,8 @@ def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | N
     """
     chosen = one_case(dataset, case)
     ax = new_axes(ax)
-    put_title(ax, title_of(chosen, "impedance at the feed"))
+    planes = "impedance at the feed and at the connector"
+    put_title(ax, title_of(chosen, planes if has_feedline(chosen) else "impedance at the feed"))
     tidy(ax)
     unit = frequency_unit(chosen["frequency"])
     ax.set_xlabel(unit.label("frequency"))
@@ -79,12 +89,34 @@ def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | N
         linestyle=(0, (6, 2)),
         label="reactance X",
     )
+    if has_feedline(chosen):
+        _add_connector(ax, frequency, chosen[connector_variable(chosen)].values)
     ax.set_xlim(float(frequency[0]), float(frequency[-1]))
     ax.set_ylim(*_limits_ohm(impedance))
     _mark_modes(ax, chosen, unit)
     _mark_resonances(ax, frequency_hz, impedance, unit)
     legend_beside(ax)
     return ax
+
+
+def _add_connector(
+    ax: Axes, frequency: NDArray[np.float64], impedance: NDArray[np.complex128]
+) -> None:
+    """R and X behind the feed line, thin; an open circuit is a gap."""
+    shown = np.where(np.isfinite(impedance), impedance, np.nan)
+    for curve, colour, dashes, name in (
+        (shown.real, RESISTANCE_COLOUR, "solid", "R"),
+        (shown.imag, REACTANCE_COLOUR, (0, (6, 2)), "X"),
+    ):
+        ax.plot(
+            frequency,
+            curve,
+            color=colour,
+            linestyle=dashes,
+            linewidth=0.8,
+            alpha=0.6,
+            label=f"{name} at the connector",
+        )
 
 
 def _limits_ohm(impedance: NDArray[np.complex128]) -> tuple[float, float]:

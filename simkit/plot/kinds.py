@@ -19,12 +19,15 @@ class Kind:
         Name of the function in `simkit.plot` that draws it.
     of_one_case : bool
         False for pictures over the whole sweep.
+    of_feedline : bool
+        Only for studies with a feed line.
     """
 
     name: str
     about: str
     function: str
     of_one_case: bool = True
+    of_feedline: bool = False
 
 
 KINDS: dict[str, Kind] = {
@@ -37,15 +40,37 @@ KINDS: dict[str, Kind] = {
         ),
         Kind(
             "impedance",
-            "resistance and reactance at the feed, modes and resonances",
+            "resistance and reactance at the feed (and behind a feed line), modes and resonances",
             "plot_impedance",
         ),
         Kind(
             "reflection",
-            "reflection in dB with the dips and the modes they belong to",
+            "reflection at the connector in dB with the dips and the modes they belong to",
             "plot_reflection",
         ),
-        Kind("smith", "reflection in a Smith chart with the dips marked", "plot_smith"),
+        Kind(
+            "smith",
+            "reflection at the connector in a Smith chart with the dips marked",
+            "plot_smith",
+        ),
+        Kind(
+            "feedline",
+            "the feed line from the antenna to the connector, to scale",
+            "plot_feedline",
+            of_feedline=True,
+        ),
+        Kind(
+            "feedline_path",
+            "its way through the Smith chart, item by item, at the deepest dip",
+            "plot_feedline_path",
+            of_feedline=True,
+        ),
+        Kind(
+            "feedline_match",
+            "reflection before and after: at the feed and at the connector",
+            "plot_feedline_match",
+            of_feedline=True,
+        ),
         Kind("current", "current of each natural mode along the strip", "plot_current"),
         Kind("charge", "charge of each natural mode along the strip", "plot_charge"),
         Kind(

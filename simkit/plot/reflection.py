@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from matplotlib.ticker import MultipleLocator
+from numpy.typing import ArrayLike, NDArray
 
 from simkit.plot.cases import (
     is_solved,
@@ -30,6 +31,7 @@ from simkit.plot.style import (
     tidy,
 )
 from simkit.response.features import reflection
+from simkit.store.read import connector_variable, has_feedline
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -37,6 +39,10 @@ if TYPE_CHECKING:
 
 WELL_MATCHED_DB = -10.0
 """The usual limit from which on a match counts as good: a tenth of the power comes back."""
+
+
+LOWEST = 1e-5
+"""Smaller reflections are drawn as this: -100 dB."""
 
 
 @dataclass(frozen=True)
@@ -71,6 +77,8 @@ def plot_reflection(
 ) -> Axes:
     """Draw |reflection| in dB over frequency, each dip labelled by the mode that causes it.
 
+    Of a study with a feed line both planes are drawn; the dips are those at the connector.
+
     Parameters
     ----------
     dataset : xarray.Dataset
@@ -101,8 +109,24 @@ def plot_reflection(
         say_empty(ax, why_empty(chosen))
         return ax
     frequency = np.asarray(chosen["frequency"].values, dtype=float) * unit.factor
-    level = 20.0 * np.log10(np.abs(reflection(chosen["impedance"].values, reference)))
-    ax.plot(frequency, level, color=INK, linewidth=1.6)
+    level = _level_db(chosen[connector_variable(chosen)].values, reference)
+    if has_feedline(chosen):
+        before = _level_db(chosen["impedance"].values, reference)
+        ax.plot(
+            frequency,
+            before,
+            color=QUIET,
+            linewidth=1.2,
+            linestyle=(0, (6, 2)),
+            label="at the feed",
+        )
+    ax.plot(
+        frequency,
+        level,
+        color=INK,
+        linewidth=1.6,
+        label="at the connector" if has_feedline(chosen) else None,
+    )
     ax.axhline(WELL_MATCHED_DB, color=QUIET, linewidth=0.9, linestyle=(0, (4, 3)))
     ax.set_xlim(float(frequency[0]), float(frequency[-1]))
     ax.yaxis.set_major_locator(MultipleLocator(5.0))
@@ -110,8 +134,15 @@ def plot_reflection(
     dips = owned_dips(chosen)
     for dip in dips:
         _mark_dip(ax, dip, unit)
-    legend_beside(ax, "dips")
+    legend_beside(ax, "planes and dips" if has_feedline(chosen) else "dips")
     return ax
+
+
+def _level_db(impedance_ohm: ArrayLike, reference_ohm: float) -> NDArray[np.float64]:
+    # An exact match would be minus infinity.
+    return np.asarray(
+        20.0 * np.log10(np.maximum(np.abs(reflection(impedance_ohm, reference_ohm)), LOWEST))
+    )
 
 
 def _mark_dip(ax: Axes, dip: OwnedDip, unit: DisplayUnit) -> None:

@@ -13,11 +13,18 @@ import numpy as np
 from matplotlib.figure import Figure
 
 from simkit.errors import MeasurementError, StoreError
-from simkit.plot.cases import describe_case, is_solved, nearest_case, one_case, title_of
+from simkit.plot.cases import (
+    describe_case,
+    is_solved,
+    nearest_case,
+    one_case,
+    title_of,
+)
 from simkit.plot.charge import plot_charge
 from simkit.plot.crosssection import plot_crosssection
 from simkit.plot.current import plot_current
 from simkit.plot.density import plot_charge_maps, plot_current_maps
+from simkit.plot.feedline import plot_feedline, plot_feedline_match, plot_feedline_path
 from simkit.plot.geometry import plot_geometry
 from simkit.plot.impedance import plot_impedance
 from simkit.plot.kinds import KINDS
@@ -25,7 +32,7 @@ from simkit.plot.pattern import plot_pattern_cuts
 from simkit.plot.reflection import plot_reflection
 from simkit.plot.smith import plot_smith
 from simkit.plot.tracks import MeasuredBuild, plot_tracks
-from simkit.store.read import swept_names
+from simkit.store.read import has_feedline, swept_names
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -40,6 +47,9 @@ _OF_RESULTS = {
     "impedance": plot_impedance,
     "reflection": plot_reflection,
     "smith": plot_smith,
+    "feedline": plot_feedline,
+    "feedline_path": plot_feedline_path,
+    "feedline_match": plot_feedline_match,
 }
 _ALONG = {"current": plot_current, "charge": plot_charge}
 _ON_METAL = {"current_map": plot_current_maps, "charge_map": plot_charge_maps}
@@ -159,6 +169,8 @@ def save_all(
     written = []
     for kind in KINDS.values():
         if (kind.name in NEED_STUDY and study is None) or not kind.of_one_case:
+            continue
+        if kind.of_feedline and not has_feedline(dataset):
             continue
         if kind.name == "carrier" and not _has_carrier(_antenna(number, study)):
             continue

@@ -7,7 +7,7 @@ are as wide as they are; cables, lumped parts and transformers have a size of co
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, cast
 
 from matplotlib.patches import Circle, Rectangle
 
@@ -26,11 +26,17 @@ from simkit.plot.style import INK, METAL, MILLIMETRE, QUIET, new_axes, plain, pu
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
 
     from simkit.feedline.chain import Chain
     from simkit.feedline.line import Line
 
 _MM = MILLIMETRE.factor
+
+SIZE_IN = (9.6, 5.2)
+HEAD_IN, SHARE, LOWEST_IN = 1.5, 0.72, 3.0
+"""Height of title and axis, part of the width that the drawing gets beside its list, least height;
+inches."""
 
 CABLE = "#cfd8dd"
 BOX = 0.10
@@ -56,7 +62,8 @@ def plot_schematic(chain: Chain, *, ax: Axes | None = None) -> Axes:
         Equal scales; numbers at the elements are those of the list beside it.
     """
     parts = [part for element in chain.elements for part in element.parts]
-    ax = new_axes(ax, (9.6, 5.2))
+    own = ax is None
+    ax = new_axes(ax, SIZE_IN)
     put_title(ax, "feed line from the antenna to the connector")
     sheet = _Sheet(ax, _size_mm(parts))
     sheet.terminal("antenna", "right")
@@ -66,6 +73,12 @@ def plot_schematic(chain: Chain, *, ax: Axes | None = None) -> Axes:
     sheet.wire()
     sheet.terminal(f"connector,\n{chain.reference_ohm:g} ohm", "left")
     sheet.finish(parts)
+    if own:  # a long line is a low picture
+        (left, right), (low, high) = ax.get_xlim(), ax.get_ylim()
+        wanted = HEAD_IN + SHARE * SIZE_IN[0] * (high - low) / (right - left)
+        cast("Figure", ax.figure).set_size_inches(
+            SIZE_IN[0], min(max(wanted, LOWEST_IN), SIZE_IN[1])
+        )
     return ax
 
 
@@ -144,8 +157,9 @@ class _Sheet:
             self._circle(middle, end + way * 0.012 * self.size, 0.01 * self.size)
         side = middle + width / 2 + 0.03 * self.size
         self._upright_dimension(side, sorted((start, end)), part)
-        self._number(middle - width / 2 - 0.04 * self.size, start + way * length / 2, number)
-        self._reach(end + way * 0.05 * self.size)
+        # Beyond the end, where no neighbour's number is.
+        self._number(middle, end + way * 0.055 * self.size, number)
+        self._reach(end + way * 0.09 * self.size)
         self._on(BOX * self.size if series else width / 2)
 
     def _on(self, length: float) -> None:

@@ -8,7 +8,13 @@ import numpy as np
 from matplotlib.patches import Circle
 from numpy.typing import NDArray
 
-from simkit.plot.cases import is_solved, one_case, reference_ohm, title_of, why_empty
+from simkit.plot.cases import (
+    is_solved,
+    one_case,
+    reference_ohm,
+    title_of,
+    why_empty,
+)
 from simkit.plot.reflection import owned_dips
 from simkit.plot.style import (
     INK,
@@ -21,6 +27,7 @@ from simkit.plot.style import (
     say_empty,
 )
 from simkit.response.features import reflection
+from simkit.store.read import connector_variable, has_feedline
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -69,8 +76,19 @@ def plot_smith(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | None 
     if not is_solved(chosen):
         say_empty(ax, why_empty(chosen))
         return ax
-    gamma = reflection(chosen["impedance"].values, reference)
-    ax.plot(gamma.real, gamma.imag, color=INK, linewidth=1.6, zorder=3)
+    gamma = reflection(chosen[connector_variable(chosen)].values, reference)
+    if has_feedline(chosen):
+        before = reflection(chosen["impedance"].values, reference)
+        ax.plot(
+            before.real,
+            before.imag,
+            color=QUIET,
+            linewidth=1.1,
+            linestyle=(0, (6, 2)),
+            label="at the feed",
+        )
+    label = "at the connector" if has_feedline(chosen) else None
+    ax.plot(gamma.real, gamma.imag, color=INK, linewidth=1.6, zorder=3, label=label)
     _show_direction(ax, gamma)
     _mark_ends(ax, np.asarray(chosen["frequency"].values, dtype=float), gamma)
     _mark_dips(ax, chosen, gamma)

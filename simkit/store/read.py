@@ -120,6 +120,19 @@ def _connector_is_feed(data: dict[str, xr.Variable]) -> dict[str, xr.Variable]:
     return found
 
 
+def has_feedline(dataset: xr.Dataset) -> bool:
+    """Return whether results, or one case of them, are of a study with a feed line."""
+    return bool(dataset.attrs.get("feedline"))
+
+
+def connector_variable(dataset: xr.Dataset) -> str:
+    """Return the name of the variable with the impedance at the connector.
+
+    It is that of the feed where nothing lies between, as in results of an earlier simkit.
+    """
+    return "impedance_at_connector" if has_feedline(dataset) else "impedance"
+
+
 def status_labels(dataset: xr.Dataset) -> xr.DataArray:
     """The status of every case as a word: ``solved``, ``timed-out`` ...
 

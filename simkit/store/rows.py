@@ -188,6 +188,7 @@ def _resonances(case: xr.Dataset, owners: list[Row]) -> list[Row]:
 
 def _dips(case: xr.Dataset, owners: list[Row]) -> list[Row]:
     from simkit.response.features import find_dips, reflection
+    from simkit.store.read import connector_variable
 
     owned = [
         {
@@ -198,8 +199,7 @@ def _dips(case: xr.Dataset, owners: list[Row]) -> list[Row]:
         for mode in owners
         if "dip_frequency_hz" in mode
     ]
-    plane = "impedance_at_connector" if "impedance_at_connector" in case else "impedance"
-    curve = _curve(case, plane)
+    curve = _curve(case, connector_variable(case))
     if curve is None:
         return _united(owned, [], 0.0)
     frequency, impedance = curve

@@ -51,3 +51,13 @@ def test_modes_of_which_nothing_is_known_lose_nothing() -> None:
     rows = [{"case": 0, "status": "solved", "values": {}, "modes": [only]}]
     assert not lossy(rows)
     assert "-" in modes_table(rows, {})
+
+
+def test_behind_a_feed_line_what_it_takes_is_shown() -> None:
+    rows = [row(0, 1.0, 1.0)]
+    rows[0]["modes"][0] |= {"network_efficiency": 0.912, "realised_gain_dbi": 0.6}
+    head, _, first, second = modes_table(rows, {"arm": "mm"}, feedline=True).splitlines()
+    assert head.split()[-3:] == ["gain", "network", "realised"]
+    assert first.split()[-6:] == ["1.2", "dBi", "91.2", "%", "0.6", "dBi"]
+    assert second.split()[-4:] == ["1.2", "dBi", "-", "-"]
+    assert "network" not in modes_table(rows, {"arm": "mm"})

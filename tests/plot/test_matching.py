@@ -125,3 +125,11 @@ def test_schematic_without_lines_has_no_scale():
 
 def test_folding_keeps_number_and_unit_together():
     assert folded("two strips 5 mm wide", 12) == "two strips\n5\u00a0mm wide"
+
+
+def test_a_long_line_is_a_low_picture():
+    short = plot_schematic(Chain((Stub(STRIPS, 30e-3), LineSection(STRIPS, 30e-3))))
+    long = plot_schematic(Chain((Stub(STRIPS, 30e-3), LineSection(CABLE, 900e-3))))
+    heights = [ax.figure.get_size_inches()[1] for ax in (short, long)]
+    assert heights[1] < 0.7 * heights[0]
+    assert heights[1] >= 3.0

@@ -173,7 +173,7 @@ def test_drawing_leaves_pyplot_alone_and_listing_needs_no_matplotlib(tmp_path: P
     code = (
         "import sys\n"
         "from simkit.plot import KINDS\n"
-        "assert len(KINDS) == 11\n"
+        "assert len(KINDS) == 14\n"
         "assert not [m for m in sys.modules if m.startswith(('matplotlib', 'xarray'))]\n"
         "import simkit.plot.save\n"
         "assert 'matplotlib.figure' in sys.modules\n"
