@@ -38,7 +38,7 @@ ROUNDS = 300
 """Most evaluations that refining one network may take."""
 
 LOG_REACH = (-20.0, 1.5)
-"""Logarithms of the factors by which refining may move a dimension: to nothing, and to 4.5 times."""
+"""Logarithms of the factors by which refining may move a dimension: to nothing, to 4.5 times."""
 
 NOTHING_M = 1e-6
 """A section shorter than this is none."""
