@@ -23,6 +23,7 @@ from simkit.measured.selection import (
     row_of_case,
     rows_of_build,
     simulated_reflection,
+    with_loose_dips,
 )
 from simkit.measured.wording import comparison_text
 from simkit.response.features import Dip
@@ -205,9 +206,11 @@ def compare(
     expected = simulated_reflection(dataset.isel(case=row), reference)
     notes = [*measurement.notes, *quality_notes(measurement, expected), *dip_notes]
     notes += [*build_notes, *fit_notes]
+    every[row] = with_loose_dips(dataset.isel(case=row), every[row], reference)
     fixed = _fixed_pairs(every[row], dips, pins or {}, measurement)
     pairing = every[row].pair(heard, *bands, fixed)
     notes += _ambiguity_notes(every[row], dips, pairing, heard, bands, fixed)
+    notes += _feedline_notes(every[row], dips, pairing)
     notes += _doubt_notes(dataset, row)
     notes += _unexcited_notes(dataset.isel(case=row), every[row], pairing)
     return _comparison(dataset, row, measurement, every[row], dips, pairing, notes)
@@ -258,6 +261,15 @@ def _doubt_notes(dataset: xr.Dataset, row: int) -> list[str]:
         return []
     reason = str(dataset["reason"].values[row]) if "reason" in dataset else ""
     return [f"the simulated case is doubtful: {reason or 'no reason is stored'}"]
+
+
+def _feedline_notes(modes: CaseModes, dips: list[Dip], pairing: Pairing) -> list[str]:
+    return [
+        f"the measured dip at {dips[j].frequency_hz / 1e6:.1f} MHz is the feed line's: the model "
+        f"has it at {modes.loose[i].frequency_hz / 1e6:.1f} MHz, where no mode takes most of the "
+        "power"
+        for i, j in pairing.others
+    ]
 
 
 def _unexcited_notes(case: xr.Dataset, modes: CaseModes, pairing: Pairing) -> list[str]:

@@ -78,12 +78,16 @@ class Pairing:
         Half a chi-square each for frequencies, depths and what is left over; lower is better.
     misfit : float
         The same with the common factor held at 1: how well the model stands as it is.
+    others : tuple of (int, int)
+        Measured dips that are one which the feed line makes and no mode owns: index of that one
+        and of the measured dip.
     """
 
     pairs: tuple[tuple[int, int], ...]
     scale: float
     cost: float
     misfit: float
+    others: tuple[tuple[int, int], ...] = ()
 
 
 def pair(

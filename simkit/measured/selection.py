@@ -12,8 +12,8 @@ from numpy.typing import NDArray
 from simkit.errors import StoreError
 from simkit.measured.measurement import ComplexArray, FloatArray
 from simkit.measured.pairing import ModelledDip, Pairing, ambiguous_pairs, pair
-from simkit.response.features import reflection
-from simkit.store.read import connector_variable, swept_names
+from simkit.response.features import find_dips, reflection
+from simkit.store.read import connector_variable, has_feedline, swept_names
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
@@ -34,7 +34,8 @@ class CaseModes:
     """Natural modes of one case with the dips they own, lowest frequency first.
 
     All arrays have the shape (M,); NaN where a mode owns no dip. `on_plane`: the metal stands on a
-    ground plane, and its half waves are counted with those of its image.
+    ground plane, and its half waves are counted with those of its image. `loose`: dips that a feed
+    line makes where no mode takes most of the power.
     """
 
     half_waves: tuple[int, ...]
@@ -44,6 +45,7 @@ class CaseModes:
     return_loss_db: FloatArray
     bandwidth_hz: FloatArray
     on_plane: bool = False
+    loose: tuple[ModelledDip, ...] = ()
 
     def expected_dips(self) -> list[ModelledDip]:
         """One entry per mode; those without a dip stand where one would be expected."""
@@ -71,7 +73,7 @@ class CaseModes:
         found = pair(
             modelled, measured, band_hz, measured_band_hz, pins=_sorted_places(order, pins)
         )
-        return _back(order, found)
+        return self._back(order, found)
 
     def doubtful(
         self,
@@ -87,21 +89,28 @@ class CaseModes:
         found = ambiguous_pairs(
             inner, modelled, measured, band_hz, measured_band_hz, _sorted_places(order, pins)
         )
-        return {(order[i], j): _back(order, other) for (i, j), other in found.items()}
+        return {(order[i], j): self._back(order, other) for (i, j), other in found.items()}
+
+    def _back(self, order: list[int], found: Pairing) -> Pairing:
+        pairs, modes = sorted((order[i], j) for i, j in found.pairs), len(self.half_waves)
+        return replace(
+            found,
+            pairs=tuple((i, j) for i, j in pairs if i < modes),
+            others=tuple((i - modes, j) for i, j in pairs if i >= modes),
+        )
 
     def _ordered(self) -> tuple[list[int], list[ModelledDip]]:
-        """Two modes may own dips in the other order, when one of them is hardly excited."""
-        modelled = self.expected_dips()
+        """Two modes may own dips in the other order, when one of them is hardly excited.
+
+        Loose dips come in between; their places are those behind the modes.
+        """
+        modelled = [*self.expected_dips(), *self.loose]
         order = sorted(range(len(modelled)), key=lambda i: modelled[i].frequency_hz)
         return order, [modelled[i] for i in order]
 
 
 def _sorted_places(order: list[int], pairs: Sequence[tuple[int, int]]) -> list[tuple[int, int]]:
     return [(order.index(i), j) for i, j in pairs]
-
-
-def _back(order: list[int], found: Pairing) -> Pairing:
-    return replace(found, pairs=tuple(sorted((order[i], j) for i, j in found.pairs)))
 
 
 def as_cases(dataset: xr.Dataset) -> xr.Dataset:
@@ -145,6 +154,20 @@ def _modes(columns: dict[str, FloatArray], on_plane: bool) -> CaseModes:
         bandwidth_hz=kept["dip_bandwidth"],
         on_plane=on_plane,
     )
+
+
+def with_loose_dips(case: xr.Dataset, modes: CaseModes, reference_ohm: float) -> CaseModes:
+    """Return the modes of one case with the dips that its feed line makes besides theirs."""
+    if not has_feedline(case):
+        return modes
+    frequency, gamma = simulated_reflection(case, reference_ohm)
+    step_hz = float(frequency[1] - frequency[0])
+    loose = [
+        ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20))
+        for dip in find_dips(frequency, gamma)
+        if not np.any(abs(modes.dip_hz - dip.frequency_hz) <= step_hz)
+    ]
+    return replace(modes, loose=tuple(loose))
 
 
 def simulated_reflection(case: xr.Dataset, reference_ohm: float) -> tuple[FloatArray, ComplexArray]:

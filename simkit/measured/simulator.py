@@ -19,6 +19,7 @@ from scipy.interpolate import CubicSpline
 from simkit.errors import MeasurementError
 from simkit.measured.connector import FeedLineModel, owners, values_of_line_alone
 from simkit.measured.measurement import ComplexArray, FloatArray
+from simkit.measured.pairing import ModelledDip
 from simkit.measured.selection import CaseModes
 from simkit.measured.variation import SCALE, Variation
 from simkit.response.features import reflection
@@ -198,7 +199,13 @@ class Surrogate:
         ):
             if mode >= 0:
                 table[:, mode] = dip.frequency_hz, dip.return_loss_db, dip.bandwidth_hz
-        return replace(modes, dip_hz=table[0], return_loss_db=table[1], bandwidth_hz=table[2])
+        loose = tuple(
+            ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20))
+            for mode, dip in zip(own, dips, strict=True)
+            if mode < 0
+        )
+        rows = {"dip_hz": table[0], "return_loss_db": table[1], "bandwidth_hz": table[2]}
+        return replace(modes, **rows, loose=loose)
 
     def feed_modes(self, values: Mapping[str, float]) -> CaseModes:
         """Modes and the dips they own at the feed; NaN where not every node has the dip."""

@@ -115,7 +115,8 @@ class Connector:
         if known.any():
             wanted, place = np.unique(frequency_hz[known], return_inverse=True)
             seen = self.chain.terminate(self.load.at(wanted))
-            network[known] = seen.efficiency[place]
+            # Where next to nothing passes, rounding may make it more than comes in.
+            network[known] = np.minimum(seen.efficiency, 1.0)[place]
             mismatch[known] = seen.mismatch_factor[place]
         return network, mismatch
 

@@ -17,6 +17,7 @@ from simkit.measured.connector import FeedLineModel, at_connector, owners, value
 from simkit.measured.fit import fit
 from simkit.measured.measurement import Measurement
 from simkit.measured.nearest import nearest_cases
+from simkit.measured.pairing import ModelledDip
 from simkit.measured.simulator import Engine, Surrogate
 from simkit.measured.stored import surrogate_of_results
 from simkit.measured.touchstone import read_touchstone
@@ -157,6 +158,8 @@ def test_a_length_of_the_feed_line_is_fitted(study, model):
     # an error of 10 ps of the analyser's delay looks like 2.4 mm of this line
     assert value.value == pytest.approx(51e-3, abs=1.5e-3)
     assert result.rms_after < 0.02 < result.rms_before
+    # the line's own two nanoseconds are no missing port extension
+    assert not any("the phase turns like behind" in note for note in result.notes)
 
 
 @pytest.mark.parametrize("to", ["magnitude", "features"])
@@ -263,6 +266,26 @@ def test_a_dip_belongs_to_the_mode_that_takes_the_power():
     assert owners([1.16e9, 1.18e9], [2e-3, 2e-3], natural, q, peak_ohm) == [0, -1]
 
 
+def test_dips_that_no_mode_owns_take_none_away(model):
+    """A stub that resonates between the modes makes a dip of its own."""
+    f = np.linspace(*model.band_hz, 4001)
+    values = at(model, **{"feedline.stub.length": 38e-3})
+    modes = model.modes(values)
+    assert len(modes.loose) >= 1
+    curve = behind(f, synthetic.impedance(f, 74.4e-3, 3.0), stub_m=38e-3)
+    dips = find_dips(f, curve)
+    heard = [ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20)) for dip in dips]
+    band = (float(f[0]), float(f[-1]))
+    found = modes.pair(heard, band, band)
+    assert len(found.others) == len(modes.loose)
+    for i, j in found.others:
+        assert modes.loose[i].frequency_hz == pytest.approx(heard[j].frequency_hz, rel=2e-3)
+    for i, j in found.pairs:
+        assert modes.dip_hz[i] == pytest.approx(heard[j].frequency_hz, rel=2e-3)
+    doubtful = modes.doubtful(found, heard, band, band)
+    assert all(i < len(modes.half_waves) for i, _ in doubtful)
+
+
 def test_impedance_at_the_connector(study):
     f = np.linspace(0.5e9, 3e9, 101)
     impedance = synthetic.impedance(f, 74e-3, 2.7)
@@ -329,6 +352,11 @@ def test_compare_is_at_the_connector(solved, tmp_path):
         # the measured dip is smoothed before it is found
         assert mode.ratio == pytest.approx(1.0, abs=1e-3)
     assert np.abs(found.simulated_reflection - found.measurement.reflection).max() < 1e-8
+    taken = {mode.measured_hz for mode in paired}
+    loose = [dip for dip in found.unpaired if dip.frequency_hz not in taken]
+    assert len(loose) >= 1
+    said = [note for note in found.notes if "is the feed line's: the model has it at" in note]
+    assert len(said) == len(loose)
     assert found.agreement().grade in ("excellent", "very good")
     nearest = nearest_cases(dataset, found.measurement)
     assert nearest[0].case == 3
