@@ -265,7 +265,15 @@ def write_network(
     target = origin.target(output)
     check_study(target, text)
     create(target, text)
+    for doubt in _doubts(written.chain, nominal):
+        click.echo(f"note: cases will be doubtful: {doubt}", err=True)
     click.echo(f"next: simkit run {target}", err=True)
+
+
+def _doubts(chain: Chain, antenna: Antenna) -> list[str]:
+    """What to distrust in a network over the whole band of a study."""
+    band = [antenna.frequency.start_hz, antenna.frequency.stop_hz]
+    return list(dict.fromkeys(d for element in chain.elements for d in element.doubts(band)))
 
 
 def changed_values(study: Study, case: int | None) -> dict[str, float]:

@@ -166,6 +166,14 @@ def test_a_results_folder_writes_into_the_current_one(folder):
     assert "next: simkit run gauge_matched.toml" in done.stderr
 
 
+def test_lines_that_do_not_hold_over_the_whole_band_are_noted(folder):
+    words = ("--kind", "quarter wave", "--line", "two-strips, width=40 mm, separation=20 mm")
+    done = run("gauge.toml", *BAND, *words, "--write", "1")
+    assert done.exit_code == 0, done.output
+    assert "note: cases will be doubtful: two strips 40 mm wide, 20 mm apart" in done.stderr
+    assert "this is used up to 1050 MHz" in done.stderr
+
+
 def test_nothing_is_overwritten(folder):
     (folder / "gauge_matched.toml").write_text("mine")
     for words in ((), ("-o", "gauge.toml")):
