@@ -10,7 +10,9 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 from simkit.errors import (
+    ConditionError,
     EngineError,
+    ExportError,
     FeedlineError,
     GeometryError,
     MeasurementError,
@@ -21,7 +23,9 @@ from simkit.errors import (
 
 if TYPE_CHECKING:
     from simkit import plot
+    from simkit.exports import export
     from simkit.feedline.sources import match
+    from simkit.finding import query
     from simkit.measured import compare, read_touchstone
     from simkit.runner import run
     from simkit.store import as_grid, open_results
@@ -31,7 +35,9 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 __all__ = [
+    "ConditionError",
     "EngineError",
+    "ExportError",
     "FeedlineError",
     "GeometryError",
     "MeasurementError",
@@ -41,11 +47,13 @@ __all__ = [
     "__version__",
     "as_grid",
     "compare",
+    "export",
     "load_study",
     "match",
     "modes",
     "open_results",
     "plot",
+    "query",
     "read_touchstone",
     "run",
 ]
@@ -53,10 +61,12 @@ __all__ = [
 _HOME = {
     "as_grid": "simkit.store",
     "compare": "simkit.measured",
+    "export": "simkit.exports",
     "load_study": "simkit.study",
     "match": "simkit.feedline.sources",
     "modes": "simkit.store.rows",
     "open_results": "simkit.store",
+    "query": "simkit.finding",
     "read_touchstone": "simkit.measured",
     "run": "simkit.runner",
 }

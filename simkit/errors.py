@@ -4,6 +4,9 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+_EXCERPT = 90
+"""Characters of a condition shown around the place of an error."""
+
 
 class SimkitError(Exception):
     """Root of every error simkit raises on purpose; anything else is a bug of simkit."""
@@ -56,6 +59,23 @@ class EngineError(SimkitError, RuntimeError):
 
 class StoreError(SimkitError, OSError):
     """A results folder cannot be read, written or continued."""
+
+
+class ConditionError(SimkitError, ValueError):
+    """A condition that selects cases cannot be understood; its text points at the place."""
+
+    def __init__(self, condition: str, start: int, stop: int, what: str) -> None:
+        self.condition = condition
+        self.start = start
+        self.stop = stop
+        begin = max(0, start - _EXCERPT // 2)
+        line = condition[begin : begin + _EXCERPT]
+        mark = "^" * max(1, min(stop, begin + _EXCERPT) - start)
+        super().__init__(f"{what}\n  {line}\n  {' ' * (start - begin)}{mark}")
+
+
+class ExportError(SimkitError, OSError):
+    """Data cannot be handed on: where they should go, or in the form that was asked for."""
 
 
 class MeasurementError(SimkitError, ValueError):

@@ -71,3 +71,89 @@ def make():
         brass=Metal("brass", 1.5e7, 0.15e-3),
         band=FrequencyBand,
     )
+
+
+# A store of made-up numbers, written as a run writes it, for everything that reads results.
+
+CREEK_HZ = np.linspace(0.5e9, 1.5e9, 101)
+CREEK_ARMS_M = np.linspace(0.070, 0.082, 7)
+CREEK_WIDTHS_M = np.array([0.004, 0.008])
+CREEK_CASES = 14
+CREEK_Q = 6.0
+
+
+def creek_centre_hz(case):
+    """Where the made-up antenna of a case resonates in series."""
+    return 0.84e9 + 10e6 * case
+
+
+def creek_impedance(case, frequency_hz):
+    """A resistor of 40 ohm, an inductor and a capacitor in series."""
+    ratio = frequency_hz / creek_centre_hz(case)
+    return 40.0 * (1 + 1j * CREEK_Q * (ratio - 1 / ratio))
+
+
+@pytest.fixture(scope="session")
+def creek_results(tmp_path_factory):
+    """Results folder of 14 cases in blocks of 4: case 3 refused, 9 doubtful, 12 and 13 waiting.
+
+    Case 5 has no dip at its half-wave mode, case 6 stands on a plane; nobody has a 2-wave mode.
+    """
+    from simkit.store.layout import Layout, SweptColumn, create_store
+    from simkit.store.schema import Status
+    from simkit.store.write import StoreFile
+
+    arms = np.repeat(CREEK_ARMS_M, 2)
+    widths = np.tile(CREEK_WIDTHS_M, 7)
+    infill = np.linspace(0.3, 0.95, CREEK_CASES)
+    swept = (
+        SweptColumn("arm", "m", "mm", arms),
+        SweptColumn("width", "m", "mm", widths),
+        SweptColumn("carrier.infill", "1", "1", infill),
+    )
+    attrs = {
+        "title": "Creek gauge, made up",
+        "reference_ohm": 50.0,
+        "sweep_method": "list",
+        "sweep_shape": [CREEK_CASES],
+    }
+    folder = tmp_path_factory.mktemp("made") / "creek_gauge"
+    folder.mkdir()
+    layout = Layout(CREEK_CASES, 5, 4, CREEK_HZ, ("east", "west"), swept, attrs)
+    create_store(folder / "store.zarr", layout)
+    store = StoreFile(folder / "store.zarr")
+    for number in range(3):
+        block = store.new_block(number)
+        for case in range(4 * number, 4 * number + 4):
+            status = {3: Status.REFUSED, 9: Status.DOUBTFUL}.get(case, Status.SOLVED)
+            values = {} if status is Status.REFUSED else _creek_values(case)
+            reason = "" if status is Status.SOLVED else "the strip crosses itself, über all"
+            block.put(case, values | {"status": int(status), "reason": reason})
+        store.write_block(number, block)
+    return folder
+
+
+def _creek_values(case):
+    none = np.full(10, np.nan)
+    frequency, quality, dip, gain = (none.copy() for _ in range(4))
+    halves = np.full(10, -1)
+    frequency[:3] = creek_centre_hz(case) * np.array([0.98, 2.0, 3.1])
+    halves[:3] = (1, 2, 3)
+    quality[:3] = CREEK_Q + case * np.array([0.1, 0.2, 0.3])
+    dip[0] = np.nan if case == 5 else creek_centre_hz(case)
+    gain[:3] = (2.1 + 0.01 * case, 2.6, 3.4)
+    return {
+        "impedance": creek_impedance(case, CREEK_HZ),
+        "mode_frequency": frequency,
+        "mode_half_waves": halves.astype(np.int16),
+        "path_on_plane": np.int8(case == 6),
+        "mode_q": quality,
+        "dip_frequency": dip,
+        "dip_return_loss": np.where(np.isnan(dip), np.nan, 19.0 + case),
+        "peak_gain": gain,
+        "efficiency": np.where(np.isnan(frequency), np.nan, 0.9 + 0.005 * case),
+        "gain": np.full((10, 19, 37), 2.5 - 0.25 * case, dtype=np.float32),
+        "seconds": 0.5 * case,
+        "solves": np.int32(10 + case),
+        "worker": f"process {case}",
+    }

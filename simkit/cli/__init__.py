@@ -13,9 +13,23 @@ from typing import IO, Any
 import click
 
 from simkit import __version__
-from simkit.errors import FeedlineError, MeasurementError, SimkitError, StudyError
+from simkit.errors import ConditionError, FeedlineError, MeasurementError, SimkitError, StudyError
 
-COMMANDS = ("new", "check", "run", "status", "modes", "plot", "compare", "match", "fit", "trim")
+COMMANDS = (
+    "new",
+    "check",
+    "run",
+    "status",
+    "list",
+    "modes",
+    "query",
+    "plot",
+    "compare",
+    "match",
+    "fit",
+    "trim",
+    "export",
+)
 """Subcommands in the order in which one uses them; each is `command` in a module of its name."""
 
 
@@ -43,7 +57,8 @@ class LazyGroup(click.Group):
 
     def list_commands(self, ctx: click.Context) -> list[str]:
         """Names of all subcommands."""
-        return list(COMMANDS)
+        # Not list(): once its module is imported, that name stands for the command here.
+        return [*COMMANDS]
 
     def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
         """Import one subcommand."""
@@ -58,7 +73,7 @@ class LazyGroup(click.Group):
             os.environ.setdefault(name, "1")
         try:
             return super().invoke(ctx)
-        except (StudyError, MeasurementError, FeedlineError) as error:
+        except (StudyError, MeasurementError, ConditionError, FeedlineError) as error:
             raise InputFailure(str(error)) from error
         except SimkitError as error:
             raise CommandFailure(str(error)) from error

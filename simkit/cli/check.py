@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, cast
 
 import click
 
+from simkit.cli.folder import drawing_folder
 from simkit.cli.options import results_option, study_argument
 from simkit.cli.output import labelled
 
@@ -89,9 +90,11 @@ def draw(
     from simkit.plot import plot_geometry
     from simkit.plot.save import write
     from simkit.runner.folder import ResultsFolder
+    from simkit.store.remote import place
 
-    folder = Path(results or "results") / study.path.stem
+    there = place(results or "results") / study.path.stem
     if output is None:
-        ResultsFolder(folder).check_title(study.title, fresh=False)
+        ResultsFolder(there).check_title(study.title, fresh=False)
     axes = plot_geometry(antenna, wires, title=title)
-    return write(cast("Figure", axes.figure), output or folder / "plots" / "geometry.png")
+    with drawing_folder(there, output) as folder:
+        return write(cast("Figure", axes.figure), output or folder / "plots" / "geometry.png")

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, cast
 
 import click
 
-from simkit.cli.folder import build_of, study_of
+from simkit.cli.folder import build_of, drawing_folder, study_of
 from simkit.cli.options import case_option, csv_option, json_option, one_format, results_argument
 from simkit.cli.output import csv_text, emit, json_text
 
@@ -102,9 +102,10 @@ def command(
         emit(csv_text(rows))
     else:
         emit("\n\n".join(_text(comparison, natural=natural) for comparison in found))
-    for comparison in found:
-        path = save_overlay(comparison, output or overlay_path(results, comparison))
-        click.echo(f"written: {path}", err=True)
+    with drawing_folder(results, output) as folder:
+        for comparison in found:
+            path = save_overlay(comparison, output or overlay_path(folder, comparison))
+            click.echo(f"written: {path}", err=True)
 
 
 def _text(comparison: Comparison, *, natural: bool) -> str:
@@ -142,11 +143,12 @@ def _show_nearest(
                 nearest_text(file, cases, units) for file, cases in zip(files, ranked, strict=True)
             )
         )
-    for file, cases in zip(files, ranked, strict=True):
-        target = output or Path(results) / "plots" / f"nearest_{file.path.stem}.png"
-        reference = float(dataset.attrs.get("reference_ohm", 50.0))
-        axes = plot_nearest(file.renormalised(reference), cases)
-        click.echo(f"written: {write(cast('Figure', axes.figure), target)}", err=True)
+    reference = float(dataset.attrs.get("reference_ohm", 50.0))
+    with drawing_folder(results, output) as folder:
+        for file, cases in zip(files, ranked, strict=True):
+            target = output or folder / "plots" / f"nearest_{file.path.stem}.png"
+            axes = plot_nearest(file.renormalised(reference), cases)
+            click.echo(f"written: {write(cast('Figure', axes.figure), target)}", err=True)
 
 
 def overlay_path(results: str | Path, comparison: Comparison) -> Path:

@@ -2,12 +2,35 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from tempfile import TemporaryDirectory
 from typing import TYPE_CHECKING
 
+import click
+
 if TYPE_CHECKING:
+    from simkit.store.remote import RemotePath
     from simkit.study import Study
+
+
+@contextmanager
+def drawing_folder(results: str | Path | RemotePath, output: str | None = None) -> Iterator[Path]:
+    """Give the folder pictures are drawn into; those for an address are sent there afterwards.
+
+    With `output` they go elsewhere, and the folder is not used.
+    """
+    from simkit.store.remote import place
+
+    there = place(results)
+    if output is not None or isinstance(there, Path):
+        yield Path(str(there))
+        return
+    with TemporaryDirectory(prefix="simkit-") as folder:
+        yield Path(folder)
+        there.upload_tree(Path(folder))
+    click.echo(f"  ... sent to {there}", err=True)
 
 
 def study_of(results: str | Path) -> Study | None:

@@ -220,7 +220,8 @@ def command(
         click.echo(written.about, err=True)
         write_network(origin, written, found, plane, output)
         chain = written.chain if draw is None else chain
-    draw_network(report, chain, found, origin.folder(plots), origin.stem)
+    with origin.pictures(plots) as folder:
+        draw_network(report, chain, found, folder, origin.stem)
 
 
 def _kinds(wanted: tuple[str, ...]) -> tuple[str, ...]:

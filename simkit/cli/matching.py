@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection
+from collections.abc import Collection, Iterator
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal
@@ -10,7 +11,7 @@ from typing import TYPE_CHECKING, Any, Literal
 import click
 
 from simkit.cli.fitting import save
-from simkit.cli.folder import study_of
+from simkit.cli.folder import drawing_folder, study_of
 from simkit.cli.output import emit
 from simkit.errors import FeedlineError, Problem, StudyError
 
@@ -141,14 +142,16 @@ class Origin:
         """First part of the pictures' names."""
         return "match" if self.study is not None else f"match_{Path(self.data).stem}"
 
-    def folder(self, plots: str | None) -> Path:
-        """Return the folder for pictures."""
+    @contextmanager
+    def pictures(self, plots: str | None) -> Iterator[Path]:
+        """Give the folder for pictures; those of results at an address are sent there."""
         if plots is not None:
-            return Path(plots)
-        if "://" in self.data:
-            return Path("plots")
-        data = Path(self.data)
-        return (data.parent if data.is_file() else data) / "plots"
+            yield Path(plots)
+        elif self.study is None and Path(self.data).is_file():
+            yield Path(self.data).parent / "plots"
+        else:
+            with drawing_folder(self.data) as folder:
+                yield folder / "plots"
 
     def target(self, output: str | None) -> Path:
         """Return the file for the matched study."""
@@ -318,6 +321,8 @@ def create(target: Path, text: str) -> None:
         what = "exists already and is left as it is; give another name with -o"
         raise StudyError(str(target), [Problem(what)]) from None
     except OSError as error:
+        with suppress(OSError):  # what was begun, on a disk that is full
+            target.unlink(missing_ok=True)
         what = f"cannot be written: {error.strerror}; give a file that can be with -o"
         raise StudyError(str(target), [Problem(what)]) from error
     click.echo(f"written: {target}", err=True)

@@ -112,17 +112,16 @@ def _attribute(dataset: xr.Dataset, attribute: str) -> dict[str, str]:
 
 def flat_rows(rows: list[Row], units: dict[str, str]) -> list[Row]:
     """Return one row per mode, or one for a case without modes; units stand in the names."""
+    from simkit.store.rows import column_name
+
     flat = []
     for row in rows:
         start = {"case": row["case"], "status": row["status"]}
-        start |= {_with_unit(name, units): value for name, value in row["values"].items()}
+        start |= {
+            column_name(name, units.get(name, "1")): value for name, value in row["values"].items()
+        }
         flat += [start | {"solves": row["solves"]} | mode for mode in row["modes"] or [{}]]
     return flat
-
-
-def _with_unit(name: str, units: dict[str, str]) -> str:
-    unit = units.get(name, "1")
-    return name if unit in {"", "1"} else f"{name}_{unit.lower()}"
 
 
 def lossy(rows: list[Row]) -> bool:

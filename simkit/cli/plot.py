@@ -2,11 +2,9 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
 import click
 
-from simkit.cli.folder import study_of
+from simkit.cli.folder import drawing_folder, study_of
 from simkit.cli.options import case_option, results_argument
 from simkit.plot.kinds import KINDS
 
@@ -50,9 +48,10 @@ def command(results: str, kind: str, case: int | None, by: str | None, output: s
     from simkit.store import open_results
 
     dataset = open_results(results)
-    target = output or Path(results) / "plots" / _file_name(kind, case, by)
-    path = save_plot(dataset, kind, target, case=case, study=study_of(results), by=by)
-    click.echo(f"written: {path}", err=True)
+    with drawing_folder(results, output) as folder:
+        target = output or folder / "plots" / _file_name(kind, case, by)
+        path = save_plot(dataset, kind, target, case=case, study=study_of(results), by=by)
+        click.echo(f"written: {path}", err=True)
 
 
 def _file_name(kind: str, case: int | None, by: str | None) -> str:

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
+from simkit.cli.folder import drawing_folder
 from simkit.cli.options import results_option, study_argument
 from simkit.cli.output import labelled
 
@@ -16,7 +15,6 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from simkit.runner import RunSummary
-    from simkit.store.remote import Place
     from simkit.study import Study
 
 
@@ -88,20 +86,6 @@ def command(
         raise click.exceptions.Exit(1)
 
 
-@contextmanager
-def drawing_folder(results: Place) -> Iterator[Path]:
-    """The folder pictures are drawn into; those for an address are sent there afterwards."""
-    if isinstance(results, Path):
-        yield results
-        return
-    import tempfile
-
-    with tempfile.TemporaryDirectory(prefix="simkit-") as folder:
-        yield Path(folder)
-        results.upload_tree(Path(folder))
-    click.echo(f"  ... sent to {results}")
-
-
 def show_remarks(dataset: xr.Dataset, study: Study) -> None:
     """Print why some cases have no solution, or one to be doubted."""
     from simkit.cli.status import remarked_cases, remarks_lines
@@ -145,12 +129,17 @@ def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
 
 def end_text(summary: RunSummary, study: str) -> str:
     """Return counts per status, where everything is, and what to do next."""
+    from simkit.store.schema import Status
+
     counts = ", ".join(f"{n} {status.label}" for status, n in summary.counts.items() if n)
     results = summary.results_dir
     lines = ["", labelled("Cases", f"{counts} ({summary.reused} reused)")]
     if summary.stopped or not summary.complete:
         why = f"stopped {summary.stopped}; the same command continues" if summary.stopped else ""
         return "\n".join([*lines, labelled("Next", why or f"simkit run {study} (continues)")])
+    if unlucky := summary.counts[Status.FAILED] + summary.counts[Status.TIMED_OUT]:
+        again = f"simkit run {study} --retry (solves {unlucky} failed or timed-out again)"
+        lines.append(labelled("Again", again))
     return "\n".join(
         [
             *lines,

@@ -35,8 +35,8 @@ from simkit.geometry.strips import (
 from simkit.geometry.wires import Chain, FloatArray, IntArray, WireGrid
 from simkit.study.model import Antenna
 
-PROBE_PLACE = 0.13
-"""Second source, as a fraction of the fed chain: at no node of any of the first seven modes."""
+PROBE_PLACE = 0.08
+"""Second source, as a fraction of the fed chain: near no node of the ten modes kept."""
 
 FOOT_GAP = 1.2
 """A source spread evenly over two segments acts like a gap so much wider than one on a single

@@ -13,7 +13,7 @@ from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.pairing import ModelledDip
 from simkit.measured.selection import as_cases, is_solved, modes_of_cases
 from simkit.response.features import reflection
-from simkit.store.read import connector_variable, swept_names
+from simkit.store.read import connector_impedance, swept_names
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -115,7 +115,7 @@ def nearest_cases(
                 curve=float(curves[place]),
                 score=float(score[place]),
                 frequency_hz=frequency,
-                reflection=reflection(chosen[connector_variable(dataset)].values, reference),
+                reflection=reflection(chosen[connector_impedance(dataset)].values, reference),
             )
         )
     return tuple(found)
@@ -143,7 +143,7 @@ def _curve_differences(
     step = max((last - first) // CURVE_POINTS, 1)
     chosen = slice(first, last, step)
     wanted = np.interp(frequency[chosen], measurement.frequency_hz, np.abs(measurement.reflection))
-    impedance = dataset[connector_variable(dataset)]
+    impedance = dataset[connector_impedance(dataset)]
     total = []
     for start in range(0, len(rows), CHUNK):
         part = impedance.isel(case=rows[start : start + CHUNK]).values[:, chosen]

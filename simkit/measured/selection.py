@@ -13,7 +13,7 @@ from simkit.errors import StoreError
 from simkit.measured.measurement import ComplexArray, FloatArray
 from simkit.measured.pairing import ModelledDip, Pairing, ambiguous_pairs, pair
 from simkit.response.features import find_dips, reflection
-from simkit.store.read import connector_variable, has_feedline, swept_names
+from simkit.store.read import connector_impedance, has_feedline, swept_names
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
@@ -173,7 +173,7 @@ def with_loose_dips(case: xr.Dataset, modes: CaseModes, reference_ohm: float) ->
 def simulated_reflection(case: xr.Dataset, reference_ohm: float) -> tuple[FloatArray, ComplexArray]:
     """Frequencies and reflection at the connector of one case."""
     frequency = np.asarray(case["frequency"].values, dtype=np.float64)
-    return frequency, reflection(case[connector_variable(case)].values, reference_ohm)
+    return frequency, reflection(case[connector_impedance(case)].values, reference_ohm)
 
 
 def is_solved(dataset: xr.Dataset) -> np.ndarray[tuple[int, ...], np.dtype[np.bool_]]:

@@ -28,7 +28,7 @@ from simkit.plot.style import (
     tidy,
 )
 from simkit.response.features import find_resonances
-from simkit.store.read import connector_variable, has_feedline
+from simkit.store.read import connector_impedance, has_feedline
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -90,7 +90,7 @@ def plot_impedance(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | N
         label="reactance X",
     )
     if has_feedline(chosen):
-        _add_connector(ax, frequency, chosen[connector_variable(chosen)].values)
+        _add_connector(ax, frequency, chosen[connector_impedance(chosen)].values)
     ax.set_xlim(float(frequency[0]), float(frequency[-1]))
     ax.set_ylim(*_limits_ohm(impedance))
     _mark_modes(ax, chosen, unit)

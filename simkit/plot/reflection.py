@@ -31,7 +31,7 @@ from simkit.plot.style import (
     tidy,
 )
 from simkit.response.features import reflection
-from simkit.store.read import connector_variable, has_feedline
+from simkit.store.read import connector_impedance, has_feedline
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -109,7 +109,7 @@ def plot_reflection(
         say_empty(ax, why_empty(chosen))
         return ax
     frequency = np.asarray(chosen["frequency"].values, dtype=float) * unit.factor
-    level = _level_db(chosen[connector_variable(chosen)].values, reference)
+    level = _level_db(chosen[connector_impedance(chosen)].values, reference)
     if has_feedline(chosen):
         before = _level_db(chosen["impedance"].values, reference)
         ax.plot(

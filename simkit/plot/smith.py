@@ -27,7 +27,7 @@ from simkit.plot.style import (
     say_empty,
 )
 from simkit.response.features import reflection
-from simkit.store.read import connector_variable, has_feedline
+from simkit.store.read import connector_impedance, has_feedline
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -76,7 +76,7 @@ def plot_smith(dataset: xr.Dataset, case: int | None = None, *, ax: Axes | None 
     if not is_solved(chosen):
         say_empty(ax, why_empty(chosen))
         return ax
-    gamma = reflection(chosen[connector_variable(chosen)].values, reference)
+    gamma = reflection(chosen[connector_impedance(chosen)].values, reference)
     if has_feedline(chosen):
         before = reflection(chosen["impedance"].values, reference)
         ax.plot(

@@ -23,6 +23,7 @@ from simkit.response.features import (
     find_resonances,
     impedance_q,
     reflection,
+    samples_near,
 )
 from simkit.response.modes import NaturalMode
 from simkit.response.rational import ComplexArray
@@ -89,15 +90,20 @@ def owned_features(
     parallel = share.owners(
         [r for r in resonances if r.kind == "parallel"], lambda r: r.resistance_ohm
     )
-    q = impedance_q(frequency_hz, impedance_ohm)
     found = []
     for index in range(len(modes)):
         dip = owned_dips.get(index)
-        q_dip = float(np.interp(dip.frequency_hz, frequency_hz, q)) if dip else float("nan")
+        q_dip = _q_at(dip.frequency_hz, frequency_hz, impedance_ohm) if dip else float("nan")
         found.append(
             OwnedFeatures(peaks.get(index), dip, series.get(index), parallel.get(index), q_dip)
         )
     return tuple(found)
+
+
+def _q_at(at_hz: float, frequency_hz: FloatArray, impedance_ohm: ComplexArray) -> float:
+    near = samples_near(int(np.searchsorted(frequency_hz, at_hz)))
+    q = impedance_q(frequency_hz[near], impedance_ohm[near])
+    return float(np.interp(at_hz, frequency_hz[near], q))
 
 
 class _Shares:

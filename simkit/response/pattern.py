@@ -6,7 +6,7 @@ Theta is measured from +z, phi from +x.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 
 import numpy as np
@@ -139,15 +139,29 @@ def _direct_field(
     theta_rad: FloatArray,
     phi_rad: FloatArray,
 ) -> tuple[ComplexArray, ComplexArray]:
+    """Without ground; even and odd in the phase are its cosine's and its sine's part."""
     k = 2 * np.pi * frequency_hz / light_speed
     sin_t, cos_t = np.sin(theta_rad), np.cos(theta_rad)
     sin_p, cos_p = np.sin(phi_rad), np.cos(phi_rad)
     outwards = np.stack([sin_t * cos_p, sin_t * sin_p, cos_t], axis=1)
-    phase = np.exp(1j * k * (outwards @ radiators.middle_m.T))
     # Current k-harmonic and phase across a segment, to second order in its electrical length.
-    slant = outwards @ radiators.direction.T
-    fall = 1 - (k * radiators.length_m) ** 2 / 24 * (1 + slant**2)
-    moment = (phase * fall) @ ((current * radiators.length_m)[:, None] * radiators.direction)
+    fall = outwards @ radiators.direction.T
+    fall *= fall
+    fall += 1
+    fall *= -((k * radiators.length_m) ** 2) / 24
+    fall += 1
+    # Sine and cosine of the phase from the tangent of half of it: one fast function for two slow
+    # ones. In place, because the arrays are large.
+    tangent = outwards @ (k / 2 * radiators.middle_m.T)
+    np.tan(tangent, out=tangent)
+    share = tangent * tangent
+    share += 1
+    np.divide(fall, share, out=share)
+    tangent *= share
+    each = (current * radiators.length_m)[:, None] * radiators.direction
+    parts = np.concatenate([each.real, each.imag], axis=1)
+    even, odd = 2 * (share @ parts) - fall @ parts, 2 * (tangent @ parts)
+    moment = even[:, :3] - odd[:, 3:] + 1j * (even[:, 3:] + odd[:, :3])
     factor = -1j * k * WAVE_IMPEDANCE_OHM / (4 * np.pi)
     along_theta = np.stack([cos_t * cos_p, cos_t * sin_p, -sin_t], axis=1)
     along_phi = np.stack([-sin_p, cos_p, np.zeros_like(sin_p)], axis=1)
@@ -252,49 +266,129 @@ def peak_direction(
         angles = np.deg2rad(theta_deg), np.deg2rad(phi_deg)
         return intensity_w_per_sr(*far_field(radiators, current, frequency_hz, *angles))
 
-    found = [_principal_peak(intensity, plane) for plane in range(3)]
-    found.append(_refined(intensity, *first, step_deg, (1.0, 1.0)))
+    found = _climbed(intensity, [*_plane_tops(intensity), _Climb(*first, step_deg, EVERYWHERE)])
     largest = max(power for _, _, power in found)
-    return next(peak for peak in found if peak[2] >= largest * 10**-0.001)
+    return next(peak for peak in found if peak[2] >= largest * ALIKE)
 
 
 Intensity = Callable[[FloatArray, FloatArray], FloatArray]
 
+ALIKE = 10**-0.001
+"""Intensities that differ by less, 0.01 dB, are equal: the currents are hardly better."""
 
-def _principal_peak(intensity: Intensity, plane: int) -> tuple[float, float, float]:
-    """Largest intensity in the xy (0), xz (1) or yz (2) plane."""
-    step = 3.0
-    if plane == 0:
-        phi = np.arange(0.0, 360.0, step)
-        theta, free = np.full_like(phi, 90.0), (0.0, 1.0)
-    else:
-        half = np.arange(0.0, 180.0 + step, step)
-        theta = np.concatenate([half, half])
-        phi = np.repeat([0.0, 180.0], len(half)) + (90.0 if plane == 2 else 0.0)
-        free = (1.0, 0.0)
-    power = intensity(theta, phi)
-    top = int(np.argmax(power > power.max() * (1 - 1e-6)))
-    return _refined(intensity, float(theta[top]), float(phi[top]), step, free)
+PLANE_STEP_DEG = 3.0
+
+SMOOTH_DEG = 1.5
+"""So near to a maximum a pattern is a paraboloid: the narrowest lobe of an antenna four wavelengths
+long is 14 degrees wide."""
+
+LEAST_BEND = 1e-6
+"""A pattern that falls by less than this part of itself on the way is level there."""
 
 
-def _refined(
-    intensity: Intensity,
-    theta_deg: float,
-    phi_deg: float,
-    step_deg: float,
-    free: tuple[float, float],
-) -> tuple[float, float, float]:
-    """Climb on ever finer 5 x 5 grids; `free` says which of the two angles may move."""
-    best = 0.0
-    while step_deg > 0.05:
-        offsets = np.linspace(-step_deg, step_deg, 5)
-        theta, phi = np.meshgrid(theta_deg + free[0] * offsets, phi_deg + free[1] * offsets)
-        inside = (theta >= 0) & (theta <= 180)
-        theta, phi = theta[inside], phi[inside]
-        power = intensity(theta, phi)
+class _Moves:
+    """Places to try around one, (2, N) in steps of theta and phi, and the paraboloid through them.
+
+    The paraboloid's six factors, of 1, t, p, t^2/2, p^2/2 and tp, are `fit` times the values.
+    """
+
+    def __init__(self, steps: FloatArray) -> None:
+        theta, phi = self.steps = steps
+        self.away = abs(steps).sum(axis=0)
+        terms = [np.ones_like(theta), theta, phi, theta**2 / 2, phi**2 / 2, theta * phi]
+        self.fit = np.linalg.pinv(np.stack(terms, axis=1))
+
+    def vertex(self, power: FloatArray) -> FloatArray:
+        """(2,) steps to the maximum of the paraboloid, none along what does not bend down."""
+        level, along_theta, along_phi, tt, pp, tp = self.fit @ power
+        bend, axes = np.linalg.eigh(np.array([[tt, tp], [tp, pp]]))
+        down = bend < -LEAST_BEND * level
+        uphill = axes[:, down].T @ np.array([along_theta, along_phi])
+        return np.asarray(np.clip(axes[:, down] @ (uphill / -bend[down]), -1.0, 1.0))
+
+
+_FIVE = np.linspace(-1.0, 1.0, 5)
+ALONG_PHI = _Moves(np.stack([0 * _FIVE, _FIVE]))
+ALONG_THETA = _Moves(np.stack([_FIVE, 0 * _FIVE]))
+EVERYWHERE = _Moves(np.stack([grid.ravel() for grid in np.meshgrid(_FIVE, _FIVE)]))
+
+
+@dataclass(frozen=True)
+class _Climb:
+    """Where a maximum is sought, and with what step."""
+
+    theta_deg: float
+    phi_deg: float
+    step_deg: float
+    moves: _Moves
+    power: float = 0.0
+
+    def directions(self) -> FloatArray:
+        """(2, N) theta and phi to try next, degrees."""
+        centre = np.array([[self.theta_deg], [self.phi_deg]])
+        return np.asarray(centre + self.step_deg * self.moves.steps)
+
+    def finer(self, directions: FloatArray, power: FloatArray) -> _Climb:
+        """Go on from the largest value with half the step."""
+        reachable = np.where((directions[0] >= 0) & (directions[0] <= 180), power, -np.inf)
         # Equal values are settled for the one that moves least.
-        away = abs(theta - theta_deg) + abs(phi - phi_deg)
-        top = int(np.argmin(np.where(power >= power.max() * (1 - 1e-9), away, np.inf)))
-        theta_deg, phi_deg, best = float(theta[top]), float(phi[top]), float(power[top])
-        step_deg /= 2
-    return theta_deg, phi_deg % 360.0, best
+        best = reachable >= reachable.max() * (1 - 1e-9)
+        top = int(np.argmin(np.where(best, self.moves.away, np.inf)))
+        return self.at(directions[:, top], float(power[top]))
+
+    def at(self, direction: FloatArray, power: float) -> _Climb:
+        """The same with half the step from another direction, whose intensity is known."""
+        theta, phi = (float(angle) for angle in direction.ravel())
+        return replace(self, theta_deg=theta, phi_deg=phi, step_deg=self.step_deg / 2, power=power)
+
+    def vertex(self, power: FloatArray) -> FloatArray:
+        """(2, 1) direction of the maximum by the intensities around."""
+        theta, phi = self.step_deg * self.moves.vertex(power)
+        return np.array([[np.clip(self.theta_deg + theta, 0.0, 180.0)], [self.phi_deg + phi]])
+
+
+@cache
+def _planes() -> tuple[tuple[FloatArray, _Moves], ...]:
+    """Directions in the xy, the xz and the yz plane: (2, N) degrees, and how they may move."""
+    phi = np.arange(0.0, 360.0, PLANE_STEP_DEG)
+    half = np.arange(0.0, 180.0 + PLANE_STEP_DEG, PLANE_STEP_DEG)
+    upright = np.stack([np.tile(half, 2), np.repeat([0.0, 180.0], len(half))])
+    turned = upright + np.array([[0.0], [90.0]])
+    level = np.stack([np.full_like(phi, 90.0), phi])
+    return (level, ALONG_PHI), (upright, ALONG_THETA), (turned, ALONG_THETA)
+
+
+def _plane_tops(intensity: Intensity) -> list[_Climb]:
+    """Start from the largest intensity in each principal plane; of equal ones from the first."""
+    planes = _planes()
+    powers = _apart(intensity, [directions for directions, _ in planes])
+    tops = [int(np.argmax(power >= power.max() * ALIKE)) for power in powers]
+    return [
+        _Climb(float(theta[top]), float(phi[top]), PLANE_STEP_DEG, moves)
+        for ((theta, phi), moves), top in zip(planes, tops, strict=True)
+    ]
+
+
+def _climbed(intensity: Intensity, climbs: list[_Climb]) -> list[tuple[float, float, float]]:
+    """Climb on ever finer steps, all climbs at once: theta, phi in degrees and intensity."""
+    while going := [n for n, climb in enumerate(climbs) if climb.step_deg > SMOOTH_DEG]:
+        directions = [climbs[n].directions() for n in going]
+        powers = _apart(intensity, directions)
+        for n, around, power in zip(going, directions, powers, strict=True):
+            climbs[n] = climbs[n].finer(around, power)
+    directions = [climb.directions() for climb in climbs]
+    powers = _apart(intensity, directions)
+    tops = [climb.vertex(power) for climb, power in zip(climbs, powers, strict=True)]
+    found = []
+    for n, height in enumerate(_apart(intensity, tops)):
+        climb, top = climbs[n], float(height[0])
+        higher = top >= powers[n].max() * (1 - 1e-9)
+        end = climb.at(tops[n], top) if higher else climb.finer(directions[n], powers[n])
+        found.append((end.theta_deg, end.phi_deg % 360.0, end.power))
+    return found
+
+
+def _apart(intensity: Intensity, groups: list[FloatArray]) -> list[FloatArray]:
+    """Intensities of several groups of directions, (2, N) each, in one go."""
+    ends = np.cumsum([group.shape[1] for group in groups])[:-1]
+    return np.split(intensity(*np.concatenate(groups, axis=1)), ends)

@@ -18,7 +18,10 @@ from numpy.typing import NDArray
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 
-FIRST_SAMPLES = 7
+FIRST_SAMPLES = 8
+VERIFIED_EACH = 9
+"""One sample more is spent on verification for so many: a long band hides a mode more easily."""
+
 SKETCH = 6
 """Random combinations of all currents that the fit looks at."""
 
@@ -93,19 +96,17 @@ def barycentric_matrix(
     frequency_hz: FloatArray, samples_hz: FloatArray, weight: ComplexArray
 ) -> ComplexArray:
     """(F, M) interpolation matrix of a barycentric rational function."""
-    difference = frequency_hz[:, None] - samples_hz[None]
-    hit = (difference == 0) & (weight != 0)[None]
+    difference = frequency_hz[:, None] - samples_hz
+    met = difference == 0
     with np.errstate(divide="ignore", invalid="ignore"):  # exact hits are overwritten below
-        cauchy = weight[None] / difference
-        matrix = cauchy / cauchy.sum(axis=1, keepdims=True)
-    # A sample of weight 0 that is asked for gives 0/0 in its own column: it takes no part.
-    matrix[:, weight == 0] = 0
-    lost = (difference == 0) & (weight == 0)[None]
-    for row in np.flatnonzero(lost.any(axis=1)):
-        terms = np.where(weight != 0, weight / np.where(lost[row], 1.0, difference[row]), 0)
-        matrix[row] = terms / terms.sum()
-    rows = np.flatnonzero(hit.any(axis=1))
-    matrix[rows] = hit[rows]
+        matrix = weight / difference
+        matrix /= matrix.sum(axis=1, keepdims=True)
+    for row in np.flatnonzero(met.any(axis=1)):
+        if (weight[met[row]] != 0).any():
+            matrix[row] = met[row]
+        else:  # a sample of weight 0 takes no part, not even where it is asked for
+            terms = np.where(met[row], 0, weight / np.where(met[row], 1.0, difference[row]))
+            matrix[row] = terms / terms.sum()
     return np.asarray(matrix, dtype=np.complex128)
 
 
@@ -129,30 +130,37 @@ def fit_weights(
     misfit : float
     """
     count, width = sketch.shape
-    scale = float(np.max(np.linalg.norm(sketch, axis=1)))
+    if count < 3:
+        raise ValueError(f"a rational fit needs at least 3 samples, got {count}")
+    apart = frequency[:, None] - frequency
+    np.fill_diagonal(apart, 1.0)  # a sample is never held against itself
+    cauchy = 1.0 / apart
+    slopes = (sketch[:, None] - sketch) * cauchy[:, :, None]
+    scale = float(np.sqrt(_powers(sketch).max()))
     support: list[int] = []
     rest = list(range(count))
-    fitted = np.broadcast_to(sketch.mean(axis=0), sketch.shape)
-    best: tuple[list[int], ComplexArray] | None = None
-    misfit = np.inf
-    while len(rest) > 1 and (len(rest) - 1) * width >= len(support) + 1:
-        worst = int(np.argmax(np.linalg.norm(sketch[rest] - fitted[rest], axis=1)))
-        support.append(rest.pop(worst))
-        cauchy = 1.0 / (frequency[rest][:, None] - frequency[support][None])
-        gaps = sketch[rest][:, :, None] - sketch[support].T[None]
-        loewner = (gaps * cauchy[:, None, :]).reshape(-1, len(support))
+    missed = _powers(sketch - sketch.mean(axis=0))
+    while True:
+        support.append(rest.pop(int(np.argmax(missed))))
+        loewner = slopes[rest][:, support].swapaxes(1, 2).reshape(-1, len(support))
         weights = np.linalg.svd(loewner, full_matrices=False)[2][-1].conj()
-        fitted = sketch.copy()
-        fitted[rest] = (cauchy * weights) @ sketch[support] / (cauchy @ weights)[:, None]
-        misfit = float(np.max(np.linalg.norm(sketch[rest] - fitted[rest], axis=1))) / scale
-        best = (list(support), weights)
-        if misfit < tolerance:
+        terms = cauchy[rest][:, support] * weights
+        fitted = terms @ sketch[support] / terms.sum(axis=1, keepdims=True)
+        missed = _powers(sketch[rest] - fitted)
+        misfit = float(np.sqrt(missed.max())) / scale
+        enough = len(rest) > 1 and (len(rest) - 1) * width >= len(support) + 1
+        if misfit < tolerance or not enough:
             break
-    if best is None:
-        raise ValueError(f"a rational fit needs at least 3 samples, got {count}")
     result = np.zeros(count, dtype=np.complex128)
-    result[best[0]] = best[1]
+    result[support] = weights
     return result, misfit
+
+
+def _powers(rows: ComplexArray) -> FloatArray:
+    """Squared norm of each row."""
+    return np.asarray(
+        np.einsum("ij,ij->i", rows.real, rows.real) + np.einsum("ij,ij->i", rows.imag, rows.imag)
+    )
 
 
 def _poles(frequency: FloatArray, weight: ComplexArray) -> ComplexArray:
@@ -201,12 +209,13 @@ def adaptive_sweep(
     Sweep
     """
     search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed, observe)
+    verified = 0
     while True:
         frequency, difference = search.where_models_differ()
         if difference < search.tolerance:
-            frequency = search.emptiest()
-            difference = search.error_at(frequency)
-            if difference < search.tolerance:
+            difference = search.error_at(search.emptiest())
+            verified = verified + 1 if difference < search.tolerance else 0
+            if verified * VERIFIED_EACH >= len(search.frequencies) - verified:
                 return search.result(converged=True, error=difference)
         elif len(search.frequencies) < most_samples:
             search.add(frequency)

@@ -16,20 +16,20 @@ def chain_current(current: ComplexArray, chain: Chain) -> tuple[FloatArray, Comp
 
     Parameters
     ----------
-    current : (S,) complex array
+    current : (..., S) complex array
         Segment currents.
     chain : Chain
 
     Returns
     -------
     arc_m : (P,) float array
-    total : (P,) complex array
+    total : (..., P) complex array
         Sum over the segments that run side by side.
     """
     arcs, number = chain.places()
-    total = np.zeros(len(arcs), dtype=np.complex128)
-    np.add.at(total, number, current[chain.segments] * chain.signs)
-    return arcs, total
+    total = np.zeros((len(arcs), *current.shape[:-1]), dtype=np.complex128)
+    np.add.at(total, number, (current[..., chain.segments] * chain.signs).T)
+    return arcs, total.T
 
 
 def totals_matrix(grid: WireGrid) -> FloatArray:
@@ -47,29 +47,29 @@ def totals_matrix(grid: WireGrid) -> FloatArray:
 
 
 class ChainCurve:
-    """Total current along one chain as a smooth curve."""
+    """Total current along one chain as a smooth curve, for (..., S) currents of segments."""
 
     def __init__(self, current: ComplexArray, chain: Chain) -> None:
         arc, value = chain_current(current, chain)
         length = chain.length_m
         if chain.closed:
             arc = np.concatenate([arc[-2:] - length, arc, arc[:2] + length])
-            value = np.concatenate([value[-2:], value, value[:2]])
+            value = np.concatenate([value[..., -2:], value, value[..., :2]], axis=-1)
         else:
-            zero = np.zeros(1, dtype=np.complex128)
-            first, last = zero if chain.open_start else value[:1], zero
-            last = zero if chain.open_end else value[-1:]
+            first, last = value[..., :1].copy(), value[..., -1:].copy()
+            first[...] *= not chain.open_start
+            last[...] *= not chain.open_end
             arc = np.concatenate([[min(0.0, arc[0] - 1e-9)], arc, [max(length, arc[-1] + 1e-9)]])
-            value = np.concatenate([first, value, last])
+            value = np.concatenate([first, value, last], axis=-1)
         # Shape-preserving cubics: no overshoot at the steps that junctions make.
-        self._real = PchipInterpolator(arc, value.real)
-        self._imag = PchipInterpolator(arc, value.imag)
+        self._parts = PchipInterpolator(arc, np.stack([value.real, value.imag]), axis=-1)
         self._chain = chain
 
     def __call__(self, arc_m: FloatArray) -> ComplexArray:
-        """Current at arc lengths, ampere, positive along the chain."""
+        """(..., P) current at (P,) arc lengths, ampere, positive along the chain."""
         at = arc_m % self._chain.length_m if self._chain.closed else arc_m
-        return np.asarray(self._real(at) + 1j * self._imag(at), dtype=np.complex128)
+        real, imag = self._parts(at)
+        return np.asarray(real + 1j * imag, dtype=np.complex128)
 
 
 def current_along_strips(
@@ -79,7 +79,7 @@ def current_along_strips(
 
     Parameters
     ----------
-    current : (S,) complex array
+    current : (..., S) complex array
     chains : sequence of Chain
     strips : int
     positions : (P,) float array
@@ -87,16 +87,17 @@ def current_along_strips(
 
     Returns
     -------
-    (strips, P) complex array
+    (..., strips, P) complex array
         NaN for a strip on no chain. Zero at open ends.
     """
-    result = np.full((strips, len(positions)), complex(np.nan, np.nan))
+    shape = (*current.shape[:-1], strips, len(positions))
+    result = np.full(shape, complex(np.nan, np.nan))
     for chain in chains:
         curve = ChainCurve(current, chain)
         for span in chain.spans:
             at = span.start_m + positions * (span.end_m - span.start_m)
             forward = 1 if span.end_m > span.start_m else -1
-            result[span.strip] = forward * curve(at)
+            result[..., span.strip, :] = forward * curve(at)
     return result
 
 

@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import contextlib
 import logging
+import os
 import time
 from collections.abc import Callable, Mapping
+from pathlib import Path
 from typing import Any
 
 from simkit.engine.child import interrupts_held
@@ -13,10 +15,14 @@ from simkit.errors import SimkitError
 from simkit.runner.identity import program_versions
 from simkit.runner.pool import do_block, packed, set_up_dask
 from simkit.runner.work import BlockJob, Receipt
+from simkit.store.remote import Place
 
 CONNECT_S = 20.0
 WORKERS_S = 60.0
 """Longest wait for the first worker."""
+
+SIGHT_S = 5.0
+"""Longest wait for a worker to see the results folder."""
 
 _LOOK_S = 2.0
 _TOPIC = "simkit"
@@ -37,17 +43,23 @@ class ClusterPool:
         Solver, as `Child` takes it.
     say : callable
         Shows one line.
+    lock : Path or RemotePath, optional
+        File in the results folder that every worker must see, if it is a path.
 
     Raises
     ------
     SimkitError
-        There is no scheduler, no worker, or a worker with other versions of simkit or engine.
+        There is no scheduler, no worker, or a worker with other versions of simkit or engine, or
+        one that does not see the results folder.
     """
 
-    def __init__(self, address: str, function: str, say: Callable[[str], None]) -> None:
+    def __init__(
+        self, address: str, function: str, say: Callable[[str], None], lock: Place | None = None
+    ) -> None:
         self._address = address
         self._function = function
         self._say = say
+        self._lock = str(lock) if isinstance(lock, Path) else ""
         self._versions = program_versions()
         self._size, self._looked = 0, 0.0
         self._unlike: set[str] = set()
@@ -56,6 +68,7 @@ class ClusterPool:
             self._client = self._connect()
             self._wait_for_workers()
             check_versions(self._ask_versions(), self._versions)
+            check_sight(self._client.run(sees, self._lock, SIGHT_S), self._lock)
             self._client.subscribe_topic(_TOPIC, self._told)
         except BaseException:
             self.close()
@@ -141,6 +154,7 @@ class ClusterPool:
             self._function,
             packed(job),
             self._versions,
+            self._lock,
             pure=False,
             workers=only or None,
         )
@@ -163,13 +177,18 @@ def _workers_text(count: int, address: str) -> str:
     return f"{count} {'worker' if count == 1 else 'workers'} at {address}"
 
 
-def do_checked_block(function: str, job: bytes, versions: Mapping[str, str]) -> Receipt:
-    """Task of a worker: one block, unless the worker joined with other versions meanwhile."""
-    if program_versions() != versions:
+def do_checked_block(
+    function: str, job: bytes, versions: Mapping[str, str], lock: str = ""
+) -> Receipt:
+    """Task of a worker: one block, unless it joined meanwhile and is not like the others."""
+    alike = program_versions() == versions
+    if not alike or not sees(lock, SIGHT_S):
         from distributed import get_worker
 
         worker: Any = get_worker()
-        text = _difference(worker.address, program_versions(), versions)
+        text = _blindness(worker.address, lock)
+        if not alike:
+            text = _difference(worker.address, program_versions(), versions)
         if not hasattr(worker, "simkit_said"):
             worker.simkit_said = True
             said = {"worker": worker.address, "text": f"no block is given to {text}"}
@@ -177,6 +196,36 @@ def do_checked_block(function: str, job: bytes, versions: Mapping[str, str]) -> 
         time.sleep(1.0)  # the run is to hear of it before it hands the block out again
         raise UnlikeWorkerError(text)
     return do_block(function, job)
+
+
+def sees(lock: str, patience_s: float) -> bool:
+    """Whether a file is there, at once or soon: a shared disk may take its time to show it."""
+    end = time.monotonic() + patience_s
+    while lock and not os.path.exists(lock):
+        if time.monotonic() > end:
+            return False
+        time.sleep(0.2)
+    return True
+
+
+def check_sight(found: Mapping[str, bool], lock: str) -> None:
+    """Refuse to run where results would be written to another place, or nowhere.
+
+    Raises
+    ------
+    SimkitError
+        With every worker that does not see the results folder.
+    """
+    blind = [_blindness(worker, lock) for worker, sight in found.items() if not sight]
+    if blind:
+        raise SimkitError(
+            f"nothing is solved, because not all workers reach the results: {'; '.join(blind)}. "
+            "Name a folder on a disk all machines share, or an address, by --results"
+        )
+
+
+def _blindness(worker: str, lock: str) -> str:
+    return f"worker {worker}, which does not see the folder {os.path.dirname(lock)}"
 
 
 def check_versions(found: Mapping[str, Any], wanted: Mapping[str, str]) -> None:

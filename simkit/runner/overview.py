@@ -111,9 +111,15 @@ def status_lines(state: RunStatus) -> list[str]:
             "not running; `simkit run` with the same study continues and reuses "
             f"{done.cases - done.waiting} cases"
         )
+    if not state.running and (unlucky := _unlucky(state.current)):
+        lines.append(f"`simkit run` with --retry solves {unlucky} failed or timed-out again")
     if state.last_event:
         lines.append(f"last event: {state.last_event}")
     return lines
+
+
+def _unlucky(store: StoreCounts | None) -> int:
+    return store.counts[Status.FAILED] + store.counts[Status.TIMED_OUT] if store else 0
 
 
 def _if_waiting(store: StoreCounts | None) -> StoreCounts | None:
@@ -133,7 +139,11 @@ def _counts_or_none(path: Place) -> StoreCounts | None:
 
 
 def _counts(path: Place) -> StoreCounts:
-    store = StoreFile(path)
+    return counts_of(StoreFile(path))
+
+
+def counts_of(store: StoreFile) -> StoreCounts:
+    """Title of a store and its cases per status."""
     return StoreCounts(
         title=str(store.attrs.get("title", "")),
         cases=store.cases,

@@ -122,7 +122,10 @@ def run(
     _refuse_in_a_worker()
     begin = time.monotonic()
     deadline = Deadline.at(until) if until else None
-    folder = ResultsFolder(place(results or "results") / study.path.stem)
+    parent = place(results or "results")
+    if scheduler is not None and isinstance(parent, Path):
+        parent = parent.absolute()  # workers have current folders of their own
+    folder = ResultsFolder(parent / study.path.stem)
     choices = Choices(
         solver or Solver(),
         workers or core_count(),
@@ -201,7 +204,7 @@ class _Session:
         )
         target = self.folder.choose(prepared, fresh=fresh)
         self._say_versions(target, prepared)
-        workplace = Workplace(self.choices, self._say)
+        workplace = Workplace(self.choices, self._say, self.lock.path)
         try:
             workplace.open()
             with StopRequest(self.choices.deadline) as stop:

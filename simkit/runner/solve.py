@@ -200,8 +200,14 @@ def feed_impedance(
     grid: WireGrid, currents: ComplexArray, frequency_hz: FloatArray
 ) -> ComplexArray:
     """Impedance at the study's feed gap from (F, S) currents for 1 V at the feed, ohm."""
+    return _impedance_of(grid, currents @ source_weight(grid), frequency_hz)
+
+
+def _impedance_of(
+    grid: WireGrid, feed_current_a: ComplexArray, frequency_hz: FloatArray
+) -> ComplexArray:
     return feed_impedance_ohm(
-        currents @ source_weight(grid),
+        feed_current_a,
         frequency_hz,
         grid.feed_width_m,
         grid.model_gap_m,
@@ -223,8 +229,8 @@ def _evaluate(
     """Arrays of the store, doubts, and notes: what to know without being doubtful for it."""
     band = antenna.frequency
     frequency_hz = np.linspace(band.start_hz, band.stop_hz, band.points)
-    currents = sweep.model.matrix(frequency_hz) @ sweep.model.values[:, : grid.segments]
-    impedance = feed_impedance(grid, currents, frequency_hz)
+    sampled = sweep.model.values[:, : grid.segments] @ source_weight(grid)
+    impedance = _impedance_of(grid, sweep.model.matrix(frequency_hz) @ sampled, frequency_hz)
     modes, notes = _modes(antenna, grid, sweep)
     connector = Connector.of(antenna, frequency_hz, impedance)
     features = owned_features(
@@ -328,9 +334,11 @@ def _mode_arrays(antenna: Antenna, grid: WireGrid, modes: Sequence[NaturalMode])
     strips = len(antenna.strips)
     shapes = np.full((MODES, strips, POSITIONS), complex(np.nan, np.nan))
     half_waves = np.full(MODES, -1)
+    if modes:
+        currents = np.array([mode.current for mode in modes])
+        shapes[: len(modes)] = current_along_strips(currents, grid.chains, strips, positions)
     for index, mode in enumerate(modes):
-        along = current_along_strips(mode.current, grid.chains, strips, positions)
-        shapes[index] = along / along.flat[int(np.nanargmax(abs(along)))]
+        shapes[index] /= shapes[index].flat[int(np.nanargmax(abs(shapes[index])))]
         half_waves[index] = mode.half_waves
     return {
         "mode_frequency": _padded([mode.frequency_hz for mode in modes]),

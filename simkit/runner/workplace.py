@@ -9,6 +9,7 @@ from simkit.runner.pool import DaskPool, InlinePool, Pool
 from simkit.runner.prepare import Solver
 from simkit.runner.stop import Deadline
 from simkit.runner.work import Worker
+from simkit.store.remote import Place
 
 
 @dataclass(frozen=True)
@@ -32,9 +33,12 @@ class Workplace:
     choices : Choices
     say : callable
         Shows one line.
+    lock : Path or RemotePath
+        File in the results folder that workers of a cluster must see.
     """
 
-    def __init__(self, choices: Choices, say: Callable[[str], None]) -> None:
+    def __init__(self, choices: Choices, say: Callable[[str], None], lock: Place) -> None:
+        self._lock = lock
         self._choices = choices
         self._say = say
         self._cluster: Pool | None = None
@@ -72,4 +76,4 @@ class Workplace:
     def _reach(self, address: str) -> Pool:
         from simkit.runner.cluster import ClusterPool
 
-        return ClusterPool(address, self._choices.solver.function, self._say)
+        return ClusterPool(address, self._choices.solver.function, self._say, self._lock)

@@ -125,12 +125,13 @@ def has_feedline(dataset: xr.Dataset) -> bool:
     return bool(dataset.attrs.get("feedline"))
 
 
-def connector_variable(dataset: xr.Dataset) -> str:
-    """Return the name of the variable with the impedance at the connector.
+def connector_impedance(dataset: xr.Dataset) -> str:
+    """Return the name of the variable that holds the impedance at the connector.
 
-    It is that of the feed where nothing lies between, as in results of an earlier simkit.
+    It is that of the feed where nothing lies between.
     """
-    return "impedance_at_connector" if has_feedline(dataset) else "impedance"
+    between = dataset.attrs.get("feedline", "impedance_at_connector" in dataset)
+    return "impedance_at_connector" if between else "impedance"
 
 
 def status_labels(dataset: xr.Dataset) -> xr.DataArray:

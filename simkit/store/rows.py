@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 
 Row = dict[str, Any]
 
-_OF_MODE = {
+OF_MODE = {
     "frequency_hz": "mode_frequency",
     "q": "mode_q",
     "frequency_error": "mode_frequency_error",
@@ -101,9 +101,14 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
         "path_on_plane",
         "driven",
     ]
-    kept = [name for name in (*wanted, *_OF_MODE.values()) if name in dataset]
+    kept = [name for name in (*wanted, *OF_MODE.values()) if name in dataset]
     table = dataset[kept].load()
     return [_row(table.isel(case=place), names) for place in range(table.sizes["case"])]
+
+
+def column_name(name: str, unit: str) -> str:
+    """Return the name of a column with its unit, as ``arm_m``; without one for pure numbers."""
+    return name if unit in {"", "1"} else f"{name}_{unit.lower()}"
 
 
 def _stored_names(dataset: xr.Dataset) -> dict[str, str]:
@@ -140,7 +145,7 @@ def _row(case: xr.Dataset, names: dict[str, str]) -> Row:
 
 
 def _modes(case: xr.Dataset) -> list[Row]:
-    columns = {key: np.asarray(case[name].values) for key, name in _OF_MODE.items() if name in case}
+    columns = {key: np.asarray(case[name].values) for key, name in OF_MODE.items() if name in case}
     found = []
     for slot in np.flatnonzero(np.isfinite(columns["frequency_hz"])):
         number = int(case["mode_half_waves"].values[slot])
@@ -188,7 +193,7 @@ def _resonances(case: xr.Dataset, owners: list[Row]) -> list[Row]:
 
 def _dips(case: xr.Dataset, owners: list[Row]) -> list[Row]:
     from simkit.response.features import find_dips, reflection
-    from simkit.store.read import connector_variable
+    from simkit.store.read import connector_impedance
 
     owned = [
         {
@@ -199,7 +204,7 @@ def _dips(case: xr.Dataset, owners: list[Row]) -> list[Row]:
         for mode in owners
         if "dip_frequency_hz" in mode
     ]
-    curve = _curve(case, connector_variable(case))
+    curve = _curve(case, connector_impedance(case))
     if curve is None:
         return _united(owned, [], 0.0)
     frequency, impedance = curve

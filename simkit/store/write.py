@@ -160,6 +160,14 @@ class StoreFile:
         except TORN:
             return True
 
+    def status_is_whole(self, block: int) -> bool:
+        """Whether the status of a block can be read, or was never written."""
+        try:
+            self._read_one("status", block)
+        except TORN:
+            return False
+        return True
+
     def _read_one(self, name: str, block: int) -> Any:
         chunk = self._chunk(name, block)
         # A shard of no bytes would pass for one that was never written.

@@ -2,16 +2,27 @@
 
 from __future__ import annotations
 
+import itertools
 import sys
+import threading
+from types import SimpleNamespace
 
+import distributed
 import pytest
 
 from simkit.errors import SimkitError
-from simkit.runner import cluster
-from simkit.runner.cluster import ClusterPool, check_versions
+from simkit.runner import cluster, run
+from simkit.runner.cluster import ClusterPool, check_sight, check_versions
 from simkit.runner.identity import program_versions
+from simkit.runner.progress import QuietProgress
+from simkit.study import load_study
 
-from .machinery import PATHS, Cluster, Site, end, kill, wait_for
+from .machinery import PATHS, Cluster, Site, end, kill, wait_for, write_study
+
+
+@pytest.fixture
+def fake_study(tmp_path):
+    return write_study(tmp_path / "ford.toml", [8, 8])
 
 
 @pytest.fixture
@@ -42,6 +53,53 @@ def test_a_scheduler_that_is_not_there_is_said(monkeypatch, address):
     monkeypatch.setattr(cluster, "CONNECT_S", 0.2)
     with pytest.raises(SimkitError, match=r"no scheduler to reach.*`dask scheduler` starts one"):
         ClusterPool(address, "fake_solver:solve", print)
+
+
+def test_every_worker_that_does_not_see_the_results_is_named():
+    with pytest.raises(SimkitError, match=r"nothing is solved.*--results") as caught:
+        check_sight({"tcp://1": True, "tcp://2": False}, "/shared/night/.lock")
+    assert "tcp://2, which does not see the folder /shared/night" in str(caught.value)
+    assert "tcp://1" not in str(caught.value)
+    check_sight({"tcp://1": True}, "/shared/night/.lock")
+
+
+def test_a_file_is_waited_for_and_an_address_needs_none(tmp_path):
+    assert cluster.sees("", 0.0)
+    assert not cluster.sees(str(tmp_path / ".lock"), 0.0)
+    timer = threading.Timer(0.1, (tmp_path / ".lock").touch)
+    timer.start()
+    assert cluster.sees(str(tmp_path / ".lock"), 30.0)
+    timer.join()
+
+
+def test_a_worker_that_joins_without_the_folder_gets_no_case(tmp_path, monkeypatch):
+    said = []
+    worker = SimpleNamespace(address="tcp://9", log_event=lambda topic, event: said.append(event))
+    monkeypatch.setattr(distributed, "get_worker", lambda: worker)
+    monkeypatch.setattr(cluster, "SIGHT_S", 0.0)
+    clock = SimpleNamespace(sleep=lambda s: None, monotonic=itertools.count().__next__)
+    monkeypatch.setattr(cluster, "time", clock)
+    lock = str(tmp_path / "night" / ".lock")
+    for _ in range(2):
+        with pytest.raises(cluster.UnlikeWorkerError, match="does not see the folder"):
+            cluster.do_checked_block("fake_solver:solve", b"", program_versions(), lock)
+    (once,) = said
+    assert once["text"].startswith("no block is given to worker tcp://9")
+
+
+def test_workers_are_given_an_absolute_folder(fake_study, monkeypatch):
+    given = []
+
+    def pool(address, function, say, lock):
+        given.append(lock)
+        raise SimkitError("no further")
+
+    monkeypatch.setattr(cluster, "ClusterPool", pool)
+    monkeypatch.chdir(fake_study.parent)
+    with pytest.raises(SimkitError, match="no further"):
+        run(load_study(fake_study), "out", scheduler="tcp://x:1", progress=QuietProgress())
+    assert given == [fake_study.parent / "out" / "ford" / ".lock"]
+    assert given[0].is_absolute()
 
 
 @pytest.mark.long

@@ -102,6 +102,7 @@ def dataset() -> xr.Dataset:
             "title": "Creek gauge link, 868 MHz",
             "reference_ohm": 50.0,
             "swept": {"arm": "arm", "width": "width"},
+            "feedline": [],
         },
     )
 
