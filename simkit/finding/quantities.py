@@ -65,6 +65,15 @@ _ALL = (
     _of_mode("gain", "dBi", "peak_gain", "largest gain in any direction", 1),
     _of_mode("directivity", "dBi", "directivity", "directivity in the direction of that gain", 1),
     Quantity("efficiency", "mode", "1", "efficiency", "radiation efficiency", "%", 1),
+    Quantity(
+        "network_efficiency", "mode", "1", "network_efficiency",
+        "power into the antenna over power into the connector", "%", 1,
+    ),
+    Quantity(
+        "total_efficiency", "mode", "1", "total_efficiency",
+        "radiated power over power available at the connector", "%", 1,
+    ),
+    _of_mode("realised_gain", "dBi", "realised_gain", "gain less feed line and mismatch", 1),
     _in_band("worst_return_loss", "dB", "smallest return loss in the band, at the connector", 1),
     _in_band("best_return_loss", "dB", "largest return loss in the band, at the connector", 1),
     _in_band("worst_vswr", "1", "largest VSWR in the band, at the connector", 2),

@@ -285,3 +285,20 @@ def test_a_band_is_looked_at_at_the_connector_if_there_is_one(dataset):
     test = "best_return_loss in 879 MHz .. 881 MHz > 100 dB"
     assert simkit.query(behind, test).sizes["case"] == 1
     assert simkit.query(dataset, test).sizes["case"] == 0
+
+
+def test_what_the_connector_gets_is_asked_for_like_any_quantity(dataset):
+    behind = dataset.isel(case=[4, 6]).load()
+    behind["realised_gain"][:, 0] = [1.2, -3.0]
+    behind["network_efficiency"][:, 0] = [0.95, 0.5]
+    chosen = simkit.query(behind, "realised_gain of 1/2 wave > 0 dBi")
+    assert chosen["case"].values.tolist() == [4]
+    chosen = simkit.query(behind, "network_efficiency of 1/2 wave > 90 %")
+    assert chosen["case"].values.tolist() == [4]
+
+
+def test_results_of_an_earlier_simkit_lack_it(dataset):
+    old = dataset.drop_vars(["realised_gain", "total_efficiency"])
+    assert simkit.query(old, "realised_gain of 1/2 wave > -99 dBi").sizes["case"] == 0
+    everyone = simkit.query(old, "total_efficiency of 1/2 wave is missing").sizes["case"]
+    assert everyone == dataset.sizes["case"]
