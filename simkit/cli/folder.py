@@ -33,6 +33,33 @@ def drawing_folder(results: str | Path | RemotePath, output: str | None = None) 
     click.echo(f"  ... sent to {there}", err=True)
 
 
+@contextmanager
+def damage_said(results: str | Path | RemotePath) -> Iterator[None]:
+    """If reading results fails because files of theirs are damaged, say which cases to solve anew.
+
+    Raises
+    ------
+    StoreError
+    """
+    from simkit.errors import SimkitError, StoreError
+    from simkit.store.read import damaged_cases
+    from simkit.store.write import TORN
+
+    try:
+        yield
+    except TORN as error:
+        damaged = [] if isinstance(error, SimkitError) else damaged_cases(results)
+        if not damaged:
+            raise
+        cases = ", ".join(
+            f"{rows[0]} to {rows[-1]}" if len(rows) > 1 else f"{rows[0]}" for rows in damaged
+        )
+        raise StoreError(
+            f"{results}: damaged, the results of these cases cannot be read: {cases}; "
+            "simkit run STUDY --retry solves them anew"
+        ) from error
+
+
 def study_of(results: str | Path) -> Study | None:
     """Return the study a results folder was made from, None if its copy is not there."""
     from simkit.store.remote import place

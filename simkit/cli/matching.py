@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Collection, Iterator
-from contextlib import contextmanager, suppress
+from contextlib import contextmanager, nullcontext, suppress
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal
@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any, Literal
 import click
 
 from simkit.cli.fitting import save
-from simkit.cli.folder import drawing_folder, study_of
+from simkit.cli.folder import damage_said, drawing_folder, study_of
 from simkit.cli.output import emit
 from simkit.errors import FeedlineError, Problem, StudyError
 
@@ -90,16 +90,18 @@ class Origin:
         from simkit.feedline.sources import terminals
 
         chosen: Literal["feed", "connector"] = "feed" if plane == "feed" else "connector"
-        return terminals(
-            self.data,
-            start_hz,
-            stop_hz,
-            case=case,
-            nominal=self.study.values if self.study is not None else None,
-            port=port,
-            delay_s=delay_s,
-            plane=chosen,
-        )
+        measured = self.study is None and Path(self.data).is_file()
+        with nullcontext() if measured else damage_said(self.data):
+            return terminals(
+                self.data,
+                start_hz,
+                stop_hz,
+                case=case,
+                nominal=self.study.values if self.study is not None else None,
+                port=port,
+                delay_s=delay_s,
+                plane=chosen,
+            )
 
     def line(self, text: str | None, option: str) -> Line | None:
         """Return the line a text means, or that of the study's item of this name."""

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import click
 
-from simkit.cli.folder import drawing_folder, study_of
+from simkit.cli.folder import damage_said, drawing_folder, study_of
 from simkit.cli.options import case_option, results_argument
 from simkit.plot.kinds import KINDS
 
@@ -48,7 +48,7 @@ def command(results: str, kind: str, case: int | None, by: str | None, output: s
     from simkit.store import open_results
 
     dataset = open_results(results)
-    with drawing_folder(results, output) as folder:
+    with damage_said(results), drawing_folder(results, output) as folder:
         target = output or folder / "plots" / _file_name(kind, case, by)
         path = save_plot(dataset, kind, target, case=case, study=study_of(results), by=by)
         click.echo(f"written: {path}", err=True)

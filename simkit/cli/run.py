@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import click
 
-from simkit.cli.folder import drawing_folder
+from simkit.cli.folder import damage_said, drawing_folder
 from simkit.cli.options import results_option, study_argument
 from simkit.cli.output import labelled
 
@@ -25,7 +25,11 @@ if TYPE_CHECKING:
     "--workers", type=click.IntRange(min=1), metavar="N", help="Processes; one a core if left out."
 )
 @click.option("--fresh", is_flag=True, help="Solve every case again.")
-@click.option("--retry", is_flag=True, help="Solve the cases again that failed or were timed out.")
+@click.option(
+    "--retry",
+    is_flag=True,
+    help="Solve the cases again that failed or were timed out, or whose results are damaged.",
+)
 @click.option(
     "--until",
     metavar="HH:MM",
@@ -74,13 +78,14 @@ def command(
         until=until,
         scheduler=scheduler,
     )
-    dataset = open_results(summary.results_dir)
-    show_remarks(dataset, loaded)
     trouble = False
-    if summary.complete:
-        with drawing_folder(summary.results_dir) as folder:
-            draw(dataset, loaded, folder)
-            trouble = show_comparisons(dataset, loaded, folder)
+    with damage_said(summary.results_dir):
+        dataset = open_results(summary.results_dir)
+        show_remarks(dataset, loaded)
+        if summary.complete:
+            with drawing_folder(summary.results_dir) as folder:
+                draw(dataset, loaded, folder)
+                trouble = show_comparisons(dataset, loaded, folder)
     click.echo(end_text(summary, study))
     if trouble or not summary.ok or summary.stopped:
         raise click.exceptions.Exit(1)

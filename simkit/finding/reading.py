@@ -80,7 +80,7 @@ def damage_in_words(part: xr.Dataset) -> Iterator[None]:
         cases = part["case"].values
         raise StoreError(
             f"cases {cases[0]} to {cases[-1]}: damaged, cannot be read: {error}; "
-            "start anew with --fresh"
+            "simkit run STUDY --retry solves them anew"
         ) from error
 
 

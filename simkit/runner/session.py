@@ -87,7 +87,7 @@ def run(
     progress : Progress, optional
         By default a bar on a terminal, plain lines elsewhere, both on standard error.
     retry : bool
-        Solve cases again that failed or were timed out.
+        Solve cases again that failed or were timed out, and those whose results are damaged.
     until : str, optional
         Hour of the day, ``07:00``, from which on no further block is started.
     scheduler : str, optional
@@ -245,6 +245,8 @@ class _Session:
             statuses = store.read_statuses()
             retry = self.choices.retry and turn == 0
             todo = waiting_cases(statuses, retry=retry)
+            if retry:
+                todo |= self._damaged(store)
             jobs = Jobs(
                 prepared,
                 store,
@@ -263,6 +265,16 @@ class _Session:
                 break
             self._work(jobs, workplace, loop, _tally(statuses, jobs, done, loop))
         return store, done
+
+    def _damaged(self, store: StoreFile) -> NDArray[np.bool_]:
+        """Which cases are settled but cannot be read, as after a fault of the disk."""
+        found = np.zeros(store.cases, dtype=np.bool_)
+        for block in range(store.blocks):
+            if store.is_damaged(block):
+                rows = store.rows(block)
+                found[rows] = True
+                self._say(f"cases {rows.start} to {rows.stop - 1}: damaged, solved anew")
+        return found
 
     def _work(self, jobs: Jobs, workplace: Workplace, loop: Loop, tally: Tally) -> None:
         self.progress.start(tally)

@@ -92,6 +92,25 @@ def open_results(path: str | PathLike[str] | Place) -> xr.Dataset:
     return _in_order(dataset, attrs)
 
 
+def damaged_cases(path: str | PathLike[str] | Place) -> list[range]:
+    """Cases whose results cannot be read, block by block; every array of the store is read.
+
+    Parameters
+    ----------
+    path : path or address
+        Results folder, or the store itself.
+
+    Returns
+    -------
+    list of range
+    """
+    from simkit.store.write import StoreFile
+
+    store = StoreFile(store_path(path))
+    rows = [store.rows(block) for block in range(store.blocks) if store.is_damaged(block)]
+    return [range(block.start, block.stop) for block in rows]
+
+
 def _in_order(dataset: xr.Dataset, attrs: dict[str, Any]) -> xr.Dataset:
     """Coordinates and variables in the order of study and schema, not of the disk."""
     import xarray as xr

@@ -168,6 +168,15 @@ class StoreFile:
             return False
         return True
 
+    def is_damaged(self, block: int) -> bool:
+        """Whether the block is settled, at least in part, and an array of it cannot be read."""
+        try:
+            if self._read_one("status", block).any():
+                self.read_arrays(block)
+        except TORN:
+            return True
+        return False
+
     def _read_one(self, name: str, block: int) -> Any:
         chunk = self._chunk(name, block)
         # A shard of no bytes would pass for one that was never written.

@@ -182,7 +182,7 @@ def bare_rate(study: Study) -> float:
 
 
 def main() -> None:
-    cases = int(sys.argv[1]) if len(sys.argv) > 1 else 400
+    cases = int(sys.argv[1]) if len(sys.argv) > 1 else 1500
     folder = Path(tempfile.mkdtemp(prefix="simkit-bench-"))
     try:
         print(f"load of the machine before: {os.getloadavg()[0]:.1f}")

@@ -8,6 +8,7 @@ from __future__ import annotations
 import csv
 import io
 import json
+import shutil
 from pathlib import Path
 
 import pytest
@@ -242,3 +243,16 @@ def test_a_folder_without_results(session: Session, tmp_path: Path, command: str
     result = session.simkit(command, tmp_path)
     assert result.exit_code == 1
     assert "simkit run STUDY" in result.stderr
+
+
+def test_damaged_results_are_named_with_the_way_out(session: Session, tmp_path: Path) -> None:
+    copy = tmp_path / "hook"
+    shutil.copytree(session.results, copy)
+    (chunk,) = (copy / "store.zarr" / "impedance").glob("c.0*")
+    chunk.write_bytes(b"torn")
+    words = "the results of these cases cannot be read: 0; simkit run STUDY --retry solves them"
+    drawn = session.simkit("plot", copy, "impedance", "-o", tmp_path / "impedance.png")
+    again = session.simkit("run", session.study, "--results", tmp_path, "--workers", "1")
+    for failed in (drawn, again):
+        assert failed.exit_code == 1
+        assert words in failed.stderr

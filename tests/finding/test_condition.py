@@ -164,7 +164,7 @@ def test_only_what_is_named_is_read(creek_results, tmp_path):
             path.write_bytes(b"torn")
     chosen = simkit.query(folder, "q of 1/2 wave > 6.55 and arm < 78 mm")
     assert chosen["case"].values.tolist() == [6, 7]
-    with pytest.raises(simkit.StoreError, match=r"cases 0 to 3: damaged.*--fresh"):
+    with pytest.raises(simkit.StoreError, match=r"cases 0 to 3: damaged.*--retry"):
         simkit.query(folder, "worst_vswr in 863 MHz .. 870 MHz < 3")
 
 

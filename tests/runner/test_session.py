@@ -9,6 +9,7 @@ from simkit.errors import SimkitError, StoreError, StudyError
 from simkit.runner import InternalError, run
 from simkit.runner.progress import QuietProgress
 from simkit.store import open_results
+from simkit.store.read import damaged_cases
 from simkit.store.schema import VARIABLES, Status
 from simkit.store.write import StoreFile
 
@@ -306,6 +307,21 @@ def test_a_case_lost_from_a_torn_block_is_solved_anew(go, direct, make_study):
     again = go(study)
     assert again.complete
     assert before.identical(open_results(again.results_dir).load())
+
+
+def test_damaged_results_are_solved_anew_on_request(go, direct, make_study, marks):
+    study = make_study(ARMS)
+    summary = go(study, block_size=2)
+    before = open_results(summary.results_dir).load()
+    assert damaged_cases(summary.results_dir) == []
+    (summary.results_dir / "store.zarr" / "gain" / "c.1.0.0.0").write_bytes(b"torn")
+    assert damaged_cases(summary.results_dir) == [range(2, 4)]
+    assert go(study).solved == 0  # reading everything is left to those who ask for it
+    again = go(study, retry=True)
+    assert (again.reused, again.solved) == (3, 2)
+    assert len(marks()) == 7
+    assert before.identical(open_results(again.results_dir).load())
+    assert "cases 2 to 3: damaged, solved anew" in again.results_dir.joinpath("log.txt").read_text()
 
 
 def test_every_variable_of_a_refused_case_is_at_its_fill(go, direct, make_study):
