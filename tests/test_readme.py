@@ -88,7 +88,7 @@ def test_the_studies_it_shows_are_read(tmp_path: Path) -> None:
     """The first as it stands, the others as parts to add to it."""
     text = (ROOT / "README.md").read_text("utf-8")
     whole, *parts = re.findall(r"^```toml\n(.*?)^```$", text, flags=re.MULTILINE | re.DOTALL)
-    assert len(parts) == 3
+    assert len(parts) == 4
     path = tmp_path / "study.toml"
     path.write_text(whole, "utf-8")
     assert load_study(path).case_count == 5
@@ -104,6 +104,7 @@ def test_the_studies_it_shows_are_read(tmp_path: Path) -> None:
     ]
     assert antenna.carrier is not None
     assert antenna.ground is not None
+    assert antenna.cable is not None
     assert antenna.converge
     assert [item.name for item in antenna.feedline] == ["pair", "stub", "cable"]
 

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from itertools import combinations
 from typing import TYPE_CHECKING
 
+from simkit.cli.balance_text import balance_parts
 from simkit.cli.feedline_text import feedline_parts
 from simkit.cli.output import labelled, length_text, table
 from simkit.errors import GeometryError
@@ -14,6 +15,7 @@ from simkit.geometry.outlines import bounding_box_m, developed_length_m, metal_a
 from simkit.study.model import (
     NO_ROTATION,
     Antenna,
+    Cable,
     Carrier,
     CutFeed,
     Strip,
@@ -44,7 +46,9 @@ def antenna_text(antenna: Antenna) -> str:
     if sheet:
         parts.append(labelled("Sheet", sheet))
     parts.append(labelled("Feed", feed_text(antenna)))
-    parts += feedline_parts(antenna)
+    if antenna.cable is not None:
+        parts.append(labelled("Cable", cable_text(antenna, antenna.cable)))
+    parts += feedline_parts(antenna) + balance_parts(antenna)
     parts.append(labelled("Metal", metal_text(antenna)))
     if antenna.carrier is not None:
         parts.append(labelled("Carrier", carrier_text(antenna)))
@@ -197,6 +201,30 @@ def feed_text(antenna: Antenna) -> str:
             f"{length_text(_end_gap_m(antenna))} apart"
         )
     return f"{place}; reflections refer to {antenna.reference_ohm:.6g} ohm"
+
+
+def cable_text(antenna: Antenna, cable: Cable) -> str:
+    """Return where the cable is joined, how it runs, and how thick the model takes it to be."""
+    from simkit.geometry.cable import level_error
+    from simkit.geometry.dressing import dressing_of
+
+    side = f"{cable.strip}.{cable.end}"
+    if isinstance(antenna.feed, CutFeed):
+        side = f"the side of the cut towards {side}"
+    points = [_mm(point) for point in cable.points_m]
+    if len(points) > _SHOWN_POINTS:
+        points = [*points[:3], f"... {len(points) - 4} more ...", points[-1]]
+    radius = dressing_of(antenna).radius_m(max(strip.width_m for strip in antenna.strips))
+    error = level_error(cable, radius)
+    way = "too high" if error > 0 else "too low"
+    return "\n".join(
+        [
+            f"{length_text(cable.length_m)} of braid {length_text(cable.diameter_m)} thick, joined "
+            f"to {side}, through {' '.join(points)} mm (x, y and along the normal)",
+            f"the model's wires are {length_text(2 * radius)} thick, as suits the strips, so "
+            f"off its resonances the current on the cable is up to {abs(error):.0%} {way}",
+        ]
+    )
 
 
 def _end_gap_m(antenna: Antenna) -> float:

@@ -35,6 +35,10 @@ without one at its conductance peak at the feed."""
 _LOSS_KEY = """
 efficiency: radiated over radiated and lost power; gain is directivity less what is lost."""
 
+_CABLE_KEY = """
+cable: current on the outside of the feed cable at its start over that at the feed, at the
+conductance peak; under -20 dB it hardly matters. on it: the cable's part of the squared current."""
+
 LEAST_LOSS = 5e-4
 """Efficiencies nearer to 1 than this are not worth two columns."""
 
@@ -81,7 +85,7 @@ def command(results: str, as_json: bool, as_csv: bool, case: int | None, places:
         items = list(dataset.attrs.get("feedline", ()))
         key = _KEY.format(where="" if items else "; it lies above")
         key += _LINE_KEY.format(items=", ".join(items)) if items else ""
-        key += _LOSS_KEY if lossy(rows) else ""
+        key += (_LOSS_KEY if lossy(rows) else "") + (_CABLE_KEY if cabled(rows) else "")
         shown = modes_table(rows, _attribute(dataset, "display_unit"), feedline=bool(items))
         emit(f"{shown}\n\n{key}")
 
@@ -131,26 +135,32 @@ def lossy(rows: list[Row]) -> bool:
     )
 
 
+def cabled(rows: list[Row]) -> bool:
+    """Return whether the feed cable is in the model."""
+    return any("on_cable" in mode for row in rows for mode in row["modes"])
+
+
 def modes_table(rows: list[Row], units: dict[str, str], *, feedline: bool = False) -> str:
     """Return the table for people: one line per mode, one for a case without any.
 
     Where power is lost, directivity and efficiency stand beside the gain; behind a feed line, what
-    that takes.
+    that takes; with a feed cable in the model, what flows on it.
     """
     names = list(rows[0]["values"]) if rows else []
-    losses = lossy(rows)
+    losses, cable = lossy(rows), cabled(rows)
     head = ["case", *names, "status", "mode", "natural", "+/-", "Q", "dip", "return loss"]
     head += ["X = 0", "R", "gain", *(["directivity", "efficiency"] if losses else [])]
     head += ["network", "realised"] if feedline else []
+    head += ["cable", "on it"] if cable else []
     lines = []
     for row in rows:
         swept = [quantity_text(row["values"][name], units.get(name, "1")) for name in names]
         start = [str(row["case"]), *swept, row["status"]]
         if row["modes"]:
-            lines += [
-                start + _mode_cells(mode, losses=losses) + (_line_cells(mode) if feedline else [])
-                for mode in row["modes"]
-            ]
+            for mode in row["modes"]:
+                cells = _mode_cells(mode, losses=losses)
+                cells += _line_cells(mode) if feedline else []
+                lines.append(start + cells + (_cable_cells(mode) if cable else []))
         else:
             lines.append([*start, "-", *[""] * (len(head) - len(start) - 1)])
     # Under the table, where a long sentence does not push the numbers apart.
@@ -190,5 +200,10 @@ def _line_cells(mode: Row) -> list[str]:
     return [_percent(mode.get("network_efficiency")), gain]
 
 
-def _percent(part: float | None) -> str:
-    return number_text(None if part is None else part * 100, 1, "%")
+def _cable_cells(mode: Row) -> list[str]:
+    level = number_text(mode.get("cable_current_db"), 1, "dB")
+    return [level, _percent(mode.get("on_cable"), 0)]
+
+
+def _percent(part: float | None, digits: int = 1) -> str:
+    return number_text(None if part is None else part * 100, digits, "%")

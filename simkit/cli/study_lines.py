@@ -43,6 +43,8 @@ def with_line(reason: str, study: Study | None, antenna: Antenna | None = None) 
 def _line(reason: str, study: Study, antenna: Antenna | None) -> int | None:
     if reason.startswith("feed: "):
         return study.line_of("feed")
+    if re.search(r"^cable: |\bthe cable\b|\[cable\]", reason):
+        return study.line_of("cable")
     named = _NAMED.search(reason)
     if named is not None:
         return study.line_of(f"strip.{named[1]}")

@@ -9,6 +9,15 @@ import numpy as np
 
 from simkit.errors import GeometryError
 from simkit.geometry import line_rules
+from simkit.geometry.cable import (
+    JOINT_ERROR,
+    ON_CABLE,
+    CableCut,
+    check_cable,
+    joined_cable,
+    level_error,
+    thickness_doubts,
+)
 from simkit.geometry.chain_line import ChainLine
 from simkit.geometry.checks import check_wires
 from simkit.geometry.dressing import dressing_of
@@ -59,7 +68,7 @@ def build_wires(antenna: Antenna, plan: MeshPlan) -> WireGrid:
     GeometryError
         The strips cannot be built, or the wires would be outside what the engine can solve.
     """
-    doubts = check_strips(antenna)
+    doubts = (*check_strips(antenna), *check_cable(antenna))
     lines = chains_of(antenna)
     if [len(line.points) - 2 for line in lines] != [len(c.vertices) for c in plan.chains]:
         raise GeometryError(
@@ -140,7 +149,7 @@ def _line_grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> 
     dressing = dressing_of(antenna)
     count = len(drawing.wires)
     factor, inductance, loss = dressing.wire_loads(np.full(count, width), np.ones(count))
-    return WireGrid(
+    grid = WireGrid(
         wires=tuple(drawing.wires),
         radius_m=dressing.radius_m(width),
         conductor_factor_per_m=factor,
@@ -157,6 +166,36 @@ def _line_grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> 
         feed_width_m=width,
         relative_error=line_rules.relative_error(antenna, lines, plan.chains, longest),
         doubts=line_rules.doubts(antenna, lines, plan.chains, longest),
+    )
+    return grid if plan.cable is None else _with_cable(grid, antenna, lines[0], plan.cable)
+
+
+def _with_cable(grid: WireGrid, antenna: Antenna, line: ChainLine, cut: CableCut) -> WireGrid:
+    """The line model with the feed cable as the last of its chains."""
+    assert antenna.cable is not None  # all cases of a study have one or none has
+    wires, chain = joined_cable(antenna, line, grid.wires, grid.source, cut, grid.radius_m)
+    bare = np.zeros(len(chain.segments))
+    dressing = dressing_of(antenna)
+    # The cable lies in air and its braid is taken to conduct perfectly: no loads on its wires.
+    starts = np.cumsum([0, *(wire.segments for wire in wires[:-1])])
+    width = np.where(starts < chain.segments[0], line.widest_m, 0.0)
+    factor, inductance, loss = dressing.wire_loads(width, np.ones(len(wires)))
+    lengths = grid.per_segment(np.array([wire.segment_m for wire in grid.wires]))
+    both = sum(lengths[segment] for segment, _ in grid.source)
+    return replace(
+        grid,
+        wires=tuple(wires),
+        model_gap_m=FOOT_GAP * model_gap_m(both, grid.feed_width_m),
+        conductor_factor_per_m=factor,
+        series_inductance_h_per_m=inductance,
+        loss_inductance_h_per_m=loss,
+        chains=(*grid.chains, chain),
+        strip_index=np.concatenate([grid.strip_index, bare.astype(int) + ON_CABLE]),
+        strip_position=np.concatenate([grid.strip_position, bare + np.nan]),
+        relative_error=float(np.hypot(grid.relative_error, JOINT_ERROR)),
+        doubts=(*grid.doubts, *thickness_doubts(antenna.cable, grid.radius_m)),
+        cable=len(grid.chains),
+        cable_level_error=level_error(antenna.cable, grid.radius_m),
     )
 
 

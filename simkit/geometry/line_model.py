@@ -23,6 +23,7 @@ from simkit.geometry.line_rules import (
     TEE_HOST_WIDTHS,
     Run,
     VertexKind,
+    cable_arc_m,
     chamfer_m,
     runs,
     whisker_m,
@@ -105,14 +106,24 @@ class LineDrawing:
 
         At an apex the source sits half and half on the two segments beside the node (those of the
         chamfer, if the corner has a figure), so that it neither crosses a corner nor breaks the
-        symmetry of the two arms.
+        symmetry of the two arms. Beside a cable it takes the two segments that follow the place
+        where the cable is joined.
         """
         feed = line.feed
         assert feed is not None  # only called for the fed chain
         arc = float(line.arcs_m[feed.vertex])
         if kinds[feed.vertex - 1] == "feed":
             return ((int(chain.segments[np.argmin(abs(chain.arc_m - arc))]), 1.0),)
+        kind = kinds[feed.vertex - 1]
+        if kind in ("cable-before", "cable-after"):
+            arc = cable_arc_m(line, kind)
         after = int(np.searchsorted(chain.arc_m, arc))
+        after += {"cable-before": 1, "cable-after": -1}.get(kind, 0)
+        if not 0 < after < len(chain.segments):
+            raise GeometryError(
+                "feed: beside a cable the source takes two segments of the strip; the arm is too "
+                "short for its width and band: lengthen or narrow it, or raise frequency.stop"
+            )
         pair = (int(chain.segments[after - 1]), int(chain.segments[after]))
         return tuple((segment, 0.5) for segment in pair)
 

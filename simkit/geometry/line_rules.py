@@ -19,7 +19,7 @@ from simkit.geometry.strips import OPEN_END_WIDTHS
 from simkit.geometry.wires import FloatArray
 from simkit.study.model import Antenna
 
-VertexKind = Literal["smooth", "node", "figure", "feed", "tee"]
+VertexKind = Literal["smooth", "node", "figure", "feed", "tee", "cable-before", "cable-after"]
 
 FIGURE_FROM_RAD = np.deg2rad(50.0)
 """Corners from here up are modelled by a chamfer and a whisker, gentler ones by nothing."""
@@ -49,6 +49,10 @@ segments than a wide one would choose. Mode frequencies move by 0.06 % over 1.31
 
 TARGET_WIDTHS = 0.4
 TARGET_WAVELENGTHS = 1 / 40
+
+CABLED_WAVELENGTHS = 1 / 80
+"""Beside a cable, which is joined to the strip a segment away from the middle of the feed: on
+narrow strips it would else lie several widths away from the end it is soldered to."""
 
 LONGEST_WAVELENGTHS = 1 / 18
 """Longer segments make a case doubtful. Against flat metal, mode frequencies of a strip of 1/100 of
@@ -127,6 +131,7 @@ def _segment_excuse(antenna: Antenna, lines: Sequence[ChainLine]) -> str:
     line = lines[0]
     straight = len(lines) == 1 and not line.closed and not np.any(turns(line.points) > 1e-6)
     feed = line.feed
+    straight = straight and antenna.cable is None  # which divides the wire
     if straight and feed and abs(line.arcs_m[feed.vertex] - line.length_m / 2) < 1e-6:
         return ""  # one wire, whose segments may be shorter
     needed = UNEVEN_RUNS * SHORTEST_RADII * dressing_of(antenna).radius_m(line.widest_m)
@@ -230,15 +235,41 @@ def _tee_excuse(lines: Sequence[ChainLine], line: ChainLine) -> str:
     return ""
 
 
-def vertex_kind(turn_rad: float, *, fed: bool, roomy: bool) -> VertexKind:
-    """How a vertex is modelled, from the sharpest turn it makes in a study."""
+def vertex_kind(
+    turn_rad: float, *, fed: bool, roomy: bool, cable: Literal["", "before", "after"] = ""
+) -> VertexKind:
+    """How a vertex is modelled, from the sharpest turn it makes in a study.
+
+    Parameters
+    ----------
+    turn_rad : float
+    fed, roomy : bool
+        The feed is here; the legs beside it are of some segments.
+    cable : str
+        On which side of the feed a cable is joined to it, if one is.
+
+    Notes
+    -----
+    Beside a cable the source is spread over the two segments that follow the end the cable is
+    joined to, on the other side. On a single one, at whose end the cable takes its part of the
+    current, the power at the source is up to 7 % off that radiated. The place of the source matters
+    little, that of the cable much: a few millimetres let symmetric modes drive it.
+    """
     if fed:
         if turn_rad < STRAIGHT_FEED_RAD:
-            return "feed"
+            return "cable-before" if cable == "before" else "cable-after" if cable else "feed"
         return "figure" if turn_rad >= APEX_FIGURE_FROM_RAD else "node"
     if turn_rad >= FIGURE_FROM_RAD:
         return "figure"
     return "node" if roomy and turn_rad >= NODE_FROM_RAD else "smooth"
+
+
+def cable_arc_m(line: ChainLine, kind: VertexKind) -> float:
+    """Where along the fed chain the cable is joined to a straight feed: at an edge of the gap."""
+    feed = line.feed
+    assert feed is not None  # only asked for the fed chain
+    half = feed.gap_m / 2
+    return float(line.arcs_m[feed.vertex]) + (-half if kind == "cable-before" else half)
 
 
 def corner_offset_m(turn_rad: float, width_m: float) -> float:
@@ -263,9 +294,11 @@ def segment_limits_m(
     width = lines[0].widest_m
     radius = dressing_of(antenna).radius_m(width)
     alone = len(stretches) == 1 and not any(line.closed or line.start or line.end for line in lines)
+    alone = alone and antenna.cable is None
     shortest = (SHORTEST_STRAIGHT_RADII if alone else SHORTEST_RADII) * radius
     wavelength = light_speed / antenna.frequency.stop_hz
-    return shortest, max(shortest, TARGET_WIDTHS * width, TARGET_WAVELENGTHS * wavelength)
+    share = TARGET_WAVELENGTHS if antenna.cable is None else CABLED_WAVELENGTHS
+    return shortest, max(shortest, TARGET_WIDTHS * width, share * wavelength)
 
 
 def runs(line: ChainLine, kinds: Sequence[VertexKind], *, centred: bool) -> tuple[Run, ...]:
@@ -291,6 +324,8 @@ def runs(line: ChainLine, kinds: Sequence[VertexKind], *, centred: bool) -> tupl
         at = float(arcs[vertex])
         if kind == "node":
             edges.append((at, at))
+        elif kind in ("cable-before", "cable-after"):
+            edges.append((cable_arc_m(line, kind),) * 2)
         elif kind == "tee":
             edges.append((at - TEE_HOST_WIDTHS * width, at + TEE_HOST_WIDTHS * width))
         elif kind == "figure":

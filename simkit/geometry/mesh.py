@@ -15,6 +15,7 @@ from scipy.constants import c as light_speed
 
 from simkit.errors import GeometryError
 from simkit.geometry import line_rules
+from simkit.geometry.cable import CableCut, cable_side, plan_cable
 from simkit.geometry.chain_line import ChainLine
 from simkit.geometry.dressing import dressing_of
 from simkit.geometry.grid_layout import Cut, Interval, Widen, corner_kind, layout
@@ -23,7 +24,7 @@ from simkit.geometry.line_rules import Run, VertexKind, runs
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import leg_lengths, turns
 from simkit.geometry.rails import RailRule, rail_rule
-from simkit.study.model import Antenna, Carrier
+from simkit.study.model import Antenna, Carrier, ModelKind
 
 Kind = Literal["line", "grid"]
 Case = tuple[Antenna, tuple[ChainLine, ...]]
@@ -87,6 +88,8 @@ class MeshPlan:
     moving : bool
         The feed moves along its leg from case to case: the leg keeps its number of segments, which
         each case shares out to both sides of the feed (`split_counts`).
+    cable : CableCut or None
+        The feed cable, whose wires come last.
     """
 
     kind: Kind
@@ -95,10 +98,14 @@ class MeshPlan:
     centred: bool
     chains: tuple[ChainPlan, ...]
     moving: bool = False
+    cable: CableCut | None = None
 
     def as_dict(self) -> dict[str, Any]:
         """Plain lists and text, fit for JSON."""
-        return asdict(self)
+        found = asdict(self)
+        if self.cable is None:
+            del found["cable"]  # studies without a cable keep their keys
+        return found
 
 
 def plan_mesh(antennas: Iterable[Antenna]) -> MeshPlan:
@@ -185,6 +192,8 @@ def _kind(cases: Sequence[Case]) -> tuple[Kind, str]:
     wanted = {antenna.model for antenna, _ in cases}
     reasons = [line_rules.excuse(antenna, lines) for antenna, lines in cases]
     against = next((reason for reason in reasons if reason), "")
+    if cases[0][0].cable is not None:
+        return "line", _line_for_cable(wanted, against)
     if "grid" in wanted:
         return "grid", "the study asks for the grid model"
     if "line" in wanted:
@@ -194,12 +203,36 @@ def _kind(cases: Sequence[Case]) -> tuple[Kind, str]:
     return "line", "line model: every strip, corner and junction is within its limits"
 
 
+def _line_for_cable(wanted: set[ModelKind], against: str) -> str:
+    """Why the line model is taken for a study with a cable.
+
+    Raises
+    ------
+    GeometryError
+        Only the grid model would do.
+    """
+    takes = "which only the line model takes"
+    if "grid" in wanted:
+        raise GeometryError(
+            f"the study asks for the grid model and has a [cable], {takes}: let [model] choose, or "
+            "leave the cable out"
+        )
+    if against and "line" not in wanted:
+        raise GeometryError(
+            f"the study has a [cable], {takes}, but {against}: leave the cable out, change the "
+            'strips, or accept a larger error with kind = "line" in [model]'
+        )
+    return f"line model: the study has a cable, {takes}"
+
+
 # -- line model ------------------------------------------------------------------------------------
 
 
 def _line_plan(cases: Sequence[Case], why: str) -> MeshPlan:
+    side = "" if cases[0][0].cable is None else cable_side(cases[0][0], cases[0][1][0])
     kinds = [
-        _line_vertices([lines[chain] for _, lines in cases]) for chain in range(len(cases[0][1]))
+        _line_vertices([lines[chain] for _, lines in cases], side if chain == 0 else "")
+        for chain in range(len(cases[0][1]))
     ]
     cases = _with_room_for_the_feed(cases, kinds[0])
     centred = all(_is_centred(lines[0], kinds[0]) for _, lines in cases)
@@ -211,7 +244,10 @@ def _line_plan(cases: Sequence[Case], why: str) -> MeshPlan:
         fed = chain == 0
         counts = _line_counts(of_chain, vertices, centred=centred and fed, moving=moving and fed)
         chains.append(ChainPlan(vertices, counts))
-    return MeshPlan("line", why, 1, centred, tuple(chains), moving)
+    antennas = [antenna for antenna, _ in cases]
+    radii = [dressing_of(antenna).radius_m(lines[0].widest_m) for antenna, lines in cases]
+    cable = plan_cable(antennas, radii)
+    return MeshPlan("line", why, 1, centred, tuple(chains), moving, cable)
 
 
 def fed_pair(stretches: Sequence[Run]) -> tuple[int, int] | None:
@@ -279,7 +315,9 @@ def _with_room_for_the_feed(cases: Sequence[Case], kinds: Sequence[VertexKind]) 
     return found
 
 
-def _line_vertices(lines: Sequence[ChainLine]) -> tuple[VertexKind, ...]:
+def _line_vertices(
+    lines: Sequence[ChainLine], cable: Literal["", "before", "after"]
+) -> tuple[VertexKind, ...]:
     sharpest = np.max([turns(line.points) for line in lines], axis=0, initial=0.0)
     shortest = np.min([leg_lengths(line.points) / line.widest_m for line in lines], axis=0)
     branches = {vertex for vertex, _ in lines[0].tees}
@@ -287,7 +325,7 @@ def _line_vertices(lines: Sequence[ChainLine]) -> tuple[VertexKind, ...]:
     for vertex, turn in enumerate(sharpest, start=1):
         fed = lines[0].feed is not None and lines[0].feed.vertex == vertex
         roomy = min(shortest[vertex - 1], shortest[vertex]) > 1.5
-        kinds.append(line_rules.vertex_kind(float(turn), fed=fed, roomy=roomy))
+        kinds.append(line_rules.vertex_kind(float(turn), fed=fed, roomy=roomy, cable=cable))
         if vertex in branches:
             kinds[-1] = "tee"
     return tuple(kinds)

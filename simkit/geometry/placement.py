@@ -151,7 +151,7 @@ def _trimmed_at_its_foot(strip: Strip, point: FloatArray, antenna: Antenna) -> b
 
 def _check_wires(grid: WireGrid, antenna: Antenna) -> None:
     ground = "plane" if antenna.ground is not None and antenna.ground.kind == "plane" else "earth"
-    for wire in grid.wires:
+    for number, wire in enumerate(grid.wires):
         heights = wire.start_m[2], wire.end_m[2]
         low = wire.start_m if heights[0] <= heights[1] else wire.end_m
         if min(heights) < 0:
@@ -162,8 +162,9 @@ def _check_wires(grid: WireGrid, antenna: Antenna) -> None:
             )
         if max(heights) == 0:
             raise GeometryError(
-                f"a strip lies in the ground plane from {_mm(wire.start_m)} to {_mm(wire.end_m)}, "
-                "where it is part of the plane: lift the antenna in [placement]"
+                f"{_name_of(grid, number, 'a strip')} lies in the ground plane from "
+                f"{_mm(wire.start_m)} to {_mm(wire.end_m)}, where it is part of the plane: lift "
+                "the antenna in [placement]"
             )
         stands = min(heights) == 0 and ground == "plane"
         if not stands and min(heights) <= grid.radius_m:
@@ -182,9 +183,17 @@ def _check_wires(grid: WireGrid, antenna: Antenna) -> None:
             )
         if stands and _slope_rad(wire) < FLATTEST_RAD:
             raise GeometryError(
-                f"the strip at {_mm(low)} leans to {np.rad2deg(_slope_rad(wire)):.0f} degrees from "
-                "the plane it stands on; the models cover 30 degrees and more: turn it up"
+                f"{_name_of(grid, number)} at {_mm(low)} leans to "
+                f"{np.rad2deg(_slope_rad(wire)):.0f} degrees from the plane it stands on; the "
+                "models cover 30 degrees and more: turn it up"
             )
+
+
+def _name_of(grid: WireGrid, number: int, strip: str = "the strip") -> str:
+    """What a wire belongs to, in words; those of the feed cable come last."""
+    first = sum(wire.segments for wire in grid.wires[:number])
+    on_cable = grid.cable >= 0 and first >= int(grid.chains[grid.cable].segments[0])
+    return "the cable" if on_cable else strip
 
 
 def _slope_rad(wire: Wire) -> float:
@@ -211,12 +220,13 @@ def _clearance_doubts(grid: WireGrid) -> list[str]:
 
 
 def _leaning_doubts(grid: WireGrid) -> list[str]:
-    for wire in grid.wires:
+    for number, wire in enumerate(grid.wires):
         low = wire.start_m if wire.start_m[2] <= wire.end_m[2] else wire.end_m
         if low[2] == 0 and _slope_rad(wire) < UPRIGHT_RAD:
             return [
-                f"the strip at {_mm(low)} leans to {np.rad2deg(_slope_rad(wire)):.0f} degrees from "
-                "the plane it stands on; the models are checked from 65 degrees up: mode "
+                f"{_name_of(grid, number)} at {_mm(low)} leans to "
+                f"{np.rad2deg(_slope_rad(wire)):.0f} degrees from the plane it stands on; the "
+                "models are checked from 65 degrees up: mode "
                 "frequencies may be off by 1 %"
             ]
     return []

@@ -50,7 +50,12 @@ def refined(plan: MeshPlan, antenna: Antenna, factor: float) -> MeshPlan:
     chains = tuple(
         _refined_chain(plan, antenna, lines, index, factor) for index in range(len(lines))
     )
-    return replace(plan, chains=chains)
+    cable = plan.cable
+    if cable is not None:
+        # Half a segment on every leg may be rounded up.
+        most = int(np.ceil(2 * cable.most * max(factor, 1.0)))
+        cable = replace(cable, most=most, fineness=cable.fineness * factor)
+    return replace(plan, chains=chains, cable=cable)
 
 
 def _refined_chain(

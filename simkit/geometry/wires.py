@@ -104,7 +104,7 @@ class WireGrid:
         The longest way from tip to tip through the feed (once round, if the fed chain is a loop),
         along which half waves are counted.
     strip_index : (S,) int array
-        Strip of each segment, -1 for a segment in the feed gap.
+        Strip of each segment, -1 for a segment in the feed gap, -2 for one of the feed cable.
     strip_position : (S,) float array
         Middle of each segment along the centre line of its strip, 0..1; NaN for the outward pieces
         of corner figures and for the feed gap.
@@ -121,6 +121,10 @@ class WireGrid:
         Limits of the rules that this grid exceeds, one sentence each.
     path_on_plane : (bool, bool)
         The path's start and end stand on a ground plane, where it goes on into its image.
+    cable : int
+        Number of the feed cable's chain, -1 without one. It runs away from the feed.
+    cable_level_error : float
+        Relative error of the cable's characteristic impedance by the radius of its wires.
     """
 
     wires: tuple[Wire, ...]
@@ -140,6 +144,8 @@ class WireGrid:
     relative_error: float
     doubts: tuple[str, ...] = ()
     path_on_plane: tuple[bool, bool] = (False, False)
+    cable: int = -1
+    cable_level_error: float = 0.0
 
     @property
     def segments(self) -> int:

@@ -293,6 +293,7 @@ class Engine:
 
     def _solve(self, antenna: Antenna) -> Node:
         from simkit.geometry import build_wires
+        from simkit.response.cable import told_apart
         from simkit.response.modes import find_modes
         from simkit.response.ownership import owned_features
         from simkit.runner.solve import feed_impedance, sweep_currents
@@ -307,11 +308,14 @@ class Engine:
             return feed_impedance(grid, currents, frequency_hz)
 
         frequency = np.linspace(self.band.start_hz, self.band.stop_hz, self.band.points)
-        modes = find_modes(sweep, grid, self.band.start_hz, self.band.stop_hz)
+        found = find_modes(sweep, grid, self.band.start_hz, self.band.stop_hz)
+        modes = told_apart(found, grid)
         features = owned_features(modes, frequency, impedance(frequency), antenna.reference_ohm)
         owned: dict[int, tuple[float, float, float, float]] = {}
         peaks: dict[int, tuple[float, float]] = {}
         for mode, feature in zip(modes, features, strict=True):
+            if mode.half_waves < 0:
+                continue  # of the feed cable: nothing says which is which in another case
             dip, peak = feature.dip, feature.peak
             if peak is not None and mode.half_waves not in owned:
                 peaks[mode.half_waves] = (peak.frequency_hz, peak.resistance_ohm)

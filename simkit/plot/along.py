@@ -11,6 +11,7 @@ from matplotlib.ticker import FixedFormatter, FixedLocator, MaxNLocator, NullLoc
 from numpy.typing import NDArray
 from scipy.interpolate import PchipInterpolator
 
+from simkit.plot.cable_route import NAME, cable_route, has_cable, segments_of, with_cable
 from simkit.plot.cases import Mode
 from simkit.plot.strip_path import routes_from_wires
 from simkit.plot.style import (
@@ -75,6 +76,8 @@ def axis_of(case: xr.Dataset, antenna: Antenna | None) -> Axis:
         Without it only ends that meet are known to be joined, so branches stand apart.
     """
     routes = routes_of(antenna) if antenna is not None else routes_from_wires(case)
+    if has_cable(case):
+        routes = (*routes, cable_route(case))
     offsets, place = [], 0.0
     for route in routes:
         offsets.append(place)
@@ -92,9 +95,16 @@ def wanted_modes(
 
 
 def strip_currents(case: xr.Dataset, mode: Mode) -> tuple[ComplexArray, FloatArray]:
-    """Current of a mode along each strip, (strip, position), and the positions 0..1."""
+    """Current of a mode along each strip, (strip, position), and the positions 0..1.
+
+    The feed cable, where there is one, is one strip more.
+    """
     stored = case["mode_current"].isel(mode=mode.slot).transpose("strip", "position").values
-    return np.asarray(stored, dtype=np.complex128), np.asarray(case["position"].values, dtype=float)
+    current = np.asarray(stored, dtype=np.complex128)
+    position = np.asarray(case["position"].values, dtype=float)
+    if has_cable(case):
+        current = with_cable(case, mode, current, position)
+    return current, position
 
 
 def steadied(current: ComplexArray, route: Route, position: FloatArray) -> ComplexArray:
@@ -122,11 +132,7 @@ def mode_charge(
     charge_c_per_m : (K,) float array
         For a largest strip current of 1 A.
     """
-    segments = (
-        np.asarray(case["strip_index"].values, dtype=int),
-        np.asarray(case["strip_position"].values, dtype=float),
-    )
-    at, charge = charge_along_route(route, current, position, segments, pole_hz(mode))
+    at, charge = charge_along_route(route, current, position, segments_of(case), pole_hz(mode))
     later = (1j * charge).real
     if at.size < 3:
         return at, later
@@ -175,7 +181,7 @@ def mark_extrema(
 def dress(ax: Axes, case: xr.Dataset, axis: Axis, top: float, bottom: float) -> None:
     """Set the limits; name strips, mark joints and the feed, and count each branch from zero."""
     ax.set_ylim(bottom, top)
-    names = [plain(str(name)) for name in case["strip"].values]
+    names = [*(plain(str(name)) for name in case["strip"].values), NAME]
     _name_strips(ax, axis, names)
     _number_distances(ax, axis)
     first = names[axis.routes[0].legs[0].strip]

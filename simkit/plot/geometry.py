@@ -32,7 +32,7 @@ from simkit.plot.style import (
     plain,
     put_title,
 )
-from simkit.study.model import Antenna, Placement, Strip
+from simkit.study.model import Antenna, Cable, Placement, Strip
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -44,6 +44,7 @@ _MM = MILLIMETRE.factor
 
 FEED_COLOUR = "#d55e00"
 WIRE_COLOUR = "#0072b2"
+CABLE_COLOUR = "#cc79a7"
 MARGIN = 0.12
 """Room around the metal for dimensions, over the larger overall size."""
 PICTURE_IN = 8.0
@@ -87,15 +88,18 @@ def plot_geometry(
     metal = union_all(list(outlines.values()))
     x1, y1, x2, y2 = metal.bounds
     bounds = (x1 * _MM, y1 * _MM, x2 * _MM, y2 * _MM)
-    ax = new_axes(ax, _figure_size(bounds))
+    view = _with_cable(bounds, antenna.cable)
+    ax = new_axes(ax, _figure_size(view))
     for number, strip in enumerate(antenna.strips):
         _draw_outline(ax, outlines[strip.name], "metal" if number == 0 else "_")
     if wires is not None:
         _draw_wires(ax, wires, antenna.placement)
+    if antenna.cable is not None:
+        _draw_cable(ax, antenna.cable)
     _mark_ends_and_feed(ax, antenna)
     for strip in antenna.strips:
         _name_strip(ax, strip)
-    _draw_dimensions(ax, bounds)
+    _draw_dimensions(ax, bounds, view)
     ax.set_aspect("equal")
     ax.set_xlabel(MILLIMETRE.label("x"))
     ax.set_ylabel(MILLIMETRE.label("y"))
@@ -257,12 +261,50 @@ def _name_strip(ax: Axes, strip: Strip) -> None:
     )
 
 
-def _draw_dimensions(ax: Axes, bounds: Bounds) -> None:
+def _with_cable(bounds: Bounds, cable: Cable | None) -> Bounds:
+    """What the picture must show: the metal and the cable as seen from above."""
+    if cable is None:
+        return bounds
+    seen = np.array(cable.points_m)[:, :2] * _MM
+    low, high = np.minimum(seen.min(axis=0), bounds[:2]), np.maximum(seen.max(axis=0), bounds[2:])
+    return float(low[0]), float(low[1]), float(high[0]), float(high[1])
+
+
+def _draw_cable(ax: Axes, cable: Cable) -> None:
+    """The cable seen along the normal, a ring where it leaves towards the viewer or away."""
+    points = np.array(cable.points_m) * _MM
+    low, high = points[:, 2].min(), points[:, 2].max()
+    heights = f"z from {low:.4g} to {high:.4g} mm" if high - low > 1e-6 else "in the strips' plane"
+    label = f"feed cable, {cable.length_m * _MM:.4g} mm,\n{heights}"
+    ax.plot(
+        points[:, 0],
+        points[:, 1],
+        color=CABLE_COLOUR,
+        linewidth=2.5,
+        alpha=0.8,
+        marker="o",
+        markersize=15,
+        markerfacecolor="none",
+        markeredgewidth=1.8,
+        markevery=_leaving(points),
+        label=label,
+        zorder=6,
+    )
+
+
+def _leaving(points_mm: FloatArray) -> list[int]:
+    """Points at which a leg leaves the picture's plane within its own width of the drawing."""
+    steps = np.diff(points_mm, axis=0)
+    flat = np.linalg.norm(steps[:, :2], axis=1)
+    return [int(k) for k in np.flatnonzero(flat < 0.05 * abs(steps[:, 2]))]
+
+
+def _draw_dimensions(ax: Axes, bounds: Bounds, view: Bounds) -> None:
     """Overall size: a dimension line under the antenna and one to its right."""
     x1, y1, x2, y2 = bounds
     room = MARGIN * max(x2 - x1, y2 - y1)
-    ax.set_xlim(x1 - room, x2 + room)
-    ax.set_ylim(y1 - room, y2 + room)
+    ax.set_xlim(min(x1, view[0]) - room, max(x2, view[2]) + room)
+    ax.set_ylim(min(y1, view[1]) - room, max(y2, view[3]) + room)
     _dimension(ax, (x1, y1 - room / 2), (x2, y1 - room / 2), f"{x2 - x1:.4g} mm", 0)
     _dimension(ax, (x2 + room / 2, y1), (x2 + room / 2, y2), f"{y2 - y1:.4g} mm", 90)
 

@@ -60,15 +60,24 @@ def mode_style(half_waves: int) -> ModeStyle:
 def mode_styles(half_waves: Sequence[int]) -> list[ModeStyle]:
     """Return the looks of modes drawn together: of one number all but the first are darker.
 
-    Loops and branched antennas have several modes with one number of half waves.
+    Loops and branched antennas have several modes with one number of half waves. Modes of a feed
+    cable, which have none, are grey with dashes of their own.
     """
     found = []
     for place, number in enumerate(half_waves):
+        if number < 0:
+            found.append(_cable_style(list(half_waves[:place]).count(number)))
+            continue
         style = mode_style(number)
         for _ in range(list(half_waves[:place]).count(number)):
             style = _darker(style)
         found.append(style)
     return found
+
+
+def _cable_style(place: int) -> ModeStyle:
+    colour = (QUIET, INK, "#a6a6a6")[place % 3]
+    return ModeStyle(colour, _DASHES[1 + place % (len(_DASHES) - 1)], "x+*"[place % 3])
 
 
 def _darker(style: ModeStyle) -> ModeStyle:

@@ -116,12 +116,15 @@ def plot_tracks(
     for half_waves in numbers:
         for group in groups:
             _draw_group(ax, dataset, by, half_waves, group, (across, up))
+    cable_drawn = _draw_cable_modes(ax, dataset, by, (across, up))
     _name_outer_lines(ax, dataset, by, numbers[-1], groups, (across, up))
     for build in measured:
         places = np.asarray(build.dip_frequency_hz, dtype=float) * up.factor
         across_at = np.full(places.size, build.value * across.factor)
         ax.plot(across_at, places, linestyle="none", marker="x", markersize=8, color=INK, zorder=5)
     labels = {n: half_wave_label(n, on_plane(dataset)) for n in numbers}
+    if cable_drawn:
+        labels = {-1: half_wave_label(-1), **labels}
     _explain(ax, labels, groups, measured, _blemishes(dataset))
     return ax
 
@@ -188,6 +191,29 @@ def _frequencies(
     slot = np.argmax(match, axis=1)
     picked = values[np.arange(cases.size), slot]
     return np.where(match.any(axis=1), picked, np.nan)
+
+
+def _draw_cable_modes(
+    ax: Axes, dataset: xr.Dataset, by: str, units: tuple[DisplayUnit, DisplayUnit]
+) -> bool:
+    """Markers at the modes of the feed cable, which have no number to follow; False for none."""
+    frequency = np.asarray(dataset["mode_frequency"].values, dtype=np.float64)
+    own = (dataset["mode_half_waves"].values < 0) & np.isfinite(frequency)
+    own &= has_data(dataset)[:, np.newaxis]
+    case, slot = np.nonzero(own)
+    if not case.size:
+        return False
+    style = mode_style(-1)
+    ax.plot(
+        np.asarray(dataset[by].values, dtype=float)[case] * units[0].factor,
+        frequency[case, slot] * units[1].factor,
+        linestyle="none",
+        marker=style.marker,
+        markersize=5,
+        color=style.colour,
+        zorder=2,
+    )
+    return True
 
 
 def _draw_group(
@@ -273,7 +299,16 @@ def _explain(
     handles = []
     for half_waves, label in reversed(labels.items()):
         style = mode_style(half_waves)
-        handles.append(Line2D([], [], color=style.colour, marker=style.marker, label=label))
+        handles.append(
+            Line2D(
+                [],
+                [],
+                color=style.colour,
+                marker=style.marker,
+                linestyle="solid" if half_waves >= 0 else "none",
+                label=label,
+            )
+        )
     handles.append(Line2D([], [], color=INK, marker="o", markersize=5, label="natural mode"))
     handles.append(
         Line2D(

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from fractions import Fraction
 
-UNNUMBERED = "unnumbered mode"
+UNNUMBERED = "cable mode"
+"""A mode that lives on the feed cable: half waves are counted along the strips."""
 UNIFORM = "uniform current"
 
 
@@ -17,7 +18,7 @@ def half_wave_label(half_waves: int, on_plane: bool = False) -> str:
     ----------
     half_waves : int
         Half waves of current along the tip-to-tip path; 0 for the current of a closed loop that
-        nowhere reverses; negative where the store has no number for the mode.
+        nowhere reverses; negative for a mode of the feed cable, which has no number.
     on_plane : bool
         The path stands on a ground plane (`path_on_plane` of the store), so that `half_waves`
         counts those of the path and its image.

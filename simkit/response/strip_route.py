@@ -7,22 +7,29 @@ antenna, is the axis on which currents and charges are shown and their maxima ar
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
+from scipy.constants import c as light_speed
 
 from simkit.geometry.chain_line import ChainLine
+from simkit.geometry.line_rules import CABLED_WAVELENGTHS
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import point_at
 from simkit.geometry.route import longest_path
 from simkit.geometry.wires import FloatArray, IntArray, PathPiece, StripSpan
 from simkit.response.rational import ComplexArray
-from simkit.study.model import Antenna, Strip
+from simkit.study.model import Antenna, CutFeed, Strip
 
 REACH_WIDTHS = 0.625
 """How far around a joint, in widths of the wider strip, the current is that of neither side: half a
 width of metal, and what a segment of the model more takes."""
+
+CABLE_REACH_SEGMENTS = 0.9
+SHORTEST_SEGMENT_WIDTHS = 0.6
+"""Beside a cable the current is that of neither side for half a segment either way, and known again
+one and a half away; segments of wide strips are about so much of their width long."""
 
 SHORTEST_M = 1e-6
 """A micrometre of metal is an overlap of rounding, not a part of a strip."""
@@ -223,12 +230,32 @@ def routes_of(antenna: Antenna) -> tuple[Route, ...]:
     if not first.closed and _runs_backwards(first, antenna.strips):
         path = tuple(PathPiece(p.chain, p.end_m, p.start_m) for p in reversed(path))
         first = _route(lines, path)
+    if antenna.cable is not None:
+        first = replace(first, joinings=(*first.joinings, _cable_joining(antenna, first)))
     rest = [
         _route(lines, (piece,), start)
         for chain in range(len(lines))
         for piece, start in _left_over(lines, chain, path)
     ]
     return (first, *rest)
+
+
+def _cable_joining(antenna: Antenna, path: Route) -> Joining:
+    """Where the cable takes its part of the current: at the end of the feed it is joined to."""
+    cable, feed = antenna.cable, antenna.feed
+    assert cable is not None  # only asked for with one
+    number = next(k for k, strip in enumerate(antenna.strips) if strip.name == cable.strip)
+    legs = [leg for leg in path.legs if leg.strip == number]
+    along = 0.0 if cable.end == "start" else legs[0].strip_length_m
+    if isinstance(feed, CutFeed):
+        along = feed.at_m + (-feed.gap_m if cable.end == "start" else feed.gap_m) / 2
+    leg = min(
+        legs, key=lambda leg: max(abs(along - (leg.start_m + leg.end_m) / 2), leg.length_m / 2)
+    )
+    width = max(strip.width_m for strip in antenna.strips)
+    wave = CABLED_WAVELENGTHS * light_speed / antenna.frequency.stop_hz
+    reach = CABLE_REACH_SEGMENTS * max(SHORTEST_SEGMENT_WIDTHS * width, wave)
+    return Joining(float(leg.distance_m(np.array(along))), reach)
 
 
 def _runs_backwards(route: Route, strips: Sequence[Strip]) -> bool:

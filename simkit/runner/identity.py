@@ -72,8 +72,10 @@ def case_key(case: Case, study_part: str) -> str:
 
 
 def _inputs(antenna: Antenna) -> dict[str, Any]:
-    """All an antenna is made of; without a feed line nothing of one, as ever."""
+    """All an antenna is made of; without a feed line or a cable nothing of one, as ever."""
     inputs = asdict(antenna)
+    if antenna.cable is None:
+        del inputs["cable"]
     del inputs["feedline"]
     if antenna.feedline:
         inputs["feedline"] = feedline_text(antenna.feedline)

@@ -33,7 +33,7 @@ _CORNERS = 512
 
 
 def mesh_of(antennas: Sequence[Antenna]) -> tuple[Any, int]:
-    """Mesh plan of a study and the number of segments it leads to.
+    """Mesh plan of a study and the largest number of segments it leads to.
 
     Raises
     ------
@@ -46,9 +46,15 @@ def mesh_of(antennas: Sequence[Antenna]) -> tuple[Any, int]:
     problem: GeometryError | None = None
     for antenna in antennas:
         try:
-            return plan, build_wires(antenna, plan).segments
+            grid = build_wires(antenna, plan)
         except GeometryError as error:
             problem = problem or error
+            continue
+        segments = grid.segments
+        if plan.cable is not None:
+            # The cable alone takes as many as its length in each case asks for.
+            segments += plan.cable.most - len(grid.chains[grid.cable].segments)
+        return plan, segments
     raise problem or GeometryError("the study has no case that can be laid out")
 
 

@@ -17,6 +17,13 @@ from simkit.geometry import MeshPlan, WireGrid, build_wires
 from simkit.geometry.conductor import face_resistance_ohm
 from simkit.geometry.placement import far_from_earth
 from simkit.geometry.wires import FloatArray
+from simkit.response.cable import (
+    cable_level_db,
+    mode_errors,
+    most_wanted,
+    parts_on_cable,
+    told_apart,
+)
 from simkit.response.modes import NaturalMode, find_modes, without_echoes
 from simkit.response.ownership import OwnedFeatures, owned_features
 from simkit.response.pattern import (
@@ -73,8 +80,12 @@ def solve_case(antenna: Antenna, plan: MeshPlan) -> CaseResult:
         solves = len(sweep.model.frequency_hz)
         arrays, doubts, notes = _evaluate(antenna, grid, sweep)
         if antenna.converge:
-            errors = _convergence(antenna, plan, grid, sweep).relative_error
-            arrays["mode_frequency_error"] = _padded(errors)
+            meshes = _convergence(antenna, plan, grid, sweep)
+            # The rules' own error is in both.
+            own = np.sqrt(
+                np.maximum(arrays["mode_frequency_error"] ** 2 - meshes.rules_error**2, 0.0)
+            )
+            arrays["mode_frequency_error"] = np.hypot(_padded(meshes.relative_error), own)
     except (GeometryError, FeedlineError) as error:
         return CaseResult(Status.REFUSED, str(error), time.perf_counter() - begin, solves)
     except EngineError as error:
@@ -122,6 +133,12 @@ def _modes(
     """Natural modes to keep, and what to say of others."""
     band = antenna.frequency
     found = find_modes(sweep, grid, band.start_hz, band.stop_hz)
+    if grid.cable >= 0:
+        found = told_apart(found, grid)
+        if antenna.ground is not None:
+            own = without_echoes([mode for mode in found if mode.half_waves >= 0])
+            found = (*own, *(mode for mode in found if mode.half_waves < 0))
+        return most_wanted(found, MODES), []
     if antenna.ground is None:
         return found[:MODES], []
     kept = without_echoes(found)
@@ -239,6 +256,7 @@ def _evaluate(
     arrays: dict[str, Any] = {"impedance": impedance}
     arrays |= _grid_arrays(grid) | _ground_arrays(antenna) | _sample_arrays(antenna, grid, sweep)
     arrays |= _mode_arrays(antenna, grid, modes) | _feature_arrays(features)
+    arrays |= _cable_arrays(grid, sweep, modes, features)
     radiation = [
         _radiation(antenna, grid, sweep, mode, owned)
         for mode, owned in zip(modes, features, strict=True)
@@ -268,11 +286,15 @@ def _doubts(
     for mode, row in zip(modes, radiation, strict=True):
         if abs(row["power_balance"] - 1) > BALANCE_TOLERANCE:
             found.append(
-                f"at {row['pattern_frequency'] / 1e6:.1f} MHz (mode of {mode.half_waves} half "
-                f"waves) radiated and lost power are {row['power_balance']:.3f} of the input "
-                f"power; 1 within {BALANCE_TOLERANCE} is expected"
+                f"at {row['pattern_frequency'] / 1e6:.1f} MHz ({_of(mode)}) radiated and lost "
+                f"power are {row['power_balance']:.3f} of the input power; 1 within "
+                f"{BALANCE_TOLERANCE} is expected"
             )
     return found
+
+
+def _of(mode: NaturalMode) -> str:
+    return f"mode of {mode.half_waves} half waves" if mode.half_waves >= 0 else "a cable mode"
 
 
 def _grid_arrays(grid: WireGrid) -> dict[str, Any]:
@@ -344,12 +366,30 @@ def _mode_arrays(antenna: Antenna, grid: WireGrid, modes: Sequence[NaturalMode])
         "mode_frequency": _padded([mode.frequency_hz for mode in modes]),
         "mode_q": _padded([mode.q for mode in modes]),
         "mode_half_waves": half_waves,
-        "mode_frequency_error": _padded([grid.relative_error for _ in modes]),
+        "mode_frequency_error": _padded(mode_errors(modes, grid)),
         "mode_current": shapes,
     }
 
 
-def _padded(values: Sequence[float]) -> FloatArray:
+def _cable_arrays(
+    grid: WireGrid, sweep: Sweep, modes: Sequence[NaturalMode], features: Sequence[OwnedFeatures]
+) -> dict[str, Any]:
+    """How much of each mode flows on the feed cable; NaN without one."""
+    levels = []
+    for owned in features:
+        level = float("nan")
+        if owned.peak is not None and grid.cable >= 0:
+            at_hz = owned.peak.frequency_hz
+            driven = sweep.model(np.array([at_hz]))[0, : grid.segments]
+            level = cable_level_db(driven, grid, at_hz)
+        levels.append(level)
+    return {
+        "cable_current": _padded(levels),
+        "mode_on_cable": _padded([parts_on_cable(mode, grid)[0] for mode in modes]),
+    }
+
+
+def _padded(values: Sequence[float] | FloatArray) -> FloatArray:
     row = np.full(MODES, np.nan)
     row[: len(values)] = values
     return row

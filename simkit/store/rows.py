@@ -37,6 +37,8 @@ OF_MODE = {
     "directivity_dbi": "directivity",
     "efficiency": "efficiency",
     "power_balance": "power_balance",
+    "cable_current_db": "cable_current",
+    "on_cable": "mode_on_cable",
     "network_efficiency": "network_efficiency",
     "mismatch_factor": "mismatch_factor",
     "total_efficiency": "total_efficiency",
@@ -64,7 +66,9 @@ def modes(results: xr.Dataset | str | PathLike[str]) -> list[Row]:
           ``network_efficiency``, ``mismatch_factor``, ``total_efficiency`` and
           ``realised_gain_dbi`` are at the connector, the rest at the feed. For metal that stands
           on a ground plane ``half_waves`` counts it together with its image, and ``on_plane`` is
-          True;
+          True. With a feed cable in the model ``on_cable`` is the part of the mode on it and
+          ``cable_current_db`` the current at its start over that at the feed; modes of the cable
+          have no number;
         - ``resonances``: every zero of the reactance at the feed: ``frequency_hz``, ``kind``
           ("series" or "parallel"), ``resistance_ohm``;
         - ``dips``: every minimum of the reflection at the connector: ``frequency_hz``,

@@ -87,7 +87,10 @@ VARIABLES: dict[str, Variable] = {
     "mode_frequency": _per_mode("Hz", "natural frequency, real part of the pole"),
     "mode_q": _per_mode("1", "quality factor of the pole, Re/(2 Im)"),
     "mode_half_waves": Variable(
-        ("case", "mode"), "i2", "1", "half waves of current along the tip-to-tip path, -1 for none"
+        ("case", "mode"),
+        "i2",
+        "1",
+        "half waves of current along the tip-to-tip path; -1: no mode, or one of the feed cable",
     ),
     "path_on_plane": Variable(
         ("case",),
@@ -102,6 +105,15 @@ VARIABLES: dict[str, Variable] = {
         "c16",
         "1",
         "mode current along each strip, positive from start to end, largest value 1 and real",
+    ),
+    # The feed cable; NaN in studies without one.
+    "mode_on_cable": _per_mode(
+        "1", "part of the mode's squared current that flows on the feed cable, along its length"
+    ),
+    "cable_current": _per_mode(
+        "dB",
+        "common-mode current on the feed cable at its start over the feed current, at the "
+        "conductance peak",
     ),
     # Features a measurement shows, owned by the mode that causes them; NaN where there is none.
     "conductance_peak_frequency": _per_mode("Hz", "maximum of the conductance at the feed"),
@@ -173,7 +185,7 @@ VARIABLES: dict[str, Variable] = {
     "conductor_factor": _per_segment("f8", "1/m", "resistance per metre over surface resistance"),
     "series_inductance": _per_segment("f8", "H/m", "series inductance due to the carrier"),
     "loss_inductance": _per_segment("f8", "H/m", "its loss: resistance per metre over omega"),
-    "strip_index": _per_segment("i2", "", "strip the segment belongs to, -1 for the feed gap"),
+    "strip_index": _per_segment("i2", "", "strip the segment belongs to; -1 feed gap, -2 cable"),
     "strip_position": _per_segment(
         "f8", "1", "place along the strip, 0..1; NaN off the centre line"
     ),
@@ -209,6 +221,8 @@ ADDED_LATER = frozenset(
         "mismatch_factor",
         "total_efficiency",
         "realised_gain",
+        "mode_on_cable",
+        "cable_current",
     }
 )
 """Variables that stores of an earlier simkit lack; their cases are as good and are taken over."""

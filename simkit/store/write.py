@@ -62,7 +62,7 @@ class Block:
     def _put_one(self, case: int, name: str, value: Any) -> None:
         target = self.arrays[name]
         if target.dtype.kind != "T":
-            value = np.asarray(value)
+            value = self._filled_up(name, np.asarray(value), target.shape[1:])
             if value.shape != target.shape[1:] or not np.can_cast(
                 value.dtype, target.dtype, casting="same_kind"
             ):
@@ -71,6 +71,19 @@ class Block:
                     f"the store keeps {target.shape[1:]} and {target.dtype}"
                 )
         target[case - self.first] = value
+
+    @staticmethod
+    def _filled_up(name: str, value: Any, shape: tuple[int, ...]) -> Any:
+        """Values of a case with fewer segments than others, with fill values up to their number."""
+        dims = VARIABLES[name].dims[1:]
+        if "segment" not in dims or value.ndim != len(dims):
+            return value
+        axis = dims.index("segment")
+        missing = max(shape[axis] - value.shape[axis], 0)
+        if not missing:
+            return value
+        room = [(0, missing if k == axis else 0) for k in range(value.ndim)]
+        return np.pad(value, room, constant_values=fill_value(name))
 
     def take(self, case: int, other: Mapping[str, Any], row: int) -> None:
         """Copy one case from row `row` of the arrays of another block, as far as that has them."""

@@ -167,6 +167,22 @@ class GroundPlan:
 
 
 @dataclass(frozen=True)
+class CablePlan:
+    """The table [cable]: a route of points from the feed's end, or a direction; and a length.
+
+    A length given with a route is where the last leg ends.
+    """
+
+    strip: str
+    end: StripEnd
+    route: tuple[tuple[Quantity, ...], ...]
+    direction: tuple[Quantity, ...]
+    length: Quantity | None
+    diameter: Quantity | None
+    line: int | None
+
+
+@dataclass(frozen=True)
 class LinePlan:
     """What a line of the feed line is made of; items that are alike share one plan.
 
@@ -218,6 +234,7 @@ class Blueprint:
     placement: PlacementPlan = PlacementPlan()
     carrier: CarrierPlan | None = None
     ground: GroundPlan | None = None
+    cable: CablePlan | None = None
     feedline: tuple[FeedLinePlan, ...] = ()
 
     def shared(self) -> tuple[Quantity, ...]:

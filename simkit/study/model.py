@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 from typing import Literal
 
@@ -154,6 +156,39 @@ class CutFeed:
 
 
 @dataclass(frozen=True)
+class Cable:
+    """Outer conductor of the feed cable, a wire from one end of the feed.
+
+    Attributes
+    ----------
+    strip : str
+    end : "start" or "end"
+        The end of the feed that the braid is joined to; of a cut the side that leads to this end of
+        the strip.
+    points_m : tuple of (float, float, float)
+        Its centre line from that end to the cable's own, metres, in the axes of the drawing: x and
+        y in the plane of the strips, z along its normal. It is placed together with the strips.
+    diameter_m : float
+        Of the braid.
+    """
+
+    strip: str
+    end: StripEnd
+    points_m: tuple[Vector, ...]
+    diameter_m: float
+
+    @property
+    def legs_m(self) -> tuple[float, ...]:
+        """Length of each straight part, metres."""
+        return tuple(math.dist(a, b) for a, b in pairwise(self.points_m))
+
+    @property
+    def length_m(self) -> float:
+        """Along its centre line, metres."""
+        return sum(self.legs_m)
+
+
+@dataclass(frozen=True)
 class StripLine:
     """What a line of two strips, or of a strip over a plate, is made of.
 
@@ -293,7 +328,8 @@ class Antenna:
 
     Without a carrier the strips are in air, without a ground in free space. `converge` asks for a
     refinement of the model in every case, as an estimate of its error. `feedline` runs from the
-    feed to the connector; without items the connector is the feed.
+    feed to the connector; without items the connector is the feed. Without a `cable` nothing is
+    joined to the strips.
     """
 
     strips: tuple[Strip, ...]
@@ -307,6 +343,7 @@ class Antenna:
     ground: Ground | None = None
     converge: bool = False
     feedline: tuple[FeedLineItem, ...] = ()
+    cable: Cable | None = None
 
 
 @dataclass(frozen=True)

@@ -111,6 +111,18 @@ def width_at(path_m: Sequence[Point], widths_m: Sequence[float], at_m: float) ->
     return widths_m[-1]
 
 
+def point_on(path_m: Sequence[Point], at_m: float) -> Point:
+    """Return the point at a length along a path; beyond its end the last point."""
+    start = 0.0
+    for a, b in pairwise(path_m):
+        leg = math.dist(a, b)
+        if at_m <= start + leg:
+            part = max(at_m - start, 0.0) / leg
+            return a[0] + part * (b[0] - a[0]), a[1] + part * (b[1] - a[1])
+        start += leg
+    return path_m[-1]
+
+
 def spread_evenly(widths_m: Sequence[float], count: int) -> tuple[float, ...]:
     """Return `count` widths along a curve from some at equal steps of it, linear in between."""
     last = len(widths_m) - 1

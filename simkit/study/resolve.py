@@ -20,6 +20,7 @@ from simkit.study.blueprint import (
 from simkit.study.evaluate import FARTHEST_M, Evaluator
 from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 from simkit.study.paths import SAME_PLACE_M, is_closed, path_length, width_at
+from simkit.study.resolve_cable import check_cable_heights, resolve_cable
 from simkit.study.resolve_feedline import resolve_feedline
 from simkit.study.resolve_strips import Strips, resolve_strips
 from simkit.study.resolve_surroundings import (
@@ -77,6 +78,11 @@ def _antenna(evaluator: Evaluator, blueprint: Blueprint) -> Antenna | None:
         ground = resolve_ground(evaluator, blueprint.ground)
         if placement is not None:
             check_heights(evaluator, blueprint.ground, placement, complete)
+    cable = None
+    if blueprint.cable is not None and feed is not None:
+        cable = resolve_cable(evaluator, blueprint.cable, feed, strips)
+        if cable is not None and ground is not None and placement is not None:
+            check_cable_heights(evaluator, blueprint.cable, placement, cable)
     feedline = resolve_feedline(evaluator, blueprint.feedline, metal)
     if (
         evaluator.problems
@@ -100,6 +106,7 @@ def _antenna(evaluator: Evaluator, blueprint: Blueprint) -> Antenna | None:
         ground,
         blueprint.converge,
         feedline,
+        cable,
     )
 
 

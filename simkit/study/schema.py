@@ -9,6 +9,7 @@ from simkit.study.blueprint import (
     FrequencyPlan,
     MetalPlan,
 )
+from simkit.study.cable_schema import read_cable
 from simkit.study.feedline_schema import read_feedline
 from simkit.study.fields import known_conductivity, read_switch
 from simkit.study.model import ModelKind, StripEnd
@@ -57,6 +58,7 @@ def read_blueprint(root: Table) -> Blueprint:
         placement=read_placement(root.table("placement")),
         carrier=read_carrier(root.table("carrier")),
         ground=read_ground(root.table("ground")),
+        cable=read_cable(root.table("cable"), feed),
         feedline=read_feedline(root.tables("feedline")),
     )
 

@@ -32,7 +32,7 @@ RESULT_NAMES = frozenset(
     series_resistance series_inductance loss_inductance surface_resistance conductor_factor
     source_weight probe_current x y z direction_x direction_y direction_z length
     strip_index strip_position
-    path_on_plane ground_permittivity ground_conductivity
+    cable_current mode_on_cable path_on_plane ground_permittivity ground_conductivity
     model_gap study_gap feed_width wire_radius source_segment impedance_at_connector feedline
     network_efficiency mismatch_factor total_efficiency realised_gain
     """.split()  # noqa: SIM905, seventy names are read better as text

@@ -14,6 +14,7 @@ from simkit.geometry import chains_of
 from simkit.geometry.dressing import dressing_of
 from simkit.study.model import (
     Antenna,
+    Cable,
     Carrier,
     CutFeed,
     EndFeed,
@@ -139,3 +140,21 @@ def test_placement_and_ground() -> None:
     plane = antenna_text.placed_parts(replace(ANTENNA, ground=Ground("plane")))
     assert plane == ["Ground        perfect plane at z = 0"]
     assert antenna_text.placed_parts(ANTENNA) == []
+
+
+def test_the_cable_says_where_it_runs_and_how_thick_it_is_taken() -> None:
+    points = ((-0.001, 0.0, 0.0), (-0.001, 0.0, 0.04), (-0.001, 0.05, 0.04))
+    thin = Cable("west", "start", points, 0.0015)
+    antenna = replace(ANTENNA, strips=(EAST, WEST), metal=Metal("perfect", None, 0.0), cable=thin)
+    first, second = antenna_text.cable_text(antenna, thin).splitlines()
+    assert first == (
+        "90 mm of braid 1.5 mm thick, joined to west.start, through (-1, 0, 0) (-1, 0, 40) "
+        "(-1, 50, 40) mm (x, y and along the normal)"
+    )
+    assert "the model's wires are 2 mm thick" in second
+    # ln(2/1.5) over ln(4 * 90/1.5) - 1.
+    assert second.endswith("is up to 6% too high")
+    cut = replace(antenna, feed=CutFeed("west", 0.01, 0.001))
+    assert "joined to the side of the cut towards west.start" in antenna_text.cable_text(cut, thin)
+    assert "Cable  " in antenna_text.antenna_text(antenna)
+    assert "Cable  " not in antenna_text.antenna_text(ANTENNA)

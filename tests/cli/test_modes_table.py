@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from simkit.cli.modes import lossy, modes_table
+from simkit.cli.modes import cabled, lossy, modes_table
 
 
 def row(case: int, *efficiencies: float) -> dict[str, Any]:
@@ -51,6 +51,19 @@ def test_modes_of_which_nothing_is_known_lose_nothing() -> None:
     rows = [{"case": 0, "status": "solved", "values": {}, "modes": [only]}]
     assert not lossy(rows)
     assert "-" in modes_table(rows, {})
+
+
+def test_what_flows_on_the_cable_is_shown_where_there_is_one() -> None:
+    rows = [row(0, 1.0, 1.0)]
+    assert not cabled(rows)
+    rows[0]["modes"][0] |= {"on_cable": 0.042, "cable_current_db": -4.9}
+    rows[0]["modes"][1] |= {"on_cable": 0.65, "half_waves": None}
+    assert cabled(rows)
+    head, _, first, second = modes_table(rows, {"arm": "mm"}).splitlines()
+    assert head.split()[-3:] == ["cable", "on", "it"]
+    assert first.split()[-4:] == ["-4.9", "dB", "4", "%"]
+    assert second.split()[-3:] == ["-", "65", "%"]
+    assert "cable mode" in second
 
 
 def test_behind_a_feed_line_what_it_takes_is_shown() -> None:

@@ -89,3 +89,20 @@ def test_errors_that_leave_get_their_line(study: Study) -> None:
     words = rf"strip 'east' is a patch \(arms\.toml:{EAST}\)"
     with pytest.raises(GeometryError, match=words), lines_named(study):
         raise GeometryError("strip 'east' is a patch")
+
+
+def test_reasons_about_the_cable_lead_to_its_table(tmp_path) -> None:
+    text = (
+        'title = "t"\n[[strip]]\nname = "a"\npath = [["0 mm", "0 mm"], ["90 mm", "0 mm"]]\n'
+        'width = "4 mm"\n[feed]\nstrip = "a"\nat = "30 mm"\n[frequency]\nstart = "1 GHz"\n'
+        'stop = "2 GHz"\npoints = 11\n[cable]\nat = "a.start"\nlength = "70 mm"\n'
+        'diameter = "2 mm"\n'
+    )
+    (tmp_path / "lead.toml").write_text(text)
+    study = load_study(tmp_path / "lead.toml")
+    for reason in (
+        "cable: it runs into strip 'a' at (1, 2, 0) mm",
+        "the study has a [cable], which",
+    ):
+        assert with_line(reason, study) == f"{reason} (lead.toml:13)"
+    assert with_line("at 300 MHz (a cable mode) the balance is off", study).endswith("is off")

@@ -348,10 +348,12 @@ def test_results_of_an_earlier_layout_are_taken_over_and_completed(go, monkeypat
         for name in ADDED_LATER:
             patched.delitem(schema_module.VARIABLES, name)
         patched.setattr("simkit.runner.connector.Connector.arrays", lambda self, of_modes: {})
+        patched.setattr("simkit.runner.solve._cable_arrays", lambda *arguments: {})
         summary, old = go(TEXT + "# another text\n")
-    # Put back in its order too: the layout's hash, which later tests in this process take, has it.
-    schema_module.VARIABLES.clear()
-    schema_module.VARIABLES.update(names)
+    # They come back at the end, and their order counts in the hash of the layout.
+    schema_module.VARIABLES.update({name: schema_module.VARIABLES.pop(name) for name in names})
+    assert list(schema_module.VARIABLES) == list(names)
+    assert dict(schema_module.VARIABLES) == names
     assert not ADDED_LATER & set(old.data_vars) - {"impedance_at_connector"}
     summary, again = go(TEXT)
     assert (summary.reused, summary.solved) == (1, 0)

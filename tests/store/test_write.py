@@ -206,3 +206,19 @@ def test_replacing_a_text_leaves_the_old_one_if_it_fails(tmp_path, monkeypatch):
 def test_frequencies_are_as_given(results):
     group = zarr.open_group(results / "store.zarr")
     assert np.array_equal(group["frequency"][:], FREQUENCIES)
+
+
+def test_a_case_with_fewer_segments_is_filled_up(make_results):
+    store = StoreFile(make_results() / "store.zarr")
+    block = store.new_block(0)
+    short = np.arange(SEGMENTS - 2.0)
+    current = np.full((40, SEGMENTS - 2), 2 + 1j)
+    block.put(1, {"x": short, "current": current, "strip_index": np.zeros(SEGMENTS - 2, int)})
+    assert block.arrays["x"][1][:-2].tolist() == short.tolist()
+    assert np.isnan(block.arrays["x"][1][-2:]).all()
+    assert np.isnan(block.arrays["current"][1][:, -2:]).all()
+    assert block.arrays["strip_index"][1].tolist() == [0, 0, 0, -1, -1]
+    with pytest.raises(ValueError, match="x has shape"):
+        block.put(1, {"x": np.arange(SEGMENTS + 1.0)})
+    with pytest.raises(ValueError, match="mode_q has shape"):
+        block.put(1, {"mode_q": np.ones(3)})
