@@ -13,6 +13,7 @@ from simkit.errors import (
     ConditionError,
     EngineError,
     ExportError,
+    FeedlineError,
     GeometryError,
     MeasurementError,
     SimkitError,
@@ -23,6 +24,7 @@ from simkit.errors import (
 if TYPE_CHECKING:
     from simkit import plot
     from simkit.exports import export
+    from simkit.feedline.sources import match
     from simkit.finding import query
     from simkit.measured import compare, fit, read_touchstone, trim_pair
     from simkit.measured import trim_fitted as trim
@@ -37,6 +39,7 @@ __all__ = [
     "ConditionError",
     "EngineError",
     "ExportError",
+    "FeedlineError",
     "GeometryError",
     "MeasurementError",
     "SimkitError",
@@ -48,6 +51,7 @@ __all__ = [
     "export",
     "fit",
     "load_study",
+    "match",
     "modes",
     "open_results",
     "plot",
@@ -64,6 +68,7 @@ _HOME = {
     "export": "simkit.exports",
     "fit": "simkit.measured",
     "load_study": "simkit.study",
+    "match": "simkit.feedline.sources",
     "modes": "simkit.store.rows",
     "open_results": "simkit.store",
     "query": "simkit.finding",

@@ -158,9 +158,10 @@ def compare(
     dips, dip_notes = measured_dips(measurement)
     heard = [ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20)) for dip in dips]
     every = modes_of_cases(dataset)
-    notes = [*measurement.notes, *quality_notes(measurement), *dip_notes]
     rows, build_notes = _candidates(dataset, case, build)
     row, fit_notes = _best_row(rows, every, heard, bands)
+    expected = simulated_reflection(dataset.isel(case=row), reference)
+    notes = [*measurement.notes, *quality_notes(measurement, expected), *dip_notes]
     notes += [*build_notes, *fit_notes]
     every[row] = with_loose_dips(dataset.isel(case=row), every[row], reference)
     fixed = _fixed_pairs(every[row], dips, pins or {}, measurement)

@@ -18,12 +18,11 @@ import numpy as np
 from simkit.errors import GeometryError, MeasurementError, StudyError
 from simkit.measured.bench_errors import ErrorSizes
 from simkit.measured.dips import measured_dips, pinned_dip, smooth
-from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To
+from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To, referred
 from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
-from simkit.measured.plane import extended
 from simkit.measured.quality import quality_notes
-from simkit.measured.simulator import Engine, Surrogate, build_surrogate
+from simkit.measured.simulator import REFERENCE_OHM, STEPS, Engine, Surrogate, build_surrogate
 from simkit.measured.variation import SCALE, Known, Variation
 from simkit.response.features import Dip
 
@@ -196,9 +195,8 @@ def _files(
             made[key] = _solved(variation, held, axes, common, progress)
         model, engine = made[key]
         dips, dip_notes = measured_dips(measurement)
-        # What the feed line turns the phase by is no missing port extension.
-        bare = extended(measurement, _delay_s(model))
-        said = (*measurement.notes, *quality_notes(bare), *dip_notes)
+        expected = _expected(model, measurement.reference_ohm)
+        said = (*measurement.notes, *quality_notes(measurement, expected), *dip_notes)
         notes += [f"{measurement.path.name}: {note}" for note in said]
         cut = _cut(measurement, model.band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
         notes += _lost_notes(measurement, cut, dips)
@@ -266,6 +264,14 @@ def _interpolation_error(
         node = engine.node({name: value for name, value in at.items() if name != SCALE})
         errors.append(file.surrogate.error_at(at, node))
     return max(errors, default=float("nan"))
+
+
+def _expected(surrogate: Surrogate, reference_ohm: float) -> tuple[FloatArray, ComplexArray]:
+    """What the model shows in the middle of the bounds."""
+    middle = {axis.name: float(axis.nodes[[0, -1]].mean()) for axis in surrogate.axes}
+    frequency = np.linspace(*surrogate.band_hz, STEPS)
+    gamma = surrogate.reflection(middle, frequency)
+    return frequency, referred(gamma, REFERENCE_OHM, reference_ohm)
 
 
 def _common(measurement: Measurement, band: tuple[float, float]) -> tuple[float, float]:

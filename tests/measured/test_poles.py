@@ -128,10 +128,24 @@ def test_a_good_sweep_has_no_quality_notes():
     assert quality_notes(sweep(gamma_of(BRANCHES), 1e-3)) == []
 
 
+def test_a_dip_that_runs_round_the_centre_is_no_cable():
+    """A resistance just below the reference and one above: 360 degrees more or not."""
+    f = np.linspace(700e6, 1000e6, 1201)
+    x = 4j * (f / 850e6 - 850e6 / f)
+    round_it, beside_it = ((r + x - 1) / (r + x + 1) for r in (0.96, 1.04))
+    for measured, expected in ((round_it, beside_it), (beside_it, round_it)):
+        assert quality_notes(Measurement(Path("x.s1p"), f, measured, 50.0), (f, expected)) == []
+    assert "ns of line" in quality_notes(Measurement(Path("x.s1p"), f, round_it, 50.0))[0]
+
+
 def test_what_is_wrong_with_a_sweep_is_said():
     gamma = gamma_of(BRANCHES)
     behind = gamma * np.exp(-4j * np.pi * F * 2.5e-9)
     assert any("ns of line, one way" in note for note in quality_notes(sweep(behind, 1e-3)))
+    expected = (F, gamma)
+    (note,) = quality_notes(sweep(behind, 1e-3), expected)
+    # As accurate as the search is fine: a 64th of the inverse of the span.
+    assert float(note.split("behind ")[1].split(" ns")[0]) == pytest.approx(2.5, abs=0.02)
     leak = behind + 0.09
     assert any("ripple of 0.0" in note for note in quality_notes(sweep(leak, 1e-3)))
     assert any("noise is 0.03" in note for note in quality_notes(sweep(gamma, 3e-2)))
