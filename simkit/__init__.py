@@ -13,6 +13,7 @@ from simkit.errors import (
     ConditionError,
     EngineError,
     ExportError,
+    FeedlineError,
     GeometryError,
     MeasurementError,
     SimkitError,
@@ -23,8 +24,10 @@ from simkit.errors import (
 if TYPE_CHECKING:
     from simkit import plot
     from simkit.exports import export
+    from simkit.feedline.sources import match
     from simkit.finding import query
-    from simkit.measured import compare, read_touchstone
+    from simkit.measured import compare, fit, read_touchstone, trim_pair
+    from simkit.measured import trim_fitted as trim
     from simkit.runner import run
     from simkit.store import as_grid, open_results
     from simkit.store.rows import modes
@@ -36,6 +39,7 @@ __all__ = [
     "ConditionError",
     "EngineError",
     "ExportError",
+    "FeedlineError",
     "GeometryError",
     "MeasurementError",
     "SimkitError",
@@ -45,25 +49,33 @@ __all__ = [
     "as_grid",
     "compare",
     "export",
+    "fit",
     "load_study",
+    "match",
     "modes",
     "open_results",
     "plot",
     "query",
     "read_touchstone",
     "run",
+    "trim",
+    "trim_pair",
 ]
 
 _HOME = {
     "as_grid": "simkit.store",
     "compare": "simkit.measured",
     "export": "simkit.exports",
+    "fit": "simkit.measured",
     "load_study": "simkit.study",
+    "match": "simkit.feedline.sources",
     "modes": "simkit.store.rows",
     "open_results": "simkit.store",
     "query": "simkit.finding",
     "read_touchstone": "simkit.measured",
     "run": "simkit.runner",
+    "trim": "simkit.measured:trim_fitted",
+    "trim_pair": "simkit.measured",
 }
 
 
@@ -71,7 +83,8 @@ def __getattr__(name: str) -> object:
     if name == "plot":
         return import_module("simkit.plot")
     if name in _HOME:
-        return getattr(import_module(_HOME[name]), name)
+        module, _, other = _HOME[name].partition(":")
+        return getattr(import_module(module), other or name)
     raise AttributeError(f"module 'simkit' has no attribute {name!r}")
 
 

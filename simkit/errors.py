@@ -80,3 +80,7 @@ class ExportError(SimkitError, OSError):
 
 class MeasurementError(SimkitError, ValueError):
     """A measured file cannot be used."""
+
+
+class FeedlineError(SimkitError, ValueError):
+    """A line, a network or a wish for a match that cannot be."""

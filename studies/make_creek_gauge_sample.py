@@ -12,6 +12,7 @@ per frequency, and the errors of a calibrated one-port analyser with noise on to
 from __future__ import annotations
 
 from pathlib import Path
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,18 +27,32 @@ FREQUENCY_HZ = np.linspace(300e6, 3e9, 541)
 REFERENCE_OHM = 50.0
 EPSILON0 = 8.8541878128e-12
 
-# As cut, in metres; wished were arms of 76 mm, a width of 8 mm and a gap of 2 mm.
-ARM_WEST_M = 75.1e-3
-ARM_EAST_M = 74.3e-3
-WIDTH_M = 7.7e-3
-GAP_M = 2.4e-3
 
-# Rules for a flat strip as one wire: radius a quarter of the width, open ends shortened by 0.075
-# widths; segments of 0.61 widths act like a feed gap of 0.47 widths.
-RADIUS_M = WIDTH_M / 4
-SHORTENED_M = 0.075 * WIDTH_M
-SEGMENT_M = 0.61 * WIDTH_M
-MODEL_GAP_M = 0.47 * WIDTH_M
+class Build(NamedTuple):
+    """Dimensions of a dipole as cut, metres.
+
+    Rules for a flat strip as one wire: radius a quarter of the width, open ends shortened by 0.075
+    widths; segments of 0.61 widths act like a feed gap of 0.47 widths.
+    """
+
+    arm_west_m: float
+    arm_east_m: float
+    width_m: float
+    gap_m: float
+
+    @property
+    def segment_m(self) -> float:
+        """Length of the segment with the source."""
+        return 0.61 * self.width_m
+
+    @property
+    def model_gap_m(self) -> float:
+        """Feed gap that this segment acts like."""
+        return 0.47 * self.width_m
+
+
+BUILD_1 = Build(75.1e-3, 74.3e-3, 7.7e-3, 2.4e-3)
+"""Wished were arms of 76 mm, a width of 8 mm and a gap of 2 mm."""
 
 # What is left of the analyser's errors after calibration.
 DIRECTIVITY_DB = -36.0
@@ -53,13 +68,14 @@ Complex = NDArray[np.complex128]
 Real = NDArray[np.float64]
 
 
-def wires() -> tuple[list[Wire], int]:
+def wires(build: Build) -> tuple[list[Wire], int]:
     """West arm, feed, east arm, and the segment of the feed."""
-    half = SEGMENT_M / 2
-    west = -(GAP_M / 2 + ARM_WEST_M - SHORTENED_M)
-    east = GAP_M / 2 + ARM_EAST_M - SHORTENED_M
-    count_west = round((-half - west) / SEGMENT_M)
-    count_east = round((east - half) / SEGMENT_M)
+    half = build.segment_m / 2
+    shortened = 0.075 * build.width_m
+    west = -(build.gap_m / 2 + build.arm_west_m - shortened)
+    east = build.gap_m / 2 + build.arm_east_m - shortened
+    count_west = round((-half - west) / build.segment_m)
+    count_east = round((east - half) / build.segment_m)
     return [
         Wire((west, 0.0, 0.0), (-half, 0.0, 0.0), count_west),
         Wire((-half, 0.0, 0.0), (half, 0.0, 0.0), 1),
@@ -67,13 +83,15 @@ def wires() -> tuple[list[Wire], int]:
     ], count_west
 
 
-def antenna_impedance(frequency_hz: Real) -> Complex:
+def antenna_impedance(frequency_hz: Real, build: Build = BUILD_1) -> Complex:
     """Impedance at the gap as cut; the model's own gap is replaced by a shunt capacitance."""
-    parts, feed = wires()
+    parts, feed = wires(build)
+    radius = build.width_m / 4
     current = np.array(
-        [solve_wires(parts, RADIUS_M, float(f), [[(feed, 1.0)]])[0, feed] for f in frequency_hz]
+        [solve_wires(parts, radius, float(f), [[(feed, 1.0)]])[0, feed] for f in frequency_hz]
     )
-    capacitance = EPSILON0 * 2 * WIDTH_M / np.pi * np.log(MODEL_GAP_M / GAP_M)
+    log = np.log(build.model_gap_m / build.gap_m)
+    capacitance = EPSILON0 * 2 * build.width_m / np.pi * log
     return np.asarray(1 / (current + 2j * np.pi * frequency_hz * capacitance))
 
 

@@ -13,7 +13,7 @@ from typing import IO, Any
 import click
 
 from simkit import __version__
-from simkit.errors import ConditionError, MeasurementError, SimkitError, StudyError
+from simkit.errors import ConditionError, FeedlineError, MeasurementError, SimkitError, StudyError
 
 COMMANDS = (
     "new",
@@ -25,6 +25,7 @@ COMMANDS = (
     "query",
     "plot",
     "compare",
+    "match",
     "fit",
     "trim",
     "export",
@@ -72,7 +73,7 @@ class LazyGroup(click.Group):
             os.environ.setdefault(name, "1")
         try:
             return super().invoke(ctx)
-        except (StudyError, MeasurementError, ConditionError) as error:
+        except (StudyError, MeasurementError, ConditionError, FeedlineError) as error:
             raise InputFailure(str(error)) from error
         except SimkitError as error:
             raise CommandFailure(str(error)) from error

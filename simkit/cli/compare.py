@@ -42,7 +42,7 @@ if TYPE_CHECKING:
 @click.option(
     "--natural",
     is_flag=True,
-    help="Read natural modes from the sweep itself as well, with 95 % intervals.",
+    help="Say more of the natural modes read from the sweep itself, with 95 % intervals.",
 )
 @click.option(
     "--nearest",
@@ -87,6 +87,8 @@ def command(
     dataset = open_results(results)
     study = study_of(results)
     on_plane = study is not None and asked.stands(study)
+    if nearest and natural:
+        raise click.UsageError("--nearest ranks cases and reads no natural modes: choose one.")
     fixed = asked.pins_of(pins, on_plane=on_plane) if pins else {}
     files = asked.measurements(measured, port, extension)
     if nearest:
@@ -102,19 +104,24 @@ def command(
         emit(csv_text(rows))
     else:
         emit("\n\n".join(_text(comparison, natural=natural) for comparison in found))
+    seen: list[str] = []
     with drawing_folder(results, output) as folder:
         for comparison in found:
-            path = save_overlay(comparison, output or overlay_path(folder, comparison))
+            path = Path(output) if output else overlay_path(folder, comparison)
+            seen.append(path.stem)
+            if seen.count(path.stem) > 1:  # repeats of one name, from several folders
+                path = path.with_stem(f"{path.stem}_{seen.count(path.stem)}")
+            path = save_overlay(comparison, path)
             click.echo(f"written: {path}", err=True)
+            click.echo(f"written: {save_smith(comparison, path)}", err=True)
 
 
 def _text(comparison: Comparison, *, natural: bool) -> str:
     if not natural:
         return comparison.as_text()
-    from simkit.measured.poles import measured_modes
     from simkit.measured.wording import natural_text
 
-    return f"{comparison.as_text()}\n{natural_text(measured_modes(comparison.measurement))}"
+    return f"{comparison.as_text()}\n{natural_text(comparison.natural)}"
 
 
 def _show_nearest(
@@ -137,10 +144,9 @@ def _show_nearest(
     elif form == "csv":
         emit(csv_text(rows))
     else:
-        units = {name: str(dataset[name].attrs.get("units", "1")) for name in ranked[0][0].values}
         emit(
             "\n\n".join(
-                nearest_text(file, cases, units) for file, cases in zip(files, ranked, strict=True)
+                nearest_text(file, cases) for file, cases in zip(files, ranked, strict=True)
             )
         )
     reference = float(dataset.attrs.get("reference_ohm", 50.0))
@@ -162,3 +168,12 @@ def save_overlay(comparison: Comparison, path: str | Path) -> Path:
     from simkit.plot.save import write
 
     return write(cast("Figure", plot_overlay(comparison).figure), path)
+
+
+def save_smith(comparison: Comparison, path: str | Path) -> Path:
+    """Draw the same in a Smith chart, into a file beside the first, and return its name."""
+    from simkit.plot.overlay import plot_overlay_smith
+    from simkit.plot.save import write
+
+    beside = Path(path).with_stem(f"{Path(path).stem}_smith")
+    return write(cast("Figure", plot_overlay_smith(comparison).figure), beside)

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import os
+from collections.abc import Sequence
+from contextlib import suppress
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -16,9 +19,14 @@ from simkit.cli.fitting import (
 )
 from simkit.cli.options import csv_option, json_option, one_format, study_argument
 from simkit.cli.output import csv_text, emit, json_text
+from simkit.errors import StoreError
 
 if TYPE_CHECKING:
     from simkit.measured.fit_result import FitResult
+    from simkit.study import Study
+
+FITTED_HEAD = "Fitted to "
+"""How the first comment of every fitted study begins."""
 
 
 @click.command()
@@ -66,12 +74,13 @@ def command(
             "--free carrier.permittivity=2..3.5"
         )
     target = Path(output) if output else Path(study).with_name(f"{Path(study).stem}_fitted.toml")
-    if target.exists() and target.samefile(study):
-        raise click.UsageError("-o names the study itself: give the fitted one another name.")
+    check_target(target, study)
     from simkit.study import load_study
 
+    loaded = load_study(study)
+    check_rewritable(loaded, free, known)
     result = fitted(
-        load_study(study),
+        loaded,
         measured,
         free,
         known,
@@ -87,17 +96,68 @@ def command(
         emit(csv_text(as_data(result)["values"]))
     else:
         emit(result.as_text())
-    target.write_text(result.study_text(), encoding="utf-8")
+    write_study(target, result.study_text())
     click.echo(f"written: {target}", err=True)
     folder = plots_folder(study, plots)
     from simkit.plot.fit import plot_fit, plot_fit_smith, plot_mode_ratios, plot_residuals
 
-    for curve in result.curves:
-        stem = curve.measurement.path.stem
+    for curve, stem in zip(result.curves, stems(result), strict=True):
         save(plot_fit(result, curve), folder, f"fit_{stem}.png")
         save(plot_fit_smith(result, curve), folder, f"fit_{stem}_smith.png")
         save(plot_residuals(result, curve), folder, f"fit_{stem}_residuals.png")
     save(plot_mode_ratios(result), folder, "fit_mode_ratios.png")
+
+
+def check_target(target: Path, study: str) -> None:
+    """Refuse to write over the study, or over anything that no fit has written."""
+    if not target.exists():
+        return
+    if target.samefile(study):
+        raise click.UsageError("-o names the study itself: give the fitted one another name.")
+    try:
+        first = target.read_text(encoding="utf-8").split("\n", 1)[0]
+    except (OSError, UnicodeDecodeError):
+        first = ""
+    if not first.startswith(f"# {FITTED_HEAD}"):
+        raise click.UsageError(
+            f"{target} is there and was not written by a fit: move it away, or name another file "
+            "with -o."
+        )
+
+
+def check_rewritable(study: Study, free: Sequence[str], known: Sequence[str]) -> None:
+    """Refuse before anything is solved if the fitted values cannot be written into the study."""
+    from simkit.measured.variation import Variation
+
+    variation = Variation(study)
+    names = [variation.bounds(text)[0] for text in free]
+    names += [variation.known(text).name for text in known]
+    variation.rewritten({name: variation.nominal(name) for name in names})
+
+
+def write_study(target: Path, text: str) -> None:
+    """Write the fitted study, whole or not at all."""
+    aside = target.with_name(f".{target.name}.{os.getpid()}.part")
+    try:
+        aside.write_text(text, encoding="utf-8")
+        os.replace(aside, target)
+    except OSError as error:
+        raise StoreError(
+            f"{target}: the fitted study cannot be written: {error.strerror}; name another place "
+            "with -o"
+        ) from error
+    finally:
+        with suppress(OSError):
+            aside.unlink(missing_ok=True)
+
+
+def stems(result: FitResult) -> list[str]:
+    """Names for the pictures of each file; files of one name get numbers."""
+    plain = [curve.measurement.path.stem for curve in result.curves]
+    return [
+        f"{stem}_{plain[: k + 1].count(stem)}" if plain.count(stem) > 1 else stem
+        for k, stem in enumerate(plain)
+    ]
 
 
 def as_data(result: FitResult) -> dict[str, Any]:

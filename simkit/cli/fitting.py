@@ -10,10 +10,12 @@ from typing import TYPE_CHECKING, Any, cast
 import click
 
 if TYPE_CHECKING:
+    import xarray as xr
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
     from simkit.measured.fit_result import FitResult
+    from simkit.measured.variation import Variation
     from simkit.study import Study
 
 Decorator = Callable[[Callable[..., None]], Callable[..., None]]
@@ -115,8 +117,11 @@ def fitted(
         from simkit.measured.stored import surrogate_of_results
         from simkit.store import open_results
 
+        stored = open_results(results)
         needed = {k.name: k.bounds for k in beliefs} | bounds | (also or {})
-        surrogate = surrogate_of_results(open_results(results), needed, variation)
+        builds = [asked.build_in(study, file) for file in files]
+        needed = _held(variation, stored, builds) | needed
+        surrogate = surrogate_of_results(stored, needed, variation)
     return fit(
         study,
         files,
@@ -129,6 +134,21 @@ def fitted(
         also=also,
         progress=_progress,
     )
+
+
+def _held(
+    variation: Variation, stored: xr.Dataset, builds: Sequence[dict[str, float]]
+) -> dict[str, tuple[float, float]]:
+    """Where the swept values of a store are needed if nobody frees them: at the builds' values."""
+    from simkit.store.read import swept_names
+
+    known = variation.names()
+    found = {}
+    for name in swept_names(stored):
+        if name in known:
+            values = [build.get(name, variation.nominal(name)) for build in builds]
+            found[name] = (min(values), max(values))
+    return found
 
 
 def _progress(done: int, total: int) -> None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import shutil
+from contextlib import suppress
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -84,6 +86,7 @@ def command(
         show_remarks(dataset, loaded)
         if summary.complete:
             with drawing_folder(summary.results_dir) as folder:
+                keep_measured(loaded, folder)
                 draw(dataset, loaded, folder)
                 trouble = show_comparisons(dataset, loaded, folder)
     click.echo(end_text(summary, study))
@@ -108,9 +111,22 @@ def draw(dataset: xr.Dataset, study: Study, results: Path) -> None:
         click.echo(f"  {path}: {about}")
 
 
+def keep_measured(study: Study, results: Path) -> None:
+    """Copy the measured files the study names, so that a results folder can be moved."""
+    from simkit.plot.save import MEASURED_FOLDER
+
+    for file in study.measured:
+        if not file.path.is_file():
+            continue
+        with suppress(OSError):
+            copy = results / MEASURED_FOLDER / file.path.name
+            copy.parent.mkdir(parents=True, exist_ok=True)
+            shutil.copyfile(file.path, copy)
+
+
 def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
     """Compare with every measured file the study names; return whether one could not be used."""
-    from simkit.cli.compare import overlay_path, save_overlay
+    from simkit.cli.compare import overlay_path, save_overlay, save_smith
     from simkit.cli.folder import nominal_of
     from simkit.errors import SimkitError
     from simkit.measured import compare, read_touchstone
@@ -128,7 +144,9 @@ def show_comparisons(dataset: xr.Dataset, study: Study, results: Path) -> bool:
             trouble = True
             continue
         click.echo(f"\n{comparison.as_text()}")
-        click.echo(f"  {save_overlay(comparison, overlay_path(results, comparison))}: both curves")
+        path = save_overlay(comparison, overlay_path(results, comparison))
+        click.echo(f"  {path}: both curves")
+        click.echo(f"  {save_smith(comparison, path)}: both in a Smith chart")
     return trouble
 
 

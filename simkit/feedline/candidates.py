@@ -113,7 +113,7 @@ def line_of(line: Line, impedance_ohm: float, frequency_hz: float) -> Line:
 
 
 def l_sections(task: Task) -> Iterator[Candidate]:
-    """L-sections, all solutions, with the E24 values around the exact ones."""
+    """L-sections, all solutions, with the E24 values around the exact ones, or just these."""
     f, supply = task.frequency_hz, task.supply
     for number, solution in enumerate(l_solutions(task.load_ohm, task.reference_ohm)):
         order: tuple[Connection, Connection] = ("shunt", "series")
@@ -129,7 +129,8 @@ def l_sections(task: Task) -> Iterator[Candidate]:
                 near = supply.near(kind, value, NEAR)
                 choices.append([supply.part(kind, v, connection) for v in near])
         for parts in product(*choices):
-            yield Candidate("L-section", task.chain(*parts), f"L-section {number}", False)
+            free = supply.series == "any"
+            yield Candidate("L-section", task.chain(*parts), f"L-section {number}", free)
 
 
 def single_parts(task: Task) -> Iterator[Candidate]:
@@ -139,9 +140,8 @@ def single_parts(task: Task) -> Iterator[Candidate]:
         for kind in ("L", "C"):
             for value in task.supply.values("L" if kind == "L" else "C"):
                 part = task.supply.part("L" if kind == "L" else "C", value, connection)
-                yield Candidate(
-                    "single part", task.chain(part), f"{connection} {kind}", refinable=False
-                )
+                free = task.supply.series == "any"
+                yield Candidate("single part", task.chain(part), f"{connection} {kind}", free)
 
 
 MAKERS = {

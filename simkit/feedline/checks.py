@@ -1,4 +1,4 @@
-"""The error of this room, and checks of numbers whose messages all read alike."""
+"""Checks of numbers whose messages all read alike."""
 
 from __future__ import annotations
 
@@ -7,14 +7,20 @@ import math
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from simkit.errors import SimkitError
+from simkit.errors import FeedlineError
+
+__all__ = [
+    "ComplexArray",
+    "FeedlineError",
+    "FloatArray",
+    "frequencies",
+    "not_negative",
+    "positive",
+    "quantity",
+]
 
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
-
-
-class FeedlineError(SimkitError, ValueError):
-    """A line, a network or a wish for a match that cannot be."""
 
 
 _SCALES = {"m": (1e3, "mm"), "Hz": (1e-6, "MHz"), "s": (1e12, "ps"), "H": (1e9, "nH")}

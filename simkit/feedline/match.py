@@ -19,7 +19,7 @@ from simkit.feedline.candidates import MAKERS, Candidate, Task
 from simkit.feedline.chain import Chain
 from simkit.feedline.checks import FeedlineError, FloatArray, positive
 from simkit.feedline.checks import quantity as q
-from simkit.feedline.elements import End, Lumped, TappedLine
+from simkit.feedline.elements import End, LineSection, Lumped, TappedLine
 from simkit.feedline.line import Line
 from simkit.feedline.oneport import OnePort
 from simkit.feedline.parts import PartSupply
@@ -36,6 +36,12 @@ CHANGE = 0.01
 
 ROUNDS = 300
 """Most evaluations that refining one network may take."""
+
+LOG_REACH = (-20.0, 1.5)
+"""Logarithms of the factors by which refining may move a dimension: to nothing, to 4.5 times."""
+
+NOTHING_M = 1e-6
+"""A section shorter than this is none."""
 
 WANTED_DB = 15.0
 
@@ -85,7 +91,7 @@ def find_matches(
         If the band has no width or is not covered, the load is purely reactive in it, a kind is
         unknown, or no kind gives a network.
     """
-    _check_band(start_hz, stop_hz)
+    check_band(start_hz, stop_hz)
     positive("reference resistance", reference_ohm, "ohm")
     unknown = [kind for kind in kinds if kind not in MAKERS]
     if unknown or not kinds:
@@ -110,7 +116,13 @@ def find_matches(
             continue
         if not found:
             notes.append(f"{kind}: {_why_none(kind, task)}")
-        designs += [_judged(c, band, task.supply, refine=refine) for c in found]
+            continue
+        judged = [_judged(c, band, task.supply, refine=refine) for c in found]
+        useful = [d for d in judged if d.worst_db > before or d.worst_db >= wanted_db]
+        if not useful:
+            best = max(d.worst_db for d in judged)
+            notes.append(f"{kind}: over the band {best:.1f} dB at best, worse than no network")
+        designs += useful
     if not designs:
         raise FeedlineError("no network matches this load: " + "; ".join(notes))
     ranked = sorted(_distinct(designs), key=lambda d: (-d.changed_db, -d.worst_db))
@@ -142,7 +154,7 @@ def best_tap(
     FeedlineError
         As `find_matches`, or if the length is not positive.
     """
-    _check_band(start_hz, stop_hz)
+    check_band(start_hz, stop_hz)
     positive("length of the line", length_m, "m")
     band = load.at(np.linspace(start_hz, stop_hz, POINTS))
 
@@ -174,7 +186,7 @@ def _in_db(reflection: float) -> float:
     return min(LARGEST_DB, -20 * math.log10(max(reflection, 1e-12)))
 
 
-def _check_band(start_hz: float, stop_hz: float) -> None:
+def check_band(start_hz: float, stop_hz: float) -> None:
     positive("start of the band", start_hz, "Hz")
     positive("stop of the band", stop_hz, "Hz")
     if stop_hz <= start_hz:
@@ -213,7 +225,7 @@ def _why_none(kind: str, task: Task) -> str:
 def _judged(candidate: Candidate, band: OnePort, supply: PartSupply, *, refine: bool) -> Design:
     chain = candidate.chain
     if refine and candidate.refinable:
-        chain = _refined(chain, band)
+        chain = without_nothing(_refined(chain, band))
     worst = worst_return_loss_db(chain, band)
     changed, sensitive = _after_change(chain, band, worst)
     result = chain.terminate(band)
@@ -238,7 +250,7 @@ def _refined(chain: Chain, band: OnePort) -> Chain:
 
     def moved(logs: FloatArray) -> Chain:
         other = chain
-        for dimension, log in zip(free, logs, strict=True):
+        for dimension, log in zip(free, np.clip(logs, *LOG_REACH), strict=True):
             other = dimension.scaled(other, math.exp(float(log)))
         return other
 
@@ -257,6 +269,14 @@ def _refined(chain: Chain, band: OnePort) -> Chain:
     )
     best = moved(found.x)
     return best if _worst_reflection(best, band) < _worst_reflection(chain, band) else chain
+
+
+def without_nothing(chain: Chain) -> Chain:
+    """Leave out sections that were moved to no length, unless nothing is left then."""
+    kept = tuple(
+        e for e in chain.elements if not (isinstance(e, LineSection) and e.length_m < NOTHING_M)
+    )
+    return replace(chain, elements=kept) if kept else chain
 
 
 def _after_change(chain: Chain, band: OnePort, worst_db: float) -> tuple[float, str]:

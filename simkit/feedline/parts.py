@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import Literal
 
 from simkit.feedline.checks import FeedlineError, not_negative, positive
 from simkit.feedline.elements import Connection, Kind, Lumped
@@ -49,6 +50,8 @@ class PartSupply:
         Relative, of every part.
     smallest_h, largest_h, smallest_f, largest_f : float
         Range of inductors and capacitors.
+    series : {"E24", "any"}
+        Values to be had: those of the E24 series, or any, as trimmers and hand-wound coils have.
     """
 
     inductor_q: float = 40.0
@@ -58,9 +61,16 @@ class PartSupply:
     largest_h: float = 1e-6
     smallest_f: float = 0.2e-12
     largest_f: float = 1e-9
+    series: Literal["E24", "any"] = "E24"
 
     def __post_init__(self) -> None:
         not_negative("tolerance of parts", self.tolerance, "")
+        if self.tolerance >= 1:
+            raise FeedlineError(
+                f"tolerance of parts is {self.tolerance:.4g}: it must be below 1 (100 %)"
+            )
+        if self.series not in ("E24", "any"):
+            raise FeedlineError(f"values of parts are '{self.series}': choose from E24, any")
         for name in ("inductor_q", "capacitor_q"):
             if not getattr(self, name) > 0:
                 raise FeedlineError(f"{name} is {getattr(self, name):g}: it must be more than 0")
@@ -76,18 +86,24 @@ class PartSupply:
 
     def values(self, kind: Kind) -> list[float]:
         """Return all E24 values of inductors or capacitors, ascending."""
-        low, high = {
-            "L": (self.smallest_h, self.largest_h),
-            "C": (self.smallest_f, self.largest_f),
-            "R": (1.0, 1e6),
-        }[kind]
+        low, high = self._range(kind)
         decades = range(math.floor(math.log10(low)) - 1, math.ceil(math.log10(high)) + 1)
         every = (float(f"{digits}e{decade - 1}") for decade in decades for digits in E24)
         slack = 1e-9
         return [v for v in every if low * (1 - slack) <= v <= high * (1 + slack)]
 
+    def _range(self, kind: Kind) -> tuple[float, float]:
+        return {
+            "L": (self.smallest_h, self.largest_h),
+            "C": (self.smallest_f, self.largest_f),
+            "R": (1.0, 1e6),
+        }[kind]
+
     def near(self, kind: Kind, value: float, count: int) -> list[float]:
-        """Return the `count` values nearest to one in ratio."""
+        """Return the `count` E24 values nearest to one in ratio; where any are had, just it."""
+        if self.series == "any":
+            low, high = self._range(kind)
+            return [value] if low <= value <= high else []
         ranked = sorted(self.values(kind), key=lambda v: abs(math.log(v / value)))
         return sorted(ranked[:count])
 

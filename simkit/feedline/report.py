@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import re
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from string import ascii_uppercase
 
@@ -100,29 +101,44 @@ class MatchReport:
 
     def as_text(self, most: int = 10) -> str:
         """Return the table of the best designs, the bound and the notes."""
+        shown = self.designs[:most]
         lines = [
             f"match to {self.reference_ohm:g} ohm from {q(self.start_hz, 'Hz')} to "
             f"{q(self.stop_hz, 'Hz')}; without a network at least {self.before_db:.1f} dB "
             "return loss",
-            "rank  band   1 % off  tolerance  efficiency  network, from the antenna",
+            *self._table(shown),
         ]
-        shown = self.designs[:most]
+        if more := len(self.designs) - len(shown):
+            lines.append(f"{more} more, with less left when 1 % off")
+        lines.append(self._verdict())
+        doubts = dict.fromkeys(d for design in shown for d in design.doubts)
+        return "\n".join([*lines, *_merged(self.notes), *(f"doubtful: {d}" for d in doubts)])
+
+    def _table(self, shown: Sequence[Design]) -> list[str]:
+        """Two lines a design: its numbers, and under them what it is made of."""
         named = _named_lines(shown)
-        for rank, design in enumerate(shown, 1):
+        head = ("rank", "kind", "worst", "1 % off", "tolerance", "efficiency", "most sensitive")
+        rows = [
+            (
+                f"{rank}",
+                design.kind,
+                f"{design.worst_db:.1f} dB",
+                f"{design.changed_db:.1f} dB",
+                f"{design.tolerance_db:.1f} dB",
+                f"{100 * design.efficiency:.1f} %",
+                _with_letter(design, named) or "-",
+            )
+            for rank, design in enumerate(shown, 1)
+        ]
+        widths = [max(len(row[column]) for row in (head, *rows)) for column in range(len(head))]
+        lines = [_aligned(head, widths)]
+        for row, design in zip(rows, shown, strict=True):
             about = design.about
             # Longer words first: those of one line may begin those of another.
             for text, letter in sorted(named.items(), key=lambda item: -len(item[0])):
                 about = about.replace(text, f"line {letter}")
-            lines.append(
-                f"{rank:4d}  {design.worst_db:4.1f}  {design.changed_db:6.1f} dB "
-                f"{design.tolerance_db:7.1f} dB {design.efficiency:10.1%}   {design.kind}: {about}"
-            )
-            if design.sensitive:
-                lines.append(f"{'':42}most sensitive: {design.sensitive}")
-        lines += [f"line {letter}: {text}" for text, letter in named.items()]
-        lines.append(self._verdict())
-        doubts = dict.fromkeys(d for design in shown for d in design.doubts)
-        return "\n".join([*lines, *self.notes, *(f"doubtful: {doubt}" for doubt in doubts)])
+            lines += [_aligned(row, widths), f"{'':{widths[0] + 2}}{about}"]
+        return lines + [f"line {letter}: {text}" for text, letter in named.items()]
 
     def _verdict(self) -> str:
         centre_hz = (self.start_hz + self.stop_hz) / 2
@@ -132,9 +148,38 @@ class MatchReport:
         return bound[0].upper() + bound[1:]
 
 
+def _with_letter(design: Design, named: Mapping[str, str]) -> str:
+    """The most sensitive dimension; a line by its letter, not by its place in the network."""
+    words = re.fullmatch(r"line (?:(\d+) )?(.*)", design.sensitive)
+    if words is None:
+        return design.sensitive
+    lines = (getattr(element, "line", None) for element in design.chain.elements)
+    distinct = [line.about for line in dict.fromkeys(lines) if line is not None]
+    return f"line {named[distinct[int(words[1] or 1) - 1]]} {words[2]}"
+
+
 def _named_lines(designs: Sequence[Design]) -> dict[str, str]:
     """A letter, or two, for the words of each line."""
     lines = (getattr(e, "line", None) for design in designs for e in design.chain.elements)
     texts = list(dict.fromkeys(line.about for line in lines if line is not None))
     letters = [a + b for a in ("", *ascii_uppercase) for b in ascii_uppercase]
     return dict(zip(texts, letters, strict=False))
+
+
+def _aligned(cells: Sequence[str], widths: Sequence[int]) -> str:
+    """Words flush left, numbers flush right."""
+    last = len(cells) - 1
+    padded = (
+        cell.ljust(width) if column in (1, last) else cell.rjust(width)
+        for column, (cell, width) in enumerate(zip(cells, widths, strict=True))
+    )
+    return "  ".join(padded).rstrip()
+
+
+def _merged(notes: Sequence[str]) -> list[str]:
+    """One line for kinds of network that give nothing for the same reason."""
+    kinds: dict[str, list[str]] = {}
+    for note in notes:
+        kind, _, why = note.partition(": ")
+        kinds.setdefault(why, []).append(kind)
+    return [f"{', '.join(names)}: {why}" for why, names in kinds.items()]

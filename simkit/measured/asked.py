@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from fractions import Fraction
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Literal
 
 from simkit.errors import MeasurementError
 from simkit.measured.measurement import Measurement
@@ -15,6 +16,7 @@ from simkit.study.parser import parse
 from simkit.study.units import FREQUENCY, LENGTH, TIME, Dimension, describe
 
 if TYPE_CHECKING:
+    from simkit.measured.targets import Target
     from simkit.study import Study
 
 
@@ -98,6 +100,43 @@ def pins_of(texts: Sequence[str], *, on_plane: bool) -> dict[int, float]:
             raise MeasurementError(f"--pin {text}: write MODE=FREQUENCY, as in 3/2=2.81GHz")
         found[half_waves_of(mode, on_plane=on_plane)] = frequency_hz("--pin", frequency)
     return found
+
+
+def targets_of(modes: Sequence[str], texts: Sequence[str], *, on_plane: bool) -> tuple[Target, ...]:
+    """Return what a trim aims at: one target or two, a return loss last.
+
+    Each frequency or band belongs to the mode named in the same place, a return loss to the first
+    mode, and to its band if it has one.
+
+    Raises
+    ------
+    MeasurementError
+    """
+    from simkit.measured.targets import Target
+
+    losses = [text for text in texts if re.fullmatch(r"\s*[-+0-9.eE]+\s*[dD][bB]\s*", text)]
+    places = [text for text in texts if text not in losses]
+    if len(places) != len(modes) or len(losses) > 1 or not 1 <= len(texts) <= 2:
+        raise MeasurementError(
+            f"{len(modes)} --mode and {len(texts)} --target do not go together: give one mode with "
+            "a frequency or a band, two modes with one each, or one mode with a frequency or a "
+            "band and a return loss such as '15 dB'"
+        )
+    found = []
+    for mode, text in zip(modes, places, strict=True):
+        band = band_hz("--target", text)
+        kind: Literal["band", "dip"] = "band" if band[1] > band[0] else "dip"
+        found.append(Target(kind, half_waves_of(mode, on_plane=on_plane), band))
+    for text in losses:
+        loss = float(text.lower().replace("db", ""))
+        if not 0 < loss <= 60:
+            raise MeasurementError(
+                f"--target {text}: a return loss lies between 0 and 60 dB, as in '15 dB'"
+            )
+        nan = float("nan")
+        band = found[0].band_hz if found[0].over_band else (nan, nan)
+        found.append(Target("match", found[0].half_waves, band, loss))
+    return tuple(found)
 
 
 def stands(study: Study) -> bool:

@@ -12,7 +12,10 @@ from simkit.errors import MeasurementError, StoreError
 from simkit.measured.dips import measured_dips, pinned_dip
 from simkit.measured.fsv import Agreement, agreement, decibels
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
+from simkit.measured.mode_line import NAN, ModeLine
+from simkit.measured.natural import TOLD_DELAY_S, natural_beside, natural_pairs
 from simkit.measured.pairing import ModelledDip, Pairing
+from simkit.measured.poles import MeasuredMode, MeasuredModes
 from simkit.measured.quality import quality_notes
 from simkit.measured.selection import (
     CaseModes,
@@ -28,61 +31,11 @@ from simkit.measured.selection import (
 from simkit.measured.wording import comparison_text
 from simkit.response.features import Dip
 from simkit.response.labels import half_wave_label
-from simkit.store.read import swept_names
+from simkit.store.read import has_feedline, swept_names
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
     import xarray as xr
-
-NAN = float("nan")
-
-
-@dataclass(frozen=True)
-class ModeLine:
-    """One mode, simulated and measured; NaN for what does not exist.
-
-    Attributes
-    ----------
-    half_waves : int
-    natural_hz, q : float
-        Of the simulated natural mode.
-    simulated_hz, simulated_return_loss_db, simulated_bandwidth_hz : float
-        The dip the mode owns in the simulation; the band has at least 10 dB return loss.
-    measured_hz, measured_return_loss_db, measured_bandwidth_hz : float
-        The measured dip paired with it.
-    simulated_ratio, measured_ratio : float
-        Dip over that of the lowest mode which has both.
-    on_plane : bool
-        `half_waves` counts the metal together with its image in a ground plane.
-    """
-
-    half_waves: int
-    natural_hz: float
-    q: float
-    simulated_hz: float = NAN
-    simulated_return_loss_db: float = NAN
-    simulated_bandwidth_hz: float = NAN
-    measured_hz: float = NAN
-    measured_return_loss_db: float = NAN
-    measured_bandwidth_hz: float = NAN
-    simulated_ratio: float = NAN
-    measured_ratio: float = NAN
-    on_plane: bool = False
-
-    @property
-    def label(self) -> str:
-        """The mode's length: ``1/2 wave``, ``1 wave``, ``3/2 wave``; quarters on a plane."""
-        return half_wave_label(self.half_waves, self.on_plane)
-
-    @property
-    def ratio(self) -> float:
-        """Measured over simulated dip frequency."""
-        return self.measured_hz / self.simulated_hz
-
-    @property
-    def is_paired(self) -> bool:
-        """Both dips exist."""
-        return bool(np.isfinite(self.ratio))
 
 
 @dataclass(frozen=True, eq=False)
@@ -109,6 +62,9 @@ class Comparison:
     unpaired : tuple of Dip
         Measured dips that belong to no mode.
     notes : tuple of str
+    natural : MeasuredModes or None
+        Natural modes read from the sweep; None where a feed line lies before the antenna, or no dip
+        was paired.
     """
 
     measurement: Measurement
@@ -122,6 +78,7 @@ class Comparison:
     lines: tuple[ModeLine, ...]
     unpaired: tuple[Dip, ...]
     notes: tuple[str, ...]
+    natural: MeasuredModes | None = None
 
     def agreement(self) -> Agreement:
         """How alike the curves are, |reflection| in dB by IEEE Std 1597.1."""
@@ -141,13 +98,13 @@ class Comparison:
     def as_rows(self) -> list[dict[str, Any]]:
         """One dictionary per mode, then one per unpaired dip, SI; None for what does not exist."""
         head = {"file": str(self.measurement.path), "case": self.case}
-        rows = [head | _row(line) for line in self.lines]
+        rows = [head | line.as_row() for line in self.lines]
         lost = [
             ModeLine(-1, NAN, NAN, NAN, NAN, NAN, dip.frequency_hz, dip.return_loss_db,
                      dip.bandwidth_hz)
             for dip in self.unpaired
         ]  # fmt: skip
-        return rows + [head | _row(line) | {"mode": "unpaired"} for line in lost]
+        return rows + [head | line.as_row() | {"mode": "unpaired"} for line in lost]
 
     def as_text(self) -> str:
         """The comparison as a table with what to conclude from it."""
@@ -201,18 +158,21 @@ def compare(
     dips, dip_notes = measured_dips(measurement)
     heard = [ModelledDip(dip.frequency_hz, 10 ** (-dip.return_loss_db / 20)) for dip in dips]
     every = modes_of_cases(dataset)
-    notes = [*measurement.notes, *quality_notes(measurement), *dip_notes]
     rows, build_notes = _candidates(dataset, case, build)
     row, fit_notes = _best_row(rows, every, heard, bands)
+    expected = simulated_reflection(dataset.isel(case=row), reference)
+    notes = [*measurement.notes, *quality_notes(measurement, expected), *dip_notes]
     notes += [*build_notes, *fit_notes]
     every[row] = with_loose_dips(dataset.isel(case=row), every[row], reference)
     fixed = _fixed_pairs(every[row], dips, pins or {}, measurement)
     pairing = every[row].pair(heard, *bands, fixed)
-    notes += _ambiguity_notes(every[row], dips, pairing, heard, bands, fixed)
+    doubtful = every[row].doubtful(pairing, heard, *bands, fixed)
+    notes += _ambiguity_notes(every[row], dips, doubtful)
     notes += _feedline_notes(every[row], dips, pairing)
     notes += _doubt_notes(dataset, row)
     notes += _unexcited_notes(dataset.isel(case=row), every[row], pairing)
-    return _comparison(dataset, row, measurement, every[row], dips, pairing, notes)
+    found = _Found(dips, pairing, {i for i, _ in doubtful})
+    return _comparison(dataset, row, measurement, every[row], found, notes)
 
 
 def _bands(
@@ -252,6 +212,10 @@ def _best_row(
         return int(rows[0]), []
     misfit = [every[row].pair(heard, *bands).misfit for row in rows]
     row = int(rows[int(np.argmin(misfit))])
+    if not heard:
+        return row, [
+            f"no measured dip tells the {len(rows)} cases in question apart: name one with --case"
+        ]
     return row, [f"of {len(rows)} cases in question this one's dips fit the measured ones best"]
 
 
@@ -309,15 +273,10 @@ def _fixed_pairs(
 
 
 def _ambiguity_notes(
-    modes: CaseModes,
-    dips: list[Dip],
-    pairing: Pairing,
-    heard: list[ModelledDip],
-    bands: tuple[tuple[float, float], tuple[float, float]],
-    fixed: list[tuple[int, int]],
+    modes: CaseModes, dips: list[Dip], doubtful: Mapping[tuple[int, int], Pairing]
 ) -> list[str]:
     notes = []
-    for (i, j), other in modes.doubtful(pairing, heard, *bands, fixed).items():
+    for (i, j), other in doubtful.items():
         instead = [k for k, dip in other.pairs if dip == j]
         what = (
             f"it may as well be the {half_wave_label(modes.half_waves[instead[0]], modes.on_plane)}"
@@ -332,19 +291,42 @@ def _ambiguity_notes(
     return notes
 
 
+@dataclass(frozen=True)
+class _Found:
+    """What was found in the sweep: dips, whose they are, and the modes with doubtful ones."""
+
+    dips: list[Dip]
+    pairing: Pairing
+    doubtful: set[int]
+
+    def ratios(self, modes: CaseModes) -> FloatArray:
+        """Measured over simulated dip of each mode, NaN without both, (M,)."""
+        ratios = np.full(len(modes.half_waves), np.nan)
+        for i, j in self.pairing.pairs:
+            ratios[i] = self.dips[j].frequency_hz / modes.dip_hz[i]
+        return ratios
+
+
 def _comparison(
     dataset: xr.Dataset,
     row: int,
     measurement: Measurement,
     modes: CaseModes,
-    dips: list[Dip],
-    pairing: Pairing,
+    found: _Found,
     notes: list[str],
 ) -> Comparison:
     case = dataset.isel(case=row)
     frequency, gamma = simulated_reflection(case, measurement.reference_ohm)
     swept = swept_names(dataset)
-    taken = {j for _, j in pairing.pairs}
+    taken = {j for _, j in found.pairing.pairs}
+    natural = None
+    ratios = found.ratios(modes)
+    owners: dict[int, MeasuredMode] = {}
+    if np.isfinite(ratios).any() and not has_feedline(dataset):
+        common = float(np.exp(np.nanmean(np.log(ratios))))
+        natural = natural_beside(measurement, frequency, gamma, common)
+        owners = natural_pairs(modes, natural, common, ratios)
+        notes = [*notes, *_plane_notes(natural)]
     return Comparison(
         measurement=measurement,
         title=str(dataset.attrs.get("title", "")),
@@ -354,19 +336,34 @@ def _comparison(
         status=Status(int(case["status"])).label,
         frequency_hz=frequency,
         simulated_reflection=gamma,
-        lines=_lines(modes, dips, pairing),
-        unpaired=tuple(dip for j, dip in enumerate(dips) if j not in taken),
+        lines=_lines(modes, found, owners),
+        unpaired=tuple(dip for j, dip in enumerate(found.dips) if j not in taken),
         notes=tuple(notes),
+        natural=natural,
     )
 
 
-def _lines(modes: CaseModes, dips: list[Dip], pairing: Pairing) -> tuple[ModeLine, ...]:
-    owner = {i: dips[j] for i, j in pairing.pairs}
+def _plane_notes(natural: MeasuredModes) -> list[str]:
+    delay = natural.model.delay_s
+    if abs(delay) < TOLD_DELAY_S:
+        return []
+    return [
+        f"the phase runs {abs(delay) * 1e12:.0f} ps one way ({abs(delay) * 2.998e11:.0f} mm of "
+        f"air) {'behind' if delay > 0 else 'ahead of'} the simulated one: set the port extension "
+        "or --extension, unless the feed is elsewhere"
+    ]
+
+
+def _lines(
+    modes: CaseModes, found: _Found, owners: Mapping[int, MeasuredMode]
+) -> tuple[ModeLine, ...]:
+    owner = {i: found.dips[j] for i, j in found.pairing.pairs}
     both = [i for i in sorted(owner) if np.isfinite(modes.dip_hz[i])]
     base = both[0] if both else None
     lines = []
     for i, half_waves in enumerate(modes.half_waves):
         dip = owner.get(i, Dip(NAN, NAN, NAN, NAN))
+        mode = owners.get(i, MeasuredMode(NAN, NAN, NAN, NAN, supported=False))
         simulated = float(modes.dip_hz[i])
         lines.append(
             ModeLine(
@@ -382,25 +379,11 @@ def _lines(modes: CaseModes, dips: list[Dip], pairing: Pairing) -> tuple[ModeLin
                 measured_bandwidth_hz=dip.bandwidth_hz,
                 simulated_ratio=NAN if base is None else simulated / float(modes.dip_hz[base]),
                 measured_ratio=NAN if base is None else dip.frequency_hz / owner[base].frequency_hz,
+                measured_natural_hz=mode.frequency_hz,
+                measured_natural_sigma_hz=mode.frequency_sigma_hz,
+                measured_q=mode.q,
+                measured_q_sigma=mode.q_sigma,
+                ambiguous=i in found.doubtful,
             )
         )
     return tuple(lines)
-
-
-def _row(line: ModeLine) -> dict[str, Any]:
-    numbers = {
-        "natural_frequency_hz": line.natural_hz,
-        "q": line.q,
-        "simulated_dip_hz": line.simulated_hz,
-        "measured_dip_hz": line.measured_hz,
-        "measured_over_simulated": line.ratio,
-        "simulated_return_loss_db": line.simulated_return_loss_db,
-        "measured_return_loss_db": line.measured_return_loss_db,
-        "simulated_bandwidth_hz": line.simulated_bandwidth_hz,
-        "measured_bandwidth_hz": line.measured_bandwidth_hz,
-        "simulated_ratio": line.simulated_ratio,
-        "measured_ratio": line.measured_ratio,
-    }
-    known = {key: value if np.isfinite(value) else None for key, value in numbers.items()}
-    number = line.half_waves if line.half_waves >= 0 else None
-    return {"mode": line.label, "half_waves": number} | known

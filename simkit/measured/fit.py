@@ -15,15 +15,14 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from simkit.errors import MeasurementError
+from simkit.errors import GeometryError, MeasurementError, StudyError
 from simkit.measured.bench_errors import ErrorSizes
 from simkit.measured.dips import measured_dips, pinned_dip, smooth
-from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To
+from simkit.measured.fit_problem import INDEPENDENT, FitFile, FitProblem, To, referred
 from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
-from simkit.measured.plane import extended
 from simkit.measured.quality import quality_notes
-from simkit.measured.simulator import Engine, Surrogate, build_surrogate
+from simkit.measured.simulator import REFERENCE_OHM, STEPS, Engine, Surrogate, build_surrogate
 from simkit.measured.variation import SCALE, Known, Variation
 from simkit.response.features import Dip
 
@@ -44,6 +43,9 @@ POINTS_ACROSS = 8
 
 FIRST_SIGMA = 0.02
 """Residual of |reflection| assumed before the first look: a directivity of -34 dB."""
+
+SAME_BUILD = 1e-6
+"""Relative difference up to which two builds have the same of a value."""
 
 CONFOUNDED = 0.9
 """Correlation from which two values cannot be told apart in practice: together they are known more
@@ -97,27 +99,25 @@ def fit(
     Raises
     ------
     MeasurementError
-        If there is nothing to fit, or no frequency in common.
-    GeometryError, EngineError, StudyError
-        If the study cannot be solved within the bounds.
+        If there is nothing to fit, no frequency in common, or not every antenna within the bounds
+        can be built.
+    EngineError
+        If one of them cannot be solved.
     """
     variation = Variation(study)
     bounds, beliefs = _free_values(variation, free, known)
     sizes = sizes or ErrorSizes()
-    files, engine, notes = _files(
-        variation, measurements, bounds, builds, pins, also or {}, surrogate, progress
+    given = [dict(build) for build in builds] if builds is not None else [{}] * len(measurements)
+    _check_shared(variation, bounds, given)
+    files, engines, notes = _files(
+        variation, measurements, bounds, given, pins, also or {}, surrogate, progress
     )
     problem = FitProblem(variation, files, bounds, beliefs, sizes, to)
     nominal = problem.at({name: variation.nominal(name) for name in problem.names})
     solution = _searched(problem)
     covariance, data_only = _covariances(problem, solution)
     curves = tuple(_curve(problem, solution, nominal, place) for place in range(len(problem.files)))
-    error = 0.0
-    if engine is not None:
-        at = problem.values(solution, problem.files[0].build)
-        error = problem.files[0].surrogate.error_at(
-            at, engine.node({k: v for k, v in at.items() if k != SCALE})
-        )
+    error = _interpolation_error(problem, solution, engines)
     return FitResult(
         study=study,
         to=to,
@@ -132,7 +132,7 @@ def fit(
         rms_before=_rms([c.measurement.reflection - c.before for c in curves]),
         rms_after=_rms([c.residual for c in curves]),
         surrogate_error=error,
-        solves=engine.solves if engine is not None else 0,
+        solves=sum(engine.solves for engine in dict.fromkeys(engines) if engine is not None),
         notes=tuple(dict.fromkeys(notes)),
         problem=problem,
         solution=solution,
@@ -164,44 +164,114 @@ def _files(
     variation: Variation,
     measurements: Sequence[Measurement],
     bounds: Mapping[str, tuple[float, float]],
-    builds: Sequence[Mapping[str, float]] | None,
+    builds: Sequence[Mapping[str, float]],
     pins: Sequence[Mapping[int, float]] | None,
     also: Mapping[str, tuple[float, float]],
     surrogate: Surrogate | None,
     progress: Callable[[int, int], None] | None,
-) -> tuple[list[FitFile], Engine | None, list[str]]:
+) -> tuple[list[FitFile], list[Engine | None], list[str]]:
     if not measurements:
         raise MeasurementError("no measured file is given; name at least one")
     antenna = variation.study.nominal()
     axes = dict(bounds)
-    for name, (low, high) in also.items():
-        a, b = axes.get(name, (low, high))
-        axes[name] = (min(a, low), max(b, high))
-    made: dict[tuple[tuple[str, float], ...], Surrogate] = {}
-    files, notes, engine = [], [], None
+    for name, pair in also.items():
+        as_cut = [build[name] for build in builds if name in build]
+        reached = [*pair, *axes.get(name, pair), *as_cut]
+        axes[name] = (min(reached), max(reached))
+    made: dict[tuple[tuple[str, float], ...], tuple[Surrogate, Engine | None]] = {}
+    files: list[FitFile] = []
+    engines: list[Engine | None] = []
+    notes = []
     band = (antenna.frequency.start_hz, antenna.frequency.stop_hz)
     for place, raw in enumerate(measurements):
         measurement = raw.renormalised(antenna.reference_ohm)
-        build = dict(builds[place]) if builds is not None else {}
+        build = dict(builds[place])
         held = {k: v for k, v in build.items() if k not in axes}
         key = tuple(sorted(held.items()))
         if surrogate is not None:
-            made[key] = surrogate
+            made[key] = surrogate, None
         elif key not in made:
             common = _common(measurement, band)
-            made[key], engine = build_surrogate(variation, held, axes, common, progress=progress)
+            made[key] = _solved(variation, held, axes, common, progress)
+        model, engine = made[key]
         dips, dip_notes = measured_dips(measurement)
-        # What the feed line turns the phase by is no missing port extension.
-        bare = extended(measurement, _delay_s(made[key]))
-        said = (*measurement.notes, *quality_notes(bare), *dip_notes)
+        expected = _expected(model, measurement.reference_ohm)
+        said = (*measurement.notes, *quality_notes(measurement, expected), *dip_notes)
         notes += [f"{measurement.path.name}: {note}" for note in said]
-        cut = _cut(measurement, made[key].band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
+        cut = _cut(measurement, model.band_hz, bounds.get(SCALE, (1.0, 1.0)), band)
+        notes += _lost_notes(measurement, cut, dips)
         pinned = _pinned(pins[place] if pins is not None else {}, dips, measurement)
         noise = smooth(cut).noise
-        cut = _thinned(cut, dips, _delay_s(made[key]))
+        cut = _thinned(cut, dips, _delay_s(model))
         weight = 1 / (FIRST_SIGMA * np.sqrt(max(len(cut.frequency_hz) / INDEPENDENT, 1.0)))
-        files.append(FitFile(cut, build, made[key], tuple(dips), noise, pinned, float(weight)))
-    return files, engine, notes
+        files.append(FitFile(cut, build, model, tuple(dips), noise, pinned, float(weight)))
+        engines.append(engine)
+    return files, engines, notes
+
+
+def _solved(
+    variation: Variation,
+    held: Mapping[str, float],
+    axes: Mapping[str, tuple[float, float]],
+    band_hz: tuple[float, float],
+    progress: Callable[[int, int], None] | None,
+) -> tuple[Surrogate, Engine]:
+    """The model over the bounds; an antenna that cannot be built there is said to lie there."""
+    try:
+        return build_surrogate(variation, held, axes, band_hz, progress=progress)
+    except (GeometryError, StudyError) as error:
+        text = variation.text
+        reach = ", ".join(
+            f"{name} from {text(name, low)} to {text(name, high)}"
+            for name, (low, high) in axes.items()
+        )
+        raise MeasurementError(
+            f"not every antenna within the bounds ({reach}) can be built: {error}; narrow the "
+            "bounds"
+        ) from error
+
+
+def _check_shared(
+    variation: Variation,
+    bounds: Mapping[str, tuple[float, float]],
+    builds: Sequence[Mapping[str, float]],
+) -> None:
+    """A free value is one number for all builds: refuse it where they were cut differently."""
+    for name in bounds:
+        if name == SCALE:
+            continue
+        values = [build.get(name, variation.nominal(name)) for build in builds]
+        if max(values) - min(values) > SAME_BUILD * max(map(abs, values)):
+            said = " and ".join(dict.fromkeys(variation.text(name, value) for value in values))
+            raise MeasurementError(
+                f"`{name}` cannot be fitted to these builds together, which have {said} of it: it "
+                "would be one number for all; leave it as cut, free `scale` if all were cut alike "
+                "wrong, or fit one build at a time"
+            )
+
+
+def _interpolation_error(
+    problem: FitProblem, x: FloatArray, engines: Sequence[Engine | None]
+) -> float:
+    """Largest error of the interpolation at the fitted values, NaN if nothing can be solved."""
+    errors = []
+    done: list[Surrogate] = []
+    for file, engine in zip(problem.files, engines, strict=True):
+        if engine is None or file.surrogate in done:
+            continue
+        done.append(file.surrogate)
+        at = problem.values(x, file.build)
+        node = engine.node({name: value for name, value in at.items() if name != SCALE})
+        errors.append(file.surrogate.error_at(at, node))
+    return max(errors, default=float("nan"))
+
+
+def _expected(surrogate: Surrogate, reference_ohm: float) -> tuple[FloatArray, ComplexArray]:
+    """What the model shows in the middle of the bounds."""
+    middle = {axis.name: float(axis.nodes[[0, -1]].mean()) for axis in surrogate.axes}
+    frequency = np.linspace(*surrogate.band_hz, STEPS)
+    gamma = surrogate.reflection(middle, frequency)
+    return frequency, referred(gamma, REFERENCE_OHM, reference_ohm)
 
 
 def _common(measurement: Measurement, band: tuple[float, float]) -> tuple[float, float]:
@@ -237,6 +307,20 @@ def _cut(
         frequency_hz=measurement.frequency_hz[inside],
         reflection=measurement.reflection[inside],
     )
+
+
+def _lost_notes(whole: Measurement, cut: Measurement, dips: Sequence[Dip]) -> list[str]:
+    """Say which measured dips lie where the model does not reach."""
+    low, high = float(cut.frequency_hz[0]), float(cut.frequency_hz[-1])
+    lost = [d.frequency_hz for d in dips if not low <= d.frequency_hz <= high]
+    if not lost:
+        return []
+    places = ", ".join(f"{place / 1e6:.1f}" for place in lost)
+    return [
+        f"{whole.path.name}: only {low / 1e6:.0f} to {high / 1e6:.0f} MHz can be compared for all "
+        f"values within the bounds, so the measured dip at {places} MHz is left out of the curves; "
+        "narrow the bounds, or give the study (or the stored sweep) a wider band"
+    ]
 
 
 def _delay_s(surrogate: Surrogate) -> float:

@@ -122,7 +122,8 @@ class FitResult:
     rms_before, rms_after : float
         Of the difference in reflection.
     surrogate_error : float
-        Largest |error| of the interpolated model against a solution at the fitted values.
+        Largest |error| of the interpolated model against a solution at the fitted values; NaN where
+        a stored sweep was interpolated and nothing solved.
     """
 
     study: Study = field(repr=False)

@@ -127,10 +127,16 @@ def _value_statement(result: FitResult, v: FittedValue) -> str:
 
 def _confounding_statement(result: FitResult, c: Confounding) -> str:
     exponent = f"{c.exponent:.2f}"
+    known = [v.name for v in result.values if v.prior and v.name in (c.first, c.second)]
+    advice = (
+        f"what you know of {' and '.join(known)} settles it"
+        if known
+        else "measure one of them and say so with --known"
+    )
     return (
         f"{c.first} and {c.second} cannot be told apart by these data (correlation "
         f"{c.correlation:+.3f}): only {c.first} * {c.second}^{exponent} is known, within "
-        f"{1.96 * c.relative_sigma:.2%}; measure one of them and say so with --known"
+        f"{1.96 * c.relative_sigma:.2%}; {advice}"
     )
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -46,6 +46,8 @@ class NearCase:
     score : float
         Both together; lower is better.
     frequency_hz, reflection : (F,) arrays
+    units : dict of str to str
+        SI units of the values.
     """
 
     case: int
@@ -55,6 +57,7 @@ class NearCase:
     score: float
     frequency_hz: FloatArray
     reflection: ComplexArray
+    units: dict[str, str] = field(default_factory=dict)
 
     def as_row(self) -> dict[str, Any]:
         """Plain numbers for a table."""
@@ -104,6 +107,7 @@ def nearest_cases(
     dips_count = np.isfinite(misfits).any()
     score = curves / CURVE_SCALE + (misfits if dips_count else 0.0)
     swept = swept_names(dataset)
+    units = {name: str(dataset[name].attrs.get("units", "1")) for name in swept}
     found = []
     for place in np.argsort(score, kind="stable")[:best]:
         chosen = dataset.isel(case=int(rows[place]))
@@ -116,6 +120,7 @@ def nearest_cases(
                 score=float(score[place]),
                 frequency_hz=frequency,
                 reflection=reflection(chosen[connector_impedance(dataset)].values, reference),
+                units=units,
             )
         )
     return tuple(found)

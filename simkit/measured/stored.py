@@ -24,6 +24,9 @@ if TYPE_CHECKING:
 FEWEST_NODES = 3
 """Values along a swept quantity; with fewer its curve is anybody's guess."""
 
+ENOUGH_NODES = 4
+"""Values around the bounds that make a fair curve; more are only taken where the bounds reach."""
+
 
 def surrogate_of_results(
     dataset: xr.Dataset,
@@ -66,6 +69,7 @@ def surrogate_of_results(
         if name not in line_names
     ]
     _check_cover(axes, {name: pair for name, pair in bounds.items() if name not in line_names})
+    axes = [_around(axis, bounds.get(axis.name)) for axis in axes]
     rows = _rows(dataset, axes)
     if not is_solved(dataset)[rows].all():
         bad = int(dataset["case"].values[rows[~is_solved(dataset)[rows]][0]])
@@ -133,6 +137,30 @@ def _curve(frequency: FloatArray, gamma: ComplexArray) -> CubicSpline:
     return CubicSpline(frequency, gamma)
 
 
+def _around(axis: Axis, bounds: tuple[float, float] | None) -> Axis:
+    """The nodes that enclose the bounds, and the nearest others up to `ENOUGH_NODES`.
+
+    Nodes far away only narrow the band in which all of them can be compared. A value held at a node
+    needs no other; one that is not asked for keeps them all.
+    """
+    if bounds is None:
+        return axis
+    nodes = axis.nodes
+    if _is_held(axis, bounds):
+        return Axis(axis.name, nodes[np.argmin(np.abs(nodes - bounds[0]))][None])
+    first = max(int(np.searchsorted(nodes, bounds[0], side="right")) - 1, 0)
+    last = min(int(np.searchsorted(nodes, bounds[1], side="left")), len(nodes) - 1)
+    middle = (bounds[0] + bounds[1]) / 2
+    order = np.argsort(np.abs(nodes - middle), kind="stable")[:ENOUGH_NODES]
+    return Axis(axis.name, nodes[min(first, order.min()) : max(last, order.max()) + 1])
+
+
+def _is_held(axis: Axis, bounds: tuple[float, float]) -> bool:
+    """The bounds are one value, and it is a node."""
+    near = np.abs(axis.nodes - bounds[0]).min()
+    return bounds[0] == bounds[1] and bool(near <= 1e-9 * abs(bounds[0]))
+
+
 def _check_cover(axes: list[Axis], bounds: Mapping[str, tuple[float, float]]) -> None:
     swept = {axis.name: axis.nodes for axis in axes}
     for name, (low, high) in bounds.items():
@@ -144,6 +172,8 @@ def _check_cover(axes: list[Axis], bounds: Mapping[str, tuple[float, float]]) ->
                 "sweep it too, or leave --results out"
             )
         nodes = swept[name]
+        if _is_held(Axis(name, nodes), (low, high)):
+            continue
         if len(nodes) < FEWEST_NODES:
             raise StoreError(
                 f"the stored sweep has only {len(nodes)} values of `{name}`, at least "

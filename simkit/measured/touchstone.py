@@ -19,6 +19,9 @@ MIN_POINTS = 11
 MAX_FREQUENCY_HZ = 1e13
 """No network analyser goes further: above it the unit of the option line is wrong."""
 
+MOST_POINTS = 20_000
+"""No more are kept: the search for dips in noise takes time as the square of their number."""
+
 ACTIVE_LIMIT = 1.02
 """|reflection| up to this is calibration error and noise (0.17 dB, the usual tracking error)."""
 
@@ -59,12 +62,14 @@ def read_touchstone(path: str | PathLike[str], port: int | None = None) -> Measu
     _check_frequencies(file, frequency)
     reflection = _reflection(file, sheet, raw)[:, chosen - 1, chosen - 1]
     _check_reflection(file, frequency, reflection)
+    active = _active_note(frequency, reflection)
+    frequency, reflection, averaged = _averaged(frequency, reflection)
     return Measurement(
         path=file,
         frequency_hz=frequency,
         reflection=np.ascontiguousarray(reflection),
         reference_ohm=sheet.reference_ohm[chosen - 1],
-        notes=(*sheet.notes, *_active_note(frequency, reflection)),
+        notes=(*sheet.notes, *active, *averaged),
         comments=tuple(sheet.comments),
     )
 
@@ -179,6 +184,22 @@ def _check_reflection(path: Path, frequency: FloatArray, reflection: ComplexArra
             f"|reflection| reaches {largest:.3g}; the format in the option line (RI, MA, DB) or "
             "the parameter (S, Z, Y) does not fit the numbers",
         )
+
+
+def _averaged(
+    frequency: FloatArray, reflection: ComplexArray
+) -> tuple[FloatArray, ComplexArray, list[str]]:
+    """Means of neighbours where there are more points than anything can be gained from."""
+    group = -(-len(frequency) // MOST_POINTS)
+    if group < 2:
+        return frequency, reflection, []
+    count = len(frequency) // group * group
+    note = f"{len(frequency)} points are averaged in groups of {group}"
+    return (
+        frequency[:count].reshape(-1, group).mean(axis=1),
+        reflection[:count].reshape(-1, group).mean(axis=1),
+        [note],
+    )
 
 
 def _active_note(frequency: FloatArray, reflection: ComplexArray) -> list[str]:

@@ -2,19 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 
 import numpy as np
-from scipy.optimize import brentq
+from scipy.optimize import brentq, minimize_scalar
 
 from simkit.errors import MeasurementError
-from simkit.measured.fit_problem import FitProblem, modelled_dip, referred
 from simkit.measured.fit_result import LIMIT_95, FitResult
 from simkit.measured.measurement import FloatArray
-from simkit.measured.simulator import REFERENCE_OHM
-from simkit.measured.variation import SCALE
-from simkit.response.labels import half_wave_label
+from simkit.measured.trim_model import NO_METAL_M2, ModeChange, TrimModel, decibels
+from simkit.study.units import as_text
 
 CURVE_POINTS = 41
 FIRST_SHARE = 0.6
@@ -22,18 +19,6 @@ FIRST_SHARE = 0.6
 
 CAUTIOUS = 0.3
 """Uncertainty over change from which cutting in steps is advised."""
-
-
-@dataclass(frozen=True)
-class ModeChange:
-    """A mode before and after the trim; NaN without a dip."""
-
-    label: str
-    half_waves: int
-    before_hz: float
-    after_hz: float
-    before_return_loss_db: float
-    after_return_loss_db: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -60,14 +45,19 @@ class Trim:
     correction_factor : float
         Model over scaling: multiply a change from plain scaling by it.
     modes : tuple of ModeChange
-    band_hz, band_return_loss_db
-        The wanted band and the least return loss in it after the change.
+    band_hz, band_return_loss_db, band_return_loss_now_db
+        The wanted band and the least return loss in it after the change and before; a trim for a
+        band makes it as large as this dimension allows.
+    metal_m2 : (float, float)
+        Area of metal that is to be added, and taken off; NaN if unknown.
     gain_dbi : (float, float)
         Peak gain of the mode before and after, NaN unless `with_gain` has found it.
     of_feedline : bool
         The dimension is one of the feed line alone, which plain scaling says nothing about.
     values, dips_hz, dip_sigmas_hz : (N,) float array
         Trim curve: the dip against the dimension, with its standard deviation.
+    losses_db : (N,) float array
+        Least return loss in the band against the dimension; that of the dip without a band.
     """
 
     name: str
@@ -89,7 +79,10 @@ class Trim:
     measured_hz: float = float("nan")
     band_hz: tuple[float, float] = (float("nan"), float("nan"))
     band_return_loss_db: float = float("nan")
+    band_return_loss_now_db: float = float("nan")
     gain_dbi: tuple[float, float] = (float("nan"), float("nan"))
+    metal_m2: tuple[float, float] = (float("nan"), float("nan"))
+    losses_db: FloatArray = field(repr=False, default_factory=lambda: np.empty(0))
     of_feedline: bool = False
 
     @property
@@ -109,17 +102,20 @@ class Trim:
 
     @property
     def adds_metal(self) -> bool:
-        """The dimension must grow."""
+        """Metal is needed where the present piece has none."""
+        if np.isfinite(self.metal_m2[0]):
+            return self.metal_m2[0] > NO_METAL_M2
         return self.change > 0
+
+    @property
+    def cuts_metal(self) -> bool:
+        """Metal is to be taken off, and none to be added."""
+        return not self.adds_metal and not self.metal_m2[1] <= NO_METAL_M2
 
     @property
     def in_steps(self) -> bool:
         """Metal is to be removed and the uncertainty is large against the cut."""
-        return (
-            not self.of_feedline
-            and self.change < 0
-            and LIMIT_95 * self.sigma > CAUTIOUS * abs(self.change)
-        )
+        return self.cuts_metal and LIMIT_95 * self.sigma > CAUTIOUS * abs(self.change)
 
     @property
     def first_share(self) -> float:
@@ -164,92 +160,109 @@ def trim_fitted(
     file : int, optional
         Which of the measured builds is trimmed; the last one if left out.
     band_hz : (float, float), optional
-        Band in which the match after the trim is told.
-    band_hz : (float, float), optional
-        Band in which the match after the trim is told.
+        Aim at the best match over this band instead: the largest least return loss. `target_hz`
+        then only says from where to look.
 
     Raises
     ------
     MeasurementError
         If the mode has no dip, or the target is out of reach.
     """
-    problem, x = result.problem, result.solution
-    file = file % len(problem.files)
-    values = problem.values(x, problem.files[file].build)
-    if name not in (*problem.names, *problem.files[file].surrogate.names):
-        raise MeasurementError(f"the model does not vary `{name}`, so it cannot be trimmed")
-    present = values[name]
+    model = TrimModel(result, file)
+    present = model.present(name)
+    model.check_reach(name, reach)
+    label = model.label(half_waves)
 
-    def dip(value: float, at: FloatArray = x) -> float:
-        found = modelled_dip(problem, at, file, half_waves, {name: value - present})
-        return found.frequency_hz if found else float("nan")
+    def dip(value: float, x: FloatArray | None = None) -> float:
+        return model.dip_hz(half_waves, {name: value - present}, x)
 
-    label = half_wave_label(half_waves, result.curves[file].modes_after.on_plane)
     now = dip(present)
     if not np.isfinite(now):
         raise MeasurementError(
             f"the {label} mode shows no dip in the fitted model, so there is nothing to aim with"
         )
+    band = band_hz or (target_hz, target_hz)
+    model.check_band(band)
     grid = np.linspace(*reach, CURVE_POINTS)
     track = np.array([dip(float(v)) for v in grid])
-    wanted = _reached(grid, track, target_hz, present, name, label)
-    span = reach[1] - reach[0]  # a dimension may be one of nanohenry
-    aim = float(brentq(lambda v: dip(v) - target_hz, *wanted, xtol=min(1e-8, 1e-6 * span)))
-    sigmas = np.array([_dip_sigma(result, dip, float(v)) for v in grid[:: CURVE_POINTS // 8]])
-    sigma_track = np.interp(grid, grid[:: CURVE_POINTS // 8], sigmas)
-    step = min(1e-5, 1e-3 * span)
+    unit = model.problem.variation.unit(name)
+    wanted = _reached(grid, track, target_hz, present, f"{label} dip", name, unit)
+    fine = min(1e-8, 1e-6 * (reach[1] - reach[0]))  # a dimension may be one of nanohenry
+    aim = float(brentq(lambda v: dip(v) - target_hz, *wanted, xtol=fine))
+    if band[1] > band[0]:
+        aim = _best_in_band(model, band, name, present, aim, reach)
+    place = int(np.searchsorted(grid, aim))
+    grid, track = np.insert(grid, place, aim), np.insert(track, place, dip(aim))
+    coarse = np.linspace(*reach, 9)
+    sigmas = [model.sigma(lambda x, v=float(v): dip(v, x)) for v in coarse]  # type: ignore[misc]
+    step = 1e-4 * (reach[1] - reach[0])
     slope = (dip(aim + step) - dip(aim - step)) / (2 * step)
-    spread = _dip_sigma(result, dip, aim)
-    measured = dict(result.curves[file].pairs).get(half_waves)
-    of_feedline = name in problem.files[file].surrogate.line_names
+    spread = model.sigma(lambda x: dip(aim, x))
+    changes = {name: aim - present}
+    of_feedline = name in model.chosen.surrogate.line_names
     return Trim(
         name=name,
-        unit=problem.variation.unit(name),
+        unit=unit,
         label=label,
         half_waves=half_waves,
-        target_hz=target_hz,
+        target_hz=dip(aim),
         present_hz=now,
-        present_sigma_hz=_dip_sigma(result, dip, present),
+        present_sigma_hz=model.sigma(lambda x: dip(present, x)),
         present=present,
         change=aim - present,
-        scaling_change=float("nan") if of_feedline else present * (now / target_hz - 1),
+        scaling_change=float("nan") if of_feedline else present * (now / dip(aim) - 1),
         sigma=abs(spread / slope),
         slope_hz_per_m=slope,
-        modes=_mode_changes(problem, x, file, name, aim - present),
+        modes=model.mode_changes(changes),
         values=grid,
         dips_hz=track,
-        dip_sigmas_hz=sigma_track,
+        dip_sigmas_hz=np.interp(grid, coarse, sigmas),
         of_feedline=of_feedline,
-        band_hz=band_hz or (target_hz, target_hz),
-        band_return_loss_db=_worst_db(
-            problem, x, file, name, aim - present, band_hz or (target_hz, target_hz)
+        measured_hz=model.measured_hz(half_waves),
+        band_hz=band,
+        band_return_loss_db=decibels(model.worst(band, changes)),
+        band_return_loss_now_db=decibels(model.worst(band, {})),
+        metal_m2=model.metal_m2(changes),
+        losses_db=np.array(
+            [decibels(model.worst(band, {name: float(v) - present})) for v in grid]
+            if band[1] > band[0]
+            else []
         ),
-        measured_hz=float("nan")
-        if measured is None
-        else result.curves[file].dips[measured].frequency_hz,
     )
 
 
-def _worst_db(
-    problem: FitProblem,
-    x: FloatArray,
-    file: int,
+def _best_in_band(
+    model: TrimModel,
+    band: tuple[float, float],
     name: str,
-    change: float,
-    band_hz: tuple[float, float],
+    present: float,
+    near: float,
+    reach: tuple[float, float],
 ) -> float:
-    """Least return loss in a band after the change."""
-    chosen = problem.files[file]
-    values = problem.values(x, chosen.build)
-    values[name] += change
-    f = np.linspace(*band_hz, 41)
-    gamma = problem.true_curve(x, chosen.surrogate, values, f)
-    shown = referred(gamma, REFERENCE_OHM, chosen.measurement.reference_ohm)
-    return float(-20 * np.log10(max(float(np.abs(shown).max()), 1e-6)))
+    """Value that makes the largest |reflection| in a band least, near the one with the dip in it.
+
+    A change of the value moves the dip by about its own part: the band's width over its middle says
+    how far to look.
+    """
+    room = 2 * abs(near) * (band[1] - band[0]) / (band[1] + band[0])
+    room = max(room, 0.01 * (reach[1] - reach[0]))
+    found = minimize_scalar(
+        lambda v: model.worst(band, {name: v - present}),
+        bounds=(max(near - 2 * room, reach[0]), min(near + 2 * room, reach[1])),
+        method="bounded",
+        options={"xatol": 1e-4 * (reach[1] - reach[0])},
+    )
+    return float(found.x)
 
 
 def _reached(
-    grid: FloatArray, track: FloatArray, target: float, present: float, name: str, label: str
+    grid: FloatArray,
+    track: FloatArray,
+    target: float,
+    present: float,
+    what: str,
+    name: str,
+    unit: str,
 ) -> tuple[float, float]:
     """Neighbouring grid values around the target, those nearest to the present one."""
     off = track - target
@@ -259,27 +272,12 @@ def _reached(
         known = track[np.isfinite(track)]
         span = f"{known.min() / 1e6:.1f} to {known.max() / 1e6:.1f} MHz" if len(known) else "none"
         raise MeasurementError(
-            f"{target / 1e6:.1f} MHz is out of reach for the {label} dip by `{name}` alone: from "
-            f"{grid[0]:.4g} to {grid[-1]:.4g} (SI) it goes over {span}; allow more or choose "
-            "another dimension"
+            f"{target / 1e6:.1f} MHz is out of reach for the {what} by `{name}` alone: from "
+            f"{as_text(float(grid[0]), unit, 5)} to {as_text(float(grid[-1]), unit, 5)} it goes "
+            f"over {span}; allow more (--by {name}=LOW..HIGH) or choose another dimension"
         )
     place = min(crossing, key=lambda k: abs(grid[k] - present))
     return float(grid[place]), float(grid[place + 1])
-
-
-def _dip_sigma(result: FitResult, dip: Callable[[float, FloatArray], float], value: float) -> float:
-    """Standard deviation of the modelled dip from the covariance of all unknowns."""
-    problem, x = result.problem, result.solution
-    rows = []
-    for place in range(problem.common):
-        step = 0.02 if place < problem.free else 0.3
-        ahead, back = x.copy(), x.copy()
-        ahead[place] += step
-        back[place] -= step
-        rows.append((dip(value, ahead) - dip(value, back)) / (2 * step))
-    gradient = np.nan_to_num(np.array(rows))
-    covariance = result.covariance[: len(rows), : len(rows)]
-    return float(np.sqrt(max(gradient @ covariance @ gradient, 0.0)))
 
 
 def with_gain(result: FitResult, trim: Trim, *, file: int = -1) -> Trim:
@@ -291,44 +289,6 @@ def with_gain(result: FitResult, trim: Trim, *, file: int = -1) -> Trim:
     ------
     GeometryError, EngineError, StudyError
     """
-    from simkit.geometry import plan_mesh
-    from simkit.runner.solve import solve_case
-
-    problem = result.problem
-    chosen = problem.files[file % len(problem.files)]
-    values = chosen.build | problem.values(result.solution, chosen.build)
-    values.pop(SCALE, None)
-    antennas = [
-        replace(problem.variation.antenna(point), converge=False)
-        for point in (values, values | {trim.name: trim.present + trim.change})
-    ]
-    plan = plan_mesh(antennas)
-    gains = []
-    for antenna in antennas:
-        solved = solve_case(antenna, plan)
-        numbers = solved.arrays.get("mode_half_waves")
-        place = [] if numbers is None else list(np.flatnonzero(numbers == trim.half_waves))
-        peaks = np.asarray(solved.arrays.get("peak_gain", ()))
-        gains.append(float(peaks[place[0]]) if place else float("nan"))
-    return replace(trim, gain_dbi=(gains[0], gains[1]))
-
-
-def _mode_changes(
-    problem: FitProblem, x: FloatArray, file: int, name: str, change: float
-) -> tuple[ModeChange, ...]:
-    surrogate = problem.files[file].surrogate
-    rows = []
-    for n in surrogate.half_waves:
-        before = modelled_dip(problem, x, file, n, {})
-        after = modelled_dip(problem, x, file, n, {name: change})
-        rows.append(
-            ModeChange(
-                half_wave_label(n, surrogate.nodes[0].on_plane),
-                n,
-                before.frequency_hz if before else float("nan"),
-                after.frequency_hz if after else float("nan"),
-                before.return_loss_db if before else float("nan"),
-                after.return_loss_db if after else float("nan"),
-            )
-        )
-    return tuple(rows)
+    changes = {trim.name: trim.change}
+    (gains,) = TrimModel(result, file).gains_dbi((trim.half_waves,), changes)
+    return replace(trim, gain_dbi=gains)

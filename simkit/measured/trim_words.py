@@ -8,12 +8,13 @@ import numpy as np
 
 from simkit.measured.fit_result import LIMIT_95
 from simkit.measured.fit_words import aligned, number_text
-from simkit.study.units import as_text
+from simkit.study.units import as_text, find_unit
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from simkit.measured.trim import Trim
+    from simkit.measured.trim_model import ModeChange
 
 SHALLOW_DB = 10.0
 MISSED = 0.004
@@ -31,7 +32,7 @@ def trim_text(trim: Trim) -> str:
         f"{_change(trim, trim.low)} to {_change(trim, trim.high)}",
         *_scaling_lines(trim),
         "",
-        *mode_lines(trim),
+        *mode_lines(trim.modes),
         "",
         *(f"  {line}" for line in advice(trim)),
     ]
@@ -46,7 +47,7 @@ def _scaling_lines(trim: Trim) -> list[str]:
     return [f"  by plain scaling     {_change(trim, trim.scaling_change)}{said}"]
 
 
-def mode_lines(trim: Trim) -> list[str]:
+def mode_lines(modes: Sequence[ModeChange]) -> list[str]:
     """What happens to every mode's dip and match."""
     rows = [("  mode", "dip now, MHz", "then, MHz", "return loss now, dB", "then, dB")]
     rows += [
@@ -57,7 +58,7 @@ def mode_lines(trim: Trim) -> list[str]:
             number_text(mode.before_return_loss_db, 1),
             number_text(mode.after_return_loss_db, 1),
         )
-        for mode in trim.modes
+        for mode in modes
     ]
     return aligned(rows)
 
@@ -72,7 +73,8 @@ def _what_to_expect(trim: Trim) -> list[str]:
     if trim.band_hz[1] > trim.band_hz[0]:
         lines.append(
             f"return loss then at least {trim.band_return_loss_db:.1f} dB from "
-            f"{_megahertz(trim.band_hz[0])} to {_megahertz(trim.band_hz[1])}"
+            f"{_megahertz(trim.band_hz[0])} to {_megahertz(trim.band_hz[1])}, now "
+            f"{trim.band_return_loss_now_db:.1f} dB; no other `{trim.name}` near it does better"
         )
     if np.isfinite(trim.gain_dbi).all():
         before, after = trim.gain_dbi
@@ -92,11 +94,14 @@ def _what_to_do(trim: Trim) -> str:
     if trim.of_feedline:
         return f"change `{trim.name}` by {_change(trim, trim.change)}, then measure once more"
     if trim.adds_metal:
+        area = f" ({trim.metal_m2[0] * 1e6:.3g} mm²)" if np.isfinite(trim.metal_m2[0]) else ""
         return (
-            f"metal must be added: `{trim.name}` has to grow by "
-            f"{_length(trim, trim.change)}; this piece cannot be cut to the target, solder strip "
+            f"metal must be added{area}: `{trim.name}` has to change by "
+            f"{_change(trim, trim.change)}; this piece cannot be cut to the target, solder strip "
             "on or make a new one"
         )
+    if not trim.cuts_metal:
+        return f"change `{trim.name}` by {_change(trim, trim.change)}: no metal is cut"
     if trim.in_steps:
         first = trim.first_step
         return (
@@ -129,7 +134,8 @@ def factor_lines(trims: Sequence[Trim]) -> list[str]:
         (
             trim.name,
             _length(trim, trim.present),
-            f"{trim.slope_hz_per_m * _unit_m(trim) / 1e6:+.2f} MHz/{trim.unit}",
+            f"{trim.slope_hz_per_m * unit_si(trim.unit) / 1e6:+.2f} MHz"
+            + (f"/{trim.unit}" if trim.unit != "1" else ""),
             number_text(trim.correction_factor, 3),
         )
         for trim in trims
@@ -137,10 +143,22 @@ def factor_lines(trims: Sequence[Trim]) -> list[str]:
     return aligned(rows)
 
 
-def _unit_m(trim: Trim) -> float:
-    from simkit.study.units import find_unit
+def unit_si(unit: str) -> float:
+    """Return what a unit is in SI."""
+    return float(find_unit(unit).factor) if unit != "1" else 1.0
 
-    return float(find_unit(trim.unit).factor)
+
+def length_text(value: float, unit: str) -> str:
+    """Return a dimension as a workshop reads it: to 0.01 mm, or five digits of another unit."""
+    return f"{value * 1e3:.2f} mm" if unit == "mm" else as_text(value, unit, 5)
+
+
+def change_text(value: float, unit: str) -> str:
+    """Return a change with its sign: ``-3.05 mm``."""
+    sign = "+" if value > 0 else "-" if value < 0 else ""
+    if unit == "mm":
+        return f"{sign}{abs(value) * 1e3:.2f} mm"
+    return f"{sign}{as_text(abs(value), unit, 3)}"
 
 
 def _megahertz(frequency_hz: float) -> str:
@@ -148,9 +166,8 @@ def _megahertz(frequency_hz: float) -> str:
 
 
 def _length(trim: Trim, value: float) -> str:
-    return as_text(value, trim.unit, 5)
+    return length_text(value, trim.unit)
 
 
 def _change(trim: Trim, value: float) -> str:
-    text = as_text(abs(value), trim.unit, 3)
-    return f"{'+' if value > 0 else '-'}{text}"
+    return change_text(value, trim.unit)

@@ -191,8 +191,10 @@ class Variation:
         name = text.strip()
         return name if name == SCALE and SCALE not in self.study.values else self.check(name)
 
-    def rewritten(self, values: Mapping[str, float], head: Iterable[str] = ()) -> str:
-        """Return the study's text with other values, each with a comment of the old one.
+    def rewritten(
+        self, values: Mapping[str, float], head: Iterable[str] = (), why: str = "fitted"
+    ) -> str:
+        """Return the study's text with other values, each with a comment why and of the old one.
 
         Raises
         ------
@@ -211,13 +213,13 @@ class Variation:
             if match is None or place is None:
                 raise MeasurementError(
                     f"{self.study.path}: `{name}` does not stand alone on a line as name = value, "
-                    "so the fitted value cannot be written there; write it so"
+                    "so its new value cannot be written there; write it so"
                 )
             unit = self.unit(name)
             number = f"{from_si(value, unit):.6g}"
             new = number if unit == "1" else f'"{number} {unit}"'
             was = match[2].strip("\"'")
-            lines[place - 1] = f"{match[1]}{new}  # fitted, was {was}" + (
+            lines[place - 1] = f"{match[1]}{new}  # {why}, was {was}" + (
                 f"; {match[3][1:].strip()}" if match[3] else ""
             )
         return "\n".join([*(f"# {line}" for line in head), *lines])

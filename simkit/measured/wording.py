@@ -7,10 +7,11 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping, Sequence
+    from collections.abc import Sequence
 
-    from simkit.measured.comparison import Comparison, ModeLine
+    from simkit.measured.comparison import Comparison
     from simkit.measured.measurement import Measurement
+    from simkit.measured.mode_line import ModeLine
     from simkit.measured.nearest import NearCase
     from simkit.measured.poles import MeasuredModes
 
@@ -20,12 +21,14 @@ of two frequencies, twice the standard deviation."""
 
 _GROUPS = (
     ("", 1),
-    ("natural mode", 2),
+    ("natural, MHz", 2),
+    ("Q", 2),
     ("dip, MHz", 3),
     ("return loss, dB", 2),
     ("to lowest mode", 2),
 )
-_NAMES = ("mode", "MHz", "Q", "simul.", "meas.", "m./s.", "simul.", "meas.", "simul.", "meas.")
+_PAIR = ("simul.", "meas.")
+_NAMES = ("mode", *_PAIR, *_PAIR, *_PAIR, "m./s.", *_PAIR, *_PAIR)
 
 
 def comparison_text(comparison: Comparison) -> str:
@@ -67,8 +70,13 @@ def quantity_text(name: str, value: float, units: str) -> str:
     return f"{name} {value * factor:.5g}{unit}"
 
 
-def natural_text(found: MeasuredModes) -> str:
+def natural_text(found: MeasuredModes | None) -> str:
     """Return the natural modes a sweep shows, and those it does not support, in one line."""
+    if found is None:
+        return (
+            "natural modes cannot be read from the sweep: no dip is paired, or a feed line lies "
+            "before the antenna"
+        )
     sure = [
         f"{mode.frequency_hz / 1e6:.1f} +- {1.96 * mode.frequency_sigma_hz / 1e6:.1f} MHz "
         f"(Q {mode.q:.2f})"
@@ -82,9 +90,7 @@ def natural_text(found: MeasuredModes) -> str:
     return "; ".join([text, *found.notes])
 
 
-def nearest_text(
-    measurement: Measurement, cases: Sequence[NearCase], units: Mapping[str, str]
-) -> str:
+def nearest_text(measurement: Measurement, cases: Sequence[NearCase]) -> str:
     """Return the stored cases that come nearest to a measurement as a table."""
     from simkit.measured.fit_words import aligned
 
@@ -95,7 +101,7 @@ def nearest_text(
             str(near.case),
             _number(near.misfit, 2),
             _number(near.curve, 3),
-            ", ".join(quantity_text(n, v, units.get(n, "1")) for n, v in near.values.items()),
+            ", ".join(quantity_text(n, v, near.units.get(n, "1")) for n, v in near.values.items()),
         )
         for rank, near in enumerate(cases)
     ]
@@ -104,9 +110,11 @@ def nearest_text(
 
 def _cells(line: ModeLine) -> tuple[str, ...]:
     return (
-        line.label,
+        f"{line.label} ?" if line.ambiguous else line.label,
         _number(line.natural_hz / 1e6, 1),
-        _number(line.q, 2),
+        _number(line.measured_natural_hz / 1e6, 1),
+        _number(line.q, 1),
+        _with_error(line.measured_q, 1.96 * line.measured_q_sigma),
         _number(line.simulated_hz / 1e6, 1),
         _number(line.measured_hz / 1e6, 1),
         _number(line.ratio, 4),
@@ -119,6 +127,11 @@ def _cells(line: ModeLine) -> tuple[str, ...]:
 
 def _number(value: float, digits: int) -> str:
     return f"{value:.{digits}f}" if np.isfinite(value) else "-"
+
+
+def _with_error(value: float, limit: float) -> str:
+    """A number with its 95 % interval, to the place that is uncertain."""
+    return f"{value:.1f} +-{limit:.1f}" if np.isfinite(value) else "-"
 
 
 def _table(rows: list[tuple[str, ...]]) -> list[str]:

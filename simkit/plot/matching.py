@@ -149,6 +149,7 @@ def plot_match(
     start_hz: float,
     stop_hz: float,
     *,
+    span_hz: tuple[float, float] | None = None,
     ax: Axes | None = None,
 ) -> Axes:
     """Draw |reflection| in dB before and after the network, with the band shaded.
@@ -157,9 +158,10 @@ def plot_match(
     ----------
     chain : Chain
     load : OnePort
-        Drawn over all its frequencies.
     start_hz, stop_hz : float
         The band.
+    span_hz : (float, float), optional
+        Frequencies drawn, within those of the load; all if left out.
     ax : matplotlib.axes.Axes, optional
         A new figure is made if left out.
 
@@ -185,7 +187,9 @@ def plot_match(
     ax.set_ylabel(f"|reflection| (dB re {chain.reference_ohm:g} ohm)")
     ax.axvspan(start_hz * unit.factor, stop_hz * unit.factor, color=BAND, zorder=0, label="band")
     # With the band's own points, so that a narrow band is not stepped over.
-    whole = load.at(np.union1d(load.frequency_hz, band.frequency_hz))
+    low, high = load.frequency_hz[[0, -1]] if span_hz is None else span_hz
+    known = load.frequency_hz[(load.frequency_hz >= low) & (load.frequency_hz <= high)]
+    whole = load.at(np.unique(np.concatenate([known, band.frequency_hz, [low, high]])))
     x = whole.frequency_hz * unit.factor
     for curve, inside, colour, dashes, name in (
         (

@@ -32,6 +32,8 @@ def plot_nearest(
     ax : matplotlib.axes.Axes, optional
         A new figure is made if left out.
     """
+    from simkit.measured.wording import quantity_text
+
     ax = new_axes(ax, (10.5, 5.2))
     tidy(ax)
     unit = frequency_unit(measurement.frequency_hz)
@@ -39,7 +41,10 @@ def plot_nearest(
     put_title(ax, f"{measurement.path.name} and the stored cases nearest to it{said}")
     for rank, near in enumerate(cases):
         style = mode_style(rank + 1)
-        values = ", ".join(f"{name} {_plain(value)}" for name, value in near.values.items())
+        values = ", ".join(
+            quantity_text(name, value, near.units.get(name, "1"))
+            for name, value in near.values.items()
+        )
         ax.plot(
             near.frequency_hz * unit.factor,
             20 * np.log10(np.maximum(np.abs(near.reflection), 1e-4)),
@@ -62,8 +67,3 @@ def plot_nearest(
     ax.set_ylabel(f"|reflection| (dB re {measurement.reference_ohm:g} ohm)")
     legend_beside(ax)
     return ax
-
-
-def _plain(value: float) -> str:
-    """A swept value for a legend; below 1 it is nearly always a length."""
-    return f"{value * 1e3:.4g} mm" if abs(value) < 1 else f"{value:.4g}"

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from matplotlib.lines import Line2D
 
+from simkit.plot.smith import draw_chart
 from simkit.plot.style import (
     INK,
     QUIET,
@@ -23,8 +24,9 @@ if TYPE_CHECKING:
     from matplotlib.artist import Artist
     from matplotlib.axes import Axes
 
-    from simkit.measured.comparison import Comparison, ModeLine
+    from simkit.measured.comparison import Comparison
     from simkit.measured.measurement import ComplexArray, FloatArray
+    from simkit.measured.mode_line import ModeLine
 
 MEASURED_COLOUR = "#8c5a9e"
 """A violet that no mode has; the simulated curve is dashed besides."""
@@ -80,6 +82,67 @@ def plot_overlay(comparison: Comparison, *, ax: Axes | None = None) -> Axes:
         )
     legend_beside(ax, handles=_explained(comparison, unit))
     return ax
+
+
+def plot_overlay_smith(comparison: Comparison, *, ax: Axes | None = None) -> Axes:
+    """Draw measured and simulated reflection in a Smith chart, their dips marked by mode.
+
+    Full markers are measured dips, hollow ones simulated.
+
+    Parameters
+    ----------
+    comparison : Comparison
+        From `simkit.compare`.
+    ax : matplotlib.axes.Axes, optional
+        A new figure is made if left out.
+
+    Returns
+    -------
+    matplotlib.axes.Axes
+    """
+    ax = new_axes(ax, (9.4, 7.2))
+    ax.set_title(_title(comparison), fontsize="medium", loc="left")
+    draw_chart(ax, comparison.measurement.reference_ohm)
+    measurement = comparison.measurement
+    unit = frequency_unit([measurement.frequency_hz[-1], comparison.frequency_hz[-1]])
+    simulated = (comparison.frequency_hz, comparison.simulated_reflection)
+    measured = (measurement.frequency_hz, measurement.reflection)
+    for (_, gamma), is_measured in ((simulated, False), (measured, True)):
+        ax.plot(
+            gamma.real,
+            gamma.imag,
+            color=MEASURED_COLOUR if is_measured else INK,
+            linestyle="solid" if is_measured else SIMULATED_DASHES,
+            linewidth=1.7 if is_measured else 1.5,
+            zorder=3 if is_measured else 2.5,
+        )
+    for line in comparison.lines:
+        style = mode_style(line.half_waves)
+        for place, (frequency, gamma), fill in (
+            (line.simulated_hz, simulated, "white"),
+            (line.measured_hz, measured, style.colour),
+        ):
+            if np.isfinite(place):
+                ax.plot(
+                    np.interp(place, frequency, gamma.real),
+                    np.interp(place, frequency, gamma.imag),
+                    marker=style.marker,
+                    markersize=8,
+                    markerfacecolor=fill,
+                    markeredgecolor=style.colour,
+                    markeredgewidth=1.6,
+                    linestyle="none",
+                    zorder=5,
+                )
+    for dip in comparison.unpaired:
+        at = (np.interp(dip.frequency_hz, measured[0], part) for part in _parts(measured[1]))
+        ax.plot(*at, marker="x", markersize=8, color=INK, linestyle="none", zorder=5)
+    legend_beside(ax, handles=_explained(comparison, unit))
+    return ax
+
+
+def _parts(gamma: ComplexArray) -> tuple[FloatArray, FloatArray]:
+    return np.asarray(gamma.real), np.asarray(gamma.imag)
 
 
 def _title(comparison: Comparison) -> str:

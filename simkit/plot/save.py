@@ -42,6 +42,8 @@ if TYPE_CHECKING:
     from simkit.study.model import Antenna
 
 FORMATS = ("png", "svg", "pdf")
+MEASURED_FOLDER = "measured"
+"""In a results folder: copies of the measured files the study names."""
 
 _OF_RESULTS = {
     "impedance": plot_impedance,
@@ -193,21 +195,32 @@ def _tracks_files(dataset: xr.Dataset) -> Iterator[tuple[str, str]]:
 
 
 def measured_builds(study: Study | None, by: str) -> list[MeasuredBuild]:
-    """Read the dips of the study's measured builds that say what they have for a swept value.
+    """Read the dips of the study's measured builds, each at its swept value.
 
-    A file that cannot be used is left out: `simkit compare` is the place that complains.
+    What a build does not say is taken at the study's nominal value. A file that is not where the
+    study says is looked for in the folder `MEASURED_FOLDER` beside the study, where a run leaves
+    copies. One that cannot be used is left out: `simkit compare` is the place that complains.
     """
     from simkit.measured import read_touchstone
     from simkit.measured.dips import measured_dips
 
     builds = []
     for measured in study.measured if study is not None else ():
-        if by in measured.build:
-            with suppress(MeasurementError):
-                dips, _ = measured_dips(read_touchstone(measured.path))
-                places = tuple(dip.frequency_hz for dip in dips)
-                builds.append(MeasuredBuild(measured.path.stem, measured.build[by], places))
+        value = measured.build.get(by, study.values.get(by) if study is not None else None)
+        if value is None:
+            continue
+        with suppress(MeasurementError):
+            dips, _ = measured_dips(read_touchstone(_found(study, measured.path)))
+            places = tuple(dip.frequency_hz for dip in dips)
+            builds.append(MeasuredBuild(measured.path.stem, value, places))
     return builds
+
+
+def _found(study: Study | None, path: Path) -> Path:
+    if study is None or path.exists():
+        return path
+    copy = study.path.parent / MEASURED_FOLDER / path.name
+    return copy if copy.exists() else path
 
 
 def _has_carrier(antenna: Antenna | None) -> bool:

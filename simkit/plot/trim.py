@@ -17,14 +17,16 @@ from simkit.plot.style import (
     put_title,
     tidy,
 )
-from simkit.study.units import as_text, find_unit
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
+    from simkit.measured.measurement import FloatArray
     from simkit.measured.trim import Trim
 
 BAND_95 = 1.96
+LOSS = "#8c5a9e"
+"""Return loss, on the axis to the right; a violet that no mode has."""
 
 
 def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
@@ -36,18 +38,23 @@ def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
     ax : matplotlib.axes.Axes, optional
         A new figure is made if left out.
     """
+    from simkit.measured.trim_words import change_text, length_text, unit_si
+
     ax = new_axes(ax, (9.6, 5.0))
     tidy(ax)
     style = mode_style(trim.half_waves)
     unit = frequency_unit(trim.dips_hz)
-    scale = 1 / float(find_unit(trim.unit).factor)
+    scale = 1 / unit_si(trim.unit)
     x, y = trim.values * scale, trim.dips_hz * unit.factor
     spread = BAND_95 * trim.dip_sigmas_hz * unit.factor
+    change, low, high = (
+        change_text(value, trim.unit) for value in (trim.change, trim.low, trim.high)
+    )
+    best = ", best match over the band," if len(trim.losses_db) else ""
     put_title(
         ax,
-        f"{trim.label} dip to {frequency_text(trim.target_hz, unit)} by {trim.name}: "
-        f"{as_text(trim.change, trim.unit, 3)} "
-        f"({as_text(trim.low, trim.unit, 3)} to {as_text(trim.high, trim.unit, 3)}, 95 %)",
+        f"{trim.label} dip to {frequency_text(trim.target_hz, unit)}{best} by {trim.name}: "
+        f"{change} (95 %: {low} to {high})",
     )
     ax.fill_between(
         x, y - spread, y + spread, color=style.colour, alpha=0.18, linewidth=0, label="95 % band"
@@ -74,7 +81,7 @@ def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
         linestyle="none",
         markersize=8,
         zorder=5,
-        label=f"now: {as_text(trim.present, trim.unit, 5)},\n"
+        label=f"now: {length_text(trim.present, trim.unit)},\n"
         f"{frequency_text(trim.present_hz, unit)}",
     )
     ax.plot(
@@ -87,7 +94,7 @@ def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
         markersize=9,
         markeredgewidth=1.8,
         zorder=5,
-        label=f"after: {as_text(trim.present + trim.change, trim.unit, 5)},\n"
+        label=f"after: {length_text(trim.present + trim.change, trim.unit)},\n"
         f"{frequency_text(trim.target_hz, unit)}",
     )
     if np.isfinite(trim.measured_hz):
@@ -107,8 +114,29 @@ def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
     if inside.any():
         both = np.concatenate([(y - spread)[inside], (y + spread)[inside], plain[inside]])
         ax.set_ylim(float(np.nanmin(both)), float(np.nanmax(both)))
-    legend_beside(ax)
+    legend_beside(ax, away=1.09 if _draw_losses(ax, trim, x) else 1.01)
     return ax
+
+
+def _draw_losses(ax: Axes, trim: Trim, x: FloatArray) -> bool:
+    """Least return loss in the band on an axis of its own, for a trim that aims at one."""
+    if not len(trim.losses_db):
+        return False
+    right = ax.twinx()
+    right.plot(x, trim.losses_db, color=LOSS, linewidth=1.5, linestyle=(0, (1, 1)))
+    right.set_ylabel("least return loss in the band (dB)", color=LOSS)
+    right.tick_params(axis="y", colors=LOSS)
+    for side in ("top", "left"):
+        right.spines[side].set_visible(False)
+    low, high = ax.get_xlim()
+    inside = (x >= low) & (x <= high)
+    if inside.any():
+        shown = trim.losses_db[inside]
+        right.set_ylim(float(shown.min()) - 0.5, float(shown.max()) + 1.5)
+    ax.plot([], [], color=LOSS, linewidth=1.5, linestyle=(0, (1, 1)),
+            label=f"least return loss in the band:\n{trim.band_return_loss_now_db:.1f} dB now, "
+            f"{trim.band_return_loss_db:.1f} dB after")  # fmt: skip
+    return True
 
 
 def _mark_target(ax: Axes, trim: Trim, factor: float) -> None:

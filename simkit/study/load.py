@@ -168,7 +168,17 @@ def load_study(path: str | PathLike[str]) -> Study:
         some points of the sweep have does not raise but refuses these cases.
     """
     path = Path(path)
-    text = _read_text(path)
+    return parse_study(path, _read_text(path))
+
+
+def parse_study(path: Path, text: str) -> Study:
+    """Understand a study's text; `path` is the file it stands in, or is to stand in.
+
+    Raises
+    ------
+    StudyError
+        As `load_study`.
+    """
     data, lines = _parse(path, text)
     return _Builder(path, text, data, lines).run()
 

@@ -1,13 +1,14 @@
 """Synthetic prototypes through pairing, fit and trim: how often each comes out right.
 
-    python tests/benchmarks/bench_prototypes.py [--count 100] [--seed 1]
+    python tests/benchmarks/bench_prototypes.py [--count 100] [--seed 1] [--pair]
 
 Each prototype is a dipole on a carrier that differs from the study in arm length (the workshop's
 tolerance and a wrong wish), width, gap and permittivity (up to 20 % off). It is solved by the other
 model kind (rails instead of one wire) on a mesh of its own, and read through an analyser with
 errors: directivity of -36 dB behind a cable, tracking of 0.3 dB, delay and noise. The fit knows
 the length within 0.1 mm and looks for the permittivity; the trim aims at a lower frequency than the
-dip's own or a higher one, and the trimmed prototype is solved again with its true values.
+dip's own or a higher one, and the trimmed prototype is solved again with its true values. With
+--pair, length and width are trimmed together so that two dips land where they are wanted.
 
 Invented data throughout. Figures are printed, never asserted on.
 """
@@ -30,12 +31,14 @@ from simkit.geometry import build_wires, plan_mesh
 from simkit.measured.fit import fit
 from simkit.measured.measurement import Measurement
 from simkit.measured.simulator import build_surrogate
+from simkit.measured.targets import Target
 from simkit.measured.trim import trim_fitted
+from simkit.measured.trim_pair import trim_pair
 from simkit.measured.variation import Known, Variation
 from simkit.response.features import reflection
 from simkit.response.modes import find_modes
 from simkit.response.ownership import owned_features
-from simkit.runner.solve import feed_impedance, sweep_currents
+from simkit.runner.currents import feed_impedance, sweep_currents
 from simkit.study import load_study
 
 STUDY = """
@@ -151,6 +154,31 @@ def one(rng, variation, surrogate):
     return rows
 
 
+PAIR_BOUNDS = BOUNDS | {"arm": (65e-3, 74.5e-3), "width": (3.5e-3, 9e-3)}
+PAIR_TRIM = {1: 0.015, 3: 0.018}
+"""Both dips up, the higher one a little more: by length mostly, by width for the rest."""
+
+
+def both(rng, variation, surrogate):
+    """Errors of both dips after a trim by length and width, and the changes with their errors."""
+    truth, (frequency, gamma, dips) = prototype(rng, variation)
+    known = [
+        Known("arm", truth["arm"] + rng.normal(0, 0.05e-3), 0.1e-3),
+        Known("width", 6e-3, 0.2e-3),
+    ]
+    measurement = bench(rng, frequency, gamma)
+    result = fit(variation.study, [measurement], BOUNDS, known=known, surrogate=surrogate)
+    wanted = {n: dips[n] * (1 + part) for n, part in PAIR_TRIM.items()}
+    targets = tuple(Target("dip", n, (place, place)) for n, place in wanted.items())
+    reaches = {name: PAIR_BOUNDS[name] for name in ("arm", "width")}
+    cut = trim_pair(result, targets, reaches)
+    moved = {name: truth[name] + change for name, change in zip(reaches, cut.change, strict=True)}
+    again = solved(variation, truth | moved)[2]
+    return {f"dip {n} error": again[n] / place - 1 for n, place in wanted.items()} | {
+        f"{name} change": float(change) for name, change in zip(reaches, cut.change, strict=True)
+    }
+
+
 def share(rows, name, test=bool):
     return f"{np.mean([bool(test(row[name])) for row in rows]):6.1%}"
 
@@ -159,6 +187,7 @@ def main():
     parser = argparse.ArgumentParser()
     parser.add_argument("--count", type=int, default=100)
     parser.add_argument("--seed", type=int, default=1)
+    parser.add_argument("--pair", action="store_true", help="trim two dimensions for two dips")
     arguments = parser.parse_args()
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "prototype.toml"
@@ -169,7 +198,7 @@ def main():
     surrogate, _ = build_surrogate(
         variation,
         {},
-        {**BOUNDS, "arm": (66e-3, 74e-3)},
+        PAIR_BOUNDS if arguments.pair else {**BOUNDS, "arm": (66e-3, 74e-3)},
         (antenna.start_hz, antenna.stop_hz),
     )
     print(f"model over the bounds: {time.perf_counter() - begin:.0f} s", flush=True)
@@ -177,7 +206,7 @@ def main():
     for number in range(arguments.count):
         rng = np.random.default_rng([arguments.seed, number])
         try:
-            rows.append(one(rng, variation, surrogate))
+            rows.append((both if arguments.pair else one)(rng, variation, surrogate))
         except SimkitError as error:
             print(f"{number}: {error}")
             continue
@@ -186,6 +215,10 @@ def main():
         )
         print(f"{number}: {shown}", flush=True)
     print(f"{len(rows)} prototypes in {time.perf_counter() - begin:.0f} s")
+    if arguments.pair:
+        far = np.array([max(abs(row[f"dip {n} error"]) for n in PAIR_TRIM) for row in rows])
+        print(f"both dips within 0.5 %         {np.mean(far < 0.005):6.1%} of those in reach")
+        return
     print("all modes paired right        ", share(rows, "paired"), "(wanted: 95 %)")
     print("permittivity within 5 %       ", share(rows, "eps error", lambda e: abs(e) < 0.05),
           "(wanted: 90 %)")  # fmt: skip

@@ -10,16 +10,19 @@ import pytest
 from click.testing import CliRunner
 
 from simkit.cli import main
+from simkit.cli.fit import write_study
+from simkit.errors import StoreError
 from simkit.study import load_study
 
 STUDY = """
 title = "Creek gauge link"
 [values]
 arm = "76 mm"
+width = "8 mm"
 [[strip]]
 name = "east"
 path = [["1 mm", "0 mm"], ["1 mm + arm", "0 mm"]]
-width = "8 mm"
+width = "width"
 [[strip]]
 name = "west"
 mirror = "east"
@@ -77,6 +80,32 @@ def test_trim_says_how_much_to_cut(folder):
     assert as_json["low"] < as_json["change"] < as_json["high"] < 0
 
 
+def test_trim_by_two_dimensions_meets_two_targets(folder):
+    words = (
+        "--mode", "1/2", "--target", "920 MHz..930 MHz", "--target", "13 dB", "--by", "arm",
+        "--by", "width=7 mm..9 mm", "--known", "arm = 75 mm +- 0.5 mm", "--json",
+    )  # fmt: skip
+    done = run(folder, "trim", *words)
+    assert done.exit_code == 0, done.output
+    found = json.loads(done.stdout)
+    arm, width = found["dimensions"]
+    # 12 MHz per millimetre from 902 MHz; the match of a dipole needs no other width for 13 dB.
+    assert arm["change"] == pytest.approx(-1.9e-3, abs=0.5e-3)
+    assert width["change"] == 0
+    assert found["targets"][1]["after"] > 13
+    assert found["gains_dbi"][0][1] == pytest.approx(2.12, abs=0.06)
+    assert (folder / "plots" / "trim_arm_width.png").stat().st_size > 10_000
+
+
+@pytest.mark.long
+def test_a_dimension_that_cannot_do_it_leaves_the_other(folder):
+    words = ("--mode", "1/2", "--target", "930 MHz", "--by", "width", "--by", "arm", "--csv")
+    done = run(folder, "trim", *words, "--known", "arm = 75 mm +- 0.5 mm")
+    assert done.exit_code == 0, done.output
+    assert "not by this one: 930.0 MHz is out of reach" in done.stderr
+    assert done.stdout.splitlines()[1].startswith("arm,1/2 wave")
+
+
 @pytest.mark.parametrize(
     ("words", "said"),
     [
@@ -85,6 +114,10 @@ def test_trim_says_how_much_to_cut(folder):
         (("fit", "--free", "arm=79 mm..72 mm"), "first bound must be below"),
         (("trim", "--mode", "x", "--target", "1 GHz", "--by", "arm"), "is no mode"),
         (("trim", "--mode", "1/2", "--target", "1 m", "--by", "arm"), "a frequency is needed"),
+        (
+            ("trim", "--mode", "1/2", "--target", "1 GHz", "--target", "9 dB", "--by", "arm"),
+            "two targets need two dimensions",
+        ),
     ],
 )
 def test_bad_requests_are_refused_with_a_sentence(folder, words, said):
@@ -110,3 +143,52 @@ def test_a_measurement_elsewhere_is_refused(folder, tmp_path):
     done = CliRunner().invoke(main, words)
     assert done.exit_code == 2
     assert "no frequency in common" in done.output
+
+
+def test_a_file_that_no_fit_wrote_is_left_alone(folder):
+    mine = folder / "mine.toml"
+    mine.write_text("# my own\n")
+    done = run(folder, "fit", "--free", "arm=72 mm..79 mm", "-o", str(mine))
+    assert done.exit_code == 2
+    assert "was not written by a fit" in done.output
+    assert mine.read_text() == "# my own\n"
+
+
+def test_a_fitted_study_is_written_whole_or_not_at_all(folder):
+    with pytest.raises(StoreError, match=r"cannot be written: .*name another place with -o"):
+        write_study(folder / "none" / "x.toml", "text")
+    target = folder / "whole.toml"
+    write_study(target, "text")
+    assert target.read_text() == "text"
+    assert not list(folder.glob(".whole*"))
+
+
+def test_values_that_cannot_be_written_back_are_refused_before_solving(folder, monkeypatch):
+    table = 'arm = "76 mm"\nwidth = "8 mm"\n'
+    inline = STUDY.replace(f"[values]\n{table}", "")
+    assert inline != STUDY
+    values = 'values = { arm = "76 mm", width = "8 mm" }\n'
+    (folder / "inline.toml").write_text(inline.replace("[[strip]]", f"{values}[[strip]]", 1))
+    monkeypatch.setattr("simkit.cli.fit.fitted", None)
+    words = ["fit", str(folder / "inline.toml"), str(folder / "build.s1p")]
+    done = CliRunner().invoke(main, [*words, "--free", "arm=72 mm..79 mm"])
+    assert done.exit_code == 2
+    assert "does not stand alone on a line" in done.output
+
+
+def test_bounds_that_make_no_antenna_are_told(folder):
+    done = run(folder, "fit", "--free", "arm=-1 mm..77 mm")
+    assert done.exit_code == 2
+    assert "not every antenna within the bounds (arm from -1 mm to 77 mm)" in done.output
+
+
+@pytest.mark.long
+def test_repeats_of_one_name_get_pictures_of_their_own(folder):
+    (folder / "again").mkdir()
+    shutil.copy(folder / "build.s1p", folder / "again" / "build.s1p")
+    words = ["fit", str(folder / "gauge.toml"), str(folder / "build.s1p")]
+    words += [str(folder / "again" / "build.s1p"), "--free", "arm=72 mm..79 mm"]
+    done = CliRunner().invoke(main, [*words, "--plots", str(folder / "both"), "--csv"])
+    assert done.exit_code == 0, done.output
+    names = {path.name for path in (folder / "both").iterdir()}
+    assert {"fit_build_1.png", "fit_build_2.png"} <= names

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -24,6 +25,7 @@ from simkit.feedline import (
     worst_return_loss_db,
 )
 from simkit.feedline.candidates import MAKERS, line_of
+from simkit.feedline.match import without_nothing
 from simkit.feedline.vary import dimensions, free_dimensions
 
 F = np.linspace(780e6, 960e6, 91)
@@ -80,6 +82,19 @@ def test_refining_gains_over_the_match_in_the_middle():
     middle = LOAD.at([sum(BAND) / 2])
     for design in exact.designs:
         assert worst_return_loss_db(design.chain, middle) == pytest.approx(100.0)
+
+
+def test_refining_does_not_run_off_to_endless_lines():
+    """On a line with loss a hopeless load is matched best by loss alone."""
+    w = 2 * np.pi * np.linspace(500e6, 1500e6, 101)
+    load = OnePort.from_impedance(w / 2 / np.pi, 0.47 + 1j * (w * 3.67e-9 - 1 / (w * 44e-15)))
+    line = UniformLine(60.0, 0.55, 3.0, 1e9, 0.02)
+    found = find_matches(
+        load, 838e6, 1066e6, reference_ohm=216.0, kinds=("shunt stub",), line=line, wanted_db=1.0
+    )
+    lengths = [d.value for design in found.designs for d in free_dimensions(design.chain)]
+    half_wave_m = line.wavelength_at(952e6) / 2
+    assert half_wave_m < max(lengths) <= half_wave_m * math.exp(1.5)
 
 
 def test_all_stub_solutions_are_there():
@@ -156,8 +171,22 @@ def test_rows_and_text(report):
     assert rows[0]["worst_return_loss_db"] == report.best.worst_db
     text = report.as_text(3)
     assert text.startswith("match to 50 ohm from 853 MHz to 883 MHz; without a network at least")
-    assert "most sensitive: " in text
-    assert text.count("\n   ") >= 3
+    assert "efficiency  most sensitive\n" in text
+    assert f"{report.best.changed_db:.1f} dB" in text
+    assert f"{len(rows) - 3} more, with less left when 1 % off" in text
+
+
+def test_a_line_has_one_letter_throughout_the_table():
+    found = find_matches(LOAD, *BAND, line=UniformLine(115.0), kinds=("quarter wave",))
+    named = [replace(found.designs[0], sensitive=f"line {n} impedance 9 ohm") for n in (1, 2)]
+    text = replace(found, designs=tuple(named)).as_text()
+    assert [line[-22:] for line in text.splitlines() if line.endswith(" 9 ohm")] == [
+        "line A impedance 9 ohm",
+        "line B impedance 9 ohm",
+    ]
+    one = find_matches(LOAD, *BAND, kinds=("tapped line",)).designs[0]
+    text = replace(found, designs=(replace(one, sensitive="line impedance 9 ohm"),)).as_text()
+    assert "line A impedance 9 ohm" in text
 
 
 def test_best_tap_on_a_shorted_line():
@@ -170,6 +199,13 @@ def test_best_tap_on_a_shorted_line():
     assert tapped.length_m == pytest.approx(exact.length_m)
     worse = best_tap(LOAD, *BAND, UniformLine(50.0), exact.length_m * 1.05)
     assert worse.worst_db < design.worst_db
+
+
+def test_sections_of_no_length_are_left_out():
+    line = UniformLine(50.0)
+    stub, nothing = Stub(line, 20e-3), LineSection(line, 3e-10)
+    assert without_nothing(Chain((nothing, stub), 60.0)) == Chain((stub,), 60.0)
+    assert without_nothing(Chain((nothing,))) == Chain((nothing,))
 
 
 def test_dimensions_of_a_chain():

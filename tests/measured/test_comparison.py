@@ -113,15 +113,92 @@ def test_text_shows_case_modes_dashes_and_conclusion():
     text = compare(results(), bench(0.9e9 * 0.98, 2.7e9 * 0.98), case=3).as_text()
     lines = text.split("\n")
     assert lines[0] == "build_1.s1p beside case 3 (arm 76 mm, width 8 mm)"
-    columns = "mode MHz Q simul. meas. m./s. simul. meas. simul. meas."
-    assert lines[3].split() == columns.split()
-    assert lines[5].split()[:4] == ["1/2", "wave", "873.8", "4.70"]
+    pair = "simul. meas."
+    assert lines[3].split() == f"mode {pair} {pair} {pair} m./s. {pair} {pair}".split()
+    assert lines[5].split()[:3] == ["1/2", "wave", "873.8"]
+    assert lines[5].split()[4] == "4.7"
     assert lines[6].split()[-7:] == ["-"] * 7
     assert len({len(line) for line in lines[4:8]}) == 1
     assert "measured/simulated 0.980" in text
     assert "they move alike, as they do with a wrong length" in text
     unlike = compare(results(), bench(0.9e9 * 0.98, 2.7e9), case=3).as_text()
     assert "they move unlike" in unlike
+
+
+def pole_of(resistance, inductance, resonance):
+    """Zero of R + jwL + 1/jwC: natural frequency and Q of a series circuit."""
+    decay = resistance / (4 * np.pi * inductance)
+    frequency = np.sqrt(resonance**2 - decay**2)
+    return frequency, frequency / (2 * decay)
+
+
+def test_q_is_read_from_the_sweep_where_the_data_support_it():
+    found = compare(results(), bench(0.9e9 * 0.98, 2.7e9 * 0.98), case=3)
+    low, even, high = found.lines
+    for line, circuit in ((low, (70.0, 60e-9, 0.9e9 * 0.98)), (high, (100.0, 45e-9, 2.7e9 * 0.98))):
+        frequency, q = pole_of(*circuit)
+        # Noise of a thousandth; the capacitance across the feed changes no pole of the admittance.
+        assert line.measured_natural_hz == pytest.approx(frequency, rel=5e-3)
+        assert line.measured_q == pytest.approx(q, rel=0.03)
+        assert abs(line.measured_q - q) < 3 * line.measured_q_sigma
+        row = line.as_row()
+        assert row["measured_q"] == line.measured_q
+        assert row["measured_q_standard_error"] == line.measured_q_sigma > 0
+    assert np.isnan(even.measured_q)
+    assert even.as_row()["measured_q"] is None
+    assert f"{low.measured_q:.1f} +-" in found.as_text()
+
+
+def test_a_noisy_sweep_supports_no_q():
+    found = compare(results(), bench(0.9e9, 2.7e9, noise=0.12), case=3)
+    assert all(np.isnan(line.measured_q) for line in found.lines if not line.is_paired)
+    assert np.isnan(found.lines[2].measured_q)
+
+
+def test_the_reference_plane_is_judged_by_the_simulated_phase():
+    good = bench(0.9e9 * 0.98, 2.7e9 * 0.98)
+    turn = np.exp(-4j * np.pi * good.frequency_hz * 150e-12)
+    behind = Measurement(good.path, good.frequency_hz, good.reflection * turn, 50.0)
+    found = compare(results(), behind, case=3)
+    assert found.natural.model.delay_s == pytest.approx(150e-12, abs=6e-12)
+    assert any("ps one way (45 mm of air) behind" in note for note in found.notes)
+    # With the delay taken off the modes are read as without it.
+    straight = compare(results(), good, case=3)
+    assert not any("of air)" in note for note in straight.notes)
+    assert found.lines[0].measured_q == pytest.approx(straight.lines[0].measured_q, rel=0.03)
+    ahead = Measurement(good.path, good.frequency_hz, good.reflection / turn, 50.0)
+    assert any("ahead of" in note for note in compare(results(), ahead, case=3).notes)
+
+
+def test_behind_a_feed_line_no_natural_modes_are_read():
+    data = results()
+    data["impedance_at_connector"] = data["impedance"]
+    data.attrs["feedline"] = True
+    found = compare(data, bench(0.9e9, 2.7e9), case=3)
+    assert found.natural is None
+    assert np.isnan(found.lines[0].measured_q)
+
+
+def test_an_ambiguous_pair_is_marked_in_the_table_and_in_the_rows():
+    data = results()
+    # The even mode now shows, and lies beside the third: one measured dip may be of either.
+    data["dip_frequency"][3, 1] = 2.60e9
+    data["mode_frequency"][3, 1] = 2.55e9
+    data["dip_return_loss"][3, 1] = float(data["dip_return_loss"][3, 2])
+    found = compare(data, bench(0.9e9, 2.66e9), case=3)
+    marked = [line for line in found.lines if line.ambiguous]
+    assert len(marked) == 1
+    assert f"{marked[0].label} ?" in found.as_text()
+    assert sum(row["ambiguous"] for row in found.as_rows()) == 1
+    assert any("ambiguous: the dip at" in note for note in found.notes)
+
+
+def test_without_a_dip_no_case_is_said_to_fit_best():
+    flat = bench(0.9e9, 2.7e9)
+    flat = Measurement(flat.path, flat.frequency_hz, 0.9 + 0 * flat.reflection, 50.0)
+    found = compare(results(), flat)
+    assert any("no measured dip tells the 6 cases in question apart" in n for n in found.notes)
+    assert "no measured dip could be paired" in found.as_text()
 
 
 def test_rows_are_plain_and_keep_unpaired_dips():

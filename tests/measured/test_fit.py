@@ -7,6 +7,7 @@ from simkit.errors import MeasurementError, StoreError
 from simkit.measured.bench_errors import ErrorSizes, with_capacitance
 from simkit.measured.fit import fit
 from simkit.measured.fit_problem import correlation_length, referred
+from simkit.measured.simulator import Axis, Surrogate, chebyshev
 from simkit.measured.stored import surrogate_of_results
 from simkit.measured.trim import trim_fitted
 from simkit.measured.trim_words import factor_lines
@@ -14,6 +15,8 @@ from simkit.measured.variation import Known, Variation
 from simkit.study import load_study
 
 from . import synthetic
+from .test_comparison import bench as stored_bench
+from .test_comparison import results as stored_results
 
 FREE_EPS = {"eps": (2.1, 3.3)}
 BOTH = {"arm": (72e-3, 76e-3), "eps": (2.1, 3.3)}
@@ -265,3 +268,80 @@ def test_a_sweep_that_does_not_cover_the_bounds_is_refused():
         surrogate_of_results(dataset, {"eps": (2.0, 3.0)})
     with pytest.raises(StoreError, match="narrow them"):
         surrogate_of_results(dataset, {"arm": (0.06, 0.075)})
+
+
+def test_a_stored_sweep_gives_what_the_formula_behind_it_gives(study):
+    """Cases of a grid, interpolated over arm and width; the truth lies between them."""
+    arms = (0.070, 0.072, 0.074, 0.076, 0.078, 0.080)
+    stored = stored_results(arms, (0.004, 0.006, 0.008))
+    bounds = {"arm": (73.2e-3, 75.2e-3), "width": (5e-3, 7e-3)}
+    model = surrogate_of_results(stored, bounds)
+    # Four nodes around the bounds are enough, the far ones would only narrow the band.
+    assert model.axes[0].nodes == pytest.approx([0.072, 0.074, 0.076, 0.078])
+    data = stored_bench(0.9e9 * 76 / 74.3, (2.7e9 + 5e9 * 0.0015) * 76 / 74.3)
+    result = fit(study, [data], bounds, known=[Known("width", 6.5e-3, 0.1e-3)], surrogate=model)
+    value = next(v for v in result.values if v.name == "arm")
+    assert value.low < 74.3e-3 < value.high
+    assert value.value == pytest.approx(74.3e-3, rel=5e-3)
+    assert np.isnan(result.surrogate_error)
+
+
+def test_a_value_held_at_a_stored_one_needs_no_other():
+    stored = stored_results((0.070, 0.074, 0.078), (0.004, 0.008))
+    with pytest.raises(StoreError, match="only 2 values of `width`"):
+        surrogate_of_results(stored, {"arm": (0.071, 0.077), "width": (0.005, 0.006)})
+    model = surrogate_of_results(stored, {"arm": (0.071, 0.077), "width": (0.008, 0.008)})
+    assert [len(axis.nodes) for axis in model.axes] == [3, 1]
+    f = np.linspace(0.8e9, 1.2e9, 9)
+    exact = stored["impedance"].sel(case=3).interp(frequency=f).values
+    # Cubic splines of the curve against straight lines between its points.
+    found = model.reflection({"arm": 0.074, "width": 0.008}, f)
+    assert found == pytest.approx((exact - 50) / (exact + 50), abs=2e-3)
+
+
+def test_a_dip_beyond_the_stored_band_is_named(study):
+    stored = stored_results((0.070, 0.076, 0.082), (0.004, 0.006, 0.008))
+    bounds = {"arm": (71e-3, 81e-3), "width": (5e-3, 7e-3)}
+    data = stored_bench(0.9e9, 2.7e9)
+    result = fit(study, [data], bounds, surrogate=surrogate_of_results(stored, bounds))
+    assert any("so the measured dip at 27" in note for note in result.notes)
+
+
+class FormulaEngine:
+    """Solves single points of one build by the formula."""
+
+    solves = 3
+
+    def __init__(self, arm):
+        self.arm = arm
+
+    def node(self, values):
+        return synthetic.node(self.arm, values["eps"])
+
+
+def test_each_build_is_checked_against_solutions_of_its_own(study, monkeypatch):
+    def build_surrogate(variation, base, bounds, band_hz, *, progress=None):
+        axis = Axis("eps", chebyshev(*bounds["eps"], 7))
+        nodes = [synthetic.node(base["arm"], eps) for eps in axis.nodes]
+        band = (synthetic.BAND[0] / 1.1, synthetic.BAND[1] * 1.1)
+        return Surrogate([axis], nodes, band), FormulaEngine(base["arm"])
+
+    monkeypatch.setitem(fit.__globals__, "build_surrogate", build_surrogate)
+    arms = (72e-3, 75.5e-3)
+    data = [synthetic.measured(arm, 3.0, seed=k) for k, arm in enumerate(arms)]
+    result = fit(study, data, FREE_EPS, builds=[{"arm": arm} for arm in arms])
+    # The builds differ by 5 % in frequency, which makes 0.4 and more of the reflection.
+    assert result.surrogate_error < 1e-3
+    assert result.solves == 6
+    assert result.values[0].value == pytest.approx(3.0, rel=0.03)
+
+
+def test_a_value_in_which_the_builds_differ_is_not_fitted_to_all(study, model):
+    data = [synthetic.measured(arm, 3.0) for arm in (73e-3, 75.5e-3)]
+    builds = [{"arm": 73e-3}, {"arm": 75.5e-3}]
+    with pytest.raises(MeasurementError, match=r"`arm` cannot be fitted .* 73 mm and 75.5 mm"):
+        fit(study, data, BOTH, builds=builds, surrogate=model)
+    with pytest.raises(MeasurementError, match="leave it as cut, free `scale`"):
+        fit(study, data, BOTH, builds=[{}, {"arm": 75.5e-3}], surrogate=model)
+    same = [{"arm": 73e-3}, {"arm": 73e-3}]
+    assert fit(study, data[:1] * 2, BOTH, builds=same, surrogate=model).curves[1].pairs

@@ -28,7 +28,7 @@ def test_the_case_of_the_build_comes_first():
     assert scores == sorted(scores)
     # Noise of 1e-3 alone is left.
     assert found[0].curve < 3e-3
-    text = nearest_text(bench(0.9e9, 2.7e9), found, {"arm": "m", "width": "m"})
+    text = nearest_text(bench(0.9e9, 2.7e9), found)
     assert "arm 82 mm, width 8 mm" in text
 
 

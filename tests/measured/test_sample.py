@@ -1,5 +1,6 @@
 """The invented measurement of the creek gauge: marked as such, and what its script makes."""
 
+import importlib
 import importlib.util
 from pathlib import Path
 
@@ -57,3 +58,35 @@ def test_the_analyser_without_errors_shows_the_truth(script, monkeypatch):
         monkeypatch.setattr(script, name, value)
     gamma = np.exp(1j * np.linspace(0.0, 5.0, len(script.FREQUENCY_HZ)))
     assert script.analyser_reading(script.FREQUENCY_HZ, gamma) == pytest.approx(gamma)
+
+
+@pytest.fixture(scope="module")
+def matched_script():
+    with pytest.MonkeyPatch.context() as patch:
+        patch.syspath_prepend(STUDIES)  # it takes dipole and analyser from the other script
+        return importlib.import_module("make_creek_gauge_matched_sample")
+
+
+def test_the_file_at_the_connector_is_what_its_script_makes(matched_script):
+    kept = read_touchstone(matched_script.TARGET)
+    assert matched_script.TARGET.read_text().startswith("! INVENTED DATA FOR DEMONSTRATION")
+    assert kept.frequency_hz == pytest.approx(matched_script.FREQUENCY_HZ, rel=1e-9)
+    assert kept.reflection == pytest.approx(matched_script.measured_reflection(), abs=2e-5)
+
+
+def test_its_pair_of_strips_agrees_with_the_feed_line_of_a_study(matched_script, monkeypatch):
+    """Other formulas than simkit's: Wheeler's impedance within 1 %, a tanh in place of waves."""
+    from simkit.feedline import Chain, LineSection, OnePort, TwoStrips
+
+    monkeypatch.setattr(matched_script, "FOAM_PERMITTIVITY", 1.0)
+    monkeypatch.setattr(matched_script, "LOSS_DB_PER_M", 0.0)
+    frequency = np.linspace(800e6, 950e6, 7)
+    load = np.linspace(50, 80, 7) + 1j * np.linspace(-40, 30, 7)
+    pair = [
+        LineSection(TwoStrips(width, matched_script.SEPARATION_M), length)
+        for length, width in matched_script.PAIR_M
+    ]
+    chain = Chain(tuple(pair)).reflection(OnePort.from_impedance(frequency, load))
+    seen = matched_script.behind_pair(frequency, load)
+    # 1 % of impedance in two lines is at most 1 % of reflection.
+    assert (seen - 50) / (seen + 50) == pytest.approx(chain, abs=0.01)

@@ -10,10 +10,14 @@ from simkit.measured.fit_result import FittedCurve, FittedValue
 from simkit.measured.measurement import Measurement
 from simkit.measured.nearest import NearCase
 from simkit.measured.selection import CaseModes
-from simkit.measured.trim import ModeChange, Trim
+from simkit.measured.targets import Target
+from simkit.measured.trim import Trim
+from simkit.measured.trim_model import ModeChange
+from simkit.measured.trim_pair import PairTrim
 from simkit.plot.fit import plot_fit, plot_fit_smith, plot_mode_ratios, plot_residuals
 from simkit.plot.nearest import plot_nearest
 from simkit.plot.trim import plot_trim
+from simkit.plot.trim_map import plot_trim_map
 from simkit.response.features import Dip
 
 F = np.linspace(0.6e9, 1.4e9, 81)
@@ -123,18 +127,66 @@ def test_the_trim_curve_shows_now_after_and_band():
     )  # fmt: skip
     ax = plot_trim(trim)
     said = legend_words(ax)
-    for word in ("95 % band", "plain scaling", "now: 75 mm", "after: 73.3 mm", "measured dip"):
+    for word in ("95 % band", "plain scaling", "now: 75.00 mm", "after: 73.30 mm", "measured dip"):
         assert word in said
     assert ax.get_xlabel() == "arm (mm)"
-    assert "-1.7 mm" in ax.get_title(loc="left")
+    assert "-1.70 mm" in ax.get_title(loc="left")
+    assert len(ax.figure.axes) == 1
+    ax.figure.canvas.draw()
+    banded = replace(trim, losses_db=15 - 1e3 * abs(values - 73.3e-3), band_return_loss_db=15.0)
+    ax = plot_trim(banded)
+    assert "15.0 dB after" in legend_words(ax)
+    assert ax.figure.axes[1].get_ylabel() == "least return loss in the band (dB)"
+    ax.figure.canvas.draw()
+
+
+def pair_trim(kind="dip", **changed):
+    arm, width = np.linspace(70e-3, 80e-3, 5), np.linspace(4e-3, 9e-3, 5)
+    first = 0.9e9 * 75e-3 / arm[:, None] - 3e9 * (width[None] - 6e-3)
+    second = 2.8e9 * 75e-3 / arm[:, None] - 5e9 * (width[None] - 6e-3)
+    fields = {
+        "names": ("arm", "width"), "units": ("mm", "mm"),
+        "targets": (Target("dip", 1, (0.91e9, 0.91e9)), Target(kind, 3, (2.82e9, 2.82e9), 9.0)),
+        "labels": ("1/2 wave dip at $910", "the other"), "mode_labels": ("1/2 wave", "3/2 wave"),
+        "present": np.array([75e-3, 6e-3]), "change": np.array([-0.5e-3, -1.2e-3]),
+        "covariance": np.array([[4e-8, 1e-8], [1e-8, 4e-7]]),
+        "scaling_change": np.array([-0.8e-3, -0.1e-3]),
+        "before": np.array([0.9e9, 2.8e9]), "after": np.array([0.91e9, 2.82e9]),
+        "scaled": np.array([0.91e9, 2.83e9]), "angle_sine": 0.3, "slopes": np.eye(2), "modes": (),
+        "metal_m2": (0.0, 1e-5), "map_values": (arm, width),
+        "map_tracked": np.array([first, second]), "tracked": np.array([0.91e9, 2.82e9]),
+        "tracked_sigma": np.array([1e6, 3e6]), "shown_sigma": np.array([1e6, 3e6]),
+    }  # fmt: skip
+    return PairTrim(**(fields | changed))
+
+
+def test_the_map_shows_both_targets_with_bands_and_the_way():
+    ax = plot_trim_map(pair_trim())
+    said = legend_words(ax)
+    for word in (r"dip at \$910", "the other", "95 % band", "now:\narm 75.00 mm, width 6.00 mm"):
+        assert word in said
+    assert "after, with its 95 % ellipse:\narm 74.50 mm, width 4.80 mm" in said
+    assert (ax.get_xlabel(), ax.get_ylabel()) == ("arm (mm)", "width (mm)")
+    low, high = ax.get_xlim()
+    assert 70 <= low < 74.2 < 75 < high <= 80
+    ax.figure.canvas.draw()
+
+
+def test_a_map_of_a_match_without_any_value_still_draws():
+    nothing = np.full((2, 5, 5), np.nan)
+    ax = plot_trim_map(pair_trim("match", map_tracked=nothing))
     ax.figure.canvas.draw()
 
 
 def test_nearest_cases_over_the_measurement():
     gamma = curve().measurement.reflection
-    cases = [NearCase(k, {"arm": 0.07 + k / 1e3}, 1.0, 0.01, 2.0 + k, F, gamma) for k in range(3)]
+    units = {"arm": "m", "infill": "1"}
+    cases = [
+        NearCase(k, {"arm": 0.07 + k / 1e3, "infill": 0.4}, 1.0, 0.01, 2.0 + k, F, gamma, units)
+        for k in range(3)
+    ]
     ax = plot_nearest(curve().measurement, cases)
     assert "1: case 0" in legend_words(ax)
-    assert "arm 71 mm" in legend_words(ax)
+    assert "arm 71 mm, infill 0.4" in legend_words(ax)
     assert "invented" in ax.get_title(loc="left")
     ax.figure.canvas.draw()

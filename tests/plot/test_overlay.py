@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from simkit.measured import Comparison, Measurement, ModeLine
-from simkit.plot.overlay import MEASURED_COLOUR, plot_overlay
+from simkit.plot.overlay import MEASURED_COLOUR, plot_overlay, plot_overlay_smith
 from simkit.plot.style import INK, mode_style
 from simkit.response.features import Dip
 
@@ -104,3 +104,15 @@ def test_no_modes_and_a_perfect_match_still_draw():
     ax = plot_overlay(plain)
     assert np.isfinite(ax.lines[0].get_ydata()).all()
     ax.figure.draw_without_rendering()
+
+
+def test_the_smith_chart_marks_both_dips_of_a_mode():
+    ax = plot_overlay_smith(comparison(unpaired=(Dip(1.5e9, 6.0, NAN, NAN),)))
+    low = drawn(ax, mode_style(1).marker)
+    assert [line.get_markerfacecolor() for line in low] == ["white", mode_style(1).colour]
+    assert (low[0].get_xdata()[0], low[0].get_ydata()[0]) == pytest.approx((0.0, 0.05))
+    assert (low[1].get_xdata()[0], low[1].get_ydata()[0]) == pytest.approx((0.5, 0.1))
+    # The third mode has no measured dip.
+    assert len(drawn(ax, mode_style(3).marker)) == 1
+    assert len(drawn(ax, "x")) == 1
+    ax.figure.canvas.draw()

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shutil
 import subprocess
 import sys
 from pathlib import Path
@@ -12,9 +13,10 @@ import xarray as xr
 from matplotlib.figure import Figure
 
 import simkit.plot
+from simkit.cli.run import keep_measured
 from simkit.errors import StoreError
 from simkit.plot import KINDS, save_all, save_plot
-from simkit.plot.save import draw, write
+from simkit.plot.save import draw, measured_builds, write
 from simkit.study import load_study
 
 STUDY = """
@@ -180,3 +182,30 @@ def test_drawing_leaves_pyplot_alone_and_listing_needs_no_matplotlib(tmp_path: P
         "assert 'matplotlib.pyplot' not in sys.modules\n"
     )
     subprocess.run([sys.executable, "-c", code], check=True, timeout=120)
+
+
+SAMPLE = Path(__file__).parents[2] / "studies" / "creek_gauge_build_1.s1p"
+
+
+def test_measured_builds_are_found_in_a_moved_results_folder(tmp_path: Path) -> None:
+    """The study says a name beside it; a run left a copy in the results folder."""
+    tables = '[[measured]]\nfile = "builds/one.s1p"\narm = "75 mm"\n[[measured]]\nfile = "no.s1p"\n'
+    home = tmp_path / "home"
+    (home / "builds").mkdir(parents=True)
+    (home / "gauge.toml").write_text(STUDY + tables, encoding="utf-8")
+    shutil.copy(SAMPLE, home / "builds" / "one.s1p")
+    study = load_study(home / "gauge.toml")
+    moved = tmp_path / "moved" / "gauge"
+    moved.mkdir(parents=True)
+    keep_measured(study, moved)
+    assert [path.name for path in (moved / "measured").iterdir()] == ["one.s1p"]
+    (moved / "study.toml").write_text(STUDY + tables, encoding="utf-8")
+    shutil.rmtree(home)
+    (build,) = measured_builds(load_study(moved / "study.toml"), "arm")
+    assert (build.name, build.value) == ("one", 0.075)
+    assert build.dip_frequency_hz == pytest.approx((902.3e6, 2814.4e6), rel=1e-3)
+    # The build's width is not said: it stands at the nominal one.
+    (build,) = measured_builds(load_study(moved / "study.toml"), "width")
+    assert build.value == 0.008
+    assert measured_builds(load_study(moved / "study.toml"), "carrier.infill") == []
+    assert measured_builds(None, "arm") == []
