@@ -48,5 +48,5 @@ def feedline_parts(antenna: Antenna) -> list[str]:
     doubts = dict.fromkeys(doubt for e in chain.elements for doubt in e.doubts(ends))
     return [
         labelled("Feed line", "\n".join(lines)),
-        *(labelled("Doubtful", doubt) for doubt in doubts),
+        *(labelled("Limit", f"{doubt}; a case with a mode there is doubtful") for doubt in doubts),
     ]

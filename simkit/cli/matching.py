@@ -271,7 +271,7 @@ def write_network(
     check_study(target, text)
     create(target, text)
     for doubt in _doubts(written.chain, nominal):
-        click.echo(f"note: cases will be doubtful: {doubt}", err=True)
+        click.echo(f"note: a case with a mode there will be doubtful: {doubt}", err=True)
     click.echo(f"next: simkit run {target}", err=True)
 
 

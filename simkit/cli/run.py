@@ -95,10 +95,10 @@ def command(
 
 
 def show_remarks(dataset: xr.Dataset, study: Study) -> None:
-    """Print why some cases have no solution, or one to be doubted."""
-    from simkit.cli.status import remarked_cases, remarks_lines
+    """Print why some cases have no solution, or one to be doubted, and notes on the others."""
+    from simkit.cli.status import notes_lines, remarked_cases, remarks_lines
 
-    for line in remarks_lines(remarked_cases(dataset, study)):
+    for line in [*remarks_lines(remarked_cases(dataset, study)), *notes_lines(dataset)]:
         click.echo(line)
 
 

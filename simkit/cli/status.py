@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from typing import TYPE_CHECKING, Any
 
 import click
@@ -19,6 +20,7 @@ if TYPE_CHECKING:
     from simkit.study import Study
 
 _SHOWN = 20
+_NOTES = 3
 
 
 @click.command()
@@ -41,15 +43,16 @@ def command(results: str, as_json: bool, as_csv: bool) -> None:
     from simkit.store import open_results
 
     state = status(results)
-    remarks = []
+    remarks, notes = [], []
     if state.current is not None:
-        remarks = remarked_cases(open_results(results), _copied_study(results))
+        dataset = open_results(results)
+        remarks, notes = remarked_cases(dataset, _copied_study(results)), notes_lines(dataset)
     if form == "csv":
         emit(csv_text(remarks))
     elif form == "json":
         emit(json_text(status_row(state) | {"remarks": remarks}))
     else:
-        emit("\n".join([*status_lines(state), *remarks_lines(remarks)]))
+        emit("\n".join([*status_lines(state), *remarks_lines(remarks), *notes]))
 
 
 def _copied_study(results: str) -> Study | None:
@@ -96,6 +99,21 @@ def remarked_cases(dataset: xr.Dataset, study: Study | None = None) -> list[dict
         for case, code, reason in zip(*columns, strict=True)
         if code not in (Status.WAITING, Status.SOLVED)
     ]
+
+
+def notes_lines(dataset: xr.Dataset) -> list[str]:
+    """Return what is to be known of cases that are simply solved, each sentence once."""
+    from simkit.store.schema import Status
+
+    solved = dataset["status"].values == Status.SOLVED
+    counts = Counter(str(reason) for reason in dataset["reason"].values[solved] if reason)
+    lines = [
+        f"note ({count} case{'s' if count > 1 else ''}): {reason}"
+        for reason, count in counts.most_common(_NOTES)
+    ]
+    if len(counts) > _NOTES:
+        lines.append(f"... and {len(counts) - _NOTES} more notes, in `reason` of the results")
+    return ["", *lines] if lines else []
 
 
 def _with_line(reason: str, study: Study | None, case: int) -> str:

@@ -69,10 +69,30 @@ class Connector:
         """Minima of |reflection| at the connector."""
         return connector_dips(self.chain, self.load)
 
-    @property
-    def doubts(self) -> list[str]:
-        """What to distrust in the feed line."""
-        return list(self.seen.doubts)
+    def judged(self, of_modes: Mapping[str, Any]) -> tuple[list[str], list[str]]:
+        """What to distrust in the feed line, and what to know of it without distrust.
+
+        Parameters
+        ----------
+        of_modes : mapping of str to (M,) float array
+            As for `arrays`.
+
+        Returns
+        -------
+        doubts : list of str
+            Lines used beyond what holds for them where a mode is seen at the connector; anywhere
+            in the band if no mode is.
+        notes : list of str
+            The same where no mode is: the curve is less sure there, the modes' values are not.
+        """
+        place = _places(of_modes)
+        place = place[np.isfinite(place)]
+        if not place.size:
+            return list(self.seen.doubts), []
+        found = [text for element in self.chain.elements for text in element.doubts(place)]
+        if found:
+            return list(dict.fromkeys(found)), []
+        return [], [f"no mode is seen there, but {text}" for text in self.seen.doubts]
 
     def arrays(self, of_modes: Mapping[str, Any]) -> dict[str, Any]:
         """Arrays of the store.
@@ -88,13 +108,8 @@ class Connector:
         dict of str to ndarray
             Per mode at its dip, else, for a mode the feed excites, at its conductance peak.
         """
-        dip = of_modes["dip_frequency"]
-        nowhere = np.full(len(dip), np.nan)
-        peak = np.where(
-            of_modes["driven"] == 1, of_modes.get("pattern_frequency", nowhere), nowhere
-        )
-        place = np.where(np.isfinite(dip), dip, peak)
-        network, mismatch = self._at(place)
+        nowhere = np.full(len(of_modes["dip_frequency"]), np.nan)
+        network, mismatch = self._at(_places(of_modes))
         passed = network * mismatch
         taken_db = 10 * np.log10(np.maximum(passed, LEAST_FACTOR))
         arrays = {
@@ -119,6 +134,14 @@ class Connector:
             network[known] = np.minimum(seen.efficiency, 1.0)[place]
             mismatch[known] = seen.mismatch_factor[place]
         return network, mismatch
+
+
+def _places(of_modes: Mapping[str, Any]) -> FloatArray:
+    """Frequency of each mode's dip, else, if the feed excites it, of its conductance peak, in Hz."""
+    dip = of_modes["dip_frequency"]
+    nowhere = np.full(len(dip), np.nan)
+    peak = np.where(of_modes["driven"] == 1, of_modes.get("pattern_frequency", nowhere), nowhere)
+    return np.where(np.isfinite(dip), dip, peak)
 
 
 def added_later(antenna: Antenna, stored: Mapping[str, Any]) -> dict[str, Any]:

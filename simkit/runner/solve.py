@@ -173,8 +173,9 @@ def _evaluate(
     arrays |= connector.arrays(arrays)
     if antenna.ground is not None and antenna.ground.kind == "earth":
         notes.append("over real earth the power balance is not checked: the earth's part is unseen")
-    doubts = [*_doubts(antenna, grid, sweep, modes, radiation), *connector.doubts]
-    return arrays, doubts, notes
+    of_line, line_notes = connector.judged(arrays)
+    doubts = [*_doubts(antenna, grid, sweep, modes, radiation), *of_line]
+    return arrays, doubts, [*notes, *line_notes]
 
 
 def _doubts(

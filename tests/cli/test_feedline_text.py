@@ -30,7 +30,7 @@ def test_each_item_with_its_line_and_what_it_is_worth(make):
     assert last.split()[1:] == ["shunt", "3.3", "nH,", "Q", "40"]
     assert "lines at 1.650 GHz" in under
     assert "reflections refer to 50 ohm" in under
-    assert doubts[0].startswith("Doubtful      two strips 30 mm wide")
+    assert doubts[0].startswith("Limit         two strips 30 mm wide")
 
 
 def test_nothing_is_said_without_a_feed_line(make):
