@@ -221,7 +221,7 @@ def command(
         write_network(origin, written, found, plane, output)
         chain = written.chain if draw is None else chain
     with origin.pictures(plots) as folder:
-        draw_network(report, chain, found, folder, origin.stem)
+        draw_network(report, chain, found, origin, folder)
 
 
 def _kinds(wanted: tuple[str, ...]) -> tuple[str, ...]:

@@ -119,13 +119,15 @@ class Origin:
 
     def head(self, found: Terminals, start_hz: float, stop_hz: float) -> list[str]:
         """Which antenna this is, what it shows, and what is to be known of the data."""
-        which = self.name
-        if found.case is not None:
-            which += f", case {found.case}"
-            if values := self.values(found.case):
-                which += f": {values}"
         notes = [f"note: {note}" for note in found.notes]
-        return [which, *notes, found.as_text(start_hz, stop_hz)]
+        return [self.which(found.case), *notes, found.as_text(start_hz, stop_hz)]
+
+    def which(self, case: int | None) -> str:
+        """Name of the source with the case and its values."""
+        if case is None:
+            return self.name
+        values = self.values(case)
+        return f"{self.name}, case {case}" + (f": {values}" if values else "")
 
     def values(self, case: int | None) -> str:
         """Swept values of a case in words, empty without any."""
@@ -331,17 +333,22 @@ def create(target: Path, text: str) -> None:
 
 
 def draw_network(
-    report: MatchReport, chain: Chain, found: Terminals, folder: Path, stem: str
+    report: MatchReport, chain: Chain, found: Terminals, origin: Origin, folder: Path
 ) -> None:
     """Draw the Smith path, the return loss before and after, and the schematic."""
     from simkit.plot.matching import plot_match, plot_match_path
     from simkit.plot.schematic import plot_schematic
+    from simkit.plot.style import put_title
 
     band, load = (report.start_hz, report.stop_hz), found.load
-    save(plot_match_path(chain, load, sum(band) / 2, band), folder, f"{stem}_path.png")
-    ax = plot_match(chain, load, *band, span_hz=_span(load, band))
-    save(ax, folder, f"{stem}_reflection.png")
-    save(plot_schematic(chain), folder, f"{stem}_schematic.png")
+    pictures = {
+        "path": plot_match_path(chain, load, sum(band) / 2, band),
+        "reflection": plot_match(chain, load, *band, span_hz=_span(load, band)),
+        "schematic": plot_schematic(chain),
+    }
+    for name, ax in pictures.items():
+        put_title(ax, f"{origin.which(found.case)}\n{ax.get_title(loc='left')}")
+        save(ax, folder, f"{origin.stem}_{name}.png")
 
 
 def _span(load: OnePort, band_hz: tuple[float, float]) -> tuple[float, float]:

@@ -33,7 +33,8 @@ def number_text(value: float | None, digits: int = 1, unit: str = "") -> str:
     """Return a number with fixed digits after the point and its unit, "-" for none."""
     if value is None or not math.isfinite(value):
         return "-"
-    return f"{value:.{digits}f} {unit}".rstrip()
+    # Adding 0 makes of -0, which rounding leaves of what is slightly below, a plain 0.
+    return f"{round(value, digits) + 0.0:.{digits}f} {unit}".rstrip()
 
 
 def quantity_text(value: float, unit: str) -> str:

@@ -93,6 +93,7 @@ def find_matches(
     """
     check_band(start_hz, stop_hz)
     positive("reference resistance", reference_ohm, "ohm")
+    positive("wanted return loss", wanted_db, "dB")
     unknown = [kind for kind in kinds if kind not in MAKERS]
     if unknown or not kinds:
         raise FeedlineError(

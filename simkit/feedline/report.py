@@ -105,7 +105,7 @@ class MatchReport:
         lines = [
             f"match to {self.reference_ohm:g} ohm from {q(self.start_hz, 'Hz')} to "
             f"{q(self.stop_hz, 'Hz')}; without a network at least {self.before_db:.1f} dB "
-            "return loss",
+            f"return loss{', no less than wanted' if self.before_db >= self.wanted_db else ''}",
             *self._table(shown),
         ]
         if more := len(self.designs) - len(shown):

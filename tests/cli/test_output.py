@@ -24,6 +24,14 @@ def test_frequency_text(frequency_hz: float | None, text: str) -> None:
 
 
 @pytest.mark.parametrize(
+    ("value", "digits", "text"),
+    [(-1e-12, 3, "0.000 dB"), (-0.0, 1, "0.0 dB"), (-0.06, 1, "-0.1 dB"), (2.0, 0, "2 dB")],
+)
+def test_number_text_knows_no_negative_zero(value: float, digits: int, text: str) -> None:
+    assert output.number_text(value, digits, "dB") == text
+
+
+@pytest.mark.parametrize(
     ("value", "unit", "text"),
     [(0.0765, "mm", "76.5 mm"), (2.7, "1", "2.7"), (0.0254, "in", "1 in"), (9e8, "MHz", "900 MHz")],
 )

@@ -237,6 +237,10 @@ def test_dimensions_of_a_chain():
 @pytest.mark.parametrize(
     ("call", "match"),
     [
+        (
+            lambda: find_matches(LOAD, 860e6, 870e6, wanted_db=float("nan")),
+            "wanted return loss is nan dB",
+        ),
         (lambda: find_matches(LOAD, 870e6, 870e6), "has no width: give two different frequencies"),
         (lambda: find_matches(LOAD, 880e6, 870e6), "from 880 MHz to 870 MHz has no width"),
         (lambda: find_matches(LOAD, 500e6, 870e6), "known from 780 MHz to 960 MHz"),
