@@ -137,7 +137,7 @@ class Connector:
 
 
 def _places(of_modes: Mapping[str, Any]) -> FloatArray:
-    """Frequency of each mode's dip, else, if the feed excites it, of its conductance peak, in Hz."""
+    """Hertz of each mode's dip, else, if the feed excites it, of its conductance peak."""
     dip = of_modes["dip_frequency"]
     nowhere = np.full(len(dip), np.nan)
     peak = np.where(of_modes["driven"] == 1, of_modes.get("pattern_frequency", nowhere), nowhere)

@@ -170,7 +170,10 @@ def test_lines_that_do_not_hold_over_the_whole_band_are_noted(folder):
     words = ("--kind", "quarter wave", "--line", "two-strips, width=40 mm, separation=20 mm")
     done = run("gauge.toml", *BAND, *words, "--write", "1")
     assert done.exit_code == 0, done.output
-    assert "note: a case with a mode there will be doubtful: two strips 40 mm wide, 20 mm apart" in done.stderr
+    assert (
+        "note: a case with a mode there will be doubtful: two strips 40 mm wide, 20 mm apart"
+        in done.stderr
+    )
     assert "this is used up to 1050 MHz" in done.stderr
 
 

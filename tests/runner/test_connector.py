@@ -197,7 +197,7 @@ def test_a_line_used_beyond_its_model_makes_the_case_doubtful(solve, gauge):
 
 
 @pytest.mark.parametrize(
-    "high_hz, status, words",
+    ("high_hz", "status", "words"),
     [
         (1.5e9, Status.SOLVED, ""),
         (2.6e9, Status.SOLVED, "no mode is seen there, but two strips 15 mm wide"),
