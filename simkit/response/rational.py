@@ -20,7 +20,8 @@ ComplexArray = NDArray[np.complex128]
 
 FIRST_SAMPLES = 8
 VERIFIED_EACH = 9
-"""One sample more is spent on verification for so many: a long band hides a mode more easily."""
+"""One sample more is spent on verification for so many, and two at least: a long band hides a mode
+more easily, and one agreement may be luck."""
 
 SKETCH = 6
 """Random combinations of all currents that the fit looks at."""
@@ -215,7 +216,7 @@ def adaptive_sweep(
         if difference < search.tolerance:
             difference = search.error_at(search.emptiest())
             verified = verified + 1 if difference < search.tolerance else 0
-            if verified * VERIFIED_EACH >= len(search.frequencies) - verified:
+            if verified >= max(2, (len(search.frequencies) - verified) / VERIFIED_EACH):
                 return search.result(converged=True, error=difference)
         elif len(search.frequencies) < most_samples:
             search.add(frequency)
