@@ -22,17 +22,11 @@ from simkit.geometry.chain_line import ChainLine
 from simkit.geometry.checks import check_wires
 from simkit.geometry.dressing import dressing_of
 from simkit.geometry.grid_layout import CORNER_FROM_RAD, Cut, layout
+from simkit.geometry.grid_mesh import gap_pair, grid_rule, source_m
 from simkit.geometry.grid_model import Rails
+from simkit.geometry.line_mesh import fed_pair
 from simkit.geometry.line_model import LineDrawing
-from simkit.geometry.mesh import (
-    MeshPlan,
-    fed_pair,
-    gap_pair,
-    grid_rule,
-    left_share,
-    source_m,
-    split_counts,
-)
+from simkit.geometry.mesh_plan import MeshPlan, left_share, split_counts
 from simkit.geometry.network import chains_of
 from simkit.geometry.paths import turns
 from simkit.geometry.placement import placed

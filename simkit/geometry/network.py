@@ -35,6 +35,7 @@ from simkit.geometry.paths import (
     unit,
 )
 from simkit.geometry.placement import stands_on_plane
+from simkit.geometry.strips import check_path
 from simkit.geometry.wires import FloatArray, StripSpan
 from simkit.study.model import Antenna, CutFeed, EndFeed, Strip
 
@@ -58,8 +59,11 @@ def chains_of(antenna: Antenna, *, tips: bool = True) -> tuple[ChainLine, ...]:
     Raises
     ------
     GeometryError
-        The feed cannot be placed, or strips meet in a way that is not covered.
+        A path has no direction somewhere, the feed cannot be placed, or strips meet in a way that
+        is not covered.
     """
+    for strip in antenna.strips:
+        check_path(strip)
     pieces = [_piece(strip, index) for index, strip in enumerate(antenna.strips)]
     names = {strip.name: index for index, strip in enumerate(antenna.strips)}
     builder = _Builder(antenna, pieces)
@@ -306,7 +310,8 @@ class _Builder:
                     f"the strip that ends on another at {_place(point)} does not reach out from "
                     "under its metal: lengthen its last leg"
                 )
-            moved = end_moved(line, end, joined.points[vertex])
+            # Not `line`: its other end may be on this host, and its joint have moved on just now.
+            moved = end_moved(self.lines[index], end, joined.points[vertex])
             self.lines[index] = _with_joint(moved, end, Joint(other, vertex))
             return
 

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
+import shapely
 from shapely.geometry import MultiPoint, Polygon
 from shapely.ops import nearest_points, unary_union
 
@@ -12,6 +14,8 @@ from simkit.errors import GeometryError
 from simkit.geometry.paths import leg_lengths, same_point, unit
 from simkit.geometry.wires import FloatArray
 from simkit.study.model import Strip
+
+BRIDGE_M = 1e-9
 
 
 def mitre_rows(points: FloatArray) -> FloatArray:
@@ -56,12 +60,21 @@ def outline(strip: Strip) -> Polygon:
         MultiPoint([left[k], left[k + 1], right[k + 1], right[k]]).convex_hull
         for k in range(len(points) - 1)
     ]
-    # A nanometre bridges what rounding leaves between pieces, and is taken off again.
-    grown = unary_union([piece.buffer(1e-9, join_style="mitre") for piece in pieces])
-    shape = grown.buffer(-1e-9, join_style="mitre")
+    shape = _united(pieces)
     if isinstance(shape, Polygon):
         return shape
     raise GeometryError(f"strip {strip.name!r}: its outline falls into several pieces")
+
+
+def _united(pieces: Sequence[Any]) -> Any:
+    # A nanometre bridges what rounding leaves between pieces, and is taken off again.
+    grown = unary_union([piece.buffer(BRIDGE_M, join_style="mitre") for piece in pieces])
+    shape = grown.buffer(-BRIDGE_M, join_style="mitre")
+    sound = isinstance(shape, Polygon) and shape.is_valid
+    if sound and grown.area - shape.area < 2 * BRIDGE_M * grown.length:
+        return shape
+    # Where corners of pieces lie a few nanometres apart, taking it off can lose the whole strip.
+    return shapely.union_all(pieces, grid_size=BRIDGE_M / 10)
 
 
 def developed_length_m(strip: Strip) -> float:

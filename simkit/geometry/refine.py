@@ -15,8 +15,9 @@ from simkit.errors import GeometryError
 from simkit.geometry.chain_line import ChainLine
 from simkit.geometry.dressing import dressing_of
 from simkit.geometry.grid_layout import layout
+from simkit.geometry.grid_mesh import GRID_SHORTEST_RADII, grid_rule, source_m
 from simkit.geometry.line_rules import runs, segment_limits_m
-from simkit.geometry.mesh import GRID_SHORTEST_RADII, ChainPlan, MeshPlan, grid_rule, source_m
+from simkit.geometry.mesh_plan import ChainPlan, MeshPlan
 from simkit.geometry.network import chains_of
 from simkit.geometry.wires import FloatArray
 from simkit.study.model import Antenna

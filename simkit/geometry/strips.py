@@ -107,21 +107,34 @@ def check_strips(antenna: Antenna) -> tuple[str, ...]:
     return tuple(doubts)
 
 
-def _check_strip(strip: Strip) -> None:
+def check_path(strip: Strip) -> None:
+    """Refuse a path that has no direction somewhere.
+
+    Raises
+    ------
+    GeometryError
+        The path or the width is not finite, or two points in a row coincide.
+    """
     points = np.asarray(strip.path_m, dtype=float)
-    widths = np.asarray(strip.widths, dtype=float)
-    if not np.all(np.isfinite(points)) or not np.all(np.isfinite(widths)):
+    if not np.all(np.isfinite(points)) or not np.all(np.isfinite(strip.widths)):
         raise GeometryError(f"strip {strip.name!r}: its path or width is not finite")
-    if widths.min() <= 0:
-        raise GeometryError(
-            f"strip {strip.name!r}: width = {widths.min() * 1e3:.4g} mm must be positive"
-        )
     legs = leg_lengths(points)
     if np.any(legs < 1e-6):
         x, y = points[int(np.argmin(legs))] * 1e3
         raise GeometryError(
             f"strip {strip.name!r}: two path points coincide at ({x:.4g}, {y:.4g}) mm; drop one"
         )
+
+
+def _check_strip(strip: Strip) -> None:
+    check_path(strip)
+    points = np.asarray(strip.path_m, dtype=float)
+    widths = np.asarray(strip.widths, dtype=float)
+    if widths.min() <= 0:
+        raise GeometryError(
+            f"strip {strip.name!r}: width = {widths.min() * 1e3:.4g} mm must be positive"
+        )
+    legs = leg_lengths(points)
     if legs.sum() < widths.max():
         raise GeometryError(
             f"strip {strip.name!r}: a path of {legs.sum() * 1e3:.4g} mm is shorter than its width "

@@ -296,7 +296,7 @@ class Engine:
         from simkit.response.cable import told_apart
         from simkit.response.modes import find_modes
         from simkit.response.ownership import owned_features
-        from simkit.runner.solve import feed_impedance, sweep_currents
+        from simkit.runner.currents import feed_impedance, sweep_currents
 
         grid = build_wires(antenna, self.plan)
         sweep = sweep_currents(antenna, grid)

@@ -19,6 +19,8 @@ from scipy.interpolate import CubicSpline
 from scipy.optimize import brentq, minimize_scalar
 from scipy.signal import find_peaks
 
+from simkit.response.near import Near
+
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 
@@ -39,18 +41,6 @@ LARGEST_RESISTANCE_OHM = 1e5
 """Above this a crossing is a pole of a lossless reactance, not a resonance.
 
 Parallel resonances of strip and wire antennas stay below some ten kiloohm.
-"""
-
-NEIGHBOURS = 6
-"""Samples through which a polynomial stands for the curve between two of them.
-
-It errs with the sixth power of the step: by 1e-6 of the curve where a half width has two samples.
-"""
-
-SPLINE_REACH = 20
-"""Samples on either side on which the slope of a spline depends.
-
-What lies farther away acts on it by 0.27 (2 - sqrt 3) less for each sample: under 1e-11.
 """
 
 RETURN_LOSS_BAND_DB = 10.0
@@ -195,7 +185,7 @@ def find_resonances(frequency_hz: ArrayLike, impedance_ohm: ArrayLike) -> list[R
     reactance_like = curve.samples.imag
     found = []
     for left in _sign_changes(reactance_like):
-        near = _Near(frequency, curve.samples, left)
+        near = Near(frequency, curve.samples, left)
         at = float(brentq(near.imag, *frequency[left : left + 2]))
         resistance = float(curve.impedance(near(at)).real)
         rises = reactance_like[left + 1] > reactance_like[left]
@@ -239,7 +229,7 @@ def conductance_peaks(
     for place, prominence in zip(places, properties["prominences"], strict=True):
         if prominence < min_prominence * conductance[place]:
             continue
-        near = _Near(frequency, curve.samples, int(place))
+        near = Near(frequency, curve.samples, int(place))
         at = _lowest(partial(_against_conductance, curve, near), frequency, int(place))
         found.append(ConductancePeak(at, 1.0 / curve.admittance(near(at)).real))
     return found
@@ -320,33 +310,6 @@ def band_around(
     )
 
 
-def samples_near(place: int) -> slice:
-    """Samples on which the slope of a spline near one of them depends."""
-    return slice(max(0, place - SPLINE_REACH), place + SPLINE_REACH + 2)
-
-
-class _Near:
-    """Polynomial through the samples around one of them, for one step before and behind it."""
-
-    def __init__(self, frequency: FloatArray, samples: ComplexArray, place: int) -> None:
-        first = min(max(0, place - NEIGHBOURS // 2 + 1), max(0, len(frequency) - NEIGHBOURS))
-        part = slice(first, first + NEIGHBOURS)
-        self.centre = float(frequency[place])
-        self.step = float(frequency[part][-1] - frequency[first]) / NEIGHBOURS
-        powers = np.vander((frequency[part] - self.centre) / self.step)
-        self.factors: list[complex] = np.linalg.solve(powers, samples[part]).tolist()
-
-    def __call__(self, frequency_hz: float) -> complex:
-        at = (frequency_hz - self.centre) / self.step
-        value = 0j
-        for factor in self.factors:
-            value = value * at + factor
-        return value
-
-    def imag(self, frequency_hz: float) -> float:
-        return self(frequency_hz).imag
-
-
 class _BoundedCurve:
     """Samples of w = (Z - Rn) / (Z + Rn), Rn the median |Z|, with the way back to Z and Y."""
 
@@ -385,12 +348,12 @@ def _checked(
     return frequency, samples
 
 
-def _against_conductance(curve: _BoundedCurve, near: _Near, frequency_hz: float) -> float:
+def _against_conductance(curve: _BoundedCurve, near: Near, frequency_hz: float) -> float:
     return -curve.admittance(near(frequency_hz)).real
 
 
 def _dip(frequency: FloatArray, gamma: ComplexArray, place: int) -> Dip:
-    curve = _Near(frequency, gamma, place)
+    curve = Near(frequency, gamma, place)
     at = _lowest(lambda f: abs(curve(f)) ** 2, frequency, place)
     return Dip(
         frequency_hz=at,
@@ -401,7 +364,7 @@ def _dip(frequency: FloatArray, gamma: ComplexArray, place: int) -> Dip:
 
 
 def _width(
-    curve: _Near, frequency: FloatArray, gamma: ComplexArray, at: float, limit: float
+    curve: Near, frequency: FloatArray, gamma: ComplexArray, at: float, limit: float
 ) -> float:
     """Width of the band below `limit` around the minimum, which is put among the samples."""
     place = int(np.searchsorted(frequency, at))

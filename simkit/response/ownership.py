@@ -23,9 +23,9 @@ from simkit.response.features import (
     find_resonances,
     impedance_q,
     reflection,
-    samples_near,
 )
 from simkit.response.modes import NaturalMode
+from simkit.response.near import samples_near
 from simkit.response.rational import ComplexArray
 
 LEAST_SHARE = 0.25

@@ -38,7 +38,7 @@ from simkit.measured.variation import Known, Variation
 from simkit.response.features import reflection
 from simkit.response.modes import find_modes
 from simkit.response.ownership import owned_features
-from simkit.runner.solve import feed_impedance, sweep_currents
+from simkit.runner.currents import feed_impedance, sweep_currents
 from simkit.study import load_study
 
 STUDY = """

@@ -15,8 +15,8 @@ from simkit.errors import GeometryError
 from simkit.geometry import build_wires, chains_of, plan_mesh
 from simkit.geometry.checks import check_wires
 from simkit.geometry.grid_layout import CORNER_RUNGS_WIDTHS, JUNCTION_RUNGS_WIDTHS, layout
+from simkit.geometry.grid_mesh import TIE_WAVELENGTHS, grid_rule, source_m
 from simkit.geometry.grid_model import is_even
-from simkit.geometry.mesh import TIE_WAVELENGTHS, grid_rule, source_m
 from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 
 BAND = FrequencyBand(0.3e9, 3e9, 271)

@@ -10,7 +10,7 @@ import numpy as np
 import pytest
 
 from simkit.errors import GeometryError
-from simkit.geometry import chains_of
+from simkit.geometry import build_wires, chains_of, plan_mesh
 from simkit.geometry.chain_line import Joint
 from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 
@@ -204,6 +204,29 @@ class TestBranches:
         bridge = strip("bridge", [(20, 0), (20, 30)])
         lines = chains_of(antenna(BAR, other, bridge, feed=cut("bar", 30)))
         assert (lines[2].start.chain, lines[2].end.chain) == (0, 1)
+
+    @pytest.mark.parametrize("kind", ["line", "grid"])
+    @pytest.mark.parametrize("path", [[(40, 60), (40, 0)], [(40, 0), (40, 60)]])
+    def test_a_bridge_between_two_legs_of_one_strip(self, path, kind):
+        """Drawn from the later leg, its second end moves the joint of its first on by a vertex."""
+        bent = strip("bent", [(0, 0), (80, 0), (80, 60), (0, 60)], 2.0)
+        one = antenna(bent, strip("bridge", path, 2.0), feed=cut("bent", 110, 0.2))
+        host, bridge = chains_of(one)
+        for joint, point in zip((bridge.start, bridge.end), path, strict=True):
+            assert (joint.vertex, 1) in host.tees
+            assert points_mm(host)[joint.vertex] == pytest.approx(point, abs=1e-9)
+        one = replace(one, model=kind, frequency=FrequencyBand(0.3e9, 1e9, 11))
+        grid = build_wires(one, plan_mesh([one]))
+        assert (grid.chains[1].open_start, grid.chains[1].open_end) == (False, False)
+
+    def test_a_bridge_drawn_towards_a_neighbours_leg_keeps_to_its_own_joint(self):
+        """With a stub just before it, the joint left behind would be the stub's."""
+        bent = strip("bent", [(0, 0), (80, 0), (80, 60), (0, 60)], 2.0)
+        stub = strip("stub", [(60, 60), (60, 90)], 2.0)
+        bridge = strip("bridge", [(40, 60), (40, 0)], 2.0)
+        host, _, third = chains_of(antenna(bent, stub, bridge, feed=cut("bent", 110, 0.2)))
+        assert points_mm(host)[third.start.vertex] == pytest.approx([40, 60], abs=1e-9)
+        assert points_mm(host)[third.end.vertex] == pytest.approx([40, 0], abs=1e-9)
 
     def test_two_strips_do_not_end_on_each_other(self):
         """The start of the bar lies on the stem, and that of the stem on the bar."""

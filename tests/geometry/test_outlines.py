@@ -125,8 +125,30 @@ def test_normal_points_to_the_left():
 
 def test_a_path_whose_outline_falls_apart_is_refused(monkeypatch):
     monkeypatch.setattr(
-        "simkit.geometry.outlines.unary_union",
+        "simkit.geometry.outlines._united",
         lambda _: shapely.MultiPoint([(0, 0), (1, 1)]).buffer(0.1),
     )
     with pytest.raises(GeometryError, match="strip 'any': its outline falls into several pieces"):
         outline(strip([(0, 0), (40, 0)], 4))
+
+
+def test_an_outline_of_corners_nanometres_apart_is_not_lost():
+    """Shrinking this one by a nanometre leaves nothing of it, though its area is over 11 cm2."""
+    path = [
+        (0.0, 0.0),
+        (34.61626686197281, -14.666734467430512),
+        (32.25599430807361, -20.23742402850489),
+        (64.35898473224515, -16.27412868401269),
+        (11.30836665266665, -75.29434830225079),
+    ]
+    one = strip(path, 7.3152856750724245)
+    points = np.array(one.path_m)
+    half = one.width_m / 2 * mitre_rows(points)
+    # Its mitred legs, put together on a grid of a picometre.
+    legs = [
+        shapely.MultiPoint([*(points + half)[k : k + 2], *(points - half)[k : k + 2]]).convex_hull
+        for k in range(4)
+    ]
+    together = shapely.union_all(legs, grid_size=1e-12)
+    assert area_mm2(one) == pytest.approx(together.area * 1e6, rel=1e-5)
+    assert outline(one).is_valid

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from simkit.errors import GeometryError
+from simkit.geometry import plan_mesh
 from simkit.geometry.strips import (
     FEED_GAP_WIDTHS,
     SOURCE_SEGMENT_WIDTHS,
@@ -70,6 +71,9 @@ def test_width_that_is_not_positive(make, width):
 def test_path_points_that_coincide(make):
     antenna = make.strip([(0, 0), (30, 0), (30, 0), (60, 0)], 4, 12)
     refused(antenna, r"two path points coincide at \(30, 0\) mm; drop one")
+    # Planning a mesh walks along the paths before their strips are checked.
+    with pytest.raises(GeometryError, match=r"'strip': two path points coincide at \(30, 0\) mm"):
+        plan_mesh([antenna])
 
 
 def test_a_patch_is_not_a_strip(make):

@@ -9,7 +9,8 @@ from scipy.special import gamma
 from simkit.geometry import build_wires, plan_mesh
 from simkit.geometry.strips import equivalent_radius_m
 from simkit.response.pattern import Radiators, far_field, intensity_w_per_sr, radiated_power_w
-from simkit.runner.solve import solve_case, sweep_currents
+from simkit.runner.currents import sweep_currents
+from simkit.runner.solve import solve_case
 from simkit.store.schema import Status
 from simkit.study.model import Antenna, CutFeed, FrequencyBand, Metal, Strip
 

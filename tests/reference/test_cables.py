@@ -20,7 +20,7 @@ from simkit.geometry.cable import JOINT_ERROR
 from simkit.geometry.strips import OPEN_END_WIDTHS
 from simkit.response.cable import cable_level_db
 from simkit.response.modes import find_modes
-from simkit.runner.solve import sweep_currents
+from simkit.runner.currents import sweep_currents
 from simkit.study.model import Antenna, Cable, FrequencyBand
 
 ROWS = tomllib.loads((Path(__file__).parent / "cables.toml").read_text())["cable"]

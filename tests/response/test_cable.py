@@ -16,7 +16,8 @@ from simkit.response.cable import (
     told_apart,
 )
 from simkit.response.modes import NaturalMode, find_modes
-from simkit.runner.solve import feed_impedance, solve_case, sweep_currents
+from simkit.runner.currents import feed_impedance, sweep_currents
+from simkit.runner.solve import solve_case
 from simkit.store.schema import Status
 from simkit.study.model import Cable, CutFeed, FrequencyBand
 

@@ -10,7 +10,7 @@ from simkit.geometry import build_wires, plan_mesh
 from simkit.geometry.wires import Chain, PathPiece, StripSpan
 from simkit.response.modes import NaturalMode, find_modes, half_waves, turned_to_real
 from simkit.response.rational import RationalModel, Sweep, fit_weights
-from simkit.runner.solve import sweep_currents
+from simkit.runner.currents import sweep_currents
 from simkit.study.model import Strip
 
 SEGMENTS = 47

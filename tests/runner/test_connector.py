@@ -13,8 +13,7 @@ from skrf.media import DistributedCircuit
 from simkit.geometry import plan_mesh
 from simkit.response.evaluate import chain_of_case, impedance_at
 from simkit.response.features import find_dips, reflection
-from simkit.runner import run
-from simkit.runner import solve as solve_module
+from simkit.runner import currents, run
 from simkit.runner.identity import case_key
 from simkit.runner.progress import QuietProgress
 from simkit.runner.solve import solve_case
@@ -207,9 +206,9 @@ def test_a_feed_line_that_cannot_be_refuses_the_case(gauge):
 
 def test_the_engine_is_asked_once_for_all_feed_lines_of_an_antenna(make, monkeypatch):
     asked = []
-    wires = solve_module.solve_wires
+    wires = currents.solve_wires
     monkeypatch.setattr(
-        solve_module, "solve_wires", lambda *a, **k: (asked.append(1), wires(*a, **k))[1]
+        currents, "solve_wires", lambda *a, **k: (asked.append(1), wires(*a, **k))[1]
     )
     antenna = make.straight(143.21, 6, 65, band=make.band(0.6e9, 1.4e9, 41))
     plan = plan_mesh([antenna])
@@ -348,7 +347,7 @@ def test_results_of_an_earlier_layout_are_taken_over_and_completed(go, monkeypat
         for name in ADDED_LATER:
             patched.delitem(schema_module.VARIABLES, name)
         patched.setattr("simkit.runner.connector.Connector.arrays", lambda self, of_modes: {})
-        patched.setattr("simkit.runner.solve._cable_arrays", lambda *arguments: {})
+        patched.setattr("simkit.runner.solve.cable_arrays", lambda *arguments: {})
         summary, old = go(TEXT + "# another text\n")
     # They come back at the end, and their order counts in the hash of the layout.
     schema_module.VARIABLES.update({name: schema_module.VARIABLES.pop(name) for name in names})

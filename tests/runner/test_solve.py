@@ -9,7 +9,7 @@ from simkit.engine import pynec
 from simkit.errors import EngineError
 from simkit.geometry import build_wires, plan_mesh
 from simkit.response.features import reflection
-from simkit.runner import solve as solve_module
+from simkit.runner import currents, radiation
 from simkit.runner.identity import MODEL_VERSION, engine_version
 from simkit.runner.solve import solve_case
 from simkit.store.schema import MODES, PHI_DEG, POSITIONS, SAMPLES, THETA_DEG, VARIABLES, Status
@@ -170,7 +170,7 @@ def test_an_engine_error_fails_the_case(make, monkeypatch):
     def fail(*_args, **_options):
         raise EngineError("1 wire at 300 MHz: the engine failed while solving (Unknown exception)")
 
-    monkeypatch.setattr(solve_module, "solve_wires", fail)
+    monkeypatch.setattr(currents, "solve_wires", fail)
     result = solve_case(antenna, plan_mesh([antenna]))
     assert result.status == Status.FAILED
     assert "failed while solving" in result.reason
@@ -182,15 +182,15 @@ def test_a_bug_of_ours_is_not_swallowed(make, monkeypatch):
     def slip(*_args, **_options):
         raise ZeroDivisionError("ours")
 
-    monkeypatch.setattr(solve_module, "solve_wires", slip)
+    monkeypatch.setattr(currents, "solve_wires", slip)
     with pytest.raises(ZeroDivisionError, match="ours"):
         solve_case(antenna, plan_mesh([antenna]))
 
 
 def test_power_that_does_not_balance_makes_a_case_doubtful(make, monkeypatch):
     antenna = make.straight(150, 6, 40)
-    honest = solve_module.radiated_power_w
-    monkeypatch.setattr(solve_module, "radiated_power_w", lambda *a: 1.05 * honest(*a))
+    honest = radiation.radiated_power_w
+    monkeypatch.setattr(radiation, "radiated_power_w", lambda *a: 1.05 * honest(*a))
     result = solve_case(antenna, plan_mesh([antenna]))
     assert result.status == Status.DOUBTFUL
     assert "radiated and lost power are 1.05" in result.reason
@@ -199,7 +199,7 @@ def test_power_that_does_not_balance_makes_a_case_doubtful(make, monkeypatch):
 
 def test_a_sweep_that_does_not_settle_makes_a_case_doubtful(make, monkeypatch):
     antenna = make.straight(150, 6, 40)
-    monkeypatch.setattr(solve_module, "SAMPLES", 10)
+    monkeypatch.setattr(currents, "SAMPLES", 10)
     result = solve_case(antenna, plan_mesh([antenna]))
     assert result.status == Status.DOUBTFUL
     assert "did not settle within 10 samples" in result.reason
@@ -301,9 +301,9 @@ def test_currents_between_the_samples_are_those_of_a_direct_solution(make, model
     """Ten times the sweep's tolerance, which holds between two models of the fit."""
     antenna = replace(make.straight(150, 1.5, 37.5), model=model)
     grid = build_wires(antenna, plan_mesh([antenna]))
-    sweep = solve_module.sweep_currents(antenna, grid)
+    sweep = currents.sweep_currents(antenna, grid)
     for frequency in np.linspace(0.35e9, 2.9e9, 7):
-        wanted = solve_module.solve_wires(
+        wanted = currents.solve_wires(
             grid.wires, grid.radius_m, frequency, [grid.source, grid.probe]
         )
         found = sweep.model(np.array([frequency]))[0].reshape(2, -1)
