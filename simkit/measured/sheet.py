@@ -15,7 +15,6 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import NoReturn
@@ -30,6 +29,7 @@ MAX_PORTS = 32
 _UNITS = ("hz", "khz", "mhz", "ghz")
 _PARAMETERS = ("s", "y", "z", "g", "h")
 _FORMATS = ("db", "ma", "ri")
+_OPTIONS = (*_UNITS, *_PARAMETERS, *_FORMATS)
 _KEPT_KEYWORDS = ("[two-port data order]", "[matrix format]")
 
 
@@ -208,12 +208,13 @@ class _Reader:
         if self.sheet.unit:
             self.sheet.notes.append(f"line {number}: a second option line is ignored")
             return
-        words = iter(content[1:].lower().split())
+        words = content[1:].lower().split()
         self.sheet.unit = "ghz"
-        for word in words:
-            self._option(number, word, words)
+        while words:
+            self._option(number, words.pop(0), words)
 
-    def _option(self, number: int, word: str, rest: Iterator[str]) -> None:
+    def _option(self, number: int, word: str, rest: list[str]) -> None:
+        """Take one word of the option line, and the resistances after an R off the rest."""
         if word in _UNITS:
             self.sheet.unit = word
         elif word in _PARAMETERS:
@@ -221,7 +222,9 @@ class _Reader:
         elif word in _FORMATS:
             self.sheet.form = word
         elif word.startswith("r"):
-            numbers = [word[1:], *rest] if word != "r" else list(rest)
+            numbers = [word[1:]] if word != "r" else []
+            while rest and rest[0] not in _OPTIONS:  # the options may stand in any order
+                numbers.append(rest.pop(0))
             self.sheet.reference_ohm = [self._resistance(number, text) for text in numbers]
         else:
             refuse(

@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from simkit.errors import MeasurementError, StoreError
+from simkit.measured import fit_files
 from simkit.measured.bench_errors import ErrorSizes, with_capacitance
 from simkit.measured.fit import fit
 from simkit.measured.fit_problem import correlation_length, referred
@@ -326,7 +327,7 @@ def test_each_build_is_checked_against_solutions_of_its_own(study, monkeypatch):
         band = (synthetic.BAND[0] / 1.1, synthetic.BAND[1] * 1.1)
         return Surrogate([axis], nodes, band), FormulaEngine(base["arm"])
 
-    monkeypatch.setitem(fit.__globals__, "build_surrogate", build_surrogate)
+    monkeypatch.setattr(fit_files, "build_surrogate", build_surrogate)
     arms = (72e-3, 75.5e-3)
     data = [synthetic.measured(arm, 3.0, seed=k) for k, arm in enumerate(arms)]
     result = fit(study, data, FREE_EPS, builds=[{"arm": arm} for arm in arms])

@@ -12,7 +12,7 @@ from click.testing import CliRunner
 
 import simkit.store
 from simkit.cli import main
-from simkit.measured import fit
+from simkit.measured import fit_files
 from simkit.response.features import reflection
 
 from . import synthetic
@@ -43,8 +43,8 @@ def folder(tmp_path, monkeypatch, formulas):
     (tmp_path / "results").mkdir()
     stored, model = formulas
     monkeypatch.setattr(simkit.store, "open_results", lambda path: stored)
-    monkeypatch.setitem(
-        fit.__globals__, "build_surrogate", lambda *args, **kwargs: (model, FormulaEngine())
+    monkeypatch.setattr(
+        fit_files, "build_surrogate", lambda *args, **kwargs: (model, FormulaEngine())
     )
     return tmp_path
 

@@ -45,6 +45,8 @@ NORMAL_Z = (1 + GAMMA) / (1 - GAMMA)
         ("#MHz S RI", 1e6, as_pairs(GAMMA)),
         ("# RI S kHz R 50.0", 1e3, as_pairs(GAMMA)),
         ("# mhz s ri r50", 1e6, as_pairs(GAMMA)),
+        ("# R 50 S RI MHz", 1e6, as_pairs(GAMMA)),
+        ("# r50 kHz RI", 1e3, as_pairs(GAMMA)),
         ("#", 1e9, [(abs(g), np.angle(g, deg=True)) for g in GAMMA]),
         ("# GHz DB R 50", 1e9, [(20 * np.log10(abs(g)), np.angle(g, deg=True)) for g in GAMMA]),
         ("# GHz Z RI R 50", 1e9, as_pairs(NORMAL_Z)),
