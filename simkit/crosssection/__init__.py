@@ -12,7 +12,7 @@ from simkit.crosssection.dielectrics import (
     printed_layers,
 )
 from simkit.crosssection.plastics import PLASTICS, Plastic, plastic
-from simkit.crosssection.radius import static_radius_m, strip_radius_m
+from simkit.crosssection.radius import charge_parts, static_radius_m, strip_radius_m
 from simkit.crosssection.section import CrossSection, FlatConductor, Layer, single_strip
 
 __all__ = [
@@ -23,6 +23,7 @@ __all__ = [
     "Kappa",
     "Layer",
     "Plastic",
+    "charge_parts",
     "complex_permittivity",
     "kappa",
     "kappa_matrix",

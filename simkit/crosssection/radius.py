@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 from scipy.linalg import solve as solve_dense
 
-from simkit.crosssection.panels import ComplexArray, chain, graded
+from simkit.crosssection.panels import ComplexArray, FloatArray, chain, graded
 from simkit.crosssection.potential import solve
 
 CLOSEST = 2.0
@@ -49,6 +49,45 @@ def static_radius_m(
     ValueError
         If there is no wire, the radius is not positive, or two wires overlap.
     """
+    places, apart, unit_m = _bundle(offsets_m, radius_m, heights_m)
+    if harmonics == 0:
+        charge = _charges(apart, radius_m, unit_m)
+        return float(unit_m * np.exp(-1 / charge.sum()))
+    total = _with_harmonics(places / unit_m, radius_m / unit_m, harmonics)
+    return float(unit_m * np.exp(-1 / total))
+
+
+def charge_parts(offsets_m: ArrayLike, radius_m: float) -> FloatArray:
+    """Parts of a bundle's charge on its wires when all are at one potential.
+
+    A wave that runs along the bundle has its current in the same parts, since in air the magnetic
+    field of the currents looks like the electric field of the charges.
+
+    Parameters
+    ----------
+    offsets_m : array_like, (N,)
+        Places of the wires across the bundle, in any order.
+    radius_m : float
+
+    Returns
+    -------
+    (N,) float array
+        Their sum is 1. The charge lies evenly around every wire.
+
+    Raises
+    ------
+    ValueError
+        As `static_radius_m`.
+    """
+    _, apart, unit_m = _bundle(offsets_m, radius_m, 0.0)
+    charge = _charges(apart, radius_m, unit_m)
+    return np.asarray(charge / charge.sum())
+
+
+def _bundle(
+    offsets_m: ArrayLike, radius_m: float, heights_m: ArrayLike
+) -> tuple[ComplexArray, FloatArray, float]:
+    """Places of the wires, their distances, and a length that is large against the bundle."""
     places = np.asarray(offsets_m, dtype=np.float64) + 1j * np.asarray(heights_m)
     if places.ndim != 1 or not len(places):
         raise ValueError(f"offsets have the shape {places.shape}: one row of wires is needed")
@@ -63,12 +102,14 @@ def static_radius_m(
         )
     # In units in which the whole bundle is well inside the unit circle, as in `potential.solve`.
     unit_m = 2 * float(np.ptp(places.real) + np.ptp(places.imag) + 2 * radius_m)
-    if harmonics == 0:
-        np.fill_diagonal(apart, radius_m)
-        charge = solve_dense(-np.log(apart / unit_m), np.ones(len(places)))
-        return float(unit_m * np.exp(-1 / charge.sum()))
-    total = _with_harmonics(places / unit_m, radius_m / unit_m, harmonics)
-    return float(unit_m * np.exp(-1 / total))
+    return places, apart, unit_m
+
+
+def _charges(apart_m: FloatArray, radius_m: float, unit_m: float) -> FloatArray:
+    """Charges over 2 pi eps0 for 1 V, each lying evenly around its wire; (N,)."""
+    logs = apart_m / unit_m
+    np.fill_diagonal(logs, radius_m / unit_m)
+    return np.asarray(solve_dense(-np.log(logs), np.ones(len(logs))))
 
 
 def _with_harmonics(places: ComplexArray, radius: float, orders: int) -> float:

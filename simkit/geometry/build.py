@@ -217,7 +217,7 @@ def _grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> WireG
     width = float(lines[0].width_before_m[feed.vertex])
     strip_index, position = _strip_places(chains, rails.segments)
     factor, inductance, loss = dressing.wire_loads(
-        np.array(rails.wire_width_m), np.array(rails.wire_share)
+        np.array(rails.wire_width_m), np.array(rails.wire_part)
     )
     return WireGrid(
         wires=tuple(rails.wires),

@@ -60,15 +60,15 @@ class Dressing:
         radius = equivalent_radius_m(width_m, self.metal.thickness_m)
         return float(radius * np.exp(self.kappa(width_m).real))
 
-    def wire_loads(self, width_m: FloatArray, share: FloatArray) -> tuple[FloatArray, ...]:
+    def wire_loads(self, width_m: FloatArray, part: FloatArray) -> tuple[FloatArray, ...]:
         """Series loads of wires.
 
         Parameters
         ----------
         width_m : (W,) float array
             Width of the strip each wire belongs to; 0 for metal drawn across a strip.
-        share : (W,) float array
-            How many wires carry the strip's current side by side.
+        part : (W,) float array
+            Part of the strip's current that the wire carries, over 0.
 
         Returns
         -------
@@ -84,7 +84,7 @@ class Dressing:
                 factor[here] = crowding_per_m(float(width), self.metal.thickness_m)
             inductance[here] = mu_0 / (2 * np.pi) * kappa.real
             loss[here] = -mu_0 / (2 * np.pi) * kappa.imag
-        return factor * share, inductance * share, loss * share
+        return factor / part, inductance / part, loss / part
 
     def with_tips(self, line: ChainLine) -> ChainLine:
         """The chain with what the carrier takes off its open ends, beyond a bare strip's share."""

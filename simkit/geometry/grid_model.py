@@ -37,20 +37,23 @@ class Rails:
     widen: Widen
     wires: list[Wire] = field(default_factory=list)
     wire_width_m: list[float] = field(default_factory=list)
-    wire_share: list[float] = field(default_factory=list)
+    wire_part: list[float] = field(default_factory=list)
     source: list[tuple[int, float]] = field(default_factory=list)
     segments: int = 0
     blocks: dict[tuple[int, int], list[FloatArray]] = field(default_factory=dict)
 
-    def add(self, start: FloatArray, end: FloatArray, count: int, width_m: float) -> list[int]:
-        """A wire of `count` segments; `width_m` is the strip's, 0 for metal across the strip."""
+    def add(
+        self, start: FloatArray, end: FloatArray, count: int, width_m: float = 0.0, rail: int = -1
+    ) -> list[int]:
+        """A wire of `count` segments: a rail of a strip of a width, or metal across."""
         self.wires.append(
             Wire(
                 (float(start[0]), float(start[1]), 0.0), (float(end[0]), float(end[1]), 0.0), count
             )
         )
         self.wire_width_m.append(width_m)
-        self.wire_share.append(float(self.rule.count) if width_m else 0.0)
+        parts = self.rule.current_parts(self.widen(width_m)) if width_m else np.ones(1)
+        self.wire_part.append(float(parts[rail]))
         first = self.segments
         self.segments += count
         return list(range(first, self.segments))
@@ -88,7 +91,7 @@ class Rails:
             shared = (k == 0 and joined[0]) or (last and (joined[1] or line.closed))
             if station.tied and not shared:
                 for a, b in pairwise(rows[k]):
-                    self.add(a, b, 1, 0.0)
+                    self.add(a, b, 1)
         made.sort()
         return Chain(
             segments=np.array([segment for _, segment in made]),
@@ -113,8 +116,8 @@ class Rails:
         middles = (arcs[:-1] + arcs[1:]) / 2
         width = (ends[0].width_m + ends[1].width_m) / 2
         made = []
-        for a, b in zip(first, last, strict=True):
-            segments = self.add(a, b, piece.segments, width)
+        for rail, (a, b) in enumerate(zip(first, last, strict=True)):
+            segments = self.add(a, b, piece.segments, width, rail)
             if piece.volts:
                 self.source.append((segments[0], piece.volts))
             made += [(float(arc), s) for arc, s in zip(middles, segments, strict=True)]
@@ -135,15 +138,15 @@ class Rails:
         made = []
         for j in range(self.rule.count):
             order = np.argsort(before[j])
-            segment = self.add(first[j], nodes[j, order[0]], 1, widths[0])[0]
+            segment = self.add(first[j], nodes[j, order[0]], 1, widths[0], j)[0]
             made.append((float(ends[0].arc_m + corner + before.min()) / 2, segment))
             for k, following in pairwise(order):
-                self.add(nodes[j, k], nodes[j, following], 1, widths[0])
+                self.add(nodes[j, k], nodes[j, following], 1, widths[0], j)
         for k in range(self.rule.count):
             order = np.argsort(after[:, k])
             for j, following in pairwise(order):
-                self.add(nodes[j, k], nodes[following, k], 1, widths[1])
-            segment = self.add(nodes[order[-1], k], last[k], 1, widths[1])[0]
+                self.add(nodes[j, k], nodes[following, k], 1, widths[1], k)
+            segment = self.add(nodes[order[-1], k], last[k], 1, widths[1], k)[0]
             made.append((float(ends[1].arc_m + corner + after.max()) / 2, segment))
         if piece.volts:
             self.source += [(segment, piece.volts) for _, segment in made]
@@ -229,7 +232,12 @@ class Piece:
 def _divided(
     line: ChainLine, intervals: Sequence[Interval], cuts: Sequence[Cut]
 ) -> tuple[list[Station], list[Piece]]:
-    """All stations of a chain and what lies between them."""
+    """All stations of a chain and what lies between them.
+
+    Ties lie where a division into equal segments has nodes: the engine takes segments of unequal
+    length badly where several wires meet. With 8 and 9 segments between ties a third apart, the
+    full-wave mode of a straight strip came out 0.15 % higher, with 4 and 5 0.3 %.
+    """
     stations: list[Station] = [intervals[0].start]
     pieces: list[Piece] = []
     for interval, cut in zip(intervals, cuts, strict=True):
@@ -239,14 +247,15 @@ def _divided(
             continue
         even = is_even(line, interval)
         parts = cut.ties + 1 if even else cut.segments
-        edges = np.linspace(interval.start.arc_m, interval.stop.arc_m, parts + 1)
+        shares = _shares(cut.segments, parts)
+        edges = interval.start.arc_m + interval.length_m * np.cumsum([0, *shares]) / sum(shares)
         tied = {round((k + 1) * parts / (cut.ties + 1)) for k in range(cut.ties)}
         for part in range(1, parts):
             arc = float(edges[part])
             width = float(line.width_at(np.array([arc]))[0])
             stations.append(Station(arc, width, part in tied))
         stations.append(interval.stop)
-        pieces += [Piece(count, interval.fed) for count in _shares(cut.segments, parts)]
+        pieces += [Piece(count, interval.fed) for count in shares]
     return stations, pieces
 
 

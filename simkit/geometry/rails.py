@@ -14,7 +14,7 @@ from functools import lru_cache
 import numpy as np
 from scipy.optimize import brentq
 
-from simkit.crosssection.radius import static_radius_m
+from simkit.crosssection.radius import charge_parts, static_radius_m
 from simkit.errors import GeometryError
 from simkit.geometry.wires import FloatArray
 
@@ -62,6 +62,15 @@ class RailRule:
             reach = CONSTANT_OFFSET_WIDTHS * width_m
             return np.linspace(-reach, reach, self.count)
         return np.array(_spread(self.count, round(width_m / self.radius_m, 9))) * self.radius_m
+
+    def current_parts(self, width_m: float) -> FloatArray:
+        """Part of a strip's current that each rail carries, in the order of the offsets.
+
+        `width_m` is the effective width. A series load z of the strip is divided by these parts,
+        not merely multiplied by the number of rails: every rail then drops the same voltage, z
+        times the whole current, as the strip does, and no wave between the rails is driven.
+        """
+        return np.array(_parts(self, round(width_m / self.radius_m, 9)))
 
     def tip_m(self, width_m: float, effective_m: float, segment_m: float = np.inf) -> float:
         """How far inside an open end the end bar lies, metres.
@@ -112,6 +121,12 @@ def closest_radius_widths(count: int) -> float:
     """Wire radius over width at which rails as close as they may be act like the strip."""
     closest = (np.arange(count) - (count - 1) / 2) * CLOSEST_RADII
     return 1.0 / (4.0 * static_radius_m(closest, 1.0))
+
+
+@lru_cache(maxsize=4096)
+def _parts(rule: RailRule, width_radii: float) -> tuple[float, ...]:
+    offsets_m = rule.offsets_m(width_radii * rule.radius_m)
+    return tuple(map(float, charge_parts(offsets_m, rule.radius_m)))
 
 
 @lru_cache(maxsize=4096)

@@ -7,7 +7,7 @@ from math import gamma
 import numpy as np
 import pytest
 
-from simkit.crosssection import static_radius_m, strip_radius_m
+from simkit.crosssection import charge_parts, static_radius_m, strip_radius_m
 from simkit.crosssection.panels import chain, circle, graded, join
 from simkit.crosssection.potential import solve
 
@@ -31,6 +31,26 @@ def test_ring_of_wires() -> None:
     turn = np.exp(2j * np.pi * np.arange(5) / 5)
     radius = static_radius_m(0.4 * turn.real, 3e-3, heights_m=0.4 * turn.imag)
     assert radius == pytest.approx((5 * 3e-3 * 0.4**4) ** 0.2, rel=1e-12)
+
+
+def test_equal_wires_share_the_charge() -> None:
+    assert charge_parts([-0.65, 0.65], 0.02) == pytest.approx([0.5, 0.5], rel=1e-12)
+
+
+def test_the_middle_of_three_wires_carries_less_than_a_third() -> None:
+    """Equal potentials of wires at -d, 0, d: middle over outer is ln(d / 2a) / ln(d / a)."""
+    ratio = np.log(4.3) / np.log(8.6)
+    wanted = np.array([1, ratio, 1]) / (2 + ratio)
+    assert charge_parts([-4.3, 0.0, 4.3], 0.5) == pytest.approx(wanted, rel=1e-12)
+    assert wanted[1] == pytest.approx(0.253, abs=1e-3)
+
+
+def test_many_wires_carry_the_charge_of_a_strip() -> None:
+    """1 / (pi sqrt(1 - x^2)) over a strip from -1 to 1: a third lies within half of it, exactly."""
+    places = np.linspace(-1, 1, 401)
+    parts = charge_parts(places, 0.0025 / np.pi)
+    # Half of a wire's charge at the limits, and edges that end in wires: 1 %.
+    assert parts[abs(places) < 0.5 - 1e-9].sum() == pytest.approx(1 / 3, rel=0.01)
 
 
 def test_two_wires_that_touch() -> None:

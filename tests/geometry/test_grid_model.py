@@ -14,10 +14,11 @@ import pytest
 from simkit.errors import GeometryError
 from simkit.geometry import build_wires, chains_of, plan_mesh
 from simkit.geometry.checks import check_wires
+from simkit.geometry.dressing import dressing_of
 from simkit.geometry.grid_layout import CORNER_RUNGS_WIDTHS, JUNCTION_RUNGS_WIDTHS, layout
 from simkit.geometry.grid_mesh import TIE_WAVELENGTHS, grid_rule, source_m
 from simkit.geometry.grid_model import is_even
-from simkit.study.model import Antenna, CutFeed, EndFeed, FrequencyBand, Metal, Strip
+from simkit.study.model import Antenna, Carrier, CutFeed, EndFeed, FrequencyBand, Metal, Strip
 
 BAND = FrequencyBand(0.3e9, 3e9, 271)
 
@@ -352,6 +353,39 @@ def test_ties_are_closer_than_the_rails_could_resonate(name):
         assert length <= longest * 1.02
         if interval.stop.tied:
             length = 0.0
+
+
+PLASTIC = Carrier(2.7, 0.01, 2.4e-3, overhang_m=2e-3)
+
+
+def test_segments_between_ties_are_of_one_length():
+    """The engine takes unequal ones badly where several wires meet."""
+    antenna = replace(SHAPES["straight, off centre"], carrier=PLASTIC)
+    plan = plan_mesh([antenna])
+    counts, ties = plan.chains[0].counts, plan.chains[0].ties
+    assert any(t and n % (t + 1) for n, t in zip(counts, ties, strict=True))  # else no proof
+    lengths = [w.segment_m for w in build_wires(antenna, plan).wires if w.start_m[0] != w.end_m[0]]
+    assert len(set(np.round(np.array(lengths) * 1e9))) == len(counts)
+
+
+@pytest.mark.parametrize("name", ["straight", "right angle", "bow tie"])
+def test_rails_drop_the_strips_voltage(name):
+    """Loads side by side make the strip's own, and are smallest where most of the current runs."""
+    antenna = replace(SHAPES[name], carrier=PLASTIC)
+    plan = plan_mesh([antenna])
+    grid = build_wires(antenna, plan)
+    first = [wire.start_m[0] for wire in grid.wires]
+    rails = np.flatnonzero(np.isclose(first, min(first)) & (grid.series_inductance_h_per_m > 0))
+    load = grid.series_inductance_h_per_m[rails]
+    assert len(load) == plan.rails
+    width = (antenna.strips[0].widths[0] + antenna.strips[0].widths[-1]) / 2
+    if name != "bow tie":  # whose first piece is narrower than its end
+        wanted = 2e-7 * dressing_of(antenna).kappa(width).real
+        assert 1 / np.sum(1 / load) == pytest.approx(wanted, rel=1e-9)
+    order = np.argsort([grid.wires[k].start_m[1] for k in rails])
+    load = load[order]
+    assert load == pytest.approx(load[::-1], rel=1e-9)
+    assert load[0] < 0.9 * load[plan.rails // 2]
 
 
 def test_a_leg_too_short_for_its_corner():
