@@ -26,7 +26,7 @@ from simkit.measured.variation import SCALE, Known, Variation
 if TYPE_CHECKING:
     from simkit.study import Study
 
-REWEIGHINGS = 2
+REWEIGHINGS = 3
 """Times the weights are set anew from the residuals."""
 
 SAME_BUILD = 1e-6

@@ -13,6 +13,7 @@ from scipy.stats import qmc
 from simkit.measured.bench_errors import (
     ANALYSER,
     AnalyserErrors,
+    Echoes,
     ErrorSizes,
     warp,
     with_capacitance,
@@ -88,6 +89,8 @@ class FitProblem:
         self.half = np.array([(high - low) / 2 for low, high in pairs])
         self.half_waves = tuple(sorted({n for file in files for n in file.surrogate.half_waves}))
         self.pairings: list[tuple[tuple[int, int], ...]] = [() for _ in files]
+        sweeps = [file.measurement for file in files] if to == "complex" else []
+        self.echoes = [Echoes.of(sweep.frequency_hz, sweep.reflection, sizes) for sweep in sweeps]
 
     @property
     def free(self) -> int:
@@ -172,7 +175,7 @@ class FitProblem:
             if self.to == "magnitude":
                 parts.append(file.weight * (abs(measured) - abs(shown)))
             else:
-                off = file.weight * (measured - shown)
+                off = self.echoes[place].whitened(measured - shown, file.weight)
                 parts += [off.real, off.imag]
         return np.concatenate([*parts, *self.priors(x)])
 
@@ -255,6 +258,8 @@ class FitProblem:
         """Set each file's weight from the size and the correlation length of its residual."""
         for place, file in enumerate(self.files):
             off = file.measurement.reflection - self.shown(x, place)
+            if self.to == "complex":
+                off = self.echoes[place].removed(off, file.weight)
             size = max(float(np.sqrt(np.mean(np.abs(off) ** 2) / 2)), file.noise, LEAST_RESIDUAL)
             alike = max(correlation_length(off), len(off) / INDEPENDENT)
             self.files[place] = replace(file, weight=float(1 / (size * np.sqrt(alike))))
