@@ -172,6 +172,7 @@ def as_data(result: FitResult) -> dict[str, Any]:
                 "high": v.high,
                 "standard_error": v.sigma,
                 "at_bound": v.at_bound,
+                "interval_is_bounds": all(v.is_cut),
             }
             for v in result.values
         ],
@@ -183,6 +184,8 @@ def as_data(result: FitResult) -> dict[str, Any]:
                 "exponent": c.exponent,
                 "product": c.product,
                 "relative_standard_error": c.relative_sigma,
+                "standard_errors_alone": list(c.alone_sigma),
+                "times_narrower_if_one_is_known": c.times_narrower,
             }
             for c in result.confounded
         ],

@@ -237,6 +237,7 @@ def as_data(trim: Trim) -> dict[str, Any]:
         "slope_hz_per_unit": trim.slope_hz_per_m,
         "first_cut": trim.first_step if trim.in_steps else trim.change,
         "adds_metal": trim.adds_metal,
+        "supported_by_a_dip": trim.is_measured,
         "band_low_hz": trim.band_hz[0],
         "band_high_hz": trim.band_hz[1],
         "band_return_loss_now_db": trim.band_return_loss_now_db,
@@ -277,6 +278,7 @@ def pair_data(trim: PairTrim) -> dict[str, Any]:
         "angle_sine": trim.angle_sine,
         "well_conditioned": trim.well_conditioned,
         "adds_metal": trim.adds_metal,
+        "unsupported_modes": list(trim.unmeasured),
         "gains_dbi": [list(pair) for pair in trim.gains_dbi],
         "modes": _modes_data(trim.modes),
     }

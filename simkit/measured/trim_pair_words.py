@@ -8,7 +8,13 @@ import numpy as np
 
 from simkit.measured.fit_result import LIMIT_95
 from simkit.measured.fit_words import aligned, number_text
-from simkit.measured.trim_words import change_text, length_text, mode_lines, unit_si
+from simkit.measured.trim_words import (
+    change_text,
+    length_text,
+    mode_lines,
+    unit_si,
+    unsupported_line,
+)
 from simkit.study.units import as_text
 
 if TYPE_CHECKING:
@@ -80,7 +86,7 @@ def _shown(trim: PairTrim, target: int, value: float) -> str:
 
 def advice(trim: PairTrim) -> list[str]:
     """What to do, and what to beware of."""
-    lines = [*_conditions(trim)]
+    lines = [*map(unsupported_line, trim.unmeasured), *_conditions(trim)]
     for label, gains in dict(zip(trim.mode_labels, trim.gains_dbi, strict=False)).items():
         if np.isfinite(gains).all():
             lines.append(

@@ -65,7 +65,18 @@ def mode_lines(modes: Sequence[ModeChange]) -> list[str]:
 
 def advice(trim: Trim) -> list[str]:
     """What to do, and what to beware of."""
-    return [*_what_to_expect(trim), _what_to_do(trim), *_side_effects(trim)]
+    unsupported = [] if trim.is_measured else [unsupported_line(trim.label)]
+    return [*unsupported, *_what_to_expect(trim), _what_to_do(trim), *_side_effects(trim)]
+
+
+def unsupported_line(label: str) -> str:
+    """Mark a change whose mode was not measured."""
+    mode = label.removesuffix(" wave")
+    return (
+        f"UNSUPPORTED: no measured dip is known to be of the {label} mode, so this change rests on "
+        "the model and the other modes alone; if one is, say so with "
+        f"--pin '{mode}=FREQUENCY', else sweep where it should be before you cut"
+    )
 
 
 def _what_to_expect(trim: Trim) -> list[str]:
