@@ -17,6 +17,7 @@ from simkit.cli.fitting import (
     plots_folder,
     save,
 )
+from simkit.cli.folder import says_damage
 from simkit.cli.options import csv_option, json_option, one_format, study_argument
 from simkit.cli.output import csv_text, emit, json_text
 from simkit.errors import StoreError
@@ -42,6 +43,7 @@ FITTED_HEAD = "Fitted to "
     metavar="FILE",
     help="Where to write the fitted study; STUDY_fitted.toml beside it if left out.",
 )
+@says_damage
 def command(
     study: str,
     measured: tuple[str, ...],

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from simkit.cli.fitting import fitted, measured_argument, options_of_fit, plots_folder, save
+from simkit.cli.folder import says_damage
 from simkit.cli.options import csv_option, json_option, one_format, study_argument
 from simkit.cli.output import csv_text, emit, json_text
 from simkit.errors import MeasurementError
@@ -58,6 +59,7 @@ DEFAULT_SCALE = "scale=0.93..1.07"
 @options_of_fit
 @json_option
 @csv_option
+@says_damage
 def command(
     study: str,
     measured: tuple[str, ...],

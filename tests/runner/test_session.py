@@ -324,6 +324,16 @@ def test_damaged_results_are_solved_anew_on_request(go, direct, make_study, mark
     assert "cases 2 to 3: damaged, solved anew" in again.results_dir.joinpath("log.txt").read_text()
 
 
+def test_results_that_are_gone_are_solved_anew_on_request(go, direct, make_study):
+    study = make_study(ARMS)
+    summary = go(study, block_size=2)
+    before = open_results(summary.results_dir).load()
+    (summary.results_dir / "store.zarr" / "impedance" / "c.1.0").unlink()
+    assert damaged_cases(summary.results_dir) == [range(2, 4)]
+    assert go(study, retry=True).solved == 2
+    assert before.identical(open_results(summary.results_dir).load())
+
+
 def test_every_variable_of_a_refused_case_is_at_its_fill(go, direct, make_study):
     summary = go(make_study([60, 61], [8, 0], method="list"))
     case = open_results(summary.results_dir).isel(case=1).load()
