@@ -21,6 +21,7 @@ from simkit.feedline import (
 )
 from simkit.plot.matching import folded, plot_match, plot_match_path
 from simkit.plot.schematic import plot_schematic
+from simkit.plot.style import QUIET
 
 F = np.linspace(800e6, 940e6, 29)
 LOAD = OnePort.from_impedance(F, 30 + 1j * np.linspace(-60, 90, 29))
@@ -55,6 +56,38 @@ def test_path_runs_from_terminals_to_connector():
     assert any("shunt 2.2\u00a0pF" in text for text in words)
     assert ax.get_title(loc="left") == "from terminals to connector at 868 MHz"
     ax.figure.canvas.draw()
+
+
+@pytest.mark.parametrize(
+    ("load_ohm", "sizes"),
+    [
+        (58 + 8j, (24, 5.9, 80)),  # half way along, the 2 would cover the 50
+        (48 + 14j, (66, 6.4, 29)),
+        (102 - 46j, (64, 13.0, 25)),  # VSWR 2
+        (82 + 81j, (20, 6.7, 76)),  # the 1
+        (148 - 20j, (45, 12.9, 23)),  # 25
+    ],
+)
+def test_numbers_of_a_path_cover_no_mark_of_the_chart(load_ohm, sizes):
+    load = OnePort.from_impedance(F, np.full(len(F), load_ohm))
+    line, (section, coil, stub) = UniformLine(50.0), sizes
+    chain = Chain(
+        (
+            LineSection(line, section * 1e-3),
+            Lumped("L", coil * 1e-9, "series"),
+            Stub(line, stub * 1e-3),
+        )
+    )
+    ax = plot_match_path(chain, load, 868e6)
+    ax.figure.draw_without_rendering()
+    texts = [text for text in ax.texts if text.get_text().strip()]
+    numbers = [text for text in texts if text.get_color() != QUIET and len(text.get_text()) == 1]
+    assert [text.get_text() for text in numbers] == ["1", "2", "3"]
+    for number in numbers:
+        box = number.get_window_extent()
+        for other in texts:
+            if other is not number:
+                assert not box.overlaps(other.get_window_extent()), other.get_text()
 
 
 def test_path_of_an_empty_chain_and_of_a_matched_load():
