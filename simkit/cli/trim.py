@@ -135,6 +135,7 @@ def _by_choice(
     """One target; each dimension is a way to reach it."""
     from simkit.measured.trim import trim_fitted, with_gain
     from simkit.measured.trim_words import factor_lines
+    from simkit.plot.fit import put_source
     from simkit.plot.trim import plot_trim
 
     trims, refused = [], []
@@ -160,7 +161,9 @@ def _by_choice(
     for reason in refused:
         click.echo(f"not by this one: {reason}", err=True)
     for trim in trims:
-        save(plot_trim(trim), folder, f"trim_{_file_word(trim.name)}.png")
+        ax = plot_trim(trim)
+        put_source(ax, result, result.curves[-1])
+        save(ax, folder, f"trim_{_file_word(trim.name)}.png")
 
 
 def _together(
@@ -173,6 +176,7 @@ def _together(
     """Two targets by two dimensions at once."""
     from simkit.measured.trim_pair import trim_pair
     from simkit.measured.trim_pair_words import pair_factor_lines
+    from simkit.plot.fit import put_source
     from simkit.plot.trim_map import plot_trim_map
 
     trim = trim_pair(result, aims, reaches, gain=True)
@@ -185,7 +189,9 @@ def _together(
         text = [result.as_text(), trim.as_text(), f"for your own dimensioning sheet:\n{factors}"]
         emit("\n\n".join(text))
     words = "_".join(_file_word(name) for name in trim.names)
-    save(plot_trim_map(trim), folder, f"trim_{words}.png")
+    ax = plot_trim_map(trim)
+    put_source(ax, result, result.curves[-1])
+    save(ax, folder, f"trim_{words}.png")
 
 
 def _file_word(name: str) -> str:

@@ -49,10 +49,10 @@ def _scaling_lines(trim: Trim) -> list[str]:
 
 def mode_lines(modes: Sequence[ModeChange]) -> list[str]:
     """What happens to every mode's dip and match."""
-    rows = [("  mode", "dip now, MHz", "then, MHz", "return loss now, dB", "then, dB")]
+    rows = [("mode", "dip now, MHz", "then, MHz", "return loss now, dB", "then, dB")]
     rows += [
         (
-            f"  {mode.label}",
+            mode.label,
             number_text(mode.before_hz / 1e6, 1),
             number_text(mode.after_hz / 1e6, 1),
             number_text(mode.before_return_loss_db, 1),
@@ -60,7 +60,12 @@ def mode_lines(modes: Sequence[ModeChange]) -> list[str]:
         )
         for mode in modes
     ]
-    return aligned(rows)
+    return indented(rows)
+
+
+def indented(rows: Sequence[tuple[str, ...]]) -> list[str]:
+    """Set a table that belongs to the line above it."""
+    return [f"  {line}" for line in aligned(rows)]
 
 
 def advice(trim: Trim) -> list[str]:

@@ -61,7 +61,7 @@ def test_path_runs_from_terminals_to_connector():
 @pytest.mark.parametrize(
     ("load_ohm", "sizes"),
     [
-        (58 + 8j, (24, 5.9, 80)),  # half way along, the 2 would cover the 50
+        (58 + 8j, (24, 5.9, 80)),  # half way along, a number would cover the 50
         (48 + 14j, (66, 6.4, 29)),
         (102 - 46j, (64, 13.0, 25)),  # VSWR 2
         (82 + 81j, (20, 6.7, 76)),  # the 1
