@@ -211,17 +211,16 @@ def adaptive_sweep(
     """
     search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed, observe)
     verified = 0
+    error = np.inf
     while True:
-        frequency, difference = search.where_models_differ()
-        if difference < search.tolerance:
-            difference = search.error_at(search.emptiest())
-            verified = verified + 1 if difference < search.tolerance else 0
-            if verified >= max(2, (len(search.frequencies) - verified) / VERIFIED_EACH):
-                return search.result(converged=True, error=difference)
-        elif len(search.frequencies) < most_samples:
-            search.add(frequency)
+        frequency, difference = search.where_in_doubt()
+        settled = difference < search.tolerance
+        if settled and verified >= max(2, (len(search.frequencies) - verified) / VERIFIED_EACH):
+            return search.result(converged=True, error=error)
         if len(search.frequencies) >= most_samples:
-            return search.result(converged=False, error=difference)
+            return search.result(converged=False, error=max(error, difference))
+        error = search.error_at(search.emptiest() if settled else frequency)
+        verified = verified + 1 if error < search.tolerance else 0
 
 
 class _Search:
@@ -254,6 +253,7 @@ class _Search:
         self.fits: dict[tuple[int, ...], ComplexArray] = {}
         # The first comparison is with the fit that lacks the sample in the middle of the band.
         middle = FIRST_SAMPLES // 2
+        self.newest = self.frequencies[middle]
         self.before = self._on_candidates([k for k in range(FIRST_SAMPLES) if k != middle])
         self.now = self._on_candidates(range(FIRST_SAMPLES))
 
@@ -279,15 +279,27 @@ class _Search:
     def scale(self) -> float:
         return float(np.median(np.linalg.norm(self.now, axis=1)))
 
-    def where_models_differ(self) -> tuple[float, float]:
-        difference = np.linalg.norm(self.now - self.before, axis=1) / self.scale()
-        worst = float(difference.max())
+    def where_in_doubt(self) -> tuple[float, float]:
+        """Where the next sample tells most, and by how much the model may be off at worst.
+
+        The last two models differ most about the sample that only the later one knows. There it is
+        exact, so up to the next sample around their difference counts in proportion to the
+        distance. A difference beyond the currents themselves says no more than that neither model
+        is any good; such places are judged by how far the samples are.
+        """
         taken = np.array(self.frequencies)
-        near = np.min(abs(self.candidates[:, None] - taken[None]), axis=1)
-        difference[near < 1e-3 * (self.stop_hz - self.start_hz)] = -1.0
-        return float(self.candidates[int(np.argmax(difference))]), worst
+        away = abs(self.candidates - self.newest)
+        reach = np.min(abs(taken - self.newest)[taken != self.newest])
+        difference = np.linalg.norm(self.now - self.before, axis=1) / self.scale()
+        difference *= np.minimum(away / reach, 1.0)
+        empty = np.min(abs(self.candidates[:, None] - taken), axis=1)
+        difference[empty < 1e-3 * (self.stop_hz - self.start_hz)] = -1.0
+        worst = float(difference.max())
+        rank = np.minimum(difference, 1.0) * empty if worst > 1.0 else difference
+        return float(self.candidates[int(np.argmax(rank))]), worst
 
     def add(self, frequency_hz: float) -> None:
+        self.newest = frequency_hz
         self.frequencies.append(frequency_hz)
         self.values.append(self.solve(frequency_hz))
         self.sketch.append(self.values[-1] @ self.projection)
