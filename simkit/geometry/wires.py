@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -71,6 +72,10 @@ class Chain:
 
     def places(self) -> tuple[FloatArray, IntArray]:
         """Distinct arc lengths, and for each segment the number of its own."""
+        return self._places
+
+    @cached_property
+    def _places(self) -> tuple[FloatArray, IntArray]:
         arcs, number = np.unique(np.round(self.arc_m, 9), return_inverse=True)
         return arcs, number
 
