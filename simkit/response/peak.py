@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import cache
 
 import numpy as np
@@ -43,7 +43,7 @@ def peak_direction(
     def intensity(directions: Directions) -> FloatArray:
         return intensity_w_per_sr(*field_towards(radiators, current, frequency_hz, directions))
 
-    found = _climbed(intensity, [*_plane_tops(intensity), _Climb(*first, step_deg, EVERYWHERE)])
+    found = _climbed(intensity, [*_plane_tops(intensity), _Climb(*first, step_deg, FIRST)])
     largest = max(power for _, _, power in found)
     return next(peak for peak in found if peak[2] >= largest * ALIKE)
 
@@ -67,10 +67,12 @@ class _Moves:
     """Places to try around one, (2, N) in steps of theta and phi, and the paraboloid through them.
 
     The paraboloid's six factors, of 1, t, p, t^2/2, p^2/2 and tp, are `fit` times the values.
+    Neighbouring places are `apart`, in steps: what to go on with.
     """
 
-    def __init__(self, steps: FloatArray) -> None:
+    def __init__(self, steps: FloatArray, apart: float) -> None:
         theta, phi = self.steps = steps
+        self.apart = apart
         self.away = abs(steps).sum(axis=0)
         terms = [np.ones_like(theta), theta, phi, theta**2 / 2, phi**2 / 2, theta * phi]
         self.fit = np.linalg.pinv(np.stack(terms, axis=1))
@@ -84,10 +86,16 @@ class _Moves:
         return np.asarray(np.clip(axes[:, down] @ (uphill / -bend[down]), -1.0, 1.0))
 
 
+def _square(count: int) -> _Moves:
+    side = np.linspace(-1.0, 1.0, count)
+    return _Moves(np.stack([grid.ravel() for grid in np.meshgrid(side, side)]), 2 / (count - 1))
+
+
 _FIVE = np.linspace(-1.0, 1.0, 5)
-ALONG_PHI = _Moves(np.stack([0 * _FIVE, _FIVE]))
-ALONG_THETA = _Moves(np.stack([_FIVE, 0 * _FIVE]))
-EVERYWHERE = _Moves(np.stack([grid.ravel() for grid in np.meshgrid(_FIVE, _FIVE)]))
+ALONG_PHI = _Moves(np.stack([0 * _FIVE, _FIVE]), 0.5)
+ALONG_THETA = _Moves(np.stack([_FIVE, 0 * _FIVE]), 0.5)
+FIRST, THEN = _square(9), _square(5)
+"""In all directions: round the largest value of a coarse grid, and later."""
 
 
 @dataclass(frozen=True)
@@ -106,7 +114,7 @@ class _Climb:
         return np.asarray(centre + self.step_deg * self.moves.steps)
 
     def finer(self, directions: FloatArray, power: FloatArray) -> _Climb:
-        """Go on from the largest value with half the step."""
+        """Go on from the largest value: the maximum lies between its neighbours."""
         reachable = np.where((directions[0] >= 0) & (directions[0] <= 180), power, -np.inf)
         # Equal values are settled for the one that moves least.
         best = reachable >= reachable.max() * (1 - 1e-9)
@@ -114,9 +122,10 @@ class _Climb:
         return self.at(directions[:, top], float(power[top]))
 
     def at(self, direction: FloatArray, power: float) -> _Climb:
-        """The same with half the step from another direction, whose intensity is known."""
+        """The same from another direction, whose intensity is known, and with smaller steps."""
         theta, phi = (float(angle) for angle in direction.ravel())
-        return replace(self, theta_deg=theta, phi_deg=phi, step_deg=self.step_deg / 2, power=power)
+        moves = THEN if self.moves is FIRST else self.moves
+        return _Climb(theta, phi, self.step_deg * self.moves.apart, moves, power)
 
     def vertex(self, power: FloatArray) -> FloatArray:
         """(2, 1) direction of the maximum by the intensities around."""
