@@ -81,9 +81,9 @@ class Directions:
         sin_p, cos_p = np.sin(phi_rad), np.cos(phi_rad)
         return cls(
             theta_rad,
-            np.stack([sin_t * cos_p, sin_t * sin_p, cos_t], axis=1),
-            np.stack([cos_t * cos_p, cos_t * sin_p, -sin_t], axis=1),
-            np.stack([-sin_p, cos_p, np.zeros_like(sin_p)], axis=1),
+            np.array([sin_t * cos_p, sin_t * sin_p, cos_t]).T,
+            np.array([cos_t * cos_p, cos_t * sin_p, -sin_t]).T,
+            np.array([-sin_p, cos_p, np.zeros_like(sin_p)]).T,
         )
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cache
@@ -73,17 +74,25 @@ class _Moves:
     def __init__(self, steps: FloatArray, apart: float) -> None:
         theta, phi = self.steps = steps
         self.apart = apart
-        self.away = abs(steps).sum(axis=0)
+        # Equal values are settled for the one that moves least.
+        self.liking = 1 - 1e-9 * abs(steps).sum(axis=0)
         terms = [np.ones_like(theta), theta, phi, theta**2 / 2, phi**2 / 2, theta * phi]
         self.fit = np.linalg.pinv(np.stack(terms, axis=1))
 
-    def vertex(self, power: FloatArray) -> FloatArray:
-        """(2,) steps to the maximum of the paraboloid, none along what does not bend down."""
-        level, along_theta, along_phi, tt, pp, tp = self.fit @ power
-        bend, axes = np.linalg.eigh(np.array([[tt, tp], [tp, pp]]))
-        down = bend < -LEAST_BEND * level
-        uphill = axes[:, down].T @ np.array([along_theta, along_phi])
-        return np.asarray(np.clip(axes[:, down] @ (uphill / -bend[down]), -1.0, 1.0))
+    def vertex(self, power: FloatArray) -> tuple[float, float]:
+        """Steps of theta and phi to the paraboloid's maximum, none along what does not bend down.
+
+        One step at most. In plain numbers, because this is done often for little.
+        """
+        level, along_theta, along_phi, tt, pp, tp = (self.fit @ power).tolist()
+        angle = math.atan2(2 * tp, tt - pp) / 2
+        theta = phi = 0.0
+        for u, v in ((math.cos(angle), math.sin(angle)), (-math.sin(angle), math.cos(angle))):
+            bend = tt * u * u + 2 * tp * u * v + pp * v * v
+            if bend < -LEAST_BEND * level:
+                way = -(u * along_theta + v * along_phi) / bend
+                theta, phi = theta + way * u, phi + way * v
+        return min(max(theta, -1.0), 1.0), min(max(phi, -1.0), 1.0)
 
 
 def _square(count: int) -> _Moves:
@@ -115,10 +124,10 @@ class _Climb:
 
     def finer(self, directions: FloatArray, power: FloatArray) -> _Climb:
         """Go on from the largest value: the maximum lies between its neighbours."""
-        reachable = np.where((directions[0] >= 0) & (directions[0] <= 180), power, -np.inf)
-        # Equal values are settled for the one that moves least.
-        best = reachable >= reachable.max() * (1 - 1e-9)
-        top = int(np.argmin(np.where(best, self.moves.away, np.inf)))
+        liked = power * self.moves.liking
+        if not self.step_deg <= self.theta_deg <= 180 - self.step_deg:
+            liked[(directions[0] < 0) | (directions[0] > 180)] = -np.inf
+        top = int(np.argmax(liked))
         return self.at(directions[:, top], float(power[top]))
 
     def at(self, direction: FloatArray, power: float) -> _Climb:
@@ -129,8 +138,9 @@ class _Climb:
 
     def vertex(self, power: FloatArray) -> FloatArray:
         """(2, 1) direction of the maximum by the intensities around."""
-        theta, phi = self.step_deg * self.moves.vertex(power)
-        return np.array([[np.clip(self.theta_deg + theta, 0.0, 180.0)], [self.phi_deg + phi]])
+        theta, phi = self.moves.vertex(power)
+        theta = min(max(self.theta_deg + self.step_deg * theta, 0.0), 180.0)
+        return np.array([[theta], [self.phi_deg + self.step_deg * phi]])
 
 
 @cache
