@@ -392,9 +392,8 @@ def _lowest(function: Callable[[float], float], frequency: FloatArray, place: in
 def _sign_changes(values: FloatArray) -> list[int]:
     """Indices i with a change of sign from i to i + 1; an exact zero counts as what preceded."""
     sign = np.sign(values)
-    for i in range(1, len(sign)):
-        if sign[i] == 0:
-            sign[i] = sign[i - 1]
+    for i in np.flatnonzero(sign[1:] == 0) + 1:
+        sign[i] = sign[i - 1]
     return [int(i) for i in np.flatnonzero(sign[:-1] * sign[1:] < 0)]
 
 
