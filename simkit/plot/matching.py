@@ -23,6 +23,7 @@ from simkit.plot.style import (
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
+    from matplotlib.lines import Line2D
     from matplotlib.text import Text
     from numpy.typing import NDArray
 
@@ -30,9 +31,12 @@ if TYPE_CHECKING:
     from simkit.feedline.oneport import OnePort
 
 BAND = "#e8eef2"
-BESIDE = 0.06
-"""How far from its way an element's number stands, in reflection; and how far from other texts."""
+BESIDE = (0.06, 0.09, 0.13)
+"""How far from its way an element's number stands, in reflection, the best first."""
 ROOM = 0.11
+"""How far from other texts."""
+CURVE_ROOM = 0.05
+"""How far from curves and marks."""
 NUMBER_AT = (0.5, 0.4, 0.6, 0.3, 0.7, 0.2, 0.8)
 """Parts of a way at which its number may stand, the best first."""
 
@@ -78,6 +82,7 @@ def plot_match_path(
     start = load.at([frequency_hz]).referred_to(chain.reference_ohm).reflection[0]
     _mark(ax, start, "s", "terminals")
     end = start
+    drawn = []
     for number, (element, way) in enumerate(chain.path(load, frequency_hz), start=1):
         style = mode_style(number)
         ax.plot(
@@ -89,9 +94,11 @@ def plot_match_path(
             zorder=4,
             label=f"{number}  {folded(element.about)}",
         )
-        _arrow(ax, way, style.colour, str(number))
+        drawn.append((way, style.colour, str(number)))
         end = way[-1]
     _mark(ax, end, "o", "connector")
+    for way, colour, text in drawn:  # when all is there that a number must not cover
+        _arrow(ax, way, colour, text)
     legend_beside(ax, "from the antenna")
     return ax
 
@@ -147,14 +154,23 @@ def _step(
 
 
 def _free_place(ax: Axes, steps: list[tuple[complex, complex]]) -> complex:
-    """Where beside a way, half way along if that will do, no text of the chart is covered."""
-    taken = [_middle(text) for text in ax.texts if text.get_text()]
+    """Where beside a way, half way along if that will do, no text, curve or mark is covered."""
+    texts = np.array([_middle(text) for text in ax.texts if text.get_text()])
+    curves = np.concatenate([_points(line) for line in ax.lines])
     places = []
-    for tail, head in steps:
-        across = 1j * (head - tail) / max(abs(head - tail), 1e-12) * BESIDE
-        places += sorted((head + across, head - across), key=abs)
-    rooms = [min((abs(place - other) for other in taken), default=ROOM) for place in places]
-    return places[int(np.argmax(np.minimum(rooms, ROOM)))]
+    for away in BESIDE:
+        for tail, head in steps:
+            across = 1j * (head - tail) / max(abs(head - tail), 1e-12) * away
+            places += sorted((head + across, head - across), key=abs)
+    rooms = [
+        min(np.abs(place - texts).min() / ROOM, np.abs(place - curves).min() / CURVE_ROOM, 1.0)
+        for place in places
+    ]
+    return places[int(np.argmax(rooms))]
+
+
+def _points(line: Line2D) -> NDArray[np.complex128]:
+    return np.asarray(line.get_xdata(), float) + 1j * np.asarray(line.get_ydata(), float)
 
 
 def _middle(text: Text) -> complex:

@@ -135,7 +135,7 @@ def _draw_target(
     known = seen[np.isfinite(seen)]
     if not known.size or np.ptp(known) == 0:
         return
-    levels = MaxNLocator(LEVELS).tick_values(known.min(), known.max())
+    levels = np.asarray(MaxNLocator(LEVELS).tick_values(known.min(), known.max()))
     faint = ax.contour(x, y, table, levels=levels, colors=colour, linewidths=0.7, alpha=0.5)
     height = bottom + LABEL_HEIGHTS[k] * (top - bottom)
     across = np.linspace(left, right, 200)

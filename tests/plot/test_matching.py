@@ -90,6 +90,27 @@ def test_numbers_of_a_path_cover_no_mark_of_the_chart(load_ohm, sizes):
                 assert not box.overlaps(other.get_window_extent()), other.get_text()
 
 
+def test_numbers_of_a_path_cover_neither_curves_nor_marks():
+    """A short way that ends in the middle of the chart, among the curves over the band."""
+    band = np.linspace(845e6, 890e6, 29)
+    load = OnePort.from_impedance(band, np.linspace(58 - 32.5j, 70.2 - 6.8j, 29))
+    first, second = TwoStrips(5e-3, 2e-3), TwoStrips(10.6e-3, 2e-3)
+    chain = Chain((LineSection(first, 17.68e-3), LineSection(second, 79.77e-3)))
+    ax = plot_match_path(chain, load, 867.5e6, (845e6, 890e6))
+    ax.figure.draw_without_rendering()
+    numbers = [text for text in ax.texts if text.get_text() in ("1", "2")]
+    assert len(numbers) == 2
+    for number in numbers:
+        for drawn in ax.lines:
+            away = np.hypot(*(np.column_stack(drawn.get_data()) - number.get_position()).T)
+            # Half the height of a digit is 0.03 of the chart's radius.
+            assert away.min() > 0.03, (number.get_text(), drawn.get_label())
+    (middle,) = (text for text in ax.texts if text.get_text() == "50")
+    # A match ends in the middle of the chart: half of a mark of 7 points, and its edge.
+    mark = ax.transData.transform((0.0, 0.0))[0] + 4 * ax.figure.dpi / 72
+    assert middle.get_window_extent().x0 > mark
+
+
 def test_path_of_an_empty_chain_and_of_a_matched_load():
     ax = plot_match_path(Chain(), LOAD, 868e6)
     assert {"terminals", "connector"} <= set(lines_by_label(ax))
