@@ -227,13 +227,19 @@ def radiated_power_w(radiators: Radiators, current: ComplexArray, frequency_hz: 
     not in it.
 
     The number of directions follows the electrical size: a radiation intensity of a source of
-    radius a has angular orders up to about 2ka, which the Gauss grid integrates exactly. Over a
-    ground the source is as high as its image is deep; round the vertical axis its width counts.
+    radius a has angular orders up to about 2ka, which the Gauss grid integrates exactly; round an
+    axis its width counts. That is the antenna's longest axis, over a ground the vertical one, where
+    the source is as high as its image is deep.
     """
     centre = (radiators.middle_m.min(axis=0) + radiators.middle_m.max(axis=0)) / 2
     if radiators.ground is not None:
         centre[2] = 0.0
     away = radiators.middle_m - centre
+    if radiators.ground is None:
+        # Round the antenna's longest axis the intensity changes least.
+        axes = np.linalg.eigh(away.T @ away)[1]
+        away = away @ axes
+        radiators = Radiators(away, radiators.direction @ axes, radiators.length_m)
     k = 2 * np.pi * frequency_hz / light_speed
     rings, across = (
         int(np.ceil(k * np.linalg.norm(part, axis=1).max())) + 6 for part in (away, away[:, :2])
@@ -241,7 +247,7 @@ def radiated_power_w(radiators: Radiators, current: ComplexArray, frequency_hz: 
     upper = radiators.ground is not None
     if radiators.ground is not None and radiators.ground.kind == "earth":
         rings += EARTH_RINGS
-    directions, weight = _sphere(rings, 2 * (across if upper else rings), upper)
+    directions, weight = _sphere(rings, 2 * across, upper)
     field = field_towards(radiators, current, frequency_hz, directions)
     return float(weight @ intensity_w_per_sr(*field))
 
