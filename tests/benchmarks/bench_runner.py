@@ -2,13 +2,12 @@
 
     python tests/benchmarks/bench_runner.py [CASES]
 
-A strip of 150 mm x 6 mm as one wire of 51 segments, 2801 frequencies from 0.1 to 2.9 GHz, the same in
-the script, in the run and in what both are held against; then the strip as simkit itself cuts it, into
-59, and one of 600 mm, of about 240 segments. Wall times are of one session on one machine, whatever else it
-does; processor times are those of all processes of a run, the start of its workers included. The
-engine alone is timed in two processes at once, as it works in a run: two cores share a cache, and
-large matrices take a fifth longer then. Nothing is asserted. Linear algebra runs on one thread, as
-in the workers.
+A strip of 150 mm x 6 mm as one wire of 51 segments, 2801 frequencies from 0.1 to 2.9 GHz, the same
+in the script, in the run and in what both are held against; then the strip as simkit itself cuts
+it, into 59, and one of 600 mm, of about 240 segments. Wall times are of one session on one machine,
+whatever else it does; processor times are those of all processes of a run, the start of its workers
+included. The engine alone is timed in two processes at once, as it works in a run. Nothing is
+asserted. Linear algebra runs on one thread, as in the workers.
 """
 
 # ruff: noqa: E402  the number of threads is read when numpy is loaded
