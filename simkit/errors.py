@@ -61,6 +61,10 @@ class StoreError(SimkitError, OSError):
     """A results folder cannot be read, written or continued."""
 
 
+class DamageError(StoreError):
+    """Results of some cases are damaged on the disk; they can be solved anew."""
+
+
 class ConditionError(SimkitError, ValueError):
     """A condition that selects cases cannot be understood; its text points at the place."""
 

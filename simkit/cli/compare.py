@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, cast
 
 import click
 
-from simkit.cli.folder import build_of, drawing_folder, study_of
+from simkit.cli.folder import build_of, drawing_folder, says_damage, study_of
 from simkit.cli.options import case_option, csv_option, json_option, one_format, results_argument
 from simkit.cli.output import csv_text, emit, json_text
 
@@ -56,6 +56,7 @@ if TYPE_CHECKING:
     metavar="FILE",
     help="Where to draw both curves; compare_MEASURED.png in DIR/plots if left out.",
 )
+@says_damage
 def command(
     results: str,
     measured: tuple[str, ...],

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import click
 
+from simkit.cli.folder import says_damage
 from simkit.cli.options import results_argument
 
 if TYPE_CHECKING:
@@ -41,6 +42,7 @@ FORMS = ("netcdf", "csv", "touchstone")
     "--only", multiple=True, metavar="VARIABLE", help="netcdf: a variable; may be repeated."
 )
 @click.option("--overwrite", is_flag=True, help="Replace what is there.")
+@says_damage
 def command(
     results: str,
     to: str,

@@ -17,6 +17,7 @@ from simkit.cli.fitting import (
     plots_folder,
     save,
 )
+from simkit.cli.folder import says_damage
 from simkit.cli.options import csv_option, json_option, one_format, study_argument
 from simkit.cli.output import csv_text, emit, json_text
 from simkit.errors import StoreError
@@ -42,6 +43,7 @@ FITTED_HEAD = "Fitted to "
     metavar="FILE",
     help="Where to write the fitted study; STUDY_fitted.toml beside it if left out.",
 )
+@says_damage
 def command(
     study: str,
     measured: tuple[str, ...],
@@ -172,6 +174,7 @@ def as_data(result: FitResult) -> dict[str, Any]:
                 "high": v.high,
                 "standard_error": v.sigma,
                 "at_bound": v.at_bound,
+                "interval_is_bounds": all(v.is_cut),
             }
             for v in result.values
         ],
@@ -183,6 +186,8 @@ def as_data(result: FitResult) -> dict[str, Any]:
                 "exponent": c.exponent,
                 "product": c.product,
                 "relative_standard_error": c.relative_sigma,
+                "standard_errors_alone": list(c.alone_sigma),
+                "times_narrower_if_one_is_known": c.times_narrower,
             }
             for c in result.confounded
         ],

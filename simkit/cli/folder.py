@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from contextlib import contextmanager
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager, nullcontext
+from functools import wraps
 from pathlib import Path
 from tempfile import TemporaryDirectory
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -41,23 +42,46 @@ def damage_said(results: str | Path | RemotePath) -> Iterator[None]:
     ------
     StoreError
     """
-    from simkit.errors import SimkitError, StoreError
-    from simkit.store.read import damaged_cases
+    from simkit.errors import DamageError, SimkitError, StoreError
     from simkit.store.write import TORN
 
     try:
         yield
     except TORN as error:
-        damaged = [] if isinstance(error, SimkitError) else damaged_cases(results)
-        if not damaged:
+        if isinstance(error, SimkitError) and not isinstance(error, DamageError):
             raise
-        cases = ", ".join(
-            f"{rows[0]} to {rows[-1]}" if len(rows) > 1 else f"{rows[0]}" for rows in damaged
-        )
+        cases = _damaged(results)
+        if not cases:
+            raise
         raise StoreError(
             f"{results}: damaged, the results of these cases cannot be read: {cases}; "
             "simkit run STUDY --retry solves them anew"
         ) from error
+
+
+def says_damage(function: Callable[..., None]) -> Callable[..., None]:
+    """Let a command that takes `results` name the cases whose damage keeps it from going on."""
+
+    @wraps(function)
+    def command(*, results: str | None, **options: Any) -> None:
+        with nullcontext() if results is None else damage_said(results):
+            function(results=results, **options)
+
+    return command
+
+
+def _damaged(results: str | Path | RemotePath) -> str:
+    """Numbers of the damaged cases; empty if there are none, or not even that can be read."""
+    from simkit.store.read import damaged_cases
+    from simkit.store.write import TORN
+
+    try:
+        damaged = damaged_cases(results)
+    except (*TORN, KeyError):
+        return ""
+    return ", ".join(
+        f"{rows[0]} to {rows[-1]}" if len(rows) > 1 else f"{rows[0]}" for rows in damaged
+    )
 
 
 def study_of(results: str | Path) -> Study | None:

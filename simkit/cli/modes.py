@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from simkit.cli.folder import says_damage
 from simkit.cli.options import case_option, csv_option, json_option, one_format, results_argument
 from simkit.cli.output import (
     csv_text,
@@ -51,6 +52,7 @@ LEAST_LOSS = 5e-4
 @click.option(
     "--places", is_flag=True, help="List where each mode's current is largest and where it is zero."
 )
+@says_damage
 def command(results: str, as_json: bool, as_csv: bool, case: int | None, places: bool) -> None:
     """List the natural modes of the results in DIR, with the dips and resonances they own.
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import click
 
-from simkit.cli.folder import damage_said, drawing_folder, study_of
+from simkit.cli.folder import drawing_folder, says_damage, study_of
 from simkit.cli.options import case_option, results_argument
 from simkit.plot.kinds import KINDS
 
@@ -38,6 +38,7 @@ _KINDS = "\n".join(f"  {kind.name:<{_WIDTH}}{kind.about}" for kind in KINDS.valu
     metavar="FILE",
     help="File to write: .png, .svg or .pdf; in DIR/plots if left out.",
 )
+@says_damage
 def command(results: str, kind: str, case: int | None, by: str | None, output: str | None) -> None:
     """Draw one picture; its help is put together from the list of kinds."""
     if case is not None and not KINDS[kind].of_one_case:
@@ -48,7 +49,7 @@ def command(results: str, kind: str, case: int | None, by: str | None, output: s
     from simkit.store import open_results
 
     dataset = open_results(results)
-    with damage_said(results), drawing_folder(results, output) as folder:
+    with drawing_folder(results, output) as folder:
         target = output or folder / "plots" / _file_name(kind, case, by)
         path = save_plot(dataset, kind, target, case=case, study=study_of(results), by=by)
         click.echo(f"written: {path}", err=True)

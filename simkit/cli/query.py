@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from simkit.cli.folder import says_damage
 from simkit.cli.options import RESULTS, csv_option, json_option, one_format
 from simkit.cli.output import (
     csv_text,
@@ -81,6 +82,7 @@ Example:
 )
 @json_option
 @csv_option
+@says_damage
 def command(
     results: str,
     words: tuple[str, ...],

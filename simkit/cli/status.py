@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from simkit.cli.folder import study_of
+from simkit.cli.folder import says_damage, study_of
 from simkit.cli.options import csv_option, json_option, one_format, results_argument
 from simkit.cli.output import csv_text, emit, json_text, table
 from simkit.cli.study_lines import with_line
@@ -27,6 +27,7 @@ _NOTES = 3
 @results_argument
 @json_option
 @csv_option
+@says_damage
 def command(results: str, as_json: bool, as_csv: bool) -> None:
     """Count the cases in DIR by how they stand, and say why some have no solution.
 

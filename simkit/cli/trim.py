@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from simkit.cli.fitting import fitted, measured_argument, options_of_fit, plots_folder, save
+from simkit.cli.folder import says_damage
 from simkit.cli.options import csv_option, json_option, one_format, study_argument
 from simkit.cli.output import csv_text, emit, json_text
 from simkit.errors import MeasurementError
@@ -58,6 +59,7 @@ DEFAULT_SCALE = "scale=0.93..1.07"
 @options_of_fit
 @json_option
 @csv_option
+@says_damage
 def command(
     study: str,
     measured: tuple[str, ...],
@@ -133,6 +135,7 @@ def _by_choice(
     """One target; each dimension is a way to reach it."""
     from simkit.measured.trim import trim_fitted, with_gain
     from simkit.measured.trim_words import factor_lines
+    from simkit.plot.fit import put_source
     from simkit.plot.trim import plot_trim
 
     trims, refused = [], []
@@ -158,7 +161,9 @@ def _by_choice(
     for reason in refused:
         click.echo(f"not by this one: {reason}", err=True)
     for trim in trims:
-        save(plot_trim(trim), folder, f"trim_{_file_word(trim.name)}.png")
+        ax = plot_trim(trim)
+        put_source(ax, result, result.curves[-1])
+        save(ax, folder, f"trim_{_file_word(trim.name)}.png")
 
 
 def _together(
@@ -171,6 +176,7 @@ def _together(
     """Two targets by two dimensions at once."""
     from simkit.measured.trim_pair import trim_pair
     from simkit.measured.trim_pair_words import pair_factor_lines
+    from simkit.plot.fit import put_source
     from simkit.plot.trim_map import plot_trim_map
 
     trim = trim_pair(result, aims, reaches, gain=True)
@@ -183,7 +189,9 @@ def _together(
         text = [result.as_text(), trim.as_text(), f"for your own dimensioning sheet:\n{factors}"]
         emit("\n\n".join(text))
     words = "_".join(_file_word(name) for name in trim.names)
-    save(plot_trim_map(trim), folder, f"trim_{words}.png")
+    ax = plot_trim_map(trim)
+    put_source(ax, result, result.curves[-1])
+    save(ax, folder, f"trim_{words}.png")
 
 
 def _file_word(name: str) -> str:
@@ -237,6 +245,7 @@ def as_data(trim: Trim) -> dict[str, Any]:
         "slope_hz_per_unit": trim.slope_hz_per_m,
         "first_cut": trim.first_step if trim.in_steps else trim.change,
         "adds_metal": trim.adds_metal,
+        "supported_by_a_dip": trim.is_measured,
         "band_low_hz": trim.band_hz[0],
         "band_high_hz": trim.band_hz[1],
         "band_return_loss_now_db": trim.band_return_loss_now_db,
@@ -277,6 +286,7 @@ def pair_data(trim: PairTrim) -> dict[str, Any]:
         "angle_sine": trim.angle_sine,
         "well_conditioned": trim.well_conditioned,
         "adds_metal": trim.adds_metal,
+        "unsupported_modes": list(trim.unmeasured),
         "gains_dbi": [list(pair) for pair in trim.gains_dbi],
         "modes": _modes_data(trim.modes),
     }

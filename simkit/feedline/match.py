@@ -19,7 +19,7 @@ from simkit.feedline.candidates import MAKERS, Candidate, Task
 from simkit.feedline.chain import Chain
 from simkit.feedline.checks import FeedlineError, FloatArray, positive
 from simkit.feedline.checks import quantity as q
-from simkit.feedline.elements import End, LineSection, Lumped, TappedLine
+from simkit.feedline.elements import Element, End, LineSection, Lumped, Stub, TappedLine
 from simkit.feedline.line import Line
 from simkit.feedline.oneport import OnePort
 from simkit.feedline.parts import PartSupply
@@ -42,6 +42,8 @@ LOG_REACH = (-20.0, 1.5)
 
 NOTHING_M = 1e-6
 """A section shorter than this is none."""
+
+NOT_NEEDED = "no network is needed, what would match has no length"
 
 WANTED_DB = 15.0
 
@@ -118,12 +120,20 @@ def find_matches(
         if not found:
             notes.append(f"{kind}: {_why_none(kind, task)}")
             continue
-        judged = [_judged(c, band, task.supply, refine=refine) for c in found]
+        every = [_judged(c, band, task.supply, refine=refine) for c in found]
+        judged = [design for design in every if design.chain.elements]
+        if not judged:
+            notes.append(f"{kind}: {NOT_NEEDED}")
+            continue
         useful = [d for d in judged if d.worst_db > before or d.worst_db >= wanted_db]
         if not useful:
             best = max(d.worst_db for d in judged)
             notes.append(f"{kind}: over the band {best:.1f} dB at best, worse than no network")
         designs += useful
+    if not designs and all(note.endswith(NOT_NEEDED) for note in notes):
+        raise FeedlineError(
+            f"no network is needed: the load has at least {before:.1f} dB return loss as it is"
+        )
     if not designs:
         raise FeedlineError("no network matches this load: " + "; ".join(notes))
     ranked = sorted(_distinct(designs), key=lambda d: (-d.changed_db, -d.worst_db))
@@ -226,7 +236,8 @@ def _why_none(kind: str, task: Task) -> str:
 def _judged(candidate: Candidate, band: OnePort, supply: PartSupply, *, refine: bool) -> Design:
     chain = candidate.chain
     if refine and candidate.refinable:
-        chain = without_nothing(_refined(chain, band))
+        chain = _refined(chain, band)
+    chain = without_nothing(chain)
     worst = worst_return_loss_db(chain, band)
     changed, sensitive = _after_change(chain, band, worst)
     result = chain.terminate(band)
@@ -273,11 +284,19 @@ def _refined(chain: Chain, band: OnePort) -> Chain:
 
 
 def without_nothing(chain: Chain) -> Chain:
-    """Leave out sections that were moved to no length, unless nothing is left then."""
-    kept = tuple(
-        e for e in chain.elements if not (isinstance(e, LineSection) and e.length_m < NOTHING_M)
-    )
-    return replace(chain, elements=kept) if kept else chain
+    """Leave out sections and stubs that were moved to no length; all of them may be."""
+    return replace(chain, elements=tuple(e for e in chain.elements if not _is_nothing(e)))
+
+
+def _is_nothing(element: Element) -> bool:
+    """Whether a length of line does nothing at all.
+
+    A stub of no length does if its end then neither shorts the line nor breaks it.
+    """
+    if isinstance(element, Stub):
+        harmless = (element.connection == "shunt") == (element.end == "open")
+        return harmless and element.length_m < NOTHING_M
+    return isinstance(element, LineSection) and element.length_m < NOTHING_M
 
 
 def _after_change(chain: Chain, band: OnePort, worst_db: float) -> tuple[float, str]:

@@ -16,6 +16,10 @@ if TYPE_CHECKING:
     from simkit.measured.measurement import Measurement
 
 
+FEW, MANY = 12, 200
+"""At so few frequencies a long curve is evaluated from the samples around each of them."""
+
+
 @dataclass(frozen=True, eq=False)
 class OnePort:
     """A load over frequency.
@@ -85,7 +89,7 @@ class OnePort:
         return OnePort(self.frequency_hz, moved, reference_ohm)
 
     def at(self, frequency_hz: ArrayLike) -> OnePort:
-        """Return the load at other frequencies, on a spline through its reflection.
+        """Return the load at other frequencies, on a smooth curve through its reflection.
 
         Raises
         ------
@@ -103,8 +107,22 @@ class OnePort:
             )
         if len(self.frequency_hz) == 1:
             return OnePort(wanted, np.repeat(self.reflection, len(wanted)), self.reference_ohm)
+        inside = np.clip(wanted, low, high)
+        if len(wanted) <= FEW and len(self.frequency_hz) > MANY:
+            return OnePort(wanted, self._near(inside), self.reference_ohm)
         curve = CubicSpline(self.frequency_hz, self.reflection)
-        return OnePort(wanted, curve(np.clip(wanted, low, high)), self.reference_ohm)
+        return OnePort(wanted, curve(inside), self.reference_ohm)
+
+    def _near(self, frequency_hz: FloatArray) -> ComplexArray:
+        """Reflection at a few frequencies, from the samples around each."""
+        from simkit.response.near import Near
+
+        place = np.searchsorted(self.frequency_hz, frequency_hz, side="right") - 1
+        place = np.clip(place, 0, len(self.frequency_hz) - 2)
+        each = zip(frequency_hz, place, strict=True)
+        return np.array(
+            [Near(self.frequency_hz, self.reflection, int(at))(float(f)) for f, at in each]
+        )
 
 
 def impedance_of(reflection: ComplexArray, reference_ohm: float) -> ComplexArray:

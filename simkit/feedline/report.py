@@ -102,10 +102,11 @@ class MatchReport:
     def as_text(self, most: int = 10) -> str:
         """Return the table of the best designs, the bound and the notes."""
         shown = self.designs[:most]
+        enough = ", no less than wanted: no network is needed"
         lines = [
             f"match to {self.reference_ohm:g} ohm from {q(self.start_hz, 'Hz')} to "
             f"{q(self.stop_hz, 'Hz')}; without a network at least {self.before_db:.1f} dB "
-            f"return loss{', no less than wanted' if self.before_db >= self.wanted_db else ''}",
+            f"return loss{enough if self.before_db >= self.wanted_db else ''}",
             *self._table(shown),
         ]
         if more := len(self.designs) - len(shown):

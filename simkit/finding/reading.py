@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from simkit.errors import StoreError
+from simkit.errors import DamageError, SimkitError
 from simkit.finding.condition import Term
 from simkit.finding.quantities import Quantity
 from simkit.store.read import connector_impedance, swept_names
@@ -62,7 +62,7 @@ def read_term(part: xr.Dataset, term: Term) -> FloatArray:
 
     Raises
     ------
-    StoreError
+    DamageError
         A block that is needed is damaged.
     """
     with damage_in_words(part):
@@ -78,8 +78,10 @@ def damage_in_words(part: xr.Dataset) -> Iterator[None]:
         yield
     except TORN as error:
         cases = part["case"].values
-        raise StoreError(
-            f"cases {cases[0]} to {cases[-1]}: damaged, cannot be read: {error}; "
+        if isinstance(error, SimkitError):
+            raise
+        raise DamageError(
+            f"cases {cases[0]} to {cases[-1]}: damaged, cannot be read ({error}); "
             "simkit run STUDY --retry solves them anew"
         ) from error
 

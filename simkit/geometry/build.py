@@ -35,7 +35,7 @@ from simkit.geometry.strips import (
     check_strips,
     model_gap_m,
 )
-from simkit.geometry.wires import Chain, FloatArray, IntArray, WireGrid
+from simkit.geometry.wires import Chain, FloatArray, IntArray, WireGrid, segment_lengths_m
 from simkit.study.model import Antenna
 
 PROBE_PLACE = 0.08
@@ -136,7 +136,7 @@ def _line_grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> 
     feed = lines[0].feed
     assert feed is not None  # the first chain is the fed one by construction
     source = drawing.source(lines[0], plan.chains[0].vertices, chains[0])
-    lengths = np.array([w.segment_m for w in drawing.wires for _ in range(w.segments)])
+    lengths = segment_lengths_m(drawing.wires)
     length = float(np.mean([lengths[segment] for segment, _ in source]))
     longest = drawing.longest_run_m
     strip_index, position = _strip_places(chains, drawing.segments)
@@ -212,7 +212,7 @@ def _grid(antenna: Antenna, lines: Sequence[ChainLine], plan: MeshPlan) -> WireG
     feed = lines[0].feed
     assert feed is not None  # the first chain is the fed one by construction
     source = tuple(rails.source)
-    lengths = np.array([w.segment_m for w in rails.wires for _ in range(w.segments)])
+    lengths = segment_lengths_m(rails.wires)
     length = float(np.mean([lengths[segment] for segment, _ in source]))
     width = float(lines[0].width_before_m[feed.vertex])
     strip_index, position = _strip_places(chains, rails.segments)

@@ -63,7 +63,22 @@ def outline(strip: Strip) -> Polygon:
     shape = _united(pieces)
     if isinstance(shape, Polygon):
         return shape
-    raise GeometryError(f"strip {strip.name!r}: its outline falls into several pieces")
+    x, y = _odd_place_mm(shape, points)
+    raise GeometryError(
+        f"strip {strip.name!r}: its outline falls into several pieces near ({x:.4g}, {y:.4g}) mm, "
+        "which is not one piece of metal; look there for points of the path that nearly coincide, "
+        "for one at which it turns straight back and for a width near 0, and move or drop them"
+    )
+
+
+def _odd_place_mm(shape: Any, points: FloatArray) -> tuple[float, float]:
+    """Where to look: the middle of the smallest piece, or of the path if nothing is left at all."""
+    pieces = [piece for piece in getattr(shape, "geoms", ()) if not piece.is_empty]
+    if not pieces:
+        x, y = points.mean(axis=0)
+        return float(x) * 1e3, float(y) * 1e3
+    middle = min(pieces, key=lambda piece: piece.area).centroid
+    return middle.x * 1e3, middle.y * 1e3
 
 
 def _united(pieces: Sequence[Any]) -> Any:

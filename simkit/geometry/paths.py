@@ -12,7 +12,7 @@ from simkit.geometry.wires import FloatArray
 
 def leg_lengths(points: FloatArray) -> FloatArray:
     """Lengths of the (V - 1) legs of a (V, 2) polyline."""
-    return cast(FloatArray, np.linalg.norm(np.diff(points, axis=0), axis=1))
+    return cast(FloatArray, np.hypot(*(points[1:] - points[:-1]).T))
 
 
 def arc_lengths(points: FloatArray) -> FloatArray:

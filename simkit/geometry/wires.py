@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import math
+from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,12 +25,17 @@ class Wire:
     @property
     def length_m(self) -> float:
         """Distance between the two ends, metres."""
-        return float(np.linalg.norm(np.subtract(self.end_m, self.start_m)))
+        return math.dist(self.start_m, self.end_m)
 
     @property
     def segment_m(self) -> float:
         """Length of one segment, metres."""
         return self.length_m / self.segments
+
+
+def segment_lengths_m(wires: Sequence[Wire]) -> FloatArray:
+    """Lengths of the segments of all wires in order, (S,) metres."""
+    return np.repeat([wire.segment_m for wire in wires], [wire.segments for wire in wires])
 
 
 @dataclass(frozen=True)
@@ -71,6 +79,10 @@ class Chain:
 
     def places(self) -> tuple[FloatArray, IntArray]:
         """Distinct arc lengths, and for each segment the number of its own."""
+        return self._places
+
+    @cached_property
+    def _places(self) -> tuple[FloatArray, IntArray]:
         arcs, number = np.unique(np.round(self.arc_m, 9), return_inverse=True)
         return arcs, number
 

@@ -123,13 +123,21 @@ def measured_dips(measurement: Measurement) -> tuple[list[Dip], list[str]]:
             "no dip stands out of the measured curve: is the antenna connected, and does the sweep "
             "cover its resonances?"
         )
-    notes += [
-        f"the dip at {dip.frequency_hz / 1e6:.1f} MHz has only {points} points within its band; "
-        "measure with a finer step"
-        for dip in dips
-        if (points := _points_across(sweep.frequency_hz, dip)) < FEW_POINTS
-    ]
+    points = [_points_across(sweep.frequency_hz, dip) for dip in dips]
+    notes += [_few_points(dip, n) for dip, n in zip(dips, points, strict=True) if n < FEW_POINTS]
     return dips, notes
+
+
+def _few_points(dip: Dip, points: int) -> str:
+    """Say how badly a dip is sampled."""
+    place, width = f"the dip at {dip.frequency_hz / 1e6:.1f} MHz", dip.bandwidth_hz / 1e6
+    if not points:
+        return (
+            f"{place} falls between two measured points, none is within its 10 dB width of "
+            f"{width:.3g} MHz: its depth is uncertain; measure with a finer step"
+        )
+    only = "one point" if points == 1 else f"{points} points"
+    return f"{place} has only {only} within its band; measure with a finer step"
 
 
 def pinned_dip(dips: Sequence[Dip], frequency_hz: float, measurement: Measurement) -> int:

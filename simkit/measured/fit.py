@@ -10,6 +10,7 @@ the error of the model itself.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
+from itertools import combinations
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -18,7 +19,15 @@ from simkit.errors import MeasurementError
 from simkit.measured.bench_errors import ErrorSizes
 from simkit.measured.fit_files import fit_files
 from simkit.measured.fit_problem import FitProblem, To
-from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
+from simkit.measured.fit_result import (
+    CONFOUNDED,
+    LIMIT_95,
+    Confounding,
+    FitResult,
+    FittedCurve,
+    FittedValue,
+    times_narrower,
+)
 from simkit.measured.measurement import ComplexArray, FloatArray, Measurement
 from simkit.measured.simulator import Engine, Surrogate
 from simkit.measured.variation import SCALE, Known, Variation
@@ -31,10 +40,6 @@ REWEIGHINGS = 3
 
 SAME_BUILD = 1e-6
 """Relative difference up to which two builds have the same of a value."""
-
-CONFOUNDED = 0.9
-"""Correlation from which two values cannot be told apart in practice: together they are known more
-than twice as well as each."""
 
 
 def fit(
@@ -100,7 +105,8 @@ def fit(
     problem = FitProblem(variation, files, bounds, beliefs, sizes, to)
     nominal = problem.at({name: variation.nominal(name) for name in problem.names})
     solution = _searched(problem)
-    covariance, data_only = _covariances(problem, solution)
+    jacobian = problem.jacobian(solution)
+    covariance = np.asarray(np.linalg.pinv(jacobian.T @ jacobian))
     curves = tuple(_curve(problem, solution, nominal, place) for place in range(len(problem.files)))
     error = _interpolation_error(problem, solution, engines)
     return FitResult(
@@ -108,7 +114,8 @@ def fit(
         to=to,
         values=_fitted_values(problem, solution, covariance),
         correlation=_correlation(covariance[: problem.free, : problem.free]),
-        confounded=_confounded(problem, solution, data_only),
+        confounded=_confounded(problem, solution, jacobian),
+        tied=_tied(problem, covariance),
         curves=curves,
         capacitance_f=problem.capacitance_f(solution),
         mode_errors=dict(
@@ -196,18 +203,19 @@ def _searched(problem: FitProblem) -> FloatArray:
     return x
 
 
-def _covariances(problem: FitProblem, x: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Covariance of all unknowns, and of the free values by the data alone."""
-    jacobian = problem.jacobian(x)
-    full = np.linalg.pinv(jacobian.T @ jacobian)
-    priors = len(problem.known)
-    rows = len(jacobian) - (problem.unknowns - problem.free) - priors
-    data = np.delete(jacobian, np.s_[rows : rows + priors], axis=0)
+def _without_priors(
+    problem: FitProblem, jacobian: FloatArray, names: tuple[str, str]
+) -> FloatArray:
+    """Covariance of two free values without what was known of these two, (2, 2)."""
+    first_prior = len(jacobian) - (problem.unknowns - problem.free) - len(problem.known)
+    rows = [first_prior + k for k, name in enumerate(problem.known) if name in names]
+    data = np.delete(jacobian, rows, axis=0)
     # A direction nothing determines gets a large but finite variance.
     weak = np.zeros(problem.unknowns)
     weak[: problem.free] = 1e-4
     alone = np.linalg.pinv(data.T @ data + np.diag(weak))
-    return np.asarray(full), np.asarray(alone[: problem.free, : problem.free])
+    pair = [problem.names.index(name) for name in names]
+    return np.asarray(alone[np.ix_(pair, pair)])
 
 
 def _correlation(covariance: FloatArray) -> FloatArray:
@@ -239,31 +247,61 @@ def _fitted_values(
 
 
 def _confounded(
-    problem: FitProblem, x: FloatArray, covariance: FloatArray
+    problem: FitProblem, x: FloatArray, jacobian: FloatArray
 ) -> tuple[Confounding, ...]:
-    """Pairs of positive values whose product is known far better than each."""
+    """Pairs of values of which a combination is known far better than each."""
     numbers = problem.middle + problem.half * x[: problem.free]
-    correlation = _correlation(covariance)
     found = []
-    for i in range(problem.free):
-        for j in range(i + 1, problem.free):
-            if abs(correlation[i, j]) < CONFOUNDED or min(numbers[i], numbers[j]) <= 0:
-                continue
-            scale = problem.half / numbers
-            log = covariance * np.outer(scale, scale)
-            exponent = -log[i, j] / log[j, j]
-            variance = log[i, i] - log[i, j] ** 2 / log[j, j]
-            found.append(
-                Confounding(
-                    problem.names[i],
-                    problem.names[j],
-                    float(correlation[i, j]),
-                    float(exponent),
-                    float(numbers[i] * numbers[j] ** exponent),
-                    float(np.sqrt(max(variance, 0.0))),
-                )
-            )
+    for i, j in combinations(range(problem.free), 2):
+        names = (problem.names[i], problem.names[j])
+        pair = [i, j]
+        covariance = _without_priors(problem, jacobian, names) * np.outer(
+            problem.half[pair], problem.half[pair]
+        )
+        correlation = float(_correlation(covariance)[0, 1])
+        narrower = times_narrower(correlation)
+        alone = LIMIT_95 * np.sqrt(np.diag(covariance))
+        # Where not even the combination is known within the bounds, there is nothing to tell.
+        if narrower >= CONFOUNDED and (alone < narrower * problem.half[pair]).any():
+            found.append(_confounding(names, numbers[pair], covariance, correlation))
     return tuple(found)
+
+
+def _confounding(
+    names: tuple[str, str], numbers: FloatArray, covariance: FloatArray, correlation: float
+) -> Confounding:
+    """Return what is known of two values together and of each alone."""
+    size = np.sqrt(np.diag(covariance))
+    trade = float(correlation * size[1] / size[0])
+    exponent = product = relative = float("nan")
+    if min(numbers) > 0:
+        log = covariance / np.outer(numbers, numbers)
+        if log[0, 0] > log[1, 1]:  # the better known one first, so that its power is 1
+            turned = np.asarray(covariance[::-1, ::-1])
+            return _confounding((names[1], names[0]), numbers[::-1], turned, correlation)
+        exponent = -log[0, 1] / log[1, 1]
+        product = numbers[0] * numbers[1] ** exponent
+        relative = np.sqrt(max(log[0, 0] - log[0, 1] ** 2 / log[1, 1], 0.0))
+    return Confounding(
+        first=names[0],
+        second=names[1],
+        correlation=correlation,
+        exponent=float(exponent),
+        product=float(product),
+        relative_sigma=float(relative),
+        trade=trade,
+        alone_sigma=(float(size[0]), float(size[1])),
+    )
+
+
+def _tied(problem: FitProblem, covariance: FloatArray) -> dict[str, float]:
+    """By how much each value's interval would shrink if all the others were known."""
+    shared = covariance[: problem.free, : problem.free]
+    narrower = np.diag(shared) * np.diag(np.linalg.pinv(shared))
+    return {
+        name: float(np.sqrt(max(number, 1.0)))
+        for name, number in zip(problem.names, narrower, strict=True)
+    }
 
 
 def _curve(problem: FitProblem, x: FloatArray, nominal: FloatArray, place: int) -> FittedCurve:

@@ -142,8 +142,9 @@ def _cut(
     high = min(band[1] / scale[1] * 0.995, study_band[1])
     inside = (measurement.frequency_hz >= low) & (measurement.frequency_hz <= high)
     if inside.sum() < 11:
+        few = f"only {points} points lie" if (points := int(inside.sum())) else "no point lies"
         raise MeasurementError(
-            f"{measurement.path}: only {int(inside.sum())} points lie from {low / 1e6:.1f} to "
+            f"{measurement.path}: {few} from {low / 1e6:.1f} to "
             f"{high / 1e6:.1f} MHz, where the model can be compared for all values within the "
             "bounds; narrow the bounds, or widen [frequency] of the study and the measured band"
         )

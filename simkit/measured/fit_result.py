@@ -22,6 +22,10 @@ LIMIT_95 = 1.96
 LEARNT = 0.8
 """The data have not determined a value whose error they shrink by less than this."""
 
+CONFOUNDED = 1.5
+"""Values are called confounded from here on: to know one would make the interval of the other as
+many times narrower, ``1 / sqrt(1 - r**2)`` with their correlation ``r``, here 0.75."""
+
 
 @dataclass(frozen=True, eq=False)
 class FittedCurve:
@@ -61,7 +65,7 @@ class FittedCurve:
 
 @dataclass(frozen=True)
 class FittedValue:
-    """One free value, SI; `low` and `high` hold 95 %."""
+    """One free value, SI; `low` and `high` hold 95 %, or are the bounds where those are nearer."""
 
     name: str
     nominal: float
@@ -74,11 +78,17 @@ class FittedValue:
 
     @property
     def low(self) -> float:
-        return self.value - LIMIT_95 * self.sigma
+        return max(self.value - LIMIT_95 * self.sigma, self.bounds[0])
 
     @property
     def high(self) -> float:
-        return self.value + LIMIT_95 * self.sigma
+        return min(self.value + LIMIT_95 * self.sigma, self.bounds[1])
+
+    @property
+    def is_cut(self) -> tuple[bool, bool]:
+        """Whether lower and upper end of the interval are the bounds' and not the data's."""
+        reach = LIMIT_95 * self.sigma
+        return self.value - reach < self.bounds[0], self.value + reach > self.bounds[1]
 
     @property
     def at_bound(self) -> bool:
@@ -89,9 +99,21 @@ class FittedValue:
 
 @dataclass(frozen=True)
 class Confounding:
-    """Two values the data cannot tell apart.
+    """Two values of which the data know a combination far better than each, SI.
 
-    ``first**1 * second**exponent`` is `product` within `relative_sigma`.
+    Attributes
+    ----------
+    first, second : str
+    correlation : float
+        By the data and what is known of other values, what is known of these two left out; so are
+        all the following.
+    exponent, product, relative_sigma : float
+        ``first * second**exponent`` is `product` within `relative_sigma`; NaN where one of them is
+        not positive.
+    trade : float
+        Change of `second` that makes up for a change of `first`, per unit of it.
+    alone_sigma : (float, float)
+        Standard deviation of each.
     """
 
     first: str
@@ -100,6 +122,18 @@ class Confounding:
     exponent: float
     product: float
     relative_sigma: float
+    trade: float
+    alone_sigma: tuple[float, float]
+
+    @property
+    def times_narrower(self) -> float:
+        """By how much the interval of one would shrink if the other were known."""
+        return times_narrower(self.correlation)
+
+
+def times_narrower(correlation: float) -> float:
+    """Standard deviation of a value over the one it has where its fellow is known, 1 or more."""
+    return float(1 / np.sqrt(max(1 - correlation**2, 1e-12)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -112,7 +146,9 @@ class FitResult:
     correlation : (P, P) float array
         Of the free values, priors included.
     confounded : tuple of Confounding
-        By the data alone, priors left out.
+        Pairs of values that can hardly be told apart.
+    tied : dict of str to float
+        By name: how many times narrower the interval would be if all other values were known.
     curves : tuple of FittedCurve
     capacitance_f : float
         Across the feed, beyond the model's.
@@ -131,6 +167,7 @@ class FitResult:
     values: tuple[FittedValue, ...]
     correlation: FloatArray
     confounded: tuple[Confounding, ...]
+    tied: dict[str, float]
     curves: tuple[FittedCurve, ...]
     capacitance_f: float
     mode_errors: dict[int, float]
@@ -161,6 +198,7 @@ class FitResult:
         head += [
             f"  {v.name} = {variation.text(v.name, v.value)}, "
             f"from {variation.text(v.name, v.low)} to {variation.text(v.name, v.high)}"
+            + (" (its bounds: the data do not narrow it)" if all(v.is_cut) else "")
             for v in self.values
         ]
         return variation.rewritten(self.fitted(), head)

@@ -6,13 +6,17 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from simkit.measured.fit_result import LEARNT
+from simkit.measured.fit_result import CONFOUNDED, LEARNT, LIMIT_95
 from simkit.response.labels import half_wave_label
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from simkit.measured.fit_result import Confounding, FitResult, FittedCurve, FittedValue
+
+HARDLY = 2.5
+"""Two values cannot be told apart at all from here on, in `Confounding.times_narrower`: they have
+a correlation of 0.92."""
 
 
 def fit_text(result: FitResult) -> str:
@@ -79,8 +83,10 @@ def statements(result: FitResult) -> list[str]:
         f"difference from the measured curve: {result.rms_before:.3f} before, "
         f"{result.rms_after:.3f} after (rms of |reflection|)"
     ]
+    said += [_without_dips(result, curve) for curve in result.curves if not curve.dips]
     said += [text for v in result.values if (text := _value_statement(result, v))]
     said += [_confounding_statement(result, c) for c in result.confounded]
+    said += _tied_statements(result)
     if result.surrogate_error > 0.01:
         said.append(
             f"the interpolated model is off by up to {result.surrogate_error:.3f} in reflection "
@@ -106,8 +112,26 @@ def statements(result: FitResult) -> list[str]:
     return said
 
 
+def _without_dips(result: FitResult, curve: FittedCurve) -> str:
+    places = curve.modes_before.dip_hz[np.isfinite(curve.modes_before.dip_hz)] / 1e6
+    expected = " and ".join(f"{place:.0f}" for place in places)
+    frequency = curve.measurement.frequency_hz / 1e6
+    where = f", where the study has them at {expected} MHz" if len(places) else ""
+    return (
+        f"{curve.measurement.path.name}: no dip from {frequency[0]:.0f} to {frequency[-1]:.0f} MHz"
+        f"{where}: this fit rests on no feature of the antenna, do not build on its values; check "
+        "the connection, or sweep where the dips are"
+    )
+
+
 def _value_statement(result: FitResult, v: FittedValue) -> str:
     text = result.problem.variation.text
+    if all(v.is_cut):
+        return (
+            f"the data do not narrow {v.name}: its interval is that of its bounds, "
+            f"{text(v.name, v.low)} to {text(v.name, v.high)}, and the fitted number by itself "
+            "means nothing"
+        )
     if v.at_bound:
         return (
             f"{v.name} ran to its bound {text(v.name, v.value)}: the bounds are too narrow or "
@@ -116,6 +140,11 @@ def _value_statement(result: FitResult, v: FittedValue) -> str:
     if v.learnt > LEARNT:
         source = "what was known before" if v.prior else "the bounds"
         return f"the data do not determine {v.name}: its interval comes from {source}"
+    return _against_study(result, v) + _cut_words(result, v)
+
+
+def _against_study(result: FitResult, v: FittedValue) -> str:
+    text = result.problem.variation.text
     if v.low <= v.nominal <= v.high:
         return f"{v.name}: the study's {text(v.name, v.nominal)} agrees with the measurement"
     change = f" ({v.value / v.nominal - 1:+.1%})" if v.nominal else ""
@@ -125,19 +154,83 @@ def _value_statement(result: FitResult, v: FittedValue) -> str:
     )
 
 
+def _cut_words(result: FitResult, v: FittedValue) -> str:
+    """Say which end of an interval is not the data's."""
+    if not any(v.is_cut):
+        return ""
+    end, number = ("lower", v.low) if v.is_cut[0] else ("upper", v.high)
+    bound = result.problem.variation.text(v.name, number)
+    return f"; the {end} end of its interval is its bound {bound}, the data alone would allow more"
+
+
 def _confounding_statement(result: FitResult, c: Confounding) -> str:
-    exponent = f"{c.exponent:.2f}"
     known = [v.name for v in result.values if v.prior and v.name in (c.first, c.second)]
+    times = _times(c.times_narrower)
     advice = (
         f"what you know of {' and '.join(known)} settles it"
         if known
-        else "measure one of them and say so with --known"
+        else f"were one known, the other's interval would be {times} narrower: measure one and "
+        "say so with --known"
+    )
+    how = "cannot" if c.times_narrower >= HARDLY else "can hardly"
+    alone = ", ".join(
+        f"{name} alone {_alone(result, name, sigma)}"
+        for name, sigma in zip((c.first, c.second), c.alone_sigma, strict=True)
     )
     return (
-        f"{c.first} and {c.second} cannot be told apart by these data (correlation "
-        f"{c.correlation:+.3f}): only {c.first} * {c.second}^{exponent} is known, within "
-        f"{1.96 * c.relative_sigma:.2%}; {advice}"
+        f"{c.first} and {c.second} {how} be told apart by these data (correlation "
+        f"{c.correlation:+.3f}): {_combination(result, c)}; {alone}; {advice}"
     )
+
+
+def _tied_statements(result: FitResult) -> list[str]:
+    """Values that no single other one, but several together can make up for."""
+    if len(result.values) < 3:
+        return []
+    told = {name for c in result.confounded for name in (c.first, c.second)}
+    told |= {v.name for v in result.values if all(v.is_cut)}
+    return [
+        f"{name} cannot be told apart from {_listed(result, name)} together: were all of them "
+        f"known, its interval would be {_times(times)} narrower; measure them and say so with "
+        "--known"
+        for name, times in result.tied.items()
+        if times >= CONFOUNDED and name not in told
+    ]
+
+
+def _listed(result: FitResult, name: str) -> str:
+    others = [v.name for v in result.values if v.name != name]
+    return f"{', '.join(others[:-1])} and {others[-1]}"
+
+
+def _times(number: float) -> str:
+    return f"{number:.{1 if number < 10 else 0}f} times"
+
+
+def _combination(result: FitResult, c: Confounding) -> str:
+    """What of two values is known."""
+    if np.isfinite(c.product):
+        power = f"{abs(c.exponent):.2f}"
+        raised = c.second if power == "1.00" else f"{c.second}^{power}"
+        sign = "*" if c.exponent > 0 else "/"
+        return f"they determine {c.first} {sign} {raised}, within {LIMIT_95 * c.relative_sigma:.2%}"
+    text = result.problem.variation.text
+    first = LIMIT_95 * c.alone_sigma[0]
+    return (
+        f"{text(c.first, first, 3)} more of {c.first} looks like "
+        f"{text(c.second, -first * c.trade, 3)} more of {c.second}"
+    )
+
+
+def _alone(result: FitResult, name: str, sigma: float) -> str:
+    """How well one of two confounded values is known without the other."""
+    value = next(v for v in result.values if v.name == name)
+    width = LIMIT_95 * sigma
+    if width > value.bounds[1] - value.bounds[0]:
+        return "not even within its bounds"
+    if value.value > 0:
+        return f"within {width / value.value:.2%}"
+    return f"within {result.problem.variation.text(name, width, 3)}"
 
 
 def number_text(value: float, digits: int) -> str:

@@ -304,7 +304,7 @@ class Engine:
         feed_values = sweep.model.values[:, : grid.segments]
 
         def impedance(frequency_hz: FloatArray) -> ComplexArray:
-            currents = sweep.model.matrix(frequency_hz) @ feed_values
+            currents = sweep.model.combined(frequency_hz, feed_values)
             return feed_impedance(grid, currents, frequency_hz)
 
         frequency = np.linspace(self.band.start_hz, self.band.stop_hz, self.band.points)

@@ -54,6 +54,8 @@ class Trim:
         Peak gain of the mode before and after, NaN unless `with_gain` has found it.
     of_feedline : bool
         The dimension is one of the feed line alone, which plain scaling says nothing about.
+    is_measured : bool
+        A measured dip of this build was paired with the mode.
     values, dips_hz, dip_sigmas_hz : (N,) float array
         Trim curve: the dip against the dimension, with its standard deviation.
     losses_db : (N,) float array
@@ -84,6 +86,7 @@ class Trim:
     metal_m2: tuple[float, float] = (float("nan"), float("nan"))
     losses_db: FloatArray = field(repr=False, default_factory=lambda: np.empty(0))
     of_feedline: bool = False
+    is_measured: bool = True
 
     @property
     def low(self) -> float:
@@ -166,7 +169,8 @@ def trim_fitted(
     Raises
     ------
     MeasurementError
-        If the mode has no dip, or the target is out of reach.
+        If the measurement has no dip, the mode has none by the model, or the target is out of
+        reach.
     """
     model = TrimModel(result, file)
     present = model.present(name)
@@ -181,6 +185,7 @@ def trim_fitted(
         raise MeasurementError(
             f"the {label} mode shows no dip in the fitted model, so there is nothing to aim with"
         )
+    model.check_measured(half_waves)
     band = band_hz or (target_hz, target_hz)
     model.check_band(band)
     grid = np.linspace(*reach, CURVE_POINTS)
@@ -219,6 +224,7 @@ def trim_fitted(
         dip_sigmas_hz=np.interp(grid, coarse, sigmas),
         of_feedline=of_feedline,
         measured_hz=model.measured_hz(half_waves),
+        is_measured=model.is_measured(half_waves),
         band_hz=band,
         band_return_loss_db=decibels(model.worst(band, changes)),
         band_return_loss_now_db=decibels(model.worst(band, {})),

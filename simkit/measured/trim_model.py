@@ -13,7 +13,7 @@ import numpy as np
 
 from simkit.errors import GeometryError, MeasurementError, StudyError
 from simkit.measured.fit_problem import modelled_dip, referred
-from simkit.measured.fit_result import FitResult
+from simkit.measured.fit_result import FitResult, FittedCurve
 from simkit.measured.measurement import FloatArray
 from simkit.measured.simulator import REFERENCE_OHM
 from simkit.measured.variation import SCALE
@@ -170,6 +170,34 @@ class TrimModel:
     def sigma(self, of: Callable[[FloatArray], float]) -> float:
         """Standard deviation of one number of the model."""
         return float(np.sqrt(max(self.covariance(lambda x: np.array([of(x)]))[0, 0], 0.0)))
+
+    def check_measured(self, half_waves: int) -> None:
+        """Raise if the sweeps of this build have no dip at all.
+
+        Raises
+        ------
+        MeasurementError
+        """
+        if any(curve.dips for curve in self._of_this_build()):
+            return
+        curve = self.result.curves[self.file]
+        expected = curve.modes_before.dip_hz[curve.modes_before.half_waves.index(half_waves)]
+        frequency = curve.measurement.frequency_hz / 1e6
+        where = f"{expected / 1e6:.0f} MHz" if np.isfinite(expected) else "no frequency"
+        raise MeasurementError(
+            f"{curve.measurement.path}: no dip from {frequency[0]:.0f} to {frequency[-1]:.0f} MHz, "
+            f"so nothing measured says where that of the {self.label(half_waves)} mode is (by the "
+            f"study at {where}), and a cut would rest on the study alone; check the connection, or "
+            "sweep where the dip is"
+        )
+
+    def is_measured(self, half_waves: int) -> bool:
+        """Whether a measured dip of this build was paired with a mode."""
+        return any(half_waves in dict(curve.pairs) for curve in self._of_this_build())
+
+    def _of_this_build(self) -> list[FittedCurve]:
+        """Its own curve and those of its repeats."""
+        return [c for c in self.result.curves if c.build == self.result.curves[self.file].build]
 
     def measured_hz(self, half_waves: int) -> float:
         """Measured dip that was paired with a mode, NaN without one."""

@@ -56,6 +56,8 @@ class PairTrim:
         Standard deviation of what the targets show, at the new dimensions.
     gains_dbi : tuple of (float, float)
         Peak gain of the targets' modes before and after, empty unless found.
+    unmeasured : tuple of str
+        Labels of the targets' modes that no measured dip of this build was paired with.
     """
 
     names: tuple[str, str]
@@ -80,6 +82,7 @@ class PairTrim:
     tracked_sigma: FloatArray = field(repr=False)
     shown_sigma: FloatArray = field(repr=False)
     gains_dbi: tuple[tuple[float, float], ...] = ()
+    unmeasured: tuple[str, ...] = ()
 
     @property
     def sigma(self) -> FloatArray:
@@ -176,7 +179,8 @@ def trim_pair(
     Raises
     ------
     MeasurementError
-        If a mode has no dip, or the targets are out of reach together.
+        If the measurement has no dip, a mode has none by the model, or the targets are out of reach
+        together.
     """
     model = TrimModel(result, file)
     first, second = reaches
@@ -193,6 +197,7 @@ def trim_pair(
                 f"the {model.label(target.half_waves)} mode shows no dip in the fitted model, so "
                 "there is nothing to aim with"
             )
+        model.check_measured(target.half_waves)
     solver = PairSolver(model, targets, names, present, limits)
     table = solver.table()
     change = solver.solution(table)
@@ -224,6 +229,11 @@ def trim_pair(
         ),
         tracked_sigma=_sigmas(model, [t.tracked for t in targets], changes),
         shown_sigma=_sigmas(model, [t.shown for t in targets], changes),
+        unmeasured=tuple(
+            dict.fromkeys(
+                model.label(t.half_waves) for t in targets if not model.is_measured(t.half_waves)
+            )
+        ),
         gains_dbi=model.gains_dbi(tuple(t.half_waves for t in targets), changes) if gain else (),
     )
 

@@ -8,7 +8,14 @@ import numpy as np
 
 from simkit.measured.fit_result import LIMIT_95
 from simkit.measured.fit_words import aligned, number_text
-from simkit.measured.trim_words import change_text, length_text, mode_lines, unit_si
+from simkit.measured.trim_words import (
+    change_text,
+    indented,
+    length_text,
+    mode_lines,
+    unit_si,
+    unsupported_line,
+)
 from simkit.study.units import as_text
 
 if TYPE_CHECKING:
@@ -27,9 +34,9 @@ def pair_text(trim: PairTrim) -> str:
     lines = [
         f"{trim.labels[0]}, {trim.labels[1]}: by `{first}` and `{second}` together",
         "",
-        *aligned(_dimension_rows(trim)),
+        *indented(_dimension_rows(trim)),
         "",
-        *aligned(_target_rows(trim)),
+        *indented(_target_rows(trim)),
         "",
         *mode_lines(trim.modes),
         "",
@@ -40,13 +47,13 @@ def pair_text(trim: PairTrim) -> str:
 
 def _dimension_rows(trim: PairTrim) -> list[tuple[str, ...]]:
     rows: list[tuple[str, ...]] = [
-        ("  dimension", "now", "change", "95 % interval", "then", "plain scaling")
+        ("dimension", "now", "change", "95 % interval", "then", "plain scaling")
     ]
     for k, (name, unit) in enumerate(zip(trim.names, trim.units, strict=True)):
         now, change = float(trim.present[k]), float(trim.change[k])
         rows.append(
             (
-                f"  {name}",
+                name,
                 length_text(now, unit),
                 change_text(change, unit),
                 f"{change_text(float(trim.low[k]), unit)} to "
@@ -61,13 +68,13 @@ def _dimension_rows(trim: PairTrim) -> list[tuple[str, ...]]:
 
 
 def _target_rows(trim: PairTrim) -> list[tuple[str, ...]]:
-    rows: list[tuple[str, ...]] = [("  target", "now", "then", "+- (95 %)", "with plain scaling")]
+    rows: list[tuple[str, ...]] = [("target", "now", "then", "+- (95 %)", "with plain scaling")]
     for k, label in enumerate(trim.labels):
         shown = [
             _shown(trim, k, float(value))
             for value in (trim.before[k], trim.after[k], LIMIT_95 * trim.shown_sigma[k])
         ]
-        rows.append((f"  {label}", *shown, _shown(trim, k, float(trim.scaled[k]))))
+        rows.append((label, *shown, _shown(trim, k, float(trim.scaled[k]))))
     return rows
 
 
@@ -80,7 +87,7 @@ def _shown(trim: PairTrim, target: int, value: float) -> str:
 
 def advice(trim: PairTrim) -> list[str]:
     """What to do, and what to beware of."""
-    lines = [*_conditions(trim)]
+    lines = [*map(unsupported_line, trim.unmeasured), *_conditions(trim)]
     for label, gains in dict(zip(trim.mode_labels, trim.gains_dbi, strict=False)).items():
         if np.isfinite(gains).all():
             lines.append(
@@ -167,6 +174,7 @@ def pair_factor_lines(trim: PairTrim) -> list[str]:
             slope = float(trim.slopes[row, k]) * factor * unit_si(unit)
             cells.append(f"{slope:+.2f} {word}/{unit}" if unit != "1" else f"{slope:+.2f} {word}")
         change, scaling = float(trim.change[k]), float(trim.scaling_change[k])
-        times = number_text(change / scaling, 3) if abs(change) < MOST_TIMES * abs(scaling) else "-"
+        comparable = 0 < abs(change) < MOST_TIMES * abs(scaling)
+        times = number_text(change / scaling, 3) if comparable else "-"
         rows.append((name, as_text(float(trim.present[k]), unit, 5), *cells, times))
     return aligned(rows)

@@ -49,10 +49,10 @@ def _scaling_lines(trim: Trim) -> list[str]:
 
 def mode_lines(modes: Sequence[ModeChange]) -> list[str]:
     """What happens to every mode's dip and match."""
-    rows = [("  mode", "dip now, MHz", "then, MHz", "return loss now, dB", "then, dB")]
+    rows = [("mode", "dip now, MHz", "then, MHz", "return loss now, dB", "then, dB")]
     rows += [
         (
-            f"  {mode.label}",
+            mode.label,
             number_text(mode.before_hz / 1e6, 1),
             number_text(mode.after_hz / 1e6, 1),
             number_text(mode.before_return_loss_db, 1),
@@ -60,12 +60,28 @@ def mode_lines(modes: Sequence[ModeChange]) -> list[str]:
         )
         for mode in modes
     ]
-    return aligned(rows)
+    return indented(rows)
+
+
+def indented(rows: Sequence[tuple[str, ...]]) -> list[str]:
+    """Set a table that belongs to the line above it."""
+    return [f"  {line}" for line in aligned(rows)]
 
 
 def advice(trim: Trim) -> list[str]:
     """What to do, and what to beware of."""
-    return [*_what_to_expect(trim), _what_to_do(trim), *_side_effects(trim)]
+    unsupported = [] if trim.is_measured else [unsupported_line(trim.label)]
+    return [*unsupported, *_what_to_expect(trim), _what_to_do(trim), *_side_effects(trim)]
+
+
+def unsupported_line(label: str) -> str:
+    """Mark a change whose mode was not measured."""
+    mode = label.removesuffix(" wave")
+    return (
+        f"UNSUPPORTED: no measured dip is known to be of the {label} mode, so this change rests on "
+        "the model and the other modes alone; if one is, say so with "
+        f"--pin '{mode}=FREQUENCY', else sweep where it should be before you cut"
+    )
 
 
 def _what_to_expect(trim: Trim) -> list[str]:

@@ -17,6 +17,7 @@ from simkit.plot.style import (
     legend_beside,
     mode_style,
     new_axes,
+    plain,
     put_title,
     say_empty,
     tidy,
@@ -289,6 +290,17 @@ def _decibels(gamma: ComplexArray) -> FloatArray:
 def _comment(curve: FittedCurve) -> str:
     """The first line in which the measured file says what it is."""
     return next((line for line in curve.measurement.comments if line), "")
+
+
+def put_source(ax: Axes, result: FitResult, curve: FittedCurve) -> None:
+    """Write above a picture of a trim what it comes from: study, file and what the file says."""
+    said = _comment(curve)
+    lines = [
+        f"{result.study.title} - {curve.measurement.path.name}",
+        ax.get_title(loc="left"),
+        *([plain(f"the measured file says: {said[:80]}")] if said else []),
+    ]
+    ax.set_title("\n".join([plain(lines[0]), *lines[1:]]), fontsize="medium", loc="left")
 
 
 def _title(result: FitResult, curve: FittedCurve) -> str:

@@ -23,12 +23,23 @@ from simkit.plot.style import (
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
+    from matplotlib.lines import Line2D
+    from matplotlib.text import Text
     from numpy.typing import NDArray
 
     from simkit.feedline.chain import Chain
     from simkit.feedline.oneport import OnePort
 
 BAND = "#e8eef2"
+BESIDE = (0.06, 0.09, 0.13)
+"""How far from its way an element's number stands, in reflection, the best first."""
+ROOM = 0.11
+"""How far from other texts."""
+CURVE_ROOM = 0.05
+"""How far from curves and marks."""
+NUMBER_AT = (0.5, 0.4, 0.6, 0.3, 0.7, 0.2, 0.8)
+"""Parts of a way at which its number may stand, the best first."""
+
 DEEPEST_DB = -40.0
 """Deeper than this a curve is cut off: nothing built comes nearer to a match."""
 
@@ -71,6 +82,7 @@ def plot_match_path(
     start = load.at([frequency_hz]).referred_to(chain.reference_ohm).reflection[0]
     _mark(ax, start, "s", "terminals")
     end = start
+    drawn = []
     for number, (element, way) in enumerate(chain.path(load, frequency_hz), start=1):
         style = mode_style(number)
         ax.plot(
@@ -82,9 +94,11 @@ def plot_match_path(
             zorder=4,
             label=f"{number}  {folded(element.about)}",
         )
-        _arrow(ax, way, style.colour, str(number))
+        drawn.append((way, style.colour, str(number)))
         end = way[-1]
     _mark(ax, end, "o", "connector")
+    for way, colour, text in drawn:  # when all is there that a number must not cover
+        _arrow(ax, way, colour, text)
     legend_beside(ax, "from the antenna")
     return ax
 
@@ -115,12 +129,11 @@ def _mark(ax: Axes, place: complex, marker: str, label: str) -> None:
 
 
 def _arrow(ax: Axes, way: NDArray[np.complex128], colour: str, text: str) -> None:
-    """An arrow head and the element's number half way along; none on a way of no length."""
+    """An arrow head half way along and the element's number near it; none on a way of no length."""
     along = np.concatenate([[0.0], np.cumsum(np.abs(np.diff(way)))])
     if along[-1] < 1e-3:
         return
-    place = int(np.clip(np.searchsorted(along, along[-1] / 2), 1, len(way) - 1))
-    tail, head = way[place - 1], way[place]
+    tail, head = _step(way, along, 0.5)
     ax.annotate(
         "",
         (head.real, head.imag),
@@ -128,9 +141,45 @@ def _arrow(ax: Axes, way: NDArray[np.complex128], colour: str, text: str) -> Non
         arrowprops={"arrowstyle": "-|>", "color": colour, "mutation_scale": 16},
         zorder=5,
     )
-    across = 1j * (head - tail) / abs(head - tail) * 0.06
-    beside = head + across if abs(head + across) < abs(head - across) else head - across
+    beside = _free_place(ax, [_step(way, along, part) for part in NUMBER_AT])
     ax.text(beside.real, beside.imag, text, color=colour, ha="center", va="center", zorder=5)
+
+
+def _step(
+    way: NDArray[np.complex128], along: NDArray[np.float64], part: float
+) -> tuple[complex, complex]:
+    """The two points of a way around a part of its length."""
+    place = int(np.clip(np.searchsorted(along, part * along[-1]), 1, len(way) - 1))
+    return complex(way[place - 1]), complex(way[place])
+
+
+def _free_place(ax: Axes, steps: list[tuple[complex, complex]]) -> complex:
+    """Where beside a way, half way along if that will do, no text, curve or mark is covered."""
+    texts = np.array([_middle(text) for text in ax.texts if text.get_text()])
+    curves = np.concatenate([_points(line) for line in ax.lines])
+    places = []
+    for away in BESIDE:
+        for tail, head in steps:
+            across = 1j * (head - tail) / max(abs(head - tail), 1e-12) * away
+            places += sorted((head + across, head - across), key=abs)
+    rooms = [
+        min(np.abs(place - texts).min() / ROOM, np.abs(place - curves).min() / CURVE_ROOM, 1.0)
+        for place in places
+    ]
+    return places[int(np.argmax(rooms))]
+
+
+def _points(line: Line2D) -> NDArray[np.complex128]:
+    return np.asarray(line.get_xdata(), float) + 1j * np.asarray(line.get_ydata(), float)
+
+
+def _middle(text: Text) -> complex:
+    """Middle of a text in the chart, of letters of the usual size."""
+    width, height = 0.03 * len(text.get_text()), 0.05
+    right = {"left": 0.5, "right": -0.5}.get(text.get_horizontalalignment(), 0.0)
+    up = {"bottom": 0.5, "top": -0.5}.get(text.get_verticalalignment(), 0.0)
+    x, y = text.get_position()
+    return complex(x + right * width, y + up * height)
 
 
 def folded(text: str, width: int = 34) -> str:

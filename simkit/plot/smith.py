@@ -108,7 +108,8 @@ def draw_chart(ax: Axes, reference_ohm: float) -> None:
     for resistance in RESISTANCES:
         _add_circle(ax, resistance / (1 + resistance), 1 / (1 + resistance), rim)
         edge = complex((resistance - 1) / (resistance + 1))
-        _label(ax, edge, f" {resistance * reference_ohm:g}", ha="left", va="bottom")
+        # Far enough for a mark in the middle of the chart, which is where a match ends.
+        _label(ax, edge + 0.03, f"{resistance * reference_ohm:g}", ha="left", va="bottom")
     for reactance in (*REACTANCES, *(-x for x in REACTANCES)):
         _add_circle(ax, 1 + 1j / reactance, 1 / abs(reactance), rim)
         edge = (1j * reactance - 1) / (1j * reactance + 1)

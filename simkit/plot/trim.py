@@ -51,10 +51,11 @@ def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
         change_text(value, trim.unit) for value in (trim.change, trim.low, trim.high)
     )
     best = ", best match over the band," if len(trim.losses_db) else ""
+    unsupported = "" if trim.is_measured else f"\nUNSUPPORTED: no measured {trim.label} dip"
     put_title(
         ax,
         f"{trim.label} dip to {frequency_text(trim.target_hz, unit)}{best} by {trim.name}: "
-        f"{change} (95 %: {low} to {high})",
+        f"{change} (95 %: {low} to {high}){unsupported}",
     )
     ax.fill_between(
         x, y - spread, y + spread, color=style.colour, alpha=0.18, linewidth=0, label="95 % band"
@@ -72,6 +73,7 @@ def plot_trim(trim: Trim, *, ax: Axes | None = None) -> Axes:
         color=INK,
         alpha=0.07,
         linewidth=0,
+        label=f"95 % interval of {trim.name}",
     )
     ax.plot(
         now,

@@ -33,6 +33,9 @@ SECOND_DASHES = (0, (6, 2))
 LABEL_HEIGHTS = (0.1, 0.92)
 """Where the faint lines of either target are labelled, so that the two sets stay apart."""
 
+LABEL_ROOM = 0.08
+"""Least distance between such labels, in widths of the map."""
+
 SECOND_COLOUR = "#b5651d"
 """For the second target if it is of the same mode as the first."""
 
@@ -57,7 +60,9 @@ def plot_trim_map(trim: PairTrim, *, ax: Axes | None = None) -> Axes:
         f"{name} {change_text(float(change), unit)}"
         for name, change, unit in zip(trim.names, trim.change, trim.units, strict=True)
     )
-    put_title(ax, f"{trim.labels[0]}, {trim.labels[1]}:\n{changes}")
+    lost = f"\nUNSUPPORTED: no measured {' nor '.join(trim.unmeasured)} dip"
+    unsupported = lost if trim.unmeasured else ""
+    put_title(ax, f"{trim.labels[0]}, {trim.labels[1]}:\n{changes}{unsupported}")
     now, then = trim.present * scale, (trim.present + trim.change) * scale
     scaled = now + trim.scaling_change * scale
     ring = _ellipse(trim.covariance * np.outer(scale, scale)) + then
@@ -130,17 +135,44 @@ def _draw_target(
     known = seen[np.isfinite(seen)]
     if not known.size or np.ptp(known) == 0:
         return
-    levels = MaxNLocator(LEVELS).tick_values(known.min(), known.max())
+    levels = np.asarray(MaxNLocator(LEVELS).tick_values(known.min(), known.max()))
     faint = ax.contour(x, y, table, levels=levels, colors=colour, linewidths=0.7, alpha=0.5)
     height = bottom + LABEL_HEIGHTS[k] * (top - bottom)
-    places = [(left + part * (right - left), height) for part in np.linspace(0.08, 0.92, 6)]
-    ax.clabel(faint, fmt=f"%.5g {unit}", fontsize=7.5, manual=places)
+    across = np.linspace(left, right, 200)
+    row = np.array([np.interp(height, y, column) for column in table.T])
+    places = _label_places(across, np.interp(across, x, row), levels, wanted)
+    ax.clabel(faint, fmt=f"%.5g {unit}", fontsize=7.5, manual=[(at, height) for at in places])
     if spread > 0:
         ax.contourf(x, y, table, levels=[wanted - spread, wanted + spread], colors=[colour],
                     alpha=0.2)  # fmt: skip
     if np.nanmin(table) < wanted < np.nanmax(table):
         ax.contour(x, y, table, levels=[wanted], colors=colour, linewidths=2.2,
                    linestyles=["solid" if k == 0 else SECOND_DASHES])  # fmt: skip
+
+
+def _label_places(
+    across: FloatArray, row: FloatArray, levels: FloatArray, wanted: float
+) -> list[float]:
+    """Where faint lines are labelled along a row of the map: apart from each other and the strong.
+
+    A line that crosses the row twice is labelled at either place.
+    """
+    room = LABEL_ROOM * (across[-1] - across[0])
+    taken = [*_crossings(across, row, wanted), across[0] - room / 2, across[-1] + room / 2]
+    kept: list[float] = []
+    for level in levels:
+        for at in _crossings(across, row, float(level)):
+            if min(abs(at - other) for other in taken) >= room:
+                kept.append(at)
+                taken.append(at)
+    return kept
+
+
+def _crossings(across: FloatArray, row: FloatArray, level: float) -> list[float]:
+    """Where a row goes through a level."""
+    with np.errstate(invalid="ignore"):
+        through = np.flatnonzero((row[:-1] - level) * (row[1:] - level) <= 0)
+    return [float(across[k]) for k in through]
 
 
 def _beside(values: FloatArray, low: float, high: float) -> list[int]:

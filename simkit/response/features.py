@@ -19,7 +19,7 @@ from scipy.interpolate import CubicSpline
 from scipy.optimize import brentq, minimize_scalar
 from scipy.signal import find_peaks
 
-from simkit.response.near import Near
+from simkit.response.near import NEIGHBOURS, Near
 
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
@@ -230,7 +230,8 @@ def conductance_peaks(
         if prominence < min_prominence * conductance[place]:
             continue
         near = Near(frequency, curve.samples, int(place))
-        at = _lowest(partial(_against_conductance, curve, near), frequency, int(place))
+        against = partial(_against_conductance, curve, near)
+        at = _lowest(against, partial(_falling_conductance, near), frequency, int(place))
         found.append(ConductancePeak(at, 1.0 / curve.admittance(near(at)).real))
     return found
 
@@ -273,6 +274,22 @@ def impedance_q(frequency_hz: ArrayLike, impedance_ohm: ArrayLike) -> FloatArray
     q = np.full(frequency.shape, np.nan)
     np.divide(frequency * size, 2.0 * resistance, out=q, where=resistance > 0)
     return q
+
+
+def impedance_q_at(at_hz: float, frequency_hz: FloatArray, impedance_ohm: ComplexArray) -> float:
+    """`impedance_q` at one frequency of a curve, from the samples around it."""
+    place = max(int(np.searchsorted(frequency_hz, at_hz, side="right")) - 1, 0)
+    norm = float(abs(impedance_ohm[place])) or 1.0
+    first = max(0, place - NEIGHBOURS)
+    around = slice(first, place + NEIGHBOURS)
+    near = Near(frequency_hz[around], reflection(impedance_ohm[around], norm), place - first)
+    w = near(at_hz)
+    impedance = norm * (1 + w) / (1 - w)
+    slope = 2 * norm * near.slope(at_hz) / (1 - w) ** 2
+    if impedance.real <= 0:
+        return float("nan")
+    rise = slope.imag + abs(impedance.imag) / at_hz
+    return float(at_hz * np.hypot(slope.real, rise) / (2 * impedance.real))
 
 
 def matched_bandwidth(q: ArrayLike, vswr: float = VSWR_BAND) -> FloatArray:
@@ -352,9 +369,20 @@ def _against_conductance(curve: _BoundedCurve, near: Near, frequency_hz: float) 
     return -curve.admittance(near(frequency_hz)).real
 
 
+def _falling_conductance(near: Near, frequency_hz: float) -> float:
+    """The sign of the conductance's fall: y = (1 - w) / (1 + w) falls by 2 w' / (1 + w)^2."""
+    w = near(frequency_hz)
+    return (near.slope(frequency_hz) * (1 + w).conjugate() ** 2).real
+
+
 def _dip(frequency: FloatArray, gamma: ComplexArray, place: int) -> Dip:
     curve = Near(frequency, gamma, place)
-    at = _lowest(lambda f: abs(curve(f)) ** 2, frequency, place)
+    at = _lowest(
+        lambda f: abs(curve(f)) ** 2,
+        lambda f: (curve(f).conjugate() * curve.slope(f)).real,
+        frequency,
+        place,
+    )
     return Dip(
         frequency_hz=at,
         return_loss_db=float(return_loss_db(curve(at))),
@@ -375,11 +403,18 @@ def _width(
     return band[1] - band[0] if band else float("nan")
 
 
-def _lowest(function: Callable[[float], float], frequency: FloatArray, place: int) -> float:
-    """Minimise within the two steps around sample `place`."""
+def _lowest(
+    function: Callable[[float], float],
+    rising: Callable[[float], float],
+    frequency: FloatArray,
+    place: int,
+) -> float:
+    """Minimise within the two steps around sample `place`; `rising` has the sign of the slope."""
     low, high = frequency[max(place - 1, 0)], frequency[min(place + 1, len(frequency) - 1)]
-    # In steps from the sample, so that the tolerance is relative to the step.
     centre, half = frequency[place], (high - low) / 2
+    if rising(low) < 0 < rising(high):
+        return float(brentq(rising, low, high, xtol=1e-7 * half))
+    # In steps from the sample, so that the tolerance is relative to the step.
     result = minimize_scalar(
         lambda t: function(centre + t * half),
         bounds=((low - centre) / half, (high - centre) / half),
@@ -392,9 +427,8 @@ def _lowest(function: Callable[[float], float], frequency: FloatArray, place: in
 def _sign_changes(values: FloatArray) -> list[int]:
     """Indices i with a change of sign from i to i + 1; an exact zero counts as what preceded."""
     sign = np.sign(values)
-    for i in range(1, len(sign)):
-        if sign[i] == 0:
-            sign[i] = sign[i - 1]
+    for i in np.flatnonzero(sign[1:] == 0) + 1:
+        sign[i] = sign[i - 1]
     return [int(i) for i in np.flatnonzero(sign[:-1] * sign[1:] < 0)]
 
 

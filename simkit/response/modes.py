@@ -139,7 +139,7 @@ def find_modes(
     strong = size > LEAST_RESIDUE * size.max()
     poles, residues = poles[strong], residues[strong]
     order = np.argsort(poles.real)
-    modes = [_mode(complex(poles[k]), residues[k], grid) for k in order]
+    modes = _modes(poles[order], residues[order], grid)
     alike = np.array([coherence(mode.current, grid) for mode in modes])
     if alike.min() <= LEAST_COHERENCE:
         total = _total_strength(residues[order], grid)
@@ -163,13 +163,19 @@ def _surviving(poles: ComplexArray, others: Sequence[ComplexArray]) -> BoolArray
     return np.asarray(found >= np.where(wide, len(others), len(others) - len(others) // 3))
 
 
-def _mode(pole_hz: complex, residue: ComplexArray, grid: WireGrid) -> NaturalMode:
-    by_source = residue.reshape(2, -1)
-    shape = np.linalg.svd(by_source, full_matrices=False)[2][0]
-    shape = shape / shape[int(np.argmax(abs(shape)))]
-    feed = sum((volts * by_source[0, segment] for segment, volts in grid.source), 0j)
-    strength = float(np.linalg.norm(residue)) / pole_hz.imag
-    return NaturalMode(pole_hz, half_waves(shape, grid), shape, complex(feed), strength)
+def _modes(poles_hz: ComplexArray, residues: ComplexArray, grid: WireGrid) -> list[NaturalMode]:
+    by_source = residues.reshape(len(residues), 2, -1)
+    shapes = np.linalg.svd(by_source, full_matrices=False)[2][:, 0]
+    largest = np.argmax(abs(shapes), axis=1)[:, None]
+    shapes = shapes / np.take_along_axis(shapes, largest, axis=1)
+    feed = sum((volts * by_source[:, 0, segment] for segment, volts in grid.source), 0j)
+    strength = np.linalg.norm(residues, axis=1) / poles_hz.imag
+    return [
+        NaturalMode(complex(pole), number, shape, complex(admittance), float(size))
+        for pole, number, shape, admittance, size in zip(
+            poles_hz, _half_waves_of(shapes, grid), shapes, np.asarray(feed), strength, strict=True
+        )
+    ]
 
 
 def without_echoes(modes: Sequence[NaturalMode]) -> tuple[NaturalMode, ...]:
@@ -216,11 +222,19 @@ def half_waves(current: ComplexArray, grid: WireGrid) -> int:
         stands on a ground plane goes on into its image, from tip to tip or once round: the number
         then counts quarter waves of the path itself.
     """
-    distance, along_path = current_along_path(current, grid)
-    along = turned_to_real(along_path).real
+    return _half_waves_of(current[None], grid)[0]
+
+
+def _half_waves_of(currents: ComplexArray, grid: WireGrid) -> list[int]:
+    """As `half_waves`, of (N, S) currents."""
+    distance, along_path = current_along_path(currents, grid)
     # Where the path turns from one chain into another the current belongs to neither.
     turning = np.min(abs(distance[:, None] - path_turns_m(grid)[None]), axis=1, initial=np.inf)
     counts = turning > TURN_WIDTHS * grid.feed_width_m
+    return [_signs_counted(turned_to_real(one).real, counts, grid) for one in along_path]
+
+
+def _signs_counted(along: FloatArray, counts: BoolArray, grid: WireGrid) -> int:
     loud = along[counts & (abs(along) > QUIET * abs(along).max())]
     signs = np.sign(loud)
     if grid.path_closed:

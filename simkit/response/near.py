@@ -15,17 +15,6 @@ It errs with the sixth power of the step: by 4e-6 of a resonance's peak if its h
 samples, by 2e-4 if it has five, and by 5 % if it has two (the pole lies one half width away).
 """
 
-SPLINE_REACH = 20
-"""Samples on either side on which the slope of a spline depends.
-
-What lies farther away acts on it by 0.27 (2 - sqrt 3) less for each sample: under 1e-11.
-"""
-
-
-def samples_near(place: int) -> slice:
-    """Samples on which the slope of a spline near one of them depends."""
-    return slice(max(0, place - SPLINE_REACH), place + SPLINE_REACH + 2)
-
 
 class Near:
     """Polynomial through the samples around one of them, for one step before and behind it.
@@ -54,6 +43,15 @@ class Near:
         for factor in self.factors:
             value = value * at + factor
         return value
+
+    def slope(self, frequency_hz: float) -> complex:
+        """Return the curve's slope there, per hertz."""
+        at = (frequency_hz - self.centre) / self.step
+        value = slope = 0j
+        for factor in self.factors:
+            slope = slope * at + value
+            value = value * at + factor
+        return slope / self.step
 
     def imag(self, frequency_hz: float) -> float:
         """Return the imaginary part of the curve there."""

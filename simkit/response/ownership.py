@@ -21,11 +21,10 @@ from simkit.response.features import (
     conductance_peaks,
     find_dips,
     find_resonances,
-    impedance_q,
+    impedance_q_at,
     reflection,
 )
 from simkit.response.modes import NaturalMode
-from simkit.response.near import samples_near
 from simkit.response.rational import ComplexArray
 
 LEAST_SHARE = 0.25
@@ -93,17 +92,13 @@ def owned_features(
     found = []
     for index in range(len(modes)):
         dip = owned_dips.get(index)
-        q_dip = _q_at(dip.frequency_hz, frequency_hz, impedance_ohm) if dip else float("nan")
+        q_dip = (
+            impedance_q_at(dip.frequency_hz, frequency_hz, impedance_ohm) if dip else float("nan")
+        )
         found.append(
             OwnedFeatures(peaks.get(index), dip, series.get(index), parallel.get(index), q_dip)
         )
     return tuple(found)
-
-
-def _q_at(at_hz: float, frequency_hz: FloatArray, impedance_ohm: ComplexArray) -> float:
-    near = samples_near(int(np.searchsorted(frequency_hz, at_hz)))
-    q = impedance_q(frequency_hz[near], impedance_ohm[near])
-    return float(np.interp(at_hz, frequency_hz[near], q))
 
 
 class _Shares:

@@ -8,7 +8,7 @@ Nakatsukasa, Sete, Trefethen, "The AAA algorithm for rational approximation", SI
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -52,7 +52,13 @@ class RationalModel:
 
     def __call__(self, frequency_hz: FloatArray) -> ComplexArray:
         """Evaluate at (F,) frequencies in Hz; returns (F, K)."""
-        return self.matrix(frequency_hz) @ self.values
+        return self.combined(frequency_hz, self.values)
+
+    def combined(self, frequency_hz: FloatArray, values: ComplexArray) -> ComplexArray:
+        """Evaluate what takes the given (M, K) or (M,) values at the samples; (F, K) or (F,)."""
+        return barycentric_values(
+            np.atleast_1d(frequency_hz), self.frequency_hz, self.weight, values
+        )
 
     def matrix(self, frequency_hz: FloatArray) -> ComplexArray:
         """(F, M) matrix that maps sample values to values at the given frequencies."""
@@ -111,6 +117,37 @@ def barycentric_matrix(
     return np.asarray(matrix, dtype=np.complex128)
 
 
+def barycentric_values(
+    frequency_hz: FloatArray, samples_hz: FloatArray, weight: ComplexArray, values: ComplexArray
+) -> ComplexArray:
+    """Evaluate a barycentric rational function; faster than its matrix where F is large.
+
+    Parameters
+    ----------
+    frequency_hz : (F,) float array
+    samples_hz : (M,) float array
+    weight : (M,) complex array
+    values : (M, K) or (M,) complex array
+        At the samples.
+
+    Returns
+    -------
+    (F, K) or (F,) complex array
+    """
+    columns = values.reshape(len(values), -1)
+    above = np.empty((len(weight), columns.shape[1] + 1), dtype=np.complex128)
+    above[:, :-1], above[:, -1] = weight[:, None] * columns, weight
+    difference = frequency_hz[:, None] - samples_hz
+    met = (difference == 0).any(axis=1)
+    difference[met] = 1.0
+    # One product of real matrices: the real and the imaginary parts lie side by side.
+    sums = ((1.0 / difference) @ above.view(np.float64)).view(np.complex128)
+    result = sums[:, :-1] / sums[:, -1:]
+    if met.any():
+        result[met] = barycentric_matrix(frequency_hz[met], samples_hz, weight) @ columns
+    return result.reshape(len(frequency_hz), *values.shape[1:])
+
+
 def fit_weights(
     frequency: FloatArray, sketch: ComplexArray, tolerance: float
 ) -> tuple[ComplexArray, float]:
@@ -130,6 +167,23 @@ def fit_weights(
         0 for samples not used as support points.
     misfit : float
     """
+    fit = _fit(frequency, sketch, tolerance, ())
+    return fit.weights, fit.misfit
+
+
+@dataclass(frozen=True)
+class _Fit:
+    """Weights, 0 for samples that are no support points, and the latter as they were chosen."""
+
+    weights: ComplexArray
+    misfit: float
+    support: tuple[int, ...]
+
+
+def _fit(
+    frequency: FloatArray, sketch: ComplexArray, tolerance: float, first: Sequence[int]
+) -> _Fit:
+    """As `fit_weights`, beginning with some samples as support points."""
     count, width = sketch.shape
     if count < 3:
         raise ValueError(f"a rational fit needs at least 3 samples, got {count}")
@@ -138,11 +192,9 @@ def fit_weights(
     cauchy = 1.0 / apart
     slopes = (sketch[:, None] - sketch) * cauchy[:, :, None]
     scale = float(np.sqrt(_powers(sketch).max()))
-    support: list[int] = []
-    rest = list(range(count))
-    missed = _powers(sketch - sketch.mean(axis=0))
+    support = list(first) or [int(np.argmax(_powers(sketch - sketch.mean(axis=0))))]
+    rest = [k for k in range(count) if k not in support]
     while True:
-        support.append(rest.pop(int(np.argmax(missed))))
         loewner = slopes[rest][:, support].swapaxes(1, 2).reshape(-1, len(support))
         weights = np.linalg.svd(loewner, full_matrices=False)[2][-1].conj()
         terms = cauchy[rest][:, support] * weights
@@ -152,9 +204,10 @@ def fit_weights(
         enough = len(rest) > 1 and (len(rest) - 1) * width >= len(support) + 1
         if misfit < tolerance or not enough:
             break
+        support.append(rest.pop(int(np.argmax(missed))))
     result = np.zeros(count, dtype=np.complex128)
     result[support] = weights
-    return result, misfit
+    return _Fit(result, misfit, tuple(support))
 
 
 def _powers(rows: ComplexArray) -> FloatArray:
@@ -211,17 +264,16 @@ def adaptive_sweep(
     """
     search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed, observe)
     verified = 0
+    error = np.inf
     while True:
-        frequency, difference = search.where_models_differ()
-        if difference < search.tolerance:
-            difference = search.error_at(search.emptiest())
-            verified = verified + 1 if difference < search.tolerance else 0
-            if verified >= max(2, (len(search.frequencies) - verified) / VERIFIED_EACH):
-                return search.result(converged=True, error=difference)
-        elif len(search.frequencies) < most_samples:
-            search.add(frequency)
+        frequency, difference = search.where_in_doubt()
+        settled = difference < search.tolerance
+        if settled and verified >= max(2, (len(search.frequencies) - verified) / VERIFIED_EACH):
+            return search.result(converged=True, error=error)
         if len(search.frequencies) >= most_samples:
-            return search.result(converged=False, error=difference)
+            return search.result(converged=False, error=max(error, difference))
+        error = search.error_at(search.emptiest() if settled else frequency)
+        verified = verified + 1 if error < search.tolerance else 0
 
 
 class _Search:
@@ -252,8 +304,10 @@ class _Search:
         self.sketch = [value @ self.projection for value in self.values]
         self.candidates = np.linspace(start_hz, stop_hz, CANDIDATES)
         self.fits: dict[tuple[int, ...], ComplexArray] = {}
+        self.support: tuple[int, ...] = ()
         # The first comparison is with the fit that lacks the sample in the middle of the band.
         middle = FIRST_SAMPLES // 2
+        self.newest = self.frequencies[middle]
         self.before = self._on_candidates([k for k in range(FIRST_SAMPLES) if k != middle])
         self.now = self._on_candidates(range(FIRST_SAMPLES))
 
@@ -268,26 +322,42 @@ class _Search:
         frequency = np.array([self.frequencies[k] for k in chosen]) / self.stop_hz
         sketch = np.array([self.sketch[k] for k in chosen])
         fit_tolerance = max(self.tolerance / 10, FIT_TOLERANCE_FLOOR)
-        return fit_weights(frequency, sketch, fit_tolerance)[0]
+        # The last fit had one sample more or less. Begun with all of its support points but the
+        # last, this one may still end with fewer.
+        first = [chosen.index(k) for k in self.support[:-1] if k in chosen]
+        fit = _fit(frequency, sketch, fit_tolerance, first)
+        self.support = tuple(chosen[k] for k in fit.support)
+        return fit.weights
 
     def _on_candidates(self, chosen: list[int] | range) -> ComplexArray:
         samples = np.array([self.frequencies[k] for k in chosen])
         sketch = np.array([self.sketch[k] for k in chosen])
-        matrix = barycentric_matrix(self.candidates, samples, self._weights(chosen))
-        return np.asarray(matrix @ sketch)
+        return barycentric_values(self.candidates, samples, self._weights(chosen), sketch)
 
     def scale(self) -> float:
         return float(np.median(np.linalg.norm(self.now, axis=1)))
 
-    def where_models_differ(self) -> tuple[float, float]:
-        difference = np.linalg.norm(self.now - self.before, axis=1) / self.scale()
-        worst = float(difference.max())
+    def where_in_doubt(self) -> tuple[float, float]:
+        """Where the next sample tells most, and by how much the model may be off at worst.
+
+        The last two models differ most about the sample that only the later one knows. There it is
+        exact, so up to the next sample around their difference counts in proportion to the
+        distance. A difference beyond the currents themselves says no more than that neither model
+        is any good; such places are judged by how far the samples are.
+        """
         taken = np.array(self.frequencies)
-        near = np.min(abs(self.candidates[:, None] - taken[None]), axis=1)
-        difference[near < 1e-3 * (self.stop_hz - self.start_hz)] = -1.0
-        return float(self.candidates[int(np.argmax(difference))]), worst
+        away = abs(self.candidates - self.newest)
+        reach = np.min(abs(taken - self.newest)[taken != self.newest])
+        difference = np.linalg.norm(self.now - self.before, axis=1) / self.scale()
+        difference *= np.minimum(away / reach, 1.0)
+        empty = np.min(abs(self.candidates[:, None] - taken), axis=1)
+        difference[empty < 1e-3 * (self.stop_hz - self.start_hz)] = -1.0
+        worst = float(difference.max())
+        rank = np.minimum(difference, 1.0) * empty if worst > 1.0 else difference
+        return float(self.candidates[int(np.argmax(rank))]), worst
 
     def add(self, frequency_hz: float) -> None:
+        self.newest = frequency_hz
         self.frequencies.append(frequency_hz)
         self.values.append(self.solve(frequency_hz))
         self.sketch.append(self.values[-1] @ self.projection)
@@ -304,8 +374,9 @@ class _Search:
         """Solve one more frequency and return how far the model was off there."""
         count = len(self.frequencies)
         samples = np.array(self.frequencies)
-        matrix = barycentric_matrix(np.array([frequency_hz]), samples, self._weights(range(count)))
-        predicted = (matrix @ np.array(self.sketch))[0]
+        predicted = barycentric_values(
+            np.array([frequency_hz]), samples, self._weights(range(count)), np.array(self.sketch)
+        )[0]
         self.add(frequency_hz)
         return float(np.linalg.norm(self.sketch[-1] - predicted)) / self.scale()
 

@@ -106,20 +106,26 @@ def current_along_path(
 ) -> tuple[FloatArray, ComplexArray]:
     """Current along the tip-to-tip path through the feed, positive in one direction throughout.
 
+    Parameters
+    ----------
+    current : (..., S) complex array
+    grid : WireGrid
+    points : int
+
     Returns
     -------
     distance_m : (points,) float array
         From the first tip.
-    current : (points,) complex array
+    current : (..., points) complex array
     """
     lengths = [abs(piece.end_m - piece.start_m) for piece in grid.path]
     starts = np.concatenate([[0.0], np.cumsum(lengths)])
     distance = np.linspace(0.0, starts[-1], points)
-    value = np.zeros(points, dtype=np.complex128)
+    value = np.zeros((*current.shape[:-1], points), dtype=np.complex128)
     for number, piece in enumerate(grid.path):
         last = number == len(grid.path) - 1
         inside = (distance >= starts[number]) & (last | (distance < starts[number + 1]))
-        value[inside] = _along(current, grid, piece, distance[inside] - starts[number])
+        value[..., inside] = _along(current, grid, piece, distance[inside] - starts[number])
     return distance, value
 
 

@@ -35,7 +35,7 @@ def sweep_currents(antenna: Antenna, grid: WireGrid, *, tolerance: float = 1e-3)
             grid.radius_m,
             frequency_hz,
             [grid.source, grid.probe],
-            series=_series_loads(antenna, grid, frequency_hz),
+            series=series_loads(antenna, grid, frequency_hz),
             ground=antenna.ground,
             earth=earth,
         )
@@ -66,7 +66,8 @@ def _judged(grid: WireGrid) -> FloatArray:
     return np.block([[one, none], [none, one]])
 
 
-def _series_loads(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> list[SeriesLoad]:
+def series_loads(antenna: Antenna, grid: WireGrid, frequency_hz: float) -> list[SeriesLoad]:
+    """Load of each wire at one frequency: conductor, carrier and the loss of both."""
     resistance = resistance_ohm_per_m(antenna, grid, frequency_hz)
     return [
         SeriesLoad(float(ohm), float(henry))

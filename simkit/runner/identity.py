@@ -16,7 +16,7 @@ from simkit.store.layout import SweptColumn, layout_hash
 from simkit.study.feedline_text import feedline_text
 from simkit.study.model import Antenna, Case
 
-MODEL_VERSION = "6"
+MODEL_VERSION = "7"
 """Raise it with every change that alters numbers: rules, engine settings, sweep, modes, patterns.
 
 Cases solved under another model version are never mixed with new ones; they are solved anew.

@@ -21,6 +21,9 @@ from simkit.store.write import KEY_DTYPE, StoreFile
 BLOCK_S, LONG_BLOCK_S = 4.0, 20.0
 """Work in one block of a short and of a long run."""
 
+BESIDE_S = 0.1
+"""Taken by a block beside its cases, mostly by writing it."""
+
 MOST_FILES = 9_500
 """Files of all blocks together; blocks grow for it, and are then written several times over."""
 
@@ -47,10 +50,20 @@ def block_size_for(seconds: float, cases: int, workers: int, case_bytes: int = 1
     by_workers = math.ceil(cases / (3 * workers))
     most_blocks = max(MOST_FILES // len(VARIABLES), 4 * workers)
     size = max(min(by_time, by_workers), math.ceil(cases / most_blocks))
-    size = max(1, min(size, LARGEST_BLOCK_BYTES // max(case_bytes, 1)))
-    if size < _EVEN_FROM:
-        return size
-    return math.ceil(size / _EVEN_FROM) * _EVEN_FROM
+    most = max(1, LARGEST_BLOCK_BYTES // max(case_bytes, 1))
+    size = min(size, most)
+    piece = _EVEN_FROM if size >= _EVEN_FROM else 1
+    size = math.ceil(size / piece) * piece
+    least = max(size // 2, math.ceil(cases / most_blocks), 1)
+
+    def taken_s(pieces: int) -> float:
+        blocks = math.ceil(cases / (pieces * piece))
+        return math.ceil(blocks / workers) * (pieces * piece * seconds + BESIDE_S)
+
+    # No worker shall wait for long while another does the last block.
+    like = range(size // piece // 2, size * 5 // 4 // piece + 1)
+    sizes = [k for k in like if least <= k * piece <= most] or [size // piece]
+    return min(sizes, key=taken_s) * piece
 
 
 def limit_for(segments: int, seconds: float | None = None, *, converge: bool = False) -> float:

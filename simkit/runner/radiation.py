@@ -12,9 +12,9 @@ from simkit.response.ownership import OwnedFeatures
 from simkit.response.pattern import (
     Radiators,
     gain_grid_dbi,
-    peak_direction,
     radiated_power_w,
 )
+from simkit.response.peak import peak_direction
 from simkit.response.rational import ComplexArray, Sweep
 from simkit.runner.arrays import padded
 from simkit.runner.currents import resistance_ohm_per_m

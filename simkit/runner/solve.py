@@ -155,7 +155,7 @@ def _evaluate(
     band = antenna.frequency
     frequency_hz = np.linspace(band.start_hz, band.stop_hz, band.points)
     sampled = sweep.model.values[:, : grid.segments] @ source_weight(grid)
-    impedance = impedance_of(grid, sweep.model.matrix(frequency_hz) @ sampled, frequency_hz)
+    impedance = impedance_of(grid, sweep.model.combined(frequency_hz, sampled), frequency_hz)
     modes, notes = _modes(antenna, grid, sweep)
     connector = Connector.of(antenna, frequency_hz, impedance)
     features = owned_features(

@@ -14,7 +14,7 @@ from simkit.runner.lock import may_start, writing
 from simkit.runner.result import CaseResult
 from simkit.store.remote import Place
 from simkit.store.schema import Status
-from simkit.store.write import TORN, Block, StoreFile
+from simkit.store.write import TORN, Block, StoreFile, is_complete
 from simkit.study.model import Antenna
 
 CHECKPOINT_S = 30.0
@@ -225,6 +225,8 @@ class Worker:
         try:
             stored = store.read_arrays(job.block)
         except TORN:
+            return content, list(job.cases)
+        if not is_complete(store.path, job.block, stored["status"]):
             return content, list(job.cases)
         again = {case.index - content.first for case in job.cases}
         for row, code in enumerate(stored["status"]):

@@ -3,17 +3,19 @@
 from __future__ import annotations
 
 from os import PathLike
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from simkit.errors import StoreError
+from simkit.errors import DamageError, StoreError
 from simkit.store.files import store_exists
 from simkit.store.remote import Place, place, zarr_store
 from simkit.store.schema import Status
 
 if TYPE_CHECKING:
     import xarray as xr
+    from numpy.typing import NDArray
 
 STORE_NAME = "store.zarr"
 UNFINISHED_NAME = "store.new.zarr"
@@ -60,7 +62,8 @@ def open_results(path: str | PathLike[str] | Place) -> xr.Dataset:
     Raises
     ------
     StoreError
-        The folder is missing, empty, damaged or written by another version.
+        The folder is missing, empty, damaged or written by another version; `DamageError` if some
+        cases of it can be solved anew.
     """
     import xarray as xr
 
@@ -75,21 +78,63 @@ def open_results(path: str | PathLike[str] | Place) -> xr.Dataset:
         words = np.array([str(name) for name in strips.values])
         dataset = dataset.assign_coords(strip=("strip", words, strips.attrs))
     except (*TORN, KeyError) as error:
-        raise StoreError(f"{store}: damaged, cannot be read: {error}") from error
+        raise StoreError(
+            f"{store}: damaged, cannot be read: {error}; simkit run STUDY --fresh solves the study "
+            "anew"
+        ) from error
     missing = [name for name in attrs["variables"] if name not in dataset]
     if missing:
         raise StoreError(
             f"{store}: damaged, the arrays {', '.join(missing)} are missing; "
             "start anew with --fresh"
         )
+    _check_axes(store, dataset)
     try:
         dataset["status"].load()
     except TORN as error:
-        raise StoreError(
+        raise DamageError(
             f"{store}: the status of a block is damaged ({error}); "
             "run the study again, it solves that block anew"
         ) from error
+    _check_files(store, int(attrs["block_size"]), dataset["status"].values)
     return _in_order(dataset, attrs)
+
+
+def _check_axes(store: Place, dataset: xr.Dataset) -> None:
+    """Read what the arrays are over, refuse a store where that is torn or reads as zeros."""
+    from simkit.store.write import TORN
+
+    for name in dataset.coords:
+        try:
+            values = dataset[name].variable.load().values
+        except TORN as error:
+            raise StoreError(
+                f"{store}: damaged, the values of `{name}` cannot be read ({error}); simkit run "
+                "STUDY --fresh solves the study anew"
+            ) from error
+        if name in ("case", "frequency") and not (np.diff(values) > 0).all():
+            raise StoreError(
+                f"{store}: damaged, the values of `{name}` are not there any more; simkit run "
+                "STUDY --fresh solves the study anew"
+            )
+
+
+def _check_files(store: Place, block_size: int, statuses: NDArray[np.int8]) -> None:
+    """Refuse a store that has lost a file without which solved cases would read as empty.
+
+    At an address, where each look costs time, a lost file shows only where cases are solved anew.
+    """
+    from simkit.store.write import is_complete
+
+    if not isinstance(store, Path):
+        return
+    for start in range(0, len(statuses), block_size):
+        stop = min(start + block_size, len(statuses))
+        if not is_complete(store, start // block_size, statuses[start:stop]):
+            raise DamageError(
+                f"{store}: damaged, the curves of the solved cases from {start} to {stop - 1} are "
+                "not there any more; simkit run STUDY --retry solves them anew"
+            )
 
 
 def damaged_cases(path: str | PathLike[str] | Place) -> list[range]:

@@ -23,6 +23,9 @@ TORN = (ValueError, RuntimeError, OSError)
 """What reading a damaged chunk can raise: a wrong checksum, a codec's complaint, a missing file."""
 
 
+ALWAYS_WRITTEN = "impedance"
+"""Array of which a solved case leaves nothing empty."""
+
 KEY_DTYPE = np.dtype("S64")
 """Type of many case keys at once: the hexadecimal digits, empty for none."""
 
@@ -184,11 +187,12 @@ class StoreFile:
     def is_damaged(self, block: int) -> bool:
         """Whether the block is settled, at least in part, and an array of it cannot be read."""
         try:
-            if self._read_one("status", block).any():
+            statuses = self._read_one("status", block)
+            if statuses.any():
                 self.read_arrays(block)
         except TORN:
             return True
-        return False
+        return not is_complete(self.path, block, statuses)
 
     def _read_one(self, name: str, block: int) -> Any:
         chunk = self._chunk(name, block)
@@ -225,8 +229,7 @@ class StoreFile:
         flush(self.path / name for name in names)
 
     def _chunk(self, name: str, block: int) -> Place:
-        trailing = ".0" * (len(VARIABLES[name].dims) - 1)
-        return self.path / name / f"c.{block}{trailing}"
+        return _chunk_path(self.path, name, block)
 
     @contextlib.contextmanager
     def _reached(self) -> Iterator[None]:
@@ -261,6 +264,20 @@ class StoreFile:
             except TORN:
                 continue
         return keys
+
+
+def is_complete(store: Place, block: int, statuses: NDArray[np.int8]) -> bool:
+    """Whether the curves are there that every block with a solved case has.
+
+    A file that is gone reads as if nothing had been written, without any error.
+    """
+    solved = np.isin(statuses, (Status.SOLVED, Status.DOUBTFUL)).any()
+    return not solved or _chunk_path(store, ALWAYS_WRITTEN, block).exists()
+
+
+def _chunk_path(store: Place, name: str, block: int) -> Place:
+    trailing = ".0" * (len(VARIABLES[name].dims) - 1)
+    return store / name / f"c.{block}{trailing}"
 
 
 def read_attrs(path: Place) -> dict[str, Any]:

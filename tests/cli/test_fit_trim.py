@@ -11,6 +11,7 @@ from click.testing import CliRunner
 
 from simkit.cli import main
 from simkit.cli.fit import write_study
+from simkit.cli.fitting import save
 from simkit.errors import StoreError
 from simkit.study import load_study
 
@@ -65,7 +66,12 @@ def test_fit_writes_a_fitted_study_and_pictures(folder):
     assert "1 mm + arm" in (folder / "gauge_fitted.toml").read_text()
 
 
-def test_trim_says_how_much_to_cut(folder):
+def test_trim_says_how_much_to_cut(folder, monkeypatch):
+    titles = []
+    monkeypatch.setattr(
+        "simkit.cli.trim.save",
+        lambda ax, *place: (titles.append(ax.get_title(loc="left")), save(ax, *place)),
+    )
     words = ("--mode", "1/2", "--target", "930 MHz", "--by", "arm", "--free", "arm=72 mm..79 mm")
     done = run(folder, "trim", *words)
     assert done.exit_code == 0, done.output
@@ -74,6 +80,9 @@ def test_trim_says_how_much_to_cut(folder):
     # A short dipole has 1.76 dBi, a half-wave one 2.15.
     assert re.search(r"peak gain of the mode 2\.\d\d dBi now, 2\.\d\d dBi then", done.stdout)
     assert (folder / "plots" / "trim_arm.png").stat().st_size > 10_000
+    first, *_, last = titles[0].split("\n")
+    assert first == "Creek gauge link - build.s1p"
+    assert last.startswith("the measured file says: INVENTED DATA")
     as_json = json.loads(run(folder, "trim", *words, "--json").stdout)[0]
     # The dip of 902 MHz and 12 MHz per millimetre.
     assert as_json["change"] == pytest.approx(-2.3e-3, abs=0.5e-3)
@@ -93,8 +102,21 @@ def test_trim_by_two_dimensions_meets_two_targets(folder):
     assert arm["change"] == pytest.approx(-1.9e-3, abs=0.5e-3)
     assert width["change"] == 0
     assert found["targets"][1]["after"] > 13
+    assert found["unsupported_modes"] == []
     assert found["gains_dbi"][0][1] == pytest.approx(2.12, abs=0.06)
     assert (folder / "plots" / "trim_arm_width.png").stat().st_size > 10_000
+
+
+def test_a_sweep_without_a_dip_gives_no_millimetres(folder, tmp_path):
+    flat = tmp_path / "flat.s1p"
+    rows = "".join(f"{f:.0f} 0.9 0\n" for f in np.linspace(6e8, 1.2e9, 61))
+    flat.write_text(f"# Hz S RI R 50\n{rows}")
+    words = ["trim", str(folder / "gauge.toml"), str(flat), "--free", "arm=72 mm..79 mm"]
+    words += ["--mode", "1/2", "--target", "930 MHz", "--by", "arm"]
+    done = CliRunner().invoke(main, [*words, "--plots", str(tmp_path)])
+    assert done.exit_code == 2, done.output
+    assert "flat.s1p: no dip from 600 to 1200 MHz, so nothing measured says where" in done.stderr
+    assert not list(tmp_path.glob("*.png"))
 
 
 @pytest.mark.long

@@ -9,6 +9,7 @@ import csv
 import io
 import json
 import shutil
+from collections.abc import Callable
 from pathlib import Path
 
 import pytest
@@ -243,6 +244,57 @@ def test_a_folder_without_results(session: Session, tmp_path: Path, command: str
     result = session.simkit(command, tmp_path)
     assert result.exit_code == 1
     assert "simkit run STUDY" in result.stderr
+
+
+def torn(chunk: Path) -> None:
+    chunk.write_bytes(chunk.read_bytes()[: chunk.stat().st_size // 2])
+
+
+def flipped(chunk: Path) -> None:
+    content = bytearray(chunk.read_bytes())
+    content[len(content) // 3] ^= 0x55
+    chunk.write_bytes(content)
+
+
+READERS = {
+    "modes": ("impedance", "DIR", "--json"),
+    "query": ("impedance", "DIR", "worst_vswr in 1 GHz .. 1.1 GHz < 99"),
+    "compare": ("impedance", "DIR", "MEASURED", "--case", "0"),
+    "export": ("impedance", "DIR", "--to", "csv", "--curves", "-o", "OUT"),
+    "status": ("reason", "DIR"),
+    "match": ("current", "DIR", "--from", "1 GHz", "--to", "1.1 GHz", "--case", "0"),
+    "fit": ("status", "STUDY", "MEASURED", "--free", "lift=11 mm..13 mm", "--results", "DIR"),
+    "trim": (
+        "status", "STUDY", "MEASURED", "--mode", "1/2", "--target", "1 GHz", "--by", "lift",
+        "--results", "DIR",
+    ),
+}  # fmt: skip
+"""The array that is damaged, and what is asked."""
+
+
+@pytest.mark.parametrize("damage", [torn, flipped, Path.unlink])
+@pytest.mark.parametrize("command", READERS)
+def test_every_command_that_reads_results_names_the_damaged_cases(
+    session: Session, tmp_path: Path, command: str, damage: Callable[[Path], None]
+) -> None:
+    copy, out = tmp_path / "hook", tmp_path / "out.csv"
+    shutil.copytree(session.results, copy)
+    # What is gone without a trace is missed where every solved case has something.
+    array = "impedance" if damage is Path.unlink else READERS[command][0]
+    chunk = min((copy / "store.zarr" / array).glob("c.*"))
+    damage(chunk)
+    measured = tmp_path / "build.s1p"
+    rows = "".join(f"{k}e7 0.5 0.1\n" for k in range(60, 260))
+    measured.write_text(f"# Hz S RI R 50\n{rows}")
+    named = {"MEASURED": measured, "STUDY": session.study, "DIR": copy, "OUT": out}
+    done = session.simkit(command, *(named.get(word, word) for word in READERS[command][1:]))
+    assert done.exit_code == 1, done.output
+    number = chunk.name.split(".")[1]  # every case is a block of its own
+    assert done.stderr == (
+        f"simkit: {copy}: damaged, the results of these cases cannot be read: {number}; "
+        "simkit run STUDY --retry solves them anew\n"
+    )
+    assert not out.exists()
 
 
 def test_damaged_results_are_named_with_the_way_out(session: Session, tmp_path: Path) -> None:

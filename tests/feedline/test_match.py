@@ -24,7 +24,7 @@ from simkit.feedline import (
     find_matches,
     worst_return_loss_db,
 )
-from simkit.feedline.candidates import MAKERS, line_of
+from simkit.feedline.candidates import MAKERS, Candidate, line_of
 from simkit.feedline.match import without_nothing
 from simkit.feedline.vary import dimensions, free_dimensions
 
@@ -205,7 +205,36 @@ def test_sections_of_no_length_are_left_out():
     line = UniformLine(50.0)
     stub, nothing = Stub(line, 20e-3), LineSection(line, 3e-10)
     assert without_nothing(Chain((nothing, stub), 60.0)) == Chain((stub,), 60.0)
-    assert without_nothing(Chain((nothing,))) == Chain((nothing,))
+    assert without_nothing(Chain((nothing,))) == Chain(())
+    # Of no length, the one stub is an open circuit across the line, the other a wire in it.
+    harmless = (Stub(line, 0.0, "open", "shunt"), Stub(line, 3e-10, "short", "series"))
+    assert without_nothing(Chain((*harmless, stub))) == Chain((stub,))
+    # And these short the line and break it.
+    telling = (Stub(line, 0.0, "short", "shunt"), Stub(line, 0.0, "open", "series"))
+    assert without_nothing(Chain(telling)) == Chain(telling)
+
+
+@pytest.mark.parametrize("refine", [True, False])
+def test_a_matched_load_gets_no_network_of_no_length(refine):
+    load = OnePort.from_impedance(F, np.full(len(F), 50 + 0j))
+    kinds = ("shunt stub", "series stub", "quarter wave")
+    report = find_matches(load, *BAND, kinds=kinds, refine=refine)
+    lengths = [d.value for design in report.designs for d in design.dimensions if d.unit == "m"]
+    assert len(lengths) == 3
+    assert min(lengths) > 0.08  # a quarter of 345 mm
+    assert "no less than wanted: no network is needed" in report.as_text()
+
+
+def test_no_network_is_needed_where_all_of_them_vanish(monkeypatch):
+    load = OnePort.from_impedance(F, np.full(len(F), 50 + 0j))
+    line = UniformLine(50.0)
+    monkeypatch.setitem(
+        MAKERS,
+        "shunt stub",
+        lambda task: [Candidate("shunt stub", task.chain(Stub(line, 0.0, "open")))],
+    )
+    with pytest.raises(FeedlineError, match=r"no network is needed: the load has at least 100\.0"):
+        find_matches(load, *BAND, kinds=("shunt stub",))
 
 
 def test_dimensions_of_a_chain():

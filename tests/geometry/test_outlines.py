@@ -1,11 +1,14 @@
 """Outlines of strips against areas and places known by formula."""
 
 from math import cos, pi, radians, sin, tan
+from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
 import shapely
 
+from simkit.cli.study_lines import with_line
 from simkit.errors import GeometryError
 from simkit.geometry.outlines import (
     bounding_box_m,
@@ -123,13 +126,22 @@ def test_normal_points_to_the_left():
     assert normal(np.array([3.0, 0.0])) == pytest.approx([0, 1])
 
 
-def test_a_path_whose_outline_falls_apart_is_refused(monkeypatch):
-    monkeypatch.setattr(
-        "simkit.geometry.outlines._united",
-        lambda _: shapely.MultiPoint([(0, 0), (1, 1)]).buffer(0.1),
-    )
-    with pytest.raises(GeometryError, match="strip 'any': its outline falls into several pieces"):
+@pytest.mark.parametrize(
+    ("left", "place"),
+    [
+        (shapely.MultiPolygon([shapely.box(0, 0, 1, 1), shapely.box(0.03, 0.01, 0.04, 0.03)]),
+         r"\(35, 20\) mm"),
+        (shapely.Polygon().boundary, r"\(20, 0\) mm"),
+    ],
+)  # fmt: skip
+def test_a_path_whose_outline_falls_apart_is_refused(monkeypatch, left, place):
+    """The smallest piece is named, or the middle of the path where nothing is left."""
+    monkeypatch.setattr("simkit.geometry.outlines._united", lambda _: left)
+    said = rf"strip 'any': its outline falls into several pieces near {place}.*move or drop them"
+    with pytest.raises(GeometryError, match=said) as refused:
         outline(strip([(0, 0), (40, 0)], 4))
+    lines = SimpleNamespace(path=Path("kite.toml"), line_of={"strip.any": 7}.get)
+    assert with_line(str(refused.value), lines).endswith("drop them (kite.toml:7)")
 
 
 def test_an_outline_of_corners_nanometres_apart_is_not_lost():

@@ -1,5 +1,6 @@
 """Dips found in noisy sweeps against the same curves without noise."""
 
+import re
 from pathlib import Path
 
 import numpy as np
@@ -100,7 +101,24 @@ def test_a_dip_between_few_points_is_noted():
     gamma = reflection(branch(frequency, 60.0, 600e-9, 1.0e9), 50.0)
     found, notes = measured_dips(measured(frequency, gamma))
     assert len(found) == 1
-    assert any("points within its band; measure with a finer step" in note for note in notes)
+    assert any("one point within its band; measure with a finer step" in note for note in notes)
+
+
+@pytest.mark.parametrize(
+    ("offset_hz", "said"),
+    [
+        (0.0, "has only one point within its band; measure with a finer step"),
+        (5e6, r"falls between two measured points, none is within its 10 dB width of \d\.\d"),
+    ],
+)
+def test_none_and_one_point_within_a_dip_have_words_of_their_own(offset_hz, said):
+    """A series branch of Q 84 on steps of 10 MHz, more than its dip is wide at 10 dB."""
+    frequency = np.arange(0.5e9, 1.5e9, 10e6) + offset_hz
+    gamma = reflection(branch(frequency, 60.0, 800e-9, 1.0e9), 50.0)
+    (dip,), notes = measured_dips(measured(frequency, gamma))
+    (note,) = [note for note in notes if f"the dip at {dip.frequency_hz / 1e6:.1f} MHz" in note]
+    assert re.search(said, note)
+    assert not re.search(r"\b[01] points", note)
 
 
 def test_shortest_sweep_works():

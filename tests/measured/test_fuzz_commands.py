@@ -1,4 +1,4 @@
-"""Damaged files through `simkit compare` and `simkit fit`: a clear sentence, never a traceback.
+"""Damaged files through `simkit compare`, `fit` and `trim`: a clear sentence, never a traceback.
 
 The stored results and the model of the fit are formulas, so that only what files can do is tried.
 """
@@ -13,12 +13,16 @@ from click.testing import CliRunner
 import simkit.store
 from simkit.cli import main
 from simkit.measured import fit_files
+from simkit.measured.trim_model import TrimModel
 from simkit.response.features import reflection
 
 from . import synthetic
 from .test_comparison import bench, results
 from .test_touchstone import PIECES
 
+AIM = (
+    "--mode", "1/2", "--target", "920 MHz", "--by", "arm=71 mm..77 mm", "--free", "eps=2.1..3.3",
+)  # fmt: skip
 FREE = ("--free", "eps=2.1..3.3", "--known", "arm = 74 mm +- 0.5 mm")
 
 
@@ -46,6 +50,7 @@ def folder(tmp_path, monkeypatch, formulas):
     monkeypatch.setattr(
         fit_files, "build_surrogate", lambda *args, **kwargs: (model, FormulaEngine())
     )
+    monkeypatch.setattr(TrimModel, "gains_dbi", lambda self, modes, _: [(2.0, 2.1)] * len(modes))
     return tmp_path
 
 
@@ -180,7 +185,7 @@ def fuzz(folder, count, seed):
     """Share of the damaged files that each command could still use."""
     rng = np.random.default_rng(seed)
     kinds = seeds()
-    used = {"compare": 0, "fit": 0}
+    used = {"compare": 0, "fit": 0, "trim": 0}
     for number in range(count):
         text, name = kinds[int(rng.integers(0, len(kinds)))]
         file = folder / name
@@ -191,16 +196,19 @@ def fuzz(folder, count, seed):
         to = ("complex", "magnitude", "features")[number % 3]
         words = ["fit", folder / "gauge.toml", file, *FREE, "--to", to, *port]
         used["fit"] += not run(words).exit_code
+        words = ["trim", folder / "gauge.toml", file, *AIM, "--to", to, *port]
+        used["trim"] += not run(words).exit_code
     return used
 
 
-def test_damaged_files_through_compare_and_fit(folder, undrawn):
+def test_damaged_files_through_compare_fit_and_trim(folder, undrawn):
     used = fuzz(folder, 15, seed=868)
+    assert used.pop("trim") > 0  # it needs a dip besides
     assert all(2 < count < 14 for count in used.values()), used
 
 
 @pytest.mark.long
-def test_two_thousand_damaged_files_through_compare_and_fit(folder, undrawn):
+def test_two_thousand_damaged_files_through_compare_fit_and_trim(folder, undrawn):
     used = fuzz(folder, int(os.environ.get("SIMKIT_FUZZ", "2000")), seed=6)
     print(used)
     assert all(count > 100 for count in used.values()), used

@@ -17,7 +17,7 @@ from simkit.measured.trim_pair import PairTrim
 from simkit.plot.fit import plot_fit, plot_fit_smith, plot_mode_ratios, plot_residuals
 from simkit.plot.nearest import plot_nearest
 from simkit.plot.trim import plot_trim
-from simkit.plot.trim_map import plot_trim_map
+from simkit.plot.trim_map import _label_places, plot_trim_map
 from simkit.response.features import Dip
 
 F = np.linspace(0.6e9, 1.4e9, 81)
@@ -133,6 +133,10 @@ def test_the_trim_curve_shows_now_after_and_band():
     assert "-1.70 mm" in ax.get_title(loc="left")
     assert len(ax.figure.axes) == 1
     ax.figure.canvas.draw()
+    assert "95 % interval of arm" in said
+    assert "UNSUPPORTED" not in ax.get_title(loc="left")
+    unseen = plot_trim(replace(trim, is_measured=False))
+    assert "UNSUPPORTED: no measured 1/2 wave dip" in unseen.get_title(loc="left")
     banded = replace(trim, losses_db=15 - 1e3 * abs(values - 73.3e-3), band_return_loss_db=15.0)
     ax = plot_trim(banded)
     assert "15.0 dB after" in legend_words(ax)
@@ -170,6 +174,23 @@ def test_the_map_shows_both_targets_with_bands_and_the_way():
     low, high = ax.get_xlim()
     assert 70 <= low < 74.2 < 75 < high <= 80
     ax.figure.canvas.draw()
+
+
+def test_faint_lines_of_a_map_are_labelled_once_and_apart():
+    ax = plot_trim_map(pair_trim(unmeasured=("3/2 wave",)))
+    assert "UNSUPPORTED: no measured 3/2 wave dip" in ax.get_title(loc="left")
+    ax.figure.draw_without_rendering()
+    labels = [text for text in ax.texts if text.get_text().endswith(" MHz")]
+    assert len(labels) > 3
+    for k, label in enumerate(labels):
+        for other in labels[:k]:
+            assert not label.get_window_extent().overlaps(other.get_window_extent())
+    # A row that passes a level twice, and one with a gap.
+    across = np.linspace(0, 1, 101)
+    places = _label_places(across, 4 * across * (1 - across), np.array([0.5, 0.51]), 1.0)
+    assert places == pytest.approx([0.14, 0.85], abs=0.011)
+    row = np.where(across < 0.4, np.nan, across)
+    assert _label_places(across, row, np.array([0.2, 0.6]), 0.9) == pytest.approx([0.6], abs=0.011)
 
 
 def test_a_map_of_a_match_without_any_value_still_draws():

@@ -21,6 +21,7 @@ from simkit.feedline import (
 )
 from simkit.plot.matching import folded, plot_match, plot_match_path
 from simkit.plot.schematic import plot_schematic
+from simkit.plot.style import QUIET
 
 F = np.linspace(800e6, 940e6, 29)
 LOAD = OnePort.from_impedance(F, 30 + 1j * np.linspace(-60, 90, 29))
@@ -55,6 +56,59 @@ def test_path_runs_from_terminals_to_connector():
     assert any("shunt 2.2\u00a0pF" in text for text in words)
     assert ax.get_title(loc="left") == "from terminals to connector at 868 MHz"
     ax.figure.canvas.draw()
+
+
+@pytest.mark.parametrize(
+    ("load_ohm", "sizes"),
+    [
+        (58 + 8j, (24, 5.9, 80)),  # half way along, a number would cover the 50
+        (48 + 14j, (66, 6.4, 29)),
+        (102 - 46j, (64, 13.0, 25)),  # VSWR 2
+        (82 + 81j, (20, 6.7, 76)),  # the 1
+        (148 - 20j, (45, 12.9, 23)),  # 25
+    ],
+)
+def test_numbers_of_a_path_cover_no_mark_of_the_chart(load_ohm, sizes):
+    load = OnePort.from_impedance(F, np.full(len(F), load_ohm))
+    line, (section, coil, stub) = UniformLine(50.0), sizes
+    chain = Chain(
+        (
+            LineSection(line, section * 1e-3),
+            Lumped("L", coil * 1e-9, "series"),
+            Stub(line, stub * 1e-3),
+        )
+    )
+    ax = plot_match_path(chain, load, 868e6)
+    ax.figure.draw_without_rendering()
+    texts = [text for text in ax.texts if text.get_text().strip()]
+    numbers = [text for text in texts if text.get_color() != QUIET and len(text.get_text()) == 1]
+    assert [text.get_text() for text in numbers] == ["1", "2", "3"]
+    for number in numbers:
+        box = number.get_window_extent()
+        for other in texts:
+            if other is not number:
+                assert not box.overlaps(other.get_window_extent()), other.get_text()
+
+
+def test_numbers_of_a_path_cover_neither_curves_nor_marks():
+    """A short way that ends in the middle of the chart, among the curves over the band."""
+    band = np.linspace(845e6, 890e6, 29)
+    load = OnePort.from_impedance(band, np.linspace(58 - 32.5j, 70.2 - 6.8j, 29))
+    first, second = TwoStrips(5e-3, 2e-3), TwoStrips(10.6e-3, 2e-3)
+    chain = Chain((LineSection(first, 17.68e-3), LineSection(second, 79.77e-3)))
+    ax = plot_match_path(chain, load, 867.5e6, (845e6, 890e6))
+    ax.figure.draw_without_rendering()
+    numbers = [text for text in ax.texts if text.get_text() in ("1", "2")]
+    assert len(numbers) == 2
+    for number in numbers:
+        for drawn in ax.lines:
+            away = np.hypot(*(np.column_stack(drawn.get_data()) - number.get_position()).T)
+            # Half the height of a digit is 0.03 of the chart's radius.
+            assert away.min() > 0.03, (number.get_text(), drawn.get_label())
+    (middle,) = (text for text in ax.texts if text.get_text() == "50")
+    # A match ends in the middle of the chart: half of a mark of 7 points, and its edge.
+    mark = ax.transData.transform((0.0, 0.0))[0] + 4 * ax.figure.dpi / 72
+    assert middle.get_window_extent().x0 > mark
 
 
 def test_path_of_an_empty_chain_and_of_a_matched_load():

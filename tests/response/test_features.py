@@ -9,6 +9,7 @@ from simkit.response.features import (
     find_dips,
     find_resonances,
     impedance_q,
+    impedance_q_at,
     matched_bandwidth,
     reflection,
     return_loss_db,
@@ -46,6 +47,11 @@ def test_q_away_from_resonance_is_that_of_the_tuned_circuit():
     slope = 100e-9 * (1 + (1e9 / frequency) ** 2)
     expected = w / (2 * 73.0) * (slope + np.abs(impedance.imag) / w)
     assert impedance_q(frequency, impedance) == pytest.approx(expected, rel=1e-5)
+    for place in (0, 1, len(frequency) // 2, len(frequency) - 1):
+        between = frequency[place] + (frequency[1] - frequency[0]) * 0.3 * (place < 2)
+        own = np.interp(between, frequency, expected)
+        # The curve bends between its points: the interpolation is good to 1e-4.
+        assert impedance_q_at(between, frequency, impedance) == pytest.approx(own, rel=1e-4)
 
 
 def test_q_is_nan_without_resistance():

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from simkit.response.near import Near, samples_near
+from simkit.response.near import Near
 
 
 @pytest.mark.parametrize(
@@ -34,6 +34,11 @@ def test_ends_are_served_by_the_last_six_samples(place):
     )
 
 
-def test_samples_on_which_a_slope_depends():
-    assert samples_near(3) == slice(0, 25)
-    assert samples_near(100) == slice(80, 122)
+@pytest.mark.parametrize("at", [3.07e8, 3.154e8, 3.3e8])
+def test_the_slope_is_that_of_the_polynomial(at):
+    frequency = 3e8 + 1e6 * np.arange(31.0)
+    near = Near(
+        frequency, frequency**3 * 1e-24 - 1j * frequency**2 * 1e-16, round((at - 3e8) / 1e6)
+    )
+    # Exact for a polynomial, but for what rounding leaves of a cancelling sixth of it.
+    assert near.slope(at) == pytest.approx(3 * at**2 * 1e-24 - 2j * at * 1e-16, rel=1e-7)

@@ -12,9 +12,9 @@ from simkit.response.pattern import (
     far_field,
     gain_grid_dbi,
     intensity_w_per_sr,
-    peak_direction,
     radiated_power_w,
 )
+from simkit.response.peak import peak_direction
 
 THETA = np.arange(0.0, 181.0, 10.0)
 PHI = np.arange(0.0, 361.0, 10.0)

@@ -25,10 +25,10 @@ from simkit.response.pattern import (
     far_field,
     gain_grid_dbi,
     intensity_w_per_sr,
-    peak_direction,
     radiated_power_w,
     reflection_coefficients,
 )
+from simkit.response.peak import peak_direction
 from simkit.runner.solve import solve_case
 from simkit.store.schema import PHI_DEG, THETA_DEG, VARIABLES, Status
 from simkit.study.model import FrequencyBand, Ground, Placement

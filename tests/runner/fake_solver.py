@@ -57,9 +57,11 @@ def solve(antenna: Antenna, plan: Plan) -> CaseResult:
 
 
 def leave_mark(length_m: float) -> None:
-    """One file per attempt, named after the case."""
+    """One file per attempt, named after the case; in it what malloc was told."""
     if folder := os.environ.get("FAKE_MARKS"):
-        Path(folder, f"{length_m:.6f}-{time.time_ns()}-{os.getpid()}").touch()
+        malloc = sorted(name for name in os.environ if name.startswith("MALLOC_"))
+        mark = Path(folder, f"{length_m:.6f}-{time.time_ns()}-{os.getpid()}")
+        mark.write_text(" ".join(malloc))
 
 
 def wait_at_the_gate() -> None:

@@ -4,8 +4,9 @@ import numpy as np
 import pytest
 import xarray as xr
 
-from simkit.errors import StoreError
+from simkit.errors import DamageError, StoreError
 from simkit.store import as_grid, open_results, status_labels, swept_names, swept_values
+from simkit.store.read import damaged_cases
 from simkit.store.schema import VARIABLES
 
 from .conftest import ARMS_M, WIDTHS_M, case_values
@@ -137,6 +138,30 @@ def test_a_torn_status_is_said_with_the_remedy(results):
     chunk = results / "store.zarr" / "status" / "c.0"
     chunk.write_bytes(b"")
     with pytest.raises(StoreError, match=r"status of a block is damaged.*run the study again"):
+        open_results(results)
+
+
+def test_a_lost_file_of_solved_cases_is_said(results):
+    (results / "store.zarr" / "impedance" / "c.0.0").unlink()
+    said = r"curves of the solved cases from 0 to 3 are not there any more; .*--retry"
+    with pytest.raises(DamageError, match=said):
+        open_results(results)
+    assert damaged_cases(results) == [range(4)]
+
+
+@pytest.mark.parametrize("name", ["arm", "frequency", "strip"])
+def test_a_torn_axis_is_said_with_the_remedy(results, name):
+    (chunk,) = (path for path in (results / "store.zarr" / name / "c").iterdir())
+    chunk.write_bytes(chunk.read_bytes()[:9])
+    with pytest.raises(StoreError, match=r"damaged, (the values of `arm` )?cannot.*--fresh"):
+        open_results(results)
+
+
+@pytest.mark.parametrize("name", ["case", "frequency"])
+def test_a_lost_axis_is_said_with_the_remedy(results, name):
+    (results / "store.zarr" / name / "c" / "0").unlink()
+    said = f"values of `{name}` are not there any more; simkit run STUDY --fresh"
+    with pytest.raises(StoreError, match=said):
         open_results(results)
 
 
