@@ -88,7 +88,7 @@ class AnalyserErrors:
 class Echoes:
     """Directivity and source match at a distance from the reference plane, as correlated noise.
 
-    They add d exp(-j w t) + s exp(-j w t) gamma^2 for every delay t, each amplitude random. The fit
+    They add (d + s gamma^2) exp(-2j w t) for every delay t one way, d and s random. The fit
     does not look for the amplitudes: it weighs its residuals by the inverse root of their
     covariance, which comes to the same. Taken for noise that differs from point to point, such a
     ripple was the largest part of the scatter of fitted permittivities.
