@@ -34,7 +34,7 @@ from simkit.engine.pynec import solve_wires
 from simkit.geometry import MeshPlan, build_wires, plan_mesh
 from simkit.geometry.wires import Wire
 from simkit.runner import run
-from simkit.runner.currents import series_loads
+from simkit.runner.currents import impedance_of, series_loads, source_weight, sweep_currents
 from simkit.runner.prepare import Solver, prepare
 from simkit.runner.progress import QuietProgress, Tally
 from simkit.runner.solve import solve_case
@@ -154,29 +154,38 @@ def engine_part(
     ready: Callable[[], None],
     out: object,
 ) -> None:
-    """Seconds and number of the solves of some cases of a run, by the engine alone."""
+    """For some cases of a run: seconds and number of solves by the engine alone, then by sweeps."""
     study = load_study(study_path)
     plan = prepare(study, solver).plan
     samples = open_results(results)["sample_frequency"].values
-    jobs = []
-    for case in cases:
-        antenna = study.case(case).antenna
-        assert antenna is not None
-        grid = build_wires(antenna, plan)
-        jobs += [
-            (grid, frequency, series_loads(antenna, grid, frequency))
-            for frequency in samples[case][np.isfinite(samples[case])]
-        ]
+    antennas = [antenna for case in cases if (antenna := study.case(case).antenna) is not None]
+    grids = [build_wires(antenna, plan) for antenna in antennas]
+    jobs = [
+        (grid, frequency, series_loads(antenna, grid, frequency))
+        for case, antenna, grid in zip(cases, antennas, grids, strict=True)
+        for frequency in samples[case][np.isfinite(samples[case])]
+    ]
     ready()
     begin = time.monotonic()
     for grid, frequency, series in jobs:
         both = [grid.source, grid.probe]
         solve_wires(grid.wires, grid.radius_m, frequency, both, series=series)
-    out.put((time.monotonic() - begin, len(jobs)))  # type: ignore[attr-defined]
+    alone_s = time.monotonic() - begin
+    ready()
+    begin = time.monotonic()
+    for antenna in antennas:
+        grid = build_wires(antenna, plan)
+        model = sweep_currents(antenna, grid).model
+        fed = model.values[:, : grid.segments] @ source_weight(grid)
+        impedance_of(grid, model.combined(FREQUENCY_HZ, fed), FREQUENCY_HZ)
+    out.put((alone_s, time.monotonic() - begin, len(jobs)))  # type: ignore[attr-defined]
 
 
-def engine_s(study: Study, results: Path, solver: Solver, part: int) -> float:
-    """Time of the engine alone for every solve of a run, from some cases of it."""
+def engine_s(study: Study, results: Path, solver: Solver, part: int) -> tuple[float, float]:
+    """Time of the engine alone for every solve of a run, and what sweeps without patterns take.
+
+    The latter from wires to impedance, as a multiple; both from some cases.
+    """
     context = multiprocessing.get_context("spawn")
     barrier, parts = context.Barrier(WORKERS), context.Queue()
     several = []
@@ -189,8 +198,8 @@ def engine_s(study: Study, results: Path, solver: Solver, part: int) -> float:
     found = [parts.get() for _ in several]
     for process in several:
         process.join()
-    spent, counted = (sum(column) for column in zip(*found, strict=True))
-    return spent / counted * float(open_results(results)["solves"].values.sum())
+    alone, swept, solves = (sum(column) for column in zip(*found, strict=True))
+    return alone / solves * float(open_results(results)["solves"].values.sum()), swept / alone
 
 
 # -- two bare processes ---------------------------------------------------------------------------
@@ -261,11 +270,12 @@ def report(
 ) -> None:
     """Print a run's time over that of the engine alone."""
     results = folder / "out" / study.path.stem
-    engine = engine_s(study, results, solver, part)
+    engine, swept = engine_s(study, results, solver, part)
     segments = open_results(results).sizes["segment"]
     solving = float(open_results(results)["seconds"].values.sum())
     print(
         f"{segments} segments, {study.case_count} cases: engine {engine:.1f} s; over it: "
+        f"sweeps without patterns {swept:.2f}, "
         f"wall x workers {wall * WORKERS / engine:.2f}, between first and last block "
         f"{WORKERS * study.case_count / clock.steady_rate() / engine:.2f}, inside the cases "
         f"{solving / engine:.2f}; processor time of all processes {clock.processor_s / engine:.2f}"
