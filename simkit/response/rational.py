@@ -23,6 +23,14 @@ VERIFIED_EACH = 9
 """One sample more is spent on verification for so many, and two at least: a long band hides a mode
 more easily, and one agreement may be luck."""
 
+MOST_BESIDE_POLES = 3
+LOOSE = 5e-4
+STRONG = 0.02
+"""Up to so many samples more are taken by poles that the last one still moved by this part of their
+frequency, if their peaks reach that part of the highest. Currents settle before the poles of low Q
+do: of strips bent, joined and closed to loops, poles came out up to 0.3 % off without it, 0.07 %
+with it, for a sample more in one sweep of four."""
+
 SKETCH = 6
 """Random combinations of all currents that the fit looks at."""
 
@@ -263,16 +271,22 @@ def adaptive_sweep(
     Sweep
     """
     search = _Search(solve, start_hz, stop_hz, max(tolerance, TOLERANCE_FLOOR), seed, observe)
-    verified = 0
+    verified = beside_poles = 0
     error = np.inf
     while True:
-        frequency, difference = search.where_in_doubt()
-        settled = difference < search.tolerance
-        if settled and verified >= max(2, (len(search.frequencies) - verified) / VERIFIED_EACH):
-            return search.result(converged=True, error=error)
-        if len(search.frequencies) >= most_samples:
+        wanted, difference = search.where_in_doubt()
+        full = len(search.frequencies) >= most_samples
+        if difference < search.tolerance:
+            wanted = search.emptiest()
+            if verified >= max(2, (len(search.frequencies) - verified) / VERIFIED_EACH):
+                pole = search.loose_pole() if beside_poles < MOST_BESIDE_POLES else None
+                if pole is None or full:
+                    return search.result(converged=True, error=error)
+                wanted = search.around(pole)
+                beside_poles += 1
+        if full:
             return search.result(converged=False, error=max(error, difference))
-        error = search.error_at(search.emptiest() if settled else frequency)
+        error = search.error_at(wanted)
         verified = verified + 1 if error < search.tolerance else 0
 
 
@@ -362,6 +376,32 @@ class _Search:
         self.values.append(self.solve(frequency_hz))
         self.sketch.append(self.values[-1] @ self.projection)
         self.before, self.now = self.now, self._on_candidates(range(len(self.frequencies)))
+
+    def loose_pole(self) -> complex | None:
+        """The strong pole that the last sample moved farthest, if by more than `LOOSE`."""
+        count = len(self.frequencies)
+        now = self._sketched(range(count))
+        poles, before = now.poles_hz(), self._sketched(range(count - 1)).poles_hz()
+        poles = poles[(poles.imag > 0) & (poles.real <= self.stop_hz)]
+        poles = poles[(poles.real + poles.imag >= self.start_hz) & (poles.real > 3 * poles.imag)]
+        if not poles.size or not before.size:
+            return None
+        height = np.linalg.norm(now.residues(poles), axis=1) / poles.imag
+        poles = poles[height > STRONG * height.max()]
+        moved = np.min(abs(poles[:, None] - before), axis=1) / poles.real
+        worst = int(np.argmax(moved))
+        return complex(poles[worst]) if moved[worst] > LOOSE else None
+
+    def _sketched(self, chosen: range) -> RationalModel:
+        samples = np.array([self.frequencies[k] for k in chosen])
+        sketch = np.array([self.sketch[k] for k in chosen])
+        return RationalModel(samples, self._weights(chosen), sketch)
+
+    def around(self, pole_hz: complex) -> float:
+        """A frequency by the pole, far from the samples taken."""
+        empty = np.min(abs(self.candidates[:, None] - np.array(self.frequencies)), axis=1)
+        worth = empty / (abs(self.candidates - pole_hz) + pole_hz.imag / 2)
+        return float(self.candidates[int(np.argmax(worth))])
 
     def emptiest(self) -> float:
         """Middle of the widest interval without a sample, judged as Chebyshev nodes lie."""

@@ -6,6 +6,7 @@ coefficients with Brewster's angle, mutual impedance of parallel half-wave dipol
 integrals).
 """
 
+import re
 from dataclasses import replace
 
 import numpy as np
@@ -276,11 +277,12 @@ def test_over_earth_there_is_no_balance_but_a_word_and_the_earths_loss(make):
 
 
 def test_of_modes_that_the_grounds_echo_splits_the_strongest_is_kept(make):
-    """Three wavelengths up three poles share the one of the dipole alone, near 892 MHz."""
+    """Three wavelengths up three poles or more share that of the dipole alone, near 892 MHz."""
     result = solved(lying_case(make, PLANE, 1.0))
     assert list(known(result.arrays, "mode_half_waves")) == [1]
     assert known(result.arrays, "mode_frequency") == pytest.approx(892e6, rel=0.05)
-    assert "ground resonate together; left out are weaker natural modes at 8" in result.reason
+    words = r"ground resonate together; left out are weaker natural modes at (\d+\.\d, )*8\d\d\.\d"
+    assert re.search(words, result.reason)
 
 
 def test_modes_of_one_number_but_other_currents_are_no_echoes(make):
