@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from simkit.errors import MeasurementError
+from simkit.errors import GeometryError, MeasurementError
 from simkit.measured.bench_errors import ErrorSizes
 from simkit.measured.fit_files import fit_files
 from simkit.measured.fit_problem import FitProblem, To
@@ -74,7 +74,8 @@ def fit(
     pins : sequence of mappings, optional
         Half waves to the frequency (Hz) of the measured dip that is certainly of that mode.
     sizes : ErrorSizes, optional
-        Standard deviations of the bench's errors.
+        Standard deviations of the errors of bench and model; the usual ones, with what the rules
+        state for the study's nominal antenna, if left out.
     also : mapping, optional
         Bounds of values that are not fitted but varied later.
     surrogate : Surrogate, optional
@@ -96,7 +97,7 @@ def fit(
     """
     variation = Variation(study)
     bounds, beliefs = _free_values(variation, free, known)
-    sizes = sizes or ErrorSizes()
+    sizes = sizes or _usual_sizes(variation)
     given = [dict(build) for build in builds] if builds is not None else [{}] * len(measurements)
     _check_shared(variation, bounds, given)
     files, engines, notes = fit_files(
@@ -130,6 +131,17 @@ def fit(
         solution=solution,
         covariance=covariance,
     )
+
+
+def _usual_sizes(variation: Variation) -> ErrorSizes:
+    from simkit.geometry import build_wires, plan_mesh
+
+    antenna = variation.study.nominal()
+    try:
+        grid = build_wires(antenna, plan_mesh([antenna]))
+    except GeometryError:  # the bounds may lie where it can be built
+        return ErrorSizes()
+    return ErrorSizes.of_model(grid.relative_error)
 
 
 def _free_values(
