@@ -104,14 +104,16 @@ class Dressing:
         """What the carrier adds to the relative error of mode frequencies, and its limits."""
         if self.carrier is None:
             return 0.0, ()
-        error, doubts = CARRIER_ERROR, []
+        of_ends, doubts = 0.0, []
         for line in lines:
             ends = [] if line.start or line.closed else [float(line.width_after_m[0])]
             ends += [] if line.end or line.closed else [float(line.width_before_m[-1])]
             for width in ends:
                 correction = self._tip(width)
-                error += correction.error_m / max(line.length_m, width)
+                of_ends += correction.error_m / max(line.length_m, width)
                 doubts += [doubt for doubt in correction.doubts if doubt not in doubts]
+        # Both ends err alike, by one table; the model along the strip errs on its own.
+        error = float(np.hypot(CARRIER_ERROR, of_ends))
         return error, tuple(
             f"carrier: {doubt} is more than the correction of open ends covers, so mode "
             f"frequencies may be off by {2e2 * error:.1f} %"
