@@ -13,8 +13,8 @@ import numpy as np
 from simkit.measured.measurement import ComplexArray, FloatArray
 
 MODEL_ERROR = 0.002
-"""Standard error of a modelled mode frequency, relative, at least: 0.15 % of the strip-to-wire rules
-against full-wave references, and as much for what no drawing has, solder and the sheet's waves."""
+"""Standard error of a modelled mode frequency, relative, at least: 0.15 % of the rules that turn
+strips into wires, and nearly as much for what no drawing has, solder and the sheet's waves."""
 
 
 @dataclass(frozen=True)
