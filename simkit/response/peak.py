@@ -54,7 +54,7 @@ Intensity = Callable[[Directions], FloatArray]
 ALIKE = 10**-0.001
 """Intensities that differ by less, 0.01 dB, are equal: the currents are hardly better."""
 
-PLANE_STEP_DEG = 3.0
+PLANE_STEP_DEG = 5.0
 
 SMOOTH_DEG = 1.5
 """So near to a maximum a pattern is a paraboloid: the narrowest lobe of an antenna four wavelengths

@@ -151,8 +151,14 @@ def barycentric_values(
     # One product of real matrices: the real and the imaginary parts lie side by side.
     sums = ((1.0 / difference) @ above.view(np.float64)).view(np.complex128)
     result = sums[:, :-1] / sums[:, -1:]
-    if met.any():
-        result[met] = barycentric_matrix(frequency_hz[met], samples_hz, weight) @ columns
+    for row in np.flatnonzero(met):
+        at = int(np.argmin(abs(frequency_hz[row] - samples_hz)))
+        if weight[at] != 0:
+            result[row] = columns[at]
+        else:  # a sample of weight 0 takes no part, not even where it is asked for
+            others = np.arange(len(weight)) != at
+            terms = weight[others] / (frequency_hz[row] - samples_hz[others])
+            result[row] = terms @ columns[others] / terms.sum()
     return result.reshape(len(frequency_hz), *values.shape[1:])
 
 

@@ -18,7 +18,7 @@ from simkit.store.remote import Place
 from simkit.store.schema import SAMPLES, VARIABLES, Status
 from simkit.store.write import KEY_DTYPE, StoreFile
 
-BLOCK_S, LONG_BLOCK_S = 4.0, 20.0
+BLOCK_S, LONG_BLOCK_S = 6.0, 20.0
 """Work in one block of a short and of a long run."""
 
 BESIDE_S = 0.1

@@ -300,6 +300,7 @@ class _Session:
         size, limit_s = self.choices.block_size, limit_for(prepared.segments)
         ready: dict[int, CaseResult] = {}
         if size is None:
+            workplace.import_ahead()
             ready, seconds = self._timed(prepared, index, workplace.worker)
             limit_s = limit_for(prepared.segments, seconds)
             size = self._block_size(prepared, target, workplace, index, seconds)

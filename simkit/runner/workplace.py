@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import threading
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -49,6 +50,14 @@ class Workplace:
         if self._choices.scheduler is not None:
             self._cluster = self._reach(self._choices.scheduler)
 
+    def import_ahead(self) -> None:
+        """Load in the background what a pool of workers will need.
+
+        The engine's process takes a second to start, which would pass in idleness.
+        """
+        if self._choices.workers > 1:
+            threading.Thread(target=_import_ahead).start()
+
     @property
     def workers(self) -> int:
         """Processes that will work, as far as known."""
@@ -77,3 +86,8 @@ class Workplace:
         from simkit.runner.cluster import ClusterPool
 
         return ClusterPool(address, self._choices.solver.function, self._say, self._lock)
+
+
+def _import_ahead() -> None:
+    import distributed  # noqa: F401
+    import zarr  # noqa: F401

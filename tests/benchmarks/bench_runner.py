@@ -256,7 +256,7 @@ def main() -> None:
         bare = bare_rate(small)
         print(f"two workers over two bare processes  {clock.steady_rate() / bare:.2f}")
         report(small, folder, NAMED, clock, wall, 20)
-        for length, count, part in ((150, cases // 4, 20), (600, max(20, cases // 30), 5)):
+        for length, count, part in ((150, cases // 4, 20), (600, max(20, cases // 20), 5)):
             study = study_of(folder, length, count)
             wall, clock = timed_run(study, folder, OWN)
             report(study, folder, OWN, clock, wall, part)

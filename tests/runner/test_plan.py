@@ -15,10 +15,10 @@ from simkit.store.schema import VARIABLES
 @pytest.mark.parametrize(
     ("seconds", "cases", "workers", "size"),
     [
-        (0.5, 1000, 2, 10),  # about four seconds of work, as many blocks for each worker
+        (0.5, 1000, 2, 10),  # about six seconds of work, as many blocks for each worker
         (0.5, 15, 2, 2),  # three or four blocks a worker
         (60.0, 100, 2, 1),  # never none
-        (0.05, 10_000, 2, 96),  # five seconds of 250, in pieces of 32
+        (0.05, 10_000, 2, 160),  # some six seconds, in pieces of 32, the same for both workers
         (0.5, 10_000, 2, 96),  # up to twenty seconds of a long run, or no more than 10,000 files
         (0.0, 1, 2, 1),
     ],
