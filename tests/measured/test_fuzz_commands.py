@@ -23,6 +23,9 @@ from .test_touchstone import PIECES
 AIM = (
     "--mode", "1/2", "--target", "920 MHz", "--by", "arm=71 mm..77 mm", "--free", "eps=2.1..3.3",
 )  # fmt: skip
+FITTED_EACH, TRIMMED_EACH = 4, 20
+"""All three read files alike; what fits and trims do besides sees fewer in the long test."""
+
 FREE = ("--free", "eps=2.1..3.3", "--known", "arm = 74 mm +- 0.5 mm")
 
 
@@ -181,7 +184,7 @@ def run(words):
     return done
 
 
-def fuzz(folder, count, seed):
+def fuzz(folder, count, seed, each=(1, 1)):
     """Share of the damaged files that each command could still use."""
     rng = np.random.default_rng(seed)
     kinds = seeds()
@@ -194,10 +197,12 @@ def fuzz(folder, count, seed):
         extra = ("--nearest",) if number % 7 == 0 else ()
         used["compare"] += not run(["compare", folder / "results", file, *port, *extra]).exit_code
         to = ("complex", "magnitude", "features")[number % 3]
-        words = ["fit", folder / "gauge.toml", file, *FREE, "--to", to, *port]
-        used["fit"] += not run(words).exit_code
-        words = ["trim", folder / "gauge.toml", file, *AIM, "--to", to, *port]
-        used["trim"] += not run(words).exit_code
+        if number % each[0] == 0:
+            words = ["fit", folder / "gauge.toml", file, *FREE, "--to", to, *port]
+            used["fit"] += not run(words).exit_code
+        if number % each[1] == 0:
+            words = ["trim", folder / "gauge.toml", file, *AIM, "--to", to, *port]
+            used["trim"] += not run(words).exit_code
     return used
 
 
@@ -209,9 +214,10 @@ def test_damaged_files_through_compare_fit_and_trim(folder, undrawn):
 
 @pytest.mark.long
 def test_two_thousand_damaged_files_through_compare_fit_and_trim(folder, undrawn):
-    used = fuzz(folder, int(os.environ.get("SIMKIT_FUZZ", "2000")), seed=6)
+    count = int(os.environ.get("SIMKIT_FUZZ", "2000"))
+    used = fuzz(folder, count, seed=6, each=(FITTED_EACH, TRIMMED_EACH))
     print(used)
-    assert all(count > 100 for count in used.values()), used
+    assert all(number > count / 200 for number in used.values()), used
 
 
 def lines_of(points=161, **changes):
