@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import signal
 import subprocess
 import sys
@@ -153,8 +154,10 @@ def test_a_killed_worker_costs_no_case(start, make_study, marks, tmp_path):
     process = start(study)
     wait_until(lambda: len(settled(store)) >= 4, process)
     log = store.parent / "log.txt"
-    pid = int(log.read_text().rpartition("process ")[2].split()[0])
-    os.kill(pid, signal.SIGKILL)
+    # A block is on the disk a little before the line that says so.
+    workers = re.compile(r" stored.*process (\d+) on ")
+    wait_until(lambda: workers.search(log.read_text()), process)
+    os.kill(int(workers.findall(log.read_text())[-1]), signal.SIGKILL)
     output, _ = process.communicate(timeout=60)
     assert "stopped: no" in output, output
     assert (StoreFile(store).read_statuses() == Status.SOLVED).all()
