@@ -296,16 +296,14 @@ class Engine:
         from simkit.response.cable import told_apart
         from simkit.response.modes import find_modes
         from simkit.response.ownership import owned_features
-        from simkit.runner.currents import feed_impedance, sweep_currents
+        from simkit.runner.currents import sweep_currents, swept_impedance
 
         grid = build_wires(antenna, self.plan)
         sweep = sweep_currents(antenna, grid)
         self.solves += len(sweep.model.frequency_hz)
-        feed_values = sweep.model.values[:, : grid.segments]
 
         def impedance(frequency_hz: FloatArray) -> ComplexArray:
-            currents = sweep.model.combined(frequency_hz, feed_values)
-            return feed_impedance(grid, currents, frequency_hz)
+            return swept_impedance(grid, sweep.model, frequency_hz)
 
         frequency = np.linspace(self.band.start_hz, self.band.stop_hz, self.band.points)
         found = find_modes(sweep, grid, self.band.start_hz, self.band.stop_hz)

@@ -68,10 +68,6 @@ class RationalModel:
             np.atleast_1d(frequency_hz), self.frequency_hz, self.weight, values
         )
 
-    def matrix(self, frequency_hz: FloatArray) -> ComplexArray:
-        """(F, M) matrix that maps sample values to values at the given frequencies."""
-        return barycentric_matrix(np.atleast_1d(frequency_hz), self.frequency_hz, self.weight)
-
     def poles_hz(self) -> ComplexArray:
         """Poles in the complex frequency plane, Hz; that of a decaying mode has Im > 0."""
         used = self.weight != 0
@@ -107,28 +103,10 @@ class Sweep:
     spare_models: tuple[RationalModel, ...]
 
 
-def barycentric_matrix(
-    frequency_hz: FloatArray, samples_hz: FloatArray, weight: ComplexArray
-) -> ComplexArray:
-    """(F, M) interpolation matrix of a barycentric rational function."""
-    difference = frequency_hz[:, None] - samples_hz
-    met = difference == 0
-    with np.errstate(divide="ignore", invalid="ignore"):  # exact hits are overwritten below
-        matrix = weight / difference
-        matrix /= matrix.sum(axis=1, keepdims=True)
-    for row in np.flatnonzero(met.any(axis=1)):
-        if (weight[met[row]] != 0).any():
-            matrix[row] = met[row]
-        else:  # a sample of weight 0 takes no part, not even where it is asked for
-            terms = np.where(met[row], 0, weight / np.where(met[row], 1.0, difference[row]))
-            matrix[row] = terms / terms.sum()
-    return np.asarray(matrix, dtype=np.complex128)
-
-
 def barycentric_values(
     frequency_hz: FloatArray, samples_hz: FloatArray, weight: ComplexArray, values: ComplexArray
 ) -> ComplexArray:
-    """Evaluate a barycentric rational function; faster than its matrix where F is large.
+    """Evaluate a barycentric rational function, quickly also where F is large.
 
     Parameters
     ----------

@@ -119,32 +119,26 @@ def cable_arrays(
     }
 
 
+_FEATURES = {
+    "conductance_peak_frequency": ("peak", "frequency_hz"),
+    "conductance_peak_resistance": ("peak", "resistance_ohm"),
+    "series_resonance_frequency": ("series", "frequency_hz"),
+    "series_resonance_resistance": ("series", "resistance_ohm"),
+    "parallel_resonance_frequency": ("parallel", "frequency_hz"),
+    "parallel_resonance_resistance": ("parallel", "resistance_ohm"),
+    "dip_frequency": ("dip", "frequency_hz"),
+    "dip_return_loss": ("dip", "return_loss_db"),
+    "dip_bandwidth": ("dip", "bandwidth_hz"),
+}
+"""Of the store: which of a mode's features, and what of it; NaN for a mode without it."""
+
+
 def feature_arrays(features: Sequence[OwnedFeatures]) -> dict[str, Any]:
-    nan = float("nan")
-    return {
-        "conductance_peak_frequency": padded(
-            [f.peak.frequency_hz if f.peak else nan for f in features]
-        ),
-        "conductance_peak_resistance": padded(
-            [f.peak.resistance_ohm if f.peak else nan for f in features]
-        ),
-        "series_resonance_frequency": padded(
-            [f.series.frequency_hz if f.series else nan for f in features]
-        ),
-        "series_resonance_resistance": padded(
-            [f.series.resistance_ohm if f.series else nan for f in features]
-        ),
-        "parallel_resonance_frequency": padded(
-            [f.parallel.frequency_hz if f.parallel else nan for f in features]
-        ),
-        "parallel_resonance_resistance": padded(
-            [f.parallel.resistance_ohm if f.parallel else nan for f in features]
-        ),
-        "dip_frequency": padded([f.dip.frequency_hz if f.dip else nan for f in features]),
-        "dip_return_loss": padded([f.dip.return_loss_db if f.dip else nan for f in features]),
-        "dip_bandwidth": padded([f.dip.bandwidth_hz if f.dip else nan for f in features]),
-        "impedance_q": padded([f.q for f in features]),
+    arrays = {
+        name: padded([getattr(getattr(f, feature), part, np.nan) for f in features])
+        for name, (feature, part) in _FEATURES.items()
     }
+    return arrays | {"impedance_q": padded([f.q for f in features])}
 
 
 def padded(values: Sequence[float] | FloatArray) -> FloatArray:

@@ -9,7 +9,7 @@ from simkit.geometry import WireGrid
 from simkit.geometry.conductor import face_resistance_ohm
 from simkit.geometry.placement import far_from_earth
 from simkit.geometry.wires import FloatArray
-from simkit.response.rational import ComplexArray, Sweep, adaptive_sweep
+from simkit.response.rational import ComplexArray, RationalModel, Sweep, adaptive_sweep
 from simkit.response.strip_current import totals_matrix
 from simkit.response.terminals import feed_impedance_ohm
 from simkit.store.schema import SAMPLES
@@ -86,10 +86,16 @@ def feed_impedance(
     grid: WireGrid, currents: ComplexArray, frequency_hz: FloatArray
 ) -> ComplexArray:
     """Impedance at the study's feed gap from (F, S) currents for 1 V at the feed, ohm."""
-    return impedance_of(grid, currents @ source_weight(grid), frequency_hz)
+    return _impedance(grid, currents @ source_weight(grid), frequency_hz)
 
 
-def impedance_of(
+def swept_impedance(grid: WireGrid, model: RationalModel, frequency_hz: FloatArray) -> ComplexArray:
+    """Impedance at the study's feed gap over (F,) frequencies by a sweep of both sources, ohm."""
+    sampled = model.values[:, : grid.segments] @ source_weight(grid)
+    return _impedance(grid, model.combined(frequency_hz, sampled), frequency_hz)
+
+
+def _impedance(
     grid: WireGrid, feed_current_a: ComplexArray, frequency_hz: FloatArray
 ) -> ComplexArray:
     return feed_impedance_ohm(

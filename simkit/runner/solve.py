@@ -32,9 +32,8 @@ from simkit.runner.arrays import (
 from simkit.runner.connector import Connector
 from simkit.runner.convergence import Convergence, converge
 from simkit.runner.currents import (
-    impedance_of,
-    source_weight,
     sweep_currents,
+    swept_impedance,
 )
 from simkit.runner.radiation import radiation_of, stacked
 from simkit.runner.result import CaseResult
@@ -154,8 +153,7 @@ def _evaluate(
     """Arrays of the store, doubts, and notes: what to know without being doubtful for it."""
     band = antenna.frequency
     frequency_hz = np.linspace(band.start_hz, band.stop_hz, band.points)
-    sampled = sweep.model.values[:, : grid.segments] @ source_weight(grid)
-    impedance = impedance_of(grid, sweep.model.combined(frequency_hz, sampled), frequency_hz)
+    impedance = swept_impedance(grid, sweep.model, frequency_hz)
     modes, notes = _modes(antenna, grid, sweep)
     connector = Connector.of(antenna, frequency_hz, impedance)
     features = owned_features(

@@ -38,7 +38,7 @@ from simkit.measured.variation import Known, Variation
 from simkit.response.features import reflection
 from simkit.response.modes import find_modes
 from simkit.response.ownership import owned_features
-from simkit.runner.currents import feed_impedance, sweep_currents
+from simkit.runner.currents import sweep_currents, swept_impedance
 from simkit.study import load_study
 
 STUDY = """
@@ -97,8 +97,7 @@ def solved(variation, values):
     grid = build_wires(antenna, plan_mesh([antenna]))
     sweep = sweep_currents(antenna, grid)
     frequency = np.linspace(band.start_hz, band.stop_hz, band.points)
-    currents = sweep.model.matrix(frequency) @ sweep.model.values[:, : grid.segments]
-    impedance = feed_impedance(grid, currents, frequency)
+    impedance = swept_impedance(grid, sweep.model, frequency)
     modes = find_modes(sweep, grid, band.start_hz, band.stop_hz)
     owned = owned_features(modes, frequency, impedance, 50.0)
     dips = {

@@ -34,7 +34,7 @@ from simkit.engine.pynec import solve_wires
 from simkit.geometry import MeshPlan, build_wires, plan_mesh
 from simkit.geometry.wires import Wire
 from simkit.runner import run
-from simkit.runner.currents import impedance_of, series_loads, source_weight, sweep_currents
+from simkit.runner.currents import series_loads, sweep_currents, swept_impedance
 from simkit.runner.prepare import Solver, prepare
 from simkit.runner.progress import QuietProgress, Tally
 from simkit.runner.solve import solve_case
@@ -175,9 +175,7 @@ def engine_part(
     begin = time.monotonic()
     for antenna in antennas:
         grid = build_wires(antenna, plan)
-        model = sweep_currents(antenna, grid).model
-        fed = model.values[:, : grid.segments] @ source_weight(grid)
-        impedance_of(grid, model.combined(FREQUENCY_HZ, fed), FREQUENCY_HZ)
+        swept_impedance(grid, sweep_currents(antenna, grid).model, FREQUENCY_HZ)
     out.put((alone_s, time.monotonic() - begin, len(jobs)))  # type: ignore[attr-defined]
 
 

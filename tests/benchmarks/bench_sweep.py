@@ -48,7 +48,7 @@ def swept() -> tuple[np.ndarray, Sweep]:
         return solve_wires(WIRES, RADIUS_M, frequency_hz, [FEED, PROBE]).ravel()
 
     sweep = adaptive_sweep(solve, FREQUENCY_HZ[0], FREQUENCY_HZ[-1])
-    return sweep.model.matrix(FREQUENCY_HZ) @ sweep.model.values[:, 25], sweep
+    return sweep.model.combined(FREQUENCY_HZ, sweep.model.values[:, 25]), sweep
 
 
 def seconds(work: Callable[[], object]) -> float:
